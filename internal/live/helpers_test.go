@@ -162,7 +162,7 @@ func narrow() *websocket.Dialer {
 		var d net.Dialer
 		c, err := d.DialContext(ctx, network, addr)
 		if err == nil {
-			err = c.(*net.TCPConn).SetReadBuffer(4096)
+			err = c.(*net.TCPConn).SetReadBuffer(32 << 10)
 		}
 		return c, err
 	}}
