@@ -26,9 +26,13 @@ type Binaries struct {
 // that wraps it says where was looked and what to install.
 var ErrNotInstalled = errors.New("PostgreSQL is not installed")
 
-// packagedDirs is where Debian and its relatives put the server's binaries.
-// They are not on PATH there, since several versions may stand side by side.
-const packagedDirs = "/usr/lib/postgresql/*/bin"
+// search is where a server is looked for.
+type search struct {
+	explicit string // a folder that was asked for
+	named    string // the value of PGBINDIR
+	packaged string // pattern of the folders of packaged servers
+	major    int    // version that wrote the data; 0 means any
+}
 
 // Find returns the PostgreSQL server to use: from the folder explicit when it is
 // not empty, else from the folder named by PGBINDIR, else the server on PATH,
@@ -36,21 +40,31 @@ const packagedDirs = "/usr/lib/postgresql/*/bin"
 // error and not passed over. Only [OldestVersion] or newer is accepted.
 func Find(explicit string) (Binaries, error) { return find(explicit, 0) }
 
-// find is Find, for data written by the given major version; 0 means any. A
-// version that was asked for goes before the usual order.
+// find is Find, for data written by the given major version.
 func find(explicit string, major int) (Binaries, error) {
-	for _, named := range []struct{ dir, by string }{
-		{explicit, "the folder given"},
-		{os.Getenv("PGBINDIR"), "the folder PGBINDIR"},
+	return search{
+		explicit: explicit,
+		named:    os.Getenv("PGBINDIR"),
+		// Debian and its relatives keep them off PATH, since several versions may
+		// stand side by side.
+		packaged: "/usr/lib/postgresql/*/bin",
+		major:    major,
+	}.run()
+}
+
+func (s search) run() (Binaries, error) {
+	for _, place := range []struct{ dir, by string }{
+		{s.explicit, "the folder given"},
+		{s.named, "PGBINDIR"},
 	} {
-		if named.dir == "" {
+		if place.dir == "" {
 			continue
 		}
-		b, err := inspect(named.dir)
+		b, err := inspect(place.dir)
 		if err != nil {
-			return Binaries{}, fmt.Errorf("%w: %s is %s, and %w. %s", ErrNotInstalled, named.by, named.dir, err, advice(major))
+			return Binaries{}, fmt.Errorf("%w where it was said to be: %s is %s, but %w. %s", ErrNotInstalled, place.by, place.dir, err, advice(s.major))
 		}
-		return b, checkVersion(b, major)
+		return b, s.check(b)
 	}
 
 	var found []Binaries
@@ -61,7 +75,7 @@ func find(explicit string, major int) (Binaries, error) {
 			}
 		}
 	}
-	dirs, err := filepath.Glob(packagedDirs)
+	dirs, err := filepath.Glob(s.packaged)
 	if err != nil {
 		return Binaries{}, fmt.Errorf("look for PostgreSQL: %w", err)
 	}
@@ -76,7 +90,7 @@ func find(explicit string, major int) (Binaries, error) {
 
 	var refused error
 	for _, b := range found {
-		err := checkVersion(b, major)
+		err := s.check(b)
 		if err == nil {
 			return b, nil
 		}
@@ -87,7 +101,7 @@ func find(explicit string, major int) (Binaries, error) {
 	if refused != nil {
 		return Binaries{}, refused
 	}
-	return Binaries{}, fmt.Errorf("%w (looked in PGBINDIR, PATH and %s). %s", ErrNotInstalled, packagedDirs, advice(major))
+	return Binaries{}, fmt.Errorf("%w (looked in PGBINDIR, PATH and %s). %s", ErrNotInstalled, s.packaged, advice(s.major))
 }
 
 // inspect reads the version of the server in dir.
@@ -130,13 +144,13 @@ func majorOf(version string) (int, error) {
 	return 0, fmt.Errorf("its version cannot be read from %q", strings.TrimSpace(version))
 }
 
-func checkVersion(b Binaries, major int) error {
-	if major != 0 && b.Major != major {
+func (s search) check(b Binaries) error {
+	if s.major != 0 && b.Major != s.major {
 		return fmt.Errorf("the data were written by PostgreSQL %d, but the server in %s is PostgreSQL %d. %s Or move the data to the newer version with pg_upgrade",
-			major, b.Dir, b.Major, advice(major))
+			s.major, b.Dir, b.Major, advice(s.major))
 	}
 	if b.Major < OldestVersion {
-		return fmt.Errorf("%w: the server in %s is PostgreSQL %d, and %d or newer is needed. %s", ErrNotInstalled, b.Dir, b.Major, OldestVersion, advice(major))
+		return fmt.Errorf("%w: the server in %s is PostgreSQL %d, and %d or newer is needed. %s", ErrNotInstalled, b.Dir, b.Major, OldestVersion, advice(s.major))
 	}
 	return nil
 }

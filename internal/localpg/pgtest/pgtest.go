@@ -147,10 +147,11 @@ func makeDir() (string, error) {
 
 // removeAfterUs starts a watcher that removes dir once this process and the
 // server are gone. It notices by the end of its input, so even a kill cannot
-// leave the folder behind, which would keep its memory.
+// leave the folder behind, which would keep its memory. A dead process that
+// nobody has collected yet has an empty command line.
 func removeAfterUs(dir string, server int) (io.Closer, error) {
 	const script = `while read -r _; do :; done
-n=0; while kill -0 "$1" 2>/dev/null && [ $n -lt 300 ]; do sleep 0.1; n=$((n+1)); done
+n=0; while grep -qs . "/proc/$1/cmdline" && [ $n -lt 300 ]; do sleep 0.1; n=$((n+1)); done
 rm -rf -- "$2"`
 	cmd := exec.Command("/bin/sh", "-c", script, "sh", strconv.Itoa(server), dir)
 	cmd.Dir = "/"
