@@ -66,7 +66,7 @@ type Judged struct {
 
 // Any reports whether anything fired.
 func (d *Judged) Any() bool {
-	return d.Location.Fired.Any() || d.Dispersion.Fired.Any() || d.EWMA.Out != None || d.CUSUM.Out != None
+	return d.Location.Fired.Rules|d.Dispersion.Fired.Rules|uint16(d.EWMA.Out|d.CUSUM.Out) != 0
 }
 
 // ErrSubgroup marks a subgroup that the standard cannot judge; the message says

@@ -42,8 +42,9 @@ func (m Memory) SameFuture(o Memory) bool {
 //	7 x 8     little-endian IEEE 754: previous individual, last point of the
 //	          location and of the dispersion chart, EWMA deviation and variance,
 //	          CUSUM high and low
-//	twice     registers of the location, then of the dispersion chart: one byte
-//	          how many up to the last that is not zero, each as uvarint
+//	twice     for the location, then the dispersion chart: the six words of run
+//	          lengths, then one byte how many of the window registers follow (up to
+//	          the last that is not zero), all as uvarints
 //	4 bytes   little-endian CRC-32 (IEEE) of all before
 //
 // One memory has one spelling: whatever else decodes is refused.
@@ -76,13 +77,16 @@ func (m Memory) AppendBinary(b []byte) ([]byte, error) {
 		b = binary.LittleEndian.AppendUint64(b, math.Float64bits(*f))
 	}
 	for _, s := range [...]*State{&m.Location, &m.Dispersion} {
-		n := len(s.regs)
-		for n > 0 && s.regs[n-1] == 0 {
+		for _, word := range s.runs {
+			b = binary.AppendUvarint(b, word)
+		}
+		n := 2 * len(s.windows)
+		for n > 0 && s.windows[(n-1)/2][(n-1)%2] == 0 {
 			n--
 		}
 		b = append(b, byte(n))
-		for _, reg := range s.regs[:n] {
-			b = binary.AppendUvarint(b, reg)
+		for i := range n {
+			b = binary.AppendUvarint(b, s.windows[i/2][i%2])
 		}
 	}
 	return binary.LittleEndian.AppendUint32(b, crc32.ChecksumIEEE(b[start:])), nil
@@ -149,18 +153,29 @@ func decodeMemory(b []byte) (m Memory, ok bool) {
 		return m, false
 	}
 	for _, s := range [...]*State{&m.Location, &m.Dispersion} {
-		if len(b) == 0 || int(b[0]) > len(s.regs) {
+		for i := range s.runs {
+			if s.runs[i], b, ok = cutUvarint(b); !ok {
+				return m, false
+			}
+		}
+		if len(b) == 0 || int(b[0]) > 2*len(s.windows) {
 			return m, false
 		}
 		count := int(b[0])
 		b = b[1:]
 		for i := range count {
-			reg, n := binary.Uvarint(b)
-			if n <= 0 {
+			if s.windows[i/2][i%2], b, ok = cutUvarint(b); !ok {
 				return m, false
 			}
-			s.regs[i], b = reg, b[n:]
 		}
 	}
 	return m, len(b) == 0
+}
+
+func cutUvarint(b []byte) (v uint64, rest []byte, ok bool) {
+	v, n := binary.Uvarint(b)
+	if n <= 0 {
+		return 0, nil, false
+	}
+	return v, b[n:], true
 }

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"math/bits"
+	"slices"
 )
 
 // MaxRules is the largest number of rules one chart may carry.
@@ -34,13 +35,47 @@ func (f Fired) Side(i int) Side {
 	return Side(f.High>>uint(i)&1) | Side(f.Low>>uint(i)&1)<<1
 }
 
+// A lane is one rule on one side: rule i has bit i for the high side, bit 16+i for
+// the low side, and bit 32+i when it has no side. A word of lanes says for all of
+// them at once who has its property at the current point.
+type lanes = uint64
+
+const (
+	lowLane  = MaxRules
+	noneLane = 2 * MaxRules
+)
+
+// planes is how many bits a run length takes: a run is remembered up to one point
+// short of the longest window.
+const planes = 6
+
 // Rules is a compiled set of run rules. It is immutable and safe for concurrent
 // use; what it remembers lives in the State it is given.
 type Rules struct {
-	rules   []Rule
-	ops     []op
-	compare bool // some rule compares a point with the one before
-	turns   bool // some rule compares a step with the one before
+	rules []Rule
+	// edges are the distinct distances from the centre at which some property
+	// begins or ends, ascending, with the tie allowance in them. The number of
+	// edges at or below |z| is the zone of a point.
+	edges []float64
+	// zones holds the lanes that have their property in each zone, above the
+	// centre and below it.
+	zones          [2][2 * MaxRules]lanes
+	up, down, turn lanes // those that ask for a rise, a fall, a turn
+	neighbours     bool  // some rule compares a point with the one before
+
+	runs    lanes         // those that want every point of their window
+	longest [planes]lanes // their window less one, bit by bit
+	windows []window      // those that want k of m
+}
+
+// window is a rule that wants k of the last m, k < m, on one side.
+type window struct {
+	rule uint8
+	k, m uint8
+	// next maps a register of up to 8 bits with the new point's bit below it to the
+	// register that follows, with bit 8 set when the rule fires. Longer windows have
+	// none and count.
+	next *[512]uint16
 }
 
 // State is what a set of rules remembers of the points so far. The zero State
@@ -49,37 +84,11 @@ type Rules struct {
 // rule by itself can tell. The exception is the last value, kept exactly where a
 // rule compares neighbours. A State belongs to the Rules that made it.
 type State struct {
-	regs [2 * MaxRules]uint64 // bit 0 is the newest point; high and low side, or one only
-	last float64              // X of the last point
-	step int8                 // sign of the last step, where a rule asks for turns
-	seen bool                 // there is a last point
-}
-
-// source tells where the bit of the current point comes from, and how the window
-// is read.
-type source uint8
-
-const (
-	onePoint  source = iota // beyond: no memory
-	zoneRun                 // z beyond the edge on one side, all of m
-	zoneCount               // z beyond the edge on one side, k of m
-	stepRun                 // steps up or down, all of m-1
-	turnRun                 // steps that turn against the one before, all of m-2
-	nearRun                 // |z| within the edge, all of m
-	farRun                  // |z| outside the edge, all of m
-)
-
-// op is one rule, ready to run.
-type op struct {
-	source source
-	rule   uint8   // position in the set, and bit in Fired
-	reg    uint8   // its first register
-	top    uint8   // a full run has this bit set in the register including the current point
-	k, m   uint8   // for zoneCount
-	edge   float64 // with the tie allowance in it
-	keep   uint64  // the bits that outlive this point
-	// live maps a register of up to 8 bits to its normal form; nil for longer ones.
-	live *[256]uint8
+	runs    [planes]lanes       // bit b of every lane's run length
+	windows [MaxRules][2]uint64 // high and low register of each k-of-m; bit 0 is the newest point
+	last    float64             // X of the last point
+	step    int8                // sign of the last step, where a rule asks for turns
+	seen    bool                // there is a last point
 }
 
 // Compile checks a set of up to MaxRules rules and makes it ready to run. The
@@ -88,47 +97,83 @@ func Compile(rules []Rule) (*Rules, error) {
 	if len(rules) > MaxRules {
 		return nil, fmt.Errorf("rules: a chart takes at most %d run rules, got %d", MaxRules, len(rules))
 	}
-	r := &Rules{rules: append([]Rule(nil), rules...)}
-	var reg uint8
+	r := &Rules{rules: slices.Clone(rules)}
 	for i, rule := range rules {
 		if err := rule.Validate(); err != nil {
 			return nil, fmt.Errorf("rule %d: %w", i+1, err)
 		}
-		o := op{rule: uint8(i), reg: reg, edge: rule.Z + Tie, top: uint8(max(rule.M-1, 0))}
-		sides := uint8(2)
-		switch rule.Kind {
-		case Beyond:
-			o.source, sides = onePoint, 0
-		case KOfM:
-			o.k, o.m = uint8(rule.K), uint8(rule.M)
-			switch rule.K {
-			case rule.M:
-				o.source = zoneRun
-			default:
-				o.source = zoneCount
-				if rule.M <= 9 {
-					o.live = new([256]uint8)
-					for bits := range 1 << (rule.M - 1) {
-						o.live[bits] = uint8(normal(uint64(bits), rule.K, rule.M))
-					}
-				}
-			}
-		case OneSide:
-			o.source = zoneRun
-		case RisingOrFalling:
-			o.source, o.top, r.compare = stepRun, uint8(rule.M-2), true
-		case Alternating:
-			o.source, o.top, r.compare, r.turns, sides = turnRun, uint8(rule.M-3), true, true, 1
-		case Within:
-			o.source, o.edge, sides = nearRun, rule.Z-Tie, 1
-		case Outside:
-			o.source, sides = farRun, 1
+		if edge, ok := rule.edge(); ok {
+			r.edges = append(r.edges, edge)
 		}
-		o.keep = 1<<o.top - 1
-		reg += sides
-		r.ops = append(r.ops, o)
 	}
+	slices.Sort(r.edges)
+	r.edges = slices.Compact(r.edges)
+	for i, rule := range rules {
+		r.add(i, rule)
+	}
+	r.neighbours = r.up|r.turn != 0
 	return r, nil
+}
+
+// edge is the least distance from the centre at which the rule's property holds,
+// for within the least at which it no longer does.
+func (rule Rule) edge() (float64, bool) {
+	switch rule.Kind {
+	case RisingOrFalling, Alternating:
+		return 0, false
+	case Within:
+		return math.Nextafter(rule.Z-Tie, math.Inf(1)), true
+	}
+	return rule.Z + Tie, true
+}
+
+// add lays out one validated rule.
+func (r *Rules) add(i int, rule Rule) {
+	high, low, none := lanes(1)<<i, lanes(1)<<(lowLane+i), lanes(1)<<(noneLane+i)
+	length := rule.M // points, steps or turns that make a firing
+	switch rule.Kind {
+	case RisingOrFalling:
+		r.up |= high
+		r.down |= low
+		r.run(high|low, rule.M-1)
+		return
+	case Alternating:
+		r.turn |= none
+		r.run(none, rule.M-2)
+		return
+	case Within, Outside:
+		high, low = none, none
+	case Beyond:
+		length = 1
+	}
+	edge, _ := rule.edge()
+	for zone := range len(r.edges) + 1 {
+		if reached := zone > 0 && r.edges[zone-1] >= edge; reached != (rule.Kind == Within) {
+			r.zones[0][zone] |= high
+			r.zones[1][zone] |= low
+		}
+	}
+	if rule.Kind != KOfM || rule.K == rule.M {
+		r.run(high|low, length)
+		return
+	}
+	w := window{rule: uint8(i), k: uint8(rule.K), m: uint8(rule.M)}
+	if rule.M <= 9 {
+		w.next = new([512]uint16)
+		for seen := range uint64(1) << rule.M {
+			after, fires := w.count(seen>>1, seen&1)
+			w.next[seen] = uint16(after | fires<<8)
+		}
+	}
+	r.windows = append(r.windows, w)
+}
+
+// run makes lanes fire at every point that completes length in a row.
+func (r *Rules) run(who lanes, length int) {
+	r.runs |= who
+	for b := range planes {
+		r.longest[b] |= who & -lanes((length-1)>>b&1)
+	}
 }
 
 // Len is the number of rules.
@@ -145,57 +190,69 @@ func (r *Rules) Rule(i int) Rule { return r.rules[i] }
 // Handbook; Nelson (1984), Journal of Quality Technology 16(4), with the readings
 // stated at each Kind.
 func (r *Rules) Step(s *State, p Point) Fired {
-	var high, low, none uint64
-	var up, down, turn uint64
-	if r.compare {
-		up, down, turn = s.compare(p.X, r.turns)
+	if len(r.rules) == 0 {
+		return Fired{}
 	}
-	size := math.Abs(p.Z)
-	for i := range r.ops {
-		o := &r.ops[i]
-		switch o.source {
-		case onePoint:
-			high |= bit(p.Z >= o.edge) << o.rule
-			low |= bit(p.Z <= -o.edge) << o.rule
-		case zoneRun:
-			high |= o.run(&s.regs[o.reg%32], bit(p.Z >= o.edge)) << o.rule
-			low |= o.run(&s.regs[(o.reg+1)%32], bit(p.Z <= -o.edge)) << o.rule
-		case zoneCount:
-			high |= o.count(&s.regs[o.reg%32], bit(p.Z >= o.edge)) << o.rule
-			low |= o.count(&s.regs[(o.reg+1)%32], bit(p.Z <= -o.edge)) << o.rule
-		case stepRun:
-			high |= o.run(&s.regs[o.reg%32], up) << o.rule
-			low |= o.run(&s.regs[(o.reg+1)%32], down) << o.rule
-		case turnRun:
-			none |= o.run(&s.regs[o.reg%32], turn) << o.rule
-		case nearRun:
-			none |= o.run(&s.regs[o.reg%32], bit(size <= o.edge)) << o.rule
-		case farRun:
-			none |= o.run(&s.regs[o.reg%32], bit(size >= o.edge)) << o.rule
+	// Nothing below branches on the data: on a process in control such a branch
+	// is a coin toss, and a wrong guess costs as much as a whole rule.
+	var has lanes
+	if p.Z == p.Z {
+		size, zone := math.Abs(p.Z), uint64(0)
+		for _, edge := range r.edges {
+			zone += bit(size >= edge)
 		}
+		has = r.zones[math.Float64bits(p.Z)>>63][zone%(2*MaxRules)]
 	}
-	return Fired{Rules: uint16(high | low | none), High: uint16(high), Low: uint16(low)}
+	if r.neighbours {
+		has |= r.compare(s, p.X)
+	}
+	fired := r.stepRuns(s, has&r.runs)
+	for i := range r.windows {
+		w := &r.windows[i]
+		reg := &s.windows[i%MaxRules]
+		fired |= w.step(&reg[0], has>>(w.rule&63)&1) << (w.rule & 63)
+		fired |= w.step(&reg[1], has>>((lowLane+w.rule)&63)&1) << ((lowLane + w.rule) & 63)
+	}
+	high, low := uint16(fired), uint16(fired>>lowLane)
+	return Fired{Rules: high | low | uint16(fired>>noneLane), High: high, Low: low}
 }
 
-// run adds a point to a register whose rule wants every point of the window. One
-// point without the property ends the run for good, so only the run itself is
-// kept, and no more of it than the next point needs.
-func (o *op) run(reg *uint64, has uint64) uint64 {
-	w := (*reg<<1 | 1) & -has
-	*reg = w & o.keep
-	return w >> (o.top & 63) & 1
+// stepRuns adds a point to all runs at once. The run lengths stand upright: word b
+// holds bit b of every lane's length, so one addition serves all lanes. A length
+// stops one short of its window: there the next point with the property fires, and
+// more would make no difference.
+func (r *Rules) stepRuns(s *State, has lanes) lanes {
+	// Written out, because a loop costs as much again as the work in it.
+	c, full := &s.runs, &r.longest
+	a0, a1, a2, a3, a4, a5 := c[0], c[1], c[2], c[3], c[4], c[5]
+	short := (a0 ^ full[0]) | (a1 ^ full[1]) | (a2 ^ full[2]) | (a3 ^ full[3]) | (a4 ^ full[4]) | (a5 ^ full[5])
+	carry := has & short
+	c[0], carry = (a0^carry)&has, a0&carry
+	c[1], carry = (a1^carry)&has, a1&carry
+	c[2], carry = (a2^carry)&has, a2&carry
+	c[3], carry = (a3^carry)&has, a3&carry
+	c[4], carry = (a4^carry)&has, a4&carry
+	c[5] = (a5 ^ carry) & has
+	return has &^ short
 }
 
-// count adds a point to a register whose rule wants k of the window.
-func (o *op) count(reg *uint64, has uint64) uint64 {
-	w := *reg<<1 | has
-	kept := w & o.keep
-	if o.live != nil {
-		*reg = uint64(o.live[kept&255])
-	} else {
-		*reg = normal(kept, int(o.k), int(o.m))
+// step adds a point to one register and says whether the rule fires.
+func (w *window) step(reg *uint64, has uint64) (fires uint64) {
+	if w.next != nil {
+		next := uint64(w.next[(*reg<<1|has)&511])
+		*reg = next & 255
+		return next >> 8
 	}
-	return has & bit(bits.OnesCount64(w) >= int(o.k))
+	*reg, fires = w.count(*reg, has)
+	return fires
+}
+
+// count is step in full: the current point must have the property, and k of the m
+// points up to it.
+func (w *window) count(reg, has uint64) (after, fires uint64) {
+	seen := reg<<1 | has
+	fires = has & bit(bits.OnesCount64(seen) >= int(w.k))
+	return normal(seen&(1<<(w.m-1)-1), int(w.k), int(w.m)), fires
 }
 
 // normal clears from a register of the last m-1 points what can make no
@@ -214,16 +271,16 @@ func normal(reg uint64, k, m int) uint64 {
 	return reg
 }
 
-// compare steps from the last point to x and says whether that went up, down, or
-// turned against the step before.
-func (s *State) compare(x float64, turns bool) (up, down, turn uint64) {
+// compare steps from the last point to x: up, down, or turning against the step
+// before.
+func (r *Rules) compare(s *State, x float64) lanes {
 	d := x - s.last
 	seen := bit(s.seen)
-	up = bit(d >= Tie) & seen
-	down = bit(d <= -Tie) & seen
-	if turns {
+	up, down := bit(d >= Tie)&seen, bit(d <= -Tie)&seen
+	has := r.up&-up | r.down&-down
+	if r.turn != 0 {
 		step := int8(up) - int8(down)
-		turn = bit(step*s.step < 0)
+		has |= r.turn & -bit(step*s.step < 0)
 		s.step = step
 	}
 	if s.seen = x == x; s.seen {
@@ -231,7 +288,7 @@ func (s *State) compare(x float64, turns bool) (up, down, turn uint64) {
 	} else {
 		s.last = 0
 	}
-	return up, down, turn
+	return has
 }
 
 func bit(b bool) uint64 {
