@@ -137,14 +137,15 @@ func Gamma(a, x float64) (p, q float64) {
 // P = x^a/Γ(a+1) (1 + a Σ (-x)^k/((a+k) k!)).
 func gammaSmall(a, x float64) (p, q float64) {
 	l, _ := math.Lgamma(a + 1)
-	u := -math.Expm1(a*math.Log(x) - l)
+	lead := a*math.Log(x) - l
+	u := -math.Expm1(lead)
 	sum, term := 0.0, 1.0
 	for k := 1; k < 60; k++ {
 		term *= -x / float64(k)
 		sum += term / (a + float64(k))
 	}
 	q = u - (1-u)*a*sum
-	return (1 - u) * (1 + a*sum), q
+	return math.Exp(lead) * (1 + a*sum), q
 }
 
 func nonzero(x float64) float64 {
