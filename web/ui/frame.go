@@ -1,0 +1,57 @@
+package ui
+
+import (
+	"context"
+	"net/http"
+	"time"
+
+	"holdfast/internal/plant"
+	"holdfast/web/words"
+)
+
+// Frame is what all pages of one request share. The router gathers it once, before
+// any surface is asked.
+type Frame struct {
+	Person    plant.Person // the zero value when nobody is signed in
+	SignedIn  bool
+	Session   string // names the session to the live hub; never the secret itself
+	Plant     plant.Plant
+	Now       time.Time
+	Theme     Theme
+	Words     *words.Printer
+	RequestID string
+	Secure    bool                     // cookies are sent over https only
+	Asset     func(name string) string // address of a file of static/, such as "css/tokens.css"
+}
+
+type frameKey struct{}
+
+// WithFrame returns a request that carries the frame.
+func WithFrame(r *http.Request, f Frame) *http.Request {
+	return r.WithContext(context.WithValue(r.Context(), frameKey{}, f))
+}
+
+// FrameOf returns the frame of a request. What the router has not filled in gets a
+// plain default, so that a surface can be tested without it.
+func FrameOf(r *http.Request) Frame {
+	f, _ := r.Context().Value(frameKey{}).(Frame)
+	if f.Now.IsZero() {
+		f.Now = time.Now()
+	}
+	if f.Plant.Location == nil {
+		f.Plant.Location = time.UTC
+	}
+	if f.Words == nil {
+		f.Words = words.From(r)
+	}
+	if f.Theme == "" {
+		f.Theme = ThemeOf(r)
+	}
+	if f.Asset == nil {
+		f.Asset = func(name string) string { return "/static/" + name }
+	}
+	return f
+}
+
+// Format is how times and numbers are written in this request.
+func (f Frame) Format() Format { return NewFormat(f.Words, f.Plant.Location, f.Now) }

@@ -1,0 +1,58 @@
+package ui
+
+import (
+	"net/http"
+	"net/url"
+	"strings"
+)
+
+// Addresses that more than one package names.
+const (
+	SignInAddress  = "/sign-in"
+	SignOutAddress = "/sign-out"
+	ThemeAddress   = "/theme"
+)
+
+// SignInPath is the sign-in page that leads back to a local path.
+func SignInPath(back string) string {
+	if back = LocalPath(back); back == "/" {
+		return SignInAddress
+	}
+	return SignInAddress + "?" + url.Values{"to": {back}}.Encode()
+}
+
+// LocalPath returns path when it is a path of this server, with its query, and "/"
+// for everything else: another host in any of the spellings that browsers accept,
+// another scheme, control characters.
+func LocalPath(path string) string {
+	if !strings.HasPrefix(path, "/") || len(path) > 2000 {
+		return "/"
+	}
+	for _, c := range []byte(path) {
+		if c < ' ' || c == 0x7f || c == '\\' {
+			return "/"
+		}
+	}
+	u, err := url.Parse(path)
+	if err != nil || u.Scheme != "" || u.Host != "" || u.User != nil || strings.HasPrefix(u.Path, "//") {
+		return "/"
+	}
+	// A browser resolves dot segments before it looks for a host, so "/.//x" must
+	// not stay either.
+	for _, part := range strings.Split(u.Path, "/") {
+		if part == "." || part == ".." {
+			return "/"
+		}
+	}
+	return (&url.URL{Path: u.Path, RawPath: u.RawPath, RawQuery: u.RawQuery}).String()
+}
+
+// refererPath is the page that a form was sent from, "/" when it is not known or
+// not ours.
+func refererPath(r *http.Request) string {
+	u, err := url.Parse(r.Referer())
+	if err != nil || u.Host == "" || u.Host != r.Host {
+		return "/"
+	}
+	return LocalPath(u.RequestURI())
+}
