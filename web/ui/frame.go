@@ -20,8 +20,7 @@ type Frame struct {
 	Theme     Theme
 	Words     *words.Printer
 	RequestID string
-	Secure    bool                     // cookies are sent over https only
-	Asset     func(name string) string // address of a file of static/, such as "css/tokens.css"
+	Secure    bool // cookies are sent over https only
 }
 
 type frameKey struct{}
@@ -46,9 +45,6 @@ func FrameOf(r *http.Request) Frame {
 	}
 	if f.Theme == "" {
 		f.Theme = ThemeOf(r)
-	}
-	if f.Asset == nil {
-		f.Asset = func(name string) string { return "/static/" + name }
 	}
 	return f
 }

@@ -5,10 +5,12 @@ import (
 	"net/url"
 
 	"github.com/a-h/templ"
+
+	"holdfast/static"
 )
 
 // Surface is the part of the program that a page belongs to. It is the class of
-// the body and names the style sheet css/<surface>.css.
+// the body and decides which style sheets it has.
 type Surface string
 
 const (
@@ -60,21 +62,43 @@ func (s Shell) windowTitle() string {
 	return s.Words.T("ui.title", s.Title, name)
 }
 
+// sheets are the style sheets of each surface, after those that all have.
+var sheets = map[Surface][]string{
+	Station: {"css/chart.css", "css/station.css"},
+	Board:   {"css/chart.css", "css/board.css"},
+	Desk:    {"css/chart.css", "css/desk.css"},
+	Admin:   {"css/desk.css"},
+	Door:    {"css/door.css"},
+}
+
 func (s Shell) styles() []string {
-	all := append([]string{"css/holdfast.css", "css/" + string(s.Surface) + ".css"}, s.Styles...)
-	for i, name := range all {
-		all[i] = s.Asset(name)
-	}
-	return all
+	all := []string{"vendor/modern-normalize/modern-normalize.css", "css/tokens.css", "css/base.css", "css/shell.css"}
+	return urls(all, sheets[s.Surface], s.Styles)
 }
 
 func (s Shell) scripts() []string {
 	var all []string
 	if len(s.Topics) > 0 {
-		all = append(all, s.Asset("js/live.js"))
+		all = append(all, "js/live.js")
 	}
-	for _, name := range s.Scripts {
-		all = append(all, s.Asset(name))
+	return urls(all, s.Scripts)
+}
+
+// fonts are asked for before the style sheets are read, so that no text jumps.
+func (s Shell) fonts() []string {
+	all := []string{"fonts/atkinson-hyperlegible-next-latin-wght-normal.woff2"}
+	if s.Surface != Door {
+		all = append(all, "fonts/ibm-plex-sans-greek-wght-normal.woff2") // mu and sigma
+	}
+	return urls(all)
+}
+
+func urls(lists ...[]string) []string {
+	var all []string
+	for _, list := range lists {
+		for _, name := range list {
+			all = append(all, static.URL(name))
+		}
 	}
 	return all
 }
