@@ -5,6 +5,7 @@ import (
 	"math"
 	"math/bits"
 	"slices"
+	"sync"
 )
 
 // MaxRules is the largest number of rules one chart may carry.
@@ -57,9 +58,8 @@ type Rules struct {
 	// begins or ends, ascending, with the tie allowance in them. The number of
 	// edges at or below |z| is the zone of a point.
 	edges []float64
-	// zones holds the lanes that have their property in each zone, above the
-	// centre and below it.
-	zones          [2][2 * MaxRules]lanes
+	// zones says, above the centre and below it, who has what in each zone.
+	zones          [2][2 * MaxRules]zone
 	up, down, turn lanes // those that ask for a rise, a fall, a turn
 	neighbours     bool  // some rule compares a point with the one before
 
@@ -68,14 +68,51 @@ type Rules struct {
 	windows []window      // those that want k of m
 }
 
-// window is a rule that wants k of the last m, k < m, on one side.
+// zone is what a point has by its distance from the centre alone.
+type zone struct {
+	has   lanes
+	sides uint64 // of window i, at bit 2i: 1 the high side, 2 the low side, 0 neither
+}
+
+// window is a rule that wants k of the last m, k < m. Its two registers hold the
+// last m-1 points, bit 0 the newest, on the high and the low side.
 type window struct {
 	rule uint8
 	k, m uint8
-	// next maps a register of up to 8 bits with the new point's bit below it to the
-	// register that follows, with bit 8 set when the rule fires. Longer windows have
-	// none and count.
-	next *[512]uint16
+	// next steps a window of up to shortWindow points in one look-up. Its index is
+	// both registers, the low side above the high one, and below them the side of
+	// the point. An entry is the registers that follow and, above them, the lanes
+	// that fire as if this were rule 0.
+	next *shortTable
+}
+
+// shortWindow is the longest window stepped by look-up, shortFires where the lanes
+// begin in an entry.
+const (
+	shortWindow = 5
+	shortFires  = 2 * (shortWindow - 1)
+)
+
+type shortTable [1 << (2 * shortWindow)]uint32
+
+// shortTables are the same for everybody, by m and k, and made once.
+var shortTables = sync.OnceValue(func() (tables [shortWindow + 1][shortWindow]*shortTable) {
+	for m := 2; m <= shortWindow; m++ {
+		for k := 1; k < m; k++ {
+			tables[m][k] = newShortTable(k, m)
+		}
+	}
+	return tables
+})
+
+func newShortTable(k, m int) *shortTable {
+	w, t, bits := window{k: uint8(k), m: uint8(m)}, new(shortTable), m-1
+	for at := range uint64(1) << (2*bits + 2) {
+		high, firesHigh := w.count(at>>2&(1<<bits-1), at&1)
+		low, firesLow := w.count(at>>(2+bits), at>>1&1)
+		t[at] = uint32(high | low<<bits | (firesHigh|firesLow<<lowLane)<<shortFires)
+	}
+	return t
 }
 
 // State is what a set of rules remembers of the points so far. The zero State
@@ -85,7 +122,7 @@ type window struct {
 // rule compares neighbours. A State belongs to the Rules that made it.
 type State struct {
 	runs    [planes]lanes       // bit b of every lane's run length
-	windows [MaxRules][2]uint64 // high and low register of each k-of-m; bit 0 is the newest point
+	windows [MaxRules][2]uint64 // registers of each k-of-m, high and low; of a short one both in the first
 	last    float64             // X of the last point
 	step    int8                // sign of the last step, where a rule asks for turns
 	seen    bool                // there is a last point
@@ -147,10 +184,10 @@ func (r *Rules) add(i int, rule Rule) {
 		length = 1
 	}
 	edge, _ := rule.edge()
-	for zone := range len(r.edges) + 1 {
-		if reached := zone > 0 && r.edges[zone-1] >= edge; reached != (rule.Kind == Within) {
-			r.zones[0][zone] |= high
-			r.zones[1][zone] |= low
+	for n := range len(r.edges) + 1 {
+		if reached := n > 0 && r.edges[n-1] >= edge; reached != (rule.Kind == Within) {
+			r.zones[0][n].has |= high
+			r.zones[1][n].has |= low
 		}
 	}
 	if rule.Kind != KOfM || rule.K == rule.M {
@@ -158,12 +195,12 @@ func (r *Rules) add(i int, rule Rule) {
 		return
 	}
 	w := window{rule: uint8(i), k: uint8(rule.K), m: uint8(rule.M)}
-	if rule.M <= 9 {
-		w.next = new([512]uint16)
-		for seen := range uint64(1) << rule.M {
-			after, fires := w.count(seen>>1, seen&1)
-			w.next[seen] = uint16(after | fires<<8)
-		}
+	for zone := range r.zones[0] {
+		r.zones[0][zone].sides |= r.zones[0][zone].has >> i & 1 << (2 * len(r.windows))
+		r.zones[1][zone].sides |= r.zones[1][zone].has >> (lowLane + i) & 1 << (2*len(r.windows) + 1)
+	}
+	if rule.M <= shortWindow {
+		w.next = shortTables()[rule.M][rule.K]
 	}
 	r.windows = append(r.windows, w)
 }
@@ -194,61 +231,70 @@ func (r *Rules) Step(s *State, p Point) Fired {
 		return Fired{}
 	}
 	// Nothing below branches on the data: on a process in control such a branch
-	// is a coin toss, and a wrong guess costs as much as a whole rule.
-	var has lanes
+	// is a coin toss, and a wrong guess costs as much as a whole rule. Nor is it
+	// split up: the calls would cost as much as the work.
+	var at zone
 	if p.Z == p.Z {
-		size, zone := math.Abs(p.Z), uint64(0)
+		size, n := math.Abs(p.Z), uint64(0)
 		for _, edge := range r.edges {
-			zone += bit(size >= edge)
+			n += bit(size >= edge)
 		}
-		has = r.zones[math.Float64bits(p.Z)>>63][zone%(2*MaxRules)]
+		at = r.zones[math.Float64bits(p.Z)>>63][n%(2*MaxRules)]
 	}
+	has := at.has
 	if r.neighbours {
-		has |= r.compare(s, p.X)
+		// From the last point to this one: up, down, or turning against the step
+		// before.
+		d, seen := p.X-s.last, bit(s.seen)
+		up, down := bit(d >= Tie)&seen, bit(d <= -Tie)&seen
+		has |= r.up&-up | r.down&-down
+		if r.turn != 0 {
+			step := int8(up) - int8(down)
+			has |= r.turn & -(uint64(uint8(step*s.step)) >> 7)
+			s.step = step
+		}
+		s.seen, s.last = true, p.X+0 // a negative zero becomes a zero
+		if p.X != p.X {
+			s.seen, s.last = false, 0
+		}
 	}
-	fired := r.stepRuns(s, has&r.runs)
-	for i := range r.windows {
-		w := &r.windows[i]
-		reg := &s.windows[i%MaxRules]
-		fired |= w.step(&reg[0], has>>(w.rule&63)&1) << (w.rule & 63)
-		fired |= w.step(&reg[1], has>>((lowLane+w.rule)&63)&1) << ((lowLane + w.rule) & 63)
+
+	// All runs at once. The run lengths stand upright: word b holds bit b of every
+	// lane's length, so one addition serves all lanes. A length stops one short of
+	// its window: there the next point with the property fires, and more would make
+	// no difference.
+	c, full, on := &s.runs, &r.longest, has&r.runs
+	a0, a1, a2, a3, a4, a5 := c[0], c[1], c[2], c[3], c[4], c[5]
+	short := (a0 ^ full[0]) | (a1 ^ full[1]) | (a2 ^ full[2]) | (a3 ^ full[3]) | (a4 ^ full[4]) | (a5 ^ full[5])
+	fired, carry := on&^short, on&short
+	c[0], carry = (a0^carry)&on, a0&carry
+	c[1], carry = (a1^carry)&on, a1&carry
+	c[2], carry = (a2^carry)&on, a2&carry
+	c[3], carry = (a3^carry)&on, a3&carry
+	c[4], carry = (a4^carry)&on, a4&carry
+	c[5] = (a5 ^ carry) & on
+
+	ws, sides := r.windows, at.sides
+	for i := range ws {
+		w, reg := &ws[i], &s.windows[uint(i)%MaxRules]
+		if w.next != nil {
+			next := w.next[(reg[0]<<2|sides&3)%uint64(len(w.next))]
+			reg[0] = uint64(next % (1 << shortFires))
+			fired |= uint64(next>>shortFires) << (w.rule % MaxRules)
+		} else {
+			var high, low uint64
+			reg[0], high = w.count(reg[0], sides&1)
+			reg[1], low = w.count(reg[1], sides>>1&1)
+			fired |= (high | low<<lowLane) << (w.rule % MaxRules)
+		}
+		sides >>= 2
 	}
 	high, low := uint16(fired), uint16(fired>>lowLane)
 	return Fired{Rules: high | low | uint16(fired>>noneLane), High: high, Low: low}
 }
 
-// stepRuns adds a point to all runs at once. The run lengths stand upright: word b
-// holds bit b of every lane's length, so one addition serves all lanes. A length
-// stops one short of its window: there the next point with the property fires, and
-// more would make no difference.
-func (r *Rules) stepRuns(s *State, has lanes) lanes {
-	// Written out, because a loop costs as much again as the work in it.
-	c, full := &s.runs, &r.longest
-	a0, a1, a2, a3, a4, a5 := c[0], c[1], c[2], c[3], c[4], c[5]
-	short := (a0 ^ full[0]) | (a1 ^ full[1]) | (a2 ^ full[2]) | (a3 ^ full[3]) | (a4 ^ full[4]) | (a5 ^ full[5])
-	carry := has & short
-	c[0], carry = (a0^carry)&has, a0&carry
-	c[1], carry = (a1^carry)&has, a1&carry
-	c[2], carry = (a2^carry)&has, a2&carry
-	c[3], carry = (a3^carry)&has, a3&carry
-	c[4], carry = (a4^carry)&has, a4&carry
-	c[5] = (a5 ^ carry) & has
-	return has &^ short
-}
-
-// step adds a point to one register and says whether the rule fires.
-func (w *window) step(reg *uint64, has uint64) (fires uint64) {
-	if w.next != nil {
-		next := uint64(w.next[(*reg<<1|has)&511])
-		*reg = next & 255
-		return next >> 8
-	}
-	*reg, fires = w.count(*reg, has)
-	return fires
-}
-
-// count is step in full: the current point must have the property, and k of the m
-// points up to it.
+// count adds a point to one register: a firing needs that the current point has the
+// property, and k of the m points up to it.
 func (w *window) count(reg, has uint64) (after, fires uint64) {
 	seen := reg<<1 | has
 	fires = has & bit(bits.OnesCount64(seen) >= int(w.k))
@@ -269,26 +315,6 @@ func normal(reg uint64, k, m int) uint64 {
 		reg &^= 1 << (age - 1)
 	}
 	return reg
-}
-
-// compare steps from the last point to x: up, down, or turning against the step
-// before.
-func (r *Rules) compare(s *State, x float64) lanes {
-	d := x - s.last
-	seen := bit(s.seen)
-	up, down := bit(d >= Tie)&seen, bit(d <= -Tie)&seen
-	has := r.up&-up | r.down&-down
-	if r.turn != 0 {
-		step := int8(up) - int8(down)
-		has |= r.turn & -bit(step*s.step < 0)
-		s.step = step
-	}
-	if s.seen = x == x; s.seen {
-		s.last = x + 0 // a negative zero becomes a zero
-	} else {
-		s.last = 0
-	}
-	return has
 }
 
 func bit(b bool) uint64 {
