@@ -1,0 +1,222 @@
+package auth
+
+import (
+	"context"
+	"fmt"
+	"net/http"
+	"sync"
+	"time"
+
+	"github.com/alexedwards/scs/v2"
+	"github.com/google/uuid"
+
+	"holdfast/internal/plant"
+)
+
+// visit is what one request knows of its session. A handler that signs in or
+// out changes it, and who reads it afterwards sees that.
+type visit struct {
+	person   plant.Person
+	signedIn bool
+	timedOut bool
+	begun    bool // signed in during this request
+}
+
+type visitKey struct{}
+
+// visitOf panics outside of the middleware, which is a mistake in the wiring.
+func visitOf(ctx context.Context) *visit {
+	v, ok := ctx.Value(visitKey{}).(*visit)
+	if !ok {
+		panic("auth: no session middleware around this handler")
+	}
+	return v
+}
+
+// FromContext gives who is signed in; false when nobody is.
+func FromContext(ctx context.Context) (plant.Person, bool) {
+	v, ok := ctx.Value(visitKey{}).(*visit)
+	if !ok || !v.signedIn {
+		return plant.Person{}, false
+	}
+	return v.person, true
+}
+
+// TimedOut reports that this request came with a session that had not been used
+// for too long, so that the sign-in page can say why it appears.
+func TimedOut(ctx context.Context) bool {
+	v, ok := ctx.Value(visitKey{}).(*visit)
+	return ok && v.timedOut
+}
+
+// Middleware loads the session and who it belongs to, and writes the session and
+// its cookie when they changed. It turns nobody away. The response is wrapped,
+// so sockets need LoadOnly.
+func (s *Sessions) Middleware(next http.Handler) http.Handler {
+	inner := s.scs.LoadAndSave(http.HandlerFunc(func(w http.ResponseWriter, r *http.Request) {
+		ctx := r.Context()
+		over, err := s.admit(ctx)
+		if err == nil && over {
+			err = s.SignOut(ctx)
+		}
+		if err != nil {
+			s.opt.Fail(w, r, err)
+			return
+		}
+		s.touch(ctx)
+		next.ServeHTTP(w, r)
+	}))
+	return http.HandlerFunc(func(w http.ResponseWriter, r *http.Request) {
+		inner.ServeHTTP(w, withVisit(r))
+	})
+}
+
+// LoadOnly loads the session and who it belongs to and writes nothing: neither
+// the session nor its last use nor a cookie. The response is not wrapped, so
+// sockets can be opened behind it.
+func (s *Sessions) LoadOnly(next http.Handler) http.Handler {
+	return http.HandlerFunc(func(w http.ResponseWriter, r *http.Request) {
+		w.Header().Add("Vary", "Cookie")
+		var token string
+		if c, err := r.Cookie(s.scs.Cookie.Name); err == nil {
+			token = c.Value
+		}
+		r = withVisit(r)
+		ctx, err := s.scs.Load(r.Context(), token)
+		if err == nil {
+			_, err = s.admit(ctx)
+		}
+		if err != nil {
+			s.opt.Fail(w, r, err)
+			return
+		}
+		next.ServeHTTP(w, r.WithContext(ctx))
+	})
+}
+
+func withVisit(r *http.Request) *http.Request {
+	return r.WithContext(context.WithValue(r.Context(), visitKey{}, &visit{}))
+}
+
+// admit finds out who the loaded session belongs to. over means that there is a
+// session that must not be used any more.
+func (s *Sessions) admit(ctx context.Context) (over bool, err error) {
+	text := s.scs.GetString(ctx, keyPerson)
+	if text == "" {
+		return false, nil
+	}
+	v := visitOf(ctx)
+	id, err := uuid.Parse(text)
+	if err != nil {
+		return false, fmt.Errorf("read who a session belongs to: %w", err)
+	}
+	now := s.opt.Now()
+	if !now.Before(s.scs.Deadline(ctx)) {
+		return true, nil
+	}
+	if now.Sub(time.Unix(s.scs.GetInt64(ctx, keySeen), 0)) >= s.opt.Idle {
+		v.timedOut = true
+		return true, nil
+	}
+	p, err := s.people.find(ctx, id)
+	switch {
+	case plant.IsKind(err, plant.NotFound) || (err == nil && !p.Active):
+		return true, nil
+	case err != nil:
+		return false, fmt.Errorf("find who is signed in: %w", err)
+	}
+	v.person, v.signedIn = p, true
+	return false, nil
+}
+
+// touch notes the use of the session, at most once a minute, because each note
+// is a write to the store.
+func (s *Sessions) touch(ctx context.Context) {
+	if !visitOf(ctx).signedIn {
+		return
+	}
+	now := s.opt.Now()
+	if now.Sub(time.Unix(s.scs.GetInt64(ctx, keySeen), 0)) >= touchEvery {
+		s.scs.Put(ctx, keySeen, now.Unix())
+	}
+}
+
+// guardedStore keeps a session that has ended from coming back: the note of its
+// last use, written at the end of a request that began before, would insert it
+// again. Only a request that signed in may insert. Between servers a gap of one
+// statement remains.
+type guardedStore struct {
+	s     *Sessions
+	store scs.Store
+}
+
+func (g guardedStore) Find(key string) ([]byte, bool, error) { return g.store.Find(key) }
+func (g guardedStore) Delete(key string) error {
+	g.s.writes.Lock()
+	defer g.s.writes.Unlock()
+	return g.store.Delete(key)
+}
+func (g guardedStore) Commit(key string, data []byte, expiry time.Time) error {
+	return g.store.Commit(key, data, expiry)
+}
+
+// CommitCtx is what the session library calls in place of Commit.
+func (g guardedStore) CommitCtx(ctx context.Context, key string, data []byte, expiry time.Time) error {
+	if visitOf(ctx).begun {
+		return g.store.Commit(key, data, expiry)
+	}
+	g.s.writes.Lock()
+	defer g.s.writes.Unlock()
+	if _, there, err := g.store.Find(key); err != nil || !there {
+		return err
+	}
+	return g.store.Commit(key, data, expiry)
+}
+
+func (g guardedStore) FindCtx(_ context.Context, key string) ([]byte, bool, error) {
+	return g.store.Find(key)
+}
+func (g guardedStore) DeleteCtx(_ context.Context, key string) error { return g.Delete(key) }
+
+// peopleCache remembers people for about a second: a page with its parts and its
+// socket asks once, and a change of roles still counts at once to human eyes.
+type peopleCache struct {
+	people People
+	now    func() time.Time
+
+	mu      sync.Mutex
+	entries map[uuid.UUID]cached
+}
+
+type cached struct {
+	person plant.Person
+	until  time.Time
+}
+
+const cacheMost = 5000
+
+func (c *peopleCache) find(ctx context.Context, id uuid.UUID) (plant.Person, error) {
+	c.mu.Lock()
+	e, ok := c.entries[id]
+	c.mu.Unlock()
+	if ok && c.now().Before(e.until) {
+		return e.person, nil
+	}
+	p, err := c.people.Person(ctx, id)
+	if err != nil {
+		return plant.Person{}, err
+	}
+	c.mu.Lock()
+	defer c.mu.Unlock()
+	if len(c.entries) >= cacheMost {
+		clear(c.entries)
+	}
+	c.entries[id] = cached{p, c.now().Add(cacheFor)}
+	return p, nil
+}
+
+func (c *peopleCache) forget(id uuid.UUID) {
+	c.mu.Lock()
+	defer c.mu.Unlock()
+	delete(c.entries, id)
+}
