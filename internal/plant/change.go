@@ -1,0 +1,88 @@
+package plant
+
+import (
+	"crypto/sha256"
+	"fmt"
+	"time"
+
+	"github.com/google/uuid"
+)
+
+// ChangeKind is what was done to the process.
+type ChangeKind string
+
+const (
+	Adjustment  ChangeKind = "adjustment" // with a signed size
+	ToolChanged ChangeKind = "tool"
+	MaterialLot ChangeKind = "material"
+	Maintenance ChangeKind = "maintenance"
+	Setting     ChangeKind = "setting"
+	ChangedOver ChangeKind = "changeover"
+)
+
+// ChangeKinds lists the kinds that a person picks from; a changeover comes from the
+// machine's state.
+var ChangeKinds = []ChangeKind{Adjustment, ToolChanged, MaterialLot, Maintenance, Setting}
+
+// Change is something done to the process and recorded.
+type Change struct {
+	ID             uuid.UUID
+	Station        uuid.UUID
+	Machine        uuid.UUID
+	Characteristic uuid.UUID // what an adjustment is meant to move
+	Kind           ChangeKind
+	Size           *Decimal // signed, in the unit
+	Note           string
+	Prompted       bool // a matter was open on what it affects; a fact, set when recorded
+	HappenedAt     time.Time
+	RecordedAt     time.Time
+	Person         uuid.UUID
+	PersonName     string
+}
+
+// Check says what in the change cannot be.
+func (c Change) Check(now time.Time) error {
+	switch c.Kind {
+	case Adjustment:
+		if c.Characteristic == uuid.Nil {
+			return Invalidf("characteristic", "Say what the adjustment is meant to move.")
+		}
+		if c.Size == nil || c.Size.Units == 0 {
+			return Invalidf("size", "Say how far it was adjusted, and which way.")
+		}
+	case ToolChanged, MaterialLot, Maintenance, Setting, ChangedOver:
+	default:
+		return Invalidf("kind", "Say what was changed.")
+	}
+	if c.HappenedAt.After(now.Add(MaxAhead)) {
+		return Invalidf("happened_at", "This cannot have happened in the future.")
+	}
+	if c.HappenedAt.Before(now.Add(-MaxBack)) {
+		return Invalidf("happened_at", "This is more than 7 days back.")
+	}
+	return nil
+}
+
+// Digest tells a repeated send from another change under the same id.
+func (c Change) Digest() [32]byte {
+	size := ""
+	if c.Size != nil {
+		size = c.Size.String()
+	}
+	return sha256.Sum256(fmt.Appendf(nil, "%s\x00%s\x00%s\x00%s\x00%s\x00%s",
+		c.Machine, c.Characteristic, c.Kind, size, c.Note, CutTime(c.HappenedAt)))
+}
+
+// MachineState is a row of a machine's log: from At on it runs or stands still, and
+// runs this part and order or lot.
+type MachineState struct {
+	ID         uuid.UUID
+	Machine    uuid.UUID
+	At         time.Time
+	Running    bool
+	Part       uuid.UUID
+	Lot        string
+	Counter    *int64
+	RecordedAt time.Time
+	Person     uuid.UUID
+}

@@ -1,0 +1,199 @@
+package plant
+
+import (
+	"time"
+
+	"github.com/google/uuid"
+)
+
+// Verdict is what the product tells the operator about a round.
+type Verdict string
+
+const (
+	Leave    Verdict = "leave"    // no signal, nothing outside, nothing open: do not touch the process
+	Learning Verdict = "learning" // no frozen limits yet: only the specification is checked
+	Look     Verdict = "look"     // a run rule fired: find the special cause
+	Hold     Verdict = "hold"     // a reading is outside specification: keep the product aside
+)
+
+func (v Verdict) gravity() int {
+	switch v {
+	case Hold:
+		return 3
+	case Look:
+		return 2
+	case Learning:
+		return 1
+	}
+	return 0
+}
+
+// Graver returns the graver of two verdicts.
+func (v Verdict) Graver(o Verdict) Verdict {
+	if o.gravity() > v.gravity() {
+		return o
+	}
+	return v
+}
+
+// VerdictOf is the verdict on firings alone.
+func VerdictOf(firings []Firing, learning bool) Verdict {
+	v := Leave
+	if learning {
+		v = Learning
+	}
+	for _, f := range firings {
+		if f.Panel == Reading {
+			v = v.Graver(Hold)
+		} else {
+			v = v.Graver(Look)
+		}
+	}
+	return v
+}
+
+// Answer is what the sender of a round is told. It is kept as told.
+type Answer struct {
+	Round   uuid.UUID    `json:"round"`
+	Station uuid.UUID    `json:"station"`
+	TakenAt time.Time    `json:"taken_at"`
+	Verdict Verdict      `json:"verdict"` // the gravest of the parts
+	Parts   []PartAnswer `json:"parts"`
+}
+
+// PartAnswer is the answer about one characteristic of a round.
+type PartAnswer struct {
+	Characteristic uuid.UUID `json:"characteristic"`
+	Subgroup       uuid.UUID `json:"subgroup"`
+	Verdict        Verdict   `json:"verdict"`
+	Firings        []Firing  `json:"firings,omitempty"` // of this round
+	Matter         uuid.UUID `json:"matter,omitzero"`   // open after this round
+	Opened         bool      `json:"opened,omitempty"`  // by this round
+	StillOpen      bool      `json:"still_open,omitempty"`
+	Late           bool      `json:"late,omitempty"` // it came after later rounds: found late
+}
+
+// Decide is the verdict on one characteristic of a round. With a matter open from
+// before the verdict stays the graver of what the round says and what the matter's
+// standing lines say; quiet alone does not close it.
+func Decide(firings []Firing, learning bool, openFromBefore bool, openGravity Verdict) (v Verdict, stillOpen bool) {
+	v = VerdictOf(firings, learning)
+	if !openFromBefore {
+		return v, false
+	}
+	if openGravity != Hold {
+		openGravity = Look
+	}
+	return v.Graver(openGravity), len(firings) == 0
+}
+
+// Matter is what is open on a characteristic after a signal or a Hold. Its opening
+// and what people did are facts; its lines are derived.
+type Matter struct {
+	ID             uuid.UUID
+	Station        uuid.UUID
+	Characteristic uuid.UUID
+	OpenedAt       time.Time // recorded
+	OpenedTaken    time.Time // taken at of the subgroup that opened it
+	OpenedSubgroup uuid.UUID
+	Alarmed        bool
+	TakenBy        uuid.UUID
+	TakenByName    string
+	TakenAt        time.Time
+	Cause          string
+	Action         string
+	RestartAt      time.Time
+	ClosedBy       uuid.UUID
+	ClosedByName   string
+	ClosedAt       time.Time
+	Closing        Closing
+	Version        int
+	Lines          []MatterLine
+}
+
+// MatterLine is one rule of a matter, from its first to its last firing.
+type MatterLine struct {
+	Firing
+	First, Last time.Time // taken at
+	Count       int
+	FoundLate   bool
+	Withdrawn   bool // none of its firings stands any more
+}
+
+// Closing is how a matter ended.
+type Closing string
+
+const (
+	Fixed       Closing = "fixed"        // something was done: restart mark at the instant of the fix
+	NothingDone Closing = "nothing done" // restart mark at the closing
+	WithdrawnBy Closing = "withdrawn"    // no line stands any more
+)
+
+// Open reports whether the matter is open.
+func (m Matter) Open() bool { return m.ClosedAt.IsZero() }
+
+// Kind is the matter's gravity: that of its gravest standing line. A matter without
+// a standing line waits to be closed as withdrawn and asks for a look meanwhile.
+func (m Matter) Kind() Verdict {
+	for _, l := range m.Lines {
+		if !l.Withdrawn && l.Panel == Reading {
+			return Hold
+		}
+	}
+	return Look
+}
+
+// AllWithdrawn reports whether none of the lines stands any more.
+func (m Matter) AllWithdrawn() bool {
+	for _, l := range m.Lines {
+		if !l.Withdrawn {
+			return false
+		}
+	}
+	return true
+}
+
+// OnlyHold reports whether every standing line is a reading outside specification.
+func (m Matter) OnlyHold() bool {
+	for _, l := range m.Lines {
+		if !l.Withdrawn && l.Panel != Reading {
+			return false
+		}
+	}
+	return true
+}
+
+// ClosingRequest is what a person says when closing a matter.
+type ClosingRequest struct {
+	Matter  uuid.UUID
+	Version int // that the person saw
+	Cause   string
+	CauseID uuid.UUID
+	Action  string    // empty: nothing was done
+	FixedAt time.Time // instant of the fix; zero: now
+	Person  uuid.UUID
+}
+
+// Resolve checks a closing and returns how the matter ends and where the restart mark
+// goes (zero: none).
+func (m Matter) Resolve(c ClosingRequest, now time.Time) (Closing, time.Time, error) {
+	switch {
+	case !m.Open():
+		return "", time.Time{}, &Error{Kind: Conflict, Message: "Somebody has closed this already."}
+	case m.AllWithdrawn():
+		return WithdrawnBy, time.Time{}, nil
+	case c.Cause == "":
+		return "", time.Time{}, Invalidf("cause", "Say what the cause was. \"Not found\" is an honest answer.")
+	case c.Action == "" && m.OnlyHold():
+		return NothingDone, time.Time{}, nil
+	case c.Action == "":
+		return NothingDone, now, nil
+	case c.FixedAt.IsZero():
+		return Fixed, now, nil
+	case c.FixedAt.After(now):
+		return "", time.Time{}, Invalidf("fixed_at", "The fix cannot lie in the future.")
+	case c.FixedAt.Before(m.OpenedTaken):
+		return "", time.Time{}, Invalidf("fixed_at", "The fix cannot lie before the signal.")
+	}
+	return Fixed, c.FixedAt, nil
+}

@@ -1,0 +1,163 @@
+package store
+
+import (
+	"context"
+	"encoding/json"
+	"fmt"
+
+	"github.com/google/uuid"
+	"github.com/jackc/pgx/v5"
+
+	"holdfast/internal/plant"
+	"holdfast/internal/plant/ledger"
+)
+
+// Freeze computes limits from the chosen stretch of the record and freezes them as the
+// next revision, signed by the person. The caller has checked that the secret was
+// entered again. Somebody who froze meanwhile, or changed the set-up, makes it a
+// Conflict.
+//
+// The study is read before the lock is taken, so that a long one holds up no saving.
+func (s *Store) Freeze(ctx context.Context, f plant.FreezeRequest) (plant.Revision, error) {
+	now := s.now()
+	if err := f.Check(now); err != nil {
+		return plant.Revision{}, err
+	}
+	h, err := s.History(ctx, f.Characteristic, plant.Stretch{From: f.From, To: f.To})
+	if err != nil {
+		return plant.Revision{}, err
+	}
+	if h.Clipped {
+		return plant.Revision{}, plant.Invalidf("from", "The stretch holds more than %d subgroups. Choose a shorter one.", MaxStretch)
+	}
+	if h.State.Setup.Version != f.SetupVersion {
+		return plant.Revision{}, &plant.Error{Kind: plant.Conflict, Message: "The set-up was changed meanwhile. Look at the study again."}
+	}
+	study := plant.Study{Setup: h.State.Setup, Points: h.Points, LeftOut: f.LeftOut, Estimator: f.Estimator, Multiple: f.Multiple, Rules: f.Rules}
+	if err := study.Run(h.Course); err != nil {
+		return plant.Revision{}, err
+	}
+	if !study.CanFreeze() {
+		return plant.Revision{}, plant.Invalidf("from", "The readings do not vary within subgroups, so there are no limits to freeze.")
+	}
+	r := study.Revision()
+	r.ID, r.Characteristic, r.Reason, r.Author = newID(), f.Characteristic, f.Reason, f.Person
+	r.FrozenAt = now
+	if r.InForceFrom = plant.CutTime(f.InForceFrom); r.InForceFrom.Before(now) {
+		r.InForceFrom = now
+	}
+	if err := s.freeze(ctx, &r, f); err != nil {
+		return plant.Revision{}, fmt.Errorf("freeze: %w", err)
+	}
+	s.changed(h.State.StationID)
+	return r, nil
+}
+
+func (s *Store) freeze(ctx context.Context, r *plant.Revision, f plant.FreezeRequest) error {
+	rules, err := json.Marshal(r.Rules)
+	if err != nil {
+		return fmt.Errorf("encode rules: %w", err)
+	}
+	basis, err := json.Marshal(r.Basis)
+	if err != nil {
+		return fmt.Errorf("encode basis: %w", err)
+	}
+	return s.inTx(ctx, func(tx pgx.Tx) error {
+		l, err := s.lockOne(ctx, tx, r.Characteristic)
+		if err != nil {
+			return err
+		}
+		var newest int
+		if err := tx.QueryRow(ctx, `select coalesce(max(number), 0) from revision where characteristic_id = $1`, l.id).Scan(&newest); err != nil {
+			return fmt.Errorf("read newest revision: %w", err)
+		}
+		if newest != f.After || l.setupVersion != f.SetupVersion {
+			return &plant.Error{Kind: plant.Conflict, Message: "Somebody has frozen limits or changed the set-up meanwhile. Look at the study again."}
+		}
+		r.Number = newest + 1
+		signature, err := s.signature(ctx, tx, f.Person, "freeze")
+		if err != nil {
+			return err
+		}
+		if _, err := tx.Exec(ctx, `insert into revision (id, plant_id, characteristic_id, number, setup_version, chart, estimator, center, sigma, multiple,
+				rules, basis, reason, author_id, frozen_at, in_force_from)
+			values ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $12, $13, $14, $15, $16)`,
+			r.ID, s.plant(), l.id, r.Number, r.SetupVersion, string(r.Chart), string(r.Estimator), r.Center, r.Sigma, r.Multiple,
+			rules, basis, r.Reason, r.Author, r.FrozenAt, r.InForceFrom); err != nil {
+			return fmt.Errorf("insert revision: %w", err)
+		}
+		b := &pgx.Batch{}
+		if err := s.seal(b, l, revisionBody(*r, signature)); err != nil {
+			return err
+		}
+		if err := s.addBoundary(ctx, tx, b, l, plant.Boundary{ID: newID(), At: r.InForceFrom, Kind: plant.ByRevision, Revision: r.ID}, r.FrozenAt); err != nil {
+			return err
+		}
+		s.save(b, l)
+		return tx.SendBatch(ctx, b).Close()
+	})
+}
+
+func revisionBody(r plant.Revision, signature *ledger.Signature) ledger.Revision {
+	body := ledger.Revision{
+		Revision: r.ID, Number: r.Number, SetupVersion: r.SetupVersion, Chart: string(r.Chart), Estimator: string(r.Estimator),
+		Center: ledger.Number(r.Center), Sigma: ledger.Number(r.Sigma), Multiple: ledger.Number(r.Multiple),
+		From: ledger.At(r.Basis.From), To: ledger.At(r.Basis.To), Subgroups: r.Basis.Subgroups, Reason: r.Reason,
+		InForceFrom: ledger.Time(r.InForceFrom), Signature: signature, Location: []string{}, Dispersion: []string{},
+	}
+	for _, rule := range r.Rules.Location {
+		body.Location = append(body.Location, plant.RuleKey(rule))
+	}
+	for _, rule := range r.Rules.Dispersion {
+		body.Dispersion = append(body.Dispersion, plant.RuleKey(rule))
+	}
+	for _, l := range r.Basis.LeftOut {
+		body.LeftOut = append(body.LeftOut, ledger.LeftOut{Subgroup: l.Subgroup, Cause: l.Cause})
+	}
+	return body
+}
+
+// ChangeSetup adds a version of a characteristic's set-up. Where limits of the old one
+// mean nothing under it, the characteristic is learning from here on.
+func (s *Store) ChangeSetup(ctx context.Context, characteristic uuid.UUID, setup plant.Setup, replaces int, by uuid.UUID) error {
+	if err := setup.Validate(); err != nil {
+		return err
+	}
+	now := s.now()
+	var station uuid.UUID
+	err := s.inTx(ctx, func(tx pgx.Tx) error {
+		l, err := s.lockOne(ctx, tx, characteristic)
+		if err != nil {
+			return err
+		}
+		station = l.station
+		if l.setupVersion != replaces {
+			return &plant.Error{Kind: plant.Conflict, Message: "Somebody has changed the set-up meanwhile. Look at it again."}
+		}
+		old, err := s.setup(ctx, tx, l.id, l.setupVersion)
+		if err != nil {
+			return err
+		}
+		setup.Version, setup.MadeAt = replaces+1, now
+		if err := s.insertSetup(ctx, tx, l.id, setup, by); err != nil {
+			return err
+		}
+		l.setupVersion = setup.Version
+		b := &pgx.Batch{}
+		if err := s.seal(b, l, setupBody(l.id, setup, by)); err != nil {
+			return err
+		}
+		if setup.NeedsNewLimits(old) {
+			if err := s.addBoundary(ctx, tx, b, l, plant.Boundary{ID: newID(), At: now, Kind: plant.BySetup}, now); err != nil {
+				return err
+			}
+		}
+		s.save(b, l)
+		return tx.SendBatch(ctx, b).Close()
+	})
+	if err != nil {
+		return fmt.Errorf("change set-up: %w", err)
+	}
+	s.changed(station)
+	return nil
+}

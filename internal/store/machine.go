@@ -1,0 +1,174 @@
+package store
+
+import (
+	"bytes"
+	"context"
+	"errors"
+	"fmt"
+	"time"
+
+	"github.com/google/uuid"
+	"github.com/jackc/pgx/v5"
+
+	"holdfast/internal/plant"
+	"holdfast/internal/plant/ledger"
+)
+
+// onMachine runs f while every characteristic of a machine is locked, and marks them
+// all as changed.
+func (s *Store) onMachine(ctx context.Context, machine uuid.UUID, f func(tx pgx.Tx, b *pgx.Batch, held map[uuid.UUID]*locked) error) error {
+	ctx, cancel := context.WithTimeout(context.WithoutCancel(ctx), saveLimit)
+	defer cancel()
+	var station uuid.UUID
+	err := s.inTx(ctx, func(tx pgx.Tx) error {
+		var ids []uuid.UUID
+		err := tx.QueryRow(ctx, `select m.station_id, coalesce(array_agg(c.id order by c.id) filter (where c.id is not null), '{}')
+			from machine m left join characteristic c on c.machine_id = m.id
+			where m.id = $1 and m.plant_id = $2 group by m.station_id`, machine, s.plant()).Scan(&station, &ids)
+		if err != nil {
+			return fmt.Errorf("read machine: %w", missing(err, "There is no such machine."))
+		}
+		held, err := s.lock(ctx, tx, ids...)
+		if err != nil {
+			return err
+		}
+		b := &pgx.Batch{}
+		if err := f(tx, b, held); err != nil {
+			return err
+		}
+		for _, l := range held {
+			s.save(b, l)
+		}
+		return tx.SendBatch(ctx, b).Close()
+	})
+	if err != nil {
+		return err
+	}
+	s.changed(station)
+	return nil
+}
+
+// SetMachine records that a machine runs or stands still, and what it makes. Where
+// another part begins, charts that do not belong to the family of both start afresh.
+// The same record sent again is no error.
+func (s *Store) SetMachine(ctx context.Context, m plant.MachineState) error {
+	now := s.now()
+	m.At, m.RecordedAt = plant.CutTime(m.At), now
+	m.Lot = plant.CleanText(m.Lot)
+	if m.At.IsZero() {
+		m.At = now
+	}
+	if m.At.After(now.Add(plant.MaxAhead)) || m.At.Before(now.Add(-plant.MaxBack)) {
+		return plant.Invalidf("at", "This time is too far from now.")
+	}
+	return s.onMachine(ctx, m.Machine, func(tx pgx.Tx, b *pgx.Batch, held map[uuid.UUID]*locked) error {
+		var before *uuid.UUID
+		err := tx.QueryRow(ctx, `select part_id from machine_state where machine_id = $1 and at <= $2 order by at desc, id desc limit 1`,
+			m.Machine, m.At).Scan(&before)
+		first := errors.Is(err, pgx.ErrNoRows)
+		if err != nil && !first {
+			return fmt.Errorf("read machine: %w", err)
+		}
+		tag, err := tx.Exec(ctx, `insert into machine_state (id, plant_id, machine_id, at, running, part_id, lot, counter, recorded_at, person_id)
+			values ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10) on conflict (id) do nothing`,
+			m.ID, s.plant(), m.Machine, m.At, m.Running, orNull(m.Part), m.Lot, m.Counter, now, orNull(m.Person))
+		if err != nil {
+			return fmt.Errorf("insert machine state: %w", err)
+		}
+		if tag.RowsAffected() == 0 {
+			return nil
+		}
+		if !first && orNil(before) != m.Part {
+			if err := s.changeover(ctx, tx, b, held, orNil(before), m, now); err != nil {
+				return err
+			}
+		}
+		return s.appendPlantChain(ctx, tx, ledger.MachineState{
+			State: m.ID, Machine: m.Machine, At: ledger.Time(m.At), Running: m.Running, Part: ledger.ID(m.Part), Lot: m.Lot,
+			Counter: m.Counter, RecordedAt: ledger.Time(now), Person: ledger.ID(m.Person),
+		})
+	})
+}
+
+func (s *Store) changeover(ctx context.Context, tx pgx.Tx, b *pgx.Batch, held map[uuid.UUID]*locked, from uuid.UUID, m plant.MachineState, now time.Time) error {
+	rows, err := tx.Query(ctx, `select c.id from characteristic c where c.machine_id = $1
+		and not (c.family <> '' and exists (select from part where id = $2 and family = c.family)
+			and exists (select from part where id = $3 and family = c.family))
+		order by c.id`, m.Machine, from, m.Part)
+	if err != nil {
+		return fmt.Errorf("read characteristics of machine: %w", err)
+	}
+	ids, err := pgx.CollectRows(rows, pgx.RowTo[uuid.UUID])
+	if err != nil {
+		return fmt.Errorf("read characteristics of machine: %w", err)
+	}
+	for _, id := range ids {
+		if err := s.addBoundary(ctx, tx, b, held[id], plant.Boundary{ID: newID(), At: m.At, Kind: plant.ByChangeover}, now); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// LogChange records something done to the process. Whether it was prompted is fixed
+// here: a matter was open, when it happened, on what it affects. The same change sent
+// again is no error; the same id with other content is a Conflict and is set aside.
+func (s *Store) LogChange(ctx context.Context, c plant.Change) error {
+	now := s.now()
+	c.HappenedAt, c.RecordedAt = plant.CutTime(c.HappenedAt), now
+	if c.HappenedAt.IsZero() {
+		c.HappenedAt = now
+	}
+	var err error
+	if c.Note, err = plant.CleanTextWithin("note", c.Note, 300); err != nil {
+		return err
+	}
+	if err := c.Check(now); err != nil {
+		return err
+	}
+	digest := c.Digest()
+	err = s.onMachine(ctx, c.Machine, func(tx pgx.Tx, b *pgx.Batch, held map[uuid.UUID]*locked) error {
+		if c.Characteristic != uuid.Nil && held[c.Characteristic] == nil {
+			return &plant.Error{Kind: plant.NotFound, Field: "characteristic", Message: "This machine has no such characteristic."}
+		}
+		var have []byte
+		err := tx.QueryRow(ctx, `insert into change (id, plant_id, station_id, machine_id, characteristic_id, kind, size, note, prompted,
+				happened_at, recorded_at, person_id, digest)
+			select $1, $2, m.station_id, m.id, $4, $5, $6::text::numeric, $7,
+				exists (select from matter t join characteristic h on h.id = t.characteristic_id
+					where h.machine_id = m.id and (t.characteristic_id = $4 or $4 is null)
+					and t.opened_taken <= $8 and (t.closed_at is null or t.closed_at > $8)),
+				$8, $9, $10, $11
+			from machine m where m.id = $3
+			on conflict (id) do nothing
+			returning prompted`,
+			c.ID, s.plant(), c.Machine, orNull(c.Characteristic), string(c.Kind), decimalOrNull(c.Size), c.Note,
+			c.HappenedAt, now, orNull(c.Person), digest[:]).Scan(&c.Prompted)
+		if errors.Is(err, pgx.ErrNoRows) {
+			if err := tx.QueryRow(ctx, `select digest from change where id = $1`, c.ID).Scan(&have); err != nil {
+				return fmt.Errorf("read stored change: %w", err)
+			}
+			if !bytes.Equal(have, digest[:]) {
+				return &plant.Error{Kind: plant.Conflict, Message: "Another change was sent under this number. It was set aside for a person."}
+			}
+			return nil
+		}
+		if err != nil {
+			return fmt.Errorf("insert change: %w", err)
+		}
+		size := ""
+		if c.Size != nil {
+			size = c.Size.String()
+		}
+		return s.appendPlantChain(ctx, tx, ledger.Change{
+			Change: c.ID, Machine: c.Machine, Characteristic: ledger.ID(c.Characteristic), What: string(c.Kind), Size: size, Note: c.Note,
+			Prompted: c.Prompted, HappenedAt: ledger.Time(c.HappenedAt), RecordedAt: ledger.Time(now), Person: ledger.ID(c.Person),
+		})
+	})
+	if pe, ok := errors.AsType[*plant.Error](err); ok && pe.Kind == plant.Conflict {
+		if err := s.setAside(ctx, c.Station, c.ID, c.Person, pe.Message, c, digest); err != nil {
+			return err
+		}
+	}
+	return err
+}

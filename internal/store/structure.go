@@ -1,0 +1,313 @@
+package store
+
+import (
+	"context"
+	"encoding/json"
+	"errors"
+	"fmt"
+	"time"
+
+	"github.com/google/uuid"
+	"github.com/jackc/pgx/v5"
+
+	"holdfast/internal/plant"
+	"holdfast/internal/plant/ledger"
+)
+
+// plant is the id of the plant that this database holds; Nil before CreatePlant.
+func (s *Store) plant() uuid.UUID {
+	if id := s.plantID.Load(); id != nil {
+		return *id
+	}
+	return uuid.Nil
+}
+
+func (s *Store) findPlant(ctx context.Context) error {
+	var id uuid.UUID
+	err := s.pool.QueryRow(ctx, `select id from plant order by created_at, id limit 1`).Scan(&id)
+	if errors.Is(err, pgx.ErrNoRows) {
+		return nil
+	}
+	if err != nil {
+		return fmt.Errorf("find plant: %w", err)
+	}
+	s.plantID.Store(&id)
+	return nil
+}
+
+// Plant reads the plant; NotFound when the database is still empty.
+func (s *Store) Plant(ctx context.Context) (plant.Plant, error) {
+	var p plant.Plant
+	var zone string
+	err := s.pool.QueryRow(ctx, `select id, name, time_zone, demo from plant where id = $1`, s.plant()).
+		Scan(&p.ID, &p.Name, &zone, &p.Demo)
+	if err != nil {
+		return p, missing(err, "No plant has been set up here yet.")
+	}
+	if p.Location, err = time.LoadLocation(zone); err != nil {
+		return p, fmt.Errorf("time zone of the plant: %w", err)
+	}
+	rows, err := s.pool.Query(ctx, `select id, name, extract(epoch from starts)::bigint from shift where plant_id = $1 order by starts`, p.ID)
+	if err != nil {
+		return p, fmt.Errorf("read shifts: %w", err)
+	}
+	p.Shifts, err = pgx.CollectRows(rows, func(r pgx.CollectableRow) (plant.Shift, error) {
+		var sh plant.Shift
+		var seconds int64
+		err := r.Scan(&sh.ID, &sh.Name, &seconds)
+		sh.Starts = time.Duration(seconds) * time.Second
+		return sh, err
+	})
+	if err != nil {
+		return p, fmt.Errorf("read shifts: %w", err)
+	}
+	return p, nil
+}
+
+// CreatePlant makes the one plant of this database, with its shifts and the head of
+// its ledger chain.
+func (s *Store) CreatePlant(ctx context.Context, p plant.Plant) error {
+	now := s.now()
+	err := s.inTx(ctx, func(tx pgx.Tx) error {
+		b := &pgx.Batch{}
+		b.Queue(`insert into plant (id, name, time_zone, demo, created_at) values ($1, $2, $3, $4, $5)`,
+			p.ID, p.Name, p.Location.String(), p.Demo, now)
+		for _, sh := range p.Shifts {
+			b.Queue(`insert into shift (id, plant_id, name, starts) values ($1, $2, $3, make_interval(secs => $4)::time)`,
+				newID(), p.ID, sh.Name, sh.Starts.Seconds())
+		}
+		b.Queue(`insert into chain_head (chain, plant_id, seq, hash) values ($1, $1, 0, $2)`, p.ID, make([]byte, ledger.Size))
+		return tx.SendBatch(ctx, b).Close()
+	})
+	if err != nil {
+		return fmt.Errorf("create plant: %w", err)
+	}
+	s.plantID.Store(&p.ID)
+	return s.arrange(ctx, "plant made", p.ID, uuid.Nil, map[string]any{"name": p.Name, "time_zone": p.Location.String()}, nil)
+}
+
+// arrange runs f and enters what was arranged into the plant's chain, in one
+// transaction.
+func (s *Store) arrange(ctx context.Context, what string, subject, person uuid.UUID, content map[string]any, f func(tx pgx.Tx) error) error {
+	return s.inTx(ctx, func(tx pgx.Tx) error {
+		if f != nil {
+			if err := f(tx); err != nil {
+				return err
+			}
+		}
+		return s.appendPlantChain(ctx, tx, ledger.Arrangement{
+			What: what, Subject: subject, At: ledger.Time(s.now()), Person: ledger.ID(person), Content: content,
+		})
+	})
+}
+
+// taken turns a violated natural key into words.
+func taken(err error, constraint, message string) error {
+	if violates(err, constraint) {
+		return &plant.Error{Kind: plant.Conflict, Field: "name", Message: message, Err: err}
+	}
+	return err
+}
+
+// AddLine adds a lane.
+func (s *Store) AddLine(ctx context.Context, l plant.Line, by uuid.UUID) error {
+	return s.arrange(ctx, "line added", l.ID, by, map[string]any{"name": l.Name}, func(tx pgx.Tx) error {
+		_, err := tx.Exec(ctx, `insert into line (id, plant_id, name, position) values ($1, $2, $3, $4)`, l.ID, s.plant(), l.Name, l.Position)
+		return taken(err, "line_name_once", "There is a line of this name already.")
+	})
+}
+
+// AddStation adds a station to a line.
+func (s *Store) AddStation(ctx context.Context, st plant.Station, by uuid.UUID) error {
+	return s.arrange(ctx, "station added", st.ID, by, map[string]any{"name": st.Name, "line": st.LineID}, func(tx pgx.Tx) error {
+		_, err := tx.Exec(ctx, `insert into station (id, plant_id, line_id, name, family, position) values ($1, $2, $3, $4, $5, $6)`,
+			st.ID, s.plant(), st.LineID, st.Name, st.Family, st.Position)
+		return taken(err, "station_name_once", "There is a station of this name already.")
+	})
+}
+
+// AddMachine adds a machine with its streams.
+func (s *Store) AddMachine(ctx context.Context, m plant.Machine, by uuid.UUID) error {
+	return s.arrange(ctx, "machine added", m.ID, by, map[string]any{"name": m.Name, "station": m.StationID}, func(tx pgx.Tx) error {
+		_, err := tx.Exec(ctx, `insert into machine (id, plant_id, station_id, name, position, parts_per_hour) values ($1, $2, $3, $4, $5, $6)`,
+			m.ID, s.plant(), m.StationID, m.Name, m.Position, m.PartsPerHour)
+		if err != nil {
+			return taken(err, "machine_name_once", "There is a machine of this name already.")
+		}
+		for i, st := range m.Streams {
+			if _, err := tx.Exec(ctx, `insert into stream (id, plant_id, machine_id, name, position) values ($1, $2, $3, $4, $5)`,
+				st.ID, s.plant(), m.ID, st.Name, i); err != nil {
+				return taken(err, "stream_name_once", "A machine names each of its streams once.")
+			}
+		}
+		return nil
+	})
+}
+
+// AddPart adds a part.
+func (s *Store) AddPart(ctx context.Context, p plant.Part, by uuid.UUID) error {
+	return s.arrange(ctx, "part added", p.ID, by, map[string]any{"name": p.Name, "family": p.Family}, func(tx pgx.Tx) error {
+		_, err := tx.Exec(ctx, `insert into part (id, plant_id, name, family) values ($1, $2, $3, $4)`, p.ID, s.plant(), p.Name, p.Family)
+		return taken(err, "part_name_once", "There is a part of this name already.")
+	})
+}
+
+// Parts lists the parts by name.
+func (s *Store) Parts(ctx context.Context) ([]plant.Part, error) {
+	rows, err := s.pool.Query(ctx, `select id, name, family from part where plant_id = $1 order by name`, s.plant())
+	if err != nil {
+		return nil, fmt.Errorf("read parts: %w", err)
+	}
+	return pgx.CollectRows(rows, func(r pgx.CollectableRow) (p plant.Part, err error) {
+		return p, r.Scan(&p.ID, &p.Name, &p.Family)
+	})
+}
+
+// AddGauge adds a gauge.
+func (s *Store) AddGauge(ctx context.Context, g plant.Gauge, by uuid.UUID) error {
+	return s.arrange(ctx, "gauge added", g.ID, by, map[string]any{"name": g.Name}, func(tx pgx.Tx) error {
+		_, err := tx.Exec(ctx, `insert into gauge (id, plant_id, name, resolution, next_check) values ($1, $2, $3, $4::text::numeric, $5)`,
+			g.ID, s.plant(), g.Name, decimalOrNull(g.Resolution), timeOrNull(g.NextCheck))
+		return taken(err, "gauge_name_once", "There is a gauge of this name already.")
+	})
+}
+
+// AddCause adds a cause to the catalogue of a station family.
+func (s *Store) AddCause(ctx context.Context, family string, c plant.Cause, position int, by uuid.UUID) error {
+	return s.arrange(ctx, "cause added", c.ID, by, map[string]any{"name": c.Name, "family": family}, func(tx pgx.Tx) error {
+		_, err := tx.Exec(ctx, `insert into cause (id, plant_id, family, name, position) values ($1, $2, $3, $4, $5)`,
+			c.ID, s.plant(), family, c.Name, position)
+		return taken(err, "cause_name_once", "There is a cause of this name already.")
+	})
+}
+
+// Causes lists the catalogue of a station family, with what belongs to every family
+// at the end.
+func (s *Store) Causes(ctx context.Context, family string) ([]plant.Cause, error) {
+	rows, err := s.pool.Query(ctx, `select id, name from cause where plant_id = $1 and family in ($2, '')
+		order by family = '', position, name`, s.plant(), family)
+	if err != nil {
+		return nil, fmt.Errorf("read causes: %w", err)
+	}
+	return pgx.CollectRows(rows, func(r pgx.CollectableRow) (c plant.Cause, err error) {
+		return c, r.Scan(&c.ID, &c.Name)
+	})
+}
+
+// AddCharacteristic adds a characteristic with the first version of its set-up, its
+// state row and the head of its ledger chain.
+func (s *Store) AddCharacteristic(ctx context.Context, c plant.Characteristic, setup plant.Setup, by uuid.UUID) error {
+	setup.Version, setup.MadeAt = 1, s.now()
+	if err := setup.Validate(); err != nil {
+		return err
+	}
+	err := s.inTx(ctx, func(tx pgx.Tx) error {
+		_, err := tx.Exec(ctx, `insert into characteristic (id, plant_id, station_id, machine_id, part_id, family, name, position)
+			values ($1, $2, $3, $4, $5, $6, $7, $8)`,
+			c.ID, s.plant(), c.StationID, c.MachineID, orNull(c.PartID), c.Family, c.Name, c.Position)
+		if err != nil {
+			return taken(err, "characteristic_name_once", "This machine has a characteristic of this name already.")
+		}
+		if err := s.insertSetup(ctx, tx, c.ID, setup, by); err != nil {
+			return err
+		}
+		entry, head, err := ledger.Seal(c.ID, ledger.Head{}, setupBody(c.ID, setup, by))
+		if err != nil {
+			return err
+		}
+		b := &pgx.Batch{}
+		s.queueLedger(b, entry)
+		b.Queue(`insert into characteristic_state (characteristic_id, plant_id, station_id, setup_version, ledger_seq, ledger_hash)
+			values ($1, $2, $3, $4, $5, $6)`, c.ID, s.plant(), c.StationID, setup.Version, head.Seq, head.Hash[:])
+		return tx.SendBatch(ctx, b).Close()
+	})
+	if err != nil {
+		return fmt.Errorf("add characteristic: %w", err)
+	}
+	s.changed(c.StationID)
+	return nil
+}
+
+func setupBody(id uuid.UUID, setup plant.Setup, by uuid.UUID) ledger.Setup {
+	content := map[string]any{
+		"unit": setup.Unit, "decimals": setup.Decimals, "chart": setup.Chart, "size": setup.Size, "worse": setup.Worse,
+		"target": setup.Target, "lower": setup.Lower, "upper": setup.Upper, "plan": setup.Plan, "control_plan": setup.ControlPlan,
+	}
+	if setup.GaugeID != uuid.Nil {
+		content["gauge"] = setup.GaugeID
+	}
+	return ledger.Setup{Characteristic: id, Version: setup.Version, At: ledger.Time(setup.MadeAt), Person: ledger.ID(by), Content: content}
+}
+
+func (s *Store) insertSetup(ctx context.Context, tx pgx.Tx, id uuid.UUID, v plant.Setup, by uuid.UUID) error {
+	plan, err := json.Marshal(v.Plan)
+	if err != nil {
+		return fmt.Errorf("encode sampling plan: %w", err)
+	}
+	control, err := json.Marshal(v.ControlPlan)
+	if err != nil {
+		return fmt.Errorf("encode control plan: %w", err)
+	}
+	_, err = tx.Exec(ctx, `insert into setup (characteristic_id, version, plant_id, unit, decimals, target, lower_spec, upper_spec,
+			worse, chart, size, plan, control_plan, gauge_id, made_at, person_id)
+		values ($1, $2, $3, $4, $5, $6::text::numeric, $7::text::numeric, $8::text::numeric, $9, $10, $11, $12, $13, $14, $15, $16)`,
+		id, v.Version, s.plant(), v.Unit, v.Decimals, decimalOrNull(v.Target), decimalOrNull(v.Lower), decimalOrNull(v.Upper),
+		string(v.Worse), string(v.Chart), v.Size, plan, control, orNull(v.GaugeID), v.MadeAt, orNull(by))
+	if err != nil {
+		return fmt.Errorf("insert set-up: %w", err)
+	}
+	return nil
+}
+
+const selectSetup = `select version, unit, decimals, target::text, lower_spec::text, upper_spec::text, worse, chart, size,
+	plan, control_plan, gauge_id, made_at from setup`
+
+func scanSetup(r pgx.CollectableRow) (plant.Setup, error) {
+	var v plant.Setup
+	var target, lower, upper *string
+	var gauge *uuid.UUID
+	var plan, control []byte
+	err := r.Scan(&v.Version, &v.Unit, &v.Decimals, &target, &lower, &upper, &v.Worse, &v.Chart, &v.Size, &plan, &control, &gauge, &v.MadeAt)
+	if err != nil {
+		return v, err
+	}
+	v.GaugeID = orNil(gauge)
+	return v, errors.Join(
+		into(&v.Target, target), into(&v.Lower, lower), into(&v.Upper, upper),
+		json.Unmarshal(plan, &v.Plan), json.Unmarshal(control, &v.ControlPlan))
+}
+
+func into(dst **plant.Decimal, text *string) error {
+	d, err := decimalFrom(text)
+	*dst = d
+	return err
+}
+
+type setupKey struct {
+	characteristic uuid.UUID
+	version        int
+}
+
+// querier is what a pool, a connection and a transaction have in common.
+type querier interface {
+	Query(ctx context.Context, sql string, args ...any) (pgx.Rows, error)
+	QueryRow(ctx context.Context, sql string, args ...any) pgx.Row
+}
+
+// setup reads one version of a set-up. Versions never change, so they are kept.
+func (s *Store) setup(ctx context.Context, q querier, characteristic uuid.UUID, version int) (plant.Setup, error) {
+	key := setupKey{characteristic, version}
+	if v, ok := s.setups.Load(key); ok {
+		return v.(plant.Setup), nil
+	}
+	rows, err := q.Query(ctx, selectSetup+` where characteristic_id = $1 and version = $2`, characteristic, version)
+	if err != nil {
+		return plant.Setup{}, fmt.Errorf("read set-up: %w", err)
+	}
+	v, err := pgx.CollectExactlyOneRow(rows, scanSetup)
+	if err != nil {
+		return v, fmt.Errorf("read set-up: %w", missing(err, "There is no such set-up."))
+	}
+	s.setups.Store(key, v)
+	return v, nil
+}
