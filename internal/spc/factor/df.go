@@ -58,3 +58,62 @@ func dfOfMean(cv float64, m int) (float64, error) {
 	}
 	return EffectiveDF(cv / math.Sqrt(float64(m)))
 }
+
+// C4Nu returns c4 for nu > 0 degrees of freedom, not necessarily whole: the mean of
+// √(X/nu), X chi-square. C4(n) is C4Nu(n-1).
+func C4Nu(nu float64) (float64, error) {
+	if !(nu > 0) || math.IsInf(nu, 1) {
+		return math.NaN(), fmt.Errorf("%w: the degrees of freedom must be above 0, got %g", ErrArgument, nu)
+	}
+	return math.Exp(logC4(nu)), nil
+}
+
+// EffectiveDFMovingRange returns the degrees of freedom of the mean moving range
+// over d2(2), from the given number of moving ranges of two of which so many pairs
+// are neighbours (share a reading): m readings in one unbroken row have m-1 ranges
+// and m-2 such pairs. Neighbours are correlated: with D, D' their signed
+// differences, E|D||D'| = 2√3/π + 1/3 in units of σ².
+//
+// Source: Nabeya, Annals of the Institute of Statistical Mathematics 3 (1951), 1-6,
+// for the absolute moments of two correlated normals; Cryer and Ryan, Journal of
+// Quality Technology 22 (1990), 187-192, for the variance.
+func EffectiveDFMovingRange(ranges, neighbours int) (float64, error) {
+	if err := checkRanges(ranges, neighbours); err != nil {
+		return math.NaN(), err
+	}
+	const covariance = 2*1.7320508075688772/math.Pi + 1.0/3 - 4/math.Pi
+	const variance = 2 - 4/math.Pi
+	r := float64(ranges)
+	cv := math.Sqrt((r*variance+2*float64(neighbours)*covariance)*math.Pi/4) / r
+	return EffectiveDF(cv)
+}
+
+// EffectiveDFMedianMovingRange is EffectiveDFMovingRange for the median moving range
+// over its factor 0.9539. It rests on the variance of a median of many ranges, so
+// it is rough below about twenty.
+//
+// Source: the asymptotic variance of the median of a dependent sequence, Sen,
+// Annals of Mathematical Statistics 39 (1968), 1724-1730.
+func EffectiveDFMedianMovingRange(ranges, neighbours int) (float64, error) {
+	if err := checkRanges(ranges, neighbours); err != nil {
+		return math.NaN(), err
+	}
+	// Half of all |differences| lie within ±a standard deviations of theirs.
+	a := special.NormalQuantile(0.75)
+	// Both of two neighbours, correlated -1/2, do with this probability.
+	s := math.Sqrt(0.75)
+	both := special.Panels(func(z float64) float64 {
+		return special.NormalPDF(z) * (special.NormalCDF((a+z/2)/s) - special.NormalCDF((z/2-a)/s))
+	}, -a, a, 2)
+	density := 2 * special.NormalPDF(a)
+	r := float64(ranges)
+	cv := math.Sqrt(r/4+2*float64(neighbours)*(both-0.25)) / (r * density * a)
+	return EffectiveDF(cv)
+}
+
+func checkRanges(ranges, neighbours int) error {
+	if ranges < 1 || neighbours < 0 || neighbours >= ranges {
+		return fmt.Errorf("%w: %d moving ranges with %d pairs of neighbours do not exist", ErrArgument, ranges, neighbours)
+	}
+	return nil
+}

@@ -44,15 +44,20 @@ func (b Band) Z(x float64) float64 {
 	return d
 }
 
+// Tie is the difference, in sigmas of the plotted statistic, below which a value
+// and a limit count as equal: figures that are equal on paper differ in the last
+// binary digits.
+const Tie = 1e-9
+
 // Outside returns -1 when x is strictly below the lower limit, 1 when it is
-// strictly above the upper one, else 0. A point on a limit is inside.
+// strictly above the upper one, else 0. A point on a limit, within Tie, is inside.
 func (b Band) Outside(x float64) int {
 	switch {
 	case !b.Exists():
 		return 0
-	case x < b.Lower:
+	case x < b.Lower-Tie*b.Below:
 		return -1
-	case x > b.Upper:
+	case x > b.Upper+Tie*b.Above:
 		return 1
 	}
 	return 0

@@ -45,7 +45,8 @@ func AndersonDarling(x []float64) (Normality, error) {
 	}
 	total := 0.0
 	for i, v := range z {
-		total += float64(2*i+1)*special.LogNormalCDF(v) + float64(2*(n-i)-1)*special.LogNormalCDF(-v)
+		lower, upper := special.LogNormalTails(v)
+		total += float64(2*i+1)*lower + float64(2*(n-i)-1)*upper
 	}
 	size := float64(n)
 	a2 := -size - total/size

@@ -78,3 +78,16 @@ func LogNormalCDF(z float64) float64 {
 	return -z*z/2 - math.Log(-z) - math.Log(2*math.Pi)/2 +
 		math.Log1p(-u*(1-u*(3-u*(15-u*105))))
 }
+
+// LogNormalTails is ln P(Z ≤ z) and ln P(Z > z) at the cost of one of them.
+func LogNormalTails(z float64) (lower, upper float64) {
+	if math.Abs(z) > 37 {
+		return LogNormalCDF(z), LogNormalCDF(-z)
+	}
+	small := NormalSurvival(math.Abs(z))
+	far, near := math.Log(small), math.Log1p(-small)
+	if z < 0 {
+		return far, near
+	}
+	return near, far
+}
