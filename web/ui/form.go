@@ -34,14 +34,14 @@ func LimitBody(limit int64) func(http.Handler) http.Handler {
 func tooLarge(r *http.Request) problem {
 	t := FrameOf(r).Words
 	return problem{Status: http.StatusRequestEntityTooLarge, Kind: "too-large",
-		Title: t.T("ui.problem.too-large"), Message: t.T("ui.problem.too-large-text")}
+		Title: t.T("ui.problem.too-large"), Message: t.T("ui.problem-text.too-large")}
 }
 
 func badRequest(r *http.Request, cause error) error {
 	if big, ok := errors.AsType[*http.MaxBytesError](cause); ok {
-		return &HTTPError{Status: http.StatusRequestEntityTooLarge, Message: FrameOf(r).Words.T("ui.problem.too-large-text"), Err: big}
+		return &HTTPError{Status: http.StatusRequestEntityTooLarge, Message: FrameOf(r).Words.T("ui.problem-text.too-large"), Err: big}
 	}
-	return &HTTPError{Status: http.StatusBadRequest, Message: FrameOf(r).Words.T("ui.problem.bad-request-text"), Err: cause}
+	return &HTTPError{Status: http.StatusBadRequest, Message: FrameOf(r).Words.T("ui.problem-text.bad-request"), Err: cause}
 }
 
 // ParseForm reads the form of a post into r.PostForm, both of the kind that a plain
@@ -64,7 +64,7 @@ func ParseForm(w http.ResponseWriter, r *http.Request) error {
 // trailing text and other content types are refused like a broken form.
 func DecodeJSON(w http.ResponseWriter, r *http.Request, v any) error {
 	if kind, _, err := mime.ParseMediaType(r.Header.Get("Content-Type")); err != nil || kind != "application/json" {
-		return &HTTPError{Status: http.StatusUnsupportedMediaType, Message: FrameOf(r).Words.T("ui.problem.bad-request-text"), Err: err}
+		return &HTTPError{Status: http.StatusUnsupportedMediaType, Message: FrameOf(r).Words.T("ui.problem-text.bad-request"), Err: err}
 	}
 	dec := json.NewDecoder(r.Body)
 	dec.DisallowUnknownFields()

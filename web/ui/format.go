@@ -106,6 +106,15 @@ func (f Format) Since(t time.Time) string {
 	return f.Age(f.Now.Sub(t))
 }
 
+// Late says how late a sample is, "late 9 min", "" when it is not.
+func (f Format) Late(d plant.Due) string {
+	by := d.LateBy(f.Now)
+	if by < time.Minute {
+		return ""
+	}
+	return f.Words.T("ui.late-by", f.Age(by))
+}
+
 // Count writes a whole number with the grouping of the language.
 func (f Format) Count(n int) string { return f.Words.Count(n) }
 

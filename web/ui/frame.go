@@ -15,8 +15,8 @@ import (
 type Frame struct {
 	Person    plant.Person // the zero value when nobody is signed in
 	SignedIn  bool
-	Session   string // names the session to the live hub; never the secret itself
-	Addr      netip.Addr   // of the browser, or of the proxy nearest to us that is not trusted
+	Session   string     // names the session to the live hub; never the secret itself
+	Addr      netip.Addr // of the browser, or of the proxy nearest to us that is not trusted
 	Plant     plant.Plant
 	Now       time.Time
 	Theme     Theme

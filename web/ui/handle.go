@@ -97,7 +97,7 @@ func Fault(log *slog.Logger, w http.ResponseWriter, r *http.Request, err error, 
 		slog.String("method", r.Method), slog.String("path", r.URL.Path), slog.String("error", err.Error())}, more...)
 	log.LogAttrs(r.Context(), slog.LevelError, "a request failed", attrs...)
 	answer(w, r, problem{Status: http.StatusInternalServerError, Kind: "fault", Ref: ref,
-		Title: f.Words.T("ui.problem.fault"), Message: f.Words.T("ui.problem.fault-text", ref)})
+		Title: f.Words.T("ui.problem.fault"), Message: f.Words.T("ui.problem-text.fault", ref)})
 }
 
 // Deny answers with one of the plain problems that need no further words: 401, 403,
@@ -108,13 +108,13 @@ func Deny(w http.ResponseWriter, r *http.Request, status int) {
 	p := problem{Status: status, Kind: kind, Title: t.T("ui.problem." + kind)}
 	switch kind {
 	case "signed-out":
-		p.Message = t.T("ui.problem.signed-out-text")
+		p.Message = t.T("ui.problem-text.signed-out")
 	case "forbidden":
-		p.Message = t.T("ui.problem.forbidden-text")
+		p.Message = t.T("ui.problem-text.forbidden")
 	case "method":
-		p.Message = t.T("ui.problem.method-text")
+		p.Message = t.T("ui.problem-text.method")
 	default:
-		p.Message = t.T("ui.problem.not-found-text")
+		p.Message = t.T("ui.problem-text.not-found")
 	}
 	answer(w, r, p)
 }
@@ -123,7 +123,7 @@ func Deny(w http.ResponseWriter, r *http.Request, status int) {
 func DenyCrossSite(w http.ResponseWriter, r *http.Request) {
 	t := FrameOf(r).Words
 	answer(w, r, problem{Status: http.StatusForbidden, Kind: "forbidden",
-		Title: t.T("ui.problem.forbidden"), Message: t.T("ui.problem.cross-site-text")})
+		Title: t.T("ui.problem.forbidden"), Message: t.T("ui.problem-text.cross-site")})
 }
 
 func kindOf(status int) string {
