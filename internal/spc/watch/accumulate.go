@@ -45,7 +45,7 @@ func (e EWMA) Step(s *EWMAState, x, variance float64) (halfWidth float64, side S
 	// same bits and a stored state can be compared.
 	s.Deviation = float64(e.Lambda*x) + float64(keep*s.Deviation)
 	s.Variance = float64(float64(e.Lambda*e.Lambda)*variance) + float64(float64(keep*keep)*s.Variance)
-	halfWidth = e.L * math.Sqrt(s.Variance)
+	halfWidth = float64(e.L * math.Sqrt(s.Variance))
 	return halfWidth, sides(s.Deviation >= halfWidth+Tie, s.Deviation <= -halfWidth-Tie)
 }
 
