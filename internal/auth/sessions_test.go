@@ -386,8 +386,7 @@ func TestEndedSessionDoesNotComeBack(t *testing.T) {
 func TestEndedFindsWhatIsOver(t *testing.T) {
 	t.Parallel()
 	for _, batched := range []bool{false, true} {
-		var h *house
-		h = newHouse(t, func(o *SessionOptions) {
+		h := newHouse(t, func(o *SessionOptions) {
 			o.Idle = time.Hour
 			if batched {
 				store := o.Store

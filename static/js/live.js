@@ -129,7 +129,7 @@ class Indicator {
 
   denied() {
     clearTimeout(this.timer);
-    this.show('off', this.element?.dataset.liveDenied ?? this.offWords());
+    if (this.element) this.show('off', this.element.dataset.liveDenied ?? this.offWords());
   }
 
   offWords() {
