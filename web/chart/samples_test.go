@@ -210,6 +210,8 @@ func stationPoints(n int) []StationPoint {
 	return out
 }
 
+func nan() float64 { return math.NaN() }
+
 func fallsSample(id string, w, h, now float64) *Falls {
 	loc, _ := axleLimits(14.9909, 0.00245, 0.0090)
 	return &Falls{ID: id, W: w, H: h, Label: "Averages of the last nine rounds and of this one so far.",
