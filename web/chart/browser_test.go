@@ -37,7 +37,7 @@ func page(theme string) string {
 <script src="/axe.js"></script></head><body class="desk">` + Sprite + `<header class="topbar"><span class="mark">` + MarkSVG + `Holdfast</span></header><main>
 <h1>Charts</h1><section class="panel chart-panel"><div><div class="chart-scroll" tabindex="0" role="region" aria-label="Control chart">` + axleDay("cc").SVG() + `</div></div>` + railSample("rl", true).SVG() + `</section>
 <section class="panel foot" aria-label="Point"><div class="point" data-point-of="cc"><b data-fill="when"></b><span>average <b data-fill="location"></b></span><span data-part>Note: <span data-fill="note"></span></span></div></section>
-<div class="chart-scroll" tabindex="0" role="region" aria-label="Three years">` + longRun("long", 1200).SVG() + `</div>
+<div class="chart-scroll" tabindex="0" role="region" aria-label="Three years">` + longRun("long", 600).SVG() + `</div>
 <div>` + sparkSample("sp", SignalMark, 3, 1).SVG() + verdictSample("ve").SVG() + `</div>
 <section data-falls data-decimals="4" data-say-none="Nothing typed yet." data-say-inside="Inside the band so far." data-say-above="Above the band so far." data-say-below="Below the band so far." aria-label="So far">
 <p>Average of <span data-falls-count></span>: <b data-falls-average></b></p>` +

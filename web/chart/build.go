@@ -3,11 +3,27 @@ package chart
 import (
 	"math"
 	"strconv"
+	"sync"
 )
 
 // builder appends SVG to a byte slice. All coordinates go through num, so that
 // no other form of a number, and no NaN, can get into the markup.
 type builder struct{ b []byte }
+
+// buffers spares every drawing the growth of a large slice.
+var buffers = sync.Pool{New: func() any { return new([]byte) }}
+
+// drawn returns what a drawing appends as a string.
+func drawn(appendSVG func([]byte) []byte) string {
+	p := buffers.Get().(*[]byte)
+	b := appendSVG((*p)[:0])
+	s := string(b)
+	if cap(b) < 1<<20 {
+		*p = b
+		buffers.Put(p)
+	}
+	return s
+}
 
 // farAway bounds every coordinate: far outside any drawing, and short to print.
 const farAway = 99999
@@ -52,20 +68,26 @@ func appendNum(b []byte, v float64) []byte {
 
 func (d *builder) int(v int) { d.b = strconv.AppendInt(d.b, int64(v), 10) }
 
+// special bytes need a look before they are written.
+var special = func() (t [256]bool) {
+	for c := range t {
+		t[c] = c < 0x20 || c == '<' || c == '>' || c == '&' || c == '"' || c >= 0x7f
+	}
+	return t
+}()
+
 // esc appends text that is safe inside an element and inside a double-quoted
 // attribute. Characters that XML 1.0 does not allow become U+FFFD.
 func (d *builder) esc(s string) {
-	plain := true
-	for i := 0; i < len(s); i++ {
-		if c := s[i]; c < 0x20 || c == '<' || c == '>' || c == '&' || c == '"' || c >= 0x7f {
-			plain = false
-			break
-		}
+	i := 0
+	for i < len(s) && !special[s[i]] {
+		i++
 	}
-	if plain {
-		d.b = append(d.b, s...)
+	d.b = append(d.b, s[:i]...)
+	if i == len(s) {
 		return
 	}
+	s = s[i:]
 	for _, r := range s { // invalid UTF-8 arrives here as U+FFFD
 		switch {
 		case r == '<':

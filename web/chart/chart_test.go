@@ -164,7 +164,7 @@ func odd(rng *rand.Rand) float64 {
 	}
 }
 
-var nasty = []string{"", "plain", `<script>alert("x")</script>`, "a & b", "\x00\x01\ufffe\xff\xc3", strings.Repeat("very long words ", 40), "Üß 漢字", "]]>", "a\nb"}
+var nasty = []string{"", "plain", `<script>alert("x")</script>`, "a & b", "\x00\x01\ufffe\xff\xc3", strings.Repeat("very long words ", 9), "Üß 漢字", "]]>", "a\nb"}
 
 func oddLimits(rng *rand.Rand) Limits {
 	word := func() string { return nasty[rng.IntN(len(nasty))] }
@@ -175,7 +175,7 @@ func oddControl(rng *rand.Rand) *Control {
 	word := func() string { return nasty[rng.IntN(len(nasty))] }
 	n := rng.IntN(70)
 	if rng.IntN(8) == 0 {
-		n = rng.IntN(1500)
+		n = rng.IntN(700)
 	}
 	when := func() time.Time {
 		if rng.IntN(20) == 0 {
@@ -214,7 +214,7 @@ func oddControl(rng *rand.Rand) *Control {
 
 func TestAnyInputGivesWellFormedDrawings(t *testing.T) {
 	t.Parallel()
-	for seed := range uint64(150) {
+	for seed := range uint64(70) {
 		rng := rand.New(rand.NewPCG(seed, 1))
 		word := func() string { return nasty[rng.IntN(len(nasty))] }
 		c := oddControl(rng)
@@ -390,7 +390,7 @@ func BenchmarkChartSVG(b *testing.B) {
 	b.SetBytes(int64(len(c.SVG())))
 	b.ReportAllocs()
 	for b.Loop() {
-		_ = c.AppendSVG(nil)
+		_ = c.SVG()
 	}
 }
 
@@ -398,6 +398,6 @@ func BenchmarkChartSVG3200(b *testing.B) {
 	c := longRun("cc", 3200)
 	b.ReportAllocs()
 	for b.Loop() {
-		_ = c.AppendSVG(nil)
+		_ = c.SVG()
 	}
 }

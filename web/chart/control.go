@@ -167,7 +167,7 @@ func (p Panel) floor() float64 {
 }
 
 // SVG returns the drawing.
-func (c *Control) SVG() string { return string(c.AppendSVG(nil)) }
+func (c *Control) SVG() string { return drawn(c.AppendSVG) }
 
 // Below these distances between points dots shrink, and then give way to an
 // envelope of the least and greatest value of a few px.

@@ -190,7 +190,7 @@ func (d *builder) exact(name string, v float64) {
 }
 
 // SVG returns the drawing.
-func (f *Falls) SVG() string { return string(f.AppendSVG(nil)) }
+func (f *Falls) SVG() string { return drawn(f.AppendSVG) }
 
 // AppendSVG appends the drawing to b.
 func (f *Falls) AppendSVG(b []byte) []byte {
@@ -255,7 +255,7 @@ func (d *builder) hide(yes bool) {
 }
 
 // SVG returns the drawing.
-func (v *Verdict) SVG() string { return string(v.AppendSVG(nil)) }
+func (v *Verdict) SVG() string { return drawn(v.AppendSVG) }
 
 // AppendSVG appends the drawing to b.
 func (v *Verdict) AppendSVG(b []byte) []byte {

@@ -135,7 +135,7 @@ func (r *Rail) count(s scale) *bars {
 }
 
 // SVG returns the drawing.
-func (r *Rail) SVG() string { return string(r.AppendSVG(nil)) }
+func (r *Rail) SVG() string { return drawn(r.AppendSVG) }
 
 // AppendSVG appends the drawing to b.
 func (r *Rail) AppendSVG(b []byte) []byte {

@@ -37,7 +37,7 @@ type SparkPoint struct {
 const SparkLength = 25
 
 // SVG returns the drawing.
-func (s *Spark) SVG() string { return string(s.AppendSVG(nil)) }
+func (s *Spark) SVG() string { return drawn(s.AppendSVG) }
 
 // AppendSVG appends the drawing to b.
 func (s *Spark) AppendSVG(b []byte) []byte {

@@ -18,7 +18,7 @@ type Strip struct {
 const mostTicks = 100
 
 // SVG returns the drawing.
-func (p *Strip) SVG() string { return string(p.AppendSVG(nil)) }
+func (p *Strip) SVG() string { return drawn(p.AppendSVG) }
 
 // AppendSVG appends the drawing to b.
 func (p *Strip) AppendSVG(b []byte) []byte {
