@@ -40,7 +40,7 @@ func RangeSurvival(n int, w float64) (float64, error) {
 	if w <= 0 {
 		return 1, nil
 	}
-	return newRangeGrid(n).survival(w), nil
+	return newRangeGridTo(n, math.Max(usualReach, math.Min(37, w/2+7))).survival(w), nil
 }
 
 // RangeQuantile returns the w with P(W ≤ w) = p, for 0 < p < 1 and
@@ -62,6 +62,9 @@ func RangeUpperQuantile(n int, q float64) (float64, error) {
 	}
 	if !(q > 0 && q < 1) {
 		return math.NaN(), fmt.Errorf("%w: a probability must lie between 0 and 1, got %g", ErrArgument, q)
+	}
+	if q < 1e-9 {
+		return newRangeGridTo(n, 37).upperQuantile(q), nil
 	}
 	return newRangeGrid(n).upperQuantile(q), nil
 }
@@ -86,10 +89,17 @@ type rangeGrid struct {
 	lead    []float64 // φ(x) P(Z > x)^(n-1), cut where it has died out
 }
 
-func newRangeGrid(n int) rangeGrid {
+// usualReach is as far as the smallest of a sample lies from its centre, but for a
+// probability of 1e-20. A range of 14 comes from readings at about -7 and 7, so far
+// upper tails need more.
+const usualReach = 9.5
+
+func newRangeGrid(n int) rangeGrid { return newRangeGridTo(n, usualReach) }
+
+func newRangeGridTo(n int, reach float64) rangeGrid {
 	// For small w the integrand is a bell of width 1/√n: the step follows it.
 	h := math.Min(1.0/8, 0.7/math.Sqrt(float64(n)))
-	half := int(9.5/h) + 1
+	half := int(reach/h) + 1
 	g := rangeGrid{n: n, h: h}
 	size := 2*half + 1
 	buf := make([]float64, 4*size)

@@ -317,7 +317,9 @@ func (s CountStandard) exact(b Band, size, multiple float64) (Band, error) {
 	b.Lower, b.Upper = math.Inf(-1), upper*unit
 	if lower > 0 {
 		b.Lower = lower * unit
-		b.Below = (b.Center - b.Lower) / multiple
+		if b.Lower < b.Center {
+			b.Below = (b.Center - b.Lower) / multiple
+		}
 	}
 	if b.Upper > b.Center {
 		b.Above = (b.Upper - b.Center) / multiple

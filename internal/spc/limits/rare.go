@@ -173,7 +173,9 @@ func (s RareStandard) geometric(b Band) Band {
 	}
 	if lower > 0 {
 		b.Lower = lower
-		b.Below = (b.Center - lower) / l
+		if lower < b.Center {
+			b.Below = (b.Center - lower) / l
+		}
 	}
 	return b
 }
