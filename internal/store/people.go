@@ -36,10 +36,20 @@ func (s *Store) Person(ctx context.Context, id uuid.UUID) (plant.Person, error) 
 	return p.Person, err
 }
 
-// PersonByLogin reads a person and the hash of the secret, for checking a sign-in.
-func (s *Store) PersonByLogin(ctx context.Context, login string) (plant.Person, string, error) {
+// Credential reads a person by the name typed at sign-in, with the hash of the secret.
+// Somebody who does not exist is NotFound.
+func (s *Store) Credential(ctx context.Context, login string) (plant.Person, string, error) {
 	p, err := s.person(ctx, ` where login = $1 and plant_id = $2`, plant.CleanLogin(login), s.plant())
 	return p.Person, p.secret, err
+}
+
+// Rehash replaces the hash of a secret by one of the same secret at another cost. When
+// the secret was changed meanwhile, nothing happens.
+func (s *Store) Rehash(ctx context.Context, id uuid.UUID, old, fresh string) error {
+	if _, err := s.pool.Exec(ctx, `update person set secret = $3 where id = $1 and secret = $2`, id, old, fresh); err != nil {
+		return fmt.Errorf("store a new hash: %w", err)
+	}
+	return nil
 }
 
 func (s *Store) person(ctx context.Context, where string, args ...any) (personRow, error) {

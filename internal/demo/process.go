@@ -1,0 +1,95 @@
+package demo
+
+import (
+	"math"
+	"math/rand/v2"
+	"time"
+
+	"holdfast/internal/plant"
+)
+
+// track is a characteristic with its process and what the simulation knows of it.
+type track struct {
+	measure
+	plant.Characteristic
+	setup   plant.Setup
+	rng     *rand.Rand
+	ended   []bool  // faults that somebody has found, by index
+	offset  float64 // what adjusting has carried, in the unit
+	taken   int     // subgroups so far
+	frozen  int     // revisions so far
+	last    []int64 // newest readings
+	lastDue time.Time
+	due     time.Time
+}
+
+func newTrack(m measure, c plant.Characteristic, setup plant.Setup, index int) *track {
+	return &track{measure: m, Characteristic: c, setup: setup, ended: make([]bool, len(m.faults)), rng: rand.New(rand.NewPCG(Seed, uint64(index)))}
+}
+
+// acting returns the faults that act at a time, days after the beginning.
+func (t *track) acting(day float64) []int {
+	var out []int
+	for i, f := range t.faults {
+		if day >= f.day && !t.ended[i] {
+			out = append(out, i)
+		}
+	}
+	return out
+}
+
+// sample draws a subgroup as it would be measured at this time.
+func (t *track) sample(day float64) []int64 {
+	mean, sigma := t.mean+t.offset, t.sigma
+	for _, i := range t.acting(day) {
+		f := t.faults[i]
+		mean += (f.shift + f.drift*(day-f.day)) * t.sigma
+		if f.widen > 0 {
+			sigma *= f.widen
+		}
+	}
+	mean += t.rng.NormFloat64() * t.wander * t.sigma
+	scale := math.Pow10(t.setup.Decimals)
+	out := make([]int64, t.setup.Size)
+	for i := range out {
+		v := mean + t.rng.NormFloat64()*sigma
+		if t.setup.Lower == nil && v < 0 {
+			v = -v // run-out and positions cannot be negative
+		}
+		out[i] = int64(math.Round(v * scale))
+	}
+	return out
+}
+
+// find ends the fault that has acted longest, if any, and says what it was.
+func (t *track) find(day float64) (fault, bool) {
+	for _, i := range t.acting(day) {
+		if t.faults[i].open {
+			continue
+		}
+		t.ended[i] = true
+		return t.faults[i], true
+	}
+	return fault{}, false
+}
+
+// correction is what somebody turns who corrects by the whole deviation of the last
+// subgroup from target: full compensation, which makes things worse.
+func (t *track) correction() (units int64) {
+	if t.setup.Target == nil || len(t.last) == 0 {
+		return 0
+	}
+	target, err := t.setup.Target.In(t.setup.Decimals)
+	if err != nil {
+		return 0
+	}
+	var sum int64
+	for _, v := range t.last {
+		sum += v - target
+	}
+	return -int64(math.Round(float64(sum) / float64(len(t.last))))
+}
+
+func (t *track) adjust(units int64) {
+	t.offset += float64(units) / math.Pow10(t.setup.Decimals)
+}
