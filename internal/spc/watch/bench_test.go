@@ -109,37 +109,54 @@ func BenchmarkReplay(b *testing.B) {
 	s.EWMA, s.CUSUM = nil, nil
 	plain := judgeOf(b, s)
 	full := judgeOf(b, fullStandard(limits.XBarR, watch.Nelson()))
-	var pass, rules, everything time.Duration
+	// The shortest of all rounds counts, for a replay stretch by stretch: on a busy
+	// machine the others tell of the neighbours.
+	const stretches = 200
+	type times [stretches]time.Duration
+	pass, rules, everything := time.Hour, times{}, times{}
 	fired := 0
-	replay := func(j *watch.Judge) time.Duration {
-		start := time.Now()
+	replay := func(j *watch.Judge, best *times) {
 		var m watch.Memory
 		var d watch.Judged
-		for at := 0; at < len(readings); at += 5 {
-			j.StepInto(&m, summed(readings[at:at+5]), &d)
-			if d.Any() {
-				fired++
+		for i := range best {
+			start := time.Now()
+			stretch := readings[i*len(readings)/stretches : (i+1)*len(readings)/stretches]
+			for at := 0; at < len(stretch); at += 5 {
+				j.StepInto(&m, summed(stretch[at:at+5]), &d)
+				if d.Any() {
+					fired++
+				}
+			}
+			if took := time.Since(start); best[i] == 0 || took < best[i] {
+				best[i] = took
 			}
 		}
-		return time.Since(start)
+		if m.Points != subgroups {
+			b.Fatalf("judged %d subgroups", m.Points)
+		}
 	}
 	b.ReportAllocs()
 	for b.Loop() {
 		start := time.Now()
 		_, v := stat.MeanVariance(floats, nil)
-		pass += time.Since(start)
+		pass = min(pass, time.Since(start))
 		if !(v > 0) {
 			b.Fatal("no variance")
 		}
-		rules += replay(plain)
-		everything += replay(full)
+		replay(plain, &rules)
+		replay(full, &everything)
 	}
 	if fired == 0 {
 		b.Fatal("no rule ever fired: nothing was judged")
 	}
-	each := func(d time.Duration) float64 { return float64(d) / float64(b.N) / subgroups }
-	b.ReportMetric(each(pass), "ns/pass-subgroup")
-	b.ReportMetric(each(rules), "ns/rules-subgroup")
-	b.ReportMetric(float64(rules)/float64(pass), "rules/pass")
-	b.ReportMetric(float64(everything)/float64(pass), "rules+ewma+cusum/pass")
+	b.ReportMetric(float64(pass)/subgroups, "ns/pass-subgroup")
+	sum := func(best times) (total float64) {
+		for _, d := range best {
+			total += float64(d)
+		}
+		return total
+	}
+	b.ReportMetric(sum(rules)/subgroups, "ns/rules-subgroup")
+	b.ReportMetric(sum(rules)/float64(pass), "rules/pass")
+	b.ReportMetric(sum(everything)/float64(pass), "rules+ewma+cusum/pass")
 }

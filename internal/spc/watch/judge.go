@@ -152,7 +152,7 @@ func NewJudge(s Standard) (*Judge, error) {
 		}
 		j.cusum, j.hasCUSUM = *s.CUSUM, true
 	}
-	if j.perSigma == 0 || math.IsInf(j.perSigma, 0) {
+	if s.Sigma < 1e-150 || s.Sigma > 1e150 { // squares and reciprocals would overflow
 		return nil, fmt.Errorf("sigma: %v is too far from 1 to be judged by", s.Sigma)
 	}
 	if _, err := j.size(1); err != nil { // every chart takes a single reading
@@ -210,8 +210,8 @@ func (j *Judge) Step(m *Memory, s Subgroup) (out Judged) {
 	return out
 }
 
-// StepInto is Step for long replays: it overwrites all of out, which saves a
-// fifth of the time that goes into handing the answer back.
+// StepInto is Step for long replays: it overwrites all of out, which saves a copy
+// of the answer.
 func (j *Judge) StepInto(m *Memory, s Subgroup, out *Judged) {
 	var b *sized
 	if s.N >= 0 && s.N <= usual {
@@ -282,8 +282,8 @@ func (j *Judge) StepInto(m *Memory, s Subgroup, out *Judged) {
 func (s *scale) plot(p *Plotted, value float64) float64 {
 	d := value - s.band.Center
 	z := float64(d * s.per[math.Float64bits(d)>>63])
-	// Field by field: a copy of the whole band goes by overlapping 16-byte moves,
-	// which stall and cost a seventh of a replay.
+	// The band goes over field by field: as a whole it goes in overlapping moves,
+	// which stall (16 instead of 9 ns a subgroup without rules).
 	p.Value, p.Z = value, z
 	p.Band.Center, p.Band.Lower, p.Band.Upper = s.band.Center, s.band.Lower, s.band.Upper
 	p.Band.Below, p.Band.Above = s.band.Below, s.band.Above

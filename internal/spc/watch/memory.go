@@ -38,7 +38,8 @@ func (m Memory) SameFuture(o Memory) bool {
 //	uvarint   points since the boundary
 //	1 byte    flags: 1 individual kept, 2 and 4 a last point on the location and
 //	          the dispersion chart, 8 the CUSUM has started
-//	1 byte    sign of the last step plus one: location, and dispersion times 4
+//	1 byte    last step of the location, and four times that of the dispersion
+//	          chart: 1 up, 2 down, 0 neither
 //	7 x 8     little-endian IEEE 754: previous individual, last point of the
 //	          location and of the dispersion chart, EWMA deviation and variance,
 //	          CUSUM high and low
@@ -72,7 +73,7 @@ func (m Memory) AppendBinary(b []byte) ([]byte, error) {
 	for i, set := range [...]bool{m.individual, m.Location.seen, m.Dispersion.seen, m.CUSUM.Started} {
 		flags |= byte(bit(set)) << i
 	}
-	b = append(b, flags, byte(m.Location.step+1)|byte(m.Dispersion.step+1)<<2)
+	b = append(b, flags, m.Location.step|m.Dispersion.step<<2)
 	for _, f := range m.floats() {
 		b = binary.LittleEndian.AppendUint64(b, math.Float64bits(*f))
 	}
@@ -137,8 +138,8 @@ func decodeMemory(b []byte) (m Memory, ok bool) {
 	m.Location.seen = flags&flagLocation != 0
 	m.Dispersion.seen = flags&flagDispersion != 0
 	m.CUSUM.Started = flags&flagStarted != 0
-	m.Location.step, m.Dispersion.step = int8(steps&3)-1, int8(steps>>2&3)-1
-	if m.Location.step > 1 || m.Dispersion.step > 1 {
+	m.Location.step, m.Dispersion.step = steps&3, steps>>2&3
+	if m.Location.step > stepDown || m.Dispersion.step > stepDown {
 		return m, false
 	}
 	floats := m.floats()

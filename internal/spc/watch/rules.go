@@ -15,8 +15,8 @@ const MaxRules = 16
 // centre in one-sigma distances of that side (zones). X is the plotted statistic
 // in sigmas of a reading, from any fixed origin, and is only ever compared with
 // that of the point before (rising, alternating): where subgroups differ in size
-// the statistic may rise while its z falls. A NaN has no property at all: it
-// breaks every run and is no neighbour. Judge never makes one.
+// the statistic may rise while its z falls. A NaN in either fires nothing and starts
+// the rules afresh. Judge never makes one.
 type Point struct{ Z, X float64 }
 
 // Fired says which rules hold at a point, one bit a rule in the order compiled,
@@ -59,14 +59,19 @@ type Rules struct {
 	// edges at or below |z| is the zone of a point.
 	edges []float64
 	// zones says, above the centre and below it, who has what in each zone.
-	zones          [2][2 * MaxRules]zone
-	up, down, turn lanes // those that ask for a rise, a fall, a turn
-	neighbours     bool  // some rule compares a point with the one before
+	zones [2][2 * MaxRules]zone
+	// steps says who has what by the step to the point plus four times the step
+	// before it: 1 up, 2 down, 0 neither.
+	steps             [16]lanes
+	neighbours, turns bool // some rule looks at the step, at the step before
 
 	runs    lanes         // those that want every point of their window
 	longest [planes]lanes // their window less one, bit by bit
+	long    bool          // some of them are beyond 16 points
 	windows []window      // those that want k of m
 }
+
+const stepUp, stepDown = 1, 2
 
 // zone is what a point has by its distance from the centre alone.
 type zone struct {
@@ -124,7 +129,7 @@ type State struct {
 	runs    [planes]lanes       // bit b of every lane's run length
 	windows [MaxRules][2]uint64 // registers of each k-of-m, high and low; of a short one both in the first
 	last    float64             // X of the last point
-	step    int8                // sign of the last step, where a rule asks for turns
+	step    uint8               // the last step as in Rules.steps, where a rule asks for turns
 	seen    bool                // there is a last point
 }
 
@@ -148,7 +153,6 @@ func Compile(rules []Rule) (*Rules, error) {
 	for i, rule := range rules {
 		r.add(i, rule)
 	}
-	r.neighbours = r.up|r.turn != 0
 	return r, nil
 }
 
@@ -170,12 +174,17 @@ func (r *Rules) add(i int, rule Rule) {
 	length := rule.M // points, steps or turns that make a firing
 	switch rule.Kind {
 	case RisingOrFalling:
-		r.up |= high
-		r.down |= low
+		r.neighbours = true
+		for before := 0; before < 16; before += 4 {
+			r.steps[before|stepUp] |= high
+			r.steps[before|stepDown] |= low
+		}
 		r.run(high|low, rule.M-1)
 		return
 	case Alternating:
-		r.turn |= none
+		r.neighbours, r.turns = true, true
+		r.steps[4*stepDown|stepUp] |= none
+		r.steps[4*stepUp|stepDown] |= none
 		r.run(none, rule.M-2)
 		return
 	case Within, Outside:
@@ -208,6 +217,7 @@ func (r *Rules) add(i int, rule Rule) {
 // run makes lanes fire at every point that completes length in a row.
 func (r *Rules) run(who lanes, length int) {
 	r.runs |= who
+	r.long = r.long || length > 16
 	for b := range planes {
 		r.longest[b] |= who & -lanes((length-1)>>b&1)
 	}
@@ -233,46 +243,50 @@ func (r *Rules) Step(s *State, p Point) Fired {
 	// Nothing below branches on the data: on a process in control such a branch
 	// is a coin toss, and a wrong guess costs as much as a whole rule. Nor is it
 	// split up: the calls would cost as much as the work.
-	var at zone
-	if p.Z == p.Z {
-		size, n := math.Abs(p.Z), uint64(0)
-		for _, edge := range r.edges {
-			n += bit(size >= edge)
-		}
-		at = r.zones[math.Float64bits(p.Z)>>63][n%(2*MaxRules)]
+	if p.Z != p.Z || p.X != p.X {
+		*s = State{}
+		return Fired{}
 	}
+	size, n := math.Abs(p.Z), uint64(0)
+	for _, edge := range r.edges {
+		n += bit(size >= edge)
+	}
+	at := &r.zones[math.Float64bits(p.Z)>>63][n%(2*MaxRules)]
 	has := at.has
 	if r.neighbours {
-		// From the last point to this one: up, down, or turning against the step
-		// before.
-		d, seen := p.X-s.last, bit(s.seen)
-		up, down := bit(d >= Tie)&seen, bit(d <= -Tie)&seen
-		has |= r.up&-up | r.down&-down
-		if r.turn != 0 {
-			step := int8(up) - int8(down)
-			has |= r.turn & -(uint64(uint8(step*s.step)) >> 7)
-			s.step = step
+		var step uint64
+		if s.seen {
+			d := p.X - s.last
+			step = bit(d >= Tie) | bit(d <= -Tie)<<1
+		}
+		has |= r.steps[(step|uint64(s.step)<<2)%16]
+		if r.turns {
+			s.step = uint8(step)
 		}
 		s.seen, s.last = true, p.X+0 // a negative zero becomes a zero
-		if p.X != p.X {
-			s.seen, s.last = false, 0
-		}
 	}
 
 	// All runs at once. The run lengths stand upright: word b holds bit b of every
 	// lane's length, so one addition serves all lanes. A length stops one short of
 	// its window: there the next point with the property fires, and more would make
-	// no difference.
+	// no difference. The upper two words are for windows beyond 16 points, which few
+	// sets have.
 	c, full, on := &s.runs, &r.longest, has&r.runs
-	a0, a1, a2, a3, a4, a5 := c[0], c[1], c[2], c[3], c[4], c[5]
-	short := (a0 ^ full[0]) | (a1 ^ full[1]) | (a2 ^ full[2]) | (a3 ^ full[3]) | (a4 ^ full[4]) | (a5 ^ full[5])
+	a0, a1, a2, a3 := c[0], c[1], c[2], c[3]
+	short := (a0 ^ full[0]) | (a1 ^ full[1]) | (a2 ^ full[2]) | (a3 ^ full[3])
+	if r.long {
+		short |= (c[4] ^ full[4]) | (c[5] ^ full[5])
+	}
 	fired, carry := on&^short, on&short
 	c[0], carry = (a0^carry)&on, a0&carry
 	c[1], carry = (a1^carry)&on, a1&carry
 	c[2], carry = (a2^carry)&on, a2&carry
 	c[3], carry = (a3^carry)&on, a3&carry
-	c[4], carry = (a4^carry)&on, a4&carry
-	c[5] = (a5 ^ carry) & on
+	if r.long {
+		a4, a5 := c[4], c[5]
+		c[4], carry = (a4^carry)&on, a4&carry
+		c[5] = (a5 ^ carry) & on
+	}
 
 	ws, sides := r.windows, at.sides
 	for i := range ws {
