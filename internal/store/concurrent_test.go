@@ -1,0 +1,233 @@
+package store_test
+
+import (
+	"context"
+	"log/slog"
+	"math/rand/v2"
+	"sync"
+	"testing"
+	"time"
+
+	"github.com/google/uuid"
+	"golang.org/x/sync/errgroup"
+
+	"holdfast/internal/plant"
+	"holdfast/internal/store"
+	"holdfast/internal/store/storetest"
+)
+
+// TestManyWriters lets many tablets write the same and different characteristics at
+// once, rounds that lock several among them, in every order.
+func TestManyWriters(t *testing.T) {
+	t.Parallel()
+	p := storetest.New(t, "x")
+	ctx := context.Background()
+	const writers, rounds = 12, 25
+	g, ctx := errgroup.WithContext(ctx)
+	for w := range writers {
+		rng := rand.New(rand.NewPCG(uint64(w), 1))
+		g.Go(func() error {
+			for i := range rounds {
+				r := plant.Round{ID: storetest.ID(), Station: p.Station.ID, Source: "station", Person: p.Operator.ID,
+					TakenRaw: storetest.Start.Add(-time.Duration(rng.IntN(100)) * time.Minute)}
+				entries := []plant.Entry{
+					{Characteristic: p.Diameter.ID, SetupVersion: 1, Readings: []int64{14990, 14991, 14992, 14993, 14985 + rng.Int64N(20)}},
+					{Characteristic: p.Force.ID, SetupVersion: 1, Readings: []int64{640, 641, 642, 643, 644, 640 + rng.Int64N(50)}},
+					{Characteristic: p.Mass.ID, SetupVersion: 1, Readings: []int64{100 + rng.Int64N(60)}},
+				}
+				rng.Shuffle(len(entries), func(i, j int) { entries[i], entries[j] = entries[j], entries[i] })
+				r.Entries = entries[:1+rng.IntN(3)]
+				if _, err := p.Record(ctx, r); err != nil {
+					return err
+				}
+				if i%10 == 9 {
+					if err := p.SetMachine(ctx, plant.MachineState{ID: storetest.ID(), Machine: p.Machine.ID, Running: true, Part: p.PartA.ID}); err != nil {
+						return err
+					}
+				}
+			}
+			return nil
+		})
+	}
+	if err := g.Wait(); err != nil {
+		t.Fatal(err)
+	}
+	var stored int
+	if err := p.Pool().QueryRow(context.Background(), `select count(*) from round`).Scan(&stored); err != nil || stored != writers*rounds {
+		t.Errorf("%d rounds on record, %v; want %d", stored, err, writers*rounds)
+	}
+	consistent(t, p)
+}
+
+// TestOneIDManyTimes sends one round from many sides at once, with equal content and
+// with different content. It is there once, whoever came first; what was different is
+// set aside.
+func TestOneIDManyTimes(t *testing.T) {
+	t.Parallel()
+	p := storetest.New(t, "x")
+	ctx := context.Background()
+	for range 8 {
+		id := storetest.ID()
+		round := func(last int64) plant.Round {
+			r := p.Round(p.Diameter, 14990, 14991, 14992, 14990, last)
+			r.ID = id
+			return r
+		}
+		other := p.Round(p.Mass, 120) // locks another row
+		other.ID = id
+		sends := []plant.Round{round(14990), round(14990), round(14990), round(14991), round(14991), other, other}
+		answers := make([]error, len(sends))
+		var wg sync.WaitGroup
+		for i, r := range sends {
+			wg.Go(func() { _, answers[i] = p.Record(ctx, r) })
+		}
+		wg.Wait()
+		taken := map[[32]byte]bool{}
+		for i, err := range answers {
+			switch {
+			case err == nil:
+				taken[sends[i].Digest()] = true
+			case !plant.IsKind(err, plant.Conflict):
+				t.Errorf("send %d: %v, want success or a conflict", i, err)
+			}
+		}
+		if len(taken) != 1 {
+			t.Errorf("%d different contents were accepted under one id, want 1", len(taken))
+		}
+		var rounds, subgroups, aside int
+		if err := p.Pool().QueryRow(ctx, `select (select count(*) from round where id = $1), (select count(*) from subgroup where round_id = $1),
+			(select count(*) from set_aside where about = $1)`, id).Scan(&rounds, &subgroups, &aside); err != nil {
+			t.Fatal(err)
+		}
+		if rounds != 1 || subgroups != 1 || aside != 2 {
+			t.Errorf("on record: %d rounds, %d subgroups, %d set aside; want 1, 1 and 2", rounds, subgroups, aside)
+		}
+	}
+	consistent(t, p)
+}
+
+// TestTwoPeopleOnOneMatter lets several people take and close one matter at once.
+func TestTwoPeopleOnOneMatter(t *testing.T) {
+	t.Parallel()
+	p, _ := learned(t)
+	ctx := context.Background()
+	a := p.MustRecord(t, p.Diameter, 14998, 14998, 14999, 14998, 14999)
+	m, err := p.Matter(ctx, a.Parts[0].Matter)
+	if err != nil {
+		t.Fatal(err)
+	}
+	closed := make([]error, 6)
+	var wg sync.WaitGroup
+	for i := range closed {
+		wg.Go(func() {
+			closed[i] = p.CloseMatter(ctx, plant.ClosingRequest{Matter: m.ID, Version: m.Version, Cause: "Not found", Person: p.Operator.ID})
+		})
+	}
+	wg.Wait()
+	won := 0
+	for _, err := range closed {
+		if err == nil {
+			won++
+		} else if !plant.IsKind(err, plant.Conflict) {
+			t.Errorf("closing: %v, want success or a conflict", err)
+		}
+	}
+	if won != 1 {
+		t.Errorf("%d of the closings were accepted, want 1", won)
+	}
+	consistent(t, p)
+}
+
+func consistent(t *testing.T, p *storetest.Plant) {
+	t.Helper()
+	_, differences, err := p.CheckJudgements(context.Background())
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, d := range differences {
+		t.Error(d.What)
+	}
+	if n, err := p.VerifyLedger(context.Background()); err != nil {
+		t.Errorf("ledger breaks after %d entries: %v", n, err)
+	}
+}
+
+// told collects what a feed tells.
+type told struct {
+	mu   sync.Mutex
+	seen map[uuid.UUID]bool
+	got  chan uuid.UUID
+}
+
+func newTold() *told { return &told{seen: map[uuid.UUID]bool{}, got: make(chan uuid.UUID, 1000)} }
+
+func (o *told) tell(ids []uuid.UUID) {
+	for _, id := range ids {
+		select {
+		case o.got <- id:
+		default:
+		}
+	}
+}
+
+func (o *told) await(t *testing.T, want uuid.UUID, within time.Duration) {
+	t.Helper()
+	limit := time.After(within)
+	for {
+		select {
+		case id := <-o.got:
+			if id == want {
+				return
+			}
+		case <-limit:
+			t.Fatalf("nobody was told of station %s within %s", want, within)
+		}
+	}
+}
+
+func (o *told) drain() {
+	for {
+		select {
+		case <-o.got:
+		default:
+			return
+		}
+	}
+}
+
+// TestAnotherServerHears covers the way between two servers on one database, by notice
+// and, when the first died between commit and notice, by looking again.
+func TestAnotherServerHears(t *testing.T) {
+	t.Parallel()
+	p := storetest.New(t, "x")
+	ctx, cancel := context.WithCancel(context.Background())
+	second, err := store.Open(ctx, store.Options{URL: p.URL})
+	if err != nil {
+		t.Fatal(err)
+	}
+	t.Cleanup(second.Close)
+	here, there := newTold(), newTold()
+	var running sync.WaitGroup
+	t.Cleanup(running.Wait)
+	t.Cleanup(cancel)
+	log := slog.New(slog.DiscardHandler)
+	first := p.NewFeed(log, here.tell)
+	firstCtx, firstDies := context.WithCancel(ctx)
+	running.Go(func() { first.Run(firstCtx) })
+	feed := second.NewFeed(log, there.tell)
+	running.Go(func() { feed.Run(ctx) })
+	there.await(t, p.Station.ID, 10*time.Second) // all are marked when the line stands
+
+	there.drain()
+	p.MustRecord(t, p.Diameter, 14990, 14991, 14992, 14990, 14991)
+	here.await(t, p.Station.ID, time.Second)
+	there.await(t, p.Station.ID, 10*time.Second)
+
+	firstDies() // it goes on committing, but announces nothing any more
+	there.drain()
+	time.Sleep(1700 * time.Millisecond) // what is under way is told once more by looking again
+	there.drain()
+	p.Clock.Advance(time.Minute)
+	p.MustRecord(t, p.Length, 1000, 1001, 999)
+	there.await(t, p.Other.ID, 10*time.Second)
+}
