@@ -30,7 +30,7 @@ func TestClosedForms(t *testing.T) {
 		{"c5(2)", v(factor.C5(2)), math.Sqrt(1 - 2/math.Pi)},
 		{"median of two", v(factor.MedianSE(2)), math.Sqrt(0.5)},
 		{"median of one", v(factor.MedianSE(1)), 1},
-		// David and Nagaraja, Order Statistics (2003), example 3.2: 1 - √3/π.
+		// The classical closed form for three readings, variance 1 - √3/π.
 		{"median of three", v(factor.MedianSE(3)), math.Sqrt(1 - root3/math.Pi)},
 		{"median range of two", v(factor.MedianRange(2)), math.Sqrt2 * 0.6744897501960817},
 		// Twice a half-normal: P(W ≤ w) = 2Φ(w/√2) - 1.
