@@ -240,3 +240,8 @@ func ProblemOf(err error, field string) string {
 	}
 	return ""
 }
+
+// NotFound is the error of an address that leads to nothing.
+func NotFound(r *http.Request) error {
+	return &plant.Error{Kind: plant.NotFound, Message: FrameOf(r).Words.T("ui.problem-text.not-found")}
+}

@@ -379,16 +379,24 @@ func FieldProblem(id, text string) templ.Component {
 			if templ_7745c5c3_Err != nil {
 				return templ_7745c5c3_Err
 			}
+			templ_7745c5c3_Err = Symbol("due").Render(ctx, templ_7745c5c3_Buffer)
+			if templ_7745c5c3_Err != nil {
+				return templ_7745c5c3_Err
+			}
+			templ_7745c5c3_Err = templruntime.WriteString(templ_7745c5c3_Buffer, 22, " ")
+			if templ_7745c5c3_Err != nil {
+				return templ_7745c5c3_Err
+			}
 			var templ_7745c5c3_Var19 string
 			templ_7745c5c3_Var19, templ_7745c5c3_Err = templ.JoinStringErrs(text)
 			if templ_7745c5c3_Err != nil {
-				return templ.Error{Err: templ_7745c5c3_Err, FileName: `state.templ`, Line: 47, Col: 50}
+				return templ.Error{Err: templ_7745c5c3_Err, FileName: `state.templ`, Line: 49, Col: 9}
 			}
 			_, templ_7745c5c3_Err = templ_7745c5c3_Buffer.WriteString(templ.EscapeString(templ_7745c5c3_Var19))
 			if templ_7745c5c3_Err != nil {
 				return templ_7745c5c3_Err
 			}
-			templ_7745c5c3_Err = templruntime.WriteString(templ_7745c5c3_Buffer, 22, "</p>")
+			templ_7745c5c3_Err = templruntime.WriteString(templ_7745c5c3_Buffer, 23, "</p>")
 			if templ_7745c5c3_Err != nil {
 				return templ_7745c5c3_Err
 			}
@@ -414,7 +422,7 @@ func sprite() templ.Component {
 		}
 		ctx = templ.InitializeContext(ctx)
 		ctx = templ.ClearChildren(ctx)
-		templ_7745c5c3_Err = templruntime.WriteString(templ_7745c5c3_Buffer, 23, "<svg class=\"sprite\" aria-hidden=\"true\" focusable=\"false\"><defs><symbol id=\"s-leave\" viewBox=\"0 0 24 24\"><circle cx=\"12\" cy=\"12\" r=\"8.5\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"2.6\"></circle></symbol> <symbol id=\"s-due\" viewBox=\"0 0 24 24\"><path d=\"M5.5 3.2 21 12 5.5 20.8Z\" fill=\"currentColor\" stroke=\"currentColor\" stroke-width=\"2\" stroke-linejoin=\"round\"></path></symbol> <symbol id=\"s-look\" viewBox=\"0 0 24 24\"><path d=\"M12 1.8 22.2 12 12 22.2 1.8 12Z\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"2.8\" stroke-linejoin=\"round\"></path><circle cx=\"12\" cy=\"12\" r=\"3.6\" fill=\"currentColor\"></circle></symbol> <symbol id=\"s-hold\" viewBox=\"0 0 24 24\"><path fill-rule=\"evenodd\" fill=\"currentColor\" d=\"M7.4 1h9.2L23 7.4v9.2L16.6 23H7.4L1 16.6V7.4ZM5.4 9.9v4.2h13.2V9.9Z\"></path></symbol> <symbol id=\"s-stop\" viewBox=\"0 0 24 24\"><path d=\"M8 4.5v15M16 4.5v15\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"3.4\" stroke-linecap=\"round\"></path></symbol> <symbol id=\"s-learning\" viewBox=\"0 0 24 24\"><circle cx=\"12\" cy=\"12\" r=\"8.5\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"2.8\" stroke-dasharray=\"0.1 5.24\" stroke-linecap=\"round\"></circle></symbol> <symbol id=\"s-unknown\" viewBox=\"0 0 24 24\"><circle cx=\"12\" cy=\"12\" r=\"9.6\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"2.2\"></circle><path d=\"M9.2 9.6a2.9 2.9 0 1 1 4.3 2.5c-1 .6-1.5 1.1-1.5 2.2\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"2.2\" stroke-linecap=\"round\"></path><circle cx=\"12\" cy=\"17.4\" r=\"1.4\" fill=\"currentColor\"></circle></symbol> <symbol id=\"s-ok\" viewBox=\"0 0 24 24\"><path d=\"M4.5 12.5 10 18 20 6.5\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"2.6\" stroke-linecap=\"round\" stroke-linejoin=\"round\"></path></symbol></defs></svg>")
+		templ_7745c5c3_Err = templruntime.WriteString(templ_7745c5c3_Buffer, 24, "<svg class=\"sprite\" aria-hidden=\"true\" focusable=\"false\"><defs><symbol id=\"s-leave\" viewBox=\"0 0 24 24\"><circle cx=\"12\" cy=\"12\" r=\"8.5\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"2.6\"></circle></symbol> <symbol id=\"s-due\" viewBox=\"0 0 24 24\"><path d=\"M5.5 3.2 21 12 5.5 20.8Z\" fill=\"currentColor\" stroke=\"currentColor\" stroke-width=\"2\" stroke-linejoin=\"round\"></path></symbol> <symbol id=\"s-look\" viewBox=\"0 0 24 24\"><path d=\"M12 1.8 22.2 12 12 22.2 1.8 12Z\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"2.8\" stroke-linejoin=\"round\"></path><circle cx=\"12\" cy=\"12\" r=\"3.6\" fill=\"currentColor\"></circle></symbol> <symbol id=\"s-hold\" viewBox=\"0 0 24 24\"><path fill-rule=\"evenodd\" fill=\"currentColor\" d=\"M7.4 1h9.2L23 7.4v9.2L16.6 23H7.4L1 16.6V7.4ZM5.4 9.9v4.2h13.2V9.9Z\"></path></symbol> <symbol id=\"s-stop\" viewBox=\"0 0 24 24\"><path d=\"M8 4.5v15M16 4.5v15\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"3.4\" stroke-linecap=\"round\"></path></symbol> <symbol id=\"s-learning\" viewBox=\"0 0 24 24\"><circle cx=\"12\" cy=\"12\" r=\"8.5\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"2.8\" stroke-dasharray=\"0.1 5.24\" stroke-linecap=\"round\"></circle></symbol> <symbol id=\"s-unknown\" viewBox=\"0 0 24 24\"><circle cx=\"12\" cy=\"12\" r=\"9.6\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"2.2\"></circle><path d=\"M9.2 9.6a2.9 2.9 0 1 1 4.3 2.5c-1 .6-1.5 1.1-1.5 2.2\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"2.2\" stroke-linecap=\"round\"></path><circle cx=\"12\" cy=\"17.4\" r=\"1.4\" fill=\"currentColor\"></circle></symbol> <symbol id=\"s-ok\" viewBox=\"0 0 24 24\"><path d=\"M4.5 12.5 10 18 20 6.5\" fill=\"none\" stroke=\"currentColor\" stroke-width=\"2.6\" stroke-linecap=\"round\" stroke-linejoin=\"round\"></path></symbol></defs></svg>")
 		if templ_7745c5c3_Err != nil {
 			return templ_7745c5c3_Err
 		}
