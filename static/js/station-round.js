@@ -1,0 +1,305 @@
+// Typing a round: one characteristic at a time, the keypad, a gauge that types and
+// ends with Enter, and where the round falls meanwhile. Nothing is judged here; the
+// server parses and asks again whatever this file thinks.
+//
+// The page brings along (web/station/round.templ):
+//
+//   form[data-round]              data-say-…: the words that are needed
+//     [data-choice]               radio buttons "entry": "full" or "deviation"
+//     [data-ask]                  one characteristic
+//       data-decimals             decimals of a reading
+//       data-target               target, absent if there is none
+//       data-below, data-above    readings beyond these are asked for once more
+//       data-sign                 a reading can be negative
+//       [data-heading]            becomes data-heading-says of the current reading
+//       input[data-reading]       the readings in order
+//       [data-short]              why there are fewer, radio buttons
+//       [data-falls]              see falls.js
+//     [data-pad]                  the keys, and [data-main], which is "next" until
+//                                 everything is in and then saves
+//
+// Targets, bounds and values are whole last digits ("units"): 12.500 with three
+// decimals is 12500. They stay below 1e12, so a Number holds them exactly.
+
+import { update } from "./falls.js";
+
+const form = document.querySelector("form[data-round]");
+if (form) start(form);
+
+function start(form) {
+  const sections = [...form.querySelectorAll("[data-ask]")].map((root) => new Section(root, form));
+  const pad = form.querySelector("[data-pad]");
+  const main = form.querySelector("[data-main]");
+  const say = form.dataset;
+  let current = null; // the reading that keys go to
+  let mode = form.querySelector('[name="entry"]:checked')?.value ?? "full";
+
+  form.dataset.scripted = "yes";
+  for (const key of pad.querySelectorAll("[data-key]")) key.hidden = false;
+  for (const s of sections) {
+    for (const input of s.inputs) input.inputMode = "none"; // the keypad is the keyboard
+  }
+
+  const sectionOf = (input) => sections.find((s) => s.inputs.includes(input));
+  const complete = () => sections.every((s) => s.complete());
+
+  function show(section) {
+    for (const s of sections) s.root.hidden = s !== section;
+    const deviation = mode === "deviation" && section.target !== null;
+    const point = section.decimals > 0 && !deviation;
+    const sign = section.sign || deviation;
+    pad.classList.toggle("with-sign", sign && !point);
+    pad.classList.toggle("with-both", sign && point);
+    pad.classList.toggle("whole", !sign && !point);
+  }
+
+  function mark() {
+    for (const s of sections) {
+      for (const input of s.inputs) input.parentElement.classList.toggle("now", input === current);
+      s.draw(mode);
+    }
+    const label = complete() ? say.saySave : say.sayNext;
+    if (main.textContent !== label) main.textContent = label;
+  }
+
+  function go(input) {
+    current = input;
+    const section = sectionOf(input);
+    show(section);
+    if (document.activeElement !== input) input.focus();
+    if (input.value) input.select();
+    section.heading(input.dataset.headingSays);
+    mark();
+  }
+
+  function arm() {
+    const section = sections.find((s) => !s.root.hidden) ?? sections[0];
+    current = null;
+    section.heading(say.sayReady);
+    mark();
+    main.focus();
+  }
+
+  // next leads to the first reading that is still asked for, behind this one first.
+  function next(input) {
+    const all = sections.flatMap((s) => (s.complete() ? [] : s.inputs));
+    const open = all.filter((i) => i.value.trim() === "");
+    const at = all.indexOf(input);
+    const target = open.find((i) => all.indexOf(i) > at) ?? open[0];
+    if (target) go(target);
+    else arm();
+  }
+
+  // commit takes what stands in a reading; it stays there when that cannot be right.
+  function commit(input) {
+    const section = sectionOf(input);
+    if (input.value.trim() === "") return false;
+    const problem = section.judge(input, mode, say);
+    section.problem(input, problem);
+    if (problem) {
+      if (problem === say.sayLook) section.again(input);
+      go(input);
+      return false;
+    }
+    return true;
+  }
+
+  form.addEventListener("focusin", (event) => {
+    if (event.target.matches("[data-reading]") && event.target !== current) go(event.target);
+  });
+  form.addEventListener("input", (event) => {
+    if (event.target.matches("[data-reading]")) {
+      sectionOf(event.target).problem(event.target, "");
+      mark();
+    }
+  });
+  form.addEventListener("change", (event) => {
+    if (event.target.name === "entry") change(event.target.value);
+    else if (event.target.closest("[data-short]")) mark();
+  });
+  form.addEventListener("keydown", (event) => {
+    if (event.key !== "Enter" || !event.target.matches("[data-reading]")) return;
+    event.preventDefault(); // Enter ends a reading, it does not send the form
+    if (event.isComposing || event.repeat) return;
+    if (commit(event.target)) next(event.target);
+    else if (event.target.value.trim() === "" && complete()) arm();
+  });
+
+  // Keys must not take the focus from the reading that they type into.
+  pad.addEventListener("pointerdown", (event) => {
+    if (event.target.closest("[data-key]")) event.preventDefault();
+  });
+  pad.addEventListener("click", (event) => {
+    const key = event.target.closest("[data-key]");
+    if (!key) return;
+    if (!current) go(sections.find((s) => !s.root.hidden).inputs.at(-1));
+    type(current, key.dataset.key);
+    current.dispatchEvent(new Event("input", { bubbles: true }));
+  });
+
+  main.addEventListener("click", (event) => {
+    if (complete()) return; // it saves
+    event.preventDefault();
+    if (current && current.value.trim() === "") go(current);
+    else if (!current || commit(current)) next(current);
+  });
+  form.addEventListener("submit", (event) => {
+    for (const s of sections) {
+      for (const input of s.inputs) {
+        if (input.value.trim() !== "" && !commit(input)) {
+          event.preventDefault();
+          event.stopImmediatePropagation();
+          return;
+        }
+      }
+    }
+  });
+
+  function change(to) {
+    for (const s of sections) s.convert(mode, to);
+    mode = to;
+    document.cookie = `entry=${to}; path=/station; max-age=31536000; samesite=lax${location.protocol === "https:" ? "; secure" : ""}`;
+    if (current) go(current);
+    else mark();
+  }
+
+  const all = sections.flatMap((s) => s.inputs);
+  const first = all.find((i) => i.getAttribute("aria-invalid")) ?? all.find((i) => i.value === "") ?? null;
+  if (first) go(first);
+  else {
+    show(sections[0]);
+    mark();
+  }
+  if (sections.some((s) => s.root.querySelector("[data-short] .problem"))) {
+    const s = sections.find((one) => one.root.querySelector("[data-short] .problem"));
+    show(s);
+    s.root.querySelector("[data-short] input")?.focus();
+  }
+}
+
+// type puts one key into a reading, over what is selected.
+function type(input, key) {
+  const { selectionStart: from, selectionEnd: to, value } = input;
+  if (key === "back") input.setRangeText("", from === to ? Math.max(0, from - 1) : from, to, "end");
+  else if (key === "sign") {
+    input.value = /^[-\u2212]/.test(value) ? value.slice(1) : `-${value.replace(/^\+/, "")}`;
+  } else input.setRangeText(key, from, to, "end");
+}
+
+// digits reads a number as whole last digits: null when it is none, NaN when it has
+// more decimals than there are.
+function digits(text, decimals) {
+  const m = /^\s*([-+\u2212]?)(\d*)(?:[.,](\d*))?\s*$/.exec(text);
+  if (!m || (m[2] === "" && !m[3])) return null;
+  const fraction = (m[3] ?? "").replace(/0+$/, "");
+  if (fraction.length > decimals) return NaN;
+  const units = Number(m[2] + fraction.padEnd(decimals, "0"));
+  return m[1] === "-" || m[1] === "\u2212" ? 0 - units : units;
+}
+
+// text writes whole last digits as a number with its decimals.
+function text(units, decimals) {
+  const s = String(Math.abs(units)).padStart(decimals + 1, "0");
+  const cut = s.length - decimals;
+  return (units < 0 ? "-" : "") + (decimals ? `${s.slice(0, cut)}.${s.slice(cut)}` : s);
+}
+
+const numberOr = (value, none) => (value === undefined ? none : Number(value));
+
+// Section is one characteristic of the round.
+class Section {
+  constructor(root, form) {
+    this.root = root;
+    this.form = form;
+    this.inputs = [...root.querySelectorAll("[data-reading]")];
+    this.falls = root.querySelector("[data-falls]");
+    this.decimals = Number(root.dataset.decimals) || 0;
+    this.target = numberOr(root.dataset.target, null);
+    this.below = numberOr(root.dataset.below, -Infinity);
+    this.above = numberOr(root.dataset.above, Infinity);
+    this.sign = root.dataset.sign !== undefined;
+    const { sayInside, sayAbove, sayBelow } = this.falls.dataset;
+    this.soFar = { sayInside, sayAbove, sayBelow };
+  }
+
+  // units is a reading in full, whichever way it was typed.
+  units(value, mode) {
+    if (mode !== "deviation" || this.target === null) return digits(value, this.decimals);
+    const deviation = digits(value, 0);
+    return deviation === null ? null : deviation + this.target;
+  }
+
+  filled() {
+    return this.inputs.filter((i) => i.value.trim() !== "").length;
+  }
+
+  complete() {
+    const n = this.filled();
+    return n === this.inputs.length || (n > 0 && this.root.querySelector("[data-short] input:checked") !== null);
+  }
+
+  heading(words) {
+    const h = this.root.querySelector("[data-heading]");
+    if (h.textContent !== words) h.textContent = words;
+  }
+
+  // judge says what is wrong with a reading, "" when nothing is.
+  judge(input, mode, say) {
+    const units = this.units(input.value, mode);
+    if (units === null) return say.sayNotANumber;
+    if (Number.isNaN(units)) {
+      if (mode === "deviation" && this.target !== null) return say.sayWholeDigits;
+      return this.decimals === 0 ? say.sayWholeNumbers : say.sayDecimals;
+    }
+    if (units >= this.below && units <= this.above) return "";
+    return this.firsts(input).some((f) => this.units(f.value, mode) === units) ? "" : say.sayLook;
+  }
+
+  firsts(input) {
+    return [...input.parentElement.querySelectorAll("[data-first]")];
+  }
+
+  // again keeps what was typed and asks for it once more: both go into the record.
+  again(input) {
+    const first = document.createElement("input");
+    first.type = "hidden";
+    first.name = `first-${this.root.dataset.ask}${input.id.slice(input.id.lastIndexOf("-"))}`;
+    first.value = input.value.trim();
+    first.dataset.first = "";
+    input.after(first);
+    input.value = "";
+  }
+
+  problem(input, words) {
+    const place = document.getElementById(`${input.id}-problem`);
+    const says = words ? `${place.dataset.label}: ${words}` : "";
+    if (place.textContent.trim() !== says) place.textContent = says;
+    if (words) input.setAttribute("aria-invalid", "true");
+    else input.removeAttribute("aria-invalid");
+  }
+
+  draw(mode) {
+    const readings = this.inputs.map((i) => {
+      const units = i.value.trim() === "" ? null : this.units(i.value, mode);
+      return units === null || Number.isNaN(units) ? null : Number(text(units, this.decimals));
+    });
+    const { dataset } = this.falls;
+    const all = this.filled() === this.inputs.length;
+    dataset.sayInside = all ? dataset.doneInside : this.soFar.sayInside;
+    dataset.sayAbove = all ? dataset.doneAbove : this.soFar.sayAbove;
+    dataset.sayBelow = all ? dataset.doneBelow : this.soFar.sayBelow;
+    update(this.falls, readings);
+  }
+
+  // convert rewrites what was typed when the way of typing changes. What is no
+  // reading stays as it is.
+  convert(from, to) {
+    if (this.target === null || from === to) return;
+    for (const input of [...this.inputs, ...this.root.querySelectorAll("[data-first]")]) {
+      if (input.value.trim() === "") continue;
+      const units = this.units(input.value, from);
+      if (units === null || Number.isNaN(units)) continue;
+      input.value = to === "deviation" ? String(units - this.target) : text(units, this.decimals);
+    }
+  }
+}

@@ -1,0 +1,39 @@
+package station_test
+
+import (
+	"net/http"
+	"strings"
+	"testing"
+	"time"
+)
+
+func TestRoundIsSavedOnceAndAnswered(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	s.Clock.Advance(31 * time.Minute)
+	b := s.signIn(t, s.Operator)
+	working := b.get(s.at()).is(http.StatusOK).says("Due now", "Axle seat diameter", `data-testid="round"`)
+	form := working.round(s.Diameter, "14.991", "14,990", "14.992", "14.989", "14.993")
+	mass := s.Mass.ID.String()
+	form.Add("characteristic", mass)
+	form.Set("setup-"+mass, "1")
+	form.Set("reading-"+mass, "1.21")
+	first := b.post(s.at("round"), form).is(http.StatusSeeOther)
+	if want := s.at("round", form.Get("round")); first.to != want {
+		t.Fatalf("leads to %s, want %s", first.to, want)
+	}
+	s.Clock.Advance(2 * time.Second)
+	if again := b.post(s.at("round"), form).is(http.StatusSeeOther); again.to != first.to {
+		t.Errorf("the second tap leads to %s", again.to)
+	}
+	b.get(first.to).is(http.StatusOK).says("Learning", "1 of 20 subgroups collected", "14.9910", "Grease mass")
+	form.Set("reading-"+mass, "1.22")
+	b.post(s.at("round"), form).is(http.StatusConflict).says("set aside", "1.22", "14,990")
+	last, err := s.LastRound(t.Context(), s.Station.ID)
+	if err != nil || last.ID.String() != form.Get("round") || len(last.Points) != 2 {
+		t.Fatalf("last round %v, %v", last, err)
+	}
+	if got := b.get(s.at()).is(http.StatusOK); strings.Contains(got.body, `data-testid="round"`) {
+		t.Error("the round is still asked for")
+	}
+}
