@@ -1,0 +1,251 @@
+package board
+
+import (
+	"math"
+	"slices"
+	"strings"
+
+	"github.com/google/uuid"
+
+	"holdfast/internal/plant"
+	"holdfast/web/chart"
+	"holdfast/web/ui"
+)
+
+// sparkW and sparkH are the size that the small chart is drawn for.
+const sparkW, sparkH = 322, 132
+
+// marksShown is how many characteristics beside the front one stand on a card by
+// name. Those in another state than Leave stand there in any case.
+const marksShown = 3
+
+// cardView is one station as its card shows it.
+type cardView struct {
+	ID      string // of the element
+	Name    string
+	Line    string // id of the line, for the choice of the viewer
+	Owners  string // who must act on anything here
+	Matters string // ids of what is open here
+
+	Measured bool // something is measured here; else nothing of the following is set
+	Front    markView
+	Link     string // to the station
+	Value    string // newest, with its unit; empty: no sample yet
+	Spark    string // SVG; empty: no sample yet
+	Next     string
+	Owner    string
+	Strong   bool // the owner is engineering
+	Others   []markView
+	Calm     string // how many more stand at Leave
+}
+
+// markView is one characteristic in a few words.
+type markView struct {
+	Name, Tone, Symbol, Word, Age, Link string
+}
+
+func cardID(station uuid.UUID) string { return "card-" + station.String() }
+
+// tone is the class of a card: blue fills it only once a person must act.
+func tone(c plant.Condition) string {
+	if c == plant.IsDue {
+		return "asked"
+	}
+	return ui.Tone(c)
+}
+
+// frontFirst orders a station's characteristics: what asks most of people first, then
+// what has waited longest, then as they were set up.
+func frontFirst(states []plant.CharacteristicState) []*plant.CharacteristicState {
+	out := make([]*plant.CharacteristicState, len(states))
+	for i := range states {
+		out[i] = &states[i]
+	}
+	slices.SortStableFunc(out, func(a, b *plant.CharacteristicState) int {
+		ca, cb := a.Condition(), b.Condition()
+		if ca.Gravity() != cb.Gravity() {
+			return cb.Gravity() - ca.Gravity()
+		}
+		if ca.NeedsPerson() {
+			return a.Since().Compare(b.Since())
+		}
+		return 0
+	})
+	return out
+}
+
+// owners lists who must act on a characteristic: its owner and, for a sample that was
+// promised and not taken, the station.
+func owners(c *plant.CharacteristicState) []plant.Owner {
+	out := []plant.Owner{c.Owner()}
+	if asked(c) && out[0] != plant.AtStation {
+		out = append(out, plant.AtStation)
+	}
+	return out
+}
+
+// asked reports whether a sample is asked for now.
+func asked(c *plant.CharacteristicState) bool {
+	switch c.Condition() {
+	case plant.IsDue, plant.IsLate, plant.IsUnknown:
+		return true
+	}
+	return overdue(c)
+}
+
+// overdue reports whether a promised sample was not taken in time, whatever else is
+// open.
+func overdue(c *plant.CharacteristicState) bool {
+	switch c.Condition() {
+	case plant.IsLate, plant.IsUnknown:
+		return true
+	case plant.IsHold, plant.IsLook:
+		return c.Due.State >= plant.Late
+	}
+	return false
+}
+
+func newCard(f ui.Format, st *plant.StationState) cardView {
+	v := cardView{ID: cardID(st.ID), Name: st.Name, Line: st.LineID.String()}
+	if len(st.Characteristics) == 0 {
+		return v
+	}
+	sorted := frontFirst(st.Characteristics)
+	front := sorted[0]
+	v.Measured = true
+	v.Front = newMark(f, front)
+	v.Link = stationAddress(st.ID, front.ID)
+	v.Next = next(f, front)
+	v.Owner, v.Strong = ownerShown(f, front)
+	if n := len(front.Points); n > 0 {
+		v.Value = f.Mean(front.Points[n-1].Stats.Mean(), front.Setup)
+		v.Spark = spark(f, front, v.Value)
+	}
+
+	var matters, who []string
+	calm := 0
+	for i, c := range sorted {
+		if c.Matter != nil {
+			matters = append(matters, c.Matter.ID.String())
+		}
+		for _, o := range owners(c) {
+			if !slices.Contains(who, string(o)) {
+				who = append(who, string(o))
+			}
+		}
+		switch {
+		case i == 0:
+		case c.Condition() != plant.CalmLeave || len(v.Others) < marksShown:
+			v.Others = append(v.Others, newMark(f, c))
+		default:
+			calm++
+		}
+	}
+	if calm > 0 {
+		v.Calm = f.Words.T("board.more-calm", calm)
+	}
+	v.Matters, v.Owners = strings.Join(matters, " "), strings.Join(who, " ")
+	return v
+}
+
+func newMark(f ui.Format, c *plant.CharacteristicState) markView {
+	condition := c.Condition()
+	return markView{Name: c.Name, Tone: tone(condition), Symbol: ui.SymbolOf(condition),
+		Word: ui.ConditionWord(f.Words, condition), Age: age(f, c), Link: chartAddress(c.StationID, c.ID)}
+}
+
+// age is how long the condition holds: how late the sample is where one is.
+func age(f ui.Format, c *plant.CharacteristicState) string {
+	switch c.Condition() {
+	case plant.IsLate, plant.IsUnknown:
+		return f.Late(c.Due)
+	}
+	return f.Since(c.Since())
+}
+
+// next says when the next sample is asked for.
+func next(f ui.Format, c *plant.CharacteristicState) string {
+	w, at := f.Words, f.Clock(c.Due.At)
+	switch c.Due.State {
+	case plant.NotPlanned:
+		return w.T("board.unplanned")
+	case plant.Paused:
+		return w.T("board.paused")
+	case plant.Later:
+		return w.T("board.next", at)
+	}
+	// Late is said once: by the age where that is the condition, else here.
+	if c.Matter != nil && overdue(c) {
+		return w.T("board.due-late", at, f.Late(c.Due))
+	}
+	return w.T("board.due", at)
+}
+
+func ownerShown(f ui.Format, c *plant.CharacteristicState) (text string, strong bool) {
+	list := owners(c)
+	o := list[0]
+	if o == plant.Nobody && len(list) > 1 {
+		o = list[1]
+	}
+	return f.Words.T("board.owner", ui.OwnerWord(f.Words, o)), o == plant.Engineering
+}
+
+// spark draws the newest subgroups of a characteristic in the band that is in force.
+func spark(f ui.Format, c *plant.CharacteristicState, value string) string {
+	points := c.Points[max(0, len(c.Points)-chart.SparkLength):]
+	s := chart.Spark{ID: "spark-" + c.ID.String(), W: sparkW, H: sparkH, Limits: band(c),
+		Stopped: !c.Machine.Running(), Points: make([]chart.SparkPoint, len(points))}
+	if c.Revision == nil {
+		s.Label = f.Words.T("board.spark-learning", len(points), c.Name, value)
+	} else {
+		s.Label = f.Words.T("board.spark", len(points), c.Name, value)
+	}
+	for i, p := range points {
+		s.Points[i] = chart.SparkPoint{Value: p.Stats.Mean(),
+			Restart: i > 0 && points[i-1].TakenAt.Before(c.Segment.From) && !p.TakenAt.Before(c.Segment.From)}
+	}
+	markNewest(s.Points, points, c.Matter)
+	return s.SVG()
+}
+
+// markNewest rings the newest subgroup of each kind that belongs to the open matter.
+// One ring says where to look; a ring around each would hide the course.
+func markNewest(out []chart.SparkPoint, points []plant.Point, m *plant.Matter) {
+	if m == nil {
+		return
+	}
+	var hold, look bool
+	for i := len(points) - 1; i >= 0 && !(hold && look); i-- {
+		for _, s := range points[i].Signals {
+			switch {
+			case s.Withdrawn || s.Matter != m.ID:
+			case s.Panel == plant.Reading && !hold:
+				out[i].Mark, hold = chart.HoldMark, true
+			case s.Panel != plant.Reading && !look:
+				look = true
+				if out[i].Mark == chart.NoMark {
+					out[i].Mark = chart.SignalMark
+				}
+			}
+		}
+	}
+}
+
+// band is the limits of the averages of whole subgroups.
+func band(c *plant.CharacteristicState) chart.Limits {
+	if c.Revision == nil {
+		return chart.NoLimits()
+	}
+	location, _, err := c.Revision.Standard().Bands(c.Setup.Size)
+	if err != nil {
+		return chart.NoLimits() // limits are checked when they are frozen
+	}
+	l := chart.Limits{Lower: math.NaN(), Centre: location.Center, Upper: math.NaN()}
+	if location.HasLower() {
+		l.Lower = location.Lower
+	}
+	if location.HasUpper() {
+		l.Upper = location.Upper
+	}
+	return l
+}

@@ -1,0 +1,222 @@
+package board
+
+import (
+	"slices"
+	"strings"
+	"time"
+
+	"github.com/google/uuid"
+
+	"holdfast/internal/plant"
+	"holdfast/internal/spc/limits"
+	"holdfast/web/ui"
+)
+
+// needsView is the list of what needs a person, and of what engineering has to do.
+type needsView struct {
+	Order       string // how many, and that the oldest is first
+	Density     string // few, several or many: how much each may say
+	List        []needView
+	Engineering []studyView
+	None        string // said when the list is empty
+}
+
+// needView is one thing that needs a person.
+type needView struct {
+	Station string
+	Tone    string
+	Symbol  string
+	Age     string
+	Why     string
+	Taken   string // who took it; empty: nobody yet
+	Link    string
+	Line    string
+	Owners  string
+	Matter  string // id, when it is one
+	Say     string // what a screen reader is told when it is new
+
+	since   time.Time
+	gravity int
+	names   []string // of a round that was not taken
+}
+
+// studyView is one characteristic that has no frozen limits.
+type studyView struct {
+	Station, Name, Progress, Link, Line string
+}
+
+func newNeeds(f ui.Format, states []plant.StationState) needsView {
+	var v needsView
+	for i := range states {
+		st := &states[i]
+		late := map[lateKey]int{} // place in v.List
+		for j := range st.Characteristics {
+			c := &st.Characteristics[j]
+			if c.Matter != nil {
+				v.List = append(v.List, newMatter(f, st, c))
+			}
+			if overdue(c) {
+				v.List = addLate(f, v.List, late, st, c)
+			}
+			if c.Owner() == plant.Engineering {
+				v.Engineering = append(v.Engineering, newStudy(f, st, c))
+			}
+		}
+	}
+	slices.SortStableFunc(v.List, func(a, b needView) int {
+		if n := a.since.Compare(b.since); n != 0 {
+			return n
+		}
+		return b.gravity - a.gravity
+	})
+	switch n := len(v.List); {
+	case n == 0:
+		v.None = f.Words.T("board.nobody-needed")
+	case n <= 4:
+		v.Density = "few"
+	case n <= 8:
+		v.Density = "several"
+	default:
+		v.Density = "many"
+	}
+	if n := len(v.List); n > 0 {
+		v.Order = f.Words.T("board.needs-order", n)
+	}
+	return v
+}
+
+func newMatter(f ui.Format, st *plant.StationState, c *plant.CharacteristicState) needView {
+	m, condition := c.Matter, c.Condition()
+	v := need(st, condition)
+	v.Link = matterAddress(st.ID, c.ID, m.ID)
+	v.Matter = m.ID.String()
+	v.Age, v.since = f.Since(m.OpenedAt), m.OpenedAt
+	v.Why = f.Words.T("board.why", ui.ConditionWord(f.Words, condition), c.Name, why(f, c))
+	v.Say = f.Words.T("board.say", st.Name, v.Why)
+	if !m.TakenAt.IsZero() {
+		v.Taken = f.Words.T("board.taken", m.TakenByName, f.Clock(m.TakenAt))
+	}
+	return v
+}
+
+func need(st *plant.StationState, condition plant.Condition) needView {
+	return needView{Station: st.Name, Tone: tone(condition), Symbol: ui.SymbolOf(condition), Line: st.LineID.String(),
+		Owners: string(plant.AtStation), gravity: condition.Gravity()}
+}
+
+// linesSaid is how many lines of a matter are said in full.
+const linesSaid = 2
+
+// why says the standing lines of a matter in words, the gravest first.
+func why(f ui.Format, c *plant.CharacteristicState) string {
+	var said []string
+	for _, reading := range [...]bool{true, false} {
+		for _, l := range c.Matter.Lines {
+			if l.Withdrawn || (l.Panel == plant.Reading) != reading {
+				continue
+			}
+			words := f.Words.Firing(l.Firing, c.Setup)
+			if at, limit, ok := worst(f, c, l.Side); ok && reading {
+				words = f.Words.T("board.at-reading", words, at, limit)
+			}
+			said = append(said, words)
+		}
+	}
+	if len(said) == 0 {
+		return f.Words.T("board.withdrawn")
+	}
+	text := said[0]
+	for i := 1; i < len(said) && i < linesSaid; i++ {
+		text = f.Words.T("board.and", text, said[i])
+	}
+	if more := len(said) - linesSaid; more > 0 {
+		text = f.Words.T("board.and-more", text, more)
+	}
+	return text
+}
+
+// worst finds the reading farthest outside specification on a side, in the newest
+// subgroup of the open matter that has one, with the limit that it crosses. It is
+// false when that subgroup is not among the newest, or both sides are crossed.
+func worst(f ui.Format, c *plant.CharacteristicState, side plant.Side) (reading, limit string, ok bool) {
+	spec := c.Setup.Upper
+	if side == plant.Low {
+		spec = c.Setup.Lower
+	}
+	if spec == nil || side != plant.High && side != plant.Low {
+		return "", "", false
+	}
+	for _, p := range slices.Backward(c.Points) {
+		if !slices.ContainsFunc(p.Signals, func(s plant.Signal) bool {
+			return s.Panel == plant.Reading && s.Side == side && !s.Withdrawn && s.Matter == c.Matter.ID
+		}) || len(p.Readings) == 0 {
+			continue
+		}
+		v := slices.Max(p.Readings)
+		if side == plant.Low {
+			v = slices.Min(p.Readings)
+		}
+		if c.Setup.Outside(v, p.Stats.Decimals) != side {
+			return "", "", false // it was taken under another specification
+		}
+		return f.Reading(v, p.Stats.Decimals, c.Setup), f.Decimal(*spec), true
+	}
+	return "", "", false
+}
+
+// lateKey tells rounds that were not taken apart: what was due together is one round.
+type lateKey struct {
+	due     time.Time
+	unknown bool
+}
+
+func addLate(f ui.Format, list []needView, seen map[lateKey]int, st *plant.StationState, c *plant.CharacteristicState) []needView {
+	condition := plant.IsLate
+	if c.Due.State == plant.TooLate {
+		condition = plant.IsUnknown
+	}
+	due := f.Clock(c.Due.At)
+	w := f.Words
+	reason := w.T("board.not-taken", due)
+	if condition == plant.IsUnknown {
+		reason = w.T("board.never-sampled", due)
+		if !c.LastTaken.IsZero() {
+			reason = w.T("board.no-sample-since", f.Clock(c.LastTaken), due)
+		}
+	}
+	key := lateKey{c.Due.At, condition == plant.IsUnknown}
+	if i, ok := seen[key]; ok {
+		list[i].names = append(list[i].names, c.Name)
+		list[i].Why = w.T("board.why", ui.ConditionWord(w, condition), strings.Join(list[i].names, ", "), reason)
+		return list
+	}
+	v := need(st, condition)
+	v.Link = stationAddress(st.ID, c.ID)
+	v.Age, v.since = f.Age(c.Due.LateBy(f.Now)), c.Due.At
+	v.names = []string{c.Name}
+	v.Why = w.T("board.why", ui.ConditionWord(w, condition), c.Name, reason)
+	seen[key] = len(list)
+	return append(list, v)
+}
+
+func newStudy(f ui.Format, st *plant.StationState, c *plant.CharacteristicState) studyView {
+	v := studyView{Station: st.Name, Name: c.Name, Link: chartAddress(st.ID, c.ID), Line: st.LineID.String()}
+	if c.Collected < limits.EnoughSubgroups {
+		v.Progress = f.Words.T("board.collected", c.Collected, limits.EnoughSubgroups)
+	} else {
+		v.Progress = f.Words.T("board.can-freeze", c.Collected)
+	}
+	return v
+}
+
+// hides reports whether the viewer's choice leaves something out of this list.
+func (v needsView) hides(c choice) bool {
+	return slices.ContainsFunc(v.List, func(n needView) bool { return !c.shows(n.Line, n.Owners) })
+}
+
+func idText(id uuid.UUID) string {
+	if id == uuid.Nil {
+		return ""
+	}
+	return id.String()
+}
