@@ -1,0 +1,75 @@
+package desk
+
+import (
+	"context"
+	"log/slog"
+	"net/http"
+	"net/netip"
+	"time"
+
+	"github.com/go-chi/chi/v5"
+	"github.com/google/uuid"
+
+	"holdfast/internal/auth"
+	"holdfast/internal/plant"
+	"holdfast/web/ui"
+)
+
+// Store is what the desk needs of the plant's record.
+type Store interface {
+	StationStates(ctx context.Context, points int, ids ...uuid.UUID) ([]plant.StationState, error)
+	History(ctx context.Context, characteristic uuid.UUID, stretch plant.Stretch) (plant.History, error)
+	Revisions(ctx context.Context, characteristic uuid.UUID) ([]plant.Revision, error)
+	RevisionAt(ctx context.Context, characteristic uuid.UUID, at time.Time) (plant.Revision, error)
+	Freeze(ctx context.Context, f plant.FreezeRequest) (plant.Revision, error)
+	Causes(ctx context.Context, family string) ([]plant.Cause, error)
+}
+
+// Signer tells whose login and secret these are. Freezing is a signature: the secret
+// is entered again.
+type Signer interface {
+	Check(ctx context.Context, login string, s auth.Secret, from netip.Addr) (plant.Person, error)
+}
+
+// Deps is what the surface works with.
+type Deps struct {
+	Store  Store
+	Signer Signer
+	Log    *slog.Logger
+}
+
+// Desk serves /desk.
+type Desk struct {
+	log    *slog.Logger
+	store  Store
+	signer Signer
+}
+
+// New makes the surface.
+func New(d Deps) *Desk { return &Desk{log: d.Log, store: d.Store, signer: d.Signer} }
+
+// Routes adds the addresses under /desk.
+func (d *Desk) Routes(r chi.Router) {
+	r.Get("/", ui.Handle(d.log, d.list))
+	r.Get("/characteristic/{id}", ui.Handle(d.log, d.chart))
+}
+
+// idIn reads the characteristic that the address names. Only the one spelling in
+// which ids are written is an address.
+func idIn(r *http.Request) (uuid.UUID, error) {
+	text := chi.URLParam(r, "id")
+	id, err := uuid.Parse(text)
+	if err != nil || id.String() != text {
+		return uuid.Nil, ui.NotFound(r)
+	}
+	return id, nil
+}
+
+// address is a page of a characteristic.
+func address(id uuid.UUID, parts ...string) string {
+	p := "/desk/characteristic/" + id.String()
+	for _, part := range parts {
+		p += "/" + part
+	}
+	return p
+}
