@@ -13,6 +13,9 @@ const (
 	ThemeAddress   = "/theme"
 )
 
+// maxPath is the longest path that is gone back to, in bytes.
+const maxPath = 2000
+
 // SignInPath is the sign-in page that leads back to a local path.
 func SignInPath(back string) string {
 	if back = LocalPath(back); back == "/" {
@@ -25,7 +28,7 @@ func SignInPath(back string) string {
 // for everything else: another host in any of the spellings that browsers accept,
 // another scheme, control characters.
 func LocalPath(path string) string {
-	if !strings.HasPrefix(path, "/") || len(path) > 2000 {
+	if !strings.HasPrefix(path, "/") || strings.HasPrefix(path, "//") {
 		return "/"
 	}
 	for _, c := range []byte(path) {
@@ -44,7 +47,11 @@ func LocalPath(path string) string {
 			return "/"
 		}
 	}
-	return (&url.URL{Path: u.Path, RawPath: u.RawPath, RawQuery: u.RawQuery}).String()
+	local := (&url.URL{Path: u.Path, RawPath: u.RawPath, RawQuery: u.RawQuery}).String()
+	if len(local) > maxPath { // escaping makes it longer
+		return "/"
+	}
+	return local
 }
 
 // refererPath is the page that a form was sent from, "/" when it is not known or

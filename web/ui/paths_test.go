@@ -16,7 +16,7 @@ func TestLocalPathKeepsOnlyOurOwn(t *testing.T) {
 			t.Errorf("LocalPath(%q) = %q", path, got)
 		}
 	}
-	for _, path := range []string{"", "board", "//evil.example", "///evil.example", `/\evil.example`, `\/evil.example`,
+	for _, path := range []string{"", "board", "//", "//?a", "//evil.example", "///evil.example", `/\evil.example`, `\/evil.example`,
 		"https://evil.example/", "javascript:alert(1)", "/\t/evil.example", "/%zz", "/./" + "/evil.example", "/a/..//evil.example",
 		"/%2e%2e//evil.example", "/\nevil", "/" + strings.Repeat("a", 3000)} {
 		if got := LocalPath(path); got != "/" {
