@@ -1,23 +1,12 @@
 package runlength_test
 
 import (
-	"sync"
 	"testing"
 
 	"holdfast/internal/spc/limits"
 	"holdfast/internal/spc/runlength"
 	"holdfast/internal/spc/watch"
 )
-
-// safely lets several goroutines ask.
-func safely(f func() bool) func() bool {
-	var mu sync.Mutex
-	return func() bool {
-		mu.Lock()
-		defer mu.Unlock()
-		return f()
-	}
-}
 
 // BenchmarkRunLengthZones is the exact run length of the four zone rules; at most
 // 50 ms are allowed.

@@ -105,7 +105,7 @@ func TestIndividualsWithMovingRange(t *testing.T) {
 func TestMedianAndMemoryChartsAreSimulated(t *testing.T) {
 	t.Parallel()
 	s := pair(limits.MedianR, beyond3, beyond3)
-	r, err := runlength.Standard(s, 5, runlength.Change{}, runlength.Options{Seed: 2})
+	r, err := runlength.Standard(s, 5, runlength.Change{}, runlength.Options{Seed: 2, Points: 200_000})
 	// The median of five is nearly normal and uncorrelated with the range, so the
 	// pair signals nearly as often as means with ranges.
 	if err != nil || r.Mean < 110 || r.Mean > 175 {

@@ -183,6 +183,20 @@ func TestRunLengthIdentities(t *testing.T) {
 	if err != nil || !near(down[0].Mean, down[1].Mean, 1e-12) {
 		t.Errorf("mirrored CUSUM: %v, %v", means(down), err)
 	}
+	// A process far away is caught as soon as the rules allow.
+	for points, rule := range map[float64]watch.Rule{
+		1: {Kind: watch.Beyond, Z: 3}, 2: {Kind: watch.KOfM, K: 2, M: 3, Z: 2}, 8: {Kind: watch.OneSide, M: 8},
+		15: {Kind: watch.Outside, M: 15, Z: 1},
+	} {
+		r, err := runlength.Rules([]watch.Rule{rule}, []float64{90}, runlength.Options{})
+		if err != nil || r[0].Mean != points {
+			t.Errorf("%v, far away: %v, %v; want %g", rule, means(r), err, points)
+			continue
+		}
+		if m, err := r[0].Median(); err != nil || m != points {
+			t.Errorf("%v, far away: median %g, %v; want %g", rule, m, err, points)
+		}
+	}
 	// Adding a rule can only shorten the run.
 	before := math.Inf(1)
 	for n := 1; n <= len(rules); n++ {

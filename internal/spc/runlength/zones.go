@@ -162,9 +162,12 @@ func mix(h uint64) uint64 {
 	return h ^ h>>31
 }
 
-// maxSteps bounds the iteration of solve; a chart whose run length has not
-// settled by then is refused.
-const maxSteps = 200_000
+// maxSteps and maxWork (multiplications) bound the iteration of solve; a chart
+// whose run length has not settled by then is refused.
+const (
+	maxSteps = 200_000
+	maxWork  = 2_000_000_000
+)
 
 // solve finds the run length for given probabilities of the cells.
 //
@@ -192,9 +195,12 @@ func (c *zoneChain) solve(p []float64) (RunLength, error) {
 			}
 		}
 	}
+	if slices.Max(fires) == 0 {
+		return RunLength{}, errNever
+	}
 	var survival []float64
 	var sum float64
-	for range maxSteps {
+	for range min(maxSteps, 16+maxWork/len(c.next)) {
 		survival = append(survival, alive[c.start])
 		least, most := math.Inf(1), 0.0
 		for s, a := range alive {
@@ -221,7 +227,7 @@ func (c *zoneChain) solve(p []float64) (RunLength, error) {
 		alive, later = later, alive
 		fires, firesLater = firesLater, fires
 	}
-	return RunLength{}, errNever
+	return RunLength{}, invalid("the run length of these rules does not settle")
 }
 
 // normalCells gives the probabilities of the cells for a normal z with the given
