@@ -1,0 +1,143 @@
+// Holdfast is a server for live control charting: operators key in subgroups,
+// Postgres keeps them, frozen limits and run rules judge them, and every dashboard
+// hears of it at once. This package is the command line and joins the parts.
+package main
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"log/slog"
+	"os"
+	"os/signal"
+	"runtime/debug"
+	"syscall"
+
+	"github.com/alecthomas/kong"
+
+	"holdfast/internal/plant"
+	"holdfast/internal/store"
+
+	_ "time/tzdata" // plants have time zones, boxes may not
+)
+
+// cli is the command line. Every flag may also come from the environment variable
+// that its help names.
+type cli struct {
+	LogFormat string `help:"How the log is written: text or json." enum:"text,json" default:"text" env:"HOLDFAST_LOG_FORMAT"`
+	LogLevel  string `help:"What is logged: debug, info, warn or error." enum:"debug,info,warn,error" default:"info" env:"HOLDFAST_LOG_LEVEL"`
+
+	Serve   serveCmd   `cmd:"" help:"Serve the plant."`
+	Demo    demoCmd    `cmd:"" help:"Serve an invented plant on this machine, to try Holdfast."`
+	Migrate migrateCmd `cmd:"" help:"Bring the database to the newest schema and stop."`
+	User    userCmd    `cmd:"" help:"People who may sign in."`
+	Audit   auditCmd   `cmd:"" help:"Verify that the record is whole."`
+	Health  healthCmd  `cmd:"" help:"Ask a running server whether it is ready; for container and service checks."`
+	Version versionCmd `cmd:"" help:"Print the version."`
+}
+
+func main() {
+	// One signal asks for an orderly stop; a second one ends the program at once.
+	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
+	context.AfterFunc(ctx, stop)
+	err := run(ctx, os.Args[1:])
+	stop()
+	if err == nil || errors.Is(err, context.Canceled) && ctx.Err() != nil {
+		return
+	}
+	fmt.Fprintln(os.Stderr, "holdfast:", err)
+	os.Exit(1)
+}
+
+func run(ctx context.Context, args []string) error {
+	var c cli
+	parser, err := kong.New(&c, kong.Name("holdfast"),
+		kong.Description("Live control charting for a plant: samples, limits, run rules, and what to do about a signal."),
+		kong.UsageOnError(), kong.ConfigureHelp(kong.HelpOptions{Compact: true}))
+	if err != nil {
+		return err
+	}
+	k, err := parser.Parse(args)
+	if err != nil {
+		return err
+	}
+	k.BindTo(ctx, (*context.Context)(nil))
+	k.Bind(c.logger())
+	return k.Run()
+}
+
+func (c *cli) logger() *slog.Logger {
+	var level slog.Level
+	_ = level.UnmarshalText([]byte(c.LogLevel)) // the enum has checked it
+	opts := &slog.HandlerOptions{Level: level}
+	if c.LogFormat == "json" {
+		return slog.New(slog.NewJSONHandler(os.Stderr, opts))
+	}
+	return slog.New(slog.NewTextHandler(os.Stderr, opts))
+}
+
+// version is what the build says of itself.
+func version() string {
+	info, ok := debug.ReadBuildInfo()
+	if !ok {
+		return "unknown"
+	}
+	v := info.Main.Version
+	for _, s := range info.Settings {
+		if s.Key == "vcs.revision" && len(s.Value) >= 12 {
+			v += " " + s.Value[:12]
+		}
+		if s.Key == "vcs.modified" && s.Value == "true" {
+			v += " (changed)"
+		}
+	}
+	return v
+}
+
+type versionCmd struct{}
+
+func (versionCmd) Run() error {
+	fmt.Println("holdfast", version())
+	return nil
+}
+
+type migrateCmd struct {
+	database
+}
+
+func (c *migrateCmd) Run(ctx context.Context, log *slog.Logger) error {
+	return c.with(ctx, log, func(db reached) error {
+		log.Info("the database has the newest schema")
+		return nil
+	})
+}
+
+type auditCmd struct {
+	database
+}
+
+func (c *auditCmd) Run(ctx context.Context, log *slog.Logger) error {
+	return c.withStore(ctx, log, func(st *store.Store) error {
+		n, err := st.VerifyLedger(ctx)
+		if err != nil {
+			return fmt.Errorf("after %d entries that hold: %w", n, err)
+		}
+		heads, err := st.Heads(ctx)
+		if err != nil {
+			return err
+		}
+		fmt.Printf("%d entries in %d chains hold.\nRoot over all heads: %x\n", n, len(heads), rootOf(heads))
+		fmt.Println("Compare it with a root that was kept outside this machine: a chain shows tampering only against that.")
+		return nil
+	})
+}
+
+// firstPlant makes a plant where the database holds none yet, so that people can be
+// added to it.
+func firstPlant(ctx context.Context, st *store.Store, name, zone string) error {
+	_, err := st.Plant(ctx)
+	if !plant.IsKind(err, plant.NotFound) {
+		return err
+	}
+	return createPlant(ctx, st, name, zone)
+}

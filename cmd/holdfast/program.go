@@ -1,0 +1,180 @@
+package main
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"log/slog"
+	"net"
+	"net/http"
+	"sync"
+	"sync/atomic"
+	"time"
+
+	"holdfast/internal/auth"
+	"holdfast/internal/live"
+	"holdfast/internal/plant"
+	"holdfast/internal/store"
+	"holdfast/web"
+	"holdfast/web/board"
+	"holdfast/web/desk"
+	"holdfast/web/station"
+)
+
+// settings say how the program serves.
+type settings struct {
+	Addr        string       // host:port; port 0 takes a free one
+	Listener    net.Listener // instead of Addr, when it is open already
+	DatabaseURL string
+	Hosts       []string // names under which it answers; empty: any
+	Secure      bool     // browsers come over https
+	Demo        bool     // let invented people in by one click
+	Cost        auth.Cost
+	Log         *slog.Logger
+	Clock       func() time.Time
+}
+
+// program is a serving Holdfast: everything that has to be started and ended, joined.
+// Tests start the same program that the command line does, on port 0.
+type program struct {
+	settings
+	store    *store.Store
+	feed     *store.Feed
+	hub      *live.Hub
+	sessions *auth.Sessions
+	listener net.Listener
+	server   *http.Server
+	plant    atomic.Pointer[plant.Plant]
+
+	background context.CancelFunc
+	running    sync.WaitGroup
+}
+
+// shutdownLimit is how long requests that are under way may take to end.
+const shutdownLimit = 20 * time.Second
+
+// newProgram opens the store and listens; Run serves. Close must be called.
+func newProgram(ctx context.Context, s settings) (*program, error) {
+	if s.Clock == nil {
+		s.Clock = time.Now
+	}
+	if s.Cost == (auth.Cost{}) {
+		s.Cost = auth.DefaultCost
+	}
+	p := &program{settings: s}
+	var err error
+	if p.store, err = store.Open(ctx, store.Options{URL: s.DatabaseURL, Clock: s.Clock}); err != nil {
+		return nil, err
+	}
+	if err := p.join(ctx); err != nil {
+		p.Close()
+		return nil, err
+	}
+	return p, nil
+}
+
+// join makes the parts and ties them together.
+func (p *program) join(ctx context.Context) error {
+	pl, err := p.store.Plant(ctx)
+	if err != nil {
+		return fmt.Errorf("read the plant: %w", err)
+	}
+	p.plant.Store(&pl)
+	if guarded, err := p.store.Guarded(ctx); err != nil {
+		return err
+	} else if !guarded {
+		p.Log.Warn("the database does not guard samples and ledger: the application runs as their owner; see DATABASE_OWNER_URL in the README")
+	}
+	hasher, err := auth.NewHasher(p.Cost, 2)
+	if err != nil {
+		return err
+	}
+	views := newViews(p.store, &p.plant, p.Clock)
+	p.hub = live.New(views.render, live.Options{Log: p.Log, Recheck: func(ctx context.Context, ids []string) ([]string, error) {
+		return p.sessions.Ended(ctx, ids)
+	}})
+	p.feed = p.store.NewFeed(p.Log, func(stations []plantID) { p.hub.Dirty(views.changed(stations)...) })
+	p.sessions = auth.NewSessions(auth.SessionOptions{
+		Store: auth.PostgresStore(p.store.Pool()), People: p.store, PlainHTTP: !p.Secure, Log: p.Log, Now: p.Clock,
+		OnEnd:    func(session string) { p.hub.Drop(session, live.SessionEnded) },
+		Fail:     web.SessionFault(p.Log),
+		FindMany: p.store.FindSessions, DeleteExpired: p.store.DeleteExpiredSessions,
+	})
+	door := &auth.Door{Credentials: p.store, Hasher: hasher, Throttle: auth.NewThrottle(p.Clock), Log: p.Log}
+	cfg := web.Config{
+		Log: p.Log, Now: p.Clock, Plant: func() plant.Plant { return *p.plant.Load() },
+		Sessions: p.sessions, Checker: door, Hub: p.hub,
+		Station: station.New(station.Deps{Store: p.store, Signer: door, Log: p.Log}),
+		Board:   board.New(board.Deps{Store: p.store, Log: p.Log}),
+		Desk:    desk.New(desk.Deps{Store: p.store, Signer: door, Log: p.Log}),
+		Ready:   p.store.Ready, Hosts: p.Hosts, Secure: p.Secure,
+	}
+	if p.Demo && pl.Demo {
+		cfg.DemoPeople = p.store.People
+	}
+	if p.listener = p.Listener; p.listener == nil {
+		if p.listener, err = net.Listen("tcp", p.Addr); err != nil {
+			return fmt.Errorf("listen on %s: %w", p.Addr, err)
+		}
+	}
+	p.server = &http.Server{
+		Handler:           web.New(cfg),
+		ReadHeaderTimeout: 10 * time.Second,
+		ReadTimeout:       60 * time.Second,
+		IdleTimeout:       120 * time.Second,
+		MaxHeaderBytes:    64 << 10,
+		ErrorLog:          slog.NewLogLogger(p.Log.Handler(), slog.LevelDebug),
+	}
+	return nil
+}
+
+// URL is the address at which the program answers on this machine.
+func (p *program) URL() string { return "http://" + p.listener.Addr().String() }
+
+// Run serves until ctx ends and then lets what is under way finish: a save that was
+// begun is answered.
+func (p *program) Run(ctx context.Context) error {
+	background, cancel := context.WithCancel(context.WithoutCancel(ctx))
+	p.background = cancel
+	p.running.Go(func() { p.feed.Run(background) })
+	served := make(chan error, 1)
+	p.running.Go(func() { served <- p.server.Serve(p.listener) })
+	p.Log.Info("serving", "address", p.URL(), "version", version())
+	select {
+	case err := <-served:
+		return fmt.Errorf("serve: %w", err)
+	case <-ctx.Done():
+	}
+	p.Log.Info("stopping")
+	limit, done := context.WithTimeout(context.WithoutCancel(ctx), shutdownLimit)
+	defer done()
+	// Sockets are not known to the server; they are told to come back.
+	err := errors.Join(p.server.Shutdown(limit), p.hub.Close(limit))
+	if err != nil {
+		return fmt.Errorf("stop: %w", err)
+	}
+	return nil
+}
+
+// Close ends everything that Run did not.
+func (p *program) Close() {
+	if p.server != nil {
+		_ = p.server.Close()
+	}
+	if p.listener != nil {
+		_ = p.listener.Close()
+	}
+	if p.hub != nil {
+		limit, done := context.WithTimeout(context.Background(), 2*time.Second)
+		_ = p.hub.Close(limit)
+		done()
+	}
+	if p.background != nil {
+		p.background()
+	}
+	p.running.Wait()
+	if p.sessions != nil {
+		p.sessions.Close()
+	}
+	p.store.Close()
+}

@@ -1,0 +1,155 @@
+package main
+
+import (
+	"bufio"
+	"context"
+	"errors"
+	"fmt"
+	"log/slog"
+	"net/http"
+	"os"
+	"strings"
+	"time"
+
+	"github.com/google/uuid"
+
+	"holdfast/internal/auth"
+	"holdfast/internal/plant"
+	"holdfast/internal/store"
+)
+
+type serveCmd struct {
+	database
+	Addr     string   `help:"Where to listen, HOST:PORT." default:"127.0.0.1:8080" env:"HOLDFAST_ADDR"`
+	Hosts    []string `help:"Names, with port, under which browsers reach the server; any when empty." env:"HOLDFAST_HOSTS" placeholder:"HOST:PORT"`
+	HTTPS    bool     `help:"Browsers reach the server over https, through a proxy that ends TLS." env:"HOLDFAST_HTTPS"`
+	Plant    string   `help:"Name of the plant, used once, on an empty database." default:"Plant" env:"HOLDFAST_PLANT"`
+	TimeZone string   `help:"Its time zone, used once, on an empty database." default:"UTC" env:"HOLDFAST_TIME_ZONE"`
+}
+
+func (c *serveCmd) Run(ctx context.Context, log *slog.Logger) error {
+	return c.with(ctx, log, func(db reached) error {
+		st, err := store.Open(ctx, store.Options{URL: db.url})
+		if err != nil {
+			return err
+		}
+		err = firstPlant(ctx, st, c.Plant, c.TimeZone)
+		st.Close()
+		if err != nil {
+			return err
+		}
+		p, err := newProgram(ctx, settings{Addr: c.Addr, DatabaseURL: db.url, Hosts: c.Hosts, Secure: c.HTTPS, Log: log})
+		if err != nil {
+			return err
+		}
+		defer p.Close()
+		return p.Run(untilPostgresEnds(ctx, db, log))
+	})
+}
+
+// untilPostgresEnds is ctx, ended as well when the private Postgres ends by itself:
+// there is nothing left to serve then, and a service manager starts both afresh.
+func untilPostgresEnds(ctx context.Context, db reached, log *slog.Logger) context.Context {
+	if db.private == nil {
+		return ctx
+	}
+	ctx, cancel := context.WithCancel(ctx)
+	go func() {
+		defer cancel()
+		select {
+		case <-ctx.Done():
+		case <-db.private.Done():
+			if ctx.Err() == nil {
+				log.Error("the private Postgres ended by itself", "its log ends with", db.private.LogTail())
+			}
+		}
+	}()
+	return ctx
+}
+
+type userCmd struct {
+	Add userAddCmd `cmd:"" help:"Add a person. The secret is read from standard input, or made and printed."`
+}
+
+type userAddCmd struct {
+	database
+	Login    string   `arg:"" help:"Name for signing in."`
+	Name     string   `help:"Printed name." required:""`
+	Role     []string `help:"operator, supervisor, engineer or administrator; may be given more than once." required:"" enum:"operator,supervisor,engineer,administrator"`
+	Make     bool     `help:"Make a secret and print it, instead of reading one."`
+	Plant    string   `help:"Name of the plant, used once, on an empty database." default:"Plant" env:"HOLDFAST_PLANT"`
+	TimeZone string   `help:"Its time zone, used once, on an empty database." default:"UTC" env:"HOLDFAST_TIME_ZONE"`
+}
+
+func (c *userAddCmd) Run(ctx context.Context, log *slog.Logger) error {
+	secret, err := c.secret()
+	if err != nil {
+		return err
+	}
+	return c.withStore(ctx, log, func(st *store.Store) error {
+		if err := firstPlant(ctx, st, c.Plant, c.TimeZone); err != nil {
+			return err
+		}
+		hasher, err := auth.NewHasher(auth.DefaultCost, 1)
+		if err != nil {
+			return err
+		}
+		p := plant.Person{ID: uuid.Must(uuid.NewV7()), Login: plant.CleanLogin(c.Login), Name: plant.CleanText(c.Name), Active: true}
+		for _, r := range c.Role {
+			p.Roles = append(p.Roles, plant.Role(r))
+		}
+		if err := addPerson(ctx, st, hasher, p, secret); err != nil {
+			return err
+		}
+		fmt.Printf("%s may sign in as %q.\n", p.Name, p.Login)
+		if c.Make {
+			fmt.Printf("Secret: %s\nIt is not kept anywhere in clear: note it down now.\n", string(secret))
+		}
+		return nil
+	})
+}
+
+func (c *userAddCmd) secret() (auth.Secret, error) {
+	if c.Make {
+		return auth.RandomSecret(), nil
+	}
+	fmt.Fprint(os.Stderr, "Secret: ")
+	line, err := bufio.NewReader(os.Stdin).ReadString('\n')
+	line = strings.TrimRight(line, "\r\n")
+	if err != nil && line == "" {
+		return "", errors.New("no secret came on standard input; --make makes one")
+	}
+	s := auth.Secret(line)
+	return s, auth.Rules{}.Check(s, c.Login, c.Name)
+}
+
+func addPerson(ctx context.Context, st *store.Store, hasher *auth.Hasher, p plant.Person, secret auth.Secret) error {
+	hash, err := hasher.Hash(ctx, secret)
+	if err != nil {
+		return err
+	}
+	return st.AddPerson(ctx, p, hash, uuid.Nil)
+}
+
+type healthCmd struct {
+	URL string `arg:"" help:"Address of the server." default:"http://127.0.0.1:8080"`
+}
+
+func (c *healthCmd) Run(ctx context.Context) error {
+	ctx, cancel := context.WithTimeout(ctx, 5*time.Second)
+	defer cancel()
+	req, err := http.NewRequestWithContext(ctx, http.MethodGet, strings.TrimRight(c.URL, "/")+"/readyz", nil)
+	if err != nil {
+		return err
+	}
+	res, err := http.DefaultClient.Do(req)
+	if err != nil {
+		return err
+	}
+	defer res.Body.Close()
+	if res.StatusCode != http.StatusOK {
+		return fmt.Errorf("the server answers %s", res.Status)
+	}
+	fmt.Println("ready")
+	return nil
+}
