@@ -23,9 +23,6 @@
 
 import { update } from "./falls.js";
 
-const form = document.querySelector("form[data-round]");
-if (form) start(form);
-
 function start(form) {
   const sections = [...form.querySelectorAll("[data-ask]")].map((root) => new Section(root, form));
   const pad = form.querySelector("[data-pad]");
@@ -303,3 +300,6 @@ class Section {
     }
   }
 }
+
+const form = document.querySelector("form[data-round]");
+if (form) start(form);

@@ -13,12 +13,12 @@ import (
 // Sizes of the drawings: beside the keypad, and above it on an upright tablet.
 const (
 	wideW, wideH   = 352, 388
-	tallW, tallH   = 592, 236
+	tallW, tallH   = 592, 216
 	stripW         = 140
 	verdictW       = 540
 	verdictH       = 318
 	adjustW        = 380
-	adjustH        = 220
+	adjustH        = 176
 	specAxisMargin = 0.07
 )
 

@@ -4,6 +4,7 @@ import (
 	"errors"
 	"net/http"
 	"strconv"
+	"strings"
 	"time"
 
 	"holdfast/internal/plant"
@@ -126,12 +127,16 @@ func (s *Surface) renderMatter(w http.ResponseWriter, r *http.Request, status in
 
 func causeChoices(f ui.Format, causes []plant.Cause, chosen string) []causeView {
 	var out []causeView
+	notFound := f.Words.T("station.cause-not-found")
+	listed := false // the plant's own catalogue has it
 	for _, c := range causes {
 		out = append(out, causeView{Value: c.ID.String(), Name: c.Name, Chosen: chosen == c.ID.String()})
+		listed = listed || strings.EqualFold(c.Name, notFound)
 	}
-	return append(out,
-		causeView{Value: notFoundCause, Name: f.Words.T("station.cause-not-found"), Chosen: chosen == notFoundCause},
-		causeView{Value: ownCause, Name: f.Words.T("station.cause-own"), Chosen: chosen == ownCause})
+	if !listed {
+		out = append(out, causeView{Value: notFoundCause, Name: notFound, Chosen: chosen == notFoundCause})
+	}
+	return append(out, causeView{Value: ownCause, Name: f.Words.T("station.cause-own"), Chosen: chosen == ownCause})
 }
 
 func newMatter(f ui.Format, st plant.StationState, c plant.CharacteristicState, m plant.Matter) matterView {
