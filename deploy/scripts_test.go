@@ -48,6 +48,12 @@ func as(t *testing.T, conn, role, password string) string {
 // script runs a program and returns what it prints.
 func script(t *testing.T, env []string, name string, args ...string) (string, error) {
 	t.Helper()
+	// Read here, so that a changed script is not answered from the test cache.
+	for _, file := range []string{"backup", "restore", "database.bash", "roles.sql"} {
+		if _, err := os.ReadFile(file); err != nil {
+			t.Fatal(err)
+		}
+	}
 	cmd := exec.CommandContext(t.Context(), name, args...)
 	cmd.Env = append([]string{"PATH=" + os.Getenv("PATH"), "LC_ALL=C.UTF-8"}, env...)
 	out, err := cmd.CombinedOutput()
