@@ -153,14 +153,14 @@ func studyStretch(h plant.History, read asked, f ui.Format) url.Values {
 	if read.live() || len(h.Points) == 0 {
 		return nil
 	}
-	return url.Values{"from": {h.Points[0].TakenAt.UTC().Format(exactTime)}, "to": {h.Points[len(h.Points)-1].TakenAt.UTC().Format(exactTime)}}
+	return betweenValues(h.Points[0].TakenAt, h.Points[len(h.Points)-1].TakenAt, f.Zone)
 }
 
 func spanLinks(f ui.Format, id uuid.UUID, a asked, table bool) []link {
 	var out []link
 	for _, s := range spans {
 		q := url.Values{}
-		text := f.Words.T("desk.span.newest", LiveStretch)
+		text := f.Words.T("desk.span-newest", LiveStretch)
 		if s != newest {
 			q.Set("span", string(s))
 			text = f.Words.T("desk.span." + string(s))

@@ -231,7 +231,3 @@ func withQuery(path string, q url.Values) string {
 	}
 	return path + "?" + q.Encode()
 }
-
-// exactTime is how the ends of a study's stretch stand in its address: to the
-// microsecond in which times are kept.
-const exactTime = time.RFC3339Nano

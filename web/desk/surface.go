@@ -52,6 +52,13 @@ func New(d Deps) *Desk { return &Desk{log: d.Log, store: d.Store, signer: d.Sign
 func (d *Desk) Routes(r chi.Router) {
 	r.Get("/", ui.Handle(d.log, d.list))
 	r.Get("/characteristic/{id}", ui.Handle(d.log, d.chart))
+	r.Get("/characteristic/{id}/revisions", ui.Handle(d.log, d.revisions))
+	r.Group(func(r chi.Router) {
+		r.Use(ui.Require(plant.SetLimits))
+		r.Get("/characteristic/{id}/study", ui.Handle(d.log, d.showStudy))
+		r.Get("/characteristic/{id}/study/freeze", ui.Handle(d.log, d.showFreeze))
+		r.Post("/characteristic/{id}/study/freeze", ui.Handle(d.log, d.freeze))
+	})
 }
 
 // idIn reads the characteristic that the address names. Only the one spelling in
