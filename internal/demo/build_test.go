@@ -39,7 +39,7 @@ func TestTheWorksHasALifeBehindIt(t *testing.T) {
 			t.Logf("%-14s %-20s %-9s %d points, owner %s, version %d", s.Name, c.Name, c.Condition(), len(c.Points), c.Owner(), c.Version)
 		}
 	}
-	for _, want := range []plant.Condition{plant.CalmLeave, plant.IsLook, plant.IsHold, plant.IsStopped} {
+	for _, want := range []plant.Condition{plant.CalmLeave, plant.IsLearning, plant.IsLook, plant.IsHold, plant.IsLate, plant.IsStopped} {
 		if seen[want] == 0 {
 			t.Errorf("a visitor finds nothing in state %s", want)
 		}

@@ -9,6 +9,7 @@ import (
 	"github.com/google/uuid"
 
 	"holdfast/internal/plant"
+	"holdfast/internal/spc/watch"
 	"holdfast/internal/store"
 )
 
@@ -63,9 +64,16 @@ func (w *walker) minutes(least, most int) time.Duration {
 	return time.Duration(least)*time.Minute + time.Duration(w.rng.Float64()*float64(most-least)*float64(time.Minute))
 }
 
+// lastHours is how long before its end the history runs without a pause, whatever the
+// hour: a works that stands still shows a visitor nothing.
+const lastHours = 10 * time.Hour
+
 // works reports whether the place runs at a time: in the early and the late shift, not
 // on Sundays.
 func (w *walker) works(t time.Time) bool {
+	if t.After(w.b.end.Add(-lastHours)) {
+		return true
+	}
 	local := t.In(w.b.zone)
 	return local.Weekday() != time.Sunday && local.Hour() >= 6 && local.Hour() < 22
 }
@@ -117,7 +125,7 @@ func (w *walker) next() time.Time {
 func (w *walker) edge() time.Time {
 	t := w.at.Truncate(30 * time.Minute)
 	for {
-		if t.After(w.at.Add(-time.Second)) && w.works(t) != w.running {
+		if t.After(w.b.end) || t.After(w.at.Add(-time.Second)) && w.works(t) != w.running {
 			return t
 		}
 		t = t.Add(30 * time.Minute)
@@ -167,6 +175,11 @@ func (w *walker) interval(t *track) time.Duration {
 
 // round takes what is due, together when it is due together.
 func (w *walker) round(ctx context.Context) error {
+	if w.place.late {
+		if skip := w.keepLate(); skip {
+			return nil
+		}
+	}
 	var due []*track
 	for _, t := range w.tracks {
 		if !t.due.After(w.at.Add(5 * time.Minute)) {
@@ -209,6 +222,22 @@ func (w *walker) round(ctx context.Context) error {
 	return nil
 }
 
+// keepLate arranges that the last sample of a place was due so long before the end that
+// the next one is nine minutes late there. It reports whether there is nothing to take.
+func (w *walker) keepLate() bool {
+	t := w.tracks[0]
+	last := w.b.end.Add(-9 * time.Minute).Add(-w.interval(t))
+	switch {
+	case t.due.After(last):
+		t.due = w.b.end.Add(time.Hour)
+		return true
+	case t.due.After(last.Add(-w.interval(t))) && t.due.Before(last):
+		t.due = last
+		return true
+	}
+	return false
+}
+
 // afterwards is what follows a sample besides its verdict: limits are frozen when there
 // is enough, and in the spell somebody corrects what needs no correction.
 func (w *walker) afterwards(ctx context.Context, t *track) error {
@@ -245,12 +274,11 @@ func (w *walker) freeze(ctx context.Context, t *track) error {
 		return err
 	}
 	req := plant.FreezeRequest{
-		Characteristic: t.ID, SetupVersion: 1, After: t.frozen, Rules: t.setup.DefaultRules(), From: stretch.From,
+		Characteristic: t.ID, SetupVersion: 1, After: t.frozen, From: stretch.From,
 		Reason: reason, Person: w.b.people[plant.Engineer][0],
 	}
-	if len(req.Rules.Location) == 1 {
-		req.Rules.Location = plant.Setup{Chart: t.setup.Chart, Size: t.setup.Size}.DefaultRules().Location
-	}
+	// The works wants few alarms: of the zone rules only the two that catch large shifts.
+	req.Rules = plant.Rules{Location: watch.WesternElectric()[:2], Dispersion: []watch.Rule{{Kind: watch.Beyond, Z: 3}}}
 	causes := map[uuid.UUID]string{}
 	for _, m := range h.Matters {
 		if !m.Open() && m.Closing == plant.Fixed {
@@ -312,21 +340,12 @@ func (t *track) hasOpenFault(day float64) bool {
 	return false
 }
 
-// finish leaves the place as a visitor finds it. At night and on Sundays everything is
-// started for them: a works that stands still shows nothing.
+// finish leaves the place as a visitor finds it.
 func (w *walker) finish(ctx context.Context, end time.Time) error {
 	w.at = end
-	if w.place.stopped {
-		if !w.running {
-			return nil
-		}
-		w.at = end.Add(-36 * time.Minute)
-		return w.machineState(ctx, false)
-	}
-	if w.running {
+	if !w.place.stopped {
 		return nil
 	}
-	w.running = true
-	w.at = end.Add(-2 * time.Minute)
-	return w.machineState(ctx, true)
+	w.at = end.Add(-36 * time.Minute)
+	return w.machineState(ctx, false)
 }
