@@ -4,6 +4,7 @@ package storetest
 
 import (
 	"context"
+	"sync"
 	"testing"
 	"time"
 
@@ -18,17 +19,26 @@ import (
 // Start is where the clocks of fixtures begin: a Thursday noon, UTC.
 var Start = time.Date(2026, 3, 12, 12, 0, 0, 0, time.UTC)
 
-// Clock is a clock that a test sets.
-type Clock struct{ at time.Time }
+// Clock is a clock that a test sets; servers may read it meanwhile.
+type Clock struct {
+	mu sync.Mutex
+	at time.Time
+}
 
 // NewClock returns a clock that stands at Start.
 func NewClock() *Clock { return &Clock{at: Start} }
 
 // Now reads the clock.
-func (c *Clock) Now() time.Time { return c.at }
+func (c *Clock) Now() time.Time {
+	c.mu.Lock()
+	defer c.mu.Unlock()
+	return c.at
+}
 
 // Advance moves the clock on and returns the new time.
 func (c *Clock) Advance(d time.Duration) time.Time {
+	c.mu.Lock()
+	defer c.mu.Unlock()
 	c.at = c.at.Add(d)
 	return c.at
 }
