@@ -159,7 +159,7 @@ func (d *Desk) showStudy(w http.ResponseWriter, r *http.Request) error {
 		return err
 	}
 	status := http.StatusOK
-	if len(s.state.problems) > 0 {
+	if len(s.state.problems) > 0 || s.err != nil && s.state.asked() {
 		status = http.StatusUnprocessableEntity
 	}
 	shell := ui.ShellFor(r, ui.Desk, f.Words.T("desk.study.title-of", s.h.State.Name))

@@ -157,6 +157,12 @@ func (s *studyState) stretch() plant.Stretch {
 	return st
 }
 
+// asked reports whether somebody chose the stretch; a study that is just begun is
+// nobody's mistake.
+func (s *studyState) asked() bool {
+	return s.typed.Get("from") != "" || s.typed.Get("to") != "" || s.typed.Get("last") != ""
+}
+
 // pin fixes a stretch that was asked for by count, so that samples that come in while
 // it is studied do not move it.
 func (s *studyState) pin(points []plant.Point) {
