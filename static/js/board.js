@@ -27,6 +27,8 @@ const shown = (element) => (!board.dataset.onlyLine || element.dataset.line === 
 function narrow(root) {
   const parts = root.matches('[data-owners]') ? [root] : root.querySelectorAll('[data-owners]');
   for (const part of parts) part.hidden = !shown(part);
+  const nothing = board.querySelector('[data-nothing]');
+  if (nothing) nothing.hidden = board.querySelector('.card:not([hidden])') !== null;
   const elsewhere = root.querySelector('[data-elsewhere]');
   if (elsewhere) elsewhere.hidden = !root.querySelector('.needs-list > [hidden]');
 }

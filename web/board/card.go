@@ -12,8 +12,14 @@ import (
 	"holdfast/web/ui"
 )
 
-// sparkW and sparkH are the size that the small chart is drawn for.
-const sparkW, sparkH = 322, 132
+// The small chart is drawn for a card 322 px wide; each row of other characteristics
+// below takes from its height, so that the band still reaches from edge to edge.
+const (
+	sparkW     = 322
+	sparkH     = 118
+	sparkLeast = 56
+	markRow    = 28
+)
 
 // marksShown is how many characteristics beside the front one stand on a card by
 // name. Those in another state than Leave stand there in any case.
@@ -117,11 +123,6 @@ func newCard(f ui.Format, st *plant.StationState) cardView {
 	v.Link = stationAddress(st.ID, front.ID)
 	v.Next = next(f, front)
 	v.Owner, v.Strong = ownerShown(f, front)
-	if n := len(front.Points); n > 0 {
-		v.Value = f.Mean(front.Points[n-1].Stats.Mean(), front.Setup)
-		v.Spark = spark(f, front, v.Value)
-	}
-
 	var matters, who []string
 	calm := 0
 	for i, c := range sorted {
@@ -143,6 +144,10 @@ func newCard(f ui.Format, st *plant.StationState) cardView {
 	}
 	if calm > 0 {
 		v.Calm = f.Words.T("board.more-calm", calm)
+	}
+	if n := len(front.Points); n > 0 {
+		v.Value = f.Mean(front.Points[n-1].Stats.Mean(), front.Setup)
+		v.Spark = spark(f, front, v.Value, max(sparkLeast, sparkH-float64(len(v.Others)*markRow)))
 	}
 	v.Matters, v.Owners = strings.Join(matters, " "), strings.Join(who, " ")
 	return v
@@ -191,9 +196,9 @@ func ownerShown(f ui.Format, c *plant.CharacteristicState) (text string, strong 
 }
 
 // spark draws the newest subgroups of a characteristic in the band that is in force.
-func spark(f ui.Format, c *plant.CharacteristicState, value string) string {
+func spark(f ui.Format, c *plant.CharacteristicState, value string, height float64) string {
 	points := c.Points[max(0, len(c.Points)-chart.SparkLength):]
-	s := chart.Spark{ID: "spark-" + c.ID.String(), W: sparkW, H: sparkH, Limits: band(c),
+	s := chart.Spark{ID: "spark-" + c.ID.String(), W: sparkW, H: height, Limits: band(c),
 		Stopped: !c.Machine.Running(), Points: make([]chart.SparkPoint, len(points))}
 	if c.Revision == nil {
 		s.Label = f.Words.T("board.spark-learning", len(points), c.Name, value)

@@ -18,8 +18,14 @@ type needsView struct {
 	Density     string // few, several or many: how much each may say
 	List        []needView
 	Engineering []studyView
+	More        []studyView // what follows, folded
+	MoreText    string
 	None        string // said when the list is empty
 }
+
+// studiesShown is how much of engineering's list is not folded: who is needed now
+// comes first.
+const studiesShown = 3
 
 // needView is one thing that needs a person.
 type needView struct {
@@ -62,6 +68,10 @@ func newNeeds(f ui.Format, states []plant.StationState) needsView {
 				v.Engineering = append(v.Engineering, newStudy(f, st, c))
 			}
 		}
+	}
+	if more := len(v.Engineering) - studiesShown; more > 1 {
+		v.Engineering, v.More = v.Engineering[:studiesShown], v.Engineering[studiesShown:]
+		v.MoreText = f.Words.T("board.more", more)
 	}
 	slices.SortStableFunc(v.List, func(a, b needView) int {
 		if n := a.since.Compare(b.since); n != 0 {

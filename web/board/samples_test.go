@@ -84,6 +84,7 @@ func open(c *plant.CharacteristicState, since time.Duration, firings ...plant.Fi
 
 func late(c *plant.CharacteristicState, by time.Duration, state plant.DueState) {
 	c.Due = plant.Due{At: before(by), Occasion: plant.ByTime, State: state}
+	c.LastTaken = before(by + 30*time.Minute)
 }
 
 func learning(c *plant.CharacteristicState, collected int) {
