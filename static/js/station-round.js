@@ -23,6 +23,8 @@
 
 import { update } from "./falls.js";
 
+const SAME_ENTER = 400; // ms within which a second Enter belongs to the first
+
 function start(form) {
   const sections = [...form.querySelectorAll("[data-ask]")].map((root) => new Section(root, form));
   const pad = form.querySelector("[data-pad]");
@@ -69,7 +71,10 @@ function start(form) {
     mark();
   }
 
+  // arm makes one more Enter save. A gauge may end with two; the second must not.
+  let armedAt = -Infinity;
   function arm() {
+    armedAt = performance.now();
     const section = sections.find((s) => !s.root.hidden) ?? sections[0];
     current = null;
     section.heading(say.sayReady);
@@ -135,8 +140,10 @@ function start(form) {
   });
 
   main.addEventListener("click", (event) => {
-    if (complete()) return; // it saves
+    const byKey = event.detail === 0;
+    if (complete() && !(byKey && performance.now() - armedAt < SAME_ENTER)) return; // it saves
     event.preventDefault();
+    if (complete()) return;
     if (current && current.value.trim() === "") go(current);
     else if (!current || commit(current)) next(current);
   });

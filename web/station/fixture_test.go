@@ -10,6 +10,7 @@ import (
 	"net/http/httptest"
 	"net/netip"
 	"net/url"
+	"strconv"
 	"strings"
 	"testing"
 
@@ -184,3 +185,5 @@ func (p page) round(c plant.Characteristic, readings ...string) url.Values {
 func (s *site) at(parts ...string) string {
 	return "/station/" + s.Station.ID.String() + strings.Join(append([]string{""}, parts...), "/")
 }
+
+func itoa(n int64) string { return strconv.FormatInt(n, 10) }

@@ -333,7 +333,7 @@ func fixInstant(text string, opened, now time.Time, zone *time.Location) (time.T
 			return time.Time{}, err
 		}
 	}
-	if at.Before(opened) && at.Equal(opened.Truncate(time.Minute)) {
+	if !at.After(opened) && at.Equal(opened.Truncate(time.Minute)) {
 		at = opened.Add(time.Microsecond)
 	}
 	return at.UTC(), nil

@@ -1,0 +1,69 @@
+package station_test
+
+import (
+	"net/http"
+	"strings"
+	"testing"
+	"time"
+
+	"holdfast/web/station"
+	"holdfast/web/ui"
+	"holdfast/web/words"
+)
+
+func TestPushAndPagePrintTheSame(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	b := s.signIn(t, s.Operator)
+	for _, later := range []time.Duration{time.Minute, 31 * time.Minute, 9 * time.Minute, 40 * time.Minute} {
+		s.Clock.Advance(later)
+		st, err := s.StationState(t.Context(), s.Station.ID, 12)
+		if err != nil {
+			t.Fatal(err)
+		}
+		fragments, err := station.Fragments(ui.NewFormat(words.For("en"), time.UTC, s.Clock.Now()), st)
+		if err != nil {
+			t.Fatal(err)
+		}
+		body := b.get(s.at()).is(http.StatusOK).body
+		for _, f := range fragments {
+			if !strings.Contains(string(f.HTML), `id="`+f.ID+`"`) {
+				t.Errorf("fragment %s does not carry its id", f.ID)
+			}
+			if strings.Contains(body, `id="`+f.ID+`"`) && !strings.Contains(body, string(f.HTML)) {
+				t.Errorf("the page prints %s otherwise than the push", f.ID)
+			}
+		}
+		if again, _ := station.Fragments(ui.NewFormat(words.For("en"), time.UTC, s.Clock.Now()), st); string(again[0].HTML) != string(fragments[0].HTML) {
+			t.Error("the same state is rendered in two ways, so it would be pushed for ever")
+		}
+	}
+}
+
+func TestWhatIsDueIsSaidInMinutes(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	b := s.signIn(t, s.Operator)
+	b.get(s.at()).says("Nothing is due until 12:30.", `data-testid="idle"`)
+	s.Clock.Advance(31 * time.Minute)
+	b.get(s.at()).says("Due now", `data-testid="round"`, "1 of 2")
+	s.Clock.Advance(8 * time.Minute)
+	b.get(s.at()).says("Late 9 min")
+	s.Clock.Advance(time.Hour)
+	b.get(s.at()).says("Late 1 h", "#s-unknown")
+}
+
+func TestStationIsRememberedByTheTablet(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	b := s.signIn(t, s.Operator)
+	b.get("/station").is(http.StatusOK).says("Which station is this?", "Turning 1", "Turning 2")
+	b.get(s.at()).is(http.StatusOK)
+	if got := b.get("/station").is(http.StatusSeeOther); got.to != s.at() {
+		t.Errorf("leads to %s", got.to)
+	}
+	b.get("/station?all").is(http.StatusOK).says("Which station is this?")
+	if got := s.signIn(t, s.Engineer).get("/station"); got.status != http.StatusForbidden {
+		t.Errorf("an engineer gets %d", got.status)
+	}
+}
