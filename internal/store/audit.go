@@ -100,9 +100,10 @@ func (c *judgementCheck) run(ctx context.Context, tx pgx.Tx) error {
 				c.differs("subgroup of %s: %q stands on record, %q is what it does", row.taken, have, want)
 			}
 			delete(standing, row.position)
-			if have, ok := checkpoints[row.position]; ok && !have.Same(fold) {
+			if have, ok := checkpoints[row.position]; ok && (row.voided || !have.Same(fold)) {
 				c.differs("checkpoint at %s is not the state of the fold there", row.taken)
 			}
+			delete(checkpoints, row.position)
 		}
 		if len(chunk) < refoldChunk {
 			break
@@ -110,6 +111,9 @@ func (c *judgementCheck) run(ctx context.Context, tx pgx.Tx) error {
 	}
 	for at, have := range standing {
 		c.differs("signals %q stand at %s where there is no subgroup", have, at.taken)
+	}
+	for at := range checkpoints {
+		c.differs("a checkpoint stands at %s where there is no subgroup", at.taken)
 	}
 	return c.state(ctx, tx, fold, last)
 }

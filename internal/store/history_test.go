@@ -178,6 +178,23 @@ func TestJudgementsAreThoseOfOneFold(t *testing.T) {
 	}
 }
 
+// FuzzWritePath is the same with any seed: run it for as long as you like.
+func FuzzWritePath(f *testing.F) {
+	f.Add(uint64(11), byte(0))
+	f.Add(uint64(12), byte(1))
+	f.Fuzz(func(t *testing.T, seed uint64, which byte) {
+		p := storetest.New(t, "x")
+		c := []plant.Characteristic{p.Diameter, p.Force, p.Mass}[which%3]
+		y := &player{t: t, p: p, c: c, rng: rand.New(rand.NewPCG(seed, 7))}
+		for i := range 80 {
+			if err := y.act(); err != nil {
+				t.Fatalf("step %d (%s): %v", i, y.did[len(y.did)-1], err)
+			}
+		}
+		y.check(80)
+	})
+}
+
 func (y *player) check(step int) {
 	y.t.Helper()
 	n, differences, err := y.p.CheckJudgements(context.Background())
@@ -194,7 +211,7 @@ func (y *player) check(step int) {
 
 // restart opens the store anew: nothing that it keeps in memory may matter.
 func (y *player) restart() {
-	st, err := store.Open(context.Background(), store.Options{URL: y.p.URL, Clock: y.p.Clock.Now})
+	st, err := store.Open(context.Background(), store.Options{URL: y.p.URL, Clock: y.p.Clock.Now, CheckpointEvery: 16})
 	if err != nil {
 		y.t.Fatal(err)
 	}

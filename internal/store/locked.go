@@ -135,9 +135,6 @@ func (s *Store) save(b *pgx.Batch, l *locked) {
 		l.uncounted, orNull(l.matter), l.head.Seq, l.head.Hash[:])
 }
 
-// checkpointEvery is how many subgroups lie between two checkpoints.
-const checkpointEvery = 256
-
 func (s *Store) checkpoint(b *pgx.Batch, l *locked, at position, f plant.FoldState) {
 	b.Queue(`insert into checkpoint (characteristic_id, taken_at, subgroup_id, plant_id, segment_from, revision_id, memory)
 		values ($1, $2, $3, $4, $5, $6, $7)

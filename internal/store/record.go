@@ -218,7 +218,7 @@ func (rec *recording) entry(ctx context.Context, e plant.Entry, l *locked, a rou
 			return part, err
 		}
 		l.last, l.lastDue = row.position, rec.round.DueAt
-		if l.uncounted++; l.uncounted >= checkpointEvery {
+		if l.uncounted++; l.uncounted >= rec.s.every {
 			rec.s.checkpoint(rec.batch, l, row.position, l.fold)
 			l.uncounted = 0
 		}

@@ -53,8 +53,8 @@ type conn interface {
 }
 
 // refoldChunk is how many subgroups are read at a time. Most refolds end within the
-// first: a checkpoint's distance and the longest window.
-const refoldChunk = checkpointEvery + 80
+// first: a checkpoint's usual distance and the longest window.
+const refoldChunk = 256 + 80
 
 // refolding runs two folds over one characteristic: how things were and how they are.
 type refolding struct {
@@ -100,15 +100,20 @@ func (s *Store) refold(ctx context.Context, c conn, b *pgx.Batch, l *locked, p p
 			if err := r.row(ctx, row, signals[row.id]); err != nil {
 				return refolded{}, err
 			}
-			if !row.voided {
+			if row.voided {
+				// Nothing may stand at a void: what comes next in order may come before it.
+				if checkpoints[row.position] {
+					b.Queue(`delete from checkpoint where characteristic_id = $1 and taken_at = $2 and subgroup_id = $3`, l.id, row.taken, row.id)
+				}
+			} else {
 				last = row.position
 			}
-			if r.converged(row.position) {
+			if r.converged(row) {
 				return r.patched, nil
 			}
 			// Samples that all come late would otherwise leave ever longer ways between
 			// checkpoints.
-			if unmarked++; checkpoints[row.position] || unmarked >= 2*checkpointEvery {
+			if unmarked++; !row.voided && (checkpoints[row.position] || unmarked >= 2*s.every) {
 				s.checkpoint(b, l, row.position, r.is)
 				unmarked = 0
 			}
@@ -304,9 +309,13 @@ func (r *refolding) matterFor(at position) (uuid.UUID, error) {
 }
 
 // converged reports whether both folds are in the same state and the patch is behind
-// them, so that everything that follows is as it was.
-func (r *refolding) converged(at position) bool {
-	return !at.before(r.patch.at) && r.is.Same(r.was)
+// them, so that everything that follows is as it was. A void that stands behind a new
+// boundary proves nothing: neither fold has stepped over the boundary there.
+func (r *refolding) converged(row *subgroupRow) bool {
+	if row.before(r.patch.at) || row.voided && r.patch.boundary != uuid.Nil {
+		return false
+	}
+	return r.is.Same(r.was)
 }
 
 // openMatter opens a matter at a subgroup. alarm is false for what was found late.

@@ -22,6 +22,9 @@ type Options struct {
 	URL      string // of the application role; or of the owner when that is all there is
 	MaxConns int    // 0: 16, which halves the slowest saves for a tenth of the throughput
 	Clock    func() time.Time
+
+	// CheckpointEvery is how many subgroups lie between two checkpoints of a fold; 0: 256.
+	CheckpointEvery int
 }
 
 // Store is the plant's record.
@@ -37,6 +40,7 @@ type shared struct {
 	revisions *sync.Map // uuid -> *frozen; revisions never change
 	setups    *sync.Map // setupKey -> plant.Setup; versions never change
 	onChange  *atomic.Pointer[func([]uuid.UUID)]
+	every     int // subgroups between two checkpoints
 }
 
 // Open connects to a migrated database.
@@ -56,10 +60,13 @@ func Open(ctx context.Context, o Options) (*Store, error) {
 	}
 	s := &Store{clock: o.Clock, shared: shared{
 		pool: pool, plantID: new(atomic.Pointer[uuid.UUID]),
-		revisions: new(sync.Map), setups: new(sync.Map), onChange: new(atomic.Pointer[func([]uuid.UUID)]),
+		revisions: new(sync.Map), setups: new(sync.Map), onChange: new(atomic.Pointer[func([]uuid.UUID)]), every: o.CheckpointEvery,
 	}}
 	if s.clock == nil {
 		s.clock = time.Now
+	}
+	if s.every <= 0 {
+		s.every = 256
 	}
 	if err := s.findPlant(ctx); err != nil {
 		pool.Close()

@@ -77,7 +77,8 @@ func NewAt(t testing.TB, secretHash string, clock *Clock, now func() time.Time) 
 	t.Helper()
 	ctx := context.Background()
 	url := pgtest.Database(t)
-	st, err := store.Open(ctx, store.Options{URL: url, Clock: now})
+	// Few subgroups between checkpoints, so that small histories cross many.
+	st, err := store.Open(ctx, store.Options{URL: url, Clock: now, CheckpointEvery: 16})
 	must(t, err)
 	t.Cleanup(st.Close)
 	p := &Plant{Store: st, Clock: clock, URL: url}
