@@ -57,8 +57,8 @@ function tell() {
 // must not end at an error page.
 async function again() {
   try {
-    const answer = await fetch(location.href, { method: 'HEAD', cache: 'no-store' });
-    if (answer.ok) {
+    const answer = await fetch(location.href, { cache: 'no-store' });
+    if (answer.ok && !answer.redirected) {
       location.reload();
       return;
     }
