@@ -126,7 +126,7 @@ func TestSlipIsAskedForOnceAndBothTypingsAreKept(t *testing.T) {
 	id := s.Diameter.ID.String()
 	form := b.get(s.at()).round(s.Diameter, "14.991", "149.90", "14.992", "14.989", "14.993")
 	asked := b.post(s.at("round"), form).is(http.StatusUnprocessableEntity)
-	asked.says(`name="first-` + id + `-1" value="149.90"`).saysNot(`value="14.990"`, "14.990")
+	asked.says(`name="first-`+id+`-1" value="149.90"`).saysNot(`value="14.990"`, "14.990")
 	form.Set("round", asked.field("round"))
 	form["first-"+id+"-1"] = []string{"149.90"}
 
@@ -174,7 +174,7 @@ func TestRoundMayBeTypedAsDeviation(t *testing.T) {
 	if want != nil {
 		t.Error("nothing was recorded")
 	}
-	b.get(s.at()+"?measure="+s.Diameter.ID.String()).says(`value="deviation" checked`)
+	b.get(s.at() + "?measure=" + s.Diameter.ID.String()).says(`value="deviation" checked`)
 }
 
 func with(form url.Values, key string, values ...string) url.Values {

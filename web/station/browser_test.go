@@ -157,7 +157,7 @@ func TestRoundByKeypadAsDeviation(t *testing.T) {
 	tap := func(keys ...string) {
 		t.Helper()
 		for _, k := range keys {
-			tb.do(chromedp.Click(`[data-key="`+k+`"]`))
+			tb.do(chromedp.Click(`[data-key="` + k + `"]`))
 		}
 	}
 	main := func() { t.Helper(); tb.do(chromedp.Click("[data-main]")) }

@@ -17,6 +17,8 @@ const (
 	stripW         = 140
 	verdictW       = 540
 	verdictH       = 318
+	besideW        = 380 // the averages beside the single readings
+	besideH        = 260
 	adjustW        = 380
 	adjustH        = 176
 	specAxisMargin = 0.07

@@ -127,8 +127,8 @@ func TestChangeIsLoggedInTwoTapsAndSaysWhenNoSignalIsOpen(t *testing.T) {
 	b.post(s.at("change"), tool).is(http.StatusSeeOther)
 	s.Clock.Advance(time.Second)
 	b.post(s.at("change"), tool).is(http.StatusSeeOther) // a double tap
-	b.get(s.at()+"?done=change").says("The change is recorded.")
-	b.get(s.at()+"?done=nonsense").saysNot(`data-testid="done"`)
+	b.get(s.at() + "?done=change").says("The change is recorded.")
+	b.get(s.at() + "?done=nonsense").saysNot(`data-testid="done"`)
 
 	adjust := b.get(s.at("change", s.Diameter.ID.String())).is(http.StatusOK).
 		says("No signal is open", "The numbers say: leave it alone", "recorded as unprompted")

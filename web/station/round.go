@@ -70,7 +70,6 @@ func pick(st plant.StationState, want uuid.UUID) plan {
 // roundView is the form of one round.
 type roundView struct {
 	Action    string
-	Leave     string // where leaving it leads
 	ID        string
 	Due       string
 	Occasion  string
@@ -79,7 +78,6 @@ type roundView struct {
 	Choice    bool // typing as deviation is possible
 	Problem   string
 	Parts     []askView
-	KeySign   bool
 }
 
 // askView is one characteristic of the round.
@@ -87,7 +85,6 @@ type askView struct {
 	ID        string
 	Name      string
 	What      string // "Axle seat diameter, mm"
-	Spec      string
 	Setup     int
 	Size      int
 	Decimals  int
@@ -143,7 +140,7 @@ func newRound(f ui.Format, st plant.StationState, p plan, deviation bool) roundV
 
 // fillRound is the form with what was typed so far.
 func fillRound(f ui.Format, st plant.StationState, d draft) roundView {
-	v := roundView{Action: path(st.ID, "round"), Leave: path(st.ID), ID: d.Round.String(), Occasion: string(d.Occasion),
+	v := roundView{Action: path(st.ID, "round"), ID: d.Round.String(), Occasion: string(d.Occasion),
 		Unplanned: d.Due.IsZero(), Deviation: d.Deviation, Problem: d.Problem}
 	if !d.Due.IsZero() {
 		v.Due = d.Due.UTC().Format(time.RFC3339Nano)
@@ -161,7 +158,7 @@ func fillRound(f ui.Format, st plant.StationState, d draft) roundView {
 
 func newAsk(f ui.Format, e draftEntry) askView {
 	c, s := e.Of, e.Of.Setup
-	a := askView{ID: c.ID.String(), Name: c.Name, What: f.Words.T("station.name-unit", c.Name, s.Unit), Spec: f.Specification(s),
+	a := askView{ID: c.ID.String(), Name: c.Name, What: f.Words.T("station.name-unit", c.Name, s.Unit),
 		Setup: s.Version, Size: s.Size, Decimals: s.Decimals, Problem: e.Problem, Short: e.Short, ShortSays: e.ShortProblem,
 		ShortOpen: e.Short != "" || e.ShortProblem != ""}
 	if s.Target != nil {

@@ -39,7 +39,6 @@ type taskView struct {
 	Says   string // "Due now", "Late 9 min"
 	When   string
 	Sub    string // "5 parts"
-	Owner  string
 }
 
 // machineView is a machine with what one tap does to it.

@@ -345,7 +345,11 @@ func (v *verdictView) draw(f ui.Format, t told) {
 		}
 	}
 	v.ChartOf = f.Words.T("station.last-rounds", f.Words.T("station.name-unit", t.of.Name, s.Unit))
-	c := chart.Verdict{ID: "verdict", Label: f.Words.T("station.verdict-label", t.of.Name), W: verdictW, H: verdictH,
+	w, h := float64(verdictW), float64(verdictH)
+	if t.Verdict == plant.Hold {
+		w, h = besideW, besideH
+	}
+	c := chart.Verdict{ID: "verdict", Label: f.Words.T("station.verdict-label", t.of.Name), W: w, H: h,
 		Points: stationPoints(f, points, s, t.of.Segment), Limits: chartLimits(f, t.of.Revision, s), Signal: signal, Lo: lo, Hi: hi, Words: chartWords(f.Words)}
 	v.Chart = c.SVG()
 	if t.Verdict != plant.Hold || !t.found {
@@ -355,7 +359,7 @@ func (v *verdictView) draw(f ui.Format, t told) {
 	for i, units := range t.point.Readings {
 		readings[i] = plant.Decimal{Units: units, Decimals: t.point.Stats.Decimals}.Float()
 	}
-	v.Parts = (&chart.Strip{ID: "verdict-parts", Label: f.Words.T("station.parts-label", t.of.Name), W: stripW, H: verdictH,
+	v.Parts = (&chart.Strip{ID: "verdict-parts", Label: f.Words.T("station.parts-label", t.of.Name), W: stripW, H: besideH,
 		Spec: chartSpec(f, s), Readings: readings, Size: len(readings), Words: chartWords(f.Words)}).SVG()
 }
 
