@@ -30,6 +30,10 @@ type CountStandard struct {
 	// probability Tail (0: DefaultTail) beyond each. Laney's charts have none.
 	Probability bool
 	Tail        float64
+	// Size of every sample of an np chart, whose centre is a count of it; samples of
+	// another size are then refused. 0: not known, and not looked at. The other
+	// charts do not use it.
+	Size float64
 }
 
 // Counts reports whether the chart is one of counts.
@@ -71,7 +75,8 @@ func EstimateCounts(chart Chart, counts []int, sizes []float64) (CountStandard, 
 	}
 	s.Center = total / area
 	if chart == NP {
-		s.Center *= sizes[0]
+		s.Size = sizes[0]
+		s.Center *= s.Size
 	}
 	if chart == LaneyP || chart == LaneyU {
 		between, err := betweenSpread(chart, s.Center, counts, sizes)
@@ -146,6 +151,13 @@ func checkCount(chart Chart, count int, size float64) error {
 	return nil
 }
 
+func (s CountStandard) checkSample(count int, size float64) error {
+	if s.Chart == NP && s.Size != 0 && size != s.Size {
+		return invalid("this np chart is for samples of %g, got one of %g", s.Size, size)
+	}
+	return checkCount(s.Chart, count, size)
+}
+
 func betweenSpread(chart Chart, center float64, counts []int, sizes []float64) (float64, error) {
 	if len(counts) < 2 {
 		return 0, invalid("the spread between subgroups needs at least two of them")
@@ -180,7 +192,7 @@ func (s CountStandard) Point(count int, size float64) (float64, error) {
 	if s.Chart == C {
 		size = 1
 	}
-	if err := checkCount(s.Chart, count, size); err != nil {
+	if err := s.checkSample(count, size); err != nil {
 		return math.NaN(), err
 	}
 	if s.Chart == NP {
@@ -197,7 +209,7 @@ func (s CountStandard) sd(size float64) (float64, error) {
 	if s.Chart == C {
 		size = 1
 	}
-	if err := checkCount(s.Chart, 0, size); err != nil {
+	if err := s.checkSample(0, size); err != nil {
 		return 0, err
 	}
 	if !(s.Center > 0) || s.Center > maxSize {

@@ -211,9 +211,17 @@ func TestCountsThatGiveNoLimits(t *testing.T) {
 		"size NaN":       func() error { _, err := limits.EstimateCounts(limits.U, []int{1}, []float64{math.NaN()}); return err },
 		"part of a unit": func() error { _, err := limits.EstimateCounts(limits.P, []int{1}, []float64{2.5}); return err },
 		"count above":    func() error { _, err := limits.EstimateCounts(limits.P, []int{3}, []float64{2}); return err },
-		"np sizes":       func() error { _, err := limits.EstimateCounts(limits.NP, []int{1, 1}, []float64{5, 6}); return err },
-		"one for Laney":  func() error { _, err := limits.EstimateCounts(limits.LaneyU, []int{1}, []float64{5}); return err },
-		"alike":          func() error { _, err := limits.EstimateCounts(limits.LaneyU, []int{1, 1}, []float64{5, 5}); return err },
+		"another size": func() error {
+			s, err := limits.EstimateCounts(limits.NP, []int{1, 2}, []float64{50, 50})
+			if err != nil {
+				return err
+			}
+			_, err = s.Band(60)
+			return err
+		},
+		"np sizes":      func() error { _, err := limits.EstimateCounts(limits.NP, []int{1, 1}, []float64{5, 6}); return err },
+		"one for Laney": func() error { _, err := limits.EstimateCounts(limits.LaneyU, []int{1}, []float64{5}); return err },
+		"alike":         func() error { _, err := limits.EstimateCounts(limits.LaneyU, []int{1, 1}, []float64{5, 5}); return err },
 		"Laney exact": func() error {
 			_, err := limits.CountStandard{Chart: limits.LaneyP, Center: 0.1, Between: 1, Probability: true}.Band(10)
 			return err

@@ -41,8 +41,8 @@ func EstimateTrend(chart Chart, estimator Estimator, subgroups []Subgroup, wear 
 		if err := u.check(chart, i); err != nil {
 			return s, err
 		}
-		if !(wear[i] >= 0 && wear[i] <= 1e15) {
-			return s, invalid("the wear at subgroup %d must be 0 to 1e15, got %g", i+1, wear[i])
+		if err := CheckWear(wear[i]); err != nil {
+			return s, invalid("subgroup %d: %v", i+1, err)
 		}
 		w := weight(u)
 		total += w
@@ -79,6 +79,15 @@ func EstimateTrend(chart Chart, estimator Estimator, subgroups []Subgroup, wear 
 	return s, nil
 }
 
+// CheckWear says what is wrong with a wear, or nil: it counts up from 0 at a tool
+// change, to at most 1e15.
+func CheckWear(wear float64) error {
+	if !(wear >= 0 && wear <= 1e15) {
+		return invalid("the wear must be 0 to 1e15, got %g", wear)
+	}
+	return nil
+}
+
 func (s TrendStandard) check() error {
 	if !finite(s.Slope) || !finite(s.Intercept) || !finite(s.SlopeSE) {
 		return invalid("the line must have a finite slope and start, got %g and %g", s.Slope, s.Intercept)
@@ -86,15 +95,18 @@ func (s TrendStandard) check() error {
 	return Standard{Chart: s.Chart, Center: s.Intercept, Sigma: s.Sigma, Multiple: s.Multiple}.Check()
 }
 
+// Line returns the centre at the given wear.
+func (s TrendStandard) Line(wear float64) float64 { return s.Intercept + float64(s.Slope*wear) }
+
 // Bands returns the limits about the line at the given wear for a subgroup of n.
 func (s TrendStandard) Bands(wear float64, n int) (location, dispersion Band, err error) {
 	if err := s.check(); err != nil {
 		return absent, absent, err
 	}
-	if !(wear >= 0 && wear <= 1e15) {
-		return absent, absent, invalid("the wear must be 0 to 1e15, got %g", wear)
+	if err := CheckWear(wear); err != nil {
+		return absent, absent, err
 	}
-	at := Standard{Chart: s.Chart, Center: s.Intercept + s.Slope*wear, Sigma: s.Sigma, Multiple: s.Multiple}
+	at := Standard{Chart: s.Chart, Center: s.Line(wear), Sigma: s.Sigma, Multiple: s.Multiple}
 	return at.Bands(n)
 }
 

@@ -145,12 +145,12 @@ func cholesky(a [][]float64, chosen []int) ([][]float64, bool) {
 
 // distance is d' S⁻¹ d over the rows chosen, by forward substitution.
 func distance(l [][]float64, d []float64) float64 {
-	y := make([]float64, len(d))
+	var y [MaxCharacteristics]float64
 	total := 0.0
 	for i := range d {
 		v := d[i]
-		for k := range i {
-			v -= l[i][k] * y[k]
+		for k, y := range y[:i] {
+			v -= l[i][k] * y
 		}
 		y[i] = v / l[i][i]
 		total += y[i] * y[i]
@@ -158,27 +158,27 @@ func distance(l [][]float64, d []float64) float64 {
 	return total
 }
 
-func (s TSquaredStandard) deviation(x []float64) ([]float64, error) {
+// deviation writes x - mean to d.
+func (s TSquaredStandard) deviation(x []float64, d *[MaxCharacteristics]float64) error {
 	if s.lower == nil {
-		return nil, invalid("the standard must be prepared first")
+		return invalid("the standard must be prepared first")
 	}
 	if err := checkRow(x, len(s.Mean)); err != nil {
-		return nil, err
+		return err
 	}
-	d := make([]float64, len(x))
 	for j := range x {
 		d[j] = x[j] - s.Mean[j]
 	}
-	return d, nil
+	return nil
 }
 
-// Statistic returns T² = (x - mean)' S⁻¹ (x - mean).
+// Statistic returns T² = (x - mean)' S⁻¹ (x - mean). It allocates nothing.
 func (s TSquaredStandard) Statistic(x []float64) (float64, error) {
-	d, err := s.deviation(x)
-	if err != nil {
+	var d [MaxCharacteristics]float64
+	if err := s.deviation(x, &d); err != nil {
 		return math.NaN(), err
 	}
-	t := distance(s.lower, d)
+	t := distance(s.lower, d[:len(x)])
 	if !finite(t) {
 		return math.NaN(), invalid("the observation is too far away to compute with")
 	}
@@ -198,8 +198,32 @@ func (s TSquaredStandard) Limits() (phase1, phase2 float64, err error) {
 	p, m := float64(len(s.Mean)), float64(s.M)
 	x, _ := special.BetaQuantile(p/2, (m-p-1)/2, s.alpha(), true)
 	phase1 = (m - 1) * (m - 1) / m * x
-	phase2 = p * (m + 1) * (m - 1) / (m * (m - p)) * fUpper(s.alpha(), p, m-p)
-	return phase1, phase2, nil
+	return phase1, s.phase2(s.alpha()), nil
+}
+
+// Band returns the limit for later observations (phase 2) as a band: its centre is
+// the median of T² in control, and the one-sigma distance above it is a third of the
+// way to the limit, so that a point on the limit has z = 3 whatever Alpha is. There is
+// no lower limit; below the centre the distance is √(2p), the standard deviation of
+// T² for large m.
+func (s TSquaredStandard) Band() (Band, error) {
+	_, upper, err := s.Limits()
+	if err != nil {
+		return absent, err
+	}
+	p, m := float64(len(s.Mean)), float64(s.M)
+	b := Band{Center: s.phase2(0.5), Lower: math.Inf(-1), Upper: upper, Below: math.Sqrt(2 * p)}
+	b.Above = (b.Upper - b.Center) / DefaultMultiple
+	if !(b.Above > 0) || !finite(b.Upper) {
+		return absent, invalid("%g observations of %g characteristics give no limit at a false-alarm rate of %g", m, p, s.alpha())
+	}
+	return b, nil
+}
+
+// phase2 is the T² of a later observation that is exceeded with probability q.
+func (s TSquaredStandard) phase2(q float64) float64 {
+	p, m := float64(len(s.Mean)), float64(s.M)
+	return p * (m + 1) * (m - 1) / (m * (m - p)) * fUpper(q, p, m-p)
 }
 
 func (s TSquaredStandard) alpha() float64 {
@@ -230,10 +254,11 @@ type Share struct {
 //
 // Source: Mason, Young and Tracy, Journal of Quality Technology 27 (1995), 99-108.
 func (s TSquaredStandard) Shares(x []float64) ([]Share, error) {
-	d, err := s.deviation(x)
-	if err != nil {
+	var at [MaxCharacteristics]float64
+	if err := s.deviation(x, &at); err != nil {
 		return nil, err
 	}
+	d := at[:len(x)]
 	whole := distance(s.lower, d)
 	if !finite(whole) {
 		return nil, invalid("the observation is too far away to compute with")

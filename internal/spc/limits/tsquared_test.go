@@ -199,3 +199,60 @@ func FuzzTSquared(f *testing.F) {
 		}
 	})
 }
+
+// The band for later observations by a general-purpose library's F quantiles; in
+// control half of the later observations lie below its centre and one in 1/alpha above
+// its limit.
+func TestTSquaredBand(t *testing.T) {
+	t.Parallel()
+	rng := rand.New(rand.NewPCG(14, 3))
+	above, beyond, rounds := 0, 0, 3000
+	for range rounds {
+		s, err := limits.EstimateTSquared(correlated(rng, 25))
+		if err != nil {
+			t.Fatal(err)
+		}
+		s.Alpha = 0.05
+		b, err := s.Band()
+		if err != nil {
+			t.Fatal(err)
+		}
+		f := distuv.F{D1: 3, D2: 22}
+		scale := 3.0 * 26 * 24 / (25 * 22)
+		if math.Abs(b.Center-scale*f.Quantile(0.5)) > 1e-9 || math.Abs(b.Upper-scale*f.Quantile(0.95)) > 1e-9 || b.HasLower() ||
+			math.Abs(b.Z(b.Upper)-3) > 1e-12 || b.Below != math.Sqrt(6) {
+			t.Fatalf("%+v", b)
+		}
+		for _, x := range correlated(rng, 4) {
+			v, err := s.Statistic(x)
+			if err != nil {
+				t.Fatal(err)
+			}
+			if v > b.Center {
+				above++
+			}
+			if b.Outside(v) > 0 {
+				beyond++
+			}
+		}
+	}
+	// Four observations share a standard: allow for that with twice the binomial s.d.
+	n := float64(4 * rounds)
+	if math.Abs(float64(above)/n-0.5) > 6*math.Sqrt(0.25/n) || math.Abs(float64(beyond)/n-0.05) > 6*math.Sqrt(0.05*0.95/n) {
+		t.Errorf("%d of %g above the centre, %d beyond the limit", above, n, beyond)
+	}
+	if _, err := (limits.TSquaredStandard{}).Band(); !errors.Is(err, limits.ErrInput) {
+		t.Errorf("not prepared: %v", err)
+	}
+}
+
+func TestTSquaredStatisticAllocatesNothing(t *testing.T) {
+	x := correlated(rand.New(rand.NewPCG(14, 4)), 25)
+	s, err := limits.EstimateTSquared(x)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if n := testing.AllocsPerRun(100, func() { _, err = s.Statistic(x[3]) }); n != 0 || err != nil {
+		t.Errorf("a value of T² allocates %g times, %v", n, err)
+	}
+}

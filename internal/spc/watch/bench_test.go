@@ -96,6 +96,39 @@ func BenchmarkJudge(b *testing.B) {
 	run("pair", fullStandard(limits.XBarR, everyKind()))
 }
 
+// BenchmarkJudgeKinds judges one subgroup of each further kind of chart, with every
+// rule kind on each of its panels, and EWMA and CUSUM where the kind has them.
+func BenchmarkJudgeKinds(b *testing.B) {
+	for _, k := range kinds() {
+		if isNP(k) { // its limits are those of p at one size
+			continue
+		}
+		b.Run(k.name, func(b *testing.B) {
+			hist := k.draw(rand.New(rand.NewPCG(7, 8)), 1024)
+			j := judgeOf(b, k.standard)
+			var m watch.Memory
+			fired, i := 0, 0
+			b.ReportAllocs()
+			for b.Loop() {
+				if i%len(hist) == 0 { // instants begin anew
+					m = watch.Memory{}
+				}
+				d := j.Step(&m, hist[i%len(hist)])
+				i++
+				if d.Err != nil {
+					b.Fatal(d.Err)
+				}
+				if d.Any() {
+					fired++
+				}
+			}
+			if fired == 0 && b.N > 1e5 {
+				b.Fatal("no rule ever fired: nothing was judged")
+			}
+		})
+	}
+}
+
 // BenchmarkReplay replays 1,000,000 subgroups of five integer readings with all
 // rules on both charts, beside one stat.MeanVariance pass over the same readings.
 func BenchmarkReplay(b *testing.B) {
@@ -122,7 +155,8 @@ func BenchmarkReplay(b *testing.B) {
 			start := time.Now()
 			stretch := readings[i*len(readings)/stretches : (i+1)*len(readings)/stretches]
 			for at := 0; at < len(stretch); at += 5 {
-				j.StepInto(&m, summed(stretch[at:at+5]), &d)
+				s := summed(stretch[at : at+5])
+				j.StepInto(&m, &s, &d)
 				if d.Any() {
 					fired++
 				}

@@ -18,8 +18,16 @@
 //
 //   - Rules (Rule, Compile, State) judges points already in sigma distances.
 //   - EWMA and CUSUM step their own small states.
-//   - Judge turns the statistics of a subgroup into plotted points with their
-//     limits, and folds all of the above over one Memory.
+//   - Judge turns a subgroup into plotted points with their limits, and folds all
+//     of the above over one Memory. A Standard without a Model is a plain chart of
+//     readings; the Models are the other kinds of chart: counts, rare events, short
+//     runs, trends, batches, streams and T-squared.
+//
+// Bounds, refused above: 16 rules a chart, windows of 63 points, subgroups of
+// factor.MaxSize readings, 64 streams, limits.MaxCharacteristics on a T-squared chart.
+// A step costs the same whatever lies behind it, in proportion to the streams of a
+// group chart and to the square of the characteristics of a T-squared chart. It
+// allocates nothing but for the first sight of a size.
 //
 // The package knows no clock, no database, no boundaries and no people: whoever
 // calls it decides where a fold starts afresh. It fails by error, never by panic

@@ -4,82 +4,39 @@ import (
 	"errors"
 	"fmt"
 	"math"
-	"sync"
-	"sync/atomic"
 
 	"holdfast/internal/spc/limits"
 )
 
 // Standard is what one revision of a characteristic is judged by: its limits, the
-// run rules of both charts, and an EWMA or a CUSUM of the location where asked for.
+// run rules of its charts, and an EWMA or a CUSUM of the location where asked for.
 type Standard struct {
+	// Standard gives the limits of a plain chart of readings. With a Model it is
+	// zero: the model brings its own.
 	limits.Standard
-	LocationRules   []Rule
+	// Model is what the other kinds of chart need; nil for plain charts of readings.
+	Model Model
+
+	LocationRules   []Rule // on a group chart for the highest and for the lowest stream
 	DispersionRules []Rule
-	EWMA            *EWMA  // nil for none
-	CUSUM           *CUSUM // nil for none
+	ThirdRules      []Rule // three-way chart: the spread within
+
+	// They accumulate the location of charts of readings, short runs and trends, and
+	// the batch means of a three-way chart; the other charts have none.
+	EWMA  *EWMA  // nil for none
+	CUSUM *CUSUM // nil for none
 }
 
-// Subgroup is what the fold needs of a sample, in the characteristic's unit: the
-// number of readings, their mean (their median on a chart of medians; the reading
-// itself on one of individuals), and the measure of spread the chart plots. The
-// other measure is not looked at.
-type Subgroup struct {
-	N               int
-	Mean, Range, SD float64
+// Model is a kind of chart beyond the plain ones of readings: ShortRun, Trend,
+// ThreeWay, Group, Counts, Rare or TSquared.
+type Model interface {
+	// prepare checks the model and lays it out in the Judge.
+	prepare(j *Judge) error
 }
-
-// Plotted is a point with the limits it is judged by. Value and Band are in the
-// characteristic's unit, Z in one-sigma distances of the point's side. Fired is in
-// the order of that chart's rules.
-type Plotted struct {
-	Value float64
-	Band  limits.Band
-	Z     float64
-	Fired Fired
-}
-
-// Average is the EWMA after a point, with its limits, in the characteristic's
-// unit. Out is the side on which it is outside them.
-type Average struct {
-	Value, Lower, Upper float64
-	Out                 Side
-}
-
-// Sums are both sides of the CUSUM after a point, kept positive, in standard
-// errors. Out tells which of them are above the decision interval.
-type Sums struct {
-	High, Low float64
-	Out       Side
-}
-
-// Judged is what the fold says about one subgroup. Dispersion is the zero Plotted
-// when HasDispersion is false; EWMA and CUSUM are zero where the standard has
-// none. With Err set nothing was judged, the Memory is as it was, and everything
-// else is zero.
-type Judged struct {
-	Location, Dispersion Plotted
-	HasDispersion        bool
-	EWMA                 Average
-	CUSUM                Sums
-	Err                  error
-}
-
-// Any reports whether anything fired.
-func (d *Judged) Any() bool {
-	return d.Location.Fired.Rules|d.Dispersion.Fired.Rules|uint16(d.EWMA.Out|d.CUSUM.Out) != 0
-}
-
-// ErrSubgroup marks a subgroup that the standard cannot judge; the message says
-// why in the user's words.
-var ErrSubgroup = errors.New("this subgroup cannot be judged")
 
 // furthest is the distance from the centre, in sigmas, beyond which a number is
 // refused: it is no reading, and sums of such numbers would overflow.
 const furthest = 1e15
-
-// usual is the largest subgroup size that is looked up without a map.
-const usual = 25
 
 // spread is the statistic of the dispersion chart.
 type spread uint8
@@ -92,53 +49,77 @@ const (
 
 var spreads = map[string]spread{"range": spreadRange, "sd": spreadSD, "moving-range": spreadMoving}
 
-// scale is a band and the reciprocals of its one-sigma distances: below the centre
-// at index 1, where the sign bit of the distance points.
-type scale struct {
-	band limits.Band
-	per  [2]float64
-}
+// family tells the models apart at every step; an interface call would make each
+// subgroup escape to the heap.
+type family uint8
 
-// sized is everything that depends on the size of the subgroup.
-type sized struct {
-	location, dispersion scale
-	hasDispersion        bool
-	variance             float64 // of the location statistic, in sigmas of a reading squared
-}
+const (
+	ofReadings family = iota
+	ofShortRuns
+	ofTrend
+	ofBatches
+	ofStreams
+	ofCounts
+	ofRare
+	ofTSquared
+)
 
 // Judge judges the subgroups of one revision. It is safe for concurrent use by
 // many folds, each with its own Memory.
 type Judge struct {
-	standard             Standard
-	location, dispersion *Rules
-	spread               spread
-	perSigma             float64
-	ewma                 EWMA
-	cusum                CUSUM
-	hasEWMA, hasCUSUM    bool
-	// What depends on the size is made when a size is first met: most
-	// characteristics know one or two, and probability limits take milliseconds.
-	sizes  [usual + 1]atomic.Pointer[sized]
-	larger sync.Map // int to *sized
+	family                      family
+	hasEWMA, hasCUSUM           bool
+	sizes                       // of readings, or of the batch means
+	location, dispersion, third *Rules
+	ewma                        EWMA
+	cusum                       CUSUM
+	within                      sizes // of the spread within batches
+	shortRun                    ShortRun
+	trend                       limits.TrendStandard
+	group                       Group
+	counts                      countScales
+	rare                        Rare
+	single                      scale // of rare events and of T-squared
+	perX                        float64
+	tSquared                    limits.TSquaredStandard
 }
 
-// NewJudge checks a standard and prepares it. It refuses what limits.Standard
-// refuses, rules that do not validate and more than MaxRules a chart.
+// NewJudge checks a standard and prepares it. It refuses what packages limits
+// refuses, rules that do not validate, more than MaxRules a chart, and rules for a
+// chart that the standard does not have.
 func NewJudge(s Standard) (*Judge, error) {
-	if err := s.Check(); err != nil {
+	j := &Judge{}
+	var err error
+	switch {
+	case s.Model == nil:
+		err = j.sizes.set(s.Standard)
+	case s.Standard != (limits.Standard{}):
+		err = errors.New("model: it brings its own limits, so the standard beside it must be empty")
+	default:
+		err = s.Model.prepare(j)
+	}
+	if err != nil {
 		return nil, err
 	}
-	j := &Judge{standard: s, perSigma: 1 / s.Sigma}
-	j.spread = spreads[s.Chart.DispersionStatistic()]
-	if j.spread == 0 {
-		return nil, fmt.Errorf("chart: %q cannot be judged subgroup by subgroup", s.Chart)
+	for _, chart := range []struct {
+		name  string
+		rules []Rule
+		to    **Rules
+		there bool
+	}{
+		{"location", s.LocationRules, &j.location, true},
+		{"dispersion", s.DispersionRules, &j.dispersion, j.hasSpread()},
+		{"third", s.ThirdRules, &j.third, j.family == ofBatches},
+	} {
+		if *chart.to, err = Compile(chart.rules); err != nil {
+			return nil, fmt.Errorf("%s chart: %w", chart.name, err)
+		}
+		if len(chart.rules) > 0 && !chart.there {
+			return nil, fmt.Errorf("%s chart: there is none, so it takes no rules", chart.name)
+		}
 	}
-	var err error
-	if j.location, err = Compile(s.LocationRules); err != nil {
-		return nil, fmt.Errorf("location chart: %w", err)
-	}
-	if j.dispersion, err = Compile(s.DispersionRules); err != nil {
-		return nil, fmt.Errorf("dispersion chart: %w", err)
+	if (s.EWMA != nil || s.CUSUM != nil) && j.family > ofBatches {
+		return nil, errors.New("EWMA, CUSUM: they accumulate charts of readings only")
 	}
 	if s.EWMA != nil {
 		if err := s.EWMA.Validate(); err != nil {
@@ -152,51 +133,23 @@ func NewJudge(s Standard) (*Judge, error) {
 		}
 		j.cusum, j.hasCUSUM = *s.CUSUM, true
 	}
-	if s.Sigma < 1e-150 || s.Sigma > 1e150 { // squares and reciprocals would overflow
-		return nil, fmt.Errorf("sigma: %v is too far from 1 to be judged by", s.Sigma)
-	}
-	if _, err := j.size(1); err != nil { // every chart takes a single reading
-		return nil, err
-	}
 	return j, nil
 }
 
-// LocationRules and DispersionRules are the compiled rules, in the order of Fired.
-func (j *Judge) LocationRules() *Rules   { return j.location }
-func (j *Judge) DispersionRules() *Rules { return j.dispersion }
-
-// size gives what depends on n, and makes it if need be.
-func (j *Judge) size(n int) (*sized, error) {
-	small := n >= 0 && n <= usual
-	if !small {
-		if known, ok := j.larger.Load(n); ok {
-			return known.(*sized), nil
-		}
-	}
-	location, dispersion, err := j.standard.Bands(n)
-	if err != nil {
-		return nil, fmt.Errorf("%w: %w", ErrSubgroup, err)
-	}
-	se := location.Above * j.perSigma
-	made := &sized{
-		location:      newScale(location),
-		hasDispersion: dispersion.Exists(),
-		variance:      float64(se * se),
-	}
-	if made.hasDispersion {
-		made.dispersion = newScale(dispersion)
-	}
-	// Two folds that meet a size at once make the same, so the last may win.
-	if small {
-		j.sizes[n].Store(made)
-	} else {
-		j.larger.Store(n, made)
-	}
-	return made, nil
+// hasSpread reports whether the standard has a dispersion chart.
+func (j *Judge) hasSpread() bool {
+	return j.family < ofStreams || j.family == ofStreams && j.spread != spreadMoving
 }
 
-func newScale(b limits.Band) scale {
-	return scale{band: b, per: [2]float64{1 / b.Above, 1 / b.Below}}
+// LocationRules, DispersionRules and ThirdRules are the compiled rules of the three
+// charts, in the order of Fired.
+func (j *Judge) LocationRules() *Rules   { return j.location }
+func (j *Judge) DispersionRules() *Rules { return j.dispersion }
+func (j *Judge) ThirdRules() *Rules {
+	if j.family == ofStreams {
+		return j.location
+	}
+	return j.third
 }
 
 // Step judges the next subgroup and moves the memory on. It costs the same
@@ -206,20 +159,48 @@ func newScale(b limits.Band) scale {
 // A subgroup of one on a chart of means or medians, and the first individual after
 // a boundary, have no dispersion point: that chart's windows skip them.
 func (j *Judge) Step(m *Memory, s Subgroup) (out Judged) {
-	j.StepInto(m, s, &out)
+	j.StepInto(m, &s, &out)
 	return out
 }
 
-// StepInto is Step for long replays: it overwrites all of out, which saves a copy
-// of the answer.
-func (j *Judge) StepInto(m *Memory, s Subgroup, out *Judged) {
+// StepInto is Step for long replays: it overwrites all of out, which saves copies of
+// question and answer. Out is a zero Judged or one that a Step has filled.
+func (j *Judge) StepInto(m *Memory, s *Subgroup, out *Judged) {
+	if j.family == ofReadings {
+		if out.HasThird {
+			*out = Judged{}
+		}
+		j.stepReadings(m, s, out)
+		return
+	}
+	*out = Judged{}
+	switch j.family {
+	case ofShortRuns:
+		j.stepShortRun(m, s, out)
+	case ofTrend:
+		j.stepTrend(m, s, out)
+	case ofBatches:
+		j.stepBatch(m, s, out)
+	case ofStreams:
+		j.stepStreams(m, s, out)
+	case ofCounts:
+		j.stepCount(m, s, out)
+	case ofRare:
+		j.stepRare(m, s, out)
+	case ofTSquared:
+		j.stepTSquared(m, s, out)
+	}
+}
+
+// stepReadings judges a subgroup of readings on both of its charts.
+func (j *Judge) stepReadings(m *Memory, s *Subgroup, out *Judged) {
 	var b *sized
-	if s.N >= 0 && s.N <= usual {
-		b = j.sizes[s.N].Load()
+	if uint(s.N) <= usual {
+		b = j.small[uint(s.N)].Load()
 	}
 	if b == nil {
 		var err error
-		if b, err = j.size(s.N); err != nil {
+		if b, err = j.sizes.of(s.N); err != nil {
 			*out = Judged{Err: err}
 			return
 		}
@@ -278,30 +259,25 @@ func (j *Judge) StepInto(m *Memory, s Subgroup, out *Judged) {
 	}
 }
 
-// plot places a value on its chart and returns its z.
-func (s *scale) plot(p *Plotted, value float64) float64 {
-	d := value - s.band.Center
-	z := float64(d * s.per[math.Float64bits(d)>>63])
-	// The band goes over field by field: as a whole it goes in overlapping moves,
-	// which stall (16 instead of 9 ns a subgroup without rules).
-	p.Value, p.Z = value, z
-	p.Band.Center, p.Band.Lower, p.Band.Upper = s.band.Center, s.band.Lower, s.band.Upper
-	p.Band.Below, p.Band.Above = s.band.Below, s.band.Above
-	return z
+// refuse says what is wrong with the numbers of a subgroup.
+func (j *Judge) refuse(s *Subgroup) error {
+	mean, x := s.Mean, (s.Mean-j.standard.Center)*j.perSigma
+	switch {
+	case math.IsNaN(mean) || math.IsInf(mean, 0):
+		return fmt.Errorf("%w: the mean must be a finite number, got %v", ErrSubgroup, mean)
+	case math.Abs(x) > furthest:
+		return fmt.Errorf("%w: the mean %v is too far from the centre to be a reading", ErrSubgroup, mean)
+	case j.spread == spreadMoving:
+		return fmt.Errorf("%w: the step to %v is too large to be a moving range", ErrSubgroup, mean)
+	case j.spread == spreadSD:
+		return refuseSpread("standard deviation", s.SD)
+	}
+	return refuseSpread("range", s.Range)
 }
 
-// refuse says what is wrong with the numbers of a subgroup.
-func (j *Judge) refuse(s Subgroup) error {
-	x := (s.Mean - j.standard.Center) * j.perSigma
-	switch {
-	case math.IsNaN(s.Mean) || math.IsInf(s.Mean, 0):
-		return fmt.Errorf("%w: the mean must be a finite number, got %v", ErrSubgroup, s.Mean)
-	case math.Abs(x) > furthest:
-		return fmt.Errorf("%w: the mean %v is too far from the centre to be a reading", ErrSubgroup, s.Mean)
-	case j.spread == spreadMoving:
-		return fmt.Errorf("%w: the step to %v is too large to be a moving range", ErrSubgroup, s.Mean)
-	case j.spread == spreadSD:
-		return fmt.Errorf("%w: the standard deviation must be a finite number from 0, got %v", ErrSubgroup, s.SD)
-	}
-	return fmt.Errorf("%w: the range must be a finite number from 0, got %v", ErrSubgroup, s.Range)
+func refuseSpread(name string, got float64) error {
+	return fmt.Errorf("%w: the %s must be a finite number from 0, got %v", ErrSubgroup, name, got)
 }
+
+// cannot marks an error of package limits as one about the subgroup.
+func cannot(err error) error { return fmt.Errorf("%w: %w", ErrSubgroup, err) }

@@ -57,16 +57,6 @@ func slow(t *testing.T, s watch.Standard, hist []watch.Subgroup) []watch.Judged 
 	ewma, variance := 0.0, 0.0
 	high := s.CUSUM.HeadStart * s.CUSUM.H
 	low := high
-	fired := func(rules []watch.Rule, pts []watch.Point) (f watch.Fired) {
-		for i, r := range rules {
-			if holds, side := naive(r, pts, len(pts)-1); holds {
-				f.Rules |= 1 << i
-				f.High |= uint16(side&watch.High) << i
-				f.Low |= uint16(side&watch.Low) >> 1 << i
-			}
-		}
-		return f
-	}
 	beyond := func(d float64) watch.Side {
 		if d >= 1e-9 {
 			return watch.High
@@ -85,7 +75,7 @@ func slow(t *testing.T, s watch.Standard, hist []watch.Subgroup) []watch.Judged 
 		var d watch.Judged
 		d.Location = watch.Plotted{Value: g.Mean, Band: loc, Z: loc.Z(g.Mean)}
 		location = append(location, watch.Point{Z: d.Location.Z, X: g.Mean / s.Sigma})
-		d.Location.Fired = fired(s.LocationRules, location)
+		d.Location.Fired = holds(s.LocationRules, location)
 		spread, has := g.Range, disp.Exists()
 		switch s.Chart {
 		case limits.XBarS:
@@ -98,7 +88,7 @@ func slow(t *testing.T, s watch.Standard, hist []watch.Subgroup) []watch.Judged 
 		if d.HasDispersion = has; has {
 			d.Dispersion = watch.Plotted{Value: spread, Band: disp, Z: disp.Z(spread)}
 			dispersion = append(dispersion, watch.Point{Z: d.Dispersion.Z, X: spread / s.Sigma})
-			d.Dispersion.Fired = fired(s.DispersionRules, dispersion)
+			d.Dispersion.Fired = holds(s.DispersionRules, dispersion)
 		}
 		l := s.EWMA.Lambda
 		ewma = l*g.Mean + (1-l)*ewma
@@ -119,8 +109,11 @@ func slow(t *testing.T, s watch.Standard, hist []watch.Subgroup) []watch.Judged 
 
 func sameJudged(a, b watch.Judged) error {
 	tight := func(x, y float64) bool { return x == y || math.Abs(x-y) <= 1e-9*(1+math.Abs(x)) }
+	near := func(x, y limits.Band) bool {
+		return x == y || tight(x.Center, y.Center) && tight(x.Lower, y.Lower) && tight(x.Upper, y.Upper) && tight(x.Below, y.Below) && tight(x.Above, y.Above)
+	}
 	plotted := func(x, y watch.Plotted) bool {
-		return x.Fired == y.Fired && x.Band == y.Band && tight(x.Value, y.Value) && tight(x.Z, y.Z)
+		return x.Fired == y.Fired && near(x.Band, y.Band) && tight(x.Value, y.Value) && tight(x.Z, y.Z)
 	}
 	switch {
 	case a.Err != nil || b.Err != nil:
@@ -129,6 +122,10 @@ func sameJudged(a, b watch.Judged) error {
 		return fmt.Errorf("location %+v and %+v", a.Location, b.Location)
 	case a.HasDispersion != b.HasDispersion || !plotted(a.Dispersion, b.Dispersion):
 		return fmt.Errorf("dispersion %+v and %+v", a.Dispersion, b.Dispersion)
+	case a.HasThird != b.HasThird || !plotted(a.Third, b.Third):
+		return fmt.Errorf("third %+v and %+v", a.Third, b.Third)
+	case a.Streams != b.Streams:
+		return fmt.Errorf("streams %+v and %+v", a.Streams, b.Streams)
 	case a.EWMA.Out != b.EWMA.Out || !tight(a.EWMA.Value, b.EWMA.Value) || !tight(a.EWMA.Lower, b.EWMA.Lower) || !tight(a.EWMA.Upper, b.EWMA.Upper):
 		return fmt.Errorf("EWMA %+v and %+v", a.EWMA, b.EWMA)
 	case a.CUSUM.Out != b.CUSUM.Out || !tight(a.CUSUM.High, b.CUSUM.High) || !tight(a.CUSUM.Low, b.CUSUM.Low):
@@ -155,7 +152,7 @@ func TestJudgeEqualsLookingBackOverEverything(t *testing.T) {
 				if err := sameJudged(got, want); err != nil {
 					t.Fatalf("%s, subgroup %d: %v", chart, i, err)
 				}
-				if j.StepInto(&again, hist[i], &into); into != got || again != m {
+				if j.StepInto(&again, &hist[i], &into); into != got || again != m {
 					t.Fatalf("%s, subgroup %d: StepInto gave %+v, Step %+v", chart, i, into, got)
 				}
 				location += int(got.Location.Fired.Rules)

@@ -8,6 +8,8 @@ import (
 	"hash/crc32"
 	"math"
 	"slices"
+
+	"holdfast/internal/spc/limits"
 )
 
 // Memory is everything the fold of one characteristic remembers. The zero Memory
@@ -19,8 +21,16 @@ type Memory struct {
 	EWMA                 EWMAState
 	CUSUM                CUSUMState
 	Points               uint64  // subgroups judged since the boundary
-	previous             float64 // the last individual, where the chart has moving ranges
+	previous             float64 // the last individual, where the chart has moving ranges; the last instant of an event
 	individual           bool    // there is one
+	further
+}
+
+// further is what only a few kinds of chart remember.
+type further struct {
+	Third           State            // three-way: the spread within; group: the lowest stream
+	wear            float64          // trend: of the last subgroup
+	highest, lowest limits.StreamRun // group: which stream has been extreme, how often in a row
 }
 
 // SameFuture reports whether two memories of one Judge will judge everything to
@@ -48,8 +58,19 @@ func (m Memory) SameFuture(o Memory) bool {
 //	          the last that is not zero), all as uvarints
 //	4 bytes   little-endian CRC-32 (IEEE) of all before
 //
+// Version 2 is for memories of which something further is not zero. Before the
+// checksum it adds:
+//
+//	1 byte    flags: 1 a last point on the third chart; and four times its last step
+//	2 x 8     last point of the third chart, wear
+//	          the third chart as the two others
+//	4 uvarint highest, then lowest stream: its number and how often in a row
+//
 // One memory has one spelling: whatever else decodes is refused.
-const memoryVersion = 1
+const (
+	memoryVersion  = 1
+	memoryVersion2 = 2
+)
 
 // ErrMemory marks bytes that are no memory of this program.
 var ErrMemory = errors.New("stored fold state")
@@ -67,7 +88,11 @@ func (m Memory) MarshalBinary() ([]byte, error) { return m.AppendBinary(nil) }
 // AppendBinary appends the memory as versioned bytes.
 func (m Memory) AppendBinary(b []byte) ([]byte, error) {
 	start := len(b)
-	b = append(b, memoryVersion)
+	version := byte(memoryVersion)
+	if m.further != (further{}) {
+		version = memoryVersion2
+	}
+	b = append(b, version)
 	b = binary.AppendUvarint(b, m.Points)
 	var flags byte
 	for i, set := range [...]bool{m.individual, m.Location.seen, m.Dispersion.seen, m.CUSUM.Started} {
@@ -77,20 +102,38 @@ func (m Memory) AppendBinary(b []byte) ([]byte, error) {
 	for _, f := range m.floats() {
 		b = binary.LittleEndian.AppendUint64(b, math.Float64bits(*f))
 	}
-	for _, s := range [...]*State{&m.Location, &m.Dispersion} {
-		for _, word := range s.runs {
-			b = binary.AppendUvarint(b, word)
-		}
-		n := 2 * len(s.windows)
-		for n > 0 && s.windows[(n-1)/2][(n-1)%2] == 0 {
-			n--
-		}
-		b = append(b, byte(n))
-		for i := range n {
-			b = binary.AppendUvarint(b, s.windows[i/2][i%2])
-		}
+	b = m.Dispersion.appendRegisters(m.Location.appendRegisters(b))
+	if version == memoryVersion2 {
+		b = m.further.append(b)
 	}
 	return binary.LittleEndian.AppendUint32(b, crc32.ChecksumIEEE(b[start:])), nil
+}
+
+func (s *State) appendRegisters(b []byte) []byte {
+	for _, word := range s.runs {
+		b = binary.AppendUvarint(b, word)
+	}
+	n := 2 * len(s.windows)
+	for n > 0 && s.windows[(n-1)/2][(n-1)%2] == 0 {
+		n--
+	}
+	b = append(b, byte(n))
+	for i := range n {
+		b = binary.AppendUvarint(b, s.windows[i/2][i%2])
+	}
+	return b
+}
+
+func (f *further) append(b []byte) []byte {
+	b = append(b, byte(bit(f.Third.seen))|f.Third.step<<2)
+	b = binary.LittleEndian.AppendUint64(b, math.Float64bits(f.Third.last))
+	b = binary.LittleEndian.AppendUint64(b, math.Float64bits(f.wear))
+	b = f.Third.appendRegisters(b)
+	for _, r := range [...]limits.StreamRun{f.highest, f.lowest} {
+		b = binary.AppendUvarint(b, uint64(r.Stream))
+		b = binary.AppendUvarint(b, uint64(r.Length))
+	}
+	return b
 }
 
 func (m *Memory) floats() [7]*float64 {
@@ -105,15 +148,15 @@ func (m *Memory) UnmarshalBinary(data []byte) error {
 	if len(data) == 0 {
 		return fmt.Errorf("%w: it is empty", ErrMemory)
 	}
-	if data[0] != memoryVersion {
-		return fmt.Errorf("%w: its version is %d, this program reads version %d", ErrMemory, data[0], memoryVersion)
+	if data[0] != memoryVersion && data[0] != memoryVersion2 {
+		return fmt.Errorf("%w: its version is %d, this program reads versions %d and %d", ErrMemory, data[0], memoryVersion, memoryVersion2)
 	}
 	damaged := fmt.Errorf("%w: it is damaged", ErrMemory)
 	body := len(data) - 4
 	if body < 1 || binary.LittleEndian.Uint32(data[body:]) != crc32.ChecksumIEEE(data[:body]) {
 		return damaged
 	}
-	out, ok := decodeMemory(data[1:body])
+	out, ok := decodeMemory(data[0], data[1:body])
 	if !ok {
 		return damaged
 	}
@@ -126,7 +169,7 @@ func (m *Memory) UnmarshalBinary(data []byte) error {
 }
 
 // decodeMemory reads the part between version and checksum.
-func decodeMemory(b []byte) (m Memory, ok bool) {
+func decodeMemory(version byte, b []byte) (m Memory, ok bool) {
 	points, n := binary.Uvarint(b)
 	if n <= 0 || len(b) < n+2 {
 		return m, false
@@ -153,24 +196,66 @@ func decodeMemory(b []byte) (m Memory, ok bool) {
 	if slices.ContainsFunc(floats[:], func(f *float64) bool { return math.IsNaN(*f) || math.IsInf(*f, 0) }) {
 		return m, false
 	}
-	for _, s := range [...]*State{&m.Location, &m.Dispersion} {
-		for i := range s.runs {
-			if s.runs[i], b, ok = cutUvarint(b); !ok {
-				return m, false
-			}
-		}
-		if len(b) == 0 || int(b[0]) > 2*len(s.windows) {
+	if b, ok = m.Location.cutRegisters(b); !ok {
+		return m, false
+	}
+	if b, ok = m.Dispersion.cutRegisters(b); !ok {
+		return m, false
+	}
+	if version == memoryVersion2 {
+		if b, ok = m.further.cut(b); !ok {
 			return m, false
-		}
-		count := int(b[0])
-		b = b[1:]
-		for i := range count {
-			if s.windows[i/2][i%2], b, ok = cutUvarint(b); !ok {
-				return m, false
-			}
 		}
 	}
 	return m, len(b) == 0
+}
+
+func (s *State) cutRegisters(b []byte) (rest []byte, ok bool) {
+	for i := range s.runs {
+		if s.runs[i], b, ok = cutUvarint(b); !ok {
+			return nil, false
+		}
+	}
+	if len(b) == 0 || int(b[0]) > 2*len(s.windows) {
+		return nil, false
+	}
+	count := int(b[0])
+	b = b[1:]
+	for i := range count {
+		if s.windows[i/2][i%2], b, ok = cutUvarint(b); !ok {
+			return nil, false
+		}
+	}
+	return b, true
+}
+
+func (f *further) cut(b []byte) (rest []byte, ok bool) {
+	if len(b) < 17 {
+		return nil, false
+	}
+	f.Third.seen, f.Third.step = b[0]&1 != 0, b[0]>>2
+	f.Third.last = math.Float64frombits(binary.LittleEndian.Uint64(b[1:]))
+	f.wear = math.Float64frombits(binary.LittleEndian.Uint64(b[9:]))
+	if f.Third.step > stepDown || math.IsNaN(f.Third.last) || math.IsInf(f.Third.last, 0) || limits.CheckWear(f.wear) != nil {
+		return nil, false
+	}
+	if b, ok = f.Third.cutRegisters(b[17:]); !ok {
+		return nil, false
+	}
+	for _, r := range [...]*limits.StreamRun{&f.highest, &f.lowest} {
+		var stream, length uint64
+		if stream, b, ok = cutUvarint(b); !ok {
+			return nil, false
+		}
+		if length, b, ok = cutUvarint(b); !ok {
+			return nil, false
+		}
+		if stream >= MaxStreams || length > MaxWindow || length == 0 && stream != 0 {
+			return nil, false
+		}
+		*r = limits.StreamRun{Stream: int(stream), Length: int(length)}
+	}
+	return b, true
 }
 
 func cutUvarint(b []byte) (v uint64, rest []byte, ok bool) {

@@ -150,10 +150,60 @@ func TestDefaultsByChart(t *testing.T) {
 		{limits.G, 1, false, beyond},
 		{limits.EWMA, 5, false, nil},
 		{limits.CUSUM, 5, false, nil},
-		{limits.TSquared, 5, false, nil},
+		{limits.TSquared, 5, false, beyond},
 	} {
 		if got := watch.Defaults(tc.chart, tc.n, tc.dispersion); !reflect.DeepEqual(got, tc.want) {
 			t.Errorf("%s, n = %d, dispersion %v: %v, want %v", tc.chart, tc.n, tc.dispersion, got, tc.want)
+		}
+	}
+}
+
+// With limits elsewhere than at 3 sigma, the first rule moves with them.
+func TestDefaultsSitOnTheLimitThatIsDrawn(t *testing.T) {
+	t.Parallel()
+	for _, tc := range []struct {
+		chart limits.Chart
+		panel watch.Panel
+		n     int
+		want  string
+	}{
+		{limits.XBarR, watch.PanelLocation, 5, "[beyond 2.5 sigma 2 of 3 beyond 2 sigma, same side 4 of 5 beyond 1 sigma, same side 8 on one side]"},
+		{limits.XBarR, watch.PanelDispersion, 5, "[beyond 2.5 sigma 8 on one side]"},
+		{limits.XBarR, watch.PanelThird, 5, "[]"},
+		{limits.Trend, watch.PanelDispersion, 3, "[beyond 2.5 sigma]"},
+		{limits.ThreeWay, watch.PanelLocation, 5, "[beyond 2.5 sigma 2 of 3 beyond 2 sigma, same side 4 of 5 beyond 1 sigma, same side 8 on one side]"},
+		{limits.ThreeWay, watch.PanelDispersion, 5, "[beyond 2.5 sigma]"},
+		{limits.ThreeWay, watch.PanelThird, 5, "[beyond 2.5 sigma 8 on one side]"},
+		{limits.ThreeWay, watch.PanelThird, 3, "[beyond 2.5 sigma]"},
+		{limits.Group, watch.PanelLocation, 5, "[beyond 2.5 sigma]"},
+		{limits.Group, watch.PanelDispersion, 5, "[beyond 2.5 sigma]"},
+		{limits.Group, watch.PanelDispersion, 1, "[]"},
+		{limits.LaneyU, watch.PanelLocation, 1, "[beyond 2.5 sigma 8 on one side]"},
+		{limits.T, watch.PanelLocation, 1, "[beyond 2.5 sigma]"},
+		{limits.T, watch.PanelDispersion, 1, "[]"},
+		{limits.TSquared, watch.PanelLocation, 1, "[beyond 3 sigma]"},
+		{limits.EWMA, watch.PanelLocation, 5, "[]"},
+		{limits.XBarR, watch.Panel(9), 5, "[]"},
+	} {
+		if got := fmt.Sprint(watch.DefaultsAt(tc.chart, tc.panel, tc.n, 2.5)); got != tc.want {
+			t.Errorf("%s, panel %d, n = %d: %s, want %s", tc.chart, tc.panel, tc.n, got, tc.want)
+		}
+	}
+	for _, multiple := range []float64{1.5, 2.5, 3, 3.5} {
+		s := watch.Standard{Standard: limits.Standard{Chart: limits.XBarR, Center: 10, Sigma: 1, Multiple: multiple, Probability: true}}
+		s.LocationRules = watch.DefaultsAt(s.Chart, watch.PanelLocation, 4, multiple)[:1]
+		s.DispersionRules = watch.DefaultsAt(s.Chart, watch.PanelDispersion, 4, multiple)[:1]
+		j := judgeOf(t, s)
+		location, dispersion, err := s.Bands(4)
+		if err != nil {
+			t.Fatal(err)
+		}
+		for _, off := range []float64{-1e-6, 0, 1e-6} {
+			var m watch.Memory
+			d := j.Step(&m, watch.Subgroup{N: 4, Mean: location.Upper + off, Range: dispersion.Upper + off})
+			if d.Err != nil || d.Location.Fired.Any() != (off > 0) || d.Dispersion.Fired.Any() != (off > 0) {
+				t.Errorf("multiple %g, %g off both limits: %+v", multiple, off, d)
+			}
 		}
 	}
 }

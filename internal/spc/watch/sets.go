@@ -33,42 +33,80 @@ func Nelson() []Rule {
 	}
 }
 
-// Defaults returns the rules a chart starts with when nobody has chosen others,
-// for subgroups of nominal size n.
+// Panel is one of the charts that a standard has.
+type Panel uint8
+
+// A group chart judges its lowest stream, the third panel, by the location's rules.
+const (
+	PanelLocation Panel = iota
+	PanelDispersion
+	PanelThird
+)
+
+// Defaults returns the rules a chart starts with when nobody has chosen others, for
+// subgroups of nominal size n and limits at 3 sigma.
+func Defaults(chart limits.Chart, n int, dispersion bool) []Rule {
+	if dispersion {
+		return DefaultsAt(chart, PanelDispersion, n, 0)
+	}
+	return DefaultsAt(chart, PanelLocation, n, 0)
+}
+
+// DefaultsAt is Defaults for any panel and for limits at any multiple of sigma (0:
+// limits.DefaultMultiple): the first rule is always beyond the limit that is drawn.
 //
-//   - Means, medians and individuals, whose statistic is near normal: the Western
-//     Electric set.
+//   - Means, medians, individuals, short runs, deviations from a trend and the means
+//     of batches, whose statistic is near normal: the Western Electric set.
 //   - Ranges and standard deviations of at least four readings, and counts: beyond
 //     and 8 on one side.
 //   - Moving ranges and the spread of two or three readings: beyond alone. They
 //     are so skewed that 8 on one side would alarm every 94 moving ranges and every
 //     171 ranges of two, against 370 wanted.
-//   - Rare events (g, t): beyond alone. EWMA, CUSUM and T-squared have limits of
-//     their own and no rules.
+//   - Rare events (g, t) and extremes of streams: beyond alone.
+//   - T-squared: beyond its own limit, which has z = 3 at any false-alarm rate. EWMA
+//     and CUSUM have limits of their own and no rules.
 //
-// A chart without a dispersion chart gets none for it.
-func Defaults(chart limits.Chart, n int, dispersion bool) []Rule {
-	beyond := Rule{Kind: Beyond, Z: 3}
-	oneSide := Rule{Kind: OneSide, M: 8}
-	if dispersion {
-		switch chart.DispersionStatistic() {
-		case "":
-			return nil
-		case "moving-range":
-			return []Rule{beyond}
-		}
-		if n < 4 {
-			return []Rule{beyond}
-		}
-		return []Rule{beyond, oneSide}
+// A chart without the panel gets none for it.
+func DefaultsAt(chart limits.Chart, panel Panel, n int, multiple float64) []Rule {
+	if multiple == 0 || chart == limits.TSquared {
+		multiple = limits.DefaultMultiple
 	}
-	switch chart {
-	case limits.P, limits.NP, limits.C, limits.U, limits.LaneyP, limits.LaneyU:
-		return []Rule{beyond, oneSide}
-	case limits.G, limits.T:
-		return []Rule{beyond}
-	case limits.EWMA, limits.CUSUM, limits.TSquared:
+	beyond := Rule{Kind: Beyond, Z: multiple}
+	switch panel {
+	case PanelLocation:
+		switch {
+		case chart == limits.EWMA || chart == limits.CUSUM:
+			return nil
+		case chart == limits.G || chart == limits.T || chart == limits.TSquared || chart == limits.Group:
+			return []Rule{beyond}
+		case chart.Counts():
+			return []Rule{beyond, {Kind: OneSide, M: 8}}
+		}
+		rules := WesternElectric()
+		rules[0] = beyond
+		return rules
+	case PanelDispersion:
+		switch chart {
+		case limits.Individuals, limits.ThreeWay:
+			return []Rule{beyond}
+		case limits.Group: // the widest of several: runs mean nothing
+			if n < 2 {
+				return nil
+			}
+			return []Rule{beyond}
+		case limits.XBarR, limits.XBarS, limits.MedianR, limits.Trend:
+		default:
+			return nil
+		}
+	case PanelThird:
+		if chart != limits.ThreeWay {
+			return nil
+		}
+	default:
 		return nil
 	}
-	return WesternElectric()
+	if n < 4 {
+		return []Rule{beyond}
+	}
+	return []Rule{beyond, {Kind: OneSide, M: 8}}
 }
