@@ -9,7 +9,6 @@ import (
 	"time"
 
 	"github.com/go-chi/chi/v5"
-	"github.com/go-chi/chi/v5/middleware"
 
 	"holdfast/internal/auth"
 	"holdfast/internal/live"
@@ -86,7 +85,7 @@ func New(c Config) http.Handler {
 	s := &server{Config: c}
 
 	r := chi.NewRouter()
-	r.Use(s.frame, s.access, s.recover, s.headers, s.checkHost, s.sameSite, ui.LimitBody(ui.MaxBody), middleware.GetHead)
+	r.Use(s.frame, s.access, s.recover, s.headers, s.checkHost, s.sameSite, ui.LimitBody(ui.MaxBody), headAsGet)
 	visitors := chi.Chain(c.Sessions.Middleware, s.visitor)
 	r.NotFound(visitors.HandlerFunc(func(w http.ResponseWriter, r *http.Request) {
 		ui.Deny(w, r, http.StatusNotFound)

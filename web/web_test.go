@@ -141,9 +141,10 @@ func TestWhatIsNotThere(t *testing.T) {
 	if res := v.get("/theme"); res.StatusCode != http.StatusMethodNotAllowed {
 		t.Errorf("getting what is posted: %d", res.StatusCode)
 	}
-	head := v.do(v.request(http.MethodHead, "/sign-in", nil))
-	if head.StatusCode != 200 || head.text != "" {
-		t.Errorf("asking for the head: %d %q", head.StatusCode, head.text)
+	for _, path := range []string{"/sign-in", "/station/"} { // at the root and below a mounted router
+		if head := v.do(v.request(http.MethodHead, path, nil)); head.StatusCode != 200 || head.text != "" {
+			t.Errorf("asking for the head of %s: %d %q", path, head.StatusCode, head.text)
+		}
 	}
 }
 
