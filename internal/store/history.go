@@ -219,9 +219,9 @@ func (s *Store) LastRound(ctx context.Context, station uuid.UUID) (plant.RoundRe
 		return r, fmt.Errorf("read last round: %w", missing(err, "No round has been taken here yet."))
 	}
 	r.Station, r.Person = station, orNil(person)
-	rows, err := s.pool.Query(ctx, `select distinct on (s.characteristic_id) s.characteristic_id, `+pointColumns+` from subgroup s
-		join characteristic c on c.id = s.characteristic_id
-		where c.station_id = $1 and s.taken_at = $2 and s.round_id = $3 order by s.characteristic_id, s.version desc`, station, r.TakenAt, r.ID)
+	rows, err := s.pool.Query(ctx, `select distinct on (characteristic_id) characteristic_id, `+pointColumns+` from subgroup
+		where characteristic_id in (select id from characteristic where station_id = $1) and taken_at = $2 and round_id = $3
+		order by characteristic_id, version desc`, station, r.TakenAt, r.ID)
 	if err != nil {
 		return r, fmt.Errorf("read last round: %w", err)
 	}

@@ -193,3 +193,23 @@ func TestCorrectionWithdrawsAndFindsLate(t *testing.T) {
 		t.Errorf("matter after correcting back = %+v; want a line that stands, found late", m)
 	}
 }
+
+func TestLastRoundIsAsItStandsNow(t *testing.T) {
+	t.Parallel()
+	p := storetest.New(t, "x")
+	ctx := context.Background()
+	if _, err := p.LastRound(ctx, p.Station.ID); !plant.IsKind(err, plant.NotFound) {
+		t.Errorf("before any round: %v, want not found", err)
+	}
+	p.MustRecord(t, p.Mass, 120)
+	p.Clock.Advance(time.Minute)
+	a := p.MustRecord(t, p.Diameter, 14990, 14991, 14992, 14990, 14991)
+	if _, err := p.Correct(ctx, plant.Correction{Characteristic: p.Diameter.ID, Subgroup: a.Parts[0].Subgroup, TakenAt: a.TakenAt, Replaces: 1,
+		Readings: []int64{14990, 14991, 14992, 14990, 14995}, Reason: "typing slip", Person: p.Operator.ID}); err != nil {
+		t.Fatal(err)
+	}
+	r, err := p.LastRound(ctx, p.Station.ID)
+	if err != nil || r.ID != a.Round || len(r.Points) != 1 || r.Points[0].Version != 2 || r.Points[0].Readings[4] != 14995 || r.PersonName != "Operator 1" {
+		t.Errorf("last round = %+v, %v", r, err)
+	}
+}
