@@ -3,8 +3,7 @@ package capability
 // Requirement is what a plant asks for before a capability figure is shown as a
 // claim. The zero value asks for the usual: 100 readings over 25 subgroups.
 //
-// Source: common practice; 100 readings over 25 subgroups also in ISO 22514-2 (from
-// memory).
+// Source: common practice.
 type Requirement struct {
 	Readings, Subgroups int // at least; 0 means 100 and 25
 }

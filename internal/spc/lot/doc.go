@@ -85,7 +85,7 @@ func (e Errors) check() error {
 // Apparent is the fraction that the inspection sees when the true one is p:
 // p(1-miss) + (1-p) falseReject.
 //
-// Source: Collins, Case and Bennett, AIIE Transactions 5 (1973), 357-361.
+// Source: Collins, Case and Bennett, AIIE Transactions 5 (1973) (from memory).
 func (e Errors) Apparent(p float64) float64 {
 	return p*(1-e.Miss) + (1-p)*e.FalseReject
 }

@@ -50,7 +50,8 @@ type Found struct {
 // given sample the risk alpha bounds the acceptance number from below. Taking turns
 // skips only what cannot do and stops at the least of both.
 //
-// Source: Guenther, Journal of Quality Technology 1 (1969), 105-109.
+// Source: the taking of turns follows Guenther, Journal of Quality Technology 1 (1969)
+// (from memory).
 func Smallest(r Risks, m Model, lot int, e Errors) (Found, error) {
 	if err := r.check(); err != nil {
 		return Found{}, err
