@@ -18,21 +18,21 @@ type countScales struct {
 	known kept[float64, scale]
 }
 
-func (c Counts) prepare(j *Judge) error {
+func (c Counts) prepare(j *Judge) (none limits.Standard, err error) {
 	size := 1.0
 	if c.Chart == limits.NP {
 		if size = c.Size; size == 0 {
-			return fmt.Errorf("size: an np chart must know the size of its samples")
+			return none, fmt.Errorf("size: an np chart must know the size of its samples")
 		}
 	}
 	// Neighbours are compared in sigmas of one size of sample, so that the same step
 	// counts the same whatever the sizes.
 	b, err := c.Band(size)
 	if err != nil {
-		return err
+		return none, err
 	}
 	j.family, j.perX, j.counts.CountStandard = ofCounts, 1/b.Above, c.CountStandard
-	return nil
+	return none, nil
 }
 
 // of gives the scale for a size of sample: the one that is kept, or own, written
@@ -93,19 +93,19 @@ type Rare struct {
 	Instants bool
 }
 
-func (r Rare) prepare(j *Judge) error {
+func (r Rare) prepare(j *Judge) (none limits.Standard, err error) {
 	b, err := r.Band()
 	if err != nil {
-		return err
+		return none, err
 	}
 	if r.Instants && r.Chart != limits.T {
-		return fmt.Errorf("instants: only a chart of times between events takes them, not %q", r.Chart)
+		return none, fmt.Errorf("instants: only a chart of times between events takes them, not %q", r.Chart)
 	}
 	j.family, j.rare, j.single, j.perX = ofRare, r, newScale(b), 1/b.Above
 	if r.Chart == limits.G {
 		j.perX = 1 / math.Sqrt(r.Center*(r.Center+1))
 	}
-	return nil
+	return none, nil
 }
 
 func (j *Judge) stepRare(m *Memory, s *Subgroup, out *Judged) {
@@ -154,17 +154,17 @@ func (j *Judge) stepRare(m *Memory, s *Subgroup, out *Judged) {
 // of its Shares.
 type TSquared struct{ limits.TSquaredStandard }
 
-func (t TSquared) prepare(j *Judge) error {
+func (t TSquared) prepare(j *Judge) (none limits.Standard, err error) {
 	s, err := t.Prepare()
 	if err != nil {
-		return err
+		return none, err
 	}
 	b, err := s.Band()
 	if err != nil {
-		return err
+		return none, err
 	}
 	j.family, j.tSquared, j.single, j.perX = ofTSquared, s, newScale(b), 1/b.Above
-	return nil
+	return none, nil
 }
 
 func (j *Judge) stepTSquared(m *Memory, s *Subgroup, out *Judged) {

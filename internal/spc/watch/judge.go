@@ -30,8 +30,9 @@ type Standard struct {
 // Model is a kind of chart beyond the plain ones of readings: ShortRun, Trend,
 // ThreeWay, Group, Counts, Rare or TSquared.
 type Model interface {
-	// prepare checks the model and lays it out in the Judge.
-	prepare(j *Judge) error
+	// prepare checks the model and lays it out in the Judge. What it returns, if it is
+	// not zero, is the plain chart of readings that the model's subgroups become.
+	prepare(j *Judge) (limits.Standard, error)
 }
 
 // furthest is the distance from the centre, in sigmas, beyond which a number is
@@ -69,18 +70,19 @@ const (
 type Judge struct {
 	family                      family
 	hasEWMA, hasCUSUM           bool
-	sizes                       // of readings, or of the batch means
+	sizes                              // of readings or of the streams
+	plain                       *Judge // of what short runs, trends and batches become
 	location, dispersion, third *Rules
 	ewma                        EWMA
 	cusum                       CUSUM
 	within                      sizes // of the spread within batches
-	shortRun                    ShortRun
+	standardised                bool
 	trend                       limits.TrendStandard
 	group                       Group
 	counts                      countScales
 	rare                        Rare
-	single                      scale // of rare events and of T-squared
-	perX                        float64
+	single                      scale   // of rare events and of T-squared
+	perX                        float64 // one over the sigma in which neighbours are compared there, and on charts of counts
 	tSquared                    limits.TSquaredStandard
 }
 
@@ -89,6 +91,7 @@ type Judge struct {
 // chart that the standard does not have.
 func NewJudge(s Standard) (*Judge, error) {
 	j := &Judge{}
+	var plain limits.Standard
 	var err error
 	switch {
 	case s.Model == nil:
@@ -96,10 +99,17 @@ func NewJudge(s Standard) (*Judge, error) {
 	case s.Standard != (limits.Standard{}):
 		err = errors.New("model: it brings its own limits, so the standard beside it must be empty")
 	default:
-		err = s.Model.prepare(j)
+		plain, err = s.Model.prepare(j)
 	}
 	if err != nil {
 		return nil, err
+	}
+	if plain != (limits.Standard{}) {
+		if j.plain, err = NewJudge(Standard{
+			Standard: plain, LocationRules: s.LocationRules, DispersionRules: s.DispersionRules, EWMA: s.EWMA, CUSUM: s.CUSUM,
+		}); err != nil {
+			return nil, err
+		}
 	}
 	for _, chart := range []struct {
 		name  string
@@ -166,34 +176,10 @@ func (j *Judge) Step(m *Memory, s Subgroup) (out Judged) {
 // StepInto is Step for long replays: it overwrites all of out, which saves copies of
 // question and answer. Out is a zero Judged or one that a Step has filled.
 func (j *Judge) StepInto(m *Memory, s *Subgroup, out *Judged) {
-	if j.family == ofReadings {
-		if out.HasThird {
-			*out = Judged{}
-		}
-		j.stepReadings(m, s, out)
+	if j.family != ofReadings || out.HasThird {
+		j.stepOther(m, s, out)
 		return
 	}
-	*out = Judged{}
-	switch j.family {
-	case ofShortRuns:
-		j.stepShortRun(m, s, out)
-	case ofTrend:
-		j.stepTrend(m, s, out)
-	case ofBatches:
-		j.stepBatch(m, s, out)
-	case ofStreams:
-		j.stepStreams(m, s, out)
-	case ofCounts:
-		j.stepCount(m, s, out)
-	case ofRare:
-		j.stepRare(m, s, out)
-	case ofTSquared:
-		j.stepTSquared(m, s, out)
-	}
-}
-
-// stepReadings judges a subgroup of readings on both of its charts.
-func (j *Judge) stepReadings(m *Memory, s *Subgroup, out *Judged) {
 	var b *sized
 	if uint(s.N) <= usual {
 		b = j.small[uint(s.N)].Load()
@@ -256,6 +242,29 @@ func (j *Judge) stepReadings(m *Memory, s *Subgroup, out *Judged) {
 		out.CUSUM = Sums{High: m.CUSUM.High, Low: m.CUSUM.Low, Out: side}
 	} else {
 		out.CUSUM = Sums{}
+	}
+}
+
+// stepOther judges by a model, or over an answer that a model has left.
+func (j *Judge) stepOther(m *Memory, s *Subgroup, out *Judged) {
+	*out = Judged{}
+	switch j.family {
+	case ofReadings:
+		j.StepInto(m, s, out)
+	case ofShortRuns:
+		j.stepShortRun(m, s, out)
+	case ofTrend:
+		j.stepTrend(m, s, out)
+	case ofBatches:
+		j.stepBatch(m, s, out)
+	case ofStreams:
+		j.stepStreams(m, s, out)
+	case ofCounts:
+		j.stepCount(m, s, out)
+	case ofRare:
+		j.stepRare(m, s, out)
+	case ofTSquared:
+		j.stepTSquared(m, s, out)
 	}
 }
 

@@ -19,21 +19,21 @@ type ShortRun struct {
 	Standardised bool
 }
 
-func (r ShortRun) prepare(j *Judge) error {
-	j.family, j.shortRun = ofShortRuns, r
-	return j.sizes.set(r.Standard)
+func (r ShortRun) prepare(j *Judge) (limits.Standard, error) {
+	j.family, j.standardised = ofShortRuns, r.Standardised
+	return r.Standard, r.Standard.Check()
 }
 
 func (j *Judge) stepShortRun(m *Memory, s *Subgroup, out *Judged) {
 	from := limits.Subgroup{N: s.N, Location: s.Mean}
-	switch j.spread { // the other measure is not looked at
+	switch j.plain.spread { // the other measure is not looked at
 	case spreadRange:
 		from.Range = s.Range
 	case spreadSD:
 		from.SD = s.SD
 	}
 	var err error
-	if j.shortRun.Standardised {
+	if j.standardised {
 		from, err = from.Standardised(s.Target, s.Sigma)
 	} else {
 		from, err = from.Deviation(s.Target)
@@ -42,7 +42,7 @@ func (j *Judge) stepShortRun(m *Memory, s *Subgroup, out *Judged) {
 		out.Err = cannot(err)
 		return
 	}
-	j.stepReadings(m, &Subgroup{N: from.N, Mean: from.Location, Range: from.Range, SD: from.SD}, out)
+	j.plain.StepInto(m, &Subgroup{N: from.N, Mean: from.Location, Range: from.Range, SD: from.SD}, out)
 }
 
 // Trend is a chart of readings with tool wear: limits about a line over the wear that
@@ -51,12 +51,10 @@ func (j *Judge) stepShortRun(m *Memory, s *Subgroup, out *Judged) {
 // subgroup before is a new tool, and with it the whole memory starts afresh.
 type Trend struct{ limits.TrendStandard }
 
-func (t Trend) prepare(j *Judge) error {
-	if _, _, err := t.Bands(0, 1); err != nil {
-		return err
-	}
+func (t Trend) prepare(j *Judge) (limits.Standard, error) {
 	j.family, j.trend = ofTrend, t.TrendStandard
-	return j.sizes.set(limits.Standard{Chart: t.Chart, Sigma: t.Sigma, Multiple: t.Multiple})
+	_, _, err := t.Bands(0, 1)
+	return limits.Standard{Chart: t.Chart, Sigma: t.Sigma, Multiple: t.Multiple}, err
 }
 
 func (j *Judge) stepTrend(m *Memory, s *Subgroup, out *Judged) {
@@ -69,11 +67,11 @@ func (j *Judge) stepTrend(m *Memory, s *Subgroup, out *Judged) {
 	if s.Wear < m.wear {
 		old := *m
 		*m = Memory{}
-		if j.stepReadings(m, &about, out); out.Err != nil {
+		if j.plain.StepInto(m, &about, out); out.Err != nil {
 			*m = old
 		}
 	} else {
-		j.stepReadings(m, &about, out)
+		j.plain.StepInto(m, &about, out)
 	}
 	if out.Err != nil {
 		return
@@ -82,7 +80,7 @@ func (j *Judge) stepTrend(m *Memory, s *Subgroup, out *Judged) {
 	p := &out.Location
 	p.Value = s.Mean
 	p.Band.Center, p.Band.Lower, p.Band.Upper = line, line+p.Band.Lower, line+p.Band.Upper
-	if j.hasEWMA {
+	if j.plain.hasEWMA {
 		out.EWMA.Value, out.EWMA.Lower, out.EWMA.Upper = line+out.EWMA.Value, line+out.EWMA.Lower, line+out.EWMA.Upper
 	}
 }
@@ -91,18 +89,15 @@ func (j *Judge) stepTrend(m *Memory, s *Subgroup, out *Judged) {
 // means, and the spread within. A batch of one reading has no point on the third.
 type ThreeWay struct{ limits.ThreeWayStandard }
 
-func (t ThreeWay) prepare(j *Judge) error {
+func (t ThreeWay) prepare(j *Judge) (limits.Standard, error) {
 	if t.Means.Chart != limits.Individuals {
-		return fmt.Errorf("chart: batch means are charted as individuals, not on %q", t.Means.Chart)
+		return limits.Standard{}, fmt.Errorf("chart: batch means are charted as individuals, not on %q", t.Means.Chart)
 	}
 	if t.Within.Chart != limits.XBarR && t.Within.Chart != limits.XBarS {
-		return fmt.Errorf("chart: the spread within is charted by range or standard deviation, not on %q", t.Within.Chart)
+		return limits.Standard{}, fmt.Errorf("chart: the spread within is charted by range or standard deviation, not on %q", t.Within.Chart)
 	}
 	j.family = ofBatches
-	if err := j.sizes.set(t.Means); err != nil {
-		return err
-	}
-	return j.within.set(t.Within)
+	return t.Means, j.within.set(t.Within)
 }
 
 func (j *Judge) stepBatch(m *Memory, s *Subgroup, out *Judged) {
@@ -120,7 +115,7 @@ func (j *Judge) stepBatch(m *Memory, s *Subgroup, out *Judged) {
 		out.Err = refuseSpread(name, value)
 		return
 	}
-	if j.stepReadings(m, &Subgroup{N: 1, Mean: s.Mean}, out); out.Err != nil || !b.hasDispersion {
+	if j.plain.StepInto(m, &Subgroup{N: 1, Mean: s.Mean}, out); out.Err != nil || !b.hasDispersion {
 		return
 	}
 	out.HasThird = true
@@ -150,15 +145,15 @@ type Group struct {
 	Run     int
 }
 
-func (g Group) prepare(j *Judge) error {
+func (g Group) prepare(j *Judge) (limits.Standard, error) {
 	if g.Streams < 2 || g.Streams > MaxStreams {
-		return fmt.Errorf("streams: a group chart takes 2 to %d of them, got %d", MaxStreams, g.Streams)
+		return limits.Standard{}, fmt.Errorf("streams: a group chart takes 2 to %d of them, got %d", MaxStreams, g.Streams)
 	}
 	if g.Run != 0 && (g.Run < 2 || g.Run > MaxWindow) {
-		return fmt.Errorf("run: the same stream must be extreme 2 to %d times in a row, got %d", MaxWindow, g.Run)
+		return limits.Standard{}, fmt.Errorf("run: the same stream must be extreme 2 to %d times in a row, got %d", MaxWindow, g.Run)
 	}
 	j.family, j.group = ofStreams, g
-	return j.sizes.set(g.Standard)
+	return limits.Standard{}, j.sizes.set(g.Standard)
 }
 
 func (j *Judge) stepStreams(m *Memory, s *Subgroup, out *Judged) {
