@@ -33,8 +33,7 @@ type running struct {
 	url     string
 }
 
-// serve starts the program on a fixture. Its clock is the fixture's, moved on by real
-// time, so that pages and rounds have one idea of now.
+// serve starts the program on a fixture, under the fixture's clock.
 func serve(t testing.TB) *running {
 	t.Helper()
 	ctx := context.Background()
@@ -46,7 +45,8 @@ func serve(t testing.TB) *running {
 	if err != nil {
 		t.Fatal(err)
 	}
-	return serveOn(t, storetest.New(t, hash), time.Now)
+	p := storetest.New(t, hash)
+	return serveOn(t, p, p.Clock.Now)
 }
 
 func serveOn(t testing.TB, p *storetest.Plant, clock func() time.Time) *running {

@@ -1,0 +1,190 @@
+// Package browsertest drives a real Chromium in tests: one browser a test, and in it as
+// many people side by side, each with cookies of their own, as the test asks for.
+package browsertest
+
+import (
+	"context"
+	_ "embed"
+	"encoding/json"
+	"os"
+	"strings"
+	"testing"
+	"time"
+
+	"github.com/chromedp/chromedp"
+)
+
+// patience ends a step that will never come.
+const patience = 45 * time.Second
+
+// axe is axe-core (licence beside it), the accessibility rules that pages are held to.
+//
+//go:embed testdata/axe.min.js
+var axe string
+
+// Browser is a running Chromium.
+type Browser struct {
+	t   testing.TB
+	ctx context.Context
+}
+
+// Start starts a Chromium that ends with the test. Where there is none the test fails
+// and says what to install.
+func Start(t testing.TB) *Browser {
+	t.Helper()
+	opts := append(chromedp.DefaultExecAllocatorOptions[:], chromedp.UserDataDir(t.TempDir()))
+	if os.Getuid() == 0 {
+		opts = append(opts, chromedp.NoSandbox)
+	}
+	alloc, stop := chromedp.NewExecAllocator(context.Background(), opts...)
+	t.Cleanup(stop)
+	ctx, cancel := chromedp.NewContext(alloc)
+	t.Cleanup(cancel)
+	if err := chromedp.Do(ctx); err != nil { // no time limit here: it would be the browser's
+		t.Fatalf("start Chromium (on Debian: apt-get install chromium): %v", err)
+	}
+	return &Browser{t: t, ctx: ctx}
+}
+
+// Person is a window of somebody's own: other cookies than everybody else's.
+func (b *Browser) Person(base string) *Page {
+	b.t.Helper()
+	ctx, cancel := chromedp.NewContext(b.ctx, chromedp.WithNewBrowserContext())
+	b.t.Cleanup(cancel)
+	if err := chromedp.Do(ctx); err != nil {
+		b.t.Fatal(err)
+	}
+	p := &Page{t: b.t, ctx: ctx, base: base}
+	p.Size(1280, 800)
+	return p
+}
+
+// Page is one window.
+type Page struct {
+	t    testing.TB
+	ctx  context.Context
+	base string
+}
+
+// Do runs steps, within the patience of a test.
+func (p *Page) Do(steps ...chromedp.Action[chromedp.Void]) {
+	p.t.Helper()
+	ctx, cancel := context.WithTimeout(p.ctx, patience)
+	defer cancel()
+	if err := chromedp.Do(ctx, steps...); err != nil {
+		p.t.Fatal(err)
+	}
+}
+
+// Size sets the window's size in CSS pixels.
+func (p *Page) Size(width, height int64) {
+	p.t.Helper()
+	p.Do(chromedp.EmulateViewport(width, height))
+}
+
+// Open goes to a path of the server and waits until it is loaded.
+func (p *Page) Open(path string) {
+	p.t.Helper()
+	p.Do(chromedp.Navigate(p.base + path))
+}
+
+// Value evaluates an expression, which may await, as text.
+func (p *Page) Value(expression string) string {
+	p.t.Helper()
+	ctx, cancel := context.WithTimeout(p.ctx, patience)
+	defer cancel()
+	v, err := chromedp.Run(ctx, chromedp.Evaluate[string]("(async () => String("+expression+"))()", chromedp.EvalAwaitPromise))
+	if err != nil {
+		p.t.Fatalf("%s: %v", expression, err)
+	}
+	return v
+}
+
+// WaitFor waits until an expression is true, also across a navigation.
+func (p *Page) WaitFor(expression string) {
+	p.t.Helper()
+	ctx, cancel := context.WithTimeout(p.ctx, patience)
+	defer cancel()
+	for {
+		v, err := chromedp.Run(ctx, chromedp.Evaluate[bool]("Boolean("+expression+")"))
+		if err == nil && v {
+			return
+		}
+		select {
+		case <-ctx.Done():
+			p.t.Fatalf("never came true: %s\nat %s:\n%.1500s", expression, p.location(), p.text())
+		case <-time.After(20 * time.Millisecond):
+		}
+	}
+}
+
+func (p *Page) location() string {
+	v, _ := chromedp.Run(p.ctx, chromedp.Location())
+	return v
+}
+
+func (p *Page) text() string {
+	v, _ := chromedp.Run(p.ctx, chromedp.Evaluate[string]("document.body.innerText"))
+	return v
+}
+
+// Keys types: \r is Enter, \t the tabulator.
+func (p *Page) Keys(text string) {
+	p.t.Helper()
+	p.Do(chromedp.KeyEvent(text))
+}
+
+// Click clicks what a CSS selector finds first, once it can be seen.
+func (p *Page) Click(selector string) {
+	p.t.Helper()
+	p.Do(chromedp.WaitVisible(chromedp.CSS(selector)), chromedp.Click(chromedp.CSS(selector)))
+}
+
+// Fill replaces what stands in a field.
+func (p *Page) Fill(selector, text string) {
+	p.t.Helper()
+	p.Do(chromedp.WaitVisible(chromedp.CSS(selector)), chromedp.SetValue(chromedp.CSS(selector), text))
+}
+
+// Want compares the value of an expression.
+func (p *Page) Want(what, expression, want string) {
+	p.t.Helper()
+	if got := p.Value(expression); got != want {
+		p.t.Errorf("%s: %q, want %q", what, got, want)
+	}
+}
+
+// Accessible demands that axe-core finds nothing on the page as it stands.
+func (p *Page) Accessible(what string) {
+	p.t.Helper()
+	ctx, cancel := context.WithTimeout(p.ctx, patience)
+	defer cancel()
+	if _, err := chromedp.Run(ctx, chromedp.Evaluate[chromedp.Void](axe+"; undefined")); err != nil {
+		p.t.Fatal(err)
+	}
+	report := p.Value(`JSON.stringify(await axe.run().then((r) => ({ passes: r.passes.length, found: r.violations.map((v) => v.id + ": " + v.nodes.length + " " + v.nodes[0].html.slice(0, 300) + " " + (v.nodes[0].failureSummary || "")) })))`)
+	var found struct {
+		Passes int
+		Found  []string
+	}
+	if err := json.Unmarshal([]byte(report), &found); err != nil {
+		p.t.Fatal(err)
+	}
+	for _, f := range found.Found {
+		p.t.Errorf("%s: axe-core: %s", what, f)
+	}
+	if found.Passes < 10 {
+		p.t.Errorf("%s: axe-core passed only %d rules", what, found.Passes)
+	}
+}
+
+// FitsWidth demands that the page needs no sideways scrolling at so many CSS pixels.
+func (p *Page) FitsWidth(what string, widths ...int64) {
+	p.t.Helper()
+	for _, w := range widths {
+		p.Size(w, 800)
+		if wide := p.Value("document.documentElement.scrollWidth > innerWidth"); strings.TrimSpace(wide) != "false" {
+			p.t.Errorf("%s: at %d px the page scrolls sideways", what, w)
+		}
+	}
+}
