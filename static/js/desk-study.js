@@ -4,7 +4,8 @@
 //
 // Contract: form#study-form inside #study; fields with data-now compute as soon as
 // they change; #study carries data-said, which is read out from #study-said. A click
-// on a point of the chart puts its number into the field "no".
+// on a point of the chart puts its number into the field "no". The first button of the
+// form, which Enter presses, has data-implied.
 
 let latest = 0;
 
@@ -43,11 +44,19 @@ async function show(url, picked) {
   }
 }
 
+// Enter presses the form's first button, which computes. In the fields of "Leave a
+// subgroup out" it means to leave it out.
+function meant(form, submitter) {
+  const implied = submitter?.hasAttribute('data-implied') && document.activeElement?.matches('#f-no, #f-own');
+  return (implied && form.querySelector('[name="do"][value="leave"]')) || submitter;
+}
+
 document.addEventListener('submit', (e) => {
   if (!(e.target instanceof HTMLFormElement) || e.target.id !== 'study-form') return;
   e.preventDefault();
-  const picked = e.submitter?.name === 'do' && e.submitter.value.startsWith('pick:');
-  show(addressOf(e.target, e.submitter), picked);
+  const submitter = meant(e.target, e.submitter);
+  const picked = submitter?.name === 'do' && submitter.value.startsWith('pick:');
+  show(addressOf(e.target, submitter), picked);
 });
 
 document.addEventListener('change', (e) => {

@@ -110,7 +110,7 @@ func (d *Desk) chart(w http.ResponseWriter, r *http.Request) error {
 func newChartView(s ui.Shell, h plant.History, a, read asked, table bool) chartView {
 	f, id := s.Format, h.State.ID
 	dr := newDrawing(f, h)
-	v := chartView{ID: id, Crumbs: crumbs(s, h), Name: h.State.Name, Summary: strings.Join(summary(f, h.State.Setup), ", "),
+	v := chartView{ID: id, Crumbs: crumbs(s, h), Name: h.State.Name, Summary: upperFirst(strings.Join(summary(f, h.State.Setup), ", ")),
 		Facts: newFactsView(f, h), Picture: newPicture(dr, read.live()), Line: newLine(dr), Asked: a, Open: a.problem() || a.Span == between || a.LastText != "",
 		Records: address(id, "revisions")}
 	if s.Person.May(plant.SetLimits) {

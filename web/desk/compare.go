@@ -24,6 +24,7 @@ type comparison struct {
 	Unit    string
 	Heads   []head
 	Rows    []compareRow
+	Words   []comparedWords
 	Bands   []bandPicture
 	Caption string
 }
@@ -41,7 +42,12 @@ type compareRow struct {
 type cell struct {
 	Text   string
 	Strong bool
-	Words  bool // a sentence, not a figure
+}
+
+// comparedWords is what is said rather than counted: once where all say the same.
+type comparedWords struct {
+	Name string
+	Said []pair
 }
 
 // bandPicture is one band of the picture, in px.
@@ -125,14 +131,23 @@ func shortName(f ui.Format, s plant.Setup, location chart.Panel) string {
 func (c *comparison) wordRows(f ui.Format, columns []column) {
 	w := f.Words
 	add := func(name string, of func(column) string) {
-		r, any := compareRow{Name: name}, false
+		d := comparedWords{Name: name}
+		same := true
 		for _, col := range columns {
 			text := of(col)
-			any = any || text != ""
-			r.Cells = append(r.Cells, cell{Text: text, Words: true})
+			if text == "" {
+				continue
+			}
+			same = same && (len(d.Said) == 0 || d.Said[0].Text == text)
+			d.Said = append(d.Said, pair{col.Title, text})
 		}
-		if any {
-			c.Rows = append(c.Rows, r)
+		if n := len(d.Said); n > 1 && same {
+			d.Name, d.Said = w.T("desk.compare.same", name), []pair{{"", d.Said[0].Text}}
+		} else if n == 1 {
+			d.Said[0].Name = ""
+		}
+		if len(d.Said) > 0 {
+			c.Words = append(c.Words, d)
 		}
 	}
 	add(w.T("desk.compare.ways"), func(col column) string { return col.Ways })
