@@ -33,6 +33,8 @@ type cli struct {
 	User    userCmd    `cmd:"" help:"People who may sign in."`
 	Audit   auditCmd   `cmd:"" help:"Verify that the record is whole."`
 	Health  healthCmd  `cmd:"" help:"Ask a running server whether it is ready; for container and service checks."`
+	Calc    calcCmd    `cmd:"" help:"Answer a question of the statistics: JSON in, JSON out."`
+	Qualify qualifyCmd `cmd:"" help:"Recompute the reference values on this machine: the installation qualification."`
 	Version versionCmd `cmd:"" help:"Print the version."`
 }
 
