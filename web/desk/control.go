@@ -299,6 +299,7 @@ func (d *drawing) hang(mark *chart.Signal, s plant.Signal, m plant.Matter, i int
 		mark.Newest = i == len(d.points)-1 && d.f.Now.Sub(d.points[i].RecordedAt) < pulseFor
 		if d.suspect && d.reach.At == i {
 			mark.Sub = d.reach.change(d.f, d.setup)
+			d.reach.At = -1 // said once, however many rules fired there
 		}
 	case m.Cause != "":
 		mark.Text = w.T("desk.signal.cause", mark.Text, m.Cause)

@@ -22,7 +22,8 @@ type reach struct {
 	// Size of the change in the unit and its direction, for a location signal; Ratio
 	// of the spread for a dispersion signal. Both zero where there is no estimate.
 	Size, Ratio float64
-	At          int // point whose signal the estimate is for, -1 when none
+	Began       time.Time // first subgroup after the most likely moment of change
+	At          int       // point whose signal the estimate is for, -1 when none
 }
 
 // reachOf works out the reach of the open matter over the points that are shown. It is
@@ -111,7 +112,7 @@ func (r *reach) look(h plant.History, points []plant.Point, first time.Time, pan
 		r.from(max(signal-1, begin), points, false)
 		return
 	}
-	r.At = signal
+	r.At, r.Began = signal, points[begin+e.After+1].TakenAt
 	if panel == plant.Location {
 		r.Size = e.Size
 	} else {
@@ -178,10 +179,8 @@ func (r reach) words(f ui.Format, m plant.MachineNow) string {
 
 // change says how large the change is and since when, for the second line of the flag.
 func (r reach) change(f ui.Format, s plant.Setup) string {
-	since := f.Clock(r.Since)
+	since := f.Clock(r.Began)
 	switch {
-	case r.Cut:
-		return ""
 	case r.Size != 0:
 		return f.Words.T("desk.reach.size", f.WithUnit(f.Signed(r.Size, s.LimitDecimals()), s.Unit), since)
 	case r.Ratio != 0:

@@ -73,7 +73,7 @@ func TestTheReachOfALookGoesBackToTheLastPointBeforeTheChange(t *testing.T) {
 		t.Errorf("the change is %v, want 0.4", r.Size)
 	}
 	f := ui.NewFormat(words.For("en"), time.UTC, noon.Add(10*time.Minute))
-	if got := r.change(f, h.State.Setup); got != "about +0.400\u00a0g since 12:04" {
+	if got := r.change(f, h.State.Setup); got != "about +0.400\u00a0g since 12:05" {
 		t.Errorf("said as %q", got)
 	}
 	m := plant.MachineNow{Machine: plant.Machine{PartsPerHour: 600}}
