@@ -289,7 +289,7 @@ func countStandard(in countsIn) (limits.CountStandard, error) {
 	case in.Multiple != nil && probability:
 		return none, errors.New("multiple belongs to limits of kind sigma; give tail instead")
 	case probability && laney(in.Chart):
-		return none, errors.New("Laney's charts have sigma limits only")
+		return none, errors.New("the charts of Laney have sigma limits only")
 	}
 	std := limits.CountStandard{Chart: in.Chart}
 	var err error

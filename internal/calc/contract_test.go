@@ -194,3 +194,14 @@ func TestOptionsReachTheirMethods(t *testing.T) {
 		t.Errorf("fired %v, want %v", fired, want)
 	}
 }
+
+// TestPairThatIsSimulated asks for charts that are not independent: their run length
+// cannot be computed, and lies below that of either chart alone.
+func TestPairThatIsSimulated(t *testing.T) {
+	t.Parallel()
+	o := answer(t, "runlength-pair", `{"chart": "individuals", "n": 1, "location": [{"kind": "beyond"}], "dispersion": [{"kind": "beyond"}]}`)
+	arl, se := o["arl"].([]any)[0].(float64), o["standard_error"].([]any)[0].(float64)
+	if o["method"] != "simulation" || se <= 0 || arl+4*se >= 370.398 || arl <= 1 {
+		t.Errorf("got %v; the chart of individuals alone has a run length of 370.4", o)
+	}
+}

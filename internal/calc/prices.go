@@ -15,7 +15,7 @@ var prices = []Topic{
 	topic("runlength", "Average run length of run rules, an EWMA or a CUSUM, for shifts of the plotted statistic.",
 		`{"rules": [{"kind": "beyond", "z": 3}, {"kind": "one-side", "m": 8}], "shifts": [0, 1]}`, runLength),
 	topic("runlength-pair", "Average run length of both charts of a pair watched together.",
-		`{"chart": "individuals", "n": 1, "location": [{"kind": "beyond"}], "dispersion": [{"kind": "beyond"}], "shift": 1}`, runLengthPair),
+		`{"chart": "xbar-r", "n": 5, "location": [{"kind": "beyond"}, {"kind": "one-side", "m": 8}], "dispersion": [{"kind": "beyond"}], "shift": 0.5, "spread": 1.2}`, runLengthPair),
 	topic("estimated", "How far the false alarm rate may be off when limits come from m subgroups.",
 		`{"m": 25, "n": 5, "estimator": "pooled"}`, estimated),
 }

@@ -7,7 +7,7 @@ import (
 )
 
 // series is the length of the simulated processes.
-const series = 5000
+const series = 1500
 
 // adjustCases are the known behaviour of adjusted processes and worked set-ups.
 func adjustCases() ([]Case, error) {
