@@ -144,6 +144,28 @@ func (c *judgementCheck) state(ctx context.Context, tx pgx.Tx, fold plant.FoldSt
 	if orNil(open) != l.matter {
 		c.differs("the state row says that matter %s is open, the record says %s", l.matter, orNil(open))
 	}
+	return c.matters(ctx, tx)
+}
+
+// matters compares matters and signals: what is open has a line, and what stands after
+// the last boundary belongs to a matter, open or closed.
+func (c *judgementCheck) matters(ctx context.Context, tx pgx.Tx) error {
+	var empty, loose int
+	err := tx.QueryRow(ctx, `select
+		(select count(*) from matter m where m.characteristic_id = $1 and m.closed_at is null
+			and not exists (select from signal g where g.matter_id = m.id)),
+		(select count(*) from signal g where g.characteristic_id = $1 and g.matter_id is null and not g.withdrawn
+			and g.taken_at >= coalesce((select max(at) from boundary b where b.characteristic_id = $1 and b.at <= $2), '-infinity'))`,
+		c.id, c.s.now()).Scan(&empty, &loose)
+	if err != nil {
+		return fmt.Errorf("read matters: %w", err)
+	}
+	if empty > 0 {
+		c.differs("an open matter has no line")
+	}
+	if loose > 0 {
+		c.differs("%d signals stand after the last boundary without a matter", loose)
+	}
 	return nil
 }
 

@@ -67,7 +67,7 @@ type refolding struct {
 	was, is  plant.FoldState
 	wasC     plant.Course
 	isC      plant.Course
-	lastFrom time.Time // the last boundary: firings before it open no matter
+	lastFrom time.Time // the last boundary up to now: firings before it open no matter
 	patched  refolded
 }
 
@@ -157,14 +157,14 @@ func (r *refolding) start(ctx context.Context) (position, error) {
 		return at, fmt.Errorf("read boundaries: %w", err)
 	}
 	r.wasC = plant.Course{Before: r.isC.Before}
+	r.lastFrom = r.isC.Before.From
 	for _, b := range r.isC.Boundaries {
 		if b.ID != r.patch.boundary {
 			r.wasC.Boundaries = append(r.wasC.Boundaries, b)
 		}
-		r.lastFrom = b.At
-	}
-	if len(r.isC.Boundaries) == 0 {
-		r.lastFrom = r.isC.Before.From
+		if !b.At.After(r.now) {
+			r.lastFrom = b.At
+		}
 	}
 	return at, nil
 }
@@ -198,6 +198,7 @@ func (r *refolding) read(ctx context.Context, after position) ([]*subgroupRow, e
 type storedSignal struct {
 	plant.Firing
 	withdrawn bool
+	matter    uuid.UUID
 }
 
 // stored reads the signals of the rows, by subgroup, and which of them are checkpoints.
@@ -207,14 +208,16 @@ func (r *refolding) stored(ctx context.Context, rows []*subgroupRow) (map[uuid.U
 		return signals, checkpoints, nil
 	}
 	first, last := rows[0].taken, rows[len(rows)-1].taken
-	found, err := r.conn.Query(ctx, `select subgroup_id, panel, rule, side, withdrawn from signal
+	found, err := r.conn.Query(ctx, `select subgroup_id, panel, rule, side, withdrawn, matter_id from signal
 		where characteristic_id = $1 and taken_at between $2 and $3`, r.l.id, first, last)
 	if err != nil {
 		return nil, nil, fmt.Errorf("read signals: %w", err)
 	}
 	var id uuid.UUID
 	var g storedSignal
-	if _, err := pgx.ForEachRow(found, []any{&id, &g.Panel, &g.Rule, &g.Side, &g.withdrawn}, func() error {
+	var matter *uuid.UUID
+	if _, err := pgx.ForEachRow(found, []any{&id, &g.Panel, &g.Rule, &g.Side, &g.withdrawn, &matter}, func() error {
+		g.matter = orNil(matter)
 		signals[id] = append(signals[id], g)
 		return nil
 	}); err != nil {
@@ -265,22 +268,17 @@ func (r *refolding) row(ctx context.Context, row *subgroupRow, have []storedSign
 
 // settle brings the stored signals of a subgroup to what it does now.
 func (r *refolding) settle(row *subgroupRow, seg plant.Segment, firings []plant.Firing, have []storedSignal) error {
-	type key struct {
-		panel plant.Panel
-		rule  string
-	}
-	stored := make(map[key]storedSignal, len(have))
+	stored := make(map[plant.Firing]storedSignal, len(have))
 	for _, g := range have {
-		stored[key{g.Panel, g.Rule}] = g
+		stored[g.Firing] = g
 	}
 	for _, f := range firings {
-		k := key{f.Panel, f.Rule}
-		g, known := stored[k]
-		delete(stored, k)
-		if known && !g.withdrawn && g.Side == f.Side {
+		g, known := stored[f]
+		delete(stored, f)
+		if known && !g.withdrawn {
 			continue
 		}
-		matter, err := r.matterFor(row.position)
+		matter, err := r.matterFor(row.position, g.matter)
 		if err != nil {
 			return err
 		}
@@ -289,8 +287,8 @@ func (r *refolding) settle(row *subgroupRow, seg plant.Segment, firings []plant.
 	for _, g := range stored {
 		if !g.withdrawn {
 			r.batch.Queue(`update signal set withdrawn = true, judged_at = $6
-				where characteristic_id = $1 and taken_at = $2 and subgroup_id = $3 and panel = $4 and rule = $5`,
-				r.l.id, row.taken, row.id, string(g.Panel), g.Rule, r.now)
+				where characteristic_id = $1 and taken_at = $2 and subgroup_id = $3 and panel = $4 and rule = $5 and side = $7`,
+				r.l.id, row.taken, row.id, string(g.Panel), g.Rule, r.now, string(g.Side))
 		}
 	}
 	return nil
@@ -298,8 +296,12 @@ func (r *refolding) settle(row *subgroupRow, seg plant.Segment, firings []plant.
 
 // matterFor is the matter that a firing found late belongs to: the open one; with none
 // open a new one, without alarm, if the firing lies after the last boundary; otherwise
-// none, and it only stays on the record.
-func (r *refolding) matterFor(at position) (uuid.UUID, error) {
+// none, and it only stays on the record. One that stands again before that boundary
+// stays with the matter in which it was dealt with.
+func (r *refolding) matterFor(at position, before uuid.UUID) (uuid.UUID, error) {
+	if before != uuid.Nil && at.taken.Before(r.lastFrom) {
+		return before, nil
+	}
 	if r.l.matter == uuid.Nil && !at.taken.Before(r.lastFrom) {
 		if err := r.s.openMatter(r.batch, r.l, at, false, r.now); err != nil {
 			return uuid.Nil, err
@@ -331,8 +333,8 @@ func (s *Store) openMatter(b *pgx.Batch, l *locked, at position, alarm bool, now
 func (s *Store) insertSignal(b *pgx.Batch, l *locked, at position, f plant.Firing, revision, matter uuid.UUID, late bool, now time.Time) {
 	b.Queue(`insert into signal (characteristic_id, taken_at, subgroup_id, panel, rule, plant_id, side, revision_id, matter_id, found_late, judged_at)
 		values ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11)
-		on conflict (characteristic_id, taken_at, subgroup_id, panel, rule) do update
-		set withdrawn = false, found_late = true, side = excluded.side, revision_id = excluded.revision_id,
-			matter_id = coalesce(signal.matter_id, excluded.matter_id), judged_at = excluded.judged_at`,
+		on conflict (characteristic_id, taken_at, subgroup_id, panel, rule, side) do update
+		set withdrawn = false, found_late = true, revision_id = excluded.revision_id,
+			matter_id = excluded.matter_id, judged_at = excluded.judged_at`,
 		l.id, at.taken, at.id, string(f.Panel), f.Rule, s.plant(), string(f.Side), orNull(revision), orNull(matter), late, now)
 }
