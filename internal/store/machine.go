@@ -83,11 +83,47 @@ func (s *Store) SetMachine(ctx context.Context, m plant.MachineState) error {
 				return err
 			}
 		}
+		if err := s.changeBack(ctx, tx, b, held, m, now); err != nil {
+			return err
+		}
 		return s.appendPlantChain(ctx, tx, ledger.MachineState{
 			State: m.ID, Machine: m.Machine, At: ledger.Time(m.At), Running: m.Running, Part: ledger.ID(m.Part), Lot: m.Lot,
 			Counter: m.Counter, RecordedAt: ledger.Time(now), Person: ledger.ID(m.Person),
 		})
 	})
+}
+
+// changeBack enters the changeover that a state recorded behind others makes at the next
+// of them: that one held the part which was believed to run.
+func (s *Store) changeBack(ctx context.Context, tx pgx.Tx, b *pgx.Batch, held map[uuid.UUID]*locked, m plant.MachineState, now time.Time) error {
+	next := plant.MachineState{Machine: m.Machine}
+	var part *uuid.UUID
+	err := tx.QueryRow(ctx, `select at, part_id from machine_state where machine_id = $1 and (at, id) > ($2, $3) order by at, id limit 1`,
+		m.Machine, m.At, m.ID).Scan(&next.At, &part)
+	if errors.Is(err, pgx.ErrNoRows) {
+		return nil
+	}
+	if err != nil {
+		return fmt.Errorf("read machine: %w", err)
+	}
+	if next.Part = orNil(part); next.Part == m.Part {
+		return nil
+	}
+	var there bool
+	err = tx.QueryRow(ctx, `select exists (select from boundary b join characteristic c on c.id = b.characteristic_id
+		where c.machine_id = $1 and b.at = $2 and b.kind = 'changeover')`, m.Machine, next.At).Scan(&there)
+	if err != nil {
+		return fmt.Errorf("read boundaries: %w", err)
+	}
+	if there {
+		return nil
+	}
+	// What the first changeover changed must be written before it can be read again.
+	if err := tx.SendBatch(ctx, b).Close(); err != nil {
+		return fmt.Errorf("write changeover: %w", err)
+	}
+	*b = pgx.Batch{}
+	return s.changeover(ctx, tx, b, held, m.Part, next, now)
 }
 
 func (s *Store) changeover(ctx context.Context, tx pgx.Tx, b *pgx.Batch, held map[uuid.UUID]*locked, from uuid.UUID, m plant.MachineState, now time.Time) error {
