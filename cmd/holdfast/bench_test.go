@@ -7,6 +7,7 @@ import (
 	"net/url"
 	"os"
 	"slices"
+	"strconv"
 	"sync"
 	"sync/atomic"
 	"testing"
@@ -208,7 +209,9 @@ func BenchmarkRecord(b *testing.B) {
 
 // roundForm is what the station's page posts for one characteristic.
 func roundForm(c plant.Characteristic, id uuid.UUID, readings []int64) url.Values {
-	form := url.Values{"round": {id.String()}, "characteristic": {c.ID.String()}, "setup-" + c.ID.String(): {"1"}, "entry": {"full"}, "occasion": {""}}
+	now := strconv.FormatInt(time.Now().UnixMilli(), 10)
+	form := url.Values{"round": {id.String()}, "characteristic": {c.ID.String()}, "setup-" + c.ID.String(): {"1"}, "entry": {"full"}, "occasion": {""},
+		"taken": {now}, "sent": {now}}
 	for _, v := range readings {
 		form.Add("reading-"+c.ID.String(), plant.FormatUnits(v, 3))
 	}

@@ -251,9 +251,15 @@ func (d draft) round(station, person uuid.UUID, taken time.Time, skew time.Durat
 	return r
 }
 
-// saveRound is POST /station/{station}/round.
+// saveRound is POST /station/{station}/round. A round that is right needs to know only
+// what is measured here and by which limits; how the station stands is read when the
+// page must be shown again.
 func (s *Surface) saveRound(w http.ResponseWriter, r *http.Request) error {
-	st, err := s.stationIn(r, 12)
+	id, err := idIn(r, "station")
+	if err != nil {
+		return err
+	}
+	st, err := s.store.StationSetups(r.Context(), id)
 	if err != nil {
 		return err
 	}
@@ -263,11 +269,11 @@ func (s *Surface) saveRound(w http.ResponseWriter, r *http.Request) error {
 		return err
 	}
 	if d.check(frame.Words) {
-		return s.again(w, r, http.StatusUnprocessableEntity, st, d)
+		return s.again(w, r, http.StatusUnprocessableEntity, d)
 	}
 	taken, skew, own, err := sentTime(r.PostForm, frame.Now)
 	if err != nil {
-		return s.refused(w, r, st, d, err)
+		return s.refused(w, r, d, err)
 	}
 	if !own {
 		taken = s.firstTaken(r, d.Round, frame.Now)
@@ -275,7 +281,7 @@ func (s *Surface) saveRound(w http.ResponseWriter, r *http.Request) error {
 	answer, err := s.store.Record(r.Context(), d.round(st.ID, frame.Person.ID, taken, skew))
 	if err != nil {
 		s.stamps.forget(d.Round)
-		return s.refused(w, r, st, d, err)
+		return s.refused(w, r, d, err)
 	}
 	keepEntry(w, r, d.Deviation)
 	ui.Redirect(w, r, path(st.ID, "round", answer.Round.String()))
@@ -293,7 +299,7 @@ func (s *Surface) firstTaken(r *http.Request, round uuid.UUID, now time.Time) ti
 
 // refused shows the form again with what the record said against it. A conflict gets
 // a new number: under the old one something else is on record.
-func (s *Surface) refused(w http.ResponseWriter, r *http.Request, st plant.StationState, d draft, err error) error {
+func (s *Surface) refused(w http.ResponseWriter, r *http.Request, d draft, err error) error {
 	pe, ok := errors.AsType[*plant.Error](err)
 	if !ok || pe.Kind != plant.Invalid && pe.Kind != plant.Conflict {
 		return err
@@ -302,10 +308,20 @@ func (s *Surface) refused(w http.ResponseWriter, r *http.Request, st plant.Stati
 	if pe.Kind == plant.Conflict {
 		d.Round = uuid.Must(uuid.NewV7())
 	}
-	return s.again(w, r, ui.StatusOf(pe.Kind), st, d)
+	return s.again(w, r, ui.StatusOf(pe.Kind), d)
 }
 
-func (s *Surface) again(w http.ResponseWriter, r *http.Request, status int, st plant.StationState, d draft) error {
+// again shows the form with what was typed, beside the station as it stands.
+func (s *Surface) again(w http.ResponseWriter, r *http.Request, status int, d draft) error {
+	st, err := s.stationIn(r, 12)
+	if err != nil {
+		return err
+	}
+	for i := range d.Entries {
+		if c, ok := characteristicOf(st, d.Entries[i].Of.ID); ok {
+			d.Entries[i].Of = c
+		}
+	}
 	f := ui.FrameOf(r).Format()
 	round := fillRound(f, st, d)
 	return s.renderWork(w, r, status, st, workView{Side: newSide(f, st), Round: &round})

@@ -18,6 +18,7 @@ import (
 type Store interface {
 	StationStates(ctx context.Context, points int, ids ...uuid.UUID) ([]plant.StationState, error)
 	StationState(ctx context.Context, id uuid.UUID, points int) (plant.StationState, error)
+	StationSetups(ctx context.Context, id uuid.UUID) (plant.StationState, error)
 	History(ctx context.Context, characteristic uuid.UUID, stretch plant.Stretch) (plant.History, error)
 	Answer(ctx context.Context, round uuid.UUID) (plant.Answer, error)
 	LastRound(ctx context.Context, station uuid.UUID) (plant.RoundRecord, error)
