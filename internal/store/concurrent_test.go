@@ -9,6 +9,7 @@ import (
 	"time"
 
 	"github.com/google/uuid"
+	"github.com/jackc/pgx/v5"
 	"golang.org/x/sync/errgroup"
 
 	"holdfast/internal/plant"
@@ -230,4 +231,95 @@ func TestAnotherServerHears(t *testing.T) {
 	p.Clock.Advance(time.Minute)
 	p.MustRecord(t, p.Length, 1000, 1001, 999)
 	there.await(t, p.Other.ID, 10*time.Second)
+}
+
+// holdRow locks the state row of a characteristic until release is called.
+func holdRow(t *testing.T, p *storetest.Plant, c plant.Characteristic) (release func()) {
+	t.Helper()
+	ctx := context.Background()
+	conn, err := pgx.Connect(ctx, p.URL)
+	if err != nil {
+		t.Fatal(err)
+	}
+	t.Cleanup(func() { _ = conn.Close(ctx) })
+	tx, err := conn.Begin(ctx)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if _, err := tx.Exec(ctx, `select from characteristic_state where characteristic_id = $1 for update`, c.ID); err != nil {
+		t.Fatal(err)
+	}
+	return func() {
+		if err := tx.Rollback(ctx); err != nil {
+			t.Error(err)
+		}
+	}
+}
+
+// TestSaveThatCannotGetItsLock gives up in time, leaves nothing behind and blocks
+// nobody; the same round sent again is taken.
+func TestSaveThatCannotGetItsLock(t *testing.T) {
+	t.Parallel()
+	p := storetest.New(t, "x")
+	ctx := context.Background()
+	st, err := store.Open(ctx, store.Options{URL: p.URL, Clock: p.Clock.Now, MaxConns: 1, SaveLimit: 300 * time.Millisecond})
+	if err != nil {
+		t.Fatal(err)
+	}
+	t.Cleanup(st.Close)
+	release := holdRow(t, p, p.Diameter)
+	both := p.Round(p.Diameter, 14990, 14991, 14992, 14990, 14991)
+	both.Entries = append(both.Entries, plant.Entry{Characteristic: p.Mass.ID, SetupVersion: 1, Readings: []int64{120}})
+	began := time.Now()
+	if a, err := st.Record(ctx, both); err == nil {
+		t.Fatalf("a save that cannot get its lock answered %+v", a)
+	}
+	if took := time.Since(began); took > 10*time.Second {
+		t.Errorf("it gave up after %s", took)
+	}
+	var open int
+	for range 50 { // the server is told, and may need a moment
+		if err := p.Pool().QueryRow(ctx, `select count(*) from pg_stat_activity where datname = current_database() and wait_event_type = 'Lock'`).Scan(&open); err != nil {
+			t.Fatal(err)
+		}
+		if open == 0 {
+			break
+		}
+		time.Sleep(100 * time.Millisecond)
+	}
+	if open > 0 {
+		t.Errorf("%d backends still wait for the lock", open)
+	}
+	if _, err := p.Record(ctx, p.Round(p.Mass, 121)); err != nil {
+		t.Errorf("another characteristic of that round: %v", err)
+	}
+	release()
+	if _, err := p.Record(ctx, both); err != nil {
+		t.Errorf("the same round again: %v", err)
+	}
+	consistent(t, p)
+}
+
+// TestSaveOutlivesItsRequest: who leaves the page has still pressed the key.
+func TestSaveOutlivesItsRequest(t *testing.T) {
+	t.Parallel()
+	p := storetest.New(t, "x")
+	release := holdRow(t, p, p.Diameter)
+	ctx, leave := context.WithCancel(context.Background())
+	r := p.Round(p.Diameter, 14990, 14991, 14992, 14990, 14991)
+	saved := make(chan error, 1)
+	go func() {
+		_, err := p.Record(ctx, r)
+		saved <- err
+	}()
+	time.Sleep(50 * time.Millisecond)
+	leave()
+	time.Sleep(50 * time.Millisecond)
+	release()
+	if err := <-saved; err != nil {
+		t.Fatal(err)
+	}
+	if _, err := p.Answer(context.Background(), r.ID); err != nil {
+		t.Error(err)
+	}
 }

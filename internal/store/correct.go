@@ -38,7 +38,7 @@ func (s *Store) Correct(ctx context.Context, c plant.Correction) (plant.PartAnsw
 	if c.Reason == "" {
 		return plant.PartAnswer{}, plant.Invalidf("reason", "Say why it is corrected.")
 	}
-	ctx, cancel := context.WithTimeout(context.WithoutCancel(ctx), saveLimit)
+	ctx, cancel := s.saving(ctx)
 	defer cancel()
 	c.TakenAt = plant.CutTime(c.TakenAt)
 	var part plant.PartAnswer

@@ -17,7 +17,7 @@ import (
 // onMachine runs f while every characteristic of a machine is locked, and marks them
 // all as changed.
 func (s *Store) onMachine(ctx context.Context, machine uuid.UUID, f func(tx pgx.Tx, b *pgx.Batch, held map[uuid.UUID]*locked) error) error {
-	ctx, cancel := context.WithTimeout(context.WithoutCancel(ctx), saveLimit)
+	ctx, cancel := s.saving(ctx)
 	defer cancel()
 	var station uuid.UUID
 	err := s.inTx(ctx, func(tx pgx.Tx) error {

@@ -96,7 +96,7 @@ func (s *Store) matter(ctx context.Context, q querier, id uuid.UUID) (*plant.Mat
 // onMatter runs f on an open matter while its characteristic is locked. Version is the
 // one that the person saw; when another was quicker it is a Conflict.
 func (s *Store) onMatter(ctx context.Context, id uuid.UUID, version int, f func(tx pgx.Tx, l *locked, m *plant.Matter) error) error {
-	ctx, cancel := context.WithTimeout(context.WithoutCancel(ctx), saveLimit)
+	ctx, cancel := s.saving(ctx)
 	defer cancel()
 	before, err := s.Matter(ctx, id)
 	if err != nil {

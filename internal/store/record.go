@@ -17,10 +17,6 @@ import (
 	"holdfast/internal/plant/ledger"
 )
 
-// saveLimit is how long a save may take. It does not end with the request: somebody
-// who leaves the page has still pressed the key.
-const saveLimit = 15 * time.Second
-
 // roundContext is what must be known, besides the state row, to judge a subgroup
 // taken at $2: the segment it lies in, what the machine was making, and whether what
 // is open is a Hold. It is read under the lock, in a statement of its own.
@@ -86,7 +82,7 @@ func (s *Store) Record(ctx context.Context, r plant.Round) (plant.Answer, error)
 	sort.Slice(r.Entries, func(i, j int) bool {
 		return bytes.Compare(r.Entries[i].Characteristic[:], r.Entries[j].Characteristic[:]) < 0
 	})
-	ctx, cancel := context.WithTimeout(context.WithoutCancel(ctx), saveLimit)
+	ctx, cancel := s.saving(ctx)
 	defer cancel()
 	rec := &recording{s: s, round: r, digest: r.Digest(), now: s.now()}
 	answer, err := rec.run(ctx)
@@ -116,9 +112,8 @@ func (rec *recording) run(ctx context.Context) (plant.Answer, error) {
 	rec.conn = conn
 	err = rec.write(ctx)
 	if err != nil && conn.Conn().PgConn().TxStatus() != 'I' {
-		if _, rollbackErr := conn.Exec(ctx, "rollback"); rollbackErr != nil {
-			return plant.Answer{}, errors.Join(err, rollbackErr)
-		}
+		// Where this fails the pool throws the connection away, and the server rolls back.
+		_, _ = conn.Exec(ctx, "rollback")
 	}
 	return rec.answer, err
 }
