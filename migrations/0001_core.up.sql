@@ -196,19 +196,23 @@ create table boundary (
 create index boundary_course on boundary (characteristic_id, at desc, id desc);
 create index boundary_force on boundary (characteristic_id, at desc, id desc) where kind in ('revision', 'setup');
 
+-- Rounds, subgroups and the ledger have no foreign keys: what they point to is read
+-- under the lock that a save holds and is never removed, and locking one row of the plant
+-- and one of the person from every save would make saves wait for one another.
+
 -- One visit. The id comes from the sender; digest tells a repeated send from another
 -- round under the same id; answer is what the sender was told.
 create table round (
     id          uuid primary key,
-    plant_id    uuid        not null references plant,
-    station_id  uuid        not null references station,
+    plant_id    uuid        not null,
+    station_id  uuid        not null,
     due_at      timestamptz,
     occasion    text        not null default '',
     taken_at    timestamptz not null,
     taken_raw   timestamptz not null, -- by the sender's own clock
     skew_ms     bigint      not null,
     recorded_at timestamptz not null,
-    person_id   uuid        references person,
+    person_id   uuid,
     source      text        not null,
     digest      bytea       not null,
     answer      jsonb       not null
@@ -219,11 +223,11 @@ create index round_course on round (station_id, taken_at);
 -- and taken at; a void is a version too. The key is the order in which subgroups
 -- are judged, so that the newest, a stretch or all of them is one walk along it.
 create table subgroup (
-    characteristic_id uuid        not null references characteristic,
+    characteristic_id uuid        not null,
     taken_at          timestamptz not null,
     id                uuid        not null,
     version           int         not null,
-    plant_id          uuid        not null references plant,
+    plant_id          uuid        not null,
     round_id          uuid        not null,
     setup_version     int         not null,
     decimals          int         not null,
@@ -383,7 +387,7 @@ create table set_aside (
 create table ledger (
     chain    uuid     not null,
     seq      bigint   not null,
-    plant_id uuid     not null references plant,
+    plant_id uuid     not null,
     kind     text     not null,
     encoding smallint not null,
     body     bytea    not null,

@@ -14,6 +14,7 @@ import (
 	"github.com/jackc/pgx/v5/pgconn"
 	"github.com/jackc/pgx/v5/pgtype"
 	"github.com/jackc/pgx/v5/pgxpool"
+	pgxuuid "github.com/vgarvardt/pgx-google-uuid/v5"
 
 	"holdfast/internal/plant"
 )
@@ -85,6 +86,8 @@ func Open(ctx context.Context, o Options) (*Store, error) {
 }
 
 func prepareConn(ctx context.Context, c *pgx.Conn) error {
+	// Ids travel as sixteen bytes; without this pgx would write and read them as text.
+	pgxuuid.Register(c.TypeMap())
 	// Times are UTC in code; pgx would hand them out in the zone of the process.
 	c.TypeMap().RegisterType(&pgtype.Type{
 		Name: "timestamptz", OID: pgtype.TimestamptzOID, Codec: &pgtype.TimestamptzCodec{ScanLocation: time.UTC},

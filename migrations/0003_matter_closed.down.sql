@@ -1,0 +1,1 @@
+drop index matter_closed;
