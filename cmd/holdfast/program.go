@@ -7,6 +7,8 @@ import (
 	"log/slog"
 	"net"
 	"net/http"
+	"os"
+	"runtime/debug"
 	"sync"
 	"sync/atomic"
 	"time"
@@ -55,6 +57,11 @@ const shutdownLimit = 20 * time.Second
 
 // newProgram opens the store and listens; Run serves. Close must be called.
 func newProgram(ctx context.Context, s settings) (*program, error) {
+	if os.Getenv("GOGC") == "" {
+		// The live heap is a few megabytes; at the default the collector would run many
+		// times a second under load to save memory that every box has.
+		debug.SetGCPercent(400)
+	}
 	if s.Clock == nil {
 		s.Clock = time.Now
 	}

@@ -148,35 +148,85 @@ func (s *Sessions) touch(ctx context.Context) {
 type guardedStore struct {
 	s     *Sessions
 	store scs.Store
+	known *sessionCache
 }
 
 func (g guardedStore) Find(key string) ([]byte, bool, error) { return g.store.Find(key) }
 func (g guardedStore) Delete(key string) error {
 	g.s.writes.Lock()
 	defer g.s.writes.Unlock()
+	g.known.forget(key)
+	defer g.known.forget(key)
 	return g.store.Delete(key)
 }
 func (g guardedStore) Commit(key string, data []byte, expiry time.Time) error {
+	defer g.known.forget(key)
 	return g.store.Commit(key, data, expiry)
 }
 
 // CommitCtx is what the session library calls in place of Commit.
 func (g guardedStore) CommitCtx(ctx context.Context, key string, data []byte, expiry time.Time) error {
 	if visitOf(ctx).begun {
-		return g.store.Commit(key, data, expiry)
+		return g.Commit(key, data, expiry)
 	}
 	g.s.writes.Lock()
 	defer g.s.writes.Unlock()
 	if _, there, err := g.store.Find(key); err != nil || !there {
 		return err
 	}
-	return g.store.Commit(key, data, expiry)
+	return g.Commit(key, data, expiry)
 }
 
 func (g guardedStore) FindCtx(_ context.Context, key string) ([]byte, bool, error) {
-	return g.store.Find(key)
+	return g.known.find(key, g.store.Find)
 }
 func (g guardedStore) DeleteCtx(_ context.Context, key string) error { return g.Delete(key) }
+
+// sessionCache remembers stored sessions for about a second: a page and its parts ask
+// once. A session that ends here is forgotten at once, one that ends on another server
+// within that second.
+type sessionCache struct {
+	now func() time.Time
+
+	mu      sync.Mutex
+	writes  uint64 // how often something was forgotten: what was read before counts no more
+	entries map[string]cachedSession
+}
+
+type cachedSession struct {
+	data  []byte
+	until time.Time
+}
+
+func (c *sessionCache) find(key string, read func(string) ([]byte, bool, error)) ([]byte, bool, error) {
+	c.mu.Lock()
+	e, ok := c.entries[key]
+	writes := c.writes
+	c.mu.Unlock()
+	if ok && c.now().Before(e.until) {
+		return e.data, true, nil
+	}
+	data, there, err := read(key)
+	if err != nil || !there {
+		return data, there, err
+	}
+	c.mu.Lock()
+	defer c.mu.Unlock()
+	if c.writes == writes {
+		if len(c.entries) >= cacheMost {
+			clear(c.entries)
+		}
+		c.entries[key] = cachedSession{data, c.now().Add(cacheFor)}
+	}
+	return data, true, nil
+}
+
+func (c *sessionCache) forget(key string) {
+	c.mu.Lock()
+	defer c.mu.Unlock()
+	c.writes++
+	delete(c.entries, key)
+}
 
 // peopleCache remembers people for about a second: a page with its parts and its
 // socket asks once, and a change of roles still counts at once to human eyes.

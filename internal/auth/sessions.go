@@ -108,7 +108,7 @@ func NewSessions(opt SessionOptions) *Sessions {
 	s.people = &peopleCache{people: opt.People, now: opt.Now, entries: make(map[uuid.UUID]cached)}
 
 	m := scs.New()
-	m.Store = guardedStore{s, opt.Store}
+	m.Store = guardedStore{s, opt.Store, &sessionCache{now: opt.Now, entries: make(map[string]cachedSession)}}
 	m.Lifetime = opt.Lifetime
 	m.IdleTimeout = 0 // it would write at every request; see touch
 	m.HashTokenInStore = true

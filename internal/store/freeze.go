@@ -49,6 +49,7 @@ func (s *Store) Freeze(ctx context.Context, f plant.FreezeRequest) (plant.Revisi
 	if err := s.freeze(ctx, &r, f); err != nil {
 		return plant.Revision{}, fmt.Errorf("freeze: %w", err)
 	}
+	s.measured.Delete(h.State.StationID)
 	s.changed(h.State.StationID)
 	return r, nil
 }
@@ -158,6 +159,7 @@ func (s *Store) ChangeSetup(ctx context.Context, characteristic uuid.UUID, setup
 	if err != nil {
 		return fmt.Errorf("change set-up: %w", err)
 	}
+	s.measured.Delete(station)
 	s.changed(station)
 	return nil
 }

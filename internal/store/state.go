@@ -3,6 +3,7 @@ package store
 import (
 	"context"
 	"fmt"
+	"slices"
 	"time"
 
 	"github.com/google/uuid"
@@ -208,11 +209,18 @@ func (g *gathering) readLogs(ctx context.Context, tx pgx.Tx, stations []uuid.UUI
 // readChanges reads the changes since each machine's oldest newest sample: they may ask
 // for a sample.
 func (g *gathering) readChanges(ctx context.Context, tx pgx.Tx, stations []uuid.UUID) error {
-	rows, err := tx.Query(ctx, `select h.machine_id, h.kind, h.happened_at from change h
-		where h.machine_id in (select id from machine where station_id = any($1)) and h.kind in ('tool', 'adjustment')
-		and h.happened_at > coalesce((select min(cs.last_taken) from characteristic c join characteristic_state cs on cs.characteristic_id = c.id
-			where c.machine_id = h.machine_id), '-infinity') and h.happened_at <= $2
-		order by h.happened_at desc limit 2000`, stations, g.now)
+	// The limit inside makes it a short walk along an index for each machine, also where a
+	// characteristic was not sampled for a year.
+	rows, err := tx.Query(ctx, `with since as (
+			select m.id, min(cs.last_taken) as at
+			from machine m left join characteristic c on c.machine_id = m.id
+			left join characteristic_state cs on cs.characteristic_id = c.id
+			where m.station_id = any($1) group by m.id)
+		select h.machine_id, h.kind, h.happened_at from since s cross join lateral (
+			select x.machine_id, x.kind, x.happened_at from change x where x.machine_id = s.id and x.happened_at <= $2
+			order by x.happened_at desc limit 100) h
+		where h.kind in ('tool', 'adjustment') and (s.at is null or h.happened_at > s.at)
+		order by h.happened_at desc`, stations, g.now)
 	if err != nil {
 		return fmt.Errorf("read changes: %w", err)
 	}
@@ -256,8 +264,9 @@ func (g *gathering) readPoints(ctx context.Context, tx pgx.Tx, points int) error
 			from[i] = g.now
 		}
 	}
-	rows, err = tx.Query(ctx, selectSignals+` from unnest($1::uuid[], $2::timestamptz[]) c (id, since)
-		join signal g on g.characteristic_id = c.id and g.taken_at >= c.since`, ids, from)
+	// Without the limit, far above what there can be, the planner reads all signals.
+	rows, err = tx.Query(ctx, selectSignals+` from unnest($1::uuid[], $2::timestamptz[]) c (id, since) cross join lateral (
+		select * from signal x where x.characteristic_id = c.id and x.taken_at >= c.since order by x.taken_at limit 5000) g`, ids, from)
 	if err != nil {
 		return fmt.Errorf("read signals: %w", err)
 	}
@@ -377,8 +386,36 @@ func sortMachines(ms []plant.MachineNow) {
 }
 
 // StationSetups reads a station with what is measured there and by which limits, and
-// nothing of how it stands: what checking a round needs, in one question.
+// nothing of how it stands: what checking a round needs, in one question. It may be a
+// second old; recording the round checks it again, under the lock.
 func (s *Store) StationSetups(ctx context.Context, id uuid.UUID) (plant.StationState, error) {
+	if v, ok := s.measured.Load(id); ok {
+		if m := v.(measuredStation); time.Since(m.read) < time.Second {
+			return m.clone(), nil
+		}
+	}
+	m := measuredStation{read: time.Now()}
+	var err error
+	if m.StationState, err = s.stationSetups(ctx, id); err != nil {
+		return m.StationState, err
+	}
+	s.measured.Store(id, m)
+	return m.clone(), nil
+}
+
+// measuredStation is what StationSetups read, and when.
+type measuredStation struct {
+	plant.StationState
+	read time.Time
+}
+
+func (m measuredStation) clone() plant.StationState {
+	st := m.StationState
+	st.Characteristics = slices.Clone(st.Characteristics)
+	return st
+}
+
+func (s *Store) stationSetups(ctx context.Context, id uuid.UUID) (plant.StationState, error) {
 	var st plant.StationState
 	rows, err := s.pool.Query(ctx, `select t.id, t.name, t.family, t.position, l.id, l.name, l.position,
 			c.id, c.machine_id, c.part_id, c.family, c.name, c.position, cs.version, cs.setup_version, force.revision_id

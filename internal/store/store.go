@@ -44,6 +44,7 @@ type shared struct {
 	plantID   *atomic.Pointer[uuid.UUID]
 	revisions *sync.Map // uuid -> *frozen; revisions never change
 	setups    *sync.Map // setupKey -> plant.Setup; versions never change
+	measured  *sync.Map // station -> measuredStation, for about a second
 	onChange  *atomic.Pointer[func([]uuid.UUID)]
 	every     int // subgroups between two checkpoints
 	limit     time.Duration
@@ -69,7 +70,7 @@ func Open(ctx context.Context, o Options) (*Store, error) {
 	}
 	s := &Store{clock: o.Clock, shared: shared{
 		pool: pool, plantID: new(atomic.Pointer[uuid.UUID]),
-		revisions: new(sync.Map), setups: new(sync.Map), onChange: new(atomic.Pointer[func([]uuid.UUID)]), every: o.CheckpointEvery,
+		revisions: new(sync.Map), setups: new(sync.Map), measured: new(sync.Map), onChange: new(atomic.Pointer[func([]uuid.UUID)]), every: o.CheckpointEvery,
 		limit: cmp.Or(o.SaveLimit, 15*time.Second),
 	}}
 	if s.clock == nil {

@@ -224,6 +224,7 @@ func (s *Store) AddCharacteristic(ctx context.Context, c plant.Characteristic, s
 	if err != nil {
 		return fmt.Errorf("add characteristic: %w", err)
 	}
+	s.measured.Delete(c.StationID)
 	s.changed(c.StationID)
 	return nil
 }
