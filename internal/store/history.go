@@ -96,6 +96,9 @@ func (s *Store) historyAround(ctx context.Context, tx pgx.Tx, h *plant.History, 
 	from, to := stretch.From, stretch.To
 	if to.IsZero() {
 		to = s.now()
+		if n := len(h.Points); n > 0 && h.Points[n-1].TakenAt.After(to) {
+			to = h.Points[n-1].TakenAt // a tablet's clock may be ahead by a little
+		}
 	}
 	if len(h.Points) > 0 && (from.IsZero() || from.Before(h.Points[0].TakenAt)) {
 		from = h.Points[0].TakenAt
@@ -129,7 +132,12 @@ func (s *Store) historyAround(ctx context.Context, tx pgx.Tx, h *plant.History, 
 	if h.Changes, err = s.changesOf(ctx, tx, h.State.MachineID, from, to); err != nil {
 		return err
 	}
-	list, err := s.matters(ctx, tx, ` where m.characteristic_id = $1 and m.opened_taken between $2 and $3 order by m.opened_taken`, id, from, to)
+	// Besides those that opened within the stretch there is at most the one that was open
+	// when it begins.
+	list, err := s.matters(ctx, tx, ` where m.id in (
+			select id from matter where characteristic_id = $1 and opened_taken between $2 and $3
+			union all select b.id from (select id, closed_at from matter where characteristic_id = $1 and opened_taken < $2 order by opened_taken desc limit 3) b
+			where b.closed_at is null or b.closed_at >= $2) order by m.opened_taken`, id, from, to)
 	for _, m := range list {
 		h.Matters = append(h.Matters, *m)
 	}
@@ -139,20 +147,17 @@ func (s *Store) historyAround(ctx context.Context, tx pgx.Tx, h *plant.History, 
 // course reads what is in force at from and the boundaries after it, up to and with to.
 func (s *Store) course(ctx context.Context, q querier, id uuid.UUID, from, to time.Time) (plant.Course, error) {
 	var c plant.Course
-	rows, err := q.Query(ctx, selectBoundaries+` where characteristic_id = $1 and at <= $2
-		and at >= coalesce((select max(at) from boundary where characteristic_id = $1 and at <= $2 and kind in ('revision', 'setup')), '-infinity')
-		order by at, id`, id, from)
+	var begun *time.Time
+	var revision *uuid.UUID
+	err := q.QueryRow(ctx, `select
+		(select at from boundary where characteristic_id = $1 and at <= $2 order by at desc, id desc limit 1),
+		(select revision_id from boundary where characteristic_id = $1 and at <= $2 and kind in ('revision', 'setup') order by at desc, id desc limit 1)`,
+		id, from).Scan(&begun, &revision)
 	if err != nil {
 		return c, fmt.Errorf("read boundaries: %w", err)
 	}
-	before, err := pgx.CollectRows(rows, scanBoundary)
-	if err != nil {
-		return c, fmt.Errorf("read boundaries: %w", err)
-	}
-	for _, b := range before {
-		c.Before = c.Before.Then(b)
-	}
-	rows, err = q.Query(ctx, selectBoundaries+` where characteristic_id = $1 and at > $2 and at <= $3 order by at, id`, id, from, to)
+	c.Before = plant.Segment{From: orZero(begun), Revision: orNil(revision)}
+	rows, err := q.Query(ctx, selectBoundaries+` where characteristic_id = $1 and at > $2 and at <= $3 order by at, id`, id, from, to)
 	if err != nil {
 		return c, fmt.Errorf("read boundaries: %w", err)
 	}

@@ -5,6 +5,8 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"maps"
+	"slices"
 	"time"
 
 	"github.com/google/uuid"
@@ -167,19 +169,29 @@ func (s *Store) LogChange(ctx context.Context, c plant.Change) error {
 		if c.Characteristic != uuid.Nil && held[c.Characteristic] == nil {
 			return &plant.Error{Kind: plant.NotFound, Field: "characteristic", Message: "This machine has no such characteristic."}
 		}
+		affected := slices.Collect(maps.Keys(held))
+		if c.Characteristic != uuid.Nil {
+			affected = []uuid.UUID{c.Characteristic}
+		}
+		var prompted bool
+		// The order makes it a short walk along an index for each; left to itself the planner
+		// reads all matters.
+		err := tx.QueryRow(ctx, `select count(*) > 0 from unnest($1::uuid[]) h (id) cross join lateral (
+				(select from matter t where t.plant_id = $3 and t.characteristic_id = h.id and t.closed_at is null and t.opened_taken <= $2 limit 1)
+				union all
+				(select from matter t where t.characteristic_id = h.id and t.closed_at > $2 and t.opened_taken <= $2 order by t.closed_at limit 1)) open`,
+			affected, c.HappenedAt, s.plant()).Scan(&prompted)
+		if err != nil {
+			return fmt.Errorf("read matters: %w", err)
+		}
 		var have []byte
-		err := tx.QueryRow(ctx, `insert into change (id, plant_id, station_id, machine_id, characteristic_id, kind, size, note, prompted,
+		err = tx.QueryRow(ctx, `insert into change (id, plant_id, station_id, machine_id, characteristic_id, kind, size, note, prompted,
 				happened_at, recorded_at, person_id, digest)
-			select $1, $2, m.station_id, m.id, $4, $5, $6::text::numeric, $7,
-				exists (select from matter t join characteristic h on h.id = t.characteristic_id
-					where h.machine_id = m.id and (t.characteristic_id = $4 or $4 is null)
-					and t.opened_taken <= $8 and (t.closed_at is null or t.closed_at > $8)),
-				$8, $9, $10, $11
-			from machine m where m.id = $3
+			select $1, $2, m.station_id, m.id, $4, $5, $6::text::numeric, $7, $12, $8, $9, $10, $11 from machine m where m.id = $3
 			on conflict (id) do nothing
 			returning prompted`,
 			c.ID, s.plant(), c.Machine, orNull(c.Characteristic), string(c.Kind), decimalOrNull(c.Size), c.Note,
-			c.HappenedAt, now, orNull(c.Person), digest[:]).Scan(&c.Prompted)
+			c.HappenedAt, now, orNull(c.Person), digest[:], prompted).Scan(&c.Prompted)
 		if errors.Is(err, pgx.ErrNoRows) {
 			if err := tx.QueryRow(ctx, `select digest from change where id = $1`, c.ID).Scan(&have); err != nil {
 				return fmt.Errorf("read stored change: %w", err)

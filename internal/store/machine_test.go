@@ -47,3 +47,44 @@ func TestBackdatedMachineStateMakesTheChangeoverBack(t *testing.T) {
 	}
 	consistent(t, p)
 }
+
+// TestPromptedIsJudgedAtTheInstantOfTheChange by what is known when it is recorded, for
+// what it affects.
+func TestPromptedIsJudgedAtTheInstantOfTheChange(t *testing.T) {
+	t.Parallel()
+	p, _ := learned(t)
+	ctx := context.Background()
+	p.Clock.Advance(30 * time.Minute)
+	before := p.Clock.Now().Add(-time.Minute)
+	a := p.MustRecord(t, p.Diameter, high...)
+	during := p.Clock.Advance(10 * time.Minute)
+	p.Clock.Advance(10 * time.Minute)
+	closeMatter(t, p, a.Parts[0].Matter, "Insert changed", time.Time{})
+	closed := p.Clock.Now()
+	for _, tc := range []struct {
+		what     string
+		at       time.Time
+		of       plant.Characteristic
+		whole    bool
+		prompted bool
+	}{
+		{"before the signal", before, p.Diameter, false, false},
+		{"at the signal", a.TakenAt, p.Diameter, false, true},
+		{"while it was open", during, p.Diameter, false, true},
+		{"on the whole machine while it was open", during, p.Diameter, true, true},
+		{"on another characteristic while it was open", during, p.Force, false, false},
+		{"at the closing", closed, p.Diameter, false, false},
+	} {
+		c := plant.Change{ID: storetest.ID(), Station: p.Station.ID, Machine: p.Machine.ID, Kind: plant.ToolChanged, HappenedAt: tc.at}
+		if !tc.whole {
+			c.Kind, c.Characteristic, c.Size = plant.Adjustment, tc.of.ID, storetest.Decimal(t, "0.01")
+		}
+		if err := p.LogChange(ctx, c); err != nil {
+			t.Fatalf("%s: %v", tc.what, err)
+		}
+		var prompted bool
+		if err := p.Pool().QueryRow(ctx, `select prompted from change where id = $1`, c.ID).Scan(&prompted); err != nil || prompted != tc.prompted {
+			t.Errorf("%s: prompted = %v, %v; want %v", tc.what, prompted, err, tc.prompted)
+		}
+	}
+}

@@ -297,3 +297,35 @@ func TestEachRevisionComesIntoForceAtItsInstant(t *testing.T) {
 	}
 	consistent(t, p)
 }
+
+// TestHistoryHoldsWhatTouchesTheStretch: the matter that was open when the stretch
+// begins, and the signal of a subgroup whose tablet is a minute ahead.
+func TestHistoryHoldsWhatTouchesTheStretch(t *testing.T) {
+	t.Parallel()
+	p, _ := learned(t)
+	ctx := context.Background()
+	p.Clock.Advance(30 * time.Minute)
+	a := p.MustRecord(t, p.Diameter, high...)
+	p.Clock.Advance(30 * time.Minute)
+	begin := p.Clock.Now()
+	p.MustRecord(t, p.Diameter, calm...)
+	p.Clock.Advance(30 * time.Minute)
+	closeMatter(t, p, a.Parts[0].Matter, "Insert changed", time.Time{})
+	p.Clock.Advance(30 * time.Minute)
+	h, err := p.History(ctx, p.Diameter.ID, plant.Stretch{From: begin, To: p.Clock.Now()})
+	if err != nil || len(h.Points) != 1 || len(h.Matters) != 1 || h.Matters[0].ID != a.Parts[0].Matter {
+		t.Errorf("%d points, matters %+v, %v; want the one that was open at the beginning", len(h.Points), h.Matters, err)
+	}
+	if h, err = p.History(ctx, p.Diameter.ID, plant.Stretch{From: p.Clock.Now().Add(-time.Minute)}); err != nil || len(h.Matters) != 0 {
+		t.Errorf("after it was closed: %+v, %v; want none", h.Matters, err)
+	}
+	ahead := p.Round(p.Diameter, high...)
+	ahead.TakenRaw = ahead.TakenRaw.Add(time.Minute)
+	if _, err := p.Record(ctx, ahead); err != nil {
+		t.Fatal(err)
+	}
+	h, err = p.History(ctx, p.Diameter.ID, plant.Stretch{Last: 1})
+	if err != nil || len(h.Points) != 1 || len(h.Points[0].Signals) == 0 || len(h.Matters) != 1 {
+		t.Errorf("history of what was taken a minute ahead: %+v, %v; want its signal and matter", h.Points, err)
+	}
+}
