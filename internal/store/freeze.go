@@ -4,6 +4,7 @@ import (
 	"context"
 	"encoding/json"
 	"fmt"
+	"time"
 
 	"github.com/google/uuid"
 	"github.com/jackc/pgx/v5"
@@ -19,8 +20,7 @@ import (
 //
 // The study is read before the lock is taken, so that a long one holds up no saving.
 func (s *Store) Freeze(ctx context.Context, f plant.FreezeRequest) (plant.Revision, error) {
-	now := s.now()
-	if err := f.Check(now); err != nil {
+	if err := f.Check(s.now()); err != nil {
 		return plant.Revision{}, err
 	}
 	h, err := s.History(ctx, f.Characteristic, plant.Stretch{From: f.From, To: f.To})
@@ -33,6 +33,11 @@ func (s *Store) Freeze(ctx context.Context, f plant.FreezeRequest) (plant.Revisi
 	if h.State.Setup.Version != f.SetupVersion {
 		return plant.Revision{}, &plant.Error{Kind: plant.Conflict, Message: "The set-up was changed meanwhile. Look at the study again."}
 	}
+	for _, old := range h.Setups {
+		if old.Unit != h.State.Setup.Unit {
+			return plant.Revision{}, plant.Invalidf("from", "The stretch holds subgroups that were measured in another unit. Begin it later.")
+		}
+	}
 	study := plant.Study{Setup: h.State.Setup, Points: h.Points, LeftOut: f.LeftOut, Estimator: f.Estimator, Multiple: f.Multiple, Rules: f.Rules}
 	if err := study.Run(h.Course); err != nil {
 		return plant.Revision{}, err
@@ -42,10 +47,6 @@ func (s *Store) Freeze(ctx context.Context, f plant.FreezeRequest) (plant.Revisi
 	}
 	r := study.Revision()
 	r.ID, r.Characteristic, r.Reason, r.Author = newID(), f.Characteristic, f.Reason, f.Person
-	r.FrozenAt = now
-	if r.InForceFrom = plant.CutTime(f.InForceFrom); r.InForceFrom.Before(now) {
-		r.InForceFrom = now
-	}
 	if err := s.freeze(ctx, &r, f); err != nil {
 		return plant.Revision{}, fmt.Errorf("freeze: %w", err)
 	}
@@ -75,7 +76,13 @@ func (s *Store) freeze(ctx context.Context, r *plant.Revision, f plant.FreezeReq
 		if newest != f.After || l.setupVersion != f.SetupVersion {
 			return &plant.Error{Kind: plant.Conflict, Message: "Somebody has frozen limits or changed the set-up meanwhile. Look at the study again."}
 		}
-		r.Number = newest + 1
+		// Now is read under the lock: a save that went before was told by the old limits and
+		// is to stay judged by them, however long the study took.
+		now := s.now()
+		r.Number, r.FrozenAt = newest+1, now
+		if r.InForceFrom = plant.CutTime(f.InForceFrom); r.InForceFrom.Before(now) {
+			r.InForceFrom = now
+		}
 		signature, err := s.signature(ctx, tx, f.Person, "freeze")
 		if err != nil {
 			return err
@@ -118,19 +125,44 @@ func revisionBody(r plant.Revision, signature *ledger.Signature) ledger.Revision
 	return body
 }
 
+// learnAgain lets a characteristic learn from now on. Limits that wait to come into force
+// were frozen for the set-up before and are cancelled at their instant: of boundaries at
+// one instant the last rules.
+func (s *Store) learnAgain(ctx context.Context, tx pgx.Tx, b *pgx.Batch, l *locked, now time.Time) error {
+	rows, err := tx.Query(ctx, `select distinct at from boundary where characteristic_id = $1 and at > $2 and kind = 'revision' order by at`, l.id, now)
+	if err != nil {
+		return fmt.Errorf("read boundaries: %w", err)
+	}
+	ends, err := pgx.CollectRows(rows, pgx.RowTo[time.Time])
+	if err != nil {
+		return fmt.Errorf("read boundaries: %w", err)
+	}
+	for _, at := range append([]time.Time{now}, ends...) {
+		if err := s.addBoundary(ctx, tx, b, l, plant.Boundary{ID: newID(), At: at, Kind: plant.BySetup}, now); err != nil {
+			return err
+		}
+		// What this changed must be written before it can be read again.
+		if err := tx.SendBatch(ctx, b).Close(); err != nil {
+			return fmt.Errorf("write boundary: %w", err)
+		}
+		*b = pgx.Batch{}
+	}
+	return nil
+}
+
 // ChangeSetup adds a version of a characteristic's set-up. Where limits of the old one
 // mean nothing under it, the characteristic is learning from here on.
 func (s *Store) ChangeSetup(ctx context.Context, characteristic uuid.UUID, setup plant.Setup, replaces int, by uuid.UUID) error {
 	if err := setup.Validate(); err != nil {
 		return err
 	}
-	now := s.now()
 	var station uuid.UUID
 	err := s.inTx(ctx, func(tx pgx.Tx) error {
 		l, err := s.lockOne(ctx, tx, characteristic)
 		if err != nil {
 			return err
 		}
+		now := s.now()
 		station = l.station
 		if l.setupVersion != replaces {
 			return &plant.Error{Kind: plant.Conflict, Message: "Somebody has changed the set-up meanwhile. Look at it again."}
@@ -149,7 +181,7 @@ func (s *Store) ChangeSetup(ctx context.Context, characteristic uuid.UUID, setup
 			return err
 		}
 		if setup.NeedsNewLimits(old) {
-			if err := s.addBoundary(ctx, tx, b, l, plant.Boundary{ID: newID(), At: now, Kind: plant.BySetup}, now); err != nil {
+			if err := s.learnAgain(ctx, tx, b, l, now); err != nil {
 				return err
 			}
 		}
