@@ -1,6 +1,7 @@
 package main
 
 import (
+	"cmp"
 	"context"
 	"errors"
 	"fmt"
@@ -14,6 +15,7 @@ import (
 	"syscall"
 	"time"
 
+	"github.com/jackc/pgx/v5"
 	"golang.org/x/sync/errgroup"
 
 	"holdfast/internal/auth"
@@ -47,10 +49,20 @@ func (c *demoCmd) Run(ctx context.Context, log *slog.Logger) error {
 	if c.URL != "" && c.Fresh {
 		return errors.New("--fresh throws a private cluster away; on a database of your own, make an empty one instead")
 	}
+	if err := c.refuseForeign(ctx); err != nil {
+		return err
+	}
+	over, err := c.startOver()
+	if err != nil {
+		return err
+	}
+	if over {
+		fmt.Fprintln(out, "The demo was interrupted while it was made; it is made anew.")
+	}
 	if c.URL == "" {
 		fmt.Fprintf(out, "Starting a private PostgreSQL in %s\n", c.Data)
 	}
-	db, done, err := c.open(ctx, log, c.Fresh)
+	db, done, err := c.open(ctx, log, c.Fresh || over)
 	if err != nil {
 		return err
 	}
@@ -72,7 +84,9 @@ func (c *demoCmd) Run(ctx context.Context, log *slog.Logger) error {
 }
 
 func (c *demoCmd) serve(ctx context.Context, db reached, p *program, log *slog.Logger) error {
-	g, ctx := errgroup.WithContext(untilPostgresEnds(ctx, db, log))
+	ctx = untilPostgresEnds(ctx, db, log)
+	serving := ctx
+	g, ctx := errgroup.WithContext(serving)
 	g.Go(func() error { return p.Run(ctx) })
 	if !c.Quiet {
 		sim, err := demo.NewSimulator(ctx, p.store, log, time.Now)
@@ -84,7 +98,7 @@ func (c *demoCmd) serve(ctx context.Context, db reached, p *program, log *slog.L
 			return nil
 		})
 	}
-	return g.Wait()
+	return errors.Join(g.Wait(), whyEnded(serving))
 }
 
 // build fills an empty database and refuses one that holds anything else than the demo.
@@ -100,7 +114,7 @@ func (c *demoCmd) build(ctx context.Context, db reached, out io.Writer) (string,
 		return "", err
 	}
 	if !empty && !ours {
-		return "", errors.New("this database holds a plant that is not the demo's; the demo takes only an empty database or its own")
+		return "", errForeign
 	}
 	const oneClick = "On this machine the sign-in page lets each of them in by one click."
 	if ours {
@@ -116,9 +130,78 @@ func (c *demoCmd) build(ctx context.Context, db reached, out io.Writer) (string,
 		fmt.Fprintf(&b, "    %-16s %s\n", login, string(secret))
 		return hasher.Hash(ctx, secret)
 	}
+	finished, err := c.begin()
+	if err != nil {
+		return "", err
+	}
 	fmt.Fprintf(out, "Making Kestrel Row and its last %d days\n", demo.Days)
 	err = demo.Build(ctx, st, hash, time.Now(), func(done float64) { fmt.Fprintf(out, "  %3.0f %%\n", 100*done) })
-	return "Who may sign in, and their secrets:\n" + b.String() + oneClick + "\n", err
+	if err != nil {
+		return "", err
+	}
+	return "Who may sign in, and their secrets:\n" + b.String() + oneClick + "\n", finished()
+}
+
+var errForeign = errors.New("this database holds something else; the demo takes only an empty database or its own")
+
+// refuseForeign looks before anything is migrated: a database that holds something else
+// is not to be changed at all.
+func (c *demoCmd) refuseForeign(ctx context.Context) error {
+	at := cmp.Or(c.OwnerURL, c.URL)
+	if c.URL == "" {
+		return nil
+	}
+	conn, err := pgx.Connect(ctx, at)
+	if err != nil {
+		return fmt.Errorf("connect to the database: %w", err)
+	}
+	defer conn.Close(ctx)
+	var tables int
+	var plants bool
+	if err := conn.QueryRow(ctx, `select count(*), to_regclass('public.plant') is not null from pg_class c join pg_namespace n on n.oid = c.relnamespace
+		where c.relkind in ('r', 'p', 'v', 'm', 'f') and n.nspname <> 'information_schema' and n.nspname not like 'pg\_%'`).Scan(&tables, &plants); err != nil {
+		return fmt.Errorf("look into the database: %w", err)
+	}
+	if !plants {
+		if tables > 0 {
+			return errForeign
+		}
+		return nil
+	}
+	var foreign bool
+	if err := conn.QueryRow(ctx, `select exists (select from public.plant where not demo)`).Scan(&foreign); err != nil {
+		return fmt.Errorf("look into the database: %w", err)
+	}
+	if foreign {
+		return errForeign
+	}
+	return nil
+}
+
+// unfinished is a file beside the private cluster that is there while the demo is made.
+func (c *demoCmd) unfinished() string { return c.Data + ".unfinished" }
+
+// startOver reports whether the demo was interrupted while it was made.
+func (c *demoCmd) startOver() (bool, error) {
+	if c.Data == "" || c.URL != "" {
+		return false, nil
+	}
+	_, err := os.Stat(c.unfinished())
+	if errors.Is(err, os.ErrNotExist) {
+		return false, nil
+	}
+	return err == nil, err
+}
+
+// begin notes that the demo is being made, until finished is called.
+func (c *demoCmd) begin() (finished func() error, err error) {
+	if c.URL != "" {
+		return func() error { return nil }, nil
+	}
+	if err := os.WriteFile(c.unfinished(), nil, 0o644); err != nil {
+		return nil, fmt.Errorf("note that the demo is being made: %w", err)
+	}
+	return func() error { return os.Remove(c.unfinished()) }, nil
 }
 
 // listen takes the wanted port, or the next free one, and says so.

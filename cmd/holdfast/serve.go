@@ -43,7 +43,8 @@ func (c *serveCmd) Run(ctx context.Context, log *slog.Logger) error {
 			return err
 		}
 		defer p.Close()
-		return p.Run(untilPostgresEnds(ctx, db, log))
+		ctx = untilPostgresEnds(ctx, db, log)
+		return errors.Join(p.Run(ctx), whyEnded(ctx))
 	})
 }
 
@@ -53,18 +54,30 @@ func untilPostgresEnds(ctx context.Context, db reached, log *slog.Logger) contex
 	if db.private == nil {
 		return ctx
 	}
-	ctx, cancel := context.WithCancel(ctx)
+	ctx, cancel := context.WithCancelCause(ctx)
 	go func() {
-		defer cancel()
+		defer cancel(nil)
 		select {
 		case <-ctx.Done():
 		case <-db.private.Done():
 			if ctx.Err() == nil {
+				cancel(errPostgresEnded)
 				log.Error("the private Postgres ended by itself", "its log ends with", db.private.LogTail())
 			}
 		}
 	}()
 	return ctx
+}
+
+var errPostgresEnded = errors.New("the private Postgres ended by itself")
+
+// whyEnded is nil when serving ended because it was asked to: an error makes a service
+// manager start it again.
+func whyEnded(ctx context.Context) error {
+	if err := context.Cause(ctx); errors.Is(err, errPostgresEnded) {
+		return err
+	}
+	return nil
 }
 
 type userCmd struct {
