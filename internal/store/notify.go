@@ -171,6 +171,13 @@ func (f *Feed) markAll(ctx context.Context) error {
 	return err
 }
 
+// tellAll is markAll where a failure is only worth a line.
+func (f *Feed) tellAll(ctx context.Context) {
+	if err := f.markAll(ctx); err != nil && ctx.Err() == nil {
+		f.log.Warn("could not look for unannounced changes", "error", err)
+	}
+}
+
 func (f *Feed) stations(ctx context.Context, sql string, args ...any) ([]uuid.UUID, error) {
 	rows, err := f.store.pool.Query(ctx, sql, args...)
 	if err != nil {
@@ -183,12 +190,14 @@ func (f *Feed) stations(ctx context.Context, sql string, args ...any) ([]uuid.UU
 // transactions that were not finished at the last look. Marking twice is harmless.
 func (f *Feed) lookAgain(ctx context.Context) {
 	const oldest = `select pg_snapshot_xmin(pg_current_snapshot())::text`
-	var since string
-	for sleep(ctx, f.catchUp) {
+	var since string // read at once: what is written before the first look counts as well
+	for first := true; first || sleep(ctx, f.catchUp); first = false {
 		if since == "" {
 			if err := f.store.pool.QueryRow(ctx, oldest).Scan(&since); err != nil {
 				since = ""
+				continue
 			}
+			f.tellAll(ctx) // and what was written before it could be read
 			continue
 		}
 		var next string
