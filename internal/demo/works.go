@@ -66,7 +66,7 @@ var works = []place{
 			setup: plant.Setup{Unit: "mm", Decimals: 3, Target: dec(14991, 3), Lower: dec(14982, 3), Upper: dec(15000, 3), Chart: limits.XBarR, Size: 5, Plan: every(30),
 				ControlPlan: plant.ControlPlan{Operation: "20 turning", Drawing: "KR-1100", DrawingRevision: "C", Plan: "CP-20", RiskAnalysis: "RA-20.3", SpecialMark: "S", Method: "micrometer, seat centre"}},
 			faults: []fault{{day: 9.3, shift: 2.2, cause: "Insert chipped", action: "Insert changed"}, {day: 31.6, widen: 2.1, cause: "Swarf in collet", action: "Collet cleaned, pressure set to 18 bar"},
-				{day: 44.2, shift: -1.9, cause: "First parts after bar change, warm", action: "Warm-up of ten parts agreed"}, {day: Days - 0.03, shift: 1.7, open: true, cause: "Insert chipped", action: "Insert changed"}}},
+				{day: 44.2, shift: -1.9, cause: "First parts after bar change, warm", action: "Warm-up of ten parts agreed"}, {day: Days - 0.03, shift: 2.2, open: true, cause: "Insert chipped", action: "Insert changed"}}},
 		{name: "Shoulder length", gauge: "Depth gauge D-02", mean: 9.998, sigma: 0.021, wander: 0.04,
 			setup:  plant.Setup{Unit: "mm", Decimals: 2, Target: dec(1000, 2), Lower: dec(990, 2), Upper: dec(1010, 2), Chart: limits.XBarR, Size: 3, Plan: every(60), ControlPlan: plant.ControlPlan{Operation: "20 turning", Drawing: "KR-1100", Plan: "CP-20"}},
 			faults: []fault{{day: 22.4, shift: 2.8, cause: "Stop moved", action: "Stop set and locked"}}},
