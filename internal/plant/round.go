@@ -1,10 +1,12 @@
 package plant
 
 import (
+	"bytes"
 	"crypto/sha256"
 	"encoding/json"
 	"fmt"
 	"math"
+	"slices"
 	"time"
 
 	"github.com/google/uuid"
@@ -57,6 +59,24 @@ func (r Round) TakenAt() time.Time { return CutTime(r.TakenRaw.Add(r.Skew)) }
 // from both, so that a sender cannot reuse one and a repeated round makes the same.
 func SubgroupID(round, characteristic uuid.UUID) uuid.UUID {
 	return uuid.NewSHA1(round, characteristic[:])
+}
+
+// Clean is the round with its text as it is kept and its entries in the order of their
+// characteristics. It shares nothing with r that it changes.
+func (r Round) Clean() Round {
+	r.TakenRaw = CutTime(r.TakenRaw)
+	r.Source, r.Occasion = CleanText(r.Source), Occasion(CleanText(string(r.Occasion)))
+	r.Entries = slices.Clone(r.Entries)
+	for i := range r.Entries {
+		e := &r.Entries[i]
+		e.ShortReason = CleanText(e.ShortReason)
+		e.Retyped = slices.Clone(e.Retyped)
+		for j := range e.Retyped {
+			e.Retyped[j].First = CleanText(e.Retyped[j].First)
+		}
+	}
+	slices.SortFunc(r.Entries, func(a, b Entry) int { return bytes.Compare(a.Characteristic[:], b.Characteristic[:]) })
+	return r
 }
 
 // Digest tells a repeated send from another round under the same id. It covers what

@@ -34,7 +34,7 @@ type versionFacts struct {
 // judges again what follows. It returns the verdict on the corrected subgroup. A
 // correction of a version that is no longer the newest is a Conflict and is set aside.
 func (s *Store) Correct(ctx context.Context, c plant.Correction) (plant.PartAnswer, error) {
-	c.Reason = plant.CleanText(c.Reason)
+	c.Reason, c.ShortReason = plant.CleanText(c.Reason), plant.CleanText(c.ShortReason)
 	if c.Reason == "" {
 		return plant.PartAnswer{}, plant.Invalidf("reason", "Say why it is corrected.")
 	}

@@ -6,7 +6,6 @@ import (
 	"encoding/json"
 	"errors"
 	"fmt"
-	"sort"
 	"time"
 
 	"github.com/google/uuid"
@@ -78,10 +77,7 @@ func (s *Store) Record(ctx context.Context, r plant.Round) (plant.Answer, error)
 	if err := r.Check(); err != nil {
 		return plant.Answer{}, err
 	}
-	r.TakenRaw = plant.CutTime(r.TakenRaw)
-	sort.Slice(r.Entries, func(i, j int) bool {
-		return bytes.Compare(r.Entries[i].Characteristic[:], r.Entries[j].Characteristic[:]) < 0
-	})
+	r = r.Clean()
 	ctx, cancel := s.saving(ctx)
 	defer cancel()
 	rec := &recording{s: s, round: r, digest: r.Digest(), now: s.now()}
