@@ -118,6 +118,7 @@ func (a *averages) draw(last int, newest bool) {
 		}
 	}
 	d.polyline("trace", run)
+	said := a.saidBeyond(last)
 	for i, p := range a.points {
 		if !finite(p.Value) {
 			continue
@@ -144,9 +145,38 @@ func (a *averages) draw(last int, newest bool) {
 				off = -off
 			}
 			d.chevron(x, y-off, up)
-			d.text("beyond-value", x-stationR*3.4-4, y+5, p.Text, end)
+			if left, ok := said[i]; ok {
+				d.text("beyond-value", left-stationR*3.4-4, y+5, p.Text, end)
+			}
 		}
 	}
+}
+
+// beyondWidth is the room that the value of a point beyond the axis takes.
+const beyondWidth = 110
+
+// saidBeyond chooses whose values are written of the points beyond the axis: of points
+// so near to one another that their values would lie over one another only the last,
+// to the left of them all. It returns that place by the index of the point.
+func (a *averages) saidBeyond(last int) map[int]float64 {
+	said := make(map[int]float64)
+	before := map[bool]int{true: -1, false: -1} // the last point beyond, above and below
+	for i, p := range a.points {
+		if !finite(p.Value) {
+			continue
+		}
+		if _, inside := a.s.y(p.Value); inside {
+			continue
+		}
+		up := p.Value > a.s.hi
+		left := a.x(a.slot(i, last))
+		if b := before[up]; b >= 0 && left-a.x(a.slot(b, last)) < beyondWidth {
+			left = said[b]
+			delete(said, b)
+		}
+		said[i], before[up] = left, i
+	}
+	return said
 }
 
 func (a *averages) band() {

@@ -3,6 +3,7 @@ package chart
 import (
 	"math"
 	"math/rand/v2"
+	"strings"
 	"testing"
 	"time"
 )
@@ -209,5 +210,25 @@ func TestScaleDataPlacesWhatTheDrawingShows(t *testing.T) {
 	got := a.s.top + (a.s.hi-14.9930)/(a.s.hi-a.s.lo)*(a.s.bottom-a.s.top) // what falls.js computes
 	if math.Abs(got-want) > 1e-6 {
 		t.Errorf("script would put the dot at %g, the server at %g", got, want)
+	}
+}
+
+// TestValuesBeyondTheAxisStayApart: of neighbours beyond it only the last is said.
+func TestValuesBeyondTheAxisStayApart(t *testing.T) {
+	t.Parallel()
+	v := verdictSample("v")
+	for i := range v.Points {
+		v.Points[i].Value, v.Points[i].Text = v.Limits.Centre, "calm"
+	}
+	far := v.Limits.Centre + 40*(v.Limits.Upper-v.Limits.Centre)
+	n := len(v.Points)
+	v.Points[1].Value, v.Points[1].Text = far, "alone"
+	v.Points[n-2].Value, v.Points[n-2].Text = far, "first"
+	v.Points[n-1].Value, v.Points[n-1].Text = far, "second"
+	svg := v.SVG()
+	for text, want := range map[string]bool{"alone": true, "first": false, "second": true} {
+		if got := strings.Contains(svg, `>`+text+`</text>`); got != want {
+			t.Errorf("%q is written: %v, want %v", text, got, want)
+		}
 	}
 }
