@@ -322,7 +322,8 @@ func causeOf(causes []plant.Cause, id string) (plant.Cause, bool) {
 }
 
 // fixInstant reads the wall time of a fix; empty means now. A browser sends whole
-// minutes, so the minute in which the signal was taken means the moment after it.
+// minutes, so the minute in which the signal was taken means the moment after it. Where
+// clocks were set back an hour has two instants: the later one that fits is meant.
 func fixInstant(text string, opened, now time.Time, zone *time.Location) (time.Time, error) {
 	if text == "" {
 		return time.Time{}, nil
@@ -333,8 +334,27 @@ func fixInstant(text string, opened, now time.Time, zone *time.Location) (time.T
 			return time.Time{}, err
 		}
 	}
+	at = afterSignal(at, opened, now)
 	if !at.After(opened) && at.Equal(opened.Truncate(time.Minute)) {
 		at = opened.Add(time.Microsecond)
 	}
 	return at.UTC(), nil
+}
+
+// afterSignal is the latest instant of at's wall time that lies between the minute of
+// the signal and now, or at itself when none does.
+func afterSignal(at, opened, now time.Time) time.Time {
+	best, found := at, false
+	_, offset := at.Zone()
+	for _, by := range []time.Duration{0, -3 * time.Hour, 3 * time.Hour} { // no zone sets its clock by more
+		_, other := at.Add(by).Zone()
+		twin := at.Add(time.Duration(offset-other) * time.Second)
+		if _, o := twin.Zone(); o != other || twin.Before(opened.Truncate(time.Minute)) || twin.After(now) {
+			continue
+		}
+		if !found || twin.After(best) {
+			best, found = twin, true
+		}
+	}
+	return best
 }
