@@ -123,7 +123,7 @@ func newFixture(t *testing.T, change func(*web.Config)) *fixture {
 	c := web.Config{
 		Log: log, Sessions: sessions, Checker: f.people, Hub: f.hub,
 		Plant:   func() plant.Plant { return plant.Plant{Name: "Kestrel Row", Location: time.UTC, Demo: true} },
-		Station: plainSurface{ui.Station}, Board: plainSurface{ui.Board}, Desk: plainSurface{ui.Desk},
+		Station: plainSurface{ui.Station}, Board: plainSurface{ui.Board}, Desk: plainSurface{ui.Desk}, Admin: plainSurface{ui.Admin},
 		DemoPeople: func(context.Context) ([]plant.Person, error) { return f.people.all, nil },
 	}
 	if change != nil {

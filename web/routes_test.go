@@ -48,7 +48,6 @@ var table = []row{
 	{route: "POST /theme", may: everybody, status: 303},
 	// Without an upgrade the hub answers 400 to those whom it would serve.
 	{route: "GET /live", path: "/live?topic=board", may: seers, status: 400},
-	{route: "GET /admin/", may: managers, status: 200},
 
 	{route: "GET /station/", may: takers, status: 200},
 	{route: "POST /station/void", may: voiders, status: 303},
@@ -59,6 +58,9 @@ var table = []row{
 	{route: "GET /desk/", may: deskers, status: 200},
 	{route: "POST /desk/void", may: voiders, status: 303},
 	{route: "GET /desk/panic", may: deskers, status: 500},
+	{route: "GET /admin/", may: managers, status: 200},
+	{route: "POST /admin/void"}, // who manages voids nothing, and who voids does not manage
+	{route: "GET /admin/panic", may: managers, status: 500},
 }
 
 // missing compares the routes that there are with the table's.

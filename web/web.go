@@ -106,9 +106,6 @@ func New(c Config) http.Handler {
 		mount(r, ui.Station, c.Station)
 		mount(r, ui.Board, c.Board)
 		mount(r, ui.Desk, c.Desk)
-		if c.Admin == nil {
-			c.Admin = door.Admin{Log: c.Log}
-		}
 		mount(r, ui.Admin, c.Admin)
 		if c.API != nil {
 			r.Route("/api/v1", c.API.Routes)

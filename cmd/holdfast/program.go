@@ -18,6 +18,7 @@ import (
 	"holdfast/internal/plant"
 	"holdfast/internal/store"
 	"holdfast/web"
+	"holdfast/web/admin"
 	"holdfast/web/board"
 	"holdfast/web/desk"
 	"holdfast/web/station"
@@ -44,6 +45,7 @@ type program struct {
 	feed     *store.Feed
 	hub      *live.Hub
 	sessions *auth.Sessions
+	admin    *admin.Admin
 	listener net.Listener
 	server   *http.Server
 	plant    atomic.Pointer[plant.Plant]
@@ -108,12 +110,18 @@ func (p *program) join(ctx context.Context) error {
 		FindMany: p.store.FindSessions, DeleteExpired: p.store.DeleteExpiredSessions,
 	})
 	door := &auth.Door{Credentials: p.store, Hasher: hasher, Throttle: auth.NewThrottle(p.Clock), Log: p.Log}
+	machine, err := os.Hostname()
+	if err != nil {
+		p.Log.Warn("the machine does not tell its name", "error", err)
+	}
+	p.admin = admin.New(admin.Deps{Log: p.Log, Machine: machine})
 	cfg := web.Config{
 		Log: p.Log, Now: p.Clock, Plant: func() plant.Plant { return *p.plant.Load() },
 		Sessions: p.sessions, Checker: door, Hub: p.hub,
 		Station: station.New(station.Deps{Store: p.store, Signer: door, Log: p.Log}),
 		Board:   board.New(board.Deps{Store: p.store, Log: p.Log}),
 		Desk:    desk.New(desk.Deps{Store: p.store, Signer: door, Log: p.Log}),
+		Admin:   p.admin,
 		Ready:   p.store.Ready, Hosts: p.Hosts, Secure: p.Secure,
 	}
 	if p.Demo && pl.Demo {
@@ -180,6 +188,9 @@ func (p *program) Close() {
 		p.background()
 	}
 	p.running.Wait()
+	if p.admin != nil {
+		p.admin.Close()
+	}
 	if p.sessions != nil {
 		p.sessions.Close()
 	}

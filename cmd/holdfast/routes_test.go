@@ -48,6 +48,9 @@ var routeTable = []routeRow{
 	{"POST /theme", everybody, 303},
 	{"GET /live", seers, 400}, // no upgrade was asked for
 	{"GET /admin/", managers, 200},
+	{"GET /admin/qualification", managers, 200},
+	{"GET /admin/qualification.json", managers, 404}, // none was run
+	{"POST /admin/qualification", managers, 303},
 
 	{"GET /station/", takers, 200},
 	{"GET /station/{station}", takers, 200},
