@@ -116,6 +116,7 @@ func (c *migrateCmd) Run(ctx context.Context, log *slog.Logger) error {
 
 type auditCmd struct {
 	database
+	Judgements bool `help:"Also judge the whole record anew and compare with what is stored."`
 }
 
 func (c *auditCmd) Run(ctx context.Context, log *slog.Logger) error {
@@ -130,6 +131,21 @@ func (c *auditCmd) Run(ctx context.Context, log *slog.Logger) error {
 		}
 		fmt.Printf("%d entries in %d chains hold.\nRoot over all heads: %x\n", n, len(heads), rootOf(heads))
 		fmt.Println("Compare it with a root that was kept outside this machine: a chain shows tampering only against that.")
+		beside, err := st.CheckRecord(ctx)
+		if err != nil {
+			return err
+		}
+		subgroups, judged, err := st.CheckJudgements(ctx)
+		if err != nil {
+			return err
+		}
+		for _, d := range append(beside, judged...) {
+			fmt.Printf("%s: %s\n", d.Characteristic, d.What)
+		}
+		if n := len(beside) + len(judged); n > 0 {
+			return fmt.Errorf("the record differs in %d places from what was sealed and what follows from it", n)
+		}
+		fmt.Printf("What is on record is what was sealed, and %d subgroups judged again give the judgements on record.\n", subgroups)
 		return nil
 	})
 }
