@@ -139,7 +139,7 @@ func TestTwoPeopleOnOneMatter(t *testing.T) {
 	consistent(t, p)
 }
 
-func consistent(t *testing.T, p *storetest.Plant) {
+func consistent(t testing.TB, p *storetest.Plant) {
 	t.Helper()
 	_, differences, err := p.CheckJudgements(context.Background())
 	if err != nil {
@@ -150,6 +150,13 @@ func consistent(t *testing.T, p *storetest.Plant) {
 	}
 	if n, err := p.VerifyLedger(context.Background()); err != nil {
 		t.Errorf("ledger breaks after %d entries: %v", n, err)
+	}
+	differences, err = p.CheckRecord(context.Background())
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, d := range differences {
+		t.Error(d.What)
 	}
 }
 

@@ -171,9 +171,7 @@ func TestJudgementsAreThoseOfOneFold(t *testing.T) {
 					y.restart()
 				}
 			}
-			if n, err := p.VerifyLedger(context.Background()); err != nil {
-				t.Errorf("ledger breaks after %d entries: %v", n, err)
-			}
+			consistent(t, p)
 		})
 	}
 }
