@@ -13,6 +13,7 @@ import (
 	"golang.org/x/sync/errgroup"
 
 	"holdfast/internal/plant"
+	"holdfast/internal/spc/limits"
 	"holdfast/internal/store"
 	"holdfast/internal/store/storetest"
 )
@@ -328,5 +329,108 @@ func TestSaveOutlivesItsRequest(t *testing.T) {
 	}
 	if _, err := p.Answer(context.Background(), r.ID); err != nil {
 		t.Error(err)
+	}
+}
+
+// TestEverythingAtOnce: rounds in and out of order over several characteristics,
+// corrections, takings, closings, changes, changeovers, new limits and another set-up,
+// from many sides. Nobody waits for ever, and what is on record is what one fold gives.
+func TestEverythingAtOnce(t *testing.T) {
+	t.Parallel()
+	p, first := learned(t)
+	began := p.Clock.Now()
+	g, ctx := errgroup.WithContext(context.Background())
+	ctx, cancel := context.WithTimeout(ctx, time.Minute)
+	defer cancel()
+	tolerated := func(err error) error {
+		if plant.IsKind(err, plant.Conflict) || plant.IsKind(err, plant.Invalid) || plant.IsKind(err, plant.NotFound) {
+			return nil // somebody was quicker
+		}
+		return err
+	}
+	for w := range 10 {
+		rng := rand.New(rand.NewPCG(uint64(w), 3))
+		g.Go(func() error {
+			for range 22 {
+				p.Clock.Advance(time.Duration(rng.IntN(90)) * time.Second)
+				if err := tolerated(somethingAtOnce(ctx, p, rng, began, first)); err != nil {
+					return err
+				}
+			}
+			return nil
+		})
+	}
+	if err := g.Wait(); err != nil {
+		t.Fatal(err)
+	}
+	consistent(t, p)
+	var rounds, revisions, closed int
+	if err := p.Pool().QueryRow(context.Background(), `select (select count(*) from round), (select count(*) from revision),
+		(select count(*) from matter where closed_at is not null)`).Scan(&rounds, &revisions, &closed); err != nil {
+		t.Fatal(err)
+	}
+	if rounds < 30 || revisions < 2 || closed < 1 {
+		t.Errorf("%d rounds, %d revisions, %d matters closed: too little happened to show anything", rounds, revisions, closed)
+	}
+}
+
+func somethingAtOnce(ctx context.Context, p *storetest.Plant, rng *rand.Rand, began time.Time, first plant.Revision) error {
+	state := func() (plant.CharacteristicState, error) {
+		st, err := p.StationState(ctx, p.Station.ID, 30)
+		if err != nil {
+			return plant.CharacteristicState{}, err
+		}
+		return st.Characteristics[0], nil
+	}
+	switch k := rng.IntN(14); {
+	case k < 6:
+		now := p.Clock.Now()
+		r := plant.Round{ID: storetest.ID(), Station: p.Station.ID, Source: "station", Person: p.Operator.ID,
+			TakenRaw: now.Add(-time.Duration(rng.Int64N(int64(now.Sub(began) + 1))))}
+		shift := int64(rng.IntN(3)) * 5
+		r.Entries = []plant.Entry{
+			{Characteristic: p.Mass.ID, SetupVersion: 1, Readings: []int64{100 + rng.Int64N(60)}},
+			{Characteristic: p.Diameter.ID, SetupVersion: 1, Readings: []int64{14990 + shift, 14991, 14992, 14990, 14991 + shift}},
+			{Characteristic: p.Force.ID, SetupVersion: 1, Readings: []int64{640, 641, 642, 643, 644, 640 + rng.Int64N(50)}},
+		}
+		rng.Shuffle(3, func(i, j int) { r.Entries[i], r.Entries[j] = r.Entries[j], r.Entries[i] })
+		r.Entries = r.Entries[:1+rng.IntN(3)]
+		_, err := p.Record(ctx, r)
+		return err
+	case k < 8:
+		c, err := state()
+		if err != nil || len(c.Points) == 0 {
+			return err
+		}
+		pt := c.Points[rng.IntN(len(c.Points))]
+		_, err = p.Correct(ctx, plant.Correction{Characteristic: c.ID, Subgroup: pt.Subgroup, TakenAt: pt.TakenAt, Replaces: pt.Version,
+			Readings: []int64{14990, 14991, 14992, 14990, 14985 + rng.Int64N(12)}, Reason: "typing slip", Person: p.Operator.ID})
+		return err
+	case k < 10:
+		c, err := state()
+		if err != nil || c.Matter == nil {
+			return err
+		}
+		if rng.IntN(3) == 0 {
+			return p.TakeMatter(ctx, c.Matter.ID, c.Matter.Version, p.Operator.ID)
+		}
+		return p.CloseMatter(ctx, plant.ClosingRequest{Matter: c.Matter.ID, Version: c.Matter.Version, Cause: "Not found", Action: "Insert changed",
+			FixedAt: c.Matter.OpenedTaken.Add(time.Second), Person: p.Operator.ID})
+	case k < 11:
+		return p.LogChange(ctx, plant.Change{ID: storetest.ID(), Station: p.Station.ID, Machine: p.Machine.ID, Kind: plant.ToolChanged})
+	case k < 12:
+		parts := []uuid.UUID{p.PartA.ID, p.PartB.ID}
+		return p.SetMachine(ctx, plant.MachineState{ID: storetest.ID(), Machine: p.Machine.ID, Running: true, Part: parts[rng.IntN(2)],
+			At: p.Clock.Now().Add(-time.Duration(rng.IntN(600)) * time.Second)})
+	case k < 13:
+		return p.ChangeSetup(ctx, p.Mass.ID, plant.Setup{Unit: "g", Decimals: 2, Chart: limits.Individuals, Size: 1}, 1, p.Engineer.ID)
+	default:
+		revisions, err := p.Revisions(ctx, p.Diameter.ID)
+		if err != nil {
+			return err
+		}
+		_, err = p.Freeze(ctx, plant.FreezeRequest{Characteristic: p.Diameter.ID, SetupVersion: 1, After: len(revisions), Rules: first.Rules,
+			Reason: "at once", Person: p.Engineer.ID})
+		return err
 	}
 }

@@ -141,6 +141,9 @@ func (s *Store) changeover(ctx context.Context, tx pgx.Tx, b *pgx.Batch, held ma
 		return fmt.Errorf("read characteristics of machine: %w", err)
 	}
 	for _, id := range ids {
+		if held[id] == nil {
+			continue // it was added since the locks were taken, and begins with this part
+		}
 		if err := s.addBoundary(ctx, tx, b, held[id], plant.Boundary{ID: newID(), At: m.At, Kind: plant.ByChangeover}, now); err != nil {
 			return err
 		}
