@@ -96,6 +96,36 @@ func TestServingEndsWithAnErrorWhenPostgresDies(t *testing.T) {
 	}
 }
 
+// TestAuditFailsOnATamperedRecord: one reading, one judgement, changed in their tables by
+// the owner of the database; the ledger's chains still hold.
+func TestAuditFailsOnATamperedRecord(t *testing.T) {
+	t.Parallel()
+	ctx := context.Background()
+	for _, tc := range []struct {
+		sql        string
+		judgements bool
+	}{
+		{`update subgroup set readings[1] = 14991, reading_sum = reading_sum + 1 where taken_at = (select min(taken_at) from subgroup)`, false},
+		{`update signal set withdrawn = true`, true},
+	} {
+		p := storetest.New(t, "x")
+		for range 3 {
+			p.Clock.Advance(time.Minute)
+			p.MustRecord(t, p.Diameter, 14990, 15001, 14992, 14990, 14991)
+		}
+		c := auditCmd{database: database{URL: p.URL}, Judgements: tc.judgements}
+		if err := c.Run(ctx, silent); err != nil {
+			t.Errorf("an honest record: %v", err)
+		}
+		if _, err := p.Pool().Exec(ctx, tc.sql); err != nil {
+			t.Fatal(err)
+		}
+		if err := c.Run(ctx, silent); err == nil || !strings.Contains(err.Error(), "differs") {
+			t.Errorf("after %s: %v, want an error", tc.sql, err)
+		}
+	}
+}
+
 // privateServer starts a private Postgres with durability on, as a small site has it, in
 // a folder of its own.
 func privateServer(t testing.TB) *localpg.Server {
