@@ -42,8 +42,9 @@ var sealed = []string{
 		or coalesce(nullif(r.rules->'location', 'null'), '[]') <> (select coalesce(jsonb_agg(x::jsonb), '[]') from jsonb_array_elements_text(b->'location') x)
 		or coalesce(nullif(r.rules->'dispersion', 'null'), '[]') <> (select coalesce(jsonb_agg(x::jsonb), '[]') from jsonb_array_elements_text(b->'dispersion') x)
 		or not exists (select from boundary where characteristic_id = e.chain and kind = 'revision' and revision_id = r.id and at = r.in_force_from)`,
-	`select r.characteristic_id, format('revision %s was never sealed', r.number) from revision r where not exists (
-		select from ledger where chain = r.characteristic_id and kind = 'revision' and convert_from(body, 'UTF8')::jsonb->>'revision' = r.id::text)`,
+	`select r.characteristic_id, format('revision %s was never sealed', r.number) from revision r
+	left join (select chain, (convert_from(body, 'UTF8')::jsonb->>'revision')::uuid as id from ledger where kind = 'revision') e
+		on e.id = r.id and e.chain = r.characteristic_id where e.id is null`,
 	`select e.chain, format('set-up %s is not on record as it was sealed', b->>'version')
 	from (select chain, convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'setup') e
 	left join setup u on u.characteristic_id = e.chain and u.version = (b->>'version')::int
@@ -60,8 +61,9 @@ var sealed = []string{
 			or m.cause <> coalesce(b->>'cause', '') or m.action <> coalesce(b->>'action', '') or m.closing <> b->>'closing'
 			or m.restart_at is distinct from (b->>'restart_at')::timestamptz
 			or m.restart_at is not null and not exists (select from boundary where characteristic_id = e.chain and kind = 'restart' and at = m.restart_at))`,
-	`select m.characteristic_id, format('matter %s was never closed, says the ledger', m.id) from matter m where m.closed_at is not null and not exists (
-		select from ledger where chain = m.characteristic_id and kind = 'matter' and convert_from(body, 'UTF8')::jsonb @> jsonb_build_object('matter', m.id, 'step', 'closed'))`,
+	`select m.characteristic_id, format('matter %s was never closed, says the ledger', m.id) from matter m
+	left join (select chain, convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'matter') e
+		on (b->>'matter')::uuid = m.id and e.chain = m.characteristic_id and b->>'step' = 'closed' where m.closed_at is not null and e.chain is null`,
 	// A boundary follows from something that was sealed.
 	`select b.characteristic_id, format('nothing that was sealed makes a boundary (%s) at %s', b.kind, b.at) from boundary b
 	where b.kind = 'revision' and not exists (select from revision r where r.id = b.revision_id and r.in_force_from = b.at)
