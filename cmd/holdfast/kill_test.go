@@ -190,7 +190,8 @@ func TestNothingAnsweredIsLostOrDoubled(t *testing.T) {
 	const each = 100
 	var address atomic.Pointer[string]
 	base, kill := startServing(t, app)
-	address.Store(&base)
+	first := base // tablets read it while base moves on
+	address.Store(&first)
 	ctx, cancel := context.WithTimeout(context.Background(), 100*time.Second)
 	defer cancel()
 	tablets := make([]*tablet, len(charts))

@@ -7,6 +7,7 @@ import (
 	"net/http"
 	"net/url"
 	"strings"
+	"sync"
 	"testing"
 	"time"
 
@@ -302,7 +303,7 @@ func TestNoSecretIsLogged(t *testing.T) {
 		t.Fatal(err)
 	}
 	p := storetest.New(t, hash)
-	var log bytes.Buffer // the handler guards it, and it is read when all is over
+	var log lockedBuffer // a socket's last line may come after all is over
 	logger := slog.New(slog.NewJSONHandler(&log, &slog.HandlerOptions{Level: slog.LevelDebug}))
 	prog, err := newProgram(context.Background(), settings{Addr: "127.0.0.1:0", DatabaseURL: p.URL, Cost: cheap, Log: logger, Clock: p.Clock.Now})
 	if err != nil {
@@ -344,4 +345,22 @@ func TestNoSecretIsLogged(t *testing.T) {
 			t.Errorf("the log holds %q:\n%s", never, text)
 		}
 	}
+}
+
+// lockedBuffer is a log that may be read while it is written.
+type lockedBuffer struct {
+	mu  sync.Mutex
+	buf bytes.Buffer
+}
+
+func (b *lockedBuffer) Write(p []byte) (int, error) {
+	b.mu.Lock()
+	defer b.mu.Unlock()
+	return b.buf.Write(p)
+}
+
+func (b *lockedBuffer) String() string {
+	b.mu.Lock()
+	defer b.mu.Unlock()
+	return b.buf.String()
 }

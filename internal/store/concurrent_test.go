@@ -162,13 +162,9 @@ func consistent(t testing.TB, p *storetest.Plant) {
 }
 
 // told collects what a feed tells.
-type told struct {
-	mu   sync.Mutex
-	seen map[uuid.UUID]bool
-	got  chan uuid.UUID
-}
+type told struct{ got chan uuid.UUID }
 
-func newTold() *told { return &told{seen: map[uuid.UUID]bool{}, got: make(chan uuid.UUID, 1000)} }
+func newTold() *told { return &told{got: make(chan uuid.UUID, 1000)} }
 
 func (o *told) tell(ids []uuid.UUID) {
 	for _, id := range ids {

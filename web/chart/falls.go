@@ -56,18 +56,16 @@ const (
 // averages is the common part: a few large points in their band, right-aligned
 // in fixed slots so that the geometry does not jump while history grows.
 type averages struct {
-	d       *builder
-	w, h    float64
-	top     float64
-	bottom  float64
-	slots   int
-	points  []StationPoint
-	limits  Limits
-	floor   float64
-	s       scale
-	x0, x1  float64
-	words   Words
-	newestR float64
+	d      *builder
+	w, h   float64
+	top    float64
+	bottom float64
+	slots  int
+	points []StationPoint
+	limits Limits
+	floor  float64
+	s      scale
+	x0, x1 float64
 }
 
 const stationR = 5.0

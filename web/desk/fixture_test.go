@@ -182,16 +182,6 @@ func (p page) hasNot(texts ...string) page {
 // count is how often a text stands in the page.
 func (p page) count(text string) int { return strings.Count(p.body, text) }
 
-// query reads the query of the address that a redirect leads to.
-func (p page) query() url.Values {
-	p.t.Helper()
-	u, err := url.Parse(p.to)
-	if err != nil {
-		p.t.Fatal(err)
-	}
-	return u.Query()
-}
-
 func path(c plant.Characteristic, parts ...string) string {
 	return strings.Join(append([]string{"/desk/characteristic", c.ID.String()}, parts...), "/")
 }

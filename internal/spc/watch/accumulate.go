@@ -22,7 +22,7 @@ func (e EWMA) Validate() error {
 	case !(e.Lambda > 0 && e.Lambda <= 1):
 		return fmt.Errorf("lambda: the weight of an EWMA is above 0 and at most 1, got %v", e.Lambda)
 	case !(e.L > 0) || math.IsInf(e.L, 1):
-		return fmt.Errorf("L: the limits of an EWMA need a finite distance above 0, got %v", e.L)
+		return fmt.Errorf("limits L: those of an EWMA need a finite distance above 0, got %v", e.L)
 	}
 	return nil
 }
