@@ -192,7 +192,7 @@ func TestNothingAnsweredIsLostOrDoubled(t *testing.T) {
 	base, kill := startServing(t, app)
 	first := base // tablets read it while base moves on
 	address.Store(&first)
-	ctx, cancel := context.WithTimeout(context.Background(), 100*time.Second)
+	ctx, cancel := context.WithTimeout(context.Background(), 3*time.Minute)
 	defer cancel()
 	tablets := make([]*tablet, len(charts))
 	failed := make([]error, len(charts))
