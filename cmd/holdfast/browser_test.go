@@ -134,6 +134,11 @@ func mainJob(t *testing.T, h hands) {
 	r.Clock.Advance(30 * time.Minute)
 	b := browsertest.Start(t)
 
+	door := b.Person(r.url)
+	door.Open("/sign-in")
+	door.Accessible("sign-in")
+	door.FitsWidth("sign-in", 320, 1280) // 1280 px at 400 %, and at 100 %
+
 	board := r.signIn(t, b, "supervisor1")
 	board.Open("/board")
 	board.WaitFor(`document.querySelector("[data-live-state]").textContent.trim() === "live"`)
