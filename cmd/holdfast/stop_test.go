@@ -70,7 +70,7 @@ func TestStoppingLetsASaveFinish(t *testing.T) {
 		res, _ := second.post(path, form)
 		answered <- res.StatusCode
 	}()
-	awaitLock(t, conn)
+	awaitLock(t, r)
 	stop()
 	select {
 	case status := <-answered:
@@ -94,11 +94,13 @@ func TestStoppingLetsASaveFinish(t *testing.T) {
 	}
 }
 
-func awaitLock(t *testing.T, conn *pgx.Conn) {
+// awaitLock returns once somebody waits for a lock. It asks on a connection of its own:
+// inside a transaction Postgres keeps showing what it showed first.
+func awaitLock(t *testing.T, r *running) {
 	t.Helper()
-	for range 400 {
+	for range 1500 {
 		var n int
-		if err := conn.QueryRow(context.Background(), `select count(*) from pg_stat_activity
+		if err := r.Pool().QueryRow(context.Background(), `select count(*) from pg_stat_activity
 			where datname = current_database() and wait_event_type = 'Lock'`).Scan(&n); err != nil {
 			t.Fatal(err)
 		}
