@@ -87,7 +87,7 @@ func (f *Feed) announce(ctx context.Context) {
 		f.mu.Unlock()
 		for len(ids) > 0 {
 			n := min(len(ids), perNotice)
-			if _, err := f.store.pool.Exec(ctx, `select pg_notify($1, $2)`, channel, f.node+" "+strings.Join(ids[:n], " ")); err != nil {
+			if err := f.notify(ctx, f.node+" "+strings.Join(ids[:n], " ")); err != nil {
 				if ctx.Err() == nil {
 					f.log.Warn("could not announce changes; other servers find them later", "error", err)
 				}
@@ -96,6 +96,17 @@ func (f *Feed) announce(ctx context.Context) {
 			ids = ids[n:]
 		}
 	}
+}
+
+// notify sends one notice. It need not outlive a crash, so it waits for no disk and
+// takes no turn of those who do.
+func (f *Feed) notify(ctx context.Context, payload string) error {
+	b := &pgx.Batch{}
+	b.Queue("begin")
+	b.Queue("set local synchronous_commit = off")
+	b.Queue("select pg_notify($1, $2)", channel, payload)
+	b.Queue("commit")
+	return f.store.pool.SendBatch(ctx, b).Close()
 }
 
 // listen keeps one connection of its own, and after each reconnect marks every station,
