@@ -167,5 +167,8 @@ func advice(major int) string {
 // environment is what the server's programs are given: no PG... variable of
 // ours may change where or how they work, nor may our language.
 func environment() []string {
-	return []string{"PATH=/usr/local/sbin:/usr/local/bin:/usr/sbin:/usr/bin:/sbin:/bin", "LC_ALL=C.UTF-8", "HOME=/"}
+	return []string{"PATH=/usr/local/sbin:/usr/local/bin:/usr/sbin:/usr/bin:/sbin:/bin", "LC_ALL=C.UTF-8", "HOME=/",
+		// A backend would give the memory of every statement back to the kernel and ask
+		// for it again; on small virtual machines that costs more than the statement.
+		"MALLOC_TRIM_THRESHOLD_=67108864", "MALLOC_TOP_PAD_=4194304", "MALLOC_MMAP_THRESHOLD_=33554432"}
 }
