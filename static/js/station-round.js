@@ -285,7 +285,11 @@ class Section {
   draw(mode) {
     const readings = this.inputs.map((i) => {
       const units = i.value.trim() === "" ? null : this.units(i.value, mode);
-      return units === null || Number.isNaN(units) ? null : Number(text(units, this.decimals));
+      if (units === null || Number.isNaN(units)) return null;
+      // "14.9" on its way to 14.991 would throw the dot far out: what is still being
+      // typed is drawn once it is a usual number, and whatever it is when it is left.
+      if (i === document.activeElement && (units < this.below || units > this.above)) return null;
+      return Number(text(units, this.decimals));
     });
     const { dataset } = this.falls;
     const all = this.filled() === this.inputs.length;

@@ -12,6 +12,7 @@ type Strip struct {
 	Spec     Spec
 	Readings []float64 // typed so far, in order; NaN for one still empty
 	Size     int       // parts in the round
+	Lo, Hi   float64   // where readings usually lie; used where a side has no specification, equal is unknown
 	Words    Words
 }
 
@@ -100,6 +101,15 @@ func (p *Strip) span() (lo, hi float64) {
 	if finite(sp.Lower) && finite(sp.Upper) && sp.Lower < sp.Upper {
 		size := sp.Upper - sp.Lower
 		return widen(sp.Lower-0.07*size, sp.Upper+0.07*size)
+	}
+	if p.Lo < p.Hi {
+		lo, hi = p.Lo, p.Hi
+		for _, v := range []float64{sp.Lower, sp.Upper, sp.Target} {
+			if finite(v) {
+				lo, hi = min(lo, v), max(hi, v)
+			}
+		}
+		return widen(lo-0.07*(hi-lo), hi+0.07*(hi-lo))
 	}
 	return sp.span(p.Readings)
 }

@@ -136,9 +136,13 @@ func newFalls(f ui.Format, c plant.CharacteristicState, typed []int64) fallsView
 	}
 	v.Wide, v.Tall = draw("wide", wideW, wideH), draw("tall", tallW, tallH)
 	if s.Lower != nil || s.Upper != nil || s.Target != nil {
+		var usualLo, usualHi float64
+		if r := c.Revision; r != nil {
+			usualLo, usualHi = r.Center-4*r.Sigma, r.Center+4*r.Sigma
+		}
 		strip := func(name string, height float64) string {
 			return (&chart.Strip{ID: "parts-" + name + "-" + id, Label: w.T("station.parts-label", c.Name), W: stripW, H: height,
-				Spec: chartSpec(f, s), Readings: readings, Size: s.Size, Words: chartWords(w)}).SVG()
+				Spec: chartSpec(f, s), Readings: readings, Size: s.Size, Lo: usualLo, Hi: usualHi, Words: chartWords(w)}).SVG()
 		}
 		v.PartsWide, v.PartsTall = strip("wide", wideH), strip("tall", tallH)
 	}
