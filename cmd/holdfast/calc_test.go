@@ -3,6 +3,7 @@ package main
 import (
 	"bytes"
 	"encoding/json"
+	"errors"
 	"strings"
 	"testing"
 
@@ -50,5 +51,17 @@ func TestCalcListsEveryTopic(t *testing.T) {
 		if !json.Valid([]byte(topic.Example)) {
 			t.Errorf("the example of %s is not JSON", topic.Name)
 		}
+	}
+}
+
+func TestWrongCommandLinesEndWithTwo(t *testing.T) {
+	t.Parallel()
+	for _, args := range [][]string{{"calc", "factors", "--bogus"}, {"calc", "factors", "more"}, {"nothing"}, {"user", "add"}} {
+		if err := run(t.Context(), args); err == nil || status(err) != 2 {
+			t.Errorf("%v: %v, status %d, want 2", args, err, status(err))
+		}
+	}
+	if got := status(errors.New("the disk is full")); got != 1 {
+		t.Errorf("another fault has status %d, want 1", got)
 	}
 }

@@ -48,7 +48,15 @@ func main() {
 		return
 	}
 	fmt.Fprintln(os.Stderr, "holdfast:", err)
-	os.Exit(1)
+	os.Exit(status(err))
+}
+
+// status is 2 for a command line that cannot be understood and 1 for what went wrong.
+func status(err error) int {
+	if _, ok := errors.AsType[*kong.ParseError](err); ok {
+		return 2
+	}
+	return 1
 }
 
 func run(ctx context.Context, args []string) error {
