@@ -23,7 +23,9 @@ func TestSlowClientGetsTheNewestAndNoBacklog(t *testing.T) {
 	p := newPlant()
 	p.set("board", "steady", "never changes")
 	p.set("board", "lane", "0 "+filler)
-	s := serve(t, p.render, calm())
+	opt := calm()
+	opt.WriteTimeout = 5 * time.Minute // it is slow and not stalled, however busy the machine is
+	s := serve(t, p.render, opt)
 	fast := s.open(t, "topic=board&session=fast")
 	fast.nextOf("state")
 	slow := s.openWith(t, narrow(), "topic=board&session=slow")
