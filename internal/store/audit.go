@@ -78,7 +78,7 @@ func (c *judgementCheck) run(ctx context.Context, tx pgx.Tx) error {
 	var last position
 	r := &refolding{s: c.s, conn: tx, l: &locked{id: c.id}}
 	for after := (position{}); ; {
-		chunk, err := r.read(ctx, after)
+		chunk, more, err := r.read(ctx, after)
 		if err != nil {
 			return err
 		}
@@ -105,7 +105,7 @@ func (c *judgementCheck) run(ctx context.Context, tx pgx.Tx) error {
 			}
 			delete(checkpoints, row.position)
 		}
-		if len(chunk) < refoldChunk {
+		if !more {
 			break
 		}
 	}

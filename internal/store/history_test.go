@@ -216,3 +216,29 @@ func (y *player) restart() {
 	y.t.Cleanup(st.Close)
 	y.p.Store = st
 }
+
+// TestManyVersionsOfOneSubgroup: a subgroup that was corrected more often than a refold
+// reads at a time counts in its newest version.
+func TestManyVersionsOfOneSubgroup(t *testing.T) {
+	t.Parallel()
+	p, _ := learned(t)
+	ctx := context.Background()
+	a := p.MustRecord(t, p.Diameter, 14990, 14991, 14992, 14990, 14991)
+	p.Clock.Advance(time.Minute)
+	p.MustRecord(t, p.Diameter, 14990, 14991, 14992, 14990, 14991)
+	c := plant.Correction{Characteristic: p.Diameter.ID, Subgroup: a.Parts[0].Subgroup, TakenAt: a.TakenAt, Reason: "typing slip", Person: p.Operator.ID}
+	for c.Replaces = 1; c.Replaces <= 700; c.Replaces++ {
+		c.Readings = []int64{14990, 14991, 14992, 14990, 14991 - int64(c.Replaces%2)}
+		if c.Replaces == 700 {
+			c.Readings = []int64{14998, 14998, 14999, 14998, 14999}
+		}
+		if _, err := p.Correct(ctx, c); err != nil {
+			t.Fatal(err)
+		}
+	}
+	consistent(t, p)
+	h, err := p.History(ctx, p.Diameter.ID, plant.Stretch{Last: 2})
+	if err != nil || h.Points[0].Version != 701 || len(h.Points[0].Standing()) == 0 {
+		t.Errorf("the corrected subgroup = %+v, %v; want version 701 with its signal", h.Points[0], err)
+	}
+}

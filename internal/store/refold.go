@@ -24,11 +24,13 @@ type subgroupRow struct {
 	voided   bool
 }
 
-// currentRows is a walk along the key that keeps the newest version of each subgroup.
-const currentRows = `select distinct on (taken_at, id) taken_at, id, version, setup_version, decimals, readings,
+// versionRows is a walk along the key over every version. It keeps to the key's own
+// order, so that it reads no further than its limit; the newest version of each subgroup
+// is picked in Go.
+const versionRows = `select taken_at, id, version, setup_version, decimals, readings,
 		reading_sum, reading_range, reading_sd, outside, voided
 	from subgroup where characteristic_id = $1 and (taken_at, id) > ($2, $3)
-	order by taken_at, id, version desc limit $4`
+	order by taken_at, id, version limit $4`
 
 func scanSubgroupRow(r pgx.CollectableRow) (*subgroupRow, error) {
 	row := &subgroupRow{}
@@ -52,7 +54,7 @@ type conn interface {
 	SendBatch(ctx context.Context, b *pgx.Batch) pgx.BatchResults
 }
 
-// refoldChunk is how many subgroups are read at a time. Most refolds end within the
+// refoldChunk is how many versions of subgroups are read at a time. Most refolds end within the
 // first: a checkpoint's usual distance and the longest window.
 const refoldChunk = 256 + 80
 
@@ -88,7 +90,7 @@ func (s *Store) refold(ctx context.Context, c conn, b *pgx.Batch, l *locked, p p
 	}
 	unmarked := 0
 	for last := (position{}); ; {
-		rows, err := r.read(ctx, start)
+		rows, more, err := r.read(ctx, start)
 		if err != nil {
 			return refolded{}, err
 		}
@@ -119,7 +121,7 @@ func (s *Store) refold(ctx context.Context, c conn, b *pgx.Batch, l *locked, p p
 			}
 			start = row.position
 		}
-		if len(rows) < refoldChunk {
+		if !more {
 			// The walk reached the end, so its state is the characteristic's.
 			l.fold = r.is
 			if last != (position{}) || start == (position{}) {
@@ -178,20 +180,44 @@ func scanBoundary(row pgx.CollectableRow) (b plant.Boundary, err error) {
 	return b, err
 }
 
-func (r *refolding) read(ctx context.Context, after position) ([]*subgroupRow, error) {
+// read returns the subgroups after a position, each in its newest version, and whether
+// there are more.
+func (r *refolding) read(ctx context.Context, after position) (out []*subgroupRow, more bool, err error) {
 	taken := any(after.taken)
 	if after.taken.IsZero() {
 		taken = "-infinity"
 	}
-	rows, err := r.conn.Query(ctx, currentRows, r.l.id, taken, after.id, refoldChunk)
-	if err != nil {
-		return nil, fmt.Errorf("read subgroups to judge again: %w", err)
+	for limit := refoldChunk; ; limit *= 2 {
+		rows, err := r.conn.Query(ctx, versionRows, r.l.id, taken, after.id, limit)
+		if err != nil {
+			return nil, false, fmt.Errorf("read subgroups to judge again: %w", err)
+		}
+		versions, err := pgx.CollectRows(rows, scanSubgroupRow)
+		if err != nil {
+			return nil, false, fmt.Errorf("read subgroups to judge again: %w", err)
+		}
+		out = newest(versions)
+		if len(versions) < limit {
+			return out, false, nil
+		}
+		// The last subgroup may have versions that lie beyond the limit.
+		if out = out[:len(out)-1]; len(out) > 0 {
+			return out, true, nil
+		}
 	}
-	out, err := pgx.CollectRows(rows, scanSubgroupRow)
-	if err != nil {
-		return nil, fmt.Errorf("read subgroups to judge again: %w", err)
+}
+
+// newest keeps the last of the versions of each subgroup, which stand together.
+func newest(versions []*subgroupRow) []*subgroupRow {
+	out := versions[:0]
+	for _, v := range versions {
+		if n := len(out); n > 0 && out[n-1].position == v.position {
+			out[n-1] = v
+			continue
+		}
+		out = append(out, v)
 	}
-	return out, nil
+	return out
 }
 
 // storedSignal is a signal as the record has it before the refold.
