@@ -14,11 +14,19 @@ type Panel string
 const (
 	Location   Panel = "location"
 	Dispersion Panel = "dispersion"
-	Reading    Panel = "reading" // a single reading against its specification
+	Reading    Panel = "reading"     // a single reading against its specification
+	GaugeCheck Panel = "gauge check" // a check that the characteristic's gauge failed; a fact, never judged again
 )
+
+// HoldsProduct reports whether what stands on the panel puts the product itself in doubt,
+// whatever the process does.
+func (p Panel) HoldsProduct() bool { return p == Reading || p == GaugeCheck }
 
 // OutsideSpecification is the rule key of a reading outside its specification.
 const OutsideSpecification = "specification"
+
+// GaugeFailed is the rule key of a gauge check that failed.
+const GaugeFailed = "gauge-failed"
 
 // Firing is one thing that a subgroup does: a rule holds, or a reading lies outside
 // its specification. It is derived; Signal is the record of it.

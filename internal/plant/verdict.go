@@ -43,7 +43,7 @@ func VerdictOf(firings []Firing, learning bool) Verdict {
 		v = Learning
 	}
 	for _, f := range firings {
-		if f.Panel == Reading {
+		if f.Panel.HoldsProduct() {
 			v = v.Graver(Hold)
 		} else {
 			v = v.Graver(Look)
@@ -136,7 +136,7 @@ func (m Matter) Open() bool { return m.ClosedAt.IsZero() }
 // a standing line waits to be closed as withdrawn and asks for a look meanwhile.
 func (m Matter) Kind() Verdict {
 	for _, l := range m.Lines {
-		if !l.Withdrawn && l.Panel == Reading {
+		if !l.Withdrawn && l.Panel.HoldsProduct() {
 			return Hold
 		}
 	}
@@ -153,10 +153,11 @@ func (m Matter) AllWithdrawn() bool {
 	return true
 }
 
-// OnlyHold reports whether every standing line is a reading outside specification.
+// OnlyHold reports whether every standing line puts the product in doubt and none the
+// process.
 func (m Matter) OnlyHold() bool {
 	for _, l := range m.Lines {
-		if !l.Withdrawn && l.Panel != Reading {
+		if !l.Withdrawn && !l.Panel.HoldsProduct() {
 			return false
 		}
 	}

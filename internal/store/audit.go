@@ -170,7 +170,8 @@ func (c *judgementCheck) matters(ctx context.Context, tx pgx.Tx) error {
 }
 
 func (c *judgementCheck) standing(ctx context.Context, tx pgx.Tx) (map[position]string, error) {
-	rows, err := tx.Query(ctx, `select taken_at, subgroup_id, panel, rule, side from signal where characteristic_id = $1 and not withdrawn`, c.id)
+	rows, err := tx.Query(ctx, `select taken_at, subgroup_id, panel, rule, side from signal
+		where characteristic_id = $1 and not withdrawn and panel <> 'gauge check'`, c.id)
 	if err != nil {
 		return nil, fmt.Errorf("read signals: %w", err)
 	}

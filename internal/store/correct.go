@@ -160,12 +160,12 @@ func (s *Store) newestVersion(ctx context.Context, tx pgx.Tx, c plant.Correction
 	return v, nil
 }
 
-// openIsHold reports whether a matter has a standing reading outside specification.
+// openIsHold reports whether a matter has a standing line that holds the product.
 func (s *Store) openIsHold(ctx context.Context, q querier, matter uuid.UUID) (hold bool, err error) {
 	if matter == uuid.Nil {
 		return false, nil
 	}
-	err = q.QueryRow(ctx, `select exists (select from signal where matter_id = $1 and panel = 'reading' and not withdrawn)`, matter).Scan(&hold)
+	err = q.QueryRow(ctx, `select exists (select from signal where matter_id = $1 and panel in ('reading', 'gauge check') and not withdrawn)`, matter).Scan(&hold)
 	if err != nil {
 		return false, fmt.Errorf("read what is open: %w", err)
 	}

@@ -20,7 +20,7 @@ import (
 // taken at $2: the segment it lies in, what the machine was making, and whether what
 // is open is a Hold. It is read under the lock, in a statement of its own.
 const roundContext = `select c.id, c.machine_id, segment.at, force.revision_id, making.part_id, coalesce(making.lot, ''),
-		exists (select from signal g where g.matter_id = cs.matter_id and g.panel = 'reading' and not g.withdrawn)
+		exists (select from signal g where g.matter_id = cs.matter_id and g.panel in ('reading', 'gauge check') and not g.withdrawn)
 	from characteristic c
 	join characteristic_state cs on cs.characteristic_id = c.id
 	left join lateral (select b.at from boundary b where b.characteristic_id = c.id and b.at <= $2
@@ -36,7 +36,7 @@ type roundAround struct {
 	segment plant.Segment
 	part    uuid.UUID
 	lot     string
-	hold    bool // what is open has a standing reading outside specification
+	hold    bool // what is open has a standing line that holds the product
 }
 
 func scanAround(rows pgx.Rows) (map[uuid.UUID]roundAround, error) {

@@ -228,6 +228,7 @@ type storedSignal struct {
 }
 
 // stored reads the signals of the rows, by subgroup, and which of them are checkpoints.
+// A gauge check that failed is a fact and no judgement, so it is left alone.
 func (r *refolding) stored(ctx context.Context, rows []*subgroupRow) (map[uuid.UUID][]storedSignal, map[position]bool, error) {
 	signals, checkpoints := make(map[uuid.UUID][]storedSignal), make(map[position]bool)
 	if len(rows) == 0 {
@@ -235,7 +236,7 @@ func (r *refolding) stored(ctx context.Context, rows []*subgroupRow) (map[uuid.U
 	}
 	first, last := rows[0].taken, rows[len(rows)-1].taken
 	found, err := r.conn.Query(ctx, `select subgroup_id, panel, rule, side, withdrawn, matter_id from signal
-		where characteristic_id = $1 and taken_at between $2 and $3`, r.l.id, first, last)
+		where characteristic_id = $1 and taken_at between $2 and $3 and panel <> 'gauge check'`, r.l.id, first, last)
 	if err != nil {
 		return nil, nil, fmt.Errorf("read signals: %w", err)
 	}

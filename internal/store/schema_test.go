@@ -17,6 +17,7 @@ import (
 func TestMigrationsGoUpAndDownAndUp(t *testing.T) {
 	t.Parallel()
 	ctx := context.Background()
+	pgtest.Database(t) // makes the role, which belongs to the cluster: two at once would collide
 	u := pgtest.Empty(t)
 	for _, step := range []func() error{
 		func() error { return store.Migrate(ctx, u) },

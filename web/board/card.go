@@ -224,9 +224,9 @@ func markNewest(out []chart.SparkPoint, points []plant.Point, m *plant.Matter) {
 		for _, s := range points[i].Signals {
 			switch {
 			case s.Withdrawn || s.Matter != m.ID:
-			case s.Panel == plant.Reading && !hold:
+			case s.Panel.HoldsProduct() && !hold:
 				out[i].Mark, hold = chart.HoldMark, true
-			case s.Panel != plant.Reading && !look:
+			case !s.Panel.HoldsProduct() && !look:
 				look = true
 				if out[i].Mark == chart.NoMark {
 					out[i].Mark = chart.SignalMark

@@ -122,11 +122,11 @@ func why(f ui.Format, c *plant.CharacteristicState) string {
 	var said []string
 	for _, reading := range [...]bool{true, false} {
 		for _, l := range c.Matter.Lines {
-			if l.Withdrawn || (l.Panel == plant.Reading) != reading {
+			if l.Withdrawn || l.Panel.HoldsProduct() != reading {
 				continue
 			}
 			words := f.Words.Firing(l.Firing, c.Setup)
-			if at, limit, ok := worst(f, c, l.Side); ok && reading {
+			if at, limit, ok := worst(f, c, l.Side); ok && l.Panel == plant.Reading {
 				words = f.Words.T("board.at-reading", words, at, limit)
 			}
 			said = append(said, words)

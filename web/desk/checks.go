@@ -153,7 +153,7 @@ func (v *studyView) would(s *studied) {
 		}
 		any := false
 		for _, sig := range p.Standing() {
-			if sig.Panel == plant.Reading {
+			if sig.Panel.HoldsProduct() {
 				continue
 			}
 			any = true

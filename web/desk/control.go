@@ -265,7 +265,7 @@ func (d *drawing) putSignals() {
 	hung := map[said]bool{}
 	for i, p := range d.points {
 		for _, s := range p.Signals {
-			if s.Withdrawn || s.Panel == plant.Reading {
+			if s.Withdrawn || s.Panel.HoldsProduct() {
 				continue // a reading outside has its octagon
 			}
 			m, known := matters[s.Matter]

@@ -44,7 +44,7 @@ func matterWords(f ui.Format, m plant.Matter, s plant.Setup) string {
 	for _, l := range m.Lines {
 		switch {
 		case l.Withdrawn:
-		case l.Panel == plant.Reading:
+		case l.Panel.HoldsProduct():
 			return f.Words.Firing(l.Firing, s)
 		case said == "":
 			said = f.Words.Firing(l.Firing, s)

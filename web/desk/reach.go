@@ -78,7 +78,7 @@ func (r *reach) from(i int, points []plant.Point, cut bool) {
 // firstLook is the earliest standing line of a rule, and its panel.
 func firstLook(m *plant.Matter) (first time.Time, panel plant.Panel) {
 	for _, l := range m.Lines {
-		if l.Withdrawn || l.Panel == plant.Reading {
+		if l.Withdrawn || l.Panel.HoldsProduct() {
 			continue
 		}
 		if first.IsZero() || l.First.Before(first) || l.First.Equal(first) && l.Panel == plant.Location {

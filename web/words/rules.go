@@ -34,11 +34,14 @@ func (p *Printer) RuleKey(key string, side plant.Side) string {
 }
 
 // Firing says what a subgroup did: "8 on the low side", "spread: beyond 3 sigma,
-// high side", "outside specification, above the upper limit". A change for the
-// better under this set-up says so.
+// high side", "outside specification, above the upper limit", "its gauge failed the
+// check". A change for the better under this set-up says so.
 func (p *Printer) Firing(f plant.Firing, s plant.Setup) string {
-	if f.Panel == plant.Reading {
+	switch f.Panel {
+	case plant.Reading:
 		return p.T("ui.outside." + string(f.Side))
+	case plant.GaugeCheck:
+		return p.T("ui.gauge-failed")
 	}
 	said := p.RuleKey(f.Rule, f.Side)
 	if f.Panel == plant.Dispersion {
