@@ -38,8 +38,7 @@ func (d *Door) Check(ctx context.Context, login string, s Secret, from netip.Add
 	login = plant.CleanLogin(login)
 	attempt, pause := d.Throttle.Try(login, from)
 	if pause > 0 {
-		return plant.Person{}, &plant.Error{Kind: plant.Forbidden, Field: "password",
-			Message: fmt.Sprintf("Too many wrong tries. Try again in %s.", inWords(pause))}
+		return plant.Person{}, waitFor(pause)
 	}
 	person, stored, err := d.Credentials.Credential(ctx, login)
 	if err != nil && !plant.IsKind(err, plant.NotFound) {
@@ -76,16 +75,17 @@ func (d *Door) rehash(ctx context.Context, person uuid.UUID, old string, s Secre
 	}
 }
 
-// inWords rounds up, so that waiting as long as told is enough.
-func inWords(d time.Duration) string {
-	seconds := int((d + time.Second - 1) / time.Second)
+// waitFor says how long the pause is, rounded up, so that waiting as long as told is
+// enough.
+func waitFor(pause time.Duration) *plant.Error {
+	seconds := int((pause + time.Second - 1) / time.Second)
 	switch {
 	case seconds == 1:
-		return "1 second"
+		return plant.Forbiddenf("password", "Too many wrong tries. Try again in 1 second.")
 	case seconds < 60:
-		return fmt.Sprintf("%d seconds", seconds)
-	case seconds <= 60:
-		return "1 minute"
+		return plant.Forbiddenf("password", "Too many wrong tries. Try again in %d seconds.", seconds)
+	case seconds == 60:
+		return plant.Forbiddenf("password", "Too many wrong tries. Try again in 1 minute.")
 	}
-	return fmt.Sprintf("%d minutes", (seconds+59)/60)
+	return plant.Forbiddenf("password", "Too many wrong tries. Try again in %d minutes.", (seconds+59)/60)
 }

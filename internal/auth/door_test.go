@@ -191,8 +191,8 @@ func TestPausesInWordsAreNeverTooShort(t *testing.T) {
 		time.Millisecond: "1 second", time.Second: "1 second", 1001 * time.Millisecond: "2 seconds",
 		59 * time.Second: "59 seconds", time.Minute: "1 minute", 61 * time.Second: "2 minutes", 5 * time.Minute: "5 minutes",
 	} {
-		if got := inWords(d); got != want {
-			t.Errorf("inWords(%v) = %q; want %q", d, got, want)
+		if got := waitFor(d); got.Kind != plant.Forbidden || got.Message != "Too many wrong tries. Try again in "+want+"." {
+			t.Errorf("waiting for %v: %q; want %q", d, got.Message, want)
 		}
 	}
 }

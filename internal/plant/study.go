@@ -60,7 +60,7 @@ func (s *Study) Run(course Course) error {
 		}
 	}
 	if len(out) > 0 {
-		return &Error{Kind: Conflict, Message: "A subgroup that was left out is not in the stretch any more. Look at the study again."}
+		return Conflictf("", "A subgroup that was left out is not in the stretch any more. Look at the study again.")
 	}
 	s.Used = len(s.Points) - len(in.Excluded)
 	if s.Used < MinSubgroups {
@@ -69,7 +69,7 @@ func (s *Study) Run(course Course) error {
 	var err error
 	if s.Result, err = limits.RunStudy(in); err != nil {
 		if errors.Is(err, limits.ErrInput) {
-			return &Error{Kind: Invalid, Message: "No limits can be computed from this stretch.", Err: err}
+			return Invalidf("", "No limits can be computed from this stretch.").Because(err)
 		}
 		return err
 	}
@@ -83,7 +83,7 @@ func (s *Study) Run(course Course) error {
 func (s *Study) judge(in limits.StudyInput) error {
 	judge, err := watch.NewJudge(watch.Standard{Standard: s.Result.Standard, LocationRules: s.Rules.Location, DispersionRules: s.Rules.Dispersion})
 	if err != nil {
-		return &Error{Kind: Invalid, Field: "rules", Message: "These rules cannot be used: " + err.Error()}
+		return Invalidf("rules", "These rules cannot be used: %v", err)
 	}
 	s.Firings = make([][]Firing, len(s.Points))
 	var m watch.Memory
@@ -152,7 +152,7 @@ func (f *FreezeRequest) Check(now time.Time) error {
 		seen := map[string]bool{}
 		for _, r := range rules {
 			if err := r.Validate(); err != nil {
-				return &Error{Kind: Invalid, Field: "rules", Message: "A rule cannot be used: " + err.Error()}
+				return Invalidf("rules", "A rule cannot be used: %v", err)
 			}
 			if key := RuleKey(r); seen[key] {
 				return Invalidf("rules", "A rule is there twice.")

@@ -180,7 +180,7 @@ type ClosingRequest struct {
 func (m Matter) Resolve(c ClosingRequest, now time.Time) (Closing, time.Time, error) {
 	switch {
 	case !m.Open():
-		return "", time.Time{}, &Error{Kind: Conflict, Message: "Somebody has closed this already."}
+		return "", time.Time{}, Conflictf("", "Somebody has closed this already.")
 	case m.AllWithdrawn():
 		return WithdrawnBy, time.Time{}, nil
 	case c.Cause == "":

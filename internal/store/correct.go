@@ -74,7 +74,7 @@ func (s *Store) correct(ctx context.Context, tx pgx.Tx, l *locked, c plant.Corre
 		return part, err
 	}
 	if have.version != c.Replaces || have.voided {
-		return part, &plant.Error{Kind: plant.Conflict, Message: "Somebody has corrected this already. Look at it again."}
+		return part, plant.Conflictf("", "Somebody has corrected this already. Look at it again.")
 	}
 	setup, err := s.setup(ctx, tx, l.id, have.setup)
 	if err != nil {

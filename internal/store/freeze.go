@@ -31,7 +31,7 @@ func (s *Store) Freeze(ctx context.Context, f plant.FreezeRequest) (plant.Revisi
 		return plant.Revision{}, plant.Invalidf("from", "The stretch holds more than %d subgroups. Choose a shorter one.", MaxStretch)
 	}
 	if h.State.Setup.Version != f.SetupVersion {
-		return plant.Revision{}, &plant.Error{Kind: plant.Conflict, Message: "The set-up was changed meanwhile. Look at the study again."}
+		return plant.Revision{}, plant.Conflictf("", "The set-up was changed meanwhile. Look at the study again.")
 	}
 	for _, old := range h.Setups {
 		if old.Unit != h.State.Setup.Unit {
@@ -74,7 +74,7 @@ func (s *Store) freeze(ctx context.Context, r *plant.Revision, f plant.FreezeReq
 			return fmt.Errorf("read newest revision: %w", err)
 		}
 		if newest != f.After || l.setupVersion != f.SetupVersion {
-			return &plant.Error{Kind: plant.Conflict, Message: "Somebody has frozen limits or changed the set-up meanwhile. Look at the study again."}
+			return plant.Conflictf("", "Somebody has frozen limits or changed the set-up meanwhile. Look at the study again.")
 		}
 		// Now is read under the lock: a save that went before was told by the old limits and
 		// is to stay judged by them, however long the study took.
@@ -165,7 +165,7 @@ func (s *Store) ChangeSetup(ctx context.Context, characteristic uuid.UUID, setup
 		now := s.now()
 		station = l.station
 		if l.setupVersion != replaces {
-			return &plant.Error{Kind: plant.Conflict, Message: "Somebody has changed the set-up meanwhile. Look at it again."}
+			return plant.Conflictf("", "Somebody has changed the set-up meanwhile. Look at it again.")
 		}
 		old, err := s.setup(ctx, tx, l.id, l.setupVersion)
 		if err != nil {

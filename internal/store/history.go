@@ -208,7 +208,7 @@ func (s *Store) RevisionAt(ctx context.Context, characteristic uuid.UUID, at tim
 		return plant.Revision{}, err
 	}
 	if fz == nil {
-		return plant.Revision{}, &plant.Error{Kind: plant.NotFound, Message: "No limits were in force then: the characteristic was learning."}
+		return plant.Revision{}, plant.NotFoundf("", "No limits were in force then: the characteristic was learning.")
 	}
 	return fz.Revision, nil
 }

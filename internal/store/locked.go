@@ -101,7 +101,7 @@ func collectLocked(rows pgx.Rows, ids []uuid.UUID) (map[uuid.UUID]*locked, error
 	}
 	for _, id := range ids {
 		if out[id] == nil {
-			return nil, &plant.Error{Kind: plant.NotFound, Message: "There is no such characteristic."}
+			return nil, plant.NotFoundf("", "There is no such characteristic.")
 		}
 	}
 	return out, nil

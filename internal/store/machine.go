@@ -170,7 +170,7 @@ func (s *Store) LogChange(ctx context.Context, c plant.Change) error {
 	digest := c.Digest()
 	err = s.onMachine(ctx, c.Machine, func(tx pgx.Tx, b *pgx.Batch, held map[uuid.UUID]*locked) error {
 		if c.Characteristic != uuid.Nil && held[c.Characteristic] == nil {
-			return &plant.Error{Kind: plant.NotFound, Field: "characteristic", Message: "This machine has no such characteristic."}
+			return plant.NotFoundf("characteristic", "This machine has no such characteristic.")
 		}
 		affected := slices.Collect(maps.Keys(held))
 		if c.Characteristic != uuid.Nil {
@@ -200,7 +200,7 @@ func (s *Store) LogChange(ctx context.Context, c plant.Change) error {
 				return fmt.Errorf("read stored change: %w", err)
 			}
 			if !bytes.Equal(have, digest[:]) {
-				return &plant.Error{Kind: plant.Conflict, Message: "Another change was sent under this number. It was set aside for a person."}
+				return plant.Conflictf("", "Another change was sent under this number. It was set aside for a person.")
 			}
 			return nil
 		}

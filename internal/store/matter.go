@@ -88,7 +88,7 @@ func (s *Store) matter(ctx context.Context, q querier, id uuid.UUID) (*plant.Mat
 		return nil, err
 	}
 	if len(list) == 0 {
-		return nil, &plant.Error{Kind: plant.NotFound, Message: "There is no such matter."}
+		return nil, plant.NotFoundf("", "There is no such matter.")
 	}
 	return list[0], nil
 }
@@ -113,9 +113,9 @@ func (s *Store) onMatter(ctx context.Context, id uuid.UUID, version int, f func(
 		}
 		switch {
 		case !m.Open():
-			return &plant.Error{Kind: plant.Conflict, Message: fmt.Sprintf("%s has closed this already.", m.ClosedByName)}
+			return plant.Conflictf("", "%s has closed this already.", m.ClosedByName)
 		case m.Version != version:
-			return &plant.Error{Kind: plant.Conflict, Message: "Somebody was quicker. This is how it stands now."}
+			return plant.Conflictf("", "Somebody was quicker. This is how it stands now.")
 		}
 		return f(tx, l, m)
 	})

@@ -97,7 +97,7 @@ func (s *Store) AddPerson(ctx context.Context, p plant.Person, secretHash string
 			values ($1, $2, $3, $4, $5, $6, $7, $8, $9)`,
 			p.ID, s.plant(), p.Login, p.Name, salt, roles, secretHash, p.Active, s.now())
 		if violates(err, "person_login_once") {
-			return &plant.Error{Kind: plant.Conflict, Field: "login", Message: "Somebody signs in under this name already.", Err: err}
+			return plant.Conflictf("login", "Somebody signs in under this name already.").Because(err)
 		}
 		return err
 	})
@@ -112,7 +112,7 @@ func (s *Store) SetSecret(ctx context.Context, id uuid.UUID, secretHash string, 
 	return s.arrange(ctx, "secret changed", id, by, nil, func(tx pgx.Tx) error {
 		tag, err := tx.Exec(ctx, `update person set secret = $2 where id = $1 and plant_id = $3`, id, secretHash, s.plant())
 		if err == nil && tag.RowsAffected() == 0 {
-			return &plant.Error{Kind: plant.NotFound, Message: "There is no such person."}
+			return plant.NotFoundf("", "There is no such person.")
 		}
 		return err
 	})
@@ -123,7 +123,7 @@ func (s *Store) SetActive(ctx context.Context, id uuid.UUID, active bool, by uui
 	return s.arrange(ctx, "person changed", id, by, map[string]any{"active": active}, func(tx pgx.Tx) error {
 		tag, err := tx.Exec(ctx, `update person set active = $2 where id = $1 and plant_id = $3`, id, active, s.plant())
 		if err == nil && tag.RowsAffected() == 0 {
-			return &plant.Error{Kind: plant.NotFound, Message: "There is no such person."}
+			return plant.NotFoundf("", "There is no such person.")
 		}
 		return err
 	})

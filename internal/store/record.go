@@ -124,7 +124,7 @@ func (rec *recording) write(ctx context.Context) error {
 	}
 	for _, e := range rec.round.Entries {
 		if held[e.Characteristic].station != rec.round.Station {
-			return &plant.Error{Kind: plant.NotFound, Message: "This characteristic belongs to another station."}
+			return plant.NotFoundf("", "This characteristic belongs to another station.")
 		}
 	}
 	rec.batch = &pgx.Batch{}
@@ -184,8 +184,7 @@ func (rec *recording) entry(ctx context.Context, e plant.Entry, l *locked, a rou
 		return plant.PartAnswer{}, err
 	}
 	if e.SetupVersion != l.setupVersion {
-		return plant.PartAnswer{}, &plant.Error{Kind: plant.Conflict,
-			Message: "How this is measured was changed meanwhile. The round was set aside; please measure again."}
+		return plant.PartAnswer{}, plant.Conflictf("", "How this is measured was changed meanwhile. The round was set aside; please measure again.")
 	}
 	if err := e.CheckAgainst(setup); err != nil {
 		return plant.PartAnswer{}, err
@@ -334,8 +333,7 @@ func (s *Store) storedAnswer(ctx context.Context, r plant.Round, digest [32]byte
 		return answer, fmt.Errorf("read stored round: %w", err)
 	}
 	if !bytes.Equal(have, digest[:]) {
-		return answer, &plant.Error{Kind: plant.Conflict,
-			Message: "Another round is on record under this number. This one was set aside for a person; nothing was lost."}
+		return answer, plant.Conflictf("", "Another round is on record under this number. This one was set aside for a person; nothing was lost.")
 	}
 	if err := json.Unmarshal(raw, &answer); err != nil {
 		return answer, fmt.Errorf("read stored answer: %w", err)

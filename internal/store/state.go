@@ -53,7 +53,7 @@ func (s *Store) StationState(ctx context.Context, id uuid.UUID, points int) (pla
 		return plant.StationState{}, err
 	}
 	if len(list) == 0 {
-		return plant.StationState{}, &plant.Error{Kind: plant.NotFound, Message: "There is no such station."}
+		return plant.StationState{}, plant.NotFoundf("", "There is no such station.")
 	}
 	return list[0], nil
 }
@@ -453,7 +453,7 @@ func (s *Store) stationSetups(ctx context.Context, id uuid.UUID) (plant.StationS
 		return st, fmt.Errorf("read station: %w", err)
 	}
 	if st.ID == uuid.Nil {
-		return st, &plant.Error{Kind: plant.NotFound, Message: "There is no such station."}
+		return st, plant.NotFoundf("", "There is no such station.")
 	}
 	st.LineID = st.Line.ID
 	for _, r := range found {

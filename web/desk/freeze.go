@@ -11,6 +11,7 @@ import (
 	"holdfast/internal/auth"
 	"holdfast/internal/plant"
 	"holdfast/web/ui"
+	"holdfast/web/words"
 )
 
 // maxReason leaves room in the record for the three answers behind the reason.
@@ -205,7 +206,7 @@ func (d *Desk) freeze(w http.ResponseWriter, r *http.Request) error {
 		Reason: withAnswers(s.f, form), InForceFrom: from, Person: ui.FrameOf(r).Person.ID,
 	})
 	if err != nil {
-		status, ok := form.refused(err)
+		status, ok := form.refused(s.f.Words, err)
 		if !ok {
 			return err
 		}
@@ -226,7 +227,7 @@ func (d *Desk) signed(r *http.Request, form *freezeForm) (int, error) {
 	person, err := d.signer.Check(r.Context(), fr.Person.Login, auth.Secret(r.PostForm.Get("secret")), fr.Addr)
 	if pe, ok := errors.AsType[*plant.Error](err); ok {
 		if pe.Kind == plant.Forbidden { // too many tries: the message says for how long
-			form.Problems["secret"] = pe.Message
+			form.Problems["secret"] = fr.Words.Problem(pe)
 			return http.StatusTooManyRequests, nil
 		}
 		form.Problems["secret"] = fr.Words.T("desk.freeze.wrong-secret")
@@ -243,18 +244,19 @@ func (d *Desk) signed(r *http.Request, form *freezeForm) (int, error) {
 }
 
 // refused puts what the record says against freezing to its field.
-func (form *freezeForm) refused(err error) (int, bool) {
+func (form *freezeForm) refused(w *words.Printer, err error) (int, bool) {
 	pe, ok := errors.AsType[*plant.Error](err)
 	if !ok || pe.Kind != plant.Invalid && pe.Kind != plant.Conflict {
 		return 0, false
 	}
+	problem := w.Problem(pe)
 	switch pe.Field {
 	case "reason":
-		form.Problems["reason"] = pe.Message
+		form.Problems["reason"] = problem
 	case "in_force_from":
-		form.Problems["in-force"] = pe.Message
+		form.Problems["in-force"] = problem
 	default:
-		form.Conflict = pe.Message
+		form.Conflict = problem
 	}
 	return ui.StatusOf(pe.Kind), true
 }

@@ -270,7 +270,7 @@ func (s *studyState) leave(f ui.Format, h plant.History) bool {
 	}
 	cause, err := plant.CleanTextWithin("own", s.typed.Get("own"), maxCause)
 	if err != nil {
-		s.problems["own"] = ui.ProblemOf(err, "own")
+		s.problems["own"] = ui.ProblemOf(w, err, "own")
 	} else if cause == "" {
 		if cause, err = plant.CleanTextWithin("cause", s.typed.Get("cause"), maxCause); err != nil || cause == "" {
 			s.problems["cause"] = w.T("desk.leave.no-cause")

@@ -187,12 +187,12 @@ func (v *studyView) ruleFields(s *studied) {
 // problemOf says why there are no trial limits, at the field if it is about one.
 func (v *studyView) problemOf(s *studied) {
 	for _, field := range []string{"from", "rules", "multiple"} {
-		if text := ui.ProblemOf(s.err, field); text != "" && v.Problems[field] == "" {
+		if text := ui.ProblemOf(s.f.Words, s.err, field); text != "" && v.Problems[field] == "" {
 			v.Problems[field] = text
 			return
 		}
 	}
-	if v.Problem = ui.ProblemOf(s.err, ""); v.Problem == "" {
+	if v.Problem = ui.ProblemOf(s.f.Words, s.err, ""); v.Problem == "" {
 		v.Problem = s.f.Words.T("desk.study.none")
 	}
 }

@@ -89,7 +89,7 @@ func (h *Handler) signIn(w http.ResponseWriter, r *http.Request) error {
 	}
 	person, err := h.Checker.Check(r.Context(), typed.Login, secret, ui.FrameOf(r).Addr)
 	if pe, ok := errors.AsType[*plant.Error](err); ok {
-		typed.PasswordProblem = pe.Message
+		typed.PasswordProblem = words.Problem(pe)
 		status := http.StatusUnprocessableEntity
 		if pe.Kind == plant.Forbidden {
 			status = http.StatusTooManyRequests

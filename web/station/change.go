@@ -200,11 +200,12 @@ func (s *Surface) logChange(w http.ResponseWriter, r *http.Request) error {
 	if !ok || pe.Kind != plant.Invalid && pe.Kind != plant.Conflict {
 		return err
 	}
+	problem := ui.FrameOf(r).Words.Problem(pe)
 	if adjust != nil {
-		adjust.Problem = pe.Message
+		adjust.Problem = problem
 		return s.renderAdjustment(w, r, ui.StatusOf(pe.Kind), st, *adjust)
 	}
-	return s.renderChange(w, r, ui.StatusOf(pe.Kind), st, note, pe.Message)
+	return s.renderChange(w, r, ui.StatusOf(pe.Kind), st, note, problem)
 }
 
 // adjusted is the characteristic that an adjustment is meant to move; it must be one

@@ -176,18 +176,19 @@ func (s *Surface) correct(w http.ResponseWriter, r *http.Request) error {
 		ui.Redirect(w, r, path(st.ID, "round", last.ID.String()))
 		return nil
 	}
+	words := ui.FrameOf(r).Words
 	pe, ok := errors.AsType[*plant.Error](err)
 	switch {
 	case ok && pe.Kind == plant.Conflict:
-		return s.renderCorrection(w, r, http.StatusConflict, st, nil, ui.FrameOf(r).Words.T("station.corrected-already"))
+		return s.renderCorrection(w, r, http.StatusConflict, st, nil, words.T("station.corrected-already"))
 	case !ok || pe.Kind != plant.Invalid:
 		return err
 	case pe.Field == "reason":
-		c.part.ReasonProblem = pe.Message
+		c.part.ReasonProblem = words.Problem(pe)
 	case pe.Field == "short":
-		c.part.ShortProblem = pe.Message
+		c.part.ShortProblem = words.Problem(pe)
 	default:
-		c.part.Problem = pe.Message
+		c.part.Problem = words.Problem(pe)
 	}
 	return s.renderCorrection(w, r, http.StatusUnprocessableEntity, st, &c, "")
 }
@@ -284,7 +285,7 @@ func (s *Surface) signVoid(r *http.Request, c *correction) error {
 	}
 	person, err := s.signer.Check(r.Context(), frame.Person.Login, secret, frame.Addr)
 	if pe, ok := errors.AsType[*plant.Error](err); ok {
-		c.part.SecretProblem = pe.Message
+		c.part.SecretProblem = frame.Words.Problem(pe)
 		return nil
 	}
 	if err != nil {

@@ -304,7 +304,7 @@ func (s *Surface) refused(w http.ResponseWriter, r *http.Request, d draft, err e
 	if !ok || pe.Kind != plant.Invalid && pe.Kind != plant.Conflict {
 		return err
 	}
-	d.Problem = pe.Message
+	d.Problem = ui.FrameOf(r).Words.Problem(pe)
 	if pe.Kind == plant.Conflict {
 		d.Round = uuid.Must(uuid.NewV7())
 	}

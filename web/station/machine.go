@@ -90,7 +90,7 @@ func (s *Surface) setMachine(w http.ResponseWriter, r *http.Request) error {
 		}
 		if state.Part, v.PartProblem = partOf(frame, parts, form.Get("part")); v.PartProblem == "" {
 			state.Lot, err = plant.CleanTextWithin("lot", v.Lot, 60)
-			v.LotProblem = ui.ProblemOf(err, "lot")
+			v.LotProblem = ui.ProblemOf(frame.Words, err, "lot")
 		}
 		if v.PartProblem != "" || v.LotProblem != "" {
 			return s.renderMachine(w, r, http.StatusUnprocessableEntity, st, m, v, form.Get("part"))
@@ -100,7 +100,7 @@ func (s *Surface) setMachine(w http.ResponseWriter, r *http.Request) error {
 	}
 	err = s.store.SetMachine(r.Context(), state)
 	if pe, ok := errors.AsType[*plant.Error](err); ok && pe.Kind == plant.Invalid {
-		return s.renderMachine(w, r, http.StatusUnprocessableEntity, st, m, machinePageView{Lot: state.Lot, Problem: pe.Message}, state.Part.String())
+		return s.renderMachine(w, r, http.StatusUnprocessableEntity, st, m, machinePageView{Lot: state.Lot, Problem: frame.Words.Problem(pe)}, state.Part.String())
 	}
 	if err != nil {
 		return err

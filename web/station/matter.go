@@ -250,20 +250,20 @@ func (s *Surface) closeMatter(w http.ResponseWriter, r *http.Request) error {
 		if !ok || pe.Kind != plant.Invalid {
 			return err
 		}
-		form.place(pe)
+		form.place(pe.Field, ui.FrameOf(r).Words.Problem(pe))
 	}
 	return s.renderMatter(w, r, http.StatusUnprocessableEntity, st, m, form, chosen, "")
 }
 
 // place puts what the record said at the field that it is about.
-func (c *closingForm) place(pe *plant.Error) {
-	switch pe.Field {
+func (c *closingForm) place(field, problem string) {
+	switch field {
 	case "action":
-		c.ActionProblem = pe.Message
+		c.ActionProblem = problem
 	case "fixed_at":
-		c.FixedProblem = pe.Message
+		c.FixedProblem = problem
 	default:
-		c.CauseProblem = pe.Message
+		c.CauseProblem = problem
 	}
 }
 

@@ -9,10 +9,7 @@ import (
 	"holdfast/web/words"
 )
 
-const (
-	minus = "\u2212"
-	space = "\u00a0" // between a number and its unit: the line never breaks there
-)
+const space = "\u00a0" // between a number and its unit: the line never breaks there
 
 // Format writes times and numbers for people: in the plant's wall time, as of one
 // instant, in one language.
@@ -121,16 +118,16 @@ func (f Format) Count(n int) string { return f.Words.Count(n) }
 // Number writes a computed figure with so many decimals and a true minus. What is no
 // number is written as nothing.
 func (f Format) Number(v float64, decimals int) string {
-	return f.local(plant.FormatFloat(v, decimals))
+	return f.Words.Number(plant.FormatFloat(v, decimals))
 }
 
 // Units writes a reading, an integer in the last decimal.
 func (f Format) Units(units int64, decimals int) string {
-	return f.local(plant.FormatUnits(units, decimals))
+	return f.Words.Number(plant.FormatUnits(units, decimals))
 }
 
 // Decimal writes a specification limit, a target or a size.
-func (f Format) Decimal(d plant.Decimal) string { return f.local(d.String()) }
+func (f Format) Decimal(d plant.Decimal) string { return f.Words.Number(d.String()) }
 
 // Signed writes a deviation: always with its sign, except that zero has none.
 func (f Format) Signed(v float64, decimals int) string {
@@ -142,17 +139,9 @@ func (f Format) SignedDecimal(d plant.Decimal) string { return f.signed(d.String
 
 func (f Format) signed(s string) string {
 	if s == "" || strings.HasPrefix(s, "-") || strings.Trim(s, "0.") == "" {
-		return f.local(s)
+		return f.Words.Number(s)
 	}
-	return "+" + f.local(s)
-}
-
-// local puts in the decimal sign of the language and the typographic minus.
-func (f Format) local(s string) string {
-	if sign := f.Words.T("ui.decimal-sign"); sign != "." {
-		s = strings.Replace(s, ".", sign, 1)
-	}
-	return strings.Replace(s, "-", minus, 1)
+	return "+" + f.Words.Number(s)
 }
 
 // WithUnit puts a unit after a number that is already written, "14.993 mm", so that

@@ -14,6 +14,7 @@ import (
 	"github.com/a-h/templ"
 
 	"holdfast/internal/plant"
+	"holdfast/web/words"
 )
 
 // HTTPError is an answer that no kind of plant.Error stands for. Message is what
@@ -75,7 +76,7 @@ func Fail(log *slog.Logger, w http.ResponseWriter, r *http.Request, err error) {
 		status := StatusOf(pe.Kind)
 		kind := kindOf(status)
 		answer(w, r, problem{Status: status, Kind: kind, Field: pe.Field,
-			Title: f.Words.T("ui.problem." + kind), Message: pe.Message})
+			Title: f.Words.T("ui.problem." + kind), Message: f.Words.Problem(pe)})
 		return
 	}
 	if he, ok := errors.AsType[*HTTPError](err); ok && he.Status < http.StatusInternalServerError {
@@ -232,11 +233,12 @@ func Redirect(w http.ResponseWriter, r *http.Request, path string) {
 	http.Redirect(w, r, LocalPath(path), http.StatusSeeOther)
 }
 
-// ProblemOf is what a form shows about one of its fields: the message when err is
-// about that field, else "". The field "" holds what is about the whole.
-func ProblemOf(err error, field string) string {
+// ProblemOf is what a form shows about one of its fields, in the language of the
+// page: the message when err is about that field, else "". The field "" holds what is
+// about the whole.
+func ProblemOf(w *words.Printer, err error, field string) string {
 	if pe, ok := errors.AsType[*plant.Error](err); ok && pe.Field == field {
-		return pe.Message
+		return w.Problem(pe)
 	}
 	return ""
 }

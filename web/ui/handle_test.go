@@ -18,6 +18,7 @@ import (
 	"github.com/a-h/templ"
 
 	"holdfast/internal/plant"
+	"holdfast/web/words"
 )
 
 func rendered(t *testing.T, c templ.Component) string {
@@ -220,10 +221,11 @@ func TestJSONIsReadStrictly(t *testing.T) {
 func TestProblemOfAField(t *testing.T) {
 	t.Parallel()
 	err := fmt.Errorf("close: %w", plant.Invalidf("cause", "Say what the cause was."))
-	if got := ProblemOf(err, "cause"); got != "Say what the cause was." {
+	w := words.For("en")
+	if got := ProblemOf(w, err, "cause"); got != "Say what the cause was." {
 		t.Errorf("got %q", got)
 	}
-	if got := ProblemOf(err, "action") + ProblemOf(nil, "") + ProblemOf(errors.New("x"), ""); got != "" {
+	if got := ProblemOf(w, err, "action") + ProblemOf(w, nil, "") + ProblemOf(w, errors.New("x"), ""); got != "" {
 		t.Errorf("got %q", got)
 	}
 }

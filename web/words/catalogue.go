@@ -16,8 +16,11 @@ import (
 	"golang.org/x/text/message/catalog"
 )
 
-//go:embed en/*.json
+//go:embed en/*.json de/*.json es/*.json
 var embedded embed.FS
+
+// Files is the embedded catalogue, one folder a language.
+func Files() fs.FS { return embedded }
 
 // Message is the words of one key before arguments are put in: one format, or one
 // a plural form.
@@ -156,11 +159,10 @@ func Read(files fs.FS, folder string) (Dictionary, error) {
 		if err != nil {
 			return nil, fmt.Errorf("%s: %w", name, err)
 		}
-		surface := strings.TrimSuffix(path.Base(name), ".json") + "."
 		seen := make(map[string]bool, len(keys))
 		for _, k := range keys {
-			if !strings.HasPrefix(k, surface) {
-				return nil, fmt.Errorf("%s: %q does not begin with %q", name, k, surface)
+			if _, err := keyIn(path.Base(name), k); err != nil {
+				return nil, fmt.Errorf("%s: %w", name, err)
 			}
 			if seen[k] {
 				return nil, fmt.Errorf("%s: %q stands there twice", name, k)
@@ -172,7 +174,8 @@ func Read(files fs.FS, folder string) (Dictionary, error) {
 			return nil, fmt.Errorf("%s: %w", name, err)
 		}
 		for k, m := range one {
-			all[k] = m
+			key, _ := keyIn(path.Base(name), k) // looked at above
+			all[key] = m
 		}
 	}
 	return all, nil

@@ -43,6 +43,17 @@
 // catalogue, when a call has another number of arguments than its message, and
 // when a word in the catalogue is used nowhere.
 //
+// # Problems
+//
+// The sentence of a plant.Error is written in English where the problem is found.
+// Other languages find theirs by that sentence, or by its format, in problems.json:
+//
+//	"At most %d rules can be on.": "Höchstens %d Regeln können eingeschaltet sein."
+//
+// A page says it by Printer.Problem, or ui.ProblemOf at a field. A test reads the
+// sources and names each sentence that a language lacks, and each that is said
+// nowhere any more.
+//
 // # Languages
 //
 // English is embedded. Another language is another folder with the same files and
