@@ -73,6 +73,8 @@ var routeTable = []routeRow{
 	{"GET /board/chart/{station}/{characteristic}", seers, 303},
 
 	{"GET /desk/", deskers, 200},
+	{"GET /desk/settings", deskers, 200},
+	{"POST /desk/settings", setters, 422},
 	{"GET /desk/characteristic/{id}", deskers, 200},
 	{"GET /desk/characteristic/{id}/revisions", deskers, 200},
 	{"GET /desk/characteristic/{id}/study", setters, 200},

@@ -45,6 +45,7 @@ type shared struct {
 	revisions *sync.Map // uuid -> *frozen; revisions never change
 	setups    *sync.Map // setupKey -> plant.Setup; versions never change
 	measured  *sync.Map // station -> measuredStation, for about a second
+	settings  *atomic.Pointer[readSettings]
 	onChange  *atomic.Pointer[func([]uuid.UUID)]
 	every     int // subgroups between two checkpoints
 	limit     time.Duration
@@ -70,7 +71,8 @@ func Open(ctx context.Context, o Options) (*Store, error) {
 	}
 	s := &Store{clock: o.Clock, shared: shared{
 		pool: pool, plantID: new(atomic.Pointer[uuid.UUID]),
-		revisions: new(sync.Map), setups: new(sync.Map), measured: new(sync.Map), onChange: new(atomic.Pointer[func([]uuid.UUID)]), every: o.CheckpointEvery,
+		revisions: new(sync.Map), setups: new(sync.Map), measured: new(sync.Map),
+		settings: new(atomic.Pointer[readSettings]), onChange: new(atomic.Pointer[func([]uuid.UUID)]), every: o.CheckpointEvery,
 		limit: cmp.Or(o.SaveLimit, 15*time.Second),
 	}}
 	if s.clock == nil {

@@ -3,6 +3,7 @@ package store
 import (
 	"context"
 	"fmt"
+	"slices"
 
 	"github.com/google/uuid"
 	"github.com/jackc/pgx/v5"
@@ -100,7 +101,7 @@ func (s *Store) CheckRecord(ctx context.Context) (out []Difference, err error) {
 }
 
 func checkRecord(ctx context.Context, q querier) (out []Difference, err error) {
-	for _, sql := range sealed {
+	for _, sql := range slices.Concat(sealed, sealedSettings) {
 		rows, err := q.Query(ctx, sql+` limit 100`)
 		if err != nil {
 			return nil, fmt.Errorf("compare with the ledger: %w", err)

@@ -23,6 +23,9 @@ type Store interface {
 	RevisionAt(ctx context.Context, characteristic uuid.UUID, at time.Time) (plant.Revision, error)
 	Freeze(ctx context.Context, f plant.FreezeRequest) (plant.Revision, error)
 	Causes(ctx context.Context, family string) ([]plant.Cause, error)
+	Settings(ctx context.Context) (plant.Settings, error)
+	SettingsVersions(ctx context.Context) ([]plant.Settings, error)
+	ChangeSettings(ctx context.Context, c plant.SettingsChange) (plant.Settings, error)
 }
 
 // Signer tells whose login and secret these are. Freezing is a signature: the secret
@@ -51,10 +54,12 @@ func New(d Deps) *Desk { return &Desk{log: d.Log, store: d.Store, signer: d.Sign
 // Routes adds the addresses under /desk.
 func (d *Desk) Routes(r chi.Router) {
 	r.Get("/", ui.Handle(d.log, d.list))
+	r.Get("/settings", ui.Handle(d.log, d.showSettings))
 	r.Get("/characteristic/{id}", ui.Handle(d.log, d.chart))
 	r.Get("/characteristic/{id}/revisions", ui.Handle(d.log, d.revisions))
 	r.Group(func(r chi.Router) {
 		r.Use(ui.Require(plant.SetLimits))
+		r.Post("/settings", ui.Handle(d.log, d.changeSettings))
 		r.Get("/characteristic/{id}/study", ui.Handle(d.log, d.showStudy))
 		r.Get("/characteristic/{id}/study/freeze", ui.Handle(d.log, d.showFreeze))
 		r.Post("/characteristic/{id}/study/freeze", ui.Handle(d.log, d.freeze))
