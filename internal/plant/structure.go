@@ -74,8 +74,11 @@ type Gauge struct {
 
 // Cause is one entry of the catalogue of a station family.
 type Cause struct {
-	ID   uuid.UUID
-	Name string
+	ID     uuid.UUID
+	Name   string
+	Family string // of stations; "": all
+
+	RetiredAt time.Time // since when it is no longer offered; zero: it is
 }
 
 // ShiftAt returns the shift that t falls into and when it began. Without a shift

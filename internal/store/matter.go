@@ -73,7 +73,7 @@ func (s *Store) matters(ctx context.Context, q querier, where string, args ...an
 	return list, readLines(rows, byID)
 }
 
-// Matter reads one matter.
+// Matter reads one matter with what people did about it.
 func (s *Store) Matter(ctx context.Context, id uuid.UUID) (plant.Matter, error) {
 	m, err := s.matter(ctx, s.pool, id)
 	if err != nil {
@@ -82,28 +82,32 @@ func (s *Store) Matter(ctx context.Context, id uuid.UUID) (plant.Matter, error) 
 	return *m, nil
 }
 
-func (s *Store) matter(ctx context.Context, q querier, id uuid.UUID) (*plant.Matter, error) {
-	list, err := s.matters(ctx, q, ` where m.id = $1 and m.plant_id = $2`, id, s.plant())
+func (s *Store) matter(ctx context.Context, c conn, id uuid.UUID) (*plant.Matter, error) {
+	list, err := s.matters(ctx, c, ` where m.id = $1 and m.plant_id = $2`, id, s.plant())
 	if err != nil {
 		return nil, err
 	}
 	if len(list) == 0 {
 		return nil, plant.NotFoundf("", "There is no such matter.")
 	}
-	return list[0], nil
+	return list[0], s.progress(ctx, c, list[0])
 }
+
+// anyVersion is for what does not depend on what else people did about a matter.
+const anyVersion = -1
 
 // onMatter runs f on an open matter while its characteristic is locked. Version is the
 // one that the person saw; when another was quicker it is a Conflict.
 func (s *Store) onMatter(ctx context.Context, id uuid.UUID, version int, f func(tx pgx.Tx, l *locked, m *plant.Matter) error) error {
 	ctx, cancel := s.saving(ctx)
 	defer cancel()
-	before, err := s.Matter(ctx, id)
+	var characteristic, station uuid.UUID
+	err := s.pool.QueryRow(ctx, `select characteristic_id, station_id from matter where id = $1 and plant_id = $2`, id, s.plant()).Scan(&characteristic, &station)
 	if err != nil {
-		return err
+		return fmt.Errorf("read matter: %w", missing(err, "There is no such matter."))
 	}
 	err = s.inTx(ctx, func(tx pgx.Tx) error {
-		l, err := s.lockOne(ctx, tx, before.Characteristic)
+		l, err := s.lockOne(ctx, tx, characteristic)
 		if err != nil {
 			return err
 		}
@@ -114,7 +118,7 @@ func (s *Store) onMatter(ctx context.Context, id uuid.UUID, version int, f func(
 		switch {
 		case !m.Open():
 			return plant.Conflictf("", "%s has closed this already.", m.ClosedByName)
-		case m.Version != version:
+		case version != anyVersion && m.Version != version:
 			return plant.Conflictf("", "Somebody was quicker. This is how it stands now.")
 		}
 		return f(tx, l, m)
@@ -122,7 +126,7 @@ func (s *Store) onMatter(ctx context.Context, id uuid.UUID, version int, f func(
 	if err != nil {
 		return err
 	}
-	s.changed(before.Station)
+	s.changed(station)
 	return nil
 }
 
@@ -141,9 +145,12 @@ func (s *Store) TakeMatter(ctx context.Context, id uuid.UUID, version int, perso
 	})
 }
 
-// CloseMatter ends a matter with its cause and action. A fix sets the restart mark at
-// its instant: there the fold starts afresh, and what was taken since is judged again.
-// What still fires behind the mark opens a new matter, without alarm.
+// CloseMatter says what was found and done and ends the matter, if its plans demand
+// nothing more. A fix sets the restart mark at its instant: there the fold starts afresh,
+// and what was taken since is judged again. Where a confirming round or a second person
+// is demanded the fix is recorded and the matter waits; what signals behind the mark
+// then shows that the fix did not hold. Once everything is there it is closed by closing
+// it again, whatever is said then.
 func (s *Store) CloseMatter(ctx context.Context, c plant.ClosingRequest) error {
 	var err error
 	if c.Cause, err = plant.CleanTextWithin("cause", c.Cause, 200); err != nil {
@@ -155,23 +162,25 @@ func (s *Store) CloseMatter(ctx context.Context, c plant.ClosingRequest) error {
 	c.FixedAt = plant.CutTime(c.FixedAt)
 	return s.onMatter(ctx, c.Matter, c.Version, func(tx pgx.Tx, l *locked, m *plant.Matter) error {
 		now := s.now()
-		closing, restart, err := m.Resolve(c, now)
+		out, err := m.Conclude(c, now)
 		if err != nil {
 			return err
 		}
-		if _, err := tx.Exec(ctx, `update matter set cause = $2, cause_id = $3, action = $4, described_by = $5, described_at = $6,
-				restart_at = $7, closed_by = $5, closed_at = $6, closing = $8, version = version + 1 where id = $1`,
-			m.ID, c.Cause, orNull(c.CauseID), c.Action, c.Person, now, timeOrNull(restart), string(closing)); err != nil {
-			return fmt.Errorf("close matter: %w", err)
-		}
-		l.matter = uuid.Nil
 		b := &pgx.Batch{}
-		if err := s.seal(b, l, ledger.Matter{Matter: m.ID, Step: "closed", At: ledger.Time(now), Person: ledger.ID(c.Person),
-			Cause: c.Cause, Action: c.Action, RestartAt: ledger.At(restart), Closing: string(closing)}); err != nil {
-			return err
+		fix := m.Progress().Fix
+		if out.Fix != nil {
+			fix = out.Fix
+			if err := s.insertFix(b, l, m, fix); err != nil {
+				return err
+			}
 		}
-		if !restart.IsZero() {
-			if err := s.addBoundary(ctx, tx, b, l, plant.Boundary{ID: newID(), At: restart, Kind: plant.ByRestart}, now); err != nil {
+		if out.Closing != "" {
+			if err := s.endMatter(b, l, m, fix, out.Closing, c.Person, now); err != nil {
+				return err
+			}
+		}
+		if out.Fix != nil && !fix.RestartAt.IsZero() {
+			if err := s.addBoundary(ctx, tx, b, l, plant.Boundary{ID: newID(), At: fix.RestartAt, Kind: plant.ByRestart}, now); err != nil {
 				return err
 			}
 			// The refold must be written before what still stands can be read.
@@ -179,13 +188,43 @@ func (s *Store) CloseMatter(ctx context.Context, c plant.ClosingRequest) error {
 				return fmt.Errorf("write restart: %w", err)
 			}
 			b = &pgx.Batch{}
-			if err := s.carryOver(ctx, tx, b, l, m.ID, restart, now); err != nil {
-				return err
+			if out.Closing != "" {
+				if err := s.carryOver(ctx, tx, b, l, m.ID, fix.RestartAt, now); err != nil {
+					return err
+				}
 			}
 		}
 		s.save(b, l)
 		return tx.SendBatch(ctx, b).Close()
 	})
+}
+
+// insertFix records what was found and done.
+func (s *Store) insertFix(b *pgx.Batch, l *locked, m *plant.Matter, f *plant.Fix) error {
+	f.ID = newID()
+	b.Queue(`insert into matter_fix (id, plant_id, matter_id, number, cause_id, cause, action, restart_at, at, person_id)
+		values ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10)`,
+		f.ID, s.plant(), m.ID, f.Number, orNull(f.CauseID), f.Cause, f.Action, timeOrNull(f.RestartAt), f.At, f.Person)
+	b.Queue(`update matter set version = version + 1 where id = $1`, m.ID)
+	return s.seal(b, l, ledger.MatterFix{Fix: f.ID, Matter: m.ID, Number: f.Number, Cause: f.Cause, CauseID: ledger.ID(f.CauseID), Action: f.Action,
+		RestartAt: ledger.At(f.RestartAt), At: ledger.Time(f.At), Person: f.Person})
+}
+
+// endMatter closes a matter. fix is nil when it is withdrawn.
+func (s *Store) endMatter(b *pgx.Batch, l *locked, m *plant.Matter, fix *plant.Fix, closing plant.Closing, person uuid.UUID, now time.Time) error {
+	if fix == nil || closing == plant.WithdrawnBy {
+		fix = &plant.Fix{Person: person, At: now}
+	}
+	b.Queue(`update matter set cause = $2, cause_id = $3, action = $4, described_by = $5, described_at = $6,
+			restart_at = $7, closed_by = $8, closed_at = $9, closing = $10, version = version + 1 where id = $1`,
+		m.ID, fix.Cause, orNull(fix.CauseID), fix.Action, fix.Person, fix.At, timeOrNull(fix.RestartAt), person, now, string(closing))
+	l.matter = uuid.Nil
+	body := ledger.Matter{Matter: m.ID, Step: "closed", At: ledger.Time(now), Person: ledger.ID(person),
+		Cause: fix.Cause, Action: fix.Action, RestartAt: ledger.At(fix.RestartAt), Closing: string(closing)}
+	if closing != plant.WithdrawnBy {
+		body.Plans = m.Progress().Plans
+	}
+	return s.seal(b, l, body)
 }
 
 // carryOver moves the signals of a closed matter that stand behind its restart mark

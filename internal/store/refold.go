@@ -356,12 +356,13 @@ func (s *Store) openMatter(b *pgx.Batch, l *locked, at position, alarm bool, now
 	return s.seal(b, l, ledger.Matter{Matter: id, Step: "opened", At: ledger.Time(now), Subgroup: ledger.ID(at.id)})
 }
 
-// insertSignal enters a firing, or lets one that was withdrawn stand again.
+// insertSignal enters a firing, or lets one that was withdrawn stand again. The reaction
+// plan that is in force when it is first entered stays with it.
 func (s *Store) insertSignal(b *pgx.Batch, l *locked, at position, f plant.Firing, revision, matter uuid.UUID, late bool, now time.Time) {
-	b.Queue(`insert into signal (characteristic_id, taken_at, subgroup_id, panel, rule, plant_id, side, revision_id, matter_id, found_late, judged_at)
-		values ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11)
+	b.Queue(`insert into signal (characteristic_id, taken_at, subgroup_id, panel, rule, plant_id, side, revision_id, matter_id, found_late, judged_at, added_at, plan_id)
+		values ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $11, (select id from (`+plansInForce("$1", "$12", "$6")+`) plan limit 1))
 		on conflict (characteristic_id, taken_at, subgroup_id, panel, rule, side) do update
 		set withdrawn = false, found_late = true, revision_id = excluded.revision_id,
 			matter_id = excluded.matter_id, judged_at = excluded.judged_at`,
-		l.id, at.taken, at.id, string(f.Panel), f.Rule, s.plant(), string(f.Side), orNull(revision), orNull(matter), late, now)
+		l.id, at.taken, at.id, string(f.Panel), f.Rule, s.plant(), string(f.Side), orNull(revision), orNull(matter), late, now, string(f.MatterKind()))
 }

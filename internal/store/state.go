@@ -168,12 +168,15 @@ func (g *gathering) readCharacteristics(ctx context.Context, tx pgx.Tx, stations
 
 func (g *gathering) readMatters(ctx context.Context, tx pgx.Tx, stations []uuid.UUID) error {
 	list, err := g.s.matters(ctx, tx, ` where m.station_id = any($1) and m.closed_at is null`, stations)
+	if err != nil {
+		return err
+	}
 	for _, m := range list {
 		if c := g.characteristics[m.Characteristic]; c != nil {
 			c.Matter = m
 		}
 	}
-	return err
+	return g.s.progress(ctx, tx, list...)
 }
 
 // readLogs reads what each machine did since the oldest of its newest samples, and the

@@ -172,28 +172,6 @@ func (s *Store) AddGauge(ctx context.Context, g plant.Gauge, by uuid.UUID) error
 	})
 }
 
-// AddCause adds a cause to the catalogue of a station family.
-func (s *Store) AddCause(ctx context.Context, family string, c plant.Cause, position int, by uuid.UUID) error {
-	return s.arrange(ctx, "cause added", c.ID, by, map[string]any{"name": c.Name, "family": family}, func(tx pgx.Tx) error {
-		_, err := tx.Exec(ctx, `insert into cause (id, plant_id, family, name, position) values ($1, $2, $3, $4, $5)`,
-			c.ID, s.plant(), family, c.Name, position)
-		return taken(err, "cause_name_once", "There is a cause of this name already.")
-	})
-}
-
-// Causes lists the catalogue of a station family, with what belongs to every family
-// at the end.
-func (s *Store) Causes(ctx context.Context, family string) ([]plant.Cause, error) {
-	rows, err := s.pool.Query(ctx, `select id, name from cause where plant_id = $1 and family in ($2, '')
-		order by family = '', position, name`, s.plant(), family)
-	if err != nil {
-		return nil, fmt.Errorf("read causes: %w", err)
-	}
-	return pgx.CollectRows(rows, func(r pgx.CollectableRow) (c plant.Cause, err error) {
-		return c, r.Scan(&c.ID, &c.Name)
-	})
-}
-
 // AddCharacteristic adds a characteristic with the first version of its set-up, its
 // state row and the head of its ledger chain.
 func (s *Store) AddCharacteristic(ctx context.Context, c plant.Characteristic, setup plant.Setup, by uuid.UUID) error {

@@ -68,7 +68,8 @@ var sealed = []string{
 	// A boundary follows from something that was sealed.
 	`select b.characteristic_id, format('nothing that was sealed makes a boundary (%s) at %s', b.kind, b.at) from boundary b
 	where b.kind = 'revision' and not exists (select from revision r where r.id = b.revision_id and r.in_force_from = b.at)
-		or b.kind = 'restart' and not exists (select from matter m where m.characteristic_id = b.characteristic_id and m.restart_at = b.at)
+		or b.kind = 'restart' and not exists (select from matter m left join matter_fix f on f.matter_id = m.id
+			where m.characteristic_id = b.characteristic_id and b.at in (m.restart_at, f.restart_at))
 		or b.kind = 'changeover' and not exists (select from machine_state x join characteristic c on c.machine_id = x.machine_id
 			where c.id = b.characteristic_id and x.at = b.at)
 		or b.kind = 'setup' and not exists (select from setup u where u.characteristic_id = b.characteristic_id and u.made_at <= b.at and u.made_at = b.recorded_at)`,
@@ -89,7 +90,8 @@ var sealed = []string{
 }
 
 // CheckRecord compares the tables with the ledger: subgroups and their statistics,
-// set-ups, revisions, matters, boundaries, changes and machine states. A chain that holds
+// set-ups, revisions, matters and what was done about them, reaction plans, boundaries,
+// changes and machine states. A chain that holds
 // says nothing about a table that was changed beside it. The ledger itself is
 // VerifyLedger's question. It writes nothing.
 func (s *Store) CheckRecord(ctx context.Context) (out []Difference, err error) {
@@ -101,7 +103,7 @@ func (s *Store) CheckRecord(ctx context.Context) (out []Difference, err error) {
 }
 
 func checkRecord(ctx context.Context, q querier) (out []Difference, err error) {
-	for _, sql := range slices.Concat(sealed, sealedSettings) {
+	for _, sql := range slices.Concat(sealed, sealedSettings, sealedReaction) {
 		rows, err := q.Query(ctx, sql+` limit 100`)
 		if err != nil {
 			return nil, fmt.Errorf("compare with the ledger: %w", err)

@@ -88,20 +88,28 @@ func TestTablesChangedBesideTheLedgerAreFound(t *testing.T) {
 		`delete from machine_state where not running`,
 		`update machine_state set part_id = null where running`,
 	} {
-		tx, err := p.Pool().Begin(ctx)
-		if err != nil {
-			t.Fatal(err)
-		}
-		tag, err := tx.Exec(ctx, sql)
-		if err != nil || tag.RowsAffected() == 0 {
-			t.Fatalf("%s: %d rows, %v", sql, tag.RowsAffected(), err)
-		}
-		ds, err := store.CheckRecordIn(ctx, tx)
-		if err != nil || len(ds) == 0 {
-			t.Errorf("not found: %s (%v)", sql, err)
-		}
-		if err := tx.Rollback(ctx); err != nil {
-			t.Fatal(err)
-		}
+		found(t, p, sql)
+	}
+}
+
+// found changes the tables behind the program's back, demands that it is found, and takes
+// it back.
+func found(t testing.TB, p *storetest.Plant, sql string) {
+	t.Helper()
+	ctx := context.Background()
+	tx, err := p.Pool().Begin(ctx)
+	if err != nil {
+		t.Fatal(err)
+	}
+	tag, err := tx.Exec(ctx, sql)
+	if err != nil || tag.RowsAffected() == 0 {
+		t.Fatalf("%s: %d rows, %v", sql, tag.RowsAffected(), err)
+	}
+	ds, err := store.CheckRecordIn(ctx, tx)
+	if err != nil || len(ds) == 0 {
+		t.Errorf("not found: %s (%v)", sql, err)
+	}
+	if err := tx.Rollback(ctx); err != nil {
+		t.Fatal(err)
 	}
 }

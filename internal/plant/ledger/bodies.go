@@ -131,6 +131,8 @@ type Matter struct {
 	Action    string     `json:"action,omitempty"`
 	RestartAt *Time      `json:"restart_at,omitempty"`
 	Closing   string     `json:"closing,omitempty"`
+
+	Plans []uuid.UUID `json:"plans,omitempty"` // of a closing: the plan versions that were walked
 }
 
 // Kind is "matter".
