@@ -92,8 +92,8 @@ func (s *server) headers(next http.Handler) http.Handler {
 		h.Set("Permissions-Policy", "camera=(), display-capture=(), geolocation=(), microphone=(), payment=(), usb=()")
 		h.Set("Cross-Origin-Opener-Policy", "same-origin")
 		h.Set("Cross-Origin-Resource-Policy", "same-origin")
-		if s.Secure {
-			h.Set("Strict-Transport-Security", "max-age=31536000")
+		if s.Secure && s.Strict > 0 {
+			h.Set("Strict-Transport-Security", fmt.Sprintf("max-age=%.0f", s.Strict.Seconds()))
 		}
 		next.ServeHTTP(w, r)
 	})

@@ -2,6 +2,7 @@ package web
 
 import (
 	"context"
+	"crypto/x509"
 	"errors"
 	"log/slog"
 	"net/http"
@@ -66,10 +67,17 @@ type Config struct {
 	Hosts []string
 	// Secure says that browsers reach the server over https.
 	Secure bool
+	// Strict is how long browsers insist on https once they were here.
+	Strict time.Duration
+	// Authority is the plant's own, whose certificate tablets install; nil when there is none.
+	Authority *x509.Certificate
 	// Addr tells where a request comes from; nil takes the other end of the
 	// connection, which behind a proxy is the proxy.
 	Addr func(r *http.Request) netip.Addr
 }
+
+// AuthorityAddress is where the plant's own authority is shown, and how to trust it.
+const AuthorityAddress = door.AuthorityAddress
 
 // New joins everything to one handler.
 func New(c Config) http.Handler {
@@ -102,6 +110,9 @@ func New(c Config) http.Handler {
 	r.Group(func(r chi.Router) {
 		r.Use(visitors...)
 		r.Post(ui.ThemeAddress, ui.Handle(c.Log, ui.SetTheme))
+		if c.Authority != nil {
+			(&door.Trust{Log: c.Log, Authority: c.Authority}).Routes(r)
+		}
 		(&door.Handler{Log: c.Log, Checker: c.Checker, Sessions: c.Sessions, Demo: c.DemoPeople}).Routes(r)
 		mount(r, ui.Station, c.Station)
 		mount(r, ui.Board, c.Board)

@@ -34,7 +34,10 @@ type running struct {
 }
 
 // serve starts the program on a fixture, under the fixture's clock.
-func serve(t testing.TB) *running {
+func serve(t testing.TB) *running { return serveWith(t, func(*settings) {}) }
+
+// serveWith does so with other settings.
+func serveWith(t testing.TB, change func(*settings)) *running {
 	t.Helper()
 	ctx := context.Background()
 	hasher, err := auth.NewHasher(cheap, 2)
@@ -46,14 +49,19 @@ func serve(t testing.TB) *running {
 		t.Fatal(err)
 	}
 	p := storetest.New(t, hash)
-	return serveOn(t, p, p.Clock.Now)
+	return start(t, p, p.Clock.Now, change)
 }
 
 func serveOn(t testing.TB, p *storetest.Plant, clock func() time.Time) *running {
 	t.Helper()
-	prog, err := newProgram(context.Background(), settings{
-		Addr: "127.0.0.1:0", DatabaseURL: p.URL, Cost: cheap, Log: slog.New(slog.DiscardHandler), Clock: clock,
-	})
+	return start(t, p, clock, func(*settings) {})
+}
+
+func start(t testing.TB, p *storetest.Plant, clock func() time.Time, change func(*settings)) *running {
+	t.Helper()
+	s := settings{Addr: "127.0.0.1:0", DatabaseURL: p.URL, Cost: cheap, Log: slog.New(slog.DiscardHandler), Clock: clock}
+	change(&s)
+	prog, err := newProgram(context.Background(), s)
 	if err != nil {
 		t.Fatal(err)
 	}

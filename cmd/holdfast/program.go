@@ -14,6 +14,7 @@ import (
 	"time"
 
 	"holdfast/internal/auth"
+	"holdfast/internal/certs"
 	"holdfast/internal/live"
 	"holdfast/internal/plant"
 	"holdfast/internal/store"
@@ -30,7 +31,7 @@ type settings struct {
 	Listener    net.Listener // instead of Addr, when it is open already
 	DatabaseURL string
 	Hosts       []string // names under which it answers; empty: any
-	Secure      bool     // browsers come over https
+	Transport   secured  // how browsers reach it; zero: plain http
 	Demo        bool     // let invented people in by one click
 	Cost        auth.Cost
 	Log         *slog.Logger
@@ -104,7 +105,7 @@ func (p *program) join(ctx context.Context) error {
 	}})
 	p.feed = p.store.NewFeed(p.Log, func(stations []plantID) { p.hub.Dirty(views.changed(stations)...) })
 	p.sessions = auth.NewSessions(auth.SessionOptions{
-		Store: auth.PostgresStore(p.store.Pool()), People: p.store, PlainHTTP: !p.Secure, Log: p.Log, Now: p.Clock,
+		Store: auth.PostgresStore(p.store.Pool()), People: p.store, PlainHTTP: !p.Transport.https, Log: p.Log, Now: p.Clock,
 		OnEnd:    func(session string) { p.hub.Drop(session, live.SessionEnded) },
 		Fail:     web.SessionFault(p.Log),
 		FindMany: p.store.FindSessions, DeleteExpired: p.store.DeleteExpiredSessions,
@@ -122,7 +123,7 @@ func (p *program) join(ctx context.Context) error {
 		Board:   board.New(board.Deps{Store: p.store, Log: p.Log}),
 		Desk:    desk.New(desk.Deps{Store: p.store, Signer: door, Log: p.Log}),
 		Admin:   p.admin,
-		Ready:   p.store.Ready, Hosts: p.Hosts, Secure: p.Secure,
+		Ready:   p.store.Ready, Hosts: p.Hosts, Secure: p.Transport.https, Strict: p.Transport.strict, Addr: p.Transport.from, Authority: p.Transport.root,
 	}
 	if p.Demo && pl.Demo {
 		cfg.DemoPeople = p.store.People
@@ -133,7 +134,8 @@ func (p *program) join(ctx context.Context) error {
 		}
 	}
 	p.server = &http.Server{
-		Handler:           web.New(cfg),
+		Handler:           p.Transport.guard(web.New(cfg)),
+		TLSConfig:         p.Transport.config,
 		ReadHeaderTimeout: 10 * time.Second,
 		ReadTimeout:       60 * time.Second,
 		IdleTimeout:       120 * time.Second,
@@ -144,7 +146,12 @@ func (p *program) join(ctx context.Context) error {
 }
 
 // URL is the address at which the program answers on this machine.
-func (p *program) URL() string { return "http://" + p.listener.Addr().String() }
+func (p *program) URL() string {
+	if p.Transport.config != nil {
+		return "https://" + p.listener.Addr().String()
+	}
+	return "http://" + p.listener.Addr().String()
+}
 
 // Run serves until ctx ends and then lets what is under way finish: a save that was
 // begun is answered.
@@ -153,8 +160,12 @@ func (p *program) Run(ctx context.Context) error {
 	p.background = cancel
 	p.running.Go(func() { p.feed.Run(background) })
 	served := make(chan error, 1)
-	p.running.Go(func() { served <- p.server.Serve(p.listener) })
+	p.running.Go(func() { served <- p.listen() })
+	p.running.Go(func() { p.Transport.keep(background, p.Log) })
 	p.Log.Info("serving", "address", p.URL(), "version", version())
+	if root := p.Transport.root; root != nil {
+		p.Log.Info("certificate fingerprint "+certs.Fingerprint(root), "compare it at", p.URL()+web.AuthorityAddress)
+	}
 	select {
 	case err := <-served:
 		return fmt.Errorf("serve: %w", err)
@@ -169,6 +180,15 @@ func (p *program) Run(ctx context.Context) error {
 		return fmt.Errorf("stop: %w", err)
 	}
 	return nil
+}
+
+func (p *program) listen() error {
+	if p.Transport.config == nil {
+		return p.server.Serve(p.listener)
+	}
+	secure := newSniffer(p.listener)
+	p.running.Go(secure.run)
+	return p.server.ServeTLS(secure, "", "")
 }
 
 // Close ends everything that Run did not.

@@ -3,6 +3,8 @@ package main
 import (
 	"bufio"
 	"context"
+	"crypto/tls"
+	"crypto/x509"
 	"errors"
 	"fmt"
 	"log/slog"
@@ -14,20 +16,25 @@ import (
 	"github.com/google/uuid"
 
 	"holdfast/internal/auth"
+	"holdfast/internal/certs"
 	"holdfast/internal/plant"
 	"holdfast/internal/store"
 )
 
 type serveCmd struct {
 	database
-	Addr     string   `help:"Where to listen, HOST:PORT." default:"127.0.0.1:8080" env:"HOLDFAST_ADDR"`
-	Hosts    []string `help:"Names, with port, under which browsers reach the server; any when empty." env:"HOLDFAST_HOSTS" placeholder:"HOST:PORT"`
-	HTTPS    bool     `help:"Browsers reach the server over https, through a proxy that ends TLS." env:"HOLDFAST_HTTPS"`
-	Plant    string   `help:"Name of the plant, used once, on an empty database." default:"Plant" env:"HOLDFAST_PLANT"`
-	TimeZone string   `help:"Its time zone, used once, on an empty database." default:"UTC" env:"HOLDFAST_TIME_ZONE"`
+	Addr  string   `help:"Where to listen, HOST:PORT." default:"127.0.0.1:8080" env:"HOLDFAST_ADDR"`
+	Hosts []string `help:"Names, with port, under which browsers reach the server; any when empty." env:"HOLDFAST_HOSTS" placeholder:"HOST:PORT"`
+	transport
+	Plant    string `help:"Name of the plant, used once, on an empty database." default:"Plant" env:"HOLDFAST_PLANT"`
+	TimeZone string `help:"Its time zone, used once, on an empty database." default:"UTC" env:"HOLDFAST_TIME_ZONE"`
 }
 
 func (c *serveCmd) Run(ctx context.Context, log *slog.Logger) error {
+	way, err := c.prepare(c.Addr, c.stateDir(), time.Now)
+	if err != nil {
+		return err
+	}
 	return c.with(ctx, log, func(db reached) error {
 		st, err := store.Open(ctx, store.Options{URL: db.url})
 		if err != nil {
@@ -38,7 +45,7 @@ func (c *serveCmd) Run(ctx context.Context, log *slog.Logger) error {
 		if err != nil {
 			return err
 		}
-		p, err := newProgram(ctx, settings{Addr: c.Addr, DatabaseURL: db.url, Hosts: c.Hosts, Secure: c.HTTPS, Log: log})
+		p, err := newProgram(ctx, settings{Addr: c.Addr, DatabaseURL: db.url, Hosts: c.Hosts, Transport: way, Log: log})
 		if err != nil {
 			return err
 		}
@@ -145,7 +152,8 @@ func addPerson(ctx context.Context, st *store.Store, hasher *auth.Hasher, p plan
 }
 
 type healthCmd struct {
-	URL string `arg:"" help:"Address of the server." default:"http://127.0.0.1:8080"`
+	URL    string `arg:"" help:"Address of the server." default:"http://127.0.0.1:8080" env:"HOLDFAST_HEALTH_URL"`
+	TLSDir string `name:"tls-dir" help:"Folder of the authority to trust, as for serve --tls auto." env:"HOLDFAST_TLS_DIR" placeholder:"FOLDER"`
 }
 
 func (c *healthCmd) Run(ctx context.Context) error {
@@ -155,7 +163,17 @@ func (c *healthCmd) Run(ctx context.Context) error {
 	if err != nil {
 		return err
 	}
-	res, err := http.DefaultClient.Do(req)
+	client := &http.Client{CheckRedirect: func(*http.Request, []*http.Request) error { return http.ErrUseLastResponse }}
+	if c.TLSDir != "" && req.URL.Scheme == "https" {
+		root, err := certs.ReadRoot(c.TLSDir)
+		if err != nil {
+			return err
+		}
+		trusted := x509.NewCertPool()
+		trusted.AddCert(root)
+		client.Transport = &http.Transport{TLSClientConfig: &tls.Config{RootCAs: trusted}, DisableKeepAlives: true}
+	}
+	res, err := client.Do(req)
 	if err != nil {
 		return err
 	}

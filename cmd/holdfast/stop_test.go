@@ -276,7 +276,7 @@ func TestASessionCannotBePlanted(t *testing.T) {
 		t.Error("who planted the cookie is signed in as the engineer")
 	}
 
-	secure, err := newProgram(context.Background(), settings{Addr: "127.0.0.1:0", DatabaseURL: r.Plant.URL, Cost: cheap, Log: silent, Clock: r.Clock.Now, Secure: true})
+	secure, err := newProgram(context.Background(), settings{Addr: "127.0.0.1:0", DatabaseURL: r.Plant.URL, Cost: cheap, Log: silent, Clock: r.Clock.Now, Transport: secured{https: true}})
 	if err != nil {
 		t.Fatal(err)
 	}

@@ -22,6 +22,9 @@ const patience = 45 * time.Second
 //go:embed testdata/axe.min.js
 var axe string
 
+// Flag is one of Chromium's command line.
+type Flag struct{ Name, Value string }
+
 // Browser is a running Chromium.
 type Browser struct {
 	t   testing.TB
@@ -29,10 +32,13 @@ type Browser struct {
 }
 
 // Start starts a Chromium that ends with the test. Where there is none the test fails
-// and says what to install.
-func Start(t testing.TB) *Browser {
+// and says what to install. Flags of Chromium's own may be added, without their dashes.
+func Start(t testing.TB, flags ...Flag) *Browser {
 	t.Helper()
 	opts := append(chromedp.DefaultExecAllocatorOptions[:], chromedp.UserDataDir(t.TempDir()))
+	for _, f := range flags {
+		opts = append(opts, chromedp.Flag(f.Name, f.Value))
+	}
 	if os.Getuid() == 0 {
 		opts = append(opts, chromedp.NoSandbox)
 	}

@@ -1,0 +1,61 @@
+package door
+
+import (
+	"crypto/x509"
+	"log/slog"
+	"net/http"
+	"time"
+
+	"github.com/go-chi/chi/v5"
+
+	"holdfast/internal/certs"
+	"holdfast/web/ui"
+)
+
+// AuthorityAddress is where the plant's own authority is shown and how to trust it. It is
+// open to everybody: a tablet needs it before anybody can sign in there safely.
+const AuthorityAddress = "/authority"
+
+const authorityFile = AuthorityAddress + ".crt"
+
+// Trust serves the certificate of the plant's own authority.
+type Trust struct {
+	Log       *slog.Logger
+	Authority *x509.Certificate
+}
+
+// Routes adds the authority's addresses to a router.
+func (t *Trust) Routes(r chi.Router) {
+	r.Get(AuthorityAddress, ui.Handle(t.Log, t.show))
+	r.Get(authorityFile, t.file)
+}
+
+// trust is what the page shows.
+type trust struct {
+	Fingerprint [2]string // in two lines, as people compare it
+	Name, Ends  string
+	Names       []string // that the authority may speak for, besides private addresses
+	Devices     []string // kinds of devices, by the last part of their keys
+}
+
+func (t *Trust) show(w http.ResponseWriter, r *http.Request) error {
+	s := ui.ShellFor(r, ui.Door, ui.FrameOf(r).Words.T("trust.title"))
+	print := certs.Fingerprint(t.Authority)
+	half := (len(print) + 1) / 2
+	return ui.Render(w, r, http.StatusOK, trustPage(s, trust{
+		Fingerprint: [2]string{print[:half-1], print[half:]},
+		Name:        t.Authority.Subject.CommonName,
+		Ends:        s.Format.Date(t.Authority.NotAfter),
+		Names:       t.Authority.PermittedDNSDomains,
+		Devices:     []string{"android", "ipad", "windows", "macos", "linux"},
+	}))
+}
+
+// file is the certificate in DER under the type that devices offer to install.
+func (t *Trust) file(w http.ResponseWriter, _ *http.Request) {
+	h := w.Header()
+	h.Set("Content-Type", "application/x-x509-ca-cert")
+	h.Set("Content-Disposition", `attachment; filename="holdfast-authority-`+t.Authority.NotBefore.Format(time.DateOnly)+`.crt"`)
+	h.Set("Cache-Control", "no-store")
+	_, _ = w.Write(t.Authority.Raw)
+}
