@@ -36,7 +36,7 @@ func (s *server) access(next http.Handler) http.Handler {
 				status = http.StatusOK
 			}
 			level := slog.LevelInfo
-			if strings.HasPrefix(r.URL.Path, "/static/") || r.URL.Path == "/healthz" || r.URL.Path == "/readyz" {
+			if strings.HasPrefix(r.URL.Path, "/static/") || r.URL.Path == "/healthz" || r.URL.Path == "/readyz" || r.URL.Path == "/metrics" {
 				level = slog.LevelDebug
 			}
 			s.Log.LogAttrs(r.Context(), level, "request",

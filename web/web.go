@@ -58,6 +58,9 @@ type Config struct {
 	// API is mounted at /api/v1 and guards itself.
 	API Surface
 
+	// Metrics answers scrapes at /metrics and asks for its own token; nil when nobody may.
+	Metrics http.Handler
+
 	// Ready reports whether the server can do its work, for /readyz.
 	Ready func(ctx context.Context) error
 
@@ -104,6 +107,9 @@ func New(c Config) http.Handler {
 
 	r.Get("/healthz", s.healthy)
 	r.Get("/readyz", s.ready)
+	if c.Metrics != nil {
+		r.Method(http.MethodGet, "/metrics", c.Metrics)
+	}
 	r.Method(http.MethodGet, static.Prefix+"*", static.Handler())
 	r.With(c.Sessions.LoadOnly, s.visitor).Get("/live", s.live)
 

@@ -29,6 +29,7 @@ type cli struct {
 
 	Serve   serveCmd   `cmd:"" help:"Serve the plant."`
 	Demo    demoCmd    `cmd:"" help:"Serve an invented plant on this machine, to try Holdfast."`
+	Check   checkCmd   `cmd:"" help:"Say what is wrong with this machine before it is used; takes the flags of serve."`
 	Migrate migrateCmd `cmd:"" help:"Bring the database to the newest schema and stop."`
 	User    userCmd    `cmd:"" help:"People who may sign in."`
 	Audit   auditCmd   `cmd:"" help:"Verify that the record is whole."`

@@ -16,6 +16,7 @@ import (
 	"holdfast/internal/auth"
 	"holdfast/internal/certs"
 	"holdfast/internal/live"
+	"holdfast/internal/metrics"
 	"holdfast/internal/plant"
 	"holdfast/internal/store"
 	"holdfast/web"
@@ -34,6 +35,7 @@ type settings struct {
 	Transport   secured  // how browsers reach it; zero: plain http
 	Demo        bool     // let invented people in by one click
 	Cost        auth.Cost
+	Metrics     watching // who may read the figures about this server
 	Log         *slog.Logger
 	Clock       func() time.Time
 }
@@ -49,6 +51,7 @@ type program struct {
 	admin    *admin.Admin
 	listener net.Listener
 	server   *http.Server
+	metrics  *metrics.Metrics
 	plant    atomic.Pointer[plant.Plant]
 
 	background context.CancelFunc
@@ -71,9 +74,9 @@ func newProgram(ctx context.Context, s settings) (*program, error) {
 	if s.Cost == (auth.Cost{}) {
 		s.Cost = auth.DefaultCost
 	}
-	p := &program{settings: s}
+	p := &program{settings: s, metrics: metrics.New()}
 	var err error
-	if p.store, err = store.Open(ctx, store.Options{URL: s.DatabaseURL, Clock: s.Clock}); err != nil {
+	if p.store, err = store.Open(ctx, store.Options{URL: s.DatabaseURL, Clock: s.Clock, OnSave: p.metrics.Saved}); err != nil {
 		return nil, err
 	}
 	if err := p.join(ctx); err != nil {
@@ -125,6 +128,10 @@ func (p *program) join(ctx context.Context) error {
 		Admin:   p.admin,
 		Ready:   p.store.Ready, Hosts: p.Hosts, Secure: p.Transport.https, Strict: p.Transport.strict, Addr: p.Transport.from, Authority: p.Transport.root,
 	}
+	p.watch()
+	if p.Metrics.token != "" {
+		cfg.Metrics = p.metrics.Handler(p.Metrics.token)
+	}
 	if p.Demo && pl.Demo {
 		cfg.DemoPeople = p.store.People
 	}
@@ -162,6 +169,9 @@ func (p *program) Run(ctx context.Context) error {
 	served := make(chan error, 1)
 	p.running.Go(func() { served <- p.listen() })
 	p.running.Go(func() { p.Transport.keep(background, p.Log) })
+	if p.Metrics.listener != nil {
+		p.running.Go(func() { p.Metrics.serve(background, p.metrics.Handler(p.Metrics.token), p.Log) })
+	}
 	p.Log.Info("serving", "address", p.URL(), "version", version())
 	if root := p.Transport.root; root != nil {
 		p.Log.Info("certificate fingerprint "+certs.Fingerprint(root), "compare it at", p.URL()+web.AuthorityAddress)

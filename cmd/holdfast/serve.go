@@ -26,12 +26,17 @@ type serveCmd struct {
 	Addr  string   `help:"Where to listen, HOST:PORT." default:"127.0.0.1:8080" env:"HOLDFAST_ADDR"`
 	Hosts []string `help:"Names, with port, under which browsers reach the server; any when empty." env:"HOLDFAST_HOSTS" placeholder:"HOST:PORT"`
 	transport
+	monitor
 	Plant    string `help:"Name of the plant, used once, on an empty database." default:"Plant" env:"HOLDFAST_PLANT"`
 	TimeZone string `help:"Its time zone, used once, on an empty database." default:"UTC" env:"HOLDFAST_TIME_ZONE"`
 }
 
 func (c *serveCmd) Run(ctx context.Context, log *slog.Logger) error {
-	way, err := c.prepare(c.Addr, c.stateDir(), time.Now)
+	watching, err := c.monitor.prepare()
+	if err != nil {
+		return err
+	}
+	way, err := c.transport.prepare(c.Addr, c.stateDir(), time.Now)
 	if err != nil {
 		return err
 	}
@@ -45,7 +50,7 @@ func (c *serveCmd) Run(ctx context.Context, log *slog.Logger) error {
 		if err != nil {
 			return err
 		}
-		p, err := newProgram(ctx, settings{Addr: c.Addr, DatabaseURL: db.url, Hosts: c.Hosts, Transport: way, Log: log})
+		p, err := newProgram(ctx, settings{Addr: c.Addr, DatabaseURL: db.url, Hosts: c.Hosts, Transport: way, Metrics: watching, Log: log})
 		if err != nil {
 			return err
 		}

@@ -76,10 +76,7 @@ func (t transport) prepare(addr, stateDir string, now func() time.Time) (secured
 }
 
 func (t transport) own(stateDir string, now func() time.Time) (secured, error) {
-	dir := t.TLSDir
-	if dir == "" && stateDir != "" {
-		dir = filepath.Join(stateDir, "tls")
-	}
+	dir := t.authorityDir(stateDir)
 	if dir == "" {
 		return secured{}, errors.New("--tls auto needs a folder for its authority: say it with --tls-dir")
 	}
@@ -110,6 +107,14 @@ func (t transport) own(stateDir string, now func() time.Time) (secured, error) {
 		return a.Renew(list)
 	}
 	return secured{config: serverTLS(a.Certificate), root: a.Root(), leaf: leaf, tend: tend, https: true, strict: strictOwn}, nil
+}
+
+// authorityDir is the folder of the authority, "" when nobody said where.
+func (t transport) authorityDir(stateDir string) string {
+	if t.TLSDir == "" && stateDir != "" {
+		return filepath.Join(stateDir, "tls")
+	}
+	return t.TLSDir
 }
 
 func serverTLS(get func(*tls.ClientHelloInfo) (*tls.Certificate, error)) *tls.Config {

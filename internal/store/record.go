@@ -74,6 +74,16 @@ type recording struct {
 // same id with other content is a Conflict, and a time that cannot be believed is
 // Invalid; both are set aside for a person.
 func (s *Store) Record(ctx context.Context, r plant.Round) (plant.Answer, error) {
+	began := time.Now() // of the machine: the store's own clock may stand still
+	answer, err := s.record(ctx, r)
+	s.counts.saved(err)
+	if err == nil {
+		s.onSave(time.Since(began))
+	}
+	return answer, err
+}
+
+func (s *Store) record(ctx context.Context, r plant.Round) (plant.Answer, error) {
 	if err := r.Check(); err != nil {
 		return plant.Answer{}, err
 	}
@@ -196,6 +206,7 @@ func (rec *recording) entry(ctx context.Context, e plant.Entry, l *locked, a rou
 	}
 	rec.insertSubgroup(e, l, a, setup, row)
 
+	rec.s.counts.judged.Add(1)
 	part := plant.PartAnswer{Characteristic: l.id, Subgroup: row.id}
 	openBefore := l.matter != uuid.Nil
 	var firings []plant.Firing

@@ -84,6 +84,7 @@ type refolded struct {
 // (in l). It returns what the patched subgroup itself does now.
 func (s *Store) refold(ctx context.Context, c conn, b *pgx.Batch, l *locked, p patch, now time.Time) (refolded, error) {
 	r := &refolding{s: s, conn: c, batch: b, l: l, patch: p, now: now}
+	s.counts.refolds.Add(1)
 	start, err := r.start(ctx)
 	if err != nil {
 		return refolded{}, err
@@ -99,6 +100,7 @@ func (s *Store) refold(ctx context.Context, c conn, b *pgx.Batch, l *locked, p p
 			return refolded{}, err
 		}
 		for _, row := range rows {
+			s.counts.refolded.Add(1)
 			if err := r.row(ctx, row, signals[row.id]); err != nil {
 				return refolded{}, err
 			}

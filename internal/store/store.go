@@ -30,6 +30,9 @@ type Options struct {
 
 	// CheckpointEvery is how many subgroups lie between two checkpoints of a fold; 0: 256.
 	CheckpointEvery int
+
+	// OnSave is told how long each save took, for metrics; may be nil.
+	OnSave func(took time.Duration)
 }
 
 // Store is the plant's record.
@@ -49,6 +52,8 @@ type shared struct {
 	onChange  *atomic.Pointer[func([]uuid.UUID)]
 	every     int // subgroups between two checkpoints
 	limit     time.Duration
+	counts    *counts
+	onSave    func(took time.Duration)
 }
 
 // Open connects to a migrated database.
@@ -73,10 +78,13 @@ func Open(ctx context.Context, o Options) (*Store, error) {
 		pool: pool, plantID: new(atomic.Pointer[uuid.UUID]),
 		revisions: new(sync.Map), setups: new(sync.Map), measured: new(sync.Map),
 		settings: new(atomic.Pointer[readSettings]), onChange: new(atomic.Pointer[func([]uuid.UUID)]), every: o.CheckpointEvery,
-		limit: cmp.Or(o.SaveLimit, 15*time.Second),
+		limit: cmp.Or(o.SaveLimit, 15*time.Second), counts: new(counts), onSave: o.OnSave,
 	}}
 	if s.clock == nil {
 		s.clock = time.Now
+	}
+	if s.onSave == nil {
+		s.onSave = func(time.Duration) {}
 	}
 	if s.every <= 0 {
 		s.every = 256
