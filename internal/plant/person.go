@@ -54,6 +54,7 @@ const (
 	SeeBoard                      // the board
 	SeeDesk                       // charts, revisions and records, read only
 	Manage                        // people, devices, the installation
+	AnswerCalls                   // be called about what nobody takes; quiet a known matter
 )
 
 var mayDo = map[Action]Roles{
@@ -63,6 +64,7 @@ var mayDo = map[Action]Roles{
 	SeeBoard:    {Operator, Supervisor, Engineer},
 	SeeDesk:     {Supervisor, Engineer},
 	Manage:      {Administrator},
+	AnswerCalls: {Supervisor},
 }
 
 // May reports whether this person may do a. Somebody who is not active may do

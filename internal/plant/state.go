@@ -54,6 +54,8 @@ type CharacteristicState struct {
 	LastDue   time.Time
 	Due       Due
 	Machine   MachineNow
+
+	Escalation Escalation // of the open matter
 }
 
 // MachineNow is a machine with what it does at the moment.
@@ -74,6 +76,10 @@ type StationState struct {
 	Line            Line
 	Machines        []MachineNow
 	Characteristics []CharacteristicState
+
+	Missed         *OverdueRound  // open on record
+	EscalationPlan EscalationPlan // in force here
+	Alarms         []time.Time    // when matters were opened with an alarm in the last AlarmSpan, oldest first
 }
 
 // Version grows with every change at the station.
