@@ -48,13 +48,14 @@ type Person struct {
 type Action uint8
 
 const (
-	TakeRounds  Action = iota + 1 // enter and correct rounds, machine states, changes; take and close matters
-	VoidRecords                   // void a subgroup, verify a closed matter
-	SetLimits                     // set up characteristics, study, freeze and revise limits
-	SeeBoard                      // the board
-	SeeDesk                       // charts, revisions and records, read only
-	Manage                        // people, devices, the installation
-	AnswerCalls                   // be called about what nobody takes; quiet a known matter
+	TakeRounds    Action = iota + 1 // enter and correct rounds, machine states, changes; take and close matters
+	VoidRecords                     // void a subgroup, verify a closed matter
+	SetLimits                       // set up characteristics, study, freeze and revise limits
+	SeeBoard                        // the board
+	SeeDesk                         // charts, revisions and records, read only
+	Manage                          // people, devices, the installation
+	CheckGauges                     // record the check of a gauge
+	DecideProduct                   // state what became of product that was kept aside
 )
 
 var mayDo = map[Action]Roles{
@@ -64,7 +65,9 @@ var mayDo = map[Action]Roles{
 	SeeBoard:    {Operator, Supervisor, Engineer},
 	SeeDesk:     {Supervisor, Engineer},
 	Manage:      {Administrator},
-	AnswerCalls: {Supervisor},
+
+	CheckGauges:   {Operator, Supervisor, Engineer},
+	DecideProduct: {Supervisor, Engineer},
 }
 
 // May reports whether this person may do a. Somebody who is not active may do

@@ -25,18 +25,17 @@ type Settings struct {
 	PersonName string // for showing, read beside the version
 	Reason     string
 
-	Owner      OwnerSettings
-	Escalation EscalationSettings
+	Owner OwnerSettings
 }
 
 // DefaultSettings are the settings of a plant that never changed any.
 func DefaultSettings() Settings {
-	return Settings{Owner: defaultOwnerSettings, Escalation: defaultEscalationSettings}
+	return Settings{Owner: defaultOwnerSettings}
 }
 
 // allSettings is every setting in the order in which they are shown; those of one group
 // stand together.
-var allSettings = slices.Concat(OwnerSettingsTable, EscalationSettingsTable)
+var allSettings = slices.Concat(OwnerSettingsTable)
 
 // AllSettings lists every setting in the order in which they are shown, group by group.
 func AllSettings() []SettingField { return slices.Clone(allSettings) }
@@ -141,12 +140,7 @@ func SettingsFrom(content map[string]string) Settings {
 }
 
 // Check says which settings contradict one another.
-func (s Settings) Check() error {
-	if err := s.Owner.check(); err != nil {
-		return err
-	}
-	return s.Escalation.check()
-}
+func (s Settings) Check() error { return s.Owner.check() }
 
 // SettingsChange is what an engineer asks for: all settings as they shall be.
 type SettingsChange struct {

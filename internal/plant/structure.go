@@ -69,7 +69,8 @@ type Gauge struct {
 	ID         uuid.UUID
 	Name       string
 	Resolution *Decimal
-	NextCheck  time.Time
+	NextCheck  time.Time // a day
+	CheckDays  int       // from one good check to the next; 0: each check says when the next is
 }
 
 // Cause is one entry of the catalogue of a station family.

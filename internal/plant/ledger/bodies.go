@@ -132,7 +132,8 @@ type Matter struct {
 	RestartAt *Time      `json:"restart_at,omitempty"`
 	Closing   string     `json:"closing,omitempty"`
 
-	Plans []uuid.UUID `json:"plans,omitempty"` // of a closing: the plan versions that were walked
+	Plans     []uuid.UUID `json:"plans,omitempty"`     // of a closing: the plan versions that were walked
+	Contained bool        `json:"contained,omitempty"` // its containment was opened with it
 }
 
 // Kind is "matter".
@@ -162,7 +163,6 @@ type Change struct {
 	HappenedAt     Time       `json:"happened_at"`
 	RecordedAt     Time       `json:"recorded_at"`
 	Person         *uuid.UUID `json:"person,omitempty"`
-	Turn           *Turn      `json:"turn,omitempty"`
 }
 
 // Kind is "change".

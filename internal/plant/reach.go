@@ -1,0 +1,435 @@
+package plant
+
+import (
+	"math"
+	"slices"
+	"time"
+
+	"github.com/google/uuid"
+
+	"holdfast/internal/spc/changepoint"
+	"holdfast/internal/spc/limits"
+)
+
+// ReachWindow is how many subgroups back a change is looked for.
+const ReachWindow = 512
+
+// ReachSince is why product is suspect from an instant on.
+type ReachSince string
+
+const (
+	SinceChange    ReachSince = "change"     // a rule fired: from the last subgroup before the change may have begun
+	SinceGoodRound ReachSince = "good round" // a reading is outside: from the last round with all within
+	SinceGoodCheck ReachSince = "good check" // the gauge failed: from its last good check
+)
+
+// Reach is what is suspect because of a matter: what was made from From until Until, or
+// until now. It is derived from the record and never stored as a fact.
+type Reach struct {
+	Matter  uuid.UUID
+	Reasons []Suspicion // the earliest first; none: no product is suspect
+	From    time.Time   // of the earliest; zero: from the very beginning
+	Cut     bool        // it may have begun before From
+	Streams []uuid.UUID // it is confined to; empty: all
+	Until   time.Time   // zero: it still grows
+	Ended   ReachEnd
+	Log     MachineLog // what the machine did since From; set by who reads it
+}
+
+// ReachEnd is what ended the growth of a reach.
+type ReachEnd string
+
+const (
+	StillGrowing ReachEnd = ""
+	ByCorrection ReachEnd = "corrected" // a change to the process, and nothing was found after it
+	ByNewStart   ReachEnd = "restarted" // a restart mark or a changeover
+	ByGoodCheck  ReachEnd = "checked"   // the gauge passed a check again
+	ByClosing    ReachEnd = "closed"
+)
+
+// Suspicion is one reason why product is suspect.
+type Suspicion struct {
+	Since   ReachSince
+	From    time.Time // zero: from the very beginning
+	Cut     bool      // the window of subgroups was cut, or nothing good is on record: it may have begun before
+	Until   time.Time // of this reason alone, the gauge that is good again; zero: no end of its own
+	Streams []uuid.UUID
+	Change  *EstimatedChange
+}
+
+// EstimatedChange is when and how much the process most likely changed before a signal.
+type EstimatedChange struct {
+	Panel    Panel
+	Subgroup uuid.UUID // whose firing it was estimated from
+	Signal   time.Time // when that was taken
+	Began    time.Time // the first subgroup after the most likely moment
+	// Size is the mean since then less the centre, in the unit; for Dispersion the ratio
+	// of the spread to that of the limits. It is biased away from zero, because only large
+	// changes signal.
+	Size float64
+	SE   float64 // standard error of Size, given the moment
+}
+
+// ReachPoint is what finding a reach needs of a subgroup.
+type ReachPoint struct {
+	Subgroup uuid.UUID
+	TakenAt  time.Time
+	Setup    int
+	Stats    Statistics
+	Readings []int64
+	Streams  []uuid.UUID // empty, or one a reading
+	Outside  int
+}
+
+// ReachWindowOf is the stretch of subgroups behind one question, oldest first, the one
+// that is asked about last.
+type ReachWindowOf struct {
+	Points []ReachPoint
+	Cut    bool // there were more
+}
+
+// ReachEvidence is what a reach is found from.
+type ReachEvidence struct {
+	Matter     Matter
+	Setups     map[int]Setup
+	Location   ReachWindowOf // of the first standing firing on the panel, since the last boundary
+	Dispersion ReachWindowOf
+	Reading    ReachWindowOf // of the first standing reading outside, whatever the boundaries
+	Segments   map[Panel]Segment
+	Revisions  map[uuid.UUID]Revision
+	Checks     []GaugeCheckRecord // of the gauges whose failure is a line: all since their last good one before it
+	Changes    []Change           // to the machine since the matter opened, by happened-at
+	Boundaries []Boundary         // after the matter opened
+}
+
+// FirstSuspect returns when the earliest firing was taken that stands on a panel and is no
+// change for the better; zero where there is none.
+func (m Matter) FirstSuspect(p Panel, s Setup) (first time.Time) {
+	for _, l := range m.Lines {
+		if !l.Withdrawn && l.Panel == p && !l.Better(s) && (first.IsZero() || l.First.Before(first)) {
+			first = l.First
+		}
+	}
+	return first
+}
+
+// lastStanding is when the newest standing firing was taken, or the opening.
+func (m Matter) lastStanding() time.Time {
+	last := m.OpenedTaken
+	for _, l := range m.Lines {
+		if !l.Withdrawn && l.Last.After(last) {
+			last = l.Last
+		}
+	}
+	return last
+}
+
+// HoldsSuspects reports whether the matter puts product in doubt: not when every standing
+// line is a change for the better, and not when none stands.
+func (m Matter) HoldsSuspects(s Setup) bool {
+	return slices.ContainsFunc(m.Lines, func(l MatterLine) bool { return !l.Withdrawn && !l.Better(s) })
+}
+
+// ReachOf finds the reach of a matter.
+//
+// For a rule that fired it runs from the taken-at of the earliest likely last subgroup
+// before the change (Samuel, Pignatiello and Calvin 1998; changepoint.LikelyCut), from the
+// boundary when that is the beginning of the stretch, or from the window's first subgroup
+// when it was cut; for a reading outside specification from the last round of that stream
+// with all readings within; for a gauge that failed from its last good check. It ends
+// where the process was corrected or started anew and nothing stands after it. A line that
+// is a change for the better puts nothing in doubt.
+func ReachOf(e ReachEvidence, setup Setup) Reach {
+	r := Reach{Matter: e.Matter.ID}
+	for _, panel := range [...]Panel{Location, Dispersion} {
+		if !e.Matter.FirstSuspect(panel, setup).IsZero() {
+			r.Reasons = append(r.Reasons, e.change(panel, setup))
+		}
+	}
+	if !e.Matter.FirstSuspect(Reading, setup).IsZero() {
+		r.Reasons = append(r.Reasons, e.goodRounds()...)
+	}
+	if first := e.Matter.FirstSuspect(GaugeCheck, setup); !first.IsZero() {
+		r.Reasons = append(r.Reasons, e.goodCheck(first))
+	}
+	slices.SortStableFunc(r.Reasons, func(a, b Suspicion) int { return a.From.Compare(b.From) })
+	if len(r.Reasons) == 0 {
+		return r
+	}
+	r.From, r.Cut = r.Reasons[0].From, r.Reasons[0].Cut
+	for _, s := range r.Reasons {
+		r.Cut = r.Cut || s.Cut && s.From.Equal(r.From)
+	}
+	r.Streams = confined(r.Reasons)
+	r.end(e)
+	return r
+}
+
+// confined are the streams to which all reasons together are confined, none when one is
+// not.
+func confined(reasons []Suspicion) (out []uuid.UUID) {
+	for _, s := range reasons {
+		if len(s.Streams) == 0 {
+			return nil
+		}
+		for _, id := range s.Streams {
+			if !slices.Contains(out, id) {
+				out = append(out, id)
+			}
+		}
+	}
+	return out
+}
+
+// change estimates when what a panel's first firing shows began.
+func (e ReachEvidence) change(panel Panel, setup Setup) Suspicion {
+	w := e.Location
+	if panel == Dispersion {
+		w = e.Dispersion
+	}
+	s := Suspicion{Since: SinceChange, From: e.Matter.OpenedTaken, Cut: true}
+	if len(w.Points) == 0 {
+		return s
+	}
+	segment := e.Segments[panel]
+	last := w.Points[len(w.Points)-1]
+	rev, ok := e.Revisions[segment.Revision]
+	var est changepoint.Estimate
+	var err error
+	if ok {
+		est, err = estimateChange(rev, setup, w.Points, panel)
+	}
+	if !ok || err != nil {
+		// Nothing can be estimated: the last subgroup before the signal is all that is known.
+		s.From, s.Cut = w.Points[max(len(w.Points)-2, 0)].TakenAt, true
+		return s
+	}
+	s.Change = &EstimatedChange{Panel: panel, Subgroup: last.Subgroup, Signal: last.TakenAt, Began: w.Points[est.After+1].TakenAt, Size: est.Size, SE: est.SizeSE}
+	switch earliest := est.Likely[0]; {
+	case earliest >= 0:
+		s.From, s.Cut = w.Points[earliest].TakenAt, false
+	case w.Cut:
+		s.From = w.Points[0].TakenAt
+	default:
+		s.From, s.Cut = segment.From, false
+	}
+	return s
+}
+
+func estimateChange(rev Revision, s Setup, points []ReachPoint, panel Panel) (changepoint.Estimate, error) {
+	if panel == Location {
+		means, sizes := make([]float64, len(points)), make([]int, len(points))
+		for i, p := range points {
+			means[i], sizes[i] = p.Stats.Mean(), p.Stats.N
+		}
+		return changepoint.Location(means, sizes, rev.Center, rev.Sigma)
+	}
+	variances, df := make([]float64, len(points)), make([]int, len(points))
+	for i, p := range points {
+		variances[i], df[i] = p.Stats.SD*p.Stats.SD, p.Stats.N-1
+		if rev.Chart == limits.Individuals {
+			d := p.Stats.Mean() - rev.Center
+			variances[i], df[i] = d*d, 1
+		}
+	}
+	return changepoint.Dispersion(variances, df, rev.Sigma, Decimal{Units: 1, Decimals: s.Decimals}.Float())
+}
+
+// goodRounds goes back, for each stream with a reading outside in the first such
+// subgroup, to the last round in which all of its readings were within. Where readings
+// name no stream the whole subgroup counts.
+func (e ReachEvidence) goodRounds() []Suspicion {
+	points := e.Reading.Points
+	if len(points) == 0 {
+		return []Suspicion{{Since: SinceGoodRound, From: e.Matter.OpenedTaken, Cut: true}}
+	}
+	first := points[len(points)-1]
+	streams := first.outsideStreams(e.Setups[first.Setup])
+	if len(streams) == 0 {
+		return []Suspicion{e.goodRound(func(p ReachPoint) bool { return p.Outside == 0 })}
+	}
+	var out []Suspicion
+	for _, id := range streams {
+		s := e.goodRound(func(p ReachPoint) bool { return p.streamWithin(id, e.Setups[p.Setup]) })
+		s.Streams = []uuid.UUID{id}
+		out = append(out, s)
+	}
+	return out
+}
+
+func (e ReachEvidence) goodRound(good func(ReachPoint) bool) Suspicion {
+	points := e.Reading.Points
+	s := Suspicion{Since: SinceGoodRound}
+	for i := len(points) - 2; i >= 0; i-- {
+		if good(points[i]) {
+			s.From = points[i].TakenAt
+			return s
+		}
+	}
+	s.Cut = true // no good round is on record, or none within the window
+	if e.Reading.Cut || len(points) > 1 {
+		s.From = points[0].TakenAt
+	}
+	return s
+}
+
+// outsideStreams are the streams with a reading outside; none when readings name none.
+func (p ReachPoint) outsideStreams(s Setup) (out []uuid.UUID) {
+	if len(p.Streams) != len(p.Readings) {
+		return nil
+	}
+	for i, v := range p.Readings {
+		if id := p.Streams[i]; s.Outside(v, p.Stats.Decimals) != Neither && !slices.Contains(out, id) {
+			out = append(out, id)
+		}
+	}
+	return out
+}
+
+// streamWithin reports whether the subgroup shows that a stream was within specification.
+func (p ReachPoint) streamWithin(id uuid.UUID, s Setup) bool {
+	if len(p.Streams) != len(p.Readings) {
+		return p.Outside == 0
+	}
+	seen := false
+	for i, v := range p.Readings {
+		if p.Streams[i] != id {
+			continue
+		}
+		if seen = true; s.Outside(v, p.Stats.Decimals) != Neither {
+			return false
+		}
+	}
+	return seen
+}
+
+// goodCheck goes back from the first failed check to the last good one of that gauge, and
+// forward to the first good one after the last that failed.
+func (e ReachEvidence) goodCheck(first time.Time) Suspicion {
+	s := Suspicion{Since: SinceGoodCheck, Cut: true}
+	var lastFailed time.Time
+	for _, c := range e.Checks {
+		switch {
+		case !c.Good && c.At.After(lastFailed):
+			lastFailed = c.At
+		case c.Good && c.At.Before(first) && c.At.After(s.From):
+			s.From, s.Cut = c.At, false
+		}
+	}
+	for _, c := range e.Checks {
+		if c.Good && c.At.After(lastFailed) && (s.Until.IsZero() || c.At.Before(s.Until)) {
+			s.Until = c.At
+		}
+	}
+	return s
+}
+
+// end finds what ended the growth: the first correction or new start with nothing standing
+// after it. With a gauge alone in doubt that is its next good check; a failed gauge is
+// mended by no change to the process.
+func (r *Reach) end(e ReachEvidence) {
+	m := e.Matter
+	gauge, process := time.Time{}, false
+	for _, s := range r.Reasons {
+		if s.Since == SinceGoodCheck {
+			gauge = s.Until
+			if gauge.IsZero() && m.Open() {
+				return
+			}
+		} else {
+			process = true
+		}
+	}
+	until, how := time.Time{}, StillGrowing
+	earlier := func(at time.Time, by ReachEnd) {
+		if until.IsZero() || at.Before(until) {
+			until, how = at, by
+		}
+	}
+	if process {
+		last := m.lastStanding()
+		for _, c := range e.Changes {
+			if !c.HappenedAt.Before(last) && c.HappenedAt.After(m.OpenedTaken) && c.corrects(m.Characteristic) {
+				earlier(c.HappenedAt, ByCorrection)
+			}
+		}
+		for _, b := range e.Boundaries {
+			if b.At.After(last) && (b.Kind == ByRestart || b.Kind == ByChangeover) {
+				earlier(b.At, ByNewStart)
+			}
+		}
+	}
+	if !gauge.IsZero() && (!process || !until.IsZero() && gauge.After(until)) {
+		until, how = gauge, ByGoodCheck
+	}
+	if !m.Open() {
+		if !m.RestartAt.IsZero() {
+			earlier(m.RestartAt, ByNewStart)
+		}
+		earlier(m.ClosedAt, ByClosing)
+	}
+	r.Until, r.Ended = until, how
+}
+
+// corrects reports whether the change may have put right what is wrong with a
+// characteristic.
+func (c Change) corrects(characteristic uuid.UUID) bool {
+	return c.Kind != ChangedOver && (c.Characteristic == uuid.Nil || c.Characteristic == characteristic)
+}
+
+// Suspect is a reach as of an instant: how much was made.
+type Suspect struct {
+	Parts int
+	Known bool // false: the machine's rate, or what it did so far back, is not on record
+	About bool // from running time and rate, or shared evenly among streams, and then to two figures
+}
+
+// Suspects counts what the reach holds at now, by the machine's log. part confines it to
+// the running time of one part; uuid.Nil is any. machine is the machine as it is set up.
+func (r Reach) Suspects(m Machine, part uuid.UUID, now time.Time) Suspect {
+	if len(r.Reasons) == 0 {
+		return Suspect{Known: true}
+	}
+	to := now
+	if !r.Until.IsZero() && r.Until.Before(now) {
+		to = r.Until
+	}
+	log := r.Log.of(part)
+	switch {
+	case r.From.IsZero(), len(log) > 0 && log[0].At.After(r.From):
+		return Suspect{} // what the machine did then is not known
+	}
+	made, about := m.PartsMade(log, r.From, to)
+	if about && m.PartsPerHour <= 0 {
+		return Suspect{}
+	}
+	if n := len(m.Streams); n > 0 && len(r.Streams) > 0 && len(r.Streams) < n {
+		made, about = made*float64(len(r.Streams))/float64(n), true
+	}
+	if !about {
+		return Suspect{Parts: int(math.Round(made)), Known: true}
+	}
+	return Suspect{Parts: twoFigures(made), Known: true, About: true}
+}
+
+// twoFigures rounds a number of parts that is not known exactly.
+func twoFigures(parts float64) int {
+	step := math.Pow(10, math.Max(0, math.Floor(math.Log10(math.Max(parts, 1)))-1))
+	return int(math.Round(parts/step) * step)
+}
+
+// of is the log with the stretches of other parts standing still, so that running time
+// counts one part alone. Counter readings count every part, so they go as soon as there
+// was another.
+func (l MachineLog) of(part uuid.UUID) MachineLog {
+	other := func(s MachineState) bool { return s.Part != uuid.Nil && s.Part != part }
+	if part == uuid.Nil || !slices.ContainsFunc(l, other) {
+		return l
+	}
+	out := slices.Clone(l)
+	for i := range out {
+		out[i].Running = out[i].Running && !other(out[i])
+		out[i].Counter = nil
+	}
+	return out
+}
