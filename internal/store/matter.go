@@ -175,7 +175,7 @@ func (s *Store) CloseMatter(ctx context.Context, c plant.ClosingRequest) error {
 			}
 		}
 		if out.Closing != "" {
-			if err := s.endMatter(b, l, m, fix, out.Closing, c.Person, now); err != nil {
+			if err := s.endMatter(ctx, tx, b, l, m, fix, out.Closing, c.Person, now); err != nil {
 				return err
 			}
 		}
@@ -211,7 +211,7 @@ func (s *Store) insertFix(b *pgx.Batch, l *locked, m *plant.Matter, f *plant.Fix
 }
 
 // endMatter closes a matter. fix is nil when it is withdrawn.
-func (s *Store) endMatter(b *pgx.Batch, l *locked, m *plant.Matter, fix *plant.Fix, closing plant.Closing, person uuid.UUID, now time.Time) error {
+func (s *Store) endMatter(ctx context.Context, tx pgx.Tx, b *pgx.Batch, l *locked, m *plant.Matter, fix *plant.Fix, closing plant.Closing, person uuid.UUID, now time.Time) error {
 	if fix == nil || closing == plant.WithdrawnBy {
 		fix = &plant.Fix{Person: person, At: now}
 	}
@@ -219,6 +219,11 @@ func (s *Store) endMatter(b *pgx.Batch, l *locked, m *plant.Matter, fix *plant.F
 			restart_at = $7, closed_by = $8, closed_at = $9, closing = $10, version = version + 1 where id = $1`,
 		m.ID, fix.Cause, orNull(fix.CauseID), fix.Action, fix.Person, fix.At, timeOrNull(fix.RestartAt), person, now, string(closing))
 	l.matter = uuid.Nil
+	setup, err := s.setup(ctx, tx, l.id, l.setupVersion)
+	if err != nil {
+		return err
+	}
+	settleWithMatter(b, m.ID, m.HoldsSuspects(setup), now)
 	body := ledger.Matter{Matter: m.ID, Step: "closed", At: ledger.Time(now), Person: ledger.ID(person),
 		Cause: fix.Cause, Action: fix.Action, RestartAt: ledger.At(fix.RestartAt), Closing: string(closing)}
 	if closing != plant.WithdrawnBy {

@@ -355,7 +355,8 @@ func (s *Store) openMatter(b *pgx.Batch, l *locked, at position, alarm bool, now
 	b.Queue(`insert into matter (id, plant_id, station_id, characteristic_id, opened_at, opened_taken, opened_subgroup, alarmed)
 		values ($1, $2, $3, $4, $5, $6, $7, $8)`, id, s.plant(), l.station, l.id, now, at.taken, at.id, alarm)
 	l.matter = id
-	return s.seal(b, l, ledger.Matter{Matter: id, Step: "opened", At: ledger.Time(now), Subgroup: ledger.ID(at.id)})
+	s.openContainment(b, l, id, now)
+	return s.seal(b, l, ledger.Matter{Contained: true, Matter: id, Step: "opened", At: ledger.Time(now), Subgroup: ledger.ID(at.id)})
 }
 
 // insertSignal enters a firing, or lets one that was withdrawn stand again. The reaction

@@ -49,6 +49,7 @@ type shared struct {
 	setups    *sync.Map // setupKey -> plant.Setup; versions never change
 	measured  *sync.Map // station -> measuredStation, for about a second
 	settings  *atomic.Pointer[readSettings]
+	reaches   *reaches
 	onChange  *atomic.Pointer[func([]uuid.UUID)]
 	every     int // subgroups between two checkpoints
 	limit     time.Duration
@@ -77,7 +78,7 @@ func Open(ctx context.Context, o Options) (*Store, error) {
 	s := &Store{clock: o.Clock, shared: shared{
 		pool: pool, plantID: new(atomic.Pointer[uuid.UUID]),
 		revisions: new(sync.Map), setups: new(sync.Map), measured: new(sync.Map),
-		settings: new(atomic.Pointer[readSettings]), onChange: new(atomic.Pointer[func([]uuid.UUID)]), every: o.CheckpointEvery,
+		settings: new(atomic.Pointer[readSettings]), reaches: new(reaches), onChange: new(atomic.Pointer[func([]uuid.UUID)]), every: o.CheckpointEvery,
 		limit: cmp.Or(o.SaveLimit, 15*time.Second), counts: new(counts), onSave: o.OnSave,
 	}}
 	if s.clock == nil {

@@ -166,8 +166,8 @@ func (s *Store) Parts(ctx context.Context) ([]plant.Part, error) {
 // AddGauge adds a gauge.
 func (s *Store) AddGauge(ctx context.Context, g plant.Gauge, by uuid.UUID) error {
 	return s.arrange(ctx, "gauge added", g.ID, by, map[string]any{"name": g.Name}, func(tx pgx.Tx) error {
-		_, err := tx.Exec(ctx, `insert into gauge (id, plant_id, name, resolution, next_check) values ($1, $2, $3, $4::text::numeric, $5)`,
-			g.ID, s.plant(), g.Name, decimalOrNull(g.Resolution), timeOrNull(g.NextCheck))
+		_, err := tx.Exec(ctx, `insert into gauge (id, plant_id, name, resolution, next_check, check_days) values ($1, $2, $3, $4::text::numeric, $5, $6)`,
+			g.ID, s.plant(), g.Name, decimalOrNull(g.Resolution), timeOrNull(g.NextCheck), g.CheckDays)
 		return taken(err, "gauge_name_once", "There is a gauge of this name already.")
 	})
 }

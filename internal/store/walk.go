@@ -113,7 +113,7 @@ func (s *Store) VerifyFix(ctx context.Context, v plant.VerifyRequest) error {
 			return err
 		}
 		if v.Accepted {
-			if err := s.endMatter(b, l, m, m.Progress().Fix, closing, v.Person, now); err != nil {
+			if err := s.endMatter(ctx, tx, b, l, m, m.Progress().Fix, closing, v.Person, now); err != nil {
 				return err
 			}
 		} else {
