@@ -27,16 +27,17 @@ type cli struct {
 	LogFormat string `help:"How the log is written: text or json." enum:"text,json" default:"text" env:"HOLDFAST_LOG_FORMAT"`
 	LogLevel  string `help:"What is logged: debug, info, warn or error." enum:"debug,info,warn,error" default:"info" env:"HOLDFAST_LOG_LEVEL"`
 
-	Serve   serveCmd   `cmd:"" help:"Serve the plant."`
-	Demo    demoCmd    `cmd:"" help:"Serve an invented plant on this machine, to try Holdfast."`
-	Check   checkCmd   `cmd:"" help:"Say what is wrong with this machine before it is used; takes the flags of serve."`
-	Migrate migrateCmd `cmd:"" help:"Bring the database to the newest schema and stop."`
-	User    userCmd    `cmd:"" help:"People who may sign in."`
-	Audit   auditCmd   `cmd:"" help:"Verify that the record is whole."`
-	Health  healthCmd  `cmd:"" help:"Ask a running server whether it is ready; for container and service checks."`
-	Calc    calcCmd    `cmd:"" help:"Answer a question of the statistics: JSON in, JSON out."`
-	Qualify qualifyCmd `cmd:"" help:"Recompute the reference values on this machine: the installation qualification."`
-	Version versionCmd `cmd:"" help:"Print the version."`
+	Serve    serveCmd    `cmd:"" help:"Serve the plant."`
+	Demo     demoCmd     `cmd:"" help:"Serve an invented plant on this machine, to try Holdfast."`
+	Check    checkCmd    `cmd:"" help:"Say what is wrong with this machine before it is used; takes the flags of serve."`
+	Migrate  migrateCmd  `cmd:"" help:"Bring the database to the newest schema and stop."`
+	User     userCmd     `cmd:"" help:"People who may sign in."`
+	Audit    auditCmd    `cmd:"" help:"Verify that the record is whole."`
+	Messages messagesCmd `cmd:"" help:"Messages that leave the box when nobody takes something."`
+	Health   healthCmd   `cmd:"" help:"Ask a running server whether it is ready; for container and service checks."`
+	Calc     calcCmd     `cmd:"" help:"Answer a question of the statistics: JSON in, JSON out."`
+	Qualify  qualifyCmd  `cmd:"" help:"Recompute the reference values on this machine: the installation qualification."`
+	Version  versionCmd  `cmd:"" help:"Print the version."`
 }
 
 func main() {

@@ -17,6 +17,7 @@ import (
 	"holdfast/internal/certs"
 	"holdfast/internal/live"
 	"holdfast/internal/metrics"
+	"holdfast/internal/outbox"
 	"holdfast/internal/plant"
 	"holdfast/internal/store"
 	"holdfast/web"
@@ -35,7 +36,8 @@ type settings struct {
 	Transport   secured  // how browsers reach it; zero: plain http
 	Demo        bool     // let invented people in by one click
 	Cost        auth.Cost
-	Metrics     watching // who may read the figures about this server
+	Metrics     watching       // who may read the figures about this server
+	Messages    *outbox.Config // where messages go; nil: nowhere
 	Log         *slog.Logger
 	Clock       func() time.Time
 }
@@ -73,6 +75,9 @@ func newProgram(ctx context.Context, s settings) (*program, error) {
 	}
 	if s.Cost == (auth.Cost{}) {
 		s.Cost = auth.DefaultCost
+	}
+	if s.Messages == nil {
+		s.Messages = &outbox.Config{}
 	}
 	p := &program{settings: s, metrics: metrics.New()}
 	var err error
@@ -166,6 +171,7 @@ func (p *program) Run(ctx context.Context) error {
 	background, cancel := context.WithCancel(context.WithoutCancel(ctx))
 	p.background = cancel
 	p.running.Go(func() { p.feed.Run(background) })
+	p.lookAfter(background)
 	served := make(chan error, 1)
 	p.running.Go(func() { served <- p.listen() })
 	p.running.Go(func() { p.Transport.keep(background, p.Log) })

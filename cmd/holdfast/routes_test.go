@@ -77,6 +77,8 @@ var routeTable = []routeRow{
 	{"POST /desk/settings", setters, 422},
 	{"GET /desk/characteristic/{id}", deskers, 200},
 	{"GET /desk/characteristic/{id}/revisions", deskers, 200},
+	{"GET /desk/characteristic/{id}/adjusting-points", deskers, 200},
+	{"POST /desk/characteristic/{id}/adjusting-points", setters, 422},
 	{"GET /desk/characteristic/{id}/study", setters, 200},
 	{"GET /desk/characteristic/{id}/study/freeze", setters, 200},
 	{"POST /desk/characteristic/{id}/study/freeze", setters, 409}, // after no revision that was seen

@@ -27,6 +27,7 @@ type serveCmd struct {
 	Hosts []string `help:"Names, with port, under which browsers reach the server; any when empty." env:"HOLDFAST_HOSTS" placeholder:"HOST:PORT"`
 	transport
 	monitor
+	messaging
 	Plant    string `help:"Name of the plant, used once, on an empty database." default:"Plant" env:"HOLDFAST_PLANT"`
 	TimeZone string `help:"Its time zone, used once, on an empty database." default:"UTC" env:"HOLDFAST_TIME_ZONE"`
 }
@@ -40,6 +41,11 @@ func (c *serveCmd) Run(ctx context.Context, log *slog.Logger) error {
 	if err != nil {
 		return err
 	}
+	messages, err := c.messaging.load()
+	if err != nil {
+		return err
+	}
+	sayMessages(log, messages)
 	return c.with(ctx, log, func(db reached) error {
 		st, err := store.Open(ctx, store.Options{URL: db.url})
 		if err != nil {
@@ -50,7 +56,7 @@ func (c *serveCmd) Run(ctx context.Context, log *slog.Logger) error {
 		if err != nil {
 			return err
 		}
-		p, err := newProgram(ctx, settings{Addr: c.Addr, DatabaseURL: db.url, Hosts: c.Hosts, Transport: way, Metrics: watching, Log: log})
+		p, err := newProgram(ctx, settings{Addr: c.Addr, DatabaseURL: db.url, Hosts: c.Hosts, Transport: way, Metrics: watching, Messages: messages, Log: log})
 		if err != nil {
 			return err
 		}

@@ -3,6 +3,7 @@ package calc
 import (
 	"errors"
 	"fmt"
+	"math"
 
 	"holdfast/internal/spc/adjust"
 	"holdfast/internal/spc/changepoint"
@@ -181,6 +182,9 @@ func adjustments(in adjustmentsIn) (adjustmentsOut, error) {
 		made[i] = adjust.Adjustment(a)
 	}
 	a, err := adjust.Review(in.Y, in.Target, made, in.Zero, in.Seed)
+	if err == nil && math.IsInf(a.High, 1) {
+		return adjustmentsOut{}, errors.New("the stretch is too short to bound the ratio")
+	}
 	for i := range a.Gains {
 		a.Gains[i] = plain(a.Gains[i])
 	}

@@ -152,7 +152,7 @@ func (b *builder) place(ctx context.Context, st *store.Store, pl place, index in
 		setup.Version = 1
 		w.tracks = append(w.tracks, newTrack(g, c, setup, index*10+j))
 	}
-	return w, nil
+	return w, b.knobs(ctx, st, w)
 }
 
 // history lets every place live through its sixty days. Places do not touch one

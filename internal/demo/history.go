@@ -249,15 +249,10 @@ func (w *walker) afterwards(ctx context.Context, t *track) error {
 	if d := w.day(); d < t.spell.from || d >= t.spell.to {
 		return nil
 	}
-	units := t.correction()
-	if units == 0 {
-		return nil
+	if w.followed(t) {
+		return nil // somebody is looking into it
 	}
-	t.adjust(units)
-	return w.store.LogChange(ctx, plant.Change{
-		ID: id(), Station: w.station.ID, Machine: w.machine.ID, Characteristic: t.ID, Kind: plant.Adjustment,
-		Size: dec(units, t.setup.Decimals), Note: "Dispenser knob", HappenedAt: w.at.Add(time.Second), Person: w.operator(),
-	})
+	return w.turn(ctx, t, -t.deviation(), "")
 }
 
 // freeze makes a revision of what was taken since the last one, leaving out what
@@ -325,6 +320,12 @@ func (w *walker) act(ctx context.Context, f followUp) error {
 	req := plant.ClosingRequest{Matter: m.ID, Version: m.Version, Person: who, Cause: "Not found"}
 	if found, ok := f.track.find(w.day()); ok {
 		req.Cause, req.Action = found.cause, found.action
+		if found.turn {
+			if err := w.turn(ctx, f.track, -found.shift*f.track.sigma, found.action); err != nil {
+				return err
+			}
+			req.FixedAt = w.at
+		}
 	} else if f.track.hasOpenFault(w.day()) {
 		return nil // it stays open into the visitor's day
 	}

@@ -14,7 +14,9 @@ type track struct {
 	plant.Characteristic
 	setup   plant.Setup
 	rng     *rand.Rand
-	ended   []bool  // faults that somebody has found, by index
+	ended   []bool // faults that somebody has found, by index
+	turned  []bool // faults that are here to stay and were adjusted for, by index
+	knob    *plant.Knob
 	offset  float64 // what adjusting has carried, in the unit
 	taken   int     // subgroups so far
 	frozen  int     // revisions so far
@@ -24,7 +26,7 @@ type track struct {
 }
 
 func newTrack(m measure, c plant.Characteristic, setup plant.Setup, index int) *track {
-	return &track{measure: m, Characteristic: c, setup: setup, ended: make([]bool, len(m.faults)), rng: rand.New(rand.NewPCG(Seed, uint64(index)))}
+	return &track{measure: m, Characteristic: c, setup: setup, ended: make([]bool, len(m.faults)), turned: make([]bool, len(m.faults)), rng: rand.New(rand.NewPCG(Seed, uint64(index)))}
 }
 
 // acting returns the faults that act at a time, days after the beginning.
@@ -64,32 +66,24 @@ func (t *track) sample(day float64) []int64 {
 // find ends the fault that has acted longest, if any, and says what it was.
 func (t *track) find(day float64) (fault, bool) {
 	for _, i := range t.acting(day) {
-		if t.faults[i].open {
+		if t.faults[i].open || t.turned[i] {
 			continue
 		}
-		t.ended[i] = true
+		if t.faults[i].turn {
+			t.turned[i] = true
+		} else {
+			t.ended[i] = true
+		}
 		return t.faults[i], true
 	}
 	return fault{}, false
 }
 
-// correction is what somebody turns who corrects by the whole deviation of the last
-// subgroup from target: full compensation, which makes things worse.
-func (t *track) correction() (units int64) {
+// deviation is how far the last subgroup lay from target: what somebody corrects by who
+// corrects fully after every sample, which makes things worse.
+func (t *track) deviation() float64 {
 	if t.setup.Target == nil || len(t.last) == 0 {
 		return 0
 	}
-	target, err := t.setup.Target.In(t.setup.Decimals)
-	if err != nil {
-		return 0
-	}
-	var sum int64
-	for _, v := range t.last {
-		sum += v - target
-	}
-	return -int64(math.Round(float64(sum) / float64(len(t.last))))
-}
-
-func (t *track) adjust(units int64) {
-	t.offset += float64(units) / math.Pow10(t.setup.Decimals)
+	return plant.Summarise(t.last, t.setup.Decimals).Mean() - t.setup.Target.Float()
 }

@@ -173,7 +173,7 @@ func (s *Simulator) mishap(t *track, c plant.CharacteristicState) {
 	case 1:
 		f = fault{day: s.days(), widen: 2.2, cause: "Gauge", action: "Gauge cleaned and checked against the master"}
 	}
-	t.faults, t.ended = append(t.faults, f), append(t.ended, false)
+	t.faults, t.ended, t.turned = append(t.faults, f), append(t.ended, false), append(t.turned, false)
 }
 
 // matters takes what nobody took for a while and closes it some time later. What a

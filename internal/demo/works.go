@@ -44,6 +44,7 @@ type fault struct {
 	cause  string
 	action string
 	open   bool // nobody has found it when the history ends
+	turn   bool // it is here to stay, and the machine was adjusted for it
 }
 
 // spell is a stretch of days in which somebody corrects the process after each sample
@@ -79,7 +80,7 @@ var works = []place{
 	{line: "Axles", name: "Thread rolling", family: "rolling", machine: "Roller 3", rate: 320, parts: []string{"Axle 130"}, gauges: []measure{
 		{name: "Pitch diameter", gauge: "Thread micrometer T-01", mean: 14.351, sigma: 0.006, wander: 0.05,
 			setup:  plant.Setup{Unit: "mm", Decimals: 3, Target: dec(14350, 3), Lower: dec(14320, 3), Upper: dec(14380, 3), Chart: limits.XBarR, Size: 4, Plan: every(45), ControlPlan: plant.ControlPlan{Operation: "30 rolling", Drawing: "KR-1101", Plan: "CP-30"}},
-			faults: []fault{{day: 39.5, drift: 0.5, cause: "Die worn", action: "Die pair changed"}}},
+			faults: []fault{{day: 21.4, shift: 2.6, turn: true, cause: "Harder bar stock", action: "Roll gap closed"}, {day: 39.5, drift: 0.5, cause: "Die worn", action: "Die pair changed"}}},
 	}},
 	{line: "Axles", name: "Straightening", family: "straightening", machine: "Press 7", rate: 180, parts: []string{"Axle 130"}, late: true, gauges: []measure{
 		{name: "Run-out", gauge: "Bench centre B-03", mean: 0.018, sigma: 0.0045, wander: 0.04,
@@ -119,7 +120,8 @@ var works = []place{
 		{name: "Grease mass", gauge: "Balance W-02", mean: 1.212, sigma: 0.055, spell: spell{20, 29},
 			setup: plant.Setup{Unit: "g", Decimals: 2, Target: dec(120, 2), Lower: dec(95, 2), Upper: dec(145, 2), Chart: limits.Individuals, Size: 1,
 				Plan: plant.SamplingPlan{EveryMinutes: 30, Events: []plant.Occasion{plant.AfterAdjustment}}, ControlPlan: plant.ControlPlan{Operation: "90 greasing", Plan: "CP-90"}},
-			faults: []fault{{day: 41.3, shift: -2.9, cause: "Nozzle partly blocked", action: "Nozzle cleaned"}}},
+			faults: []fault{{day: 34.6, shift: 3.2, turn: true, cause: "Softer grease, new supplier", action: "Dosing screw turned back"}, {day: 41.3, shift: -2.9, cause: "Nozzle partly blocked", action: "Nozzle cleaned"},
+				{day: 51.4, shift: -2.7, turn: true, cause: "Hall colder, grease stiffer", action: "Dosing screw turned up"}}},
 	}},
 	{line: "Assembly", name: "Final test", family: "testing", machine: "Test bench 1", rate: 150, parts: []string{"Hub F28"}, gauges: []measure{
 		{name: "Drag torque", gauge: "Torque bench Q-01", mean: 0.031, sigma: 0.0031, wander: 0.04,

@@ -54,19 +54,18 @@ const (
 	SeeBoard                        // the board
 	SeeDesk                         // charts, revisions and records, read only
 	Manage                          // people, devices, the installation
-	CheckGauges                     // record the check of a gauge
+	AnswerCalls                     // be called about what nobody takes; quiet a known matter
 	DecideProduct                   // state what became of product that was kept aside
 )
 
 var mayDo = map[Action]Roles{
-	TakeRounds:  {Operator, Supervisor},
-	VoidRecords: {Supervisor},
-	SetLimits:   {Engineer},
-	SeeBoard:    {Operator, Supervisor, Engineer},
-	SeeDesk:     {Supervisor, Engineer},
-	Manage:      {Administrator},
-
-	CheckGauges:   {Operator, Supervisor, Engineer},
+	TakeRounds:    {Operator, Supervisor},
+	VoidRecords:   {Supervisor},
+	SetLimits:     {Engineer},
+	SeeBoard:      {Operator, Supervisor, Engineer},
+	SeeDesk:       {Supervisor, Engineer},
+	Manage:        {Administrator},
+	AnswerCalls:   {Supervisor},
 	DecideProduct: {Supervisor, Engineer},
 }
 

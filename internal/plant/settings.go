@@ -25,17 +25,18 @@ type Settings struct {
 	PersonName string // for showing, read beside the version
 	Reason     string
 
-	Owner OwnerSettings
+	Owner      OwnerSettings
+	Escalation EscalationSettings
 }
 
 // DefaultSettings are the settings of a plant that never changed any.
 func DefaultSettings() Settings {
-	return Settings{Owner: defaultOwnerSettings}
+	return Settings{Owner: defaultOwnerSettings, Escalation: defaultEscalationSettings}
 }
 
 // allSettings is every setting in the order in which they are shown; those of one group
 // stand together.
-var allSettings = slices.Concat(OwnerSettingsTable)
+var allSettings = slices.Concat(OwnerSettingsTable, EscalationSettingsTable)
 
 // AllSettings lists every setting in the order in which they are shown, group by group.
 func AllSettings() []SettingField { return slices.Clone(allSettings) }
@@ -140,7 +141,12 @@ func SettingsFrom(content map[string]string) Settings {
 }
 
 // Check says which settings contradict one another.
-func (s Settings) Check() error { return s.Owner.check() }
+func (s Settings) Check() error {
+	if err := s.Owner.check(); err != nil {
+		return err
+	}
+	return s.Escalation.check()
+}
 
 // SettingsChange is what an engineer asks for: all settings as they shall be.
 type SettingsChange struct {

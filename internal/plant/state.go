@@ -57,6 +57,8 @@ type CharacteristicState struct {
 	Gauge     *GaugeNow     // that it is measured with; nil: none is named
 	Reach     *Reach        // of the open matter; nil: none, or not found yet
 	Contained []Containment // still open, the oldest first
+
+	Escalation Escalation // of the open matter
 }
 
 // MachineNow is a machine with what it does at the moment.
@@ -77,6 +79,10 @@ type StationState struct {
 	Line            Line
 	Machines        []MachineNow
 	Characteristics []CharacteristicState
+
+	Missed         *OverdueRound  // open on record
+	EscalationPlan EscalationPlan // in force here
+	Alarms         []time.Time    // when matters were opened with an alarm in the last AlarmSpan, oldest first
 }
 
 // Version grows with every change at the station.

@@ -2,6 +2,8 @@ package store
 
 import (
 	"context"
+	"encoding/json"
+	"errors"
 	"fmt"
 	"time"
 
@@ -167,25 +169,37 @@ func (s *Store) course(ctx context.Context, q querier, id uuid.UUID, from, to ti
 	return c, nil
 }
 
+const selectChange = `select h.id, h.station_id, h.machine_id, h.characteristic_id, h.kind, h.size::text, h.note, h.prompted, h.happened_at,
+		h.recorded_at, h.person_id, coalesce(p.name, ''), h.knob_id, h.knob_version, h.turned::text, h.moves, coalesce(k.name, ''), coalesce(k.unit, '')
+	from change h left join person p on p.id = h.person_id left join knob k on k.id = h.knob_id and k.version = h.knob_version`
+
+func scanChange(r pgx.CollectableRow) (c plant.Change, err error) {
+	var characteristic, person, knob *uuid.UUID
+	var size, turned *string
+	var version *int
+	var moves []byte
+	if err = r.Scan(&c.ID, &c.Station, &c.Machine, &characteristic, &c.Kind, &size, &c.Note, &c.Prompted, &c.HappenedAt,
+		&c.RecordedAt, &person, &c.PersonName, &knob, &version, &turned, &moves, &c.KnobName, &c.KnobUnit); err != nil {
+		return c, err
+	}
+	c.Characteristic, c.Person, c.Knob = orNil(characteristic), orNil(person), orNil(knob)
+	if version != nil {
+		c.KnobVersion = *version
+	}
+	if moves != nil {
+		if err := json.Unmarshal(moves, &c.Moves); err != nil {
+			return c, err
+		}
+	}
+	return c, errors.Join(into(&c.Size, size), into(&c.Turned, turned))
+}
+
 func (s *Store) changesOf(ctx context.Context, q querier, machine uuid.UUID, from, to time.Time) ([]plant.Change, error) {
-	rows, err := q.Query(ctx, `select h.id, h.station_id, h.machine_id, h.characteristic_id, h.kind, h.size::text, h.note, h.prompted, h.happened_at,
-			h.recorded_at, h.person_id, coalesce(p.name, '')
-		from change h left join person p on p.id = h.person_id
-		where h.machine_id = $1 and h.happened_at between $2 and $3 order by h.happened_at, h.id`, machine, from, to)
+	rows, err := q.Query(ctx, selectChange+` where h.machine_id = $1 and h.happened_at between $2 and $3 order by h.happened_at, h.id`, machine, from, to)
 	if err != nil {
 		return nil, fmt.Errorf("read changes: %w", err)
 	}
-	return pgx.CollectRows(rows, func(r pgx.CollectableRow) (c plant.Change, err error) {
-		var characteristic, person *uuid.UUID
-		var size *string
-		if err = r.Scan(&c.ID, &c.Station, &c.Machine, &characteristic, &c.Kind, &size, &c.Note, &c.Prompted, &c.HappenedAt,
-			&c.RecordedAt, &person, &c.PersonName); err != nil {
-			return c, err
-		}
-		c.Characteristic, c.Person = orNil(characteristic), orNil(person)
-		c.Size, err = decimalFrom(size)
-		return c, err
-	})
+	return pgx.CollectRows(rows, scanChange)
 }
 
 // Revisions lists the revisions of a characteristic, newest first.

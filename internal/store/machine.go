@@ -164,6 +164,10 @@ func (s *Store) LogChange(ctx context.Context, c plant.Change) error {
 	if c.Note, err = plant.CleanTextWithin("note", c.Note, 300); err != nil {
 		return err
 	}
+	c.Moves, c.KnobVersion = nil, 0
+	if c.Knob == uuid.Nil {
+		c.Turned = nil
+	}
 	if err := c.Check(now); err != nil {
 		return err
 	}
@@ -172,14 +176,21 @@ func (s *Store) LogChange(ctx context.Context, c plant.Change) error {
 		if c.Characteristic != uuid.Nil && held[c.Characteristic] == nil {
 			return plant.NotFoundf("characteristic", "This machine has no such characteristic.")
 		}
-		affected := slices.Collect(maps.Keys(held))
-		if c.Characteristic != uuid.Nil {
-			affected = []uuid.UUID{c.Characteristic}
+		if err := s.turn(ctx, tx, &c); err != nil {
+			return err
+		}
+		moves, err := movesOrNull(c)
+		if err != nil {
+			return fmt.Errorf("encode what was moved: %w", err)
+		}
+		affected := c.Affects()
+		if affected == nil {
+			affected = slices.Collect(maps.Keys(held))
 		}
 		var prompted bool
 		// The order makes it a short walk along an index for each; left to itself the planner
 		// reads all matters.
-		err := tx.QueryRow(ctx, `select count(*) > 0 from unnest($1::uuid[]) h (id) cross join lateral (
+		err = tx.QueryRow(ctx, `select count(*) > 0 from unnest($1::uuid[]) h (id) cross join lateral (
 				(select from matter t where t.plant_id = $3 and t.characteristic_id = h.id and t.closed_at is null and t.opened_taken <= $2 limit 1)
 				union all
 				(select from matter t where t.characteristic_id = h.id and t.closed_at > $2 and t.opened_taken <= $2 order by t.closed_at limit 1)) open`,
@@ -189,12 +200,12 @@ func (s *Store) LogChange(ctx context.Context, c plant.Change) error {
 		}
 		var have []byte
 		err = tx.QueryRow(ctx, `insert into change (id, plant_id, station_id, machine_id, characteristic_id, kind, size, note, prompted,
-				happened_at, recorded_at, person_id, digest)
-			select $1, $2, m.station_id, m.id, $4, $5, $6::text::numeric, $7, $12, $8, $9, $10, $11 from machine m where m.id = $3
+				happened_at, recorded_at, person_id, digest, knob_id, knob_version, turned, moves)
+			select $1, $2, m.station_id, m.id, $4, $5, $6::text::numeric, $7, $12, $8, $9, $10, $11, $13, $14, $15::text::numeric, $16 from machine m where m.id = $3
 			on conflict (id) do nothing
 			returning prompted`,
 			c.ID, s.plant(), c.Machine, orNull(c.Characteristic), string(c.Kind), decimalOrNull(c.Size), c.Note,
-			c.HappenedAt, now, orNull(c.Person), digest[:], prompted).Scan(&c.Prompted)
+			c.HappenedAt, now, orNull(c.Person), digest[:], prompted, orNull(c.Knob), numberOrNull(c.KnobVersion), decimalOrNull(c.Turned), moves).Scan(&c.Prompted)
 		if errors.Is(err, pgx.ErrNoRows) {
 			if err := tx.QueryRow(ctx, `select digest from change where id = $1`, c.ID).Scan(&have); err != nil {
 				return fmt.Errorf("read stored change: %w", err)
@@ -214,6 +225,7 @@ func (s *Store) LogChange(ctx context.Context, c plant.Change) error {
 		return s.appendPlantChain(ctx, tx, ledger.Change{
 			Change: c.ID, Machine: c.Machine, Characteristic: ledger.ID(c.Characteristic), What: string(c.Kind), Size: size, Note: c.Note,
 			Prompted: c.Prompted, HappenedAt: ledger.Time(c.HappenedAt), RecordedAt: ledger.Time(now), Person: ledger.ID(c.Person),
+			Turn: turnBody(c),
 		})
 	})
 	if pe, ok := errors.AsType[*plant.Error](err); ok && pe.Kind == plant.Conflict {

@@ -15,6 +15,7 @@ import (
 // gathering collects what StationStates reads, by id.
 type gathering struct {
 	s               *Store
+	settings        plant.Settings
 	now             time.Time
 	stations        []*plant.StationState
 	byStation       map[uuid.UUID]*plant.StationState
@@ -30,9 +31,13 @@ type gathering struct {
 // none is given, with the newest so many points of each characteristic. Its cost does
 // not depend on how long the history is.
 func (s *Store) StationStates(ctx context.Context, points int, ids ...uuid.UUID) ([]plant.StationState, error) {
+	set, err := s.Settings(ctx) // before the transaction: it may take a connection of its own
+	if err != nil {
+		return nil, err
+	}
 	var out []plant.StationState
-	err := pgx.BeginTxFunc(ctx, s.pool, pgx.TxOptions{IsoLevel: pgx.RepeatableRead, AccessMode: pgx.ReadOnly}, func(tx pgx.Tx) error {
-		g := &gathering{s: s, now: s.now(), byStation: map[uuid.UUID]*plant.StationState{},
+	err = pgx.BeginTxFunc(ctx, s.pool, pgx.TxOptions{IsoLevel: pgx.RepeatableRead, AccessMode: pgx.ReadOnly}, func(tx pgx.Tx) error {
+		g := &gathering{s: s, settings: set, now: s.now(), byStation: map[uuid.UUID]*plant.StationState{},
 			characteristics: map[uuid.UUID]*plant.CharacteristicState{}, setupVersions: map[uuid.UUID]int{},
 			inForce: map[uuid.UUID]uuid.UUID{}, machines: map[uuid.UUID]*plant.MachineNow{}, changes: map[uuid.UUID][]plant.Change{},
 			parts: map[uuid.UUID]plant.Part{}}
@@ -70,7 +75,7 @@ func (g *gathering) gather(ctx context.Context, tx pgx.Tx, points int, ids []uui
 		stationIDs[i] = st.ID
 	}
 	for _, read := range []func(context.Context, pgx.Tx, []uuid.UUID) error{
-		g.readMachines, g.readCharacteristics, g.readMatters, g.readLogs, g.readChanges,
+		g.readMachines, g.readCharacteristics, g.readMatters, g.readEscalation, g.readLogs, g.readChanges,
 	} {
 		if err := read(ctx, tx, stationIDs); err != nil {
 			return nil, err

@@ -77,7 +77,19 @@ var sealed = []string{
 	from (select convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'change') e left join change h on h.id = (b->>'change')::uuid
 	where h.id is null or h.machine_id <> (b->>'machine')::uuid or h.characteristic_id is distinct from (b->>'characteristic')::uuid or h.kind <> b->>'what'
 		or h.size is distinct from (b->>'size')::numeric or h.note <> coalesce(b->>'note', '') or h.prompted <> (b->>'prompted')::boolean
-		or h.happened_at <> (b->>'happened_at')::timestamptz or h.person_id is distinct from (b->>'person')::uuid`,
+		or h.happened_at <> (b->>'happened_at')::timestamptz or h.person_id is distinct from (b->>'person')::uuid
+		or h.knob_id is distinct from (b->'turn'->>'knob')::uuid or h.knob_version is distinct from (b->'turn'->>'version')::int
+		or h.turned is distinct from (b->'turn'->>'turned')::numeric or h.moves is distinct from b->'turn'->'moves'`,
+	`select (b->>'machine')::uuid, format('adjusting point %s, version %s, is not on record as it was sealed', b->>'knob', b->>'version')
+	from (select convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'knob') e
+	left join knob k on k.id = (b->>'knob')::uuid and k.version = (b->>'version')::int
+	where k.id is null or k.machine_id <> (b->>'machine')::uuid or k.name <> b->>'name' or k.unit <> b->>'unit' or k.step <> (b->>'step')::numeric
+		or k.retired <> coalesce((b->>'retired')::boolean, false) or k.reason <> b->>'reason' or k.made_at <> (b->>'at')::timestamptz
+		or k.person_id is distinct from (b->>'person')::uuid
+		or k.moves <> (select coalesce(jsonb_agg(jsonb_build_object('characteristic', x->'characteristic', 'per_unit', x->'size')), '[]') from jsonb_array_elements(b->'per_unit') x)`,
+	`select p.id, format('%s versions of adjusting points are on record, %s were sealed', k.n, e.n) from plant p
+	cross join lateral (select count(*) as n from knob where plant_id = p.id) k
+	cross join lateral (select count(*) as n from ledger where chain = p.id and kind = 'knob') e where k.n <> e.n`,
 	`select (b->>'machine')::uuid, format('machine state %s is not on record as it was sealed', b->>'state')
 	from (select convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'machine state') e left join machine_state x on x.id = (b->>'state')::uuid
 	where x.id is null or x.machine_id <> (b->>'machine')::uuid or x.at <> (b->>'at')::timestamptz or x.running <> (b->>'running')::boolean
@@ -103,7 +115,7 @@ func (s *Store) CheckRecord(ctx context.Context) (out []Difference, err error) {
 }
 
 func checkRecord(ctx context.Context, q querier) (out []Difference, err error) {
-	for _, sql := range slices.Concat(sealed, sealedSettings, sealedReaction, sealedProduct) {
+	for _, sql := range slices.Concat(sealed, sealedSettings, sealedReaction, sealedEscalation, sealedProduct) {
 		rows, err := q.Query(ctx, sql+` limit 100`)
 		if err != nil {
 			return nil, fmt.Errorf("compare with the ledger: %w", err)

@@ -1,6 +1,6 @@
-// The size of an adjustment in steps of the unit's last digit.
+// The size of an adjustment in steps of so many last digits.
 //
-//   [data-stepper data-decimals="3"] with one input and two [data-step="±1"]
+//   [data-stepper data-decimals="3" data-by="5"] with one input and two [data-step="±1"]
 //
 // The value stays what was typed until a step is made; a step from something that is
 // no number begins at one step.
@@ -8,12 +8,13 @@
 for (const stepper of document.querySelectorAll("[data-stepper]")) {
   const input = stepper.querySelector("input");
   const decimals = Number(stepper.dataset.decimals) || 0;
+  const by = Number(stepper.dataset.by) || 1;
   for (const button of stepper.querySelectorAll("[data-step]")) {
     button.hidden = false;
     button.addEventListener("click", () => {
       const value = Number(input.value.replace(",", "."));
-      const units = Number.isFinite(value) ? Math.round(value * 10 ** decimals) + Number(button.dataset.step) : 1;
-      input.value = (Math.max(1, units) / 10 ** decimals).toFixed(decimals);
+      const units = Number.isFinite(value) ? Math.round(value * 10 ** decimals) + by * Number(button.dataset.step) : by;
+      input.value = (Math.max(by, units) / 10 ** decimals).toFixed(decimals);
     });
   }
 }

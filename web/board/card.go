@@ -96,19 +96,7 @@ func asked(c *plant.CharacteristicState) bool {
 	case plant.IsDue, plant.IsLate, plant.IsUnknown:
 		return true
 	}
-	return overdue(c)
-}
-
-// overdue reports whether a promised sample was not taken in time, whatever else is
-// open.
-func overdue(c *plant.CharacteristicState) bool {
-	switch c.Condition() {
-	case plant.IsLate, plant.IsUnknown:
-		return true
-	case plant.IsHold, plant.IsLook:
-		return c.Due.State >= plant.Late
-	}
-	return false
+	return c.Overdue()
 }
 
 func newCard(f ui.Format, st *plant.StationState) cardView {
@@ -180,7 +168,7 @@ func next(f ui.Format, c *plant.CharacteristicState) string {
 		return w.T("board.next", at)
 	}
 	// Late is said once: by the age where that is the condition, else here.
-	if c.Matter != nil && overdue(c) {
+	if c.Matter != nil && c.Overdue() {
 		return w.T("board.due-late", at, f.Late(c.Due))
 	}
 	return w.T("board.due", at)

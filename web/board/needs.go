@@ -41,6 +41,8 @@ type needView struct {
 	Matter  string // id, when it is one
 	Say     string // what a screen reader is told when it is new
 
+	Call callView // how far the program has gone to find somebody
+
 	since   time.Time
 	gravity int
 	names   []string // of a round that was not taken
@@ -61,7 +63,7 @@ func newNeeds(f ui.Format, states []plant.StationState) needsView {
 			if c.Matter != nil {
 				v.List = append(v.List, newMatter(f, st, c))
 			}
-			if overdue(c) {
+			if c.Overdue() {
 				v.List = addLate(f, v.List, late, st, c)
 			}
 			if c.Owner() == plant.Engineering {
@@ -74,6 +76,9 @@ func newNeeds(f ui.Format, states []plant.StationState) needsView {
 		v.MoreText = f.Words.T("board.more", more)
 	}
 	slices.SortStableFunc(v.List, func(a, b needView) int {
+		if n := a.Call.place() - b.Call.place(); n != 0 {
+			return n
+		}
 		if n := a.since.Compare(b.since); n != 0 {
 			return n
 		}
@@ -106,6 +111,7 @@ func newMatter(f ui.Format, st *plant.StationState, c *plant.CharacteristicState
 	if !m.TakenAt.IsZero() {
 		v.Taken = f.Words.T("board.taken", m.TakenByName, f.Clock(m.TakenAt))
 	}
+	v.Call = matterCall(f, st, c)
 	return v
 }
 
@@ -197,6 +203,9 @@ func addLate(f ui.Format, list []needView, seen map[lateKey]int, st *plant.Stati
 	key := lateKey{c.Due.At, condition == plant.IsUnknown}
 	if i, ok := seen[key]; ok {
 		list[i].names = append(list[i].names, c.Name)
+		if call := roundCall(f, st, c); call.Marked || list[i].Call.Text == "" {
+			list[i].Call = call // the round on record is named by one of them
+		}
 		list[i].Why = w.T("board.why", ui.ConditionWord(w, condition), strings.Join(list[i].names, ", "), reason)
 		return list
 	}
@@ -205,6 +214,7 @@ func addLate(f ui.Format, list []needView, seen map[lateKey]int, st *plant.Stati
 	v.Age, v.since = f.Age(c.Due.LateBy(f.Now)), c.Due.At
 	v.names = []string{c.Name}
 	v.Why = w.T("board.why", ui.ConditionWord(w, condition), c.Name, reason)
+	v.Call = roundCall(f, st, c)
 	seen[key] = len(list)
 	return append(list, v)
 }

@@ -50,8 +50,8 @@ func countAll(p plant.Plant, states []plant.StationState, now time.Time) counts 
 		var due, late bool
 		for j := range st.Characteristics {
 			c := &st.Characteristics[j]
-			late = late || overdue(c)
-			due = due || asked(c) && !overdue(c)
+			late = late || c.Overdue()
+			due = due || asked(c) && !c.Overdue()
 			switch {
 			case c.Matter != nil && c.Matter.Kind() == plant.Hold:
 				n.hold++

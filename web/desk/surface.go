@@ -26,6 +26,7 @@ type Store interface {
 	Settings(ctx context.Context) (plant.Settings, error)
 	SettingsVersions(ctx context.Context) ([]plant.Settings, error)
 	ChangeSettings(ctx context.Context, c plant.SettingsChange) (plant.Settings, error)
+	adjustingStore
 }
 
 // Signer tells whose login and secret these are. Freezing is a signature: the secret
@@ -57,9 +58,11 @@ func (d *Desk) Routes(r chi.Router) {
 	r.Get("/settings", ui.Handle(d.log, d.showSettings))
 	r.Get("/characteristic/{id}", ui.Handle(d.log, d.chart))
 	r.Get("/characteristic/{id}/revisions", ui.Handle(d.log, d.revisions))
+	r.Get("/characteristic/{id}/adjusting-points", ui.Handle(d.log, d.showKnobs))
 	r.Group(func(r chi.Router) {
 		r.Use(ui.Require(plant.SetLimits))
 		r.Post("/settings", ui.Handle(d.log, d.changeSettings))
+		r.Post("/characteristic/{id}/adjusting-points", ui.Handle(d.log, d.saveKnob))
 		r.Get("/characteristic/{id}/study", ui.Handle(d.log, d.showStudy))
 		r.Get("/characteristic/{id}/study/freeze", ui.Handle(d.log, d.showFreeze))
 		r.Post("/characteristic/{id}/study/freeze", ui.Handle(d.log, d.freeze))

@@ -42,20 +42,32 @@ type adjustView struct {
 	Machine   string
 	ID        string
 	Name      string
-	Unit      string
-	Step      string // one last digit, "0.001"
-	Decimals  int
+	Knob      string // number of what is turned, "" for something that is not described
+	Turnables []turnable
+	Unit      string // of the scale on which the size is typed
+	Decimals  int    // of that scale
+	By        int64  // one step of it, in its last decimal
+	Steps     string
+	Up, Down  string // the two directions, and what each does where that is not the same
+	UpDoes    string
+	DownDoes  string
 	Size      string
 	Direction string // "up", "down" or ""
 	Problem   string
 	SizeSays  string // problem
 	SideSays  string // problem
 	Open      bool
+	Kind      string // of the advice
 	Condition string // tone of what is open
 	Symbol    string
 	State     string
 	Title     string
 	Says      []string
+	Spread    string // what correcting after every round does, with its drawing
+	Twin      string
+	Record    string // what adjusting did here before
+	Foot      string
+	Measure   string // where another round is taken
 	Last      string
 	Chart     string
 	Note      string
@@ -106,46 +118,22 @@ func (s *Surface) showAdjustment(w http.ResponseWriter, r *http.Request) error {
 	if !ok {
 		return notFound(r)
 	}
-	return s.renderAdjustment(w, r, http.StatusOK, st, newAdjust(ui.FrameOf(r).Format(), st, c))
+	a, err := s.adviser(r.Context(), ui.FrameOf(r).Format(), st, c, r.URL.Query().Get("knob"))
+	if err != nil {
+		return err
+	}
+	v, err := a.view()
+	if err != nil {
+		return err
+	}
+	return s.renderAdjustment(w, r, http.StatusOK, st, v)
 }
 
 func (s *Surface) renderAdjustment(w http.ResponseWriter, r *http.Request, status int, st plant.StationState, v adjustView) error {
 	shell := s.shell(r, st, v.Title)
 	shell.Scripts = []string{"js/station-sent.js", "js/station-step.js"}
+	shell.Styles = []string{"css/station-adjust.css"}
 	return ui.Render(w, r, status, adjustPage(shell, v))
-}
-
-func newAdjust(f ui.Format, st plant.StationState, c plant.CharacteristicState) adjustView {
-	w, s := f.Words, c.Setup
-	v := adjustView{Action: path(st.ID, "change"), Token: uuid.Must(uuid.NewV7()).String(), Machine: c.MachineID.String(), ID: c.ID.String(),
-		Name: c.Name, Unit: s.Unit, Step: plant.FormatUnits(1, s.Decimals), Decimals: s.Decimals, Size: plant.FormatUnits(1, s.Decimals),
-		Open: c.Matter != nil, Back: path(st.ID)}
-	switch {
-	case c.Matter != nil:
-		condition := ui.ConditionOf(c.Matter.Kind())
-		v.Condition, v.Symbol, v.State = ui.Tone(condition), ui.SymbolOf(condition), w.T("station.signal-open")
-		v.Title = w.T("station.adjust-open")
-		v.Says = []string{w.T("station.adjust-open-text", f.Clock(c.Matter.OpenedTaken))}
-	case c.Revision == nil:
-		v.Condition, v.Symbol, v.State = "calm", "learning", w.T("station.signal-none")
-		v.Title = w.T("station.adjust-learning")
-		v.Says = []string{w.T("station.adjust-learning-text"), w.T("station.adjust-unprompted")}
-	default:
-		v.Condition, v.Symbol, v.State = "calm", "leave", w.T("station.signal-none")
-		v.Title = w.T("station.adjust-leave")
-		v.Says = []string{w.T("station.adjust-leave-text"), w.T("station.adjust-unprompted")}
-	}
-	if n := len(c.Points); n > 0 {
-		last := c.Points[n-1]
-		v.Last = w.T("station.last-was", f.Clock(last.TakenAt), f.Mean(last.Stats.Mean(), s))
-		if s.Target != nil {
-			v.Last = w.T("station.last-was-target", f.Clock(last.TakenAt), f.Mean(last.Stats.Mean(), s), f.Decimal(*s.Target))
-		}
-	}
-	lo, hi := specAxis(s)
-	v.Chart = (&chart.Verdict{ID: "adjust", Label: w.T("station.verdict-label", c.Name), W: adjustW, H: adjustH,
-		Points: stationPoints(f, c.Points, s, c.Segment), Limits: chartLimits(f, c.Revision, s), Lo: lo, Hi: hi, Words: chartWords(w)}).SVG()
-	return v
 }
 
 // logChange is POST /station/{station}/change, for every kind.
@@ -176,10 +164,31 @@ func (s *Surface) logChange(w http.ResponseWriter, r *http.Request) error {
 		if err != nil {
 			return err
 		}
-		v := newAdjust(frame.Format(), st, of)
+		knob := form.Get("knob")
+		if knob == "" {
+			knob = noKnob
+		}
+		a, err := s.adviser(r.Context(), frame.Format(), st, of, knob)
+		if err != nil {
+			return err
+		}
+		v, err := a.view()
+		if err != nil {
+			return err
+		}
 		v.Token, v.Size, v.Direction, v.Note = c.ID.String(), shorten(plant.CleanText(form.Get("size"))), form.Get("direction"), note
 		c.Characteristic = of.ID
-		if c.Size = v.read(frame.Format(), of.Setup); c.Size == nil {
+		size := v.read(frame.Format(), of.Setup)
+		switch {
+		case a.knob == nil && knob != noKnob:
+			v.Problem = words.T("adjusting.gone")
+		case size == nil:
+		case a.knob != nil:
+			c.Knob, c.Turned = a.knob.ID, size
+		default:
+			c.Size = size
+		}
+		if size == nil || v.Problem != "" {
 			return s.renderAdjustment(w, r, http.StatusUnprocessableEntity, st, v)
 		}
 		adjust = &v
@@ -225,6 +234,7 @@ func adjusted(r *http.Request, st plant.StationState, machine uuid.UUID) (plant.
 // read takes the signed size from what was typed, or says what is wrong and returns
 // nil. The direction is its own choice, so a sign in the size is refused.
 func (v *adjustView) read(f ui.Format, s plant.Setup) *plant.Decimal {
+	s.Decimals = v.Decimals // those of the scale on which it is typed
 	if v.Direction != "up" && v.Direction != "down" {
 		v.Direction, v.SideSays = "", f.Words.T("station.say-direction")
 	}

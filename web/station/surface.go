@@ -31,6 +31,7 @@ type Store interface {
 	SetMachine(ctx context.Context, m plant.MachineState) error
 	Causes(ctx context.Context, family string) ([]plant.Cause, error)
 	Parts(ctx context.Context) ([]plant.Part, error)
+	Knobs(ctx context.Context, machine uuid.UUID) ([]plant.Knob, error)
 }
 
 // Signer tells whose a login and a secret are. Voiding a record is a signature, so the

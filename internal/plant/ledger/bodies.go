@@ -163,6 +163,7 @@ type Change struct {
 	HappenedAt     Time       `json:"happened_at"`
 	RecordedAt     Time       `json:"recorded_at"`
 	Person         *uuid.UUID `json:"person,omitempty"`
+	Turn           *Turn      `json:"turn,omitempty"`
 }
 
 // Kind is "change".

@@ -179,4 +179,26 @@ func Harmonic(y []float64, target, ratio float64) ([]float64, error) {
 	return out, nil
 }
 
+// Compensated gives the series as it would have been had every value been corrected by
+// its whole deviation from target before the next was taken: the first as it is, every
+// other its distance from the one before.
+//
+//	x_t = target + (y_t - y_{t-1})
+//
+// y holds the values of a process that was left alone. For fewer than 2 values there is
+// none, and it returns nil.
+//
+// Source: rule 2 of the funnel, Deming, Out of the Crisis (1986).
+func Compensated(y []float64, target float64) []float64 {
+	if len(y) < 2 {
+		return nil
+	}
+	out := make([]float64, len(y))
+	out[0] = y[0]
+	for i := 1; i < len(y); i++ {
+		out[i] = target + (y[i] - y[i-1])
+	}
+	return out
+}
+
 func finite(v float64) bool { return !math.IsNaN(v) && !math.IsInf(v, 0) }

@@ -29,6 +29,8 @@ type Audit struct {
 	Governed []int
 	// Prompted and Unprompted are the sums of gain times subgroups governed.
 	Prompted, Unprompted float64
+	// PromptedWithin and UnpromptedWithin bound the sums with 95 % confidence.
+	PromptedWithin, UnpromptedWithin Interval
 	// Carried holds for each subgroup the sum of unprompted adjustments in
 	// force: without them the process would have been at y - Carried.
 	Carried []float64
@@ -36,11 +38,19 @@ type Audit struct {
 	// been without the unprompted adjustments: 2 for full compensation of the
 	// last deviation on a stable process, below 1 if they helped.
 	Ratio float64
-	// Low and High bound the ratio with 95 % confidence (block bootstrap).
+	// Low and High bound the ratio with 95 % confidence (block bootstrap). High is
+	// +Inf where the stretch is too short to bound it.
 	Low, High float64
 	// Lag1 is the lag-1 correlation of the adjusted series; near -0.5 it is the
 	// fingerprint of full compensation.
 	Lag1 float64
+}
+
+// Interval is a 95 % interval, if the stretch allows one: it does not where fewer than
+// fewestGoverned subgroups are governed, or what they gained does not vary.
+type Interval struct {
+	Low, High float64
+	Known     bool
 }
 
 // Review audits the adjustments of a stretch.
@@ -90,6 +100,7 @@ func Review(y []float64, target float64, adjustments []Adjustment, zero []int, s
 		Carried:  make([]float64, len(y)),
 	}
 	actual, without := make([]float64, len(y)), make([]float64, len(y))
+	var prompted, unprompted []float64 // what each governed subgroup gained
 	governor, next := -1, 0
 	var carried float64
 	for i, v := range y {
@@ -116,8 +127,10 @@ func Review(y []float64, target float64, adjustments []Adjustment, zero []int, s
 		if adjustments[governor].Prompted {
 			undone := d - adjustments[governor].Size
 			a.Gains[governor] += undone*undone - actual[i]
+			prompted = append(prompted, undone*undone-actual[i])
 		} else {
 			a.Gains[governor] += without[i] - actual[i]
+			unprompted = append(unprompted, without[i]-actual[i])
 		}
 	}
 	for j, n := range a.Governed {
@@ -130,6 +143,7 @@ func Review(y []float64, target float64, adjustments []Adjustment, zero []int, s
 			a.Gains[j] /= float64(n)
 		}
 	}
+	a.PromptedWithin, a.UnpromptedWithin = sumInterval(prompted, seed), sumInterval(unprompted, seed)
 	var ok bool
 	if a.Lag1, ok = lag1(y); !ok {
 		return Audit{}, fmt.Errorf("%w: y does not vary", ErrInput)
@@ -141,7 +155,7 @@ func Review(y []float64, target float64, adjustments []Adjustment, zero []int, s
 }
 
 func (a Audit) checked() (Audit, error) {
-	for _, v := range append([]float64{a.Prompted, a.Unprompted, a.Ratio, a.Low, a.High, a.Lag1}, a.Gains...) {
+	for _, v := range append([]float64{a.Prompted, a.Unprompted, a.Ratio, a.Low, a.Lag1}, a.Gains...) {
 		if !finite(v) {
 			return Audit{}, fmt.Errorf("%w: the values are too large to compute with", ErrInput)
 		}
