@@ -49,6 +49,12 @@ type Config struct {
 	Checker  door.Checker
 	Hub      Hub
 
+	// Tablet is what enrolling a device and signing in by badge and PIN need; nil where
+	// there are no devices.
+	Tablet *door.Tablet
+	// First makes the first person under a one-time address; nil when there is somebody.
+	First *door.First
+
 	// DemoPeople lists who may step in by one click; nil outside of the
 	// demonstration.
 	DemoPeople func(ctx context.Context) ([]plant.Person, error)
@@ -119,7 +125,7 @@ func New(c Config) http.Handler {
 		if c.Authority != nil {
 			(&door.Trust{Log: c.Log, Authority: c.Authority}).Routes(r)
 		}
-		(&door.Handler{Log: c.Log, Checker: c.Checker, Sessions: c.Sessions, Demo: c.DemoPeople}).Routes(r)
+		(&door.Handler{Log: c.Log, Checker: c.Checker, Sessions: c.Sessions, Demo: c.DemoPeople, Tablet: c.Tablet, First: c.First}).Routes(r)
 		mount(r, ui.Station, c.Station)
 		mount(r, ui.Board, c.Board)
 		mount(r, ui.Desk, c.Desk)
@@ -163,6 +169,11 @@ func (s *server) visitor(next http.Handler) http.Handler {
 		if p, ok := auth.FromContext(r.Context()); ok {
 			f.Person, f.SignedIn, f.Session = p, true, s.Sessions.ID(r.Context())
 		}
+		f.Device, _ = auth.DeviceFrom(r.Context())
+		f.Revoked = auth.Revoked(r.Context())
+		if f.OnWall() {
+			f.Session = auth.DeviceSession(f.Device.ID)
+		}
 		next.ServeHTTP(w, ui.WithFrame(r, f))
 	})
 }
@@ -170,13 +181,13 @@ func (s *server) visitor(next http.Handler) http.Handler {
 // live hands the socket to the hub, for the topics that the page's reader may see.
 func (s *server) live(w http.ResponseWriter, r *http.Request) {
 	f := ui.FrameOf(r)
-	if !f.SignedIn {
+	if !f.SignedIn && !f.OnWall() {
 		s.Hub.Refuse(w, r, live.SessionEnded)
 		return
 	}
 	topics := r.URL.Query()["topic"]
 	for _, t := range topics {
-		if action, ok := ui.TopicAction(t); !ok || !f.Person.May(action) {
+		if action, ok := ui.TopicAction(t); !ok || !f.Person.May(action) && !(f.OnWall() && f.Device.May(action)) {
 			s.Hub.Refuse(w, r, live.NotAllowed)
 			return
 		}

@@ -80,9 +80,10 @@ func start(t testing.TB, p *storetest.Plant, clock func() time.Time, change func
 
 // visitor is a browser without scripts.
 type visitor struct {
-	t    testing.TB
-	http *http.Client
-	base string
+	t     testing.TB
+	http  *http.Client
+	base  string
+	token string // of a sender
 }
 
 // visit signs in; an empty login stays outside.
@@ -116,6 +117,11 @@ func (v *visitor) post(path string, form url.Values) (*http.Response, string) {
 
 func (v *visitor) do(method, path, kind string, body io.Reader) (*http.Response, string) {
 	v.t.Helper()
+	return v.send(method, path, kind, "text/html", body)
+}
+
+func (v *visitor) send(method, path, kind, accept string, body io.Reader) (*http.Response, string) {
+	v.t.Helper()
 	req, err := http.NewRequest(method, v.base+path, body)
 	if err != nil {
 		v.t.Fatal(err)
@@ -123,7 +129,10 @@ func (v *visitor) do(method, path, kind string, body io.Reader) (*http.Response,
 	if kind != "" {
 		req.Header.Set("Content-Type", kind)
 	}
-	req.Header.Set("Accept", "text/html")
+	req.Header.Set("Accept", accept)
+	if v.token != "" {
+		req.Header.Set("Authorization", "Bearer "+v.token)
+	}
 	res, err := v.http.Do(req)
 	if err != nil {
 		v.t.Fatal(err)

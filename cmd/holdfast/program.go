@@ -50,6 +50,7 @@ type program struct {
 	feed     *store.Feed
 	hub      *live.Hub
 	sessions *auth.Sessions
+	devices  *auth.Devices
 	admin    *admin.Admin
 	listener net.Listener
 	server   *http.Server
@@ -59,6 +60,10 @@ type program struct {
 	background context.CancelFunc
 	running    sync.WaitGroup
 }
+
+// recheckEvery is how soon sockets end whose device was revoked, or whose person was kept
+// out, on another server or on the command line. It costs three small queries.
+const recheckEvery = 700 * time.Millisecond
 
 // shutdownLimit is how long requests that are under way may take to end.
 const shutdownLimit = 20 * time.Second
@@ -108,17 +113,18 @@ func (p *program) join(ctx context.Context) error {
 		return err
 	}
 	views := newViews(p.store, &p.plant, p.Clock)
-	p.hub = live.New(views.render, live.Options{Log: p.Log, Recheck: func(ctx context.Context, ids []string) ([]string, error) {
+	p.hub = live.New(views.render, live.Options{Log: p.Log, RecheckEvery: recheckEvery, Recheck: func(ctx context.Context, ids []string) ([]string, error) {
 		return p.sessions.Ended(ctx, ids)
 	}})
 	p.feed = p.store.NewFeed(p.Log, func(stations []plantID) { p.hub.Dirty(views.changed(stations)...) })
+	p.devices = auth.NewDevices(auth.DeviceOptions{Store: p.store, PlainHTTP: !p.Transport.https, Now: p.Clock, Log: p.Log})
 	p.sessions = auth.NewSessions(auth.SessionOptions{
-		Store: auth.PostgresStore(p.store.Pool()), People: p.store, PlainHTTP: !p.Transport.https, Log: p.Log, Now: p.Clock,
+		Store: auth.PostgresStore(p.store.Pool()), People: p.store, Devices: p.devices, PlainHTTP: !p.Transport.https, Log: p.Log, Now: p.Clock,
 		OnEnd:    func(session string) { p.hub.Drop(session, live.SessionEnded) },
 		Fail:     web.SessionFault(p.Log),
-		FindMany: p.store.FindSessions, DeleteExpired: p.store.DeleteExpiredSessions,
+		FindMany: p.store.FindSessions, FindPeople: p.store.PeopleByID, DeleteExpired: p.store.DeleteExpiredSessions,
 	})
-	door := &auth.Door{Credentials: p.store, Hasher: hasher, Throttle: auth.NewThrottle(p.Clock), Log: p.Log}
+	door := &auth.Door{Credentials: p.store, Hasher: hasher, Throttle: auth.NewThrottle(p.Clock), Pins: auth.NewThrottle(p.Clock), Log: p.Log}
 	machine, err := os.Hostname()
 	if err != nil {
 		p.Log.Warn("the machine does not tell its name", "error", err)
@@ -131,6 +137,7 @@ func (p *program) join(ctx context.Context) error {
 		Board:   board.New(board.Deps{Store: p.store, Log: p.Log}),
 		Desk:    desk.New(desk.Deps{Store: p.store, Signer: door, Log: p.Log}),
 		Admin:   p.admin,
+		Tablet:  p.tablet(door),
 		Ready:   p.store.Ready, Hosts: p.Hosts, Secure: p.Transport.https, Strict: p.Transport.strict, Addr: p.Transport.from, Authority: p.Transport.root,
 	}
 	p.watch()

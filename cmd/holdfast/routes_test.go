@@ -1,36 +1,82 @@
 package main
 
 import (
+	"context"
 	"net/http"
 	"net/url"
 	"slices"
 	"strings"
 	"testing"
 
+	"github.com/google/uuid"
+
 	"holdfast/internal/plant"
 	"holdfast/web"
 )
 
-// who is the set of those that a route answers.
-type who []plant.Role
+// visitorKind is one of those who come to the server: somebody with one role, or what
+// comes without a person.
+type visitorKind string
 
-const nobody = plant.Role("")
-
-var (
-	everybody = who{nobody, plant.Operator, plant.Supervisor, plant.Engineer, plant.Administrator}
-	takers    = who{plant.Operator, plant.Supervisor}
-	seers     = who{plant.Operator, plant.Supervisor, plant.Engineer}
-	deskers   = who{plant.Supervisor, plant.Engineer}
-	setters   = who{plant.Engineer}
-	managers  = who{plant.Administrator}
+const (
+	nobody        visitorKind = "nobody"
+	operator                  = visitorKind(plant.Operator)
+	supervisor                = visitorKind(plant.Supervisor)
+	engineer                  = visitorKind(plant.Engineer)
+	administrator             = visitorKind(plant.Administrator)
+	atTablet      visitorKind = "operator by PIN at a tablet"
+	manager       visitorKind = "administrator by PIN at a tablet" // who is an operator too: the PIN opens only that
+	bare          visitorKind = "enrolled tablet without a person"
+	wall          visitorKind = "wall screen"
+	sender        visitorKind = "sender with its token"
+	revoked       visitorKind = "revoked tablet"
 )
 
-// routeRow is one route: whom it answers, and with what. Everybody else is refused:
-// nobody by a way to the sign-in page (on /live by 401), another role by 403.
+// who is the set of those that a route answers.
+type who []visitorKind
+
+// everybody is all who come, in the order in which they are tried.
+var everybody = who{nobody, operator, supervisor, engineer, administrator, atTablet, manager, bare, wall, sender, revoked}
+
+var (
+	people   = who{operator, supervisor, engineer, administrator, atTablet, manager}
+	takers   = who{operator, supervisor, atTablet, manager}
+	seers    = who{operator, supervisor, engineer, atTablet, manager}
+	watchers = append(who{wall}, seers...) // the board, to look at
+	deskers  = who{supervisor, engineer}
+	setters  = who{engineer}
+	managers = who{administrator}
+	tablets  = who{bare, atTablet, manager}
+	senders  = who{sender}
+)
+
+// routeRow is one route: whom it answers, and with what. All others are refused as
+// refusal says.
 type routeRow struct {
 	route  string // as web.Route prints it
 	may    who
 	status int
+}
+
+// refusal is how a route turns somebody away: who is signed in with 403, nobody and a
+// device without a person by a way to the sign-in page, a wall screen by the way back to
+// its board, and on /live and /api with 401. What only a tablet may send is 403 for all.
+func refusal(method, pattern string, v visitorKind) (status int, to string) {
+	switch {
+	case pattern == "/sign-in/badge":
+		return http.StatusForbidden, ""
+	case strings.HasPrefix(pattern, "/api/"):
+		return http.StatusUnauthorized, ""
+	case slices.Contains(people, v):
+		return http.StatusForbidden, ""
+	case v == wall && method == http.MethodGet:
+		return http.StatusSeeOther, "/board"
+	case v == wall:
+		return http.StatusForbidden, ""
+	case pattern == "/live":
+		return http.StatusUnauthorized, ""
+	}
+	return http.StatusSeeOther, "/sign-in"
 }
 
 // routeTable is every route that there is. A route that is missing here fails the test,
@@ -44,9 +90,13 @@ var routeTable = []routeRow{
 	{"GET /sign-in", everybody, 200},
 	{"POST /sign-in", everybody, 422},
 	{"POST /sign-in/demo", everybody, 404}, // no demonstration
+	{"POST /sign-in/badge", tablets, 422},
 	{"POST /sign-out", everybody, 303},
+	{"POST /still-here", people, 204},
+	{"GET /enrol", everybody, 200},
+	{"POST /enrol", everybody, 422},
 	{"POST /theme", everybody, 303},
-	{"GET /live", seers, 400}, // no upgrade was asked for
+	{"GET /live", watchers, 400}, // no upgrade was asked for
 	{"GET /admin/", managers, 200},
 	{"GET /admin/qualification", managers, 200},
 	{"GET /admin/qualification.json", managers, 404}, // none was run
@@ -67,7 +117,7 @@ var routeTable = []routeRow{
 	{"GET /station/{station}/machine/{machine}", takers, 200},
 	{"POST /station/{station}/machine/{machine}", takers, 422},
 
-	{"GET /board/", seers, 200},
+	{"GET /board/", watchers, 200},
 	{"GET /board/at/{station}/{characteristic}", seers, 303},
 	{"GET /board/at/{station}/{characteristic}/{matter}", seers, 303},
 	{"GET /board/chart/{station}/{characteristic}", seers, 303},
@@ -105,9 +155,8 @@ func TestEveryRouteByEveryRoleAndByNobody(t *testing.T) {
 			t.Errorf("%s is not in the table of routes and roles", route)
 		}
 	}
-	logins := map[plant.Role]string{plant.Operator: "operator1", plant.Supervisor: "supervisor1", plant.Engineer: "engineer1", plant.Administrator: "administrator1"}
-	for _, role := range everybody {
-		v := r.visit(t, logins[role])
+	for _, kind := range everybody {
+		v := r.visitAs(t, kind)
 		for _, row := range routeTable {
 			if !there[row.route] {
 				t.Errorf("%s is in the table and not there", row.route)
@@ -118,15 +167,8 @@ func TestEveryRouteByEveryRoleAndByNobody(t *testing.T) {
 			}
 			method, pattern, _ := strings.Cut(row.route, " ")
 			want, to := row.status, ""
-			if !slices.Contains(row.may, role) {
-				switch {
-				case role != nobody:
-					want = http.StatusForbidden
-				case pattern == "/live":
-					want = http.StatusUnauthorized
-				default:
-					want, to = http.StatusSeeOther, "/sign-in"
-				}
+			if !slices.Contains(row.may, kind) {
+				want, to = refusal(method, pattern, kind)
 			}
 			var res *http.Response
 			if method == http.MethodPost {
@@ -135,17 +177,59 @@ func TestEveryRouteByEveryRoleAndByNobody(t *testing.T) {
 				res, _ = v.get(path.Replace(pattern))
 			}
 			if res.StatusCode != want || !strings.HasPrefix(res.Header.Get("Location"), to) {
-				t.Errorf("%s as %q: %d to %q, want %d", row.route, role, res.StatusCode, res.Header.Get("Location"), want)
+				t.Errorf("%s as %q: %d to %q, want %d", row.route, kind, res.StatusCode, res.Header.Get("Location"), want)
 			}
 			if csp := res.Header.Get("Content-Security-Policy"); !strings.Contains(csp, "default-src 'none'") || strings.Contains(csp, "unsafe") {
 				t.Errorf("%s: content policy %q", row.route, csp)
 			}
 		}
 		if res, _ := v.post("/sign-out", nil); res.StatusCode != http.StatusSeeOther {
-			t.Errorf("signing out as %q: %d", role, res.StatusCode)
+			t.Errorf("signing out as %q: %d", kind, res.StatusCode)
 		}
-		if res, _ := v.get("/board"); role != nobody && res.StatusCode != http.StatusSeeOther {
-			t.Errorf("after signing out as %q the board answers %d", role, res.StatusCode)
+		if res, _ := v.get("/board"); slices.Contains(people, kind) && res.StatusCode != http.StatusSeeOther {
+			t.Errorf("after signing out as %q the board answers %d", kind, res.StatusCode)
 		}
 	}
+}
+
+// visitAs comes as one of everybody.
+func (r *running) visitAs(t testing.TB, kind visitorKind) *visitor {
+	t.Helper()
+	switch kind {
+	case nobody:
+		return r.visit(t, "")
+	case atTablet:
+		v, _ := r.visitOn(t, plant.Device{Kind: plant.Tablet, Name: "Tablet of an operator", Station: r.Station.ID})
+		r.badge(t, r.Operator.ID, "1001")
+		v.signInByBadge("1001", pin)
+		return v
+	case manager:
+		v, _ := r.visitOn(t, plant.Device{Kind: plant.Tablet, Name: "Tablet of an administrator", Station: r.Station.ID})
+		r.person(t, "both", plant.Operator, plant.Administrator, plant.Engineer)
+		p, err := r.PersonByLogin(context.Background(), "both")
+		if err != nil {
+			t.Fatal(err)
+		}
+		r.badge(t, p.ID, "1002")
+		v.signInByBadge("1002", pin)
+		return v
+	case bare:
+		v, _ := r.visitOn(t, plant.Device{Kind: plant.Tablet, Name: "Tablet", Station: r.Station.ID})
+		return v
+	case wall:
+		v, _ := r.visitOn(t, plant.Device{Kind: plant.Wall, Name: "Wall"})
+		return v
+	case sender:
+		v := r.visit(t, "")
+		_, v.token = r.enrol(t, plant.Device{Kind: plant.Sender, Name: "Gauge"})
+		return v
+	case revoked:
+		v, d := r.visitOn(t, plant.Device{Kind: plant.Tablet, Name: "Lost tablet", Station: r.Station.ID})
+		if err := r.RevokeDevice(context.Background(), d.ID, uuid.Nil); err != nil {
+			t.Fatal(err)
+		}
+		r.program.devices.Forget()
+		return v
+	}
+	return r.visit(t, string(kind)+"1")
 }

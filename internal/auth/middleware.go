@@ -20,6 +20,8 @@ type visit struct {
 	signedIn bool
 	timedOut bool
 	begun    bool // signed in during this request
+	device   plant.Device
+	revoked  bool // it came with the secret of a device that was revoked
 }
 
 type visitKey struct{}
@@ -63,11 +65,17 @@ func (s *Sessions) Middleware(next http.Handler) http.Handler {
 			s.opt.Fail(w, r, err)
 			return
 		}
+		s.opt.Devices.renew(w, r)
 		s.touch(ctx)
 		next.ServeHTTP(w, r)
 	}))
 	return http.HandlerFunc(func(w http.ResponseWriter, r *http.Request) {
-		inner.ServeHTTP(w, withVisit(r))
+		r, err := s.withVisit(r)
+		if err != nil {
+			s.opt.Fail(w, r, err)
+			return
+		}
+		inner.ServeHTTP(w, r)
 	})
 }
 
@@ -81,7 +89,11 @@ func (s *Sessions) LoadOnly(next http.Handler) http.Handler {
 		if c, err := r.Cookie(s.scs.Cookie.Name); err == nil {
 			token = c.Value
 		}
-		r = withVisit(r)
+		r, err := s.withVisit(r)
+		if err != nil {
+			s.opt.Fail(w, r, err)
+			return
+		}
 		ctx, err := s.scs.Load(r.Context(), token)
 		if err == nil {
 			_, err = s.admit(ctx)
@@ -94,8 +106,21 @@ func (s *Sessions) LoadOnly(next http.Handler) http.Handler {
 	})
 }
 
-func withVisit(r *http.Request) *http.Request {
-	return r.WithContext(context.WithValue(r.Context(), visitKey{}, &visit{}))
+// withVisit begins the visit with the device that the request comes from, if it is one.
+func (s *Sessions) withVisit(r *http.Request) (*http.Request, error) {
+	v := &visit{}
+	r = r.WithContext(context.WithValue(r.Context(), visitKey{}, v))
+	device, err := s.opt.Devices.fromRequest(r)
+	if err != nil {
+		return r, err
+	}
+	switch {
+	case device.Active():
+		v.device = device
+	case device.ID != uuid.Nil:
+		v.revoked = true
+	}
+	return r, nil
 }
 
 // admit finds out who the loaded session belongs to. over means that there is a
@@ -114,7 +139,10 @@ func (s *Sessions) admit(ctx context.Context) (over bool, err error) {
 	if !now.Before(s.scs.Deadline(ctx)) {
 		return true, nil
 	}
-	if now.Sub(time.Unix(s.scs.GetInt64(ctx, keySeen), 0)) >= s.opt.Idle {
+	if on := s.scs.GetString(ctx, keyDevice); on != "" && on != v.device.ID.String() {
+		return true, nil // begun on a device that this is not, or no longer
+	}
+	if now.Sub(time.Unix(s.scs.GetInt64(ctx, keySeen), 0)) >= s.idle(v.device) {
 		v.timedOut = true
 		return true, nil
 	}
@@ -124,6 +152,12 @@ func (s *Sessions) admit(ctx context.Context) (over bool, err error) {
 		return true, nil
 	case err != nil:
 		return false, fmt.Errorf("find who is signed in: %w", err)
+	}
+	if time.UnixMicro(s.scs.GetInt64(ctx, keyBegun)).Before(p.SessionsSince) {
+		return true, nil
+	}
+	if s.scs.GetBool(ctx, keyPIN) {
+		p = p.AtTablet()
 	}
 	v.person, v.signedIn = p, true
 	return false, nil
@@ -232,6 +266,7 @@ func (c *sessionCache) forget(key string) {
 // socket asks once, and a change of roles still counts at once to human eyes.
 type peopleCache struct {
 	people People
+	many   func(ctx context.Context, ids []uuid.UUID) ([]plant.Person, error) // may be nil
 	now    func() time.Time
 
 	mu      sync.Mutex
@@ -263,6 +298,38 @@ func (c *peopleCache) find(ctx context.Context, id uuid.UUID) (plant.Person, err
 	}
 	c.entries[id] = cached{p, c.now().Add(cacheFor)}
 	return p, nil
+}
+
+// fill reads those of the people that are not remembered in one go.
+func (c *peopleCache) fill(ctx context.Context, ids []uuid.UUID) error {
+	if c.many == nil {
+		return nil
+	}
+	var missing []uuid.UUID
+	c.mu.Lock()
+	now := c.now()
+	for _, id := range ids {
+		if e, ok := c.entries[id]; !ok || !now.Before(e.until) {
+			missing = append(missing, id)
+		}
+	}
+	c.mu.Unlock()
+	if len(missing) == 0 {
+		return nil
+	}
+	found, err := c.many(ctx, missing)
+	if err != nil {
+		return fmt.Errorf("find people: %w", err)
+	}
+	c.mu.Lock()
+	defer c.mu.Unlock()
+	if len(c.entries)+len(found) > cacheMost {
+		clear(c.entries)
+	}
+	for _, p := range found {
+		c.entries[p.ID] = cached{p, c.now().Add(cacheFor)}
+	}
+	return nil
 }
 
 func (c *peopleCache) forget(id uuid.UUID) {

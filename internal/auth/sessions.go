@@ -27,8 +27,9 @@ type People interface {
 // SessionOptions are the settings of Sessions. Store and People are needed; for
 // the others zero means the default.
 type SessionOptions struct {
-	Store  scs.Store
-	People People
+	Store   scs.Store
+	People  People
+	Devices *Devices // nil where no device is ever enrolled
 
 	Lifetime time.Duration // from sign-in, whatever happens; 12 h, a shift with overtime
 	Idle     time.Duration // since the last request; 4 h. An open live page is not a request
@@ -50,6 +51,9 @@ type SessionOptions struct {
 	// do not exist or have expired are left out. Without it Ended asks for them
 	// one by one.
 	FindMany func(ctx context.Context, keys []string) (map[string][]byte, error)
+	// FindPeople reads many people in one go; those that do not exist are left out.
+	// Without it Ended asks for them one by one.
+	FindPeople func(ctx context.Context, ids []uuid.UUID) ([]plant.Person, error)
 	// DeleteExpired clears away sessions past their expiry; it is called every
 	// five minutes.
 	DeleteExpired func(ctx context.Context) error
@@ -62,6 +66,9 @@ const (
 
 	keyPerson = "person" // uuid as text
 	keySeen   = "seen"   // seconds since 1970 of the last request, to the minute or so
+	keyBegun  = "begun"  // microseconds since 1970 of the sign-in
+	keyDevice = "device" // uuid as text of the device that it was begun on; the session is worth nothing elsewhere
+	keyPIN    = "pin"    // true when it was begun with a PIN, which opens less
 )
 
 // PostgresStore keeps sessions in the table sessions (token text primary key,
@@ -105,7 +112,7 @@ func NewSessions(opt SessionOptions) *Sessions {
 		}
 	}
 	s := &Sessions{opt: opt, done: make(chan struct{})}
-	s.people = &peopleCache{people: opt.People, now: opt.Now, entries: make(map[uuid.UUID]cached)}
+	s.people = &peopleCache{people: opt.People, many: opt.FindPeople, now: opt.Now, entries: make(map[uuid.UUID]cached)}
 
 	m := scs.New()
 	m.Store = guardedStore{s, opt.Store, &sessionCache{now: opt.Now, entries: make(map[string]cachedSession)}}
@@ -157,6 +164,16 @@ func (s *Sessions) clear(ctx context.Context) {
 // SignIn begins a session for a person, under a new token: one that was planted
 // in the browser before is worth nothing. It must run inside Middleware.
 func (s *Sessions) SignIn(ctx context.Context, p plant.Person) error {
+	return s.signIn(ctx, p, false)
+}
+
+// SignInByPIN begins a session that a PIN opened: it holds on the tablet of this request
+// only, and for the person as plant.Person.AtTablet makes them.
+func (s *Sessions) SignInByPIN(ctx context.Context, p plant.Person) error {
+	return s.signIn(ctx, p.AtTablet(), true)
+}
+
+func (s *Sessions) signIn(ctx context.Context, p plant.Person, pin bool) error {
 	v := visitOf(ctx)
 	before := s.ID(ctx)
 	if err := s.scs.Clear(ctx); err != nil {
@@ -167,6 +184,14 @@ func (s *Sessions) SignIn(ctx context.Context, p plant.Person) error {
 	}
 	s.scs.Put(ctx, keyPerson, p.ID.String())
 	s.scs.Put(ctx, keySeen, s.opt.Now().Unix())
+	s.scs.Put(ctx, keyBegun, s.opt.Now().UnixMicro())
+	s.scs.Put(ctx, keyPIN, pin)
+	if v.device.Active() {
+		s.scs.Put(ctx, keyDevice, v.device.ID.String())
+		if err := s.opt.Devices.notePresence(ctx, v.device.ID, p.ID); err != nil {
+			return err
+		}
+	}
 	v.begun, v.person, v.signedIn = true, p, true
 	if before != "" {
 		s.opt.OnEnd(before)
@@ -215,24 +240,60 @@ func (s *Sessions) Expires(ctx context.Context) time.Time {
 	if _, ok := FromContext(ctx); !ok {
 		return time.Time{}
 	}
-	idle := time.Unix(s.scs.GetInt64(ctx, keySeen), 0).Add(s.opt.Idle)
+	idle := time.Unix(s.scs.GetInt64(ctx, keySeen), 0).Add(s.idle(visitOf(ctx).device))
 	if end := s.scs.Deadline(ctx); end.Before(idle) {
 		return end
 	}
 	return idle
 }
 
+// slackOfLock is how much later than the tablet itself the server ends a session that
+// is not used: the tablet warns first, and tells of use once a minute.
+const slackOfLock = 3 * time.Minute
+
+// idle is how long a session may go unused: on a tablet as long as its lock, elsewhere
+// Idle.
+func (s *Sessions) idle(d plant.Device) time.Duration {
+	if d.Kind == plant.Tablet && d.LockAfter > 0 {
+		return min(s.opt.Idle, d.LockAfter+slackOfLock)
+	}
+	return s.opt.Idle
+}
+
 // Ended gives those of the sessions (by ID) that are over: signed out or
-// expired here or on another server, unused for too long, or of somebody who
-// is no longer active.
+// expired here or on another server, unused for too long, of somebody who is no
+// longer active, or on a device that was revoked. Sockets of devices without a
+// person go by DeviceSession; those of revoked devices are over too.
 func (s *Sessions) Ended(ctx context.Context, ids []string) ([]string, error) {
 	stored, err := s.findMany(ctx, ids)
 	if err != nil {
 		return nil, fmt.Errorf("look up sessions: %w", err)
 	}
+	asked := make(map[string]claim, len(ids))
+	var devices, people []uuid.UUID
+	for _, id := range ids {
+		c, err := s.claimOf(id, stored[id])
+		if err != nil {
+			return nil, err
+		}
+		asked[id] = c
+		if c.device != uuid.Nil {
+			devices = append(devices, c.device)
+		}
+		if c.person != uuid.Nil {
+			people = append(people, c.person)
+		}
+	}
+	if err := s.people.fill(ctx, people); err != nil {
+		return nil, err
+	}
+	letIn, err := s.opt.Devices.present(ctx, devices)
+	if err != nil {
+		return nil, err
+	}
 	var ended []string
 	for _, id := range ids {
-		over, err := s.over(ctx, stored[id])
+		over, err := s.over(ctx, asked[id], letIn)
 		if err != nil {
 			return nil, err
 		}
@@ -241,6 +302,44 @@ func (s *Sessions) Ended(ctx context.Context, ids []string) ([]string, error) {
 		}
 	}
 	return ended, nil
+}
+
+// claim is what a session, or a device's socket without one, rests on.
+type claim struct {
+	alone    bool // a device without a person
+	none     bool // there is no such session
+	person   uuid.UUID
+	device   uuid.UUID // Nil when it is bound to none
+	deadline time.Time
+	seen     time.Time
+	begun    time.Time
+}
+
+func (s *Sessions) claimOf(id string, data []byte) (claim, error) {
+	if device, ok := deviceOfSession(id); ok {
+		return claim{alone: true, device: device}, nil
+	}
+	if data == nil {
+		return claim{none: true}, nil
+	}
+	deadline, values, err := s.scs.Codec.Decode(data)
+	if err != nil {
+		return claim{}, fmt.Errorf("read a session: %w", err)
+	}
+	c := claim{deadline: deadline}
+	who, _ := values[keyPerson].(string)
+	seen, _ := values[keySeen].(int64)
+	begun, _ := values[keyBegun].(int64)
+	c.seen, c.begun = time.Unix(seen, 0), time.UnixMicro(begun)
+	if c.person, err = uuid.Parse(who); err != nil {
+		c.none = true
+	}
+	if on, _ := values[keyDevice].(string); on != "" {
+		if c.device, err = uuid.Parse(on); err != nil {
+			c.none = true
+		}
+	}
+	return c, nil
 }
 
 func (s *Sessions) findMany(ctx context.Context, ids []string) (map[string][]byte, error) {
@@ -260,26 +359,23 @@ func (s *Sessions) findMany(ctx context.Context, ids []string) (map[string][]byt
 	return out, nil
 }
 
-func (s *Sessions) over(ctx context.Context, data []byte) (bool, error) {
-	if data == nil {
+func (s *Sessions) over(ctx context.Context, c claim, letIn map[uuid.UUID]bool) (bool, error) {
+	if c.none || c.device != uuid.Nil && !letIn[c.device] {
 		return true, nil
 	}
-	deadline, values, err := s.scs.Codec.Decode(data)
-	if err != nil {
-		return false, fmt.Errorf("read a session: %w", err)
+	if c.alone {
+		return false, nil
 	}
 	now := s.opt.Now()
-	seen, _ := values[keySeen].(int64)
-	who, _ := values[keyPerson].(string)
-	id, err := uuid.Parse(who)
-	if err != nil || !now.Before(deadline) || now.Sub(time.Unix(seen, 0)) >= s.opt.Idle {
+	// How soon a tablet locks is not known here; its next request asks.
+	if !now.Before(c.deadline) || now.Sub(c.seen) >= s.opt.Idle {
 		return true, nil
 	}
-	p, err := s.people.find(ctx, id)
+	p, err := s.people.find(ctx, c.person)
 	if plant.IsKind(err, plant.NotFound) {
 		return true, nil
 	}
-	return err == nil && !p.Active, err
+	return err == nil && (!p.Active || c.begun.Before(p.SessionsSince)), err
 }
 
 // Forget drops what is remembered of a person, for the second that it would be

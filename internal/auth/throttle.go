@@ -7,6 +7,8 @@ import (
 	"sync"
 	"time"
 
+	"github.com/google/uuid"
+
 	"holdfast/internal/plant"
 )
 
@@ -18,26 +20,27 @@ import (
 // so that tries sent at once do not slip through together. Three counts each
 // allow some failures for free and then ask for a pause that doubles:
 //
-//   - one login from one address: 5 free, then 1 s doubling up to 5 minutes;
-//   - one address, whatever the login: 30 free, then 1 s doubling up to 30 s;
-//   - one login from four or more addresses: 20 free, then 1 s doubling up to 30 s.
+//   - one login from one source: 5 free, then 1 s doubling up to 5 minutes;
+//   - one source, whatever the login: 30 free, then 1 s doubling up to 30 s;
+//   - one login from four or more sources: 20 free, then 1 s doubling up to 30 s.
 //
-// A login that has come in from an address before is held up there by the first
-// count alone. So nobody can lock out a plant: failures from one address never
-// hold up another address, and those from many hold up people at their usual
-// tablets not at all, and at a new one for half a minute at most. What a guesser
-// can do is hold up logins at the address that they share with them, up to five
-// minutes each; behind a proxy the web must therefore be told the true address.
-// A try during a pause is refused without being checked or counted. Counts are
+// A login that has come in from a source before is held up there by the first
+// count alone. So nobody can lock out a plant: failures from one source never
+// hold up another, and those from many hold up people at their usual tablets not
+// at all, and at a new one for half a minute at most. What a guesser can do is
+// hold up logins at the source that they share with them, up to five minutes
+// each; behind a proxy the web must therefore be told the true address. A try
+// during a pause is refused without being checked or counted. Counts are
 // forgotten 15 minutes after the last failure.
 //
-// An address is an IPv4 address or an IPv6 /64 network, which is what one
-// subscriber commonly has.
+// A source is an enrolled device, else an address: an IPv4 address or an IPv6 /64
+// network, which is what one subscriber commonly has. So tablets behind one
+// address do not hold up one another, nor does somebody beside them who has none.
 type Throttle struct {
 	mu    sync.Mutex
 	now   func() time.Time
 	pairs counts[pairKey]
-	addrs counts[netip.Addr]
+	addrs counts[Source]
 	names counts[loginKey]
 	known lru[pairKey, struct{}]
 }
@@ -46,7 +49,7 @@ type (
 	loginKey [sha256.Size]byte // of a fixed size however long the login that was sent
 	pairKey  struct {
 		login loginKey
-		addr  netip.Addr
+		from  Source
 	}
 )
 
@@ -61,7 +64,7 @@ func NewThrottle(now func() time.Time) *Throttle {
 	return &Throttle{
 		now:   now,
 		pairs: newCounts[pairKey](5, 5*time.Minute),
-		addrs: newCounts[netip.Addr](30, 30*time.Second),
+		addrs: newCounts[Source](30, 30*time.Second),
 		names: newCounts[loginKey](20, 30*time.Second),
 		known: newLRU[pairKey, struct{}](throttleEntries),
 	}
@@ -74,16 +77,28 @@ type Attempt struct {
 	pair pairKey
 }
 
-// Try asks to try a login from an address. A pause above zero means no: come
-// back after it.
-func (t *Throttle) Try(login string, addr netip.Addr) (a *Attempt, pause time.Duration) {
-	p := pairKey{sha256.Sum256([]byte(plant.CleanLogin(login))), network(addr)}
+// Source is where a try comes from; see AddressSource and DeviceSource.
+type Source struct {
+	device uuid.UUID
+	addr   netip.Addr
+}
+
+// AddressSource is a try from an address that is no enrolled device.
+func AddressSource(a netip.Addr) Source { return Source{addr: network(a)} }
+
+// DeviceSource is a try on an enrolled device, wherever it stands in the network.
+func DeviceSource(id uuid.UUID) Source { return Source{device: id} }
+
+// Try asks to try a login from a source. A pause above zero means no: come back
+// after it.
+func (t *Throttle) Try(login string, from Source) (a *Attempt, pause time.Duration) {
+	p := pairKey{sha256.Sum256([]byte(plant.CleanLogin(login))), from}
 	t.mu.Lock()
 	defer t.mu.Unlock()
 	now := t.now()
 	pause = t.pairs.pause(p, now)
 	if _, known := t.known.get(p); !known {
-		pause = max(pause, t.addrs.pause(p.addr, now))
+		pause = max(pause, t.addrs.pause(p.from, now))
 		if c, ok := t.names.entries.get(p.login); ok && len(c.from) >= manyAddresses {
 			pause = max(pause, t.names.pause(p.login, now))
 		}
@@ -92,24 +107,24 @@ func (t *Throttle) Try(login string, addr netip.Addr) (a *Attempt, pause time.Du
 		return nil, pause
 	}
 	t.pairs.add(p, now)
-	t.addrs.add(p.addr, now)
+	t.addrs.add(p.from, now)
 	if c := t.names.add(p.login, now); len(c.from) < manyAddresses {
 		if c.from == nil {
-			c.from = make(map[netip.Addr]struct{}, manyAddresses)
+			c.from = make(map[Source]struct{}, manyAddresses)
 		}
-		c.from[p.addr] = struct{}{}
+		c.from[p.from] = struct{}{}
 	}
 	return &Attempt{t, p}, 0
 }
 
 // Succeeded takes the try back and forgets the failures of this login from this
-// address. Those of the address stay: otherwise somebody with an account of
+// source. Those of the source stay: otherwise somebody with an account of
 // their own could clear it between guesses.
 func (a *Attempt) Succeeded() {
 	a.t.mu.Lock()
 	defer a.t.mu.Unlock()
 	a.t.pairs.entries.remove(a.pair)
-	a.t.addrs.takeBack(a.pair.addr)
+	a.t.addrs.takeBack(a.pair.from)
 	a.t.names.takeBack(a.pair.login)
 	a.t.known.put(a.pair, struct{}{})
 }
@@ -119,7 +134,7 @@ func (a *Attempt) Void() {
 	a.t.mu.Lock()
 	defer a.t.mu.Unlock()
 	a.t.pairs.takeBack(a.pair)
-	a.t.addrs.takeBack(a.pair.addr)
+	a.t.addrs.takeBack(a.pair.from)
 	a.t.names.takeBack(a.pair.login)
 }
 
@@ -143,7 +158,7 @@ type counts[K comparable] struct {
 type count struct {
 	failures int
 	last     time.Time
-	from     map[netip.Addr]struct{} // for logins: up to manyAddresses of those that tried
+	from     map[Source]struct{} // for logins: up to manyAddresses of the sources that tried
 }
 
 func newCounts[K comparable](free int, longest time.Duration) counts[K] {

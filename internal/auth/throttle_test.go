@@ -32,21 +32,21 @@ func TestPauseForOneLoginFromOneAddressDoubles(t *testing.T) {
 	c := newClock()
 	th := NewThrottle(c.now)
 	for i := range 5 {
-		if _, p := th.Try("anna", tablet); p != 0 {
+		if _, p := th.Try("anna", AddressSource(tablet)); p != 0 {
 			t.Fatalf("free try %d has to wait %v", i+1, p)
 		}
 	}
 	for _, want := range []time.Duration{1, 2, 4, 8, 16, 32, 64, 128, 256, 300, 300} {
 		want *= time.Second
-		if _, p := th.Try(" ANNA ", tablet); p != want {
+		if _, p := th.Try(" ANNA ", AddressSource(tablet)); p != want {
 			t.Fatalf("pause = %v; want %v", p, want)
 		}
 		c.add(want - time.Millisecond)
-		if _, p := th.Try("anna", tablet); p != time.Millisecond {
+		if _, p := th.Try("anna", AddressSource(tablet)); p != time.Millisecond {
 			t.Fatalf("just before the end of %v: pause = %v", want, p)
 		}
 		c.add(time.Millisecond)
-		if _, p := th.Try("anna", tablet); p != 0 {
+		if _, p := th.Try("anna", AddressSource(tablet)); p != 0 {
 			t.Fatalf("after %v: pause = %v", want, p)
 		}
 	}
@@ -58,11 +58,11 @@ func TestSuccessForgetsTheFailuresOfThatLoginThere(t *testing.T) {
 	th := NewThrottle(c.now)
 	for range 100 { // somebody who mistypes four times out of five is never held up
 		for range 4 {
-			if _, p := th.Try("anna", tablet); p != 0 {
+			if _, p := th.Try("anna", AddressSource(tablet)); p != 0 {
 				t.Fatalf("pause %v", p)
 			}
 		}
-		a, p := th.Try("anna", tablet)
+		a, p := th.Try("anna", AddressSource(tablet))
 		if p != 0 {
 			t.Fatalf("pause %v", p)
 		}
@@ -76,11 +76,11 @@ func TestFailuresAreForgottenAfterAWhile(t *testing.T) {
 	c := newClock()
 	th := NewThrottle(c.now)
 	for range 6 {
-		th.Try("anna", tablet)
+		th.Try("anna", AddressSource(tablet))
 	}
 	c.add(throttleForget)
 	for i := range 5 {
-		if _, p := th.Try("anna", tablet); p != 0 {
+		if _, p := th.Try("anna", AddressSource(tablet)); p != 0 {
 			t.Errorf("try %d: pause %v", i+1, p)
 		}
 	}
@@ -96,14 +96,14 @@ func TestOneAddressCannotLockOutThePlant(t *testing.T) {
 	for minute := range 60 {
 		for range 60 {
 			for login := range 20 {
-				if _, p := th.Try(fmt.Sprint("operator", login), intruder); p == 0 {
+				if _, p := th.Try(fmt.Sprint("operator", login), AddressSource(intruder)); p == 0 {
 					checked++
 				}
 			}
 			c.add(time.Second)
 		}
 		login := fmt.Sprint("operator", minute%20)
-		a, p := th.Try(login, addr(minute)) // an address it has never used
+		a, p := th.Try(login, AddressSource(addr(minute))) // an address it has never used
 		if p != 0 {
 			t.Fatalf("minute %d: %s has to wait %v at another address", minute, login, p)
 		}
@@ -120,16 +120,16 @@ func TestManyAddressesCannotLockOutUsualTablets(t *testing.T) {
 	t.Parallel()
 	c := newClock()
 	th := NewThrottle(c.now)
-	a, _ := th.Try("anna", tablet)
+	a, _ := th.Try("anna", AddressSource(tablet))
 	a.Succeeded()
 	checked := 0
 	for second := range 1000 {
-		if _, p := th.Try("anna", addr(second)); p == 0 {
+		if _, p := th.Try("anna", AddressSource(addr(second))); p == 0 {
 			checked++
 		}
 		c.add(time.Second)
 		if second%10 == 0 {
-			a, p := th.Try("anna", tablet)
+			a, p := th.Try("anna", AddressSource(tablet))
 			if p != 0 {
 				t.Fatalf("second %d: the usual tablet has to wait %v", second, p)
 			}
@@ -139,10 +139,10 @@ func TestManyAddressesCannotLockOutUsualTablets(t *testing.T) {
 	if checked > 20+10+1000/30 {
 		t.Errorf("%d guesses in 1000 s", checked)
 	}
-	if _, p := th.Try("anna", netip.MustParseAddr("203.0.113.5")); p > 30*time.Second {
+	if _, p := th.Try("anna", AddressSource(netip.MustParseAddr("203.0.113.5"))); p > 30*time.Second {
 		t.Errorf("a new tablet has to wait %v; want 30 s at most", p)
 	}
-	if _, p := th.Try("bert", netip.MustParseAddr("203.0.113.5")); p != 0 {
+	if _, p := th.Try("bert", AddressSource(netip.MustParseAddr("203.0.113.5"))); p != 0 {
 		t.Errorf("another login has to wait %v", p)
 	}
 }
@@ -154,7 +154,7 @@ func TestTriesAtOnceDoNotSlipThrough(t *testing.T) {
 	var wg sync.WaitGroup
 	for range 200 {
 		wg.Go(func() {
-			if _, p := th.Try("anna", tablet); p == 0 {
+			if _, p := th.Try("anna", AddressSource(tablet)); p == 0 {
 				through.Add(1)
 			}
 		})
@@ -169,7 +169,7 @@ func TestVoidedTriesDoNotCount(t *testing.T) {
 	t.Parallel()
 	th := NewThrottle(newClock().now)
 	for i := range 100 {
-		a, p := th.Try("anna", tablet)
+		a, p := th.Try("anna", AddressSource(tablet))
 		if p != 0 {
 			t.Fatalf("try %d: pause %v", i, p)
 		}
@@ -201,7 +201,7 @@ func TestCountsAreBounded(t *testing.T) {
 	c := newClock()
 	th := NewThrottle(c.now)
 	for i := range 3 * throttleEntries {
-		a, p := th.Try(fmt.Sprint("login", i), netip.AddrFrom4([4]byte{10, byte(i >> 16), byte(i >> 8), byte(i)}))
+		a, p := th.Try(fmt.Sprint("login", i), AddressSource(netip.AddrFrom4([4]byte{10, byte(i >> 16), byte(i >> 8), byte(i)})))
 		if p != 0 {
 			t.Fatalf("try %d: pause %v", i, p)
 		}
@@ -218,7 +218,7 @@ func TestCountsAreBounded(t *testing.T) {
 		}
 	}
 	// What was used last is what is kept.
-	if _, ok := th.addrs.entries.get(netip.AddrFrom4([4]byte{10, 0, byte((3*throttleEntries - 1) >> 8), byte((3*throttleEntries - 1) & 255)})); !ok {
+	if _, ok := th.addrs.entries.get(AddressSource(netip.AddrFrom4([4]byte{10, 0, byte((3*throttleEntries - 1) >> 8), byte((3*throttleEntries - 1) & 255)}))); !ok {
 		t.Error("the newest count was forgotten")
 	}
 }

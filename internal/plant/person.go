@@ -2,6 +2,7 @@ package plant
 
 import (
 	"strings"
+	"time"
 
 	"github.com/google/uuid"
 )
@@ -40,6 +41,26 @@ type Person struct {
 	Name   string // what is printed, such as "Operator 1"
 	Roles  Roles
 	Active bool
+
+	Badge         string    // what the scanner types; "" when there is none
+	HasSecret     bool      // may sign in by login and secret, and sign records
+	HasPIN        bool      // may sign in by badge and PIN on an enrolled tablet
+	ErasedAt      time.Time // when the name was erased; zero while it is there
+	SessionsSince time.Time // sessions that began before are over
+}
+
+// AtTablet is the person as a PIN lets them in. A PIN is short, so it opens the work at
+// the station and what a supervisor does there, and nothing that sets limits or manages;
+// that takes the secret.
+func (p Person) AtTablet() Person {
+	var kept Roles
+	for _, r := range p.Roles {
+		if r == Operator || r == Supervisor {
+			kept = append(kept, r)
+		}
+	}
+	p.Roles = kept
+	return p
 }
 
 // Action is something a person may or may not do. Pages and handlers ask for
@@ -85,3 +106,32 @@ func (p Person) May(a Action) bool {
 
 // CleanLogin brings a login into the form in which it is stored.
 func CleanLogin(s string) string { return strings.ToLower(strings.TrimSpace(s)) }
+
+// MaxBadge is the most characters that a badge may hold.
+const MaxBadge = 64
+
+// CleanBadge brings what a scanner or a person typed into the form in which badges are
+// kept. Scanners differ in case and in what they put around it.
+func CleanBadge(s string) string {
+	return strings.ToUpper(strings.Join(strings.Fields(CleanText(s)), ""))
+}
+
+// CleanRoles keeps each known role once, in the order of AllRoles, and refuses others
+// and none at all.
+func CleanRoles(rs Roles) (Roles, error) {
+	var out Roles
+	for _, r := range AllRoles {
+		if rs.Has(r) {
+			out = append(out, r)
+		}
+	}
+	for _, r := range rs {
+		if !out.Has(r) {
+			return nil, Invalidf("roles", "There is no such role.")
+		}
+	}
+	if len(out) == 0 {
+		return nil, Invalidf("roles", "A person needs at least one role.")
+	}
+	return out, nil
+}

@@ -2,10 +2,10 @@ package store
 
 import (
 	"context"
-	"crypto/rand"
 	"crypto/sha256"
 	"encoding/hex"
 	"fmt"
+	"time"
 
 	"github.com/google/uuid"
 	"github.com/jackc/pgx/v5"
@@ -14,19 +14,22 @@ import (
 	"holdfast/internal/plant/ledger"
 )
 
-const selectPerson = `select id, login, name, roles, active, secret from person`
+const selectPerson = `select id, login, name, roles, active, secret, coalesce(badge, ''), pin, erased_at, sessions_since from person`
 
 type personRow struct {
 	plant.Person
-	secret string
+	secret, pin string
 }
 
 func scanPerson(r pgx.CollectableRow) (p personRow, err error) {
 	var roles []string
-	err = r.Scan(&p.ID, &p.Login, &p.Name, &roles, &p.Active, &p.secret)
+	var erased, since *time.Time
+	err = r.Scan(&p.ID, &p.Login, &p.Name, &roles, &p.Active, &p.secret, &p.Badge, &p.pin, &erased, &since)
 	for _, role := range roles {
 		p.Roles = append(p.Roles, plant.Role(role))
 	}
+	p.HasSecret, p.HasPIN = p.secret != "", p.Badge != "" && p.pin != ""
+	p.ErasedAt, p.SessionsSince = orZero(erased), orZero(since)
 	return p, err
 }
 
@@ -43,10 +46,18 @@ func (s *Store) Credential(ctx context.Context, login string) (plant.Person, str
 	return p.Person, p.secret, err
 }
 
-// Rehash replaces the hash of a secret by one of the same secret at another cost. When
+// CredentialByBadge reads a person by their badge, with the hash of the PIN. Somebody who
+// does not exist is NotFound.
+func (s *Store) CredentialByBadge(ctx context.Context, badge string) (plant.Person, string, error) {
+	p, err := s.person(ctx, ` where badge = $1 and plant_id = $2`, plant.CleanBadge(badge), s.plant())
+	return p.Person, p.pin, err
+}
+
+// Rehash replaces the hash of a secret or a PIN by one of the same at another cost. When
 // the secret was changed meanwhile, nothing happens.
 func (s *Store) Rehash(ctx context.Context, id uuid.UUID, old, fresh string) error {
-	if _, err := s.pool.Exec(ctx, `update person set secret = $3 where id = $1 and secret = $2`, id, old, fresh); err != nil {
+	if _, err := s.pool.Exec(ctx, `update person set secret = case when secret = $2 then $3 else secret end, pin = case when pin = $2 then $3 else pin end
+		where id = $1 and (secret = $2 or pin = $2)`, id, old, fresh); err != nil {
 		return fmt.Errorf("store a new hash: %w", err)
 	}
 	return nil
@@ -76,56 +87,15 @@ func (s *Store) People(ctx context.Context) ([]plant.Person, error) {
 	})
 }
 
-// AddPerson adds somebody who may sign in. secretHash is never entered in the ledger,
-// nor is the name.
-func (s *Store) AddPerson(ctx context.Context, p plant.Person, secretHash string, by uuid.UUID) error {
-	if len(p.Roles) == 0 {
-		return plant.Invalidf("roles", "A person needs at least one role.")
-	}
-	roles := make([]string, len(p.Roles))
-	for i, r := range p.Roles {
-		roles[i] = string(r)
-	}
-	p.Login = plant.CleanLogin(p.Login)
-	if p.Login == "" || p.Name == "" {
-		return plant.Invalidf("login", "A person needs a sign-in name and a printed name.")
-	}
-	salt := make([]byte, 16)
-	rand.Read(salt)
-	err := s.arrange(ctx, "person added", p.ID, by, map[string]any{"roles": roles}, func(tx pgx.Tx) error {
-		_, err := tx.Exec(ctx, `insert into person (id, plant_id, login, name, name_salt, roles, secret, active, created_at)
-			values ($1, $2, $3, $4, $5, $6, $7, $8, $9)`,
-			p.ID, s.plant(), p.Login, p.Name, salt, roles, secretHash, p.Active, s.now())
-		if violates(err, "person_login_once") {
-			return plant.Conflictf("login", "Somebody signs in under this name already.").Because(err)
-		}
-		return err
-	})
+// PeopleByID reads many people; those that do not exist are left out.
+func (s *Store) PeopleByID(ctx context.Context, ids []uuid.UUID) ([]plant.Person, error) {
+	rows, err := s.pool.Query(ctx, selectPerson+` where plant_id = $1 and id = any($2)`, s.plant(), ids)
 	if err != nil {
-		return fmt.Errorf("add person: %w", err)
+		return nil, fmt.Errorf("read people: %w", err)
 	}
-	return nil
-}
-
-// SetSecret replaces the hash of a person's secret.
-func (s *Store) SetSecret(ctx context.Context, id uuid.UUID, secretHash string, by uuid.UUID) error {
-	return s.arrange(ctx, "secret changed", id, by, nil, func(tx pgx.Tx) error {
-		tag, err := tx.Exec(ctx, `update person set secret = $2 where id = $1 and plant_id = $3`, id, secretHash, s.plant())
-		if err == nil && tag.RowsAffected() == 0 {
-			return plant.NotFoundf("", "There is no such person.")
-		}
-		return err
-	})
-}
-
-// SetActive lets a person sign in or keeps them out.
-func (s *Store) SetActive(ctx context.Context, id uuid.UUID, active bool, by uuid.UUID) error {
-	return s.arrange(ctx, "person changed", id, by, map[string]any{"active": active}, func(tx pgx.Tx) error {
-		tag, err := tx.Exec(ctx, `update person set active = $2 where id = $1 and plant_id = $3`, id, active, s.plant())
-		if err == nil && tag.RowsAffected() == 0 {
-			return plant.NotFoundf("", "There is no such person.")
-		}
-		return err
+	return pgx.CollectRows(rows, func(r pgx.CollectableRow) (plant.Person, error) {
+		p, err := scanPerson(r)
+		return p.Person, err
 	})
 }
 

@@ -71,6 +71,10 @@ func (b *Board) toChart(w http.ResponseWriter, r *http.Request) error {
 
 func lead(w http.ResponseWriter, r *http.Request, first plant.Action) error {
 	f := ui.FrameOf(r)
+	if f.OnWall() {
+		ui.Redirect(w, r, ui.DeviceHome(f.Device)) // nobody stands there to work at it
+		return nil
+	}
 	var ids [3]uuid.UUID
 	for i, name := range [...]string{"station", "characteristic", "matter"} {
 		text := chi.URLParam(r, name)

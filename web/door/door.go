@@ -6,6 +6,7 @@ import (
 	"log/slog"
 	"net/http"
 	"net/netip"
+	"net/url"
 
 	"github.com/go-chi/chi/v5"
 
@@ -35,6 +36,10 @@ type Handler struct {
 	// Demo lists who may be let in without a secret. It is nil unless the program
 	// was started as a demonstration.
 	Demo func(ctx context.Context) ([]plant.Person, error)
+	// Tablet is what devices need; nil where there are none.
+	Tablet *Tablet
+	// First makes the first person; nil when there is somebody.
+	First *First
 }
 
 // Routes adds the door's addresses to a router that loads sessions.
@@ -44,6 +49,16 @@ func (h *Handler) Routes(r chi.Router) {
 	r.Post(ui.SignInAddress, ui.Handle(h.Log, h.signIn))
 	r.Post(demoAddress, ui.Handle(h.Log, h.signInDemo))
 	r.Post(ui.SignOutAddress, ui.Handle(h.Log, h.signOut))
+	if h.Tablet != nil {
+		r.Get(enrolAddress, ui.Handle(h.Log, h.showEnrol))
+		r.Post(enrolAddress, ui.Handle(h.Log, h.enrol))
+		r.Post(badgeAddress, ui.Handle(h.Log, h.signInByBadge))
+		r.With(ui.RequirePerson).Post(ui.StillHereAddress, stillHere)
+	}
+	if h.First != nil {
+		r.Get(firstAddress+"/{token}", ui.Handle(h.Log, h.showFirst))
+		r.Post(firstAddress+"/{token}", ui.Handle(h.Log, h.makeFirst))
+	}
 }
 
 const demoAddress = ui.SignInAddress + "/demo"
@@ -55,14 +70,19 @@ const maxLogin = 100
 func (h *Handler) home(w http.ResponseWriter, r *http.Request) error {
 	f := ui.FrameOf(r)
 	if !f.SignedIn {
-		ui.Redirect(w, r, ui.SignInAddress)
+		ui.Redirect(w, r, ui.DeviceHome(f.Device))
 		return nil
 	}
-	ui.Redirect(w, r, ui.Home(f.Person))
+	ui.Redirect(w, r, landing(r, f.Person, "/"))
 	return nil
 }
 
 func (h *Handler) show(w http.ResponseWriter, r *http.Request) error {
+	if h.Tablet != nil && ui.FrameOf(r).OnTablet() && !r.URL.Query().Has("password") {
+		return h.renderTablet(w, r, http.StatusOK, tabletSignIn{
+			To: ui.LocalPath(r.URL.Query().Get("to")), Locked: auth.TimedOut(r.Context()) || r.URL.Query().Has("locked"),
+		})
+	}
 	return h.render(w, r, http.StatusOK, signIn{
 		To:       ui.LocalPath(r.URL.Query().Get("to")),
 		TimedOut: auth.TimedOut(r.Context()),
@@ -155,29 +175,52 @@ func landing(r *http.Request, p plant.Person, to string) string {
 		return to
 	}
 	home := ui.Home(p)
+	if f := ui.FrameOf(r); f.OnTablet() && p.May(plant.TakeRounds) {
+		return "/station/" + f.Device.Station.String()
+	}
 	if last, ok := ui.LastStation(r); ok && home == "/station" {
 		return home + "/" + last.String()
 	}
 	return home
 }
 
+// signOut ends the session. On a tablet the next person goes on where this one was.
 func (h *Handler) signOut(w http.ResponseWriter, r *http.Request) error {
+	if err := ui.ParseForm(w, r); err != nil {
+		return err
+	}
 	if err := h.Sessions.SignOut(r.Context()); err != nil {
 		return err
 	}
-	ui.Redirect(w, r, ui.SignInAddress)
+	to := ui.SignInAddress
+	if ui.FrameOf(r).OnTablet() {
+		q := url.Values{"to": {ui.LocalPath(r.PostForm.Get("to"))}}
+		if r.PostForm.Get("why") == "idle" {
+			q.Set("locked", "yes")
+		}
+		to += "?" + q.Encode()
+	}
+	ui.Redirect(w, r, to)
 	return nil
 }
 
 func (h *Handler) render(w http.ResponseWriter, r *http.Request, status int, v signIn) error {
-	people, err := h.demoPeople(r)
-	if err != nil {
-		return err
-	}
 	shell := ui.ShellFor(r, ui.Door, ui.FrameOf(r).Words.T("door.title"))
 	shell.Path = ui.SignInPath(v.To)
-	for _, p := range people {
-		v.Demo = append(v.Demo, demoPerson{ID: p.ID.String(), Name: p.Name, Does: does(shell.Words, p)})
+	var err error
+	if v.Demo, err = h.demoButtons(r); err != nil {
+		return err
 	}
+	v.Revoked = shell.Revoked
 	return ui.Render(w, r, status, page(shell, v))
+}
+
+// demoButtons are the people to step in as.
+func (h *Handler) demoButtons(r *http.Request) ([]demoPerson, error) {
+	people, err := h.demoPeople(r)
+	var out []demoPerson
+	for _, p := range people {
+		out = append(out, demoPerson{ID: p.ID.String(), Name: p.Name, Does: does(ui.FrameOf(r).Words, p)})
+	}
+	return out, err
 }

@@ -12,6 +12,7 @@ type signIn struct {
 	PasswordProblem string
 	To              string // local path to go on to
 	TimedOut        bool
+	Revoked         bool // this browser was a device once
 	Demo            []demoPerson
 }
 

@@ -15,8 +15,10 @@ import (
 type Frame struct {
 	Person    plant.Person // the zero value when nobody is signed in
 	SignedIn  bool
-	Session   string     // names the session to the live hub; never the secret itself
-	Addr      netip.Addr // of the browser, or of the proxy nearest to us that is not trusted
+	Session   string       // names the session to the live hub; never the secret itself
+	Device    plant.Device // that the browser is enrolled as; the zero value when it is none
+	Revoked   bool         // the browser was enrolled once and is no longer let in
+	Addr      netip.Addr   // of the browser, or of the proxy nearest to us that is not trusted
 	Plant     plant.Plant
 	Now       time.Time
 	Theme     Theme
@@ -49,6 +51,14 @@ func FrameOf(r *http.Request) Frame {
 		f.Theme = ThemeOf(r)
 	}
 	return f
+}
+
+// OnTablet reports whether the browser is an enrolled tablet.
+func (f Frame) OnTablet() bool { return f.Device.Active() && f.Device.Kind == plant.Tablet }
+
+// OnWall reports whether the browser is a wall screen that nobody is signed in at.
+func (f Frame) OnWall() bool {
+	return !f.SignedIn && f.Device.Active() && f.Device.Kind == plant.Wall
 }
 
 // Format is how times and numbers are written in this request.

@@ -163,7 +163,7 @@ func reference() string {
 func answer(w http.ResponseWriter, r *http.Request, p problem) {
 	var err error
 	switch {
-	case wantsJSON(r):
+	case WantsJSON(r):
 		err = RenderJSON(w, p.Status, map[string]problem{"error": p})
 	case fetched(r):
 		err = Render(w, r, p.Status, Message(p.Message))
@@ -193,7 +193,8 @@ func backFrom(r *http.Request) string {
 // page.
 func fetched(r *http.Request) bool { return r.Header.Get("Sec-Fetch-Dest") == "empty" }
 
-func wantsJSON(r *http.Request) bool {
+// WantsJSON reports whether a program asks, which wants JSON and no page.
+func WantsJSON(r *http.Request) bool {
 	accept := r.Header.Get("Accept")
 	return strings.Contains(accept, "application/json") && !strings.Contains(accept, "text/html")
 }

@@ -22,6 +22,17 @@ func Home(p plant.Person) string {
 	return "/admin"
 }
 
+// DeviceHome is what a device shows when nobody is signed in at it.
+func DeviceHome(d plant.Device) string {
+	switch {
+	case d.Kind == plant.Wall && d.Line != uuid.Nil:
+		return "/board?line=" + d.Line.String()
+	case d.Kind == plant.Wall:
+		return "/board"
+	}
+	return SignInAddress
+}
+
 const stationCookie = "station"
 
 // RememberStation keeps in the browser which station it stands at, so that whoever

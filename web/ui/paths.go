@@ -8,9 +8,10 @@ import (
 
 // Addresses that more than one package names.
 const (
-	SignInAddress  = "/sign-in"
-	SignOutAddress = "/sign-out"
-	ThemeAddress   = "/theme"
+	SignInAddress    = "/sign-in"
+	SignOutAddress   = "/sign-out"
+	StillHereAddress = "/still-here" // tells that somebody is at work on a page that sends nothing else
+	ThemeAddress     = "/theme"
 )
 
 // maxPath is the longest path that is gone back to, in bytes.

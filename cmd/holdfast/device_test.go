@@ -1,0 +1,102 @@
+package main
+
+import (
+	"context"
+	"encoding/json"
+	"net/http"
+	"net/url"
+	"strings"
+	"testing"
+
+	"github.com/google/uuid"
+
+	"holdfast/internal/auth"
+	"holdfast/internal/plant"
+)
+
+const pin = "274913"
+
+// enrol lets a device in as a program would: a code, and the token that it is worth.
+func (r *running) enrol(t testing.TB, d plant.Device) (plant.Device, string) {
+	t.Helper()
+	code, err := r.MakeDeviceCode(context.Background(), d, r.Administrator.ID)
+	if err != nil {
+		t.Fatal(err)
+	}
+	v := r.visit(t, "")
+	res, body := v.postJSON("/enrol", url.Values{"code": {code.Code}})
+	if res.StatusCode != http.StatusOK {
+		t.Fatalf("enrolling %s: %s\n%s", d.Name, res.Status, body)
+	}
+	var told struct{ Device, Kind, Name, Token string }
+	if err := json.Unmarshal([]byte(body), &told); err != nil {
+		t.Fatal(err)
+	}
+	got, err := r.Device(context.Background(), uuid.MustParse(told.Device))
+	if err != nil || string(got.Kind) != told.Kind || got.Name != d.Name {
+		t.Fatalf("enrolled %+v, %v; told %+v", got, err, told)
+	}
+	return got, told.Token
+}
+
+// visitOn is a browser that becomes a tablet or a wall screen by typing the code.
+func (r *running) visitOn(t testing.TB, d plant.Device) (*visitor, plant.Device) {
+	t.Helper()
+	code, err := r.MakeDeviceCode(context.Background(), d, r.Administrator.ID)
+	if err != nil {
+		t.Fatal(err)
+	}
+	v := r.visit(t, "")
+	if res, body := v.post("/enrol", url.Values{"code": {code.Code[:4] + " " + code.Code[4:]}}); res.StatusCode != http.StatusSeeOther {
+		t.Fatalf("enrolling %s: %s\n%s", d.Name, res.Status, body)
+	}
+	all, err := r.Devices(context.Background())
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, one := range all {
+		if one.Name == d.Name {
+			return v, one
+		}
+	}
+	t.Fatalf("%s is not in the list", d.Name)
+	return nil, plant.Device{}
+}
+
+func (r *running) person(t testing.TB, login string, roles ...plant.Role) plant.Person {
+	t.Helper()
+	p := plant.Person{ID: uuid.Must(uuid.NewV7()), Login: login, Name: "Person " + login, Roles: roles, Active: true}
+	if err := r.AddPerson(context.Background(), p, "", uuid.Nil); err != nil {
+		t.Fatal(err)
+	}
+	return p
+}
+
+// badge gives somebody a badge with the PIN of all tests.
+func (r *running) badge(t testing.TB, person uuid.UUID, badge string) {
+	t.Helper()
+	hasher, err := auth.NewHasher(cheap, 1)
+	if err != nil {
+		t.Fatal(err)
+	}
+	hash, err := hasher.Hash(context.Background(), pin)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := r.SetBadge(context.Background(), person, badge, hash, uuid.Nil); err != nil {
+		t.Fatal(err)
+	}
+}
+
+// postJSON sends a form as a program that wants JSON.
+func (v *visitor) postJSON(path string, form url.Values) (*http.Response, string) {
+	v.t.Helper()
+	return v.send(http.MethodPost, path, "application/x-www-form-urlencoded", "application/json", strings.NewReader(form.Encode()))
+}
+
+func (v *visitor) signInByBadge(badge, pin string) {
+	v.t.Helper()
+	if res, body := v.post("/sign-in/badge", url.Values{"badge": {badge}, "pin": {pin}}); res.StatusCode != http.StatusSeeOther {
+		v.t.Fatalf("signing in with badge %s: %s\n%s", badge, res.Status, body)
+	}
+}
