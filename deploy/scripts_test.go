@@ -183,8 +183,19 @@ func TestBackupAndRestore(t *testing.T) {
 	// The address form, with a password that must be decoded and not be seen.
 	withPassword := as(t, s.URL(), "keeper", "p@ss:w/ord %")
 	other := t.TempDir()
-	if out, err := script(t, []string{"DATABASE_OWNER_URL=" + withPassword}, "./backup", other); err != nil {
+	// Where the program is found, what it says of the heads goes beside the backup. It gets the
+	// address without its password, as everything else does.
+	program := filepath.Join(t.TempDir(), "program")
+	if err := os.WriteFile(program, []byte("#!/bin/sh\necho \"$* $DATABASE_URL\"\n"), 0o755); err != nil {
+		t.Fatal(err)
+	}
+	out, err = script(t, []string{"DATABASE_OWNER_URL=" + withPassword, "HOLDFAST=" + program}, "./backup", other)
+	if err != nil {
 		t.Errorf("%v: %s", err, out)
+	}
+	heads, err := os.ReadFile(strings.TrimSpace(out) + ".heads")
+	if err != nil || !strings.HasPrefix(string(heads), "audit --heads postgres://keeper@") {
+		t.Errorf("heads beside the backup: %q, %v", heads, err)
 	}
 
 	must(t, s.URL(), "delete from fact where id > 10", "insert into fact values (2000, 'later')")

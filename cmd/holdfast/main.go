@@ -124,47 +124,6 @@ func (c *migrateCmd) Run(ctx context.Context, log *slog.Logger) error {
 	})
 }
 
-type auditCmd struct {
-	database
-	Judgements bool `help:"Also judge the whole record anew and compare with what is stored."`
-}
-
-func (c *auditCmd) Run(ctx context.Context, log *slog.Logger) error {
-	return c.withStore(ctx, log, func(st *store.Store) error {
-		n, err := st.VerifyLedger(ctx)
-		if err != nil {
-			return fmt.Errorf("after %d entries that hold: %w", n, err)
-		}
-		heads, err := st.Heads(ctx)
-		if err != nil {
-			return err
-		}
-		fmt.Printf("%d entries in %d chains hold.\nRoot over all heads: %x\n", n, len(heads), rootOf(heads))
-		fmt.Println("Compare it with a root that was kept outside this machine: a chain shows tampering only against that.")
-		differ, err := st.CheckRecord(ctx)
-		if err != nil {
-			return err
-		}
-		said := "What is on record is what was sealed."
-		if c.Judgements {
-			subgroups, judged, err := st.CheckJudgements(ctx)
-			if err != nil {
-				return err
-			}
-			differ = append(differ, judged...)
-			said += fmt.Sprintf("\n%d subgroups judged anew give the judgements on record.", subgroups)
-		}
-		for _, d := range differ {
-			fmt.Printf("%s: %s\n", d.Characteristic, d.What)
-		}
-		if len(differ) > 0 {
-			return fmt.Errorf("the record differs in %d places from what was sealed or follows from it", len(differ))
-		}
-		fmt.Println(said)
-		return nil
-	})
-}
-
 // firstPlant makes a plant where the database holds none yet, so that people can be
 // added to it.
 func firstPlant(ctx context.Context, st *store.Store, name, zone string) error {

@@ -66,6 +66,31 @@ func (s *Store) Heads(ctx context.Context) (map[uuid.UUID]ledger.Head, error) {
 	return out, nil
 }
 
+// Missing lists the chains that do not contain these heads, in the order of their ids:
+// they were cut, or written anew from some entry on. A head of length zero is in every
+// chain.
+func (s *Store) Missing(ctx context.Context, kept map[uuid.UUID]ledger.Head) ([]uuid.UUID, error) {
+	var chains []uuid.UUID
+	var seqs []int64
+	var hashes [][]byte
+	for id, h := range kept {
+		if h.Seq > 0 {
+			chains, seqs, hashes = append(chains, id), append(seqs, h.Seq), append(hashes, h.Hash[:])
+		}
+	}
+	rows, err := s.pool.Query(ctx, `select k.chain from unnest($1::uuid[], $2::bigint[], $3::bytea[]) k (chain, seq, hash)
+		left join ledger e on e.chain = k.chain and e.seq = k.seq and e.hash = k.hash
+		where e.chain is null order by k.chain`, chains, seqs, hashes)
+	if err != nil {
+		return nil, fmt.Errorf("look for kept heads: %w", err)
+	}
+	missing, err := pgx.CollectRows(rows, pgx.RowTo[uuid.UUID])
+	if err != nil {
+		return nil, fmt.Errorf("look for kept heads: %w", err)
+	}
+	return missing, nil
+}
+
 // VerifyLedger walks every chain from its first entry to its head and returns how
 // many entries hold, or the first *ledger.Break.
 func (s *Store) VerifyLedger(ctx context.Context) (entries int64, err error) {

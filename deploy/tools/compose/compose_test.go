@@ -23,14 +23,14 @@ var secrets = map[string]string{
 	"HOLDFAST_APP_PASSWORD":   "secret-of-app",
 }
 
-func load(t *testing.T, env map[string]string, profiles ...string) (*types.Project, error) {
+func load(t *testing.T, env map[string]string) (*types.Project, error) {
 	t.Helper()
 	var pairs []string
 	for name, value := range env {
 		pairs = append(pairs, name+"="+value)
 	}
 	options, err := cli.NewProjectOptions([]string{filepath.Join(root, "docker-compose.yml")},
-		cli.WithEnv(pairs), cli.WithProfiles(profiles))
+		cli.WithEnv(pairs))
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -63,15 +63,7 @@ func TestServices(t *testing.T) {
 	if got := slices.Sorted(maps.Keys(p.Services)); !slices.Equal(got, []string{"postgres", "server"}) {
 		t.Errorf("services %q start by default", got)
 	}
-	withTLS, err := load(t, secrets, "tls")
-	if err != nil {
-		t.Fatal(err)
-	}
-	if got := slices.Sorted(maps.Keys(withTLS.Services)); !slices.Equal(got, []string{"postgres", "server", "tls"}) {
-		t.Errorf("services %q start with the profile tls", got)
-	}
-
-	postgres, server, tls := p.Services["postgres"], p.Services["server"], withTLS.Services["tls"]
+	postgres, server := p.Services["postgres"], p.Services["server"]
 	if !strings.HasPrefix(postgres.Image, "postgres:15") {
 		t.Errorf("database image is %s", postgres.Image)
 	}
@@ -83,13 +75,8 @@ func TestServices(t *testing.T) {
 			t.Errorf("%s: restart %q, privileged %v", name, s.Restart, s.Privileged)
 		}
 	}
-	for _, edge := range []struct {
-		from types.ServiceConfig
-		to   string
-	}{{server, "postgres"}, {tls, "server"}} {
-		if d, ok := edge.from.DependsOn[edge.to]; !ok || d.Condition != types.ServiceConditionHealthy || !d.Required {
-			t.Errorf("%s does not wait for a healthy %s", edge.from.Name, edge.to)
-		}
+	if d, ok := server.DependsOn["postgres"]; !ok || d.Condition != types.ServiceConditionHealthy || !d.Required {
+		t.Error("the server does not wait for a healthy database")
 	}
 	if len(postgres.Ports) > 0 {
 		t.Error("the database can be reached from outside")
@@ -98,8 +85,13 @@ func TestServices(t *testing.T) {
 		t.Error("the database is not on a network of its own")
 	}
 	for _, port := range server.Ports {
-		if port.HostIP != "127.0.0.1" || port.Target != 8080 {
-			t.Errorf("the server is published as %+v; want this machine only", port)
+		if port.Target != 8443 {
+			t.Errorf("the server is published as %+v; want its encrypted port", port)
+		}
+	}
+	for name, want := range map[string]string{"HOLDFAST_TLS": "auto", "HOLDFAST_TLS_DIR": "/state/tls", "HOLDFAST_HEALTH_URL": "https://localhost:8443"} {
+		if v := server.Environment[name]; v == nil || *v != want {
+			t.Errorf("%s is %v; want %s", name, v, want)
 		}
 	}
 	if !server.ReadOnly || !slices.Contains(server.CapDrop, "ALL") {
@@ -140,11 +132,11 @@ func TestServerUsesTwoRoles(t *testing.T) {
 
 func TestFilesAndVolumesExist(t *testing.T) {
 	t.Parallel()
-	p, err := load(t, secrets, "tls")
+	p, err := load(t, secrets)
 	if err != nil {
 		t.Fatal(err)
 	}
-	data := false
+	data, state := false, false
 	for _, s := range p.Services {
 		for _, v := range s.Volumes {
 			switch v.Type {
@@ -156,12 +148,13 @@ func TestFilesAndVolumesExist(t *testing.T) {
 				if _, ok := p.Volumes[v.Source]; !ok {
 					t.Errorf("%s uses volume %s, which is not declared", s.Name, v.Source)
 				}
+				state = state || s.Name == "server" && v.Target == "/state"
 				data = data || s.Name == "postgres" && v.Target == "/var/lib/postgresql/data"
 			}
 		}
 	}
-	if !data {
-		t.Error("the data are not on a volume")
+	if !data || !state {
+		t.Error("the data or the authority are not on a volume")
 	}
 	build := p.Services["server"].Build
 	if build == nil {
@@ -191,9 +184,11 @@ func TestImage(t *testing.T) {
 		"static program":       {build, `(?m)^RUN CGO_ENABLED=0 go build .*\./cmd/holdfast$`},
 		"nothing else inside":  {image, `^scratch\n`},
 		"unprivileged":         {image, `(?m)^USER [1-9][0-9]*:[1-9][0-9]*$`},
-		"serves":               {image, `(?m)^CMD \["serve", "--addr", "0\.0\.0\.0:8080"\]$`},
+		"serves":               {image, `(?m)^CMD \["serve", "--addr", "0\.0\.0\.0:8443"\]$`},
 		"asks for its health":  {image, `(?m)^HEALTHCHECK .*CMD \["/holdfast", "health"\]$`},
 		"the program itself":   {image, `(?m)^ENTRYPOINT \["/holdfast"\]$`},
+		"a folder of its own":  {image, `(?m)^COPY --from=build --chown=65532:65532 /out/state /state$`},
+		"encrypted by default": {image, `(?m)^ENV HOLDFAST_TLS=auto `},
 		"authorities for TLS":  {image, `/etc/ssl/certs/ca-certificates\.crt\n`},
 		"time zones of plants": {image, `(?m)^ENV ZONEINFO=/zoneinfo\.zip$`},
 	} {
