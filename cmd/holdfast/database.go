@@ -96,6 +96,14 @@ func asApp(ctx context.Context, owner string) (string, error) {
 	return u.String(), nil
 }
 
+// privateDir is the folder of the private cluster, "" when the database is elsewhere.
+func (d *database) privateDir() string {
+	if d.URL != "" {
+		return ""
+	}
+	return d.Data
+}
+
 func (d *database) with(ctx context.Context, log *slog.Logger, f func(reached) error) error {
 	r, done, err := d.open(ctx, log, false)
 	if err != nil {

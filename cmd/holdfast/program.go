@@ -38,6 +38,7 @@ type settings struct {
 	Cost        auth.Cost
 	Metrics     watching       // who may read the figures about this server
 	Messages    *outbox.Config // where messages go; nil: nowhere
+	DataDir     string         // of a private cluster; "" when the database is elsewhere
 	Log         *slog.Logger
 	Clock       func() time.Time
 }
@@ -55,6 +56,7 @@ type program struct {
 	listener net.Listener
 	server   *http.Server
 	metrics  *metrics.Metrics
+	started  time.Time
 	plant    atomic.Pointer[plant.Plant]
 
 	background context.CancelFunc
@@ -84,7 +86,7 @@ func newProgram(ctx context.Context, s settings) (*program, error) {
 	if s.Messages == nil {
 		s.Messages = &outbox.Config{}
 	}
-	p := &program{settings: s, metrics: metrics.New()}
+	p := &program{settings: s, metrics: metrics.New(), started: s.Clock()}
 	var err error
 	if p.store, err = store.Open(ctx, store.Options{URL: s.DatabaseURL, Clock: s.Clock, OnSave: p.metrics.Saved}); err != nil {
 		return nil, err
@@ -129,7 +131,7 @@ func (p *program) join(ctx context.Context) error {
 	if err != nil {
 		p.Log.Warn("the machine does not tell its name", "error", err)
 	}
-	p.admin = admin.New(admin.Deps{Log: p.Log, Machine: machine})
+	p.admin = admin.New(admin.Deps{Log: p.Log, Machine: machine, About: p.about})
 	cfg := web.Config{
 		Log: p.Log, Now: p.Clock, Plant: func() plant.Plant { return *p.plant.Load() },
 		Sessions: p.sessions, Checker: door, Hub: p.hub,

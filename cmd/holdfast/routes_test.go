@@ -98,6 +98,7 @@ var routeTable = []routeRow{
 	{"POST /theme", everybody, 303},
 	{"GET /live", watchers, 400}, // no upgrade was asked for
 	{"GET /admin/", managers, 200},
+	{"GET /admin/about", managers, 200},
 	{"GET /admin/qualification", managers, 200},
 	{"GET /admin/qualification.json", managers, 404}, // none was run
 	{"POST /admin/qualification", managers, 303},

@@ -56,7 +56,7 @@ func (c *serveCmd) Run(ctx context.Context, log *slog.Logger) error {
 		if err != nil {
 			return err
 		}
-		p, err := newProgram(ctx, settings{Addr: c.Addr, DatabaseURL: db.url, Hosts: c.Hosts, Transport: way, Metrics: watching, Messages: messages, Log: log})
+		p, err := newProgram(ctx, settings{Addr: c.Addr, DatabaseURL: db.url, Hosts: c.Hosts, Transport: way, Metrics: watching, Messages: messages, DataDir: c.privateDir(), Log: log})
 		if err != nil {
 			return err
 		}

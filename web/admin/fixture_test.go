@@ -103,7 +103,8 @@ func newSite(t testing.TB, run Runner) *site {
 		all = append(all, plant.Person{ID: uuid.New(), Login: string(r), Name: strings.ToUpper(string(r)[:1]) + string(r)[1:] + " 1", Roles: plant.Roles{r}, Active: true})
 	}
 	sessions := auth.NewSessions(auth.SessionOptions{Store: memstore.NewWithCleanupInterval(0), People: all, PlainHTTP: true, Log: log, Fail: web.SessionFault(log)})
-	s.admin = New(Deps{Log: slog.New(slog.NewTextHandler(s.log, nil)), Machine: "press-hall-1", Run: run})
+	s.admin = New(Deps{Log: slog.New(slog.NewTextHandler(s.log, nil)), Machine: "press-hall-1", Run: run,
+		About: func(context.Context) (Installation, error) { return Installation{}, nil }})
 	s.Server = httptest.NewServer(web.New(web.Config{Log: log, Now: func() time.Time { return noon }, Sessions: sessions, Checker: all, Hub: hub,
 		Plant: func() plant.Plant { return plant.Plant{Name: "Kestrel Row", Location: zone} }, Admin: s.admin}))
 	t.Cleanup(func() {

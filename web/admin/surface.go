@@ -18,12 +18,14 @@ type Deps struct {
 	Log     *slog.Logger
 	Machine string // the name of the machine that the program runs on, "" when it is not known
 	Run     Runner // qualify.Report when nil
+	About   About  // there is no page about the installation when nil
 }
 
 // Admin serves /admin. Close must be called.
 type Admin struct {
 	log           *slog.Logger
 	machine       string
+	about         About
 	qualification *qualification
 }
 
@@ -32,7 +34,7 @@ func New(d Deps) *Admin {
 	if d.Run == nil {
 		d.Run = qualify.Report
 	}
-	return &Admin{log: d.Log, machine: d.Machine, qualification: &qualification{run: d.Run, log: d.Log}}
+	return &Admin{log: d.Log, machine: d.Machine, about: d.About, qualification: &qualification{run: d.Run, log: d.Log}}
 }
 
 // Close ends a qualification that runs and waits for it; no other can be started.
@@ -50,6 +52,9 @@ func (a *Admin) Routes(r chi.Router) {
 	r.Get("/qualification", ui.Handle(a.log, a.show))
 	r.Post("/qualification", ui.Handle(a.log, a.qualify))
 	r.Get("/qualification.json", ui.Handle(a.log, a.download))
+	if a.about != nil {
+		r.Get("/about", ui.Handle(a.log, a.aboutPage))
+	}
 }
 
 func shellFor(r *http.Request, title string) ui.Shell {

@@ -1,0 +1,152 @@
+package admin
+
+import (
+	"context"
+	"net/http"
+	"time"
+
+	"holdfast/web/ui"
+)
+
+// aboutAddress is the page about this installation.
+const aboutAddress = home + "/about"
+
+// Installation is what the program knows of itself and of what it stands on. Zero values
+// stand for what is not known or not there.
+type Installation struct {
+	Version, Go, System string
+	Processors          int
+	Started             time.Time
+
+	Address     string
+	HTTPS       HTTPS
+	Fingerprint string // of the plant's own authority
+	Certificate time.Time
+
+	Postgres, Database string
+	Private            bool // the program runs its own server
+	Bytes              int64
+	Schema             int
+	Guarded, Durable   bool
+	Checksums          bool
+	Skew               time.Duration // of the database's clock against this machine's
+
+	Chains int
+	Root   string // over all heads, in hexadecimal digits
+
+	Disk, DiskFree int64 // of the data folder, in bytes; 0 where it is not on this machine
+
+	Saves, Refused, Failed uint64 // rounds since the start
+	Sockets                int64
+	Waiting, GivenUp       int // messages to the outside
+}
+
+// HTTPS is how browsers reach the server.
+type HTTPS string
+
+const (
+	HTTPSOff   HTTPS = "off"   // plain http, this machine only
+	HTTPSAuto  HTTPS = "auto"  // the plant's own authority
+	HTTPSFiles HTTPS = "files" // certificate in files
+	HTTPSProxy HTTPS = "proxy" // a proxy ends TLS
+)
+
+// About reads the installation.
+type About func(ctx context.Context) (Installation, error)
+
+// aboutGroup is a titled list of facts.
+type aboutGroup struct {
+	Title string
+	Facts []aboutFact
+}
+
+type aboutFact struct {
+	Label, Value string
+	Fixed        bool   // digits to be compared one by one
+	Warning      string // what to do; "" while it is well
+}
+
+func (a *Admin) aboutPage(w http.ResponseWriter, r *http.Request) error {
+	i, err := a.about(r.Context())
+	if err != nil {
+		return err
+	}
+	s := shellFor(r, ui.FrameOf(r).Words.T("about.title"))
+	return ui.Render(w, r, http.StatusOK, aboutPage(s, aboutGroups(s, a.machine, i, ui.FrameOf(r).Now)))
+}
+
+// Below these an administrator has to act.
+const (
+	littleDisk  = 5 << 30
+	tooLittle   = 1 << 30
+	soonEnding  = 30 * 24 * time.Hour
+	clocksApart = 2 * time.Second
+)
+
+func aboutGroups(s ui.Shell, machine string, i Installation, now time.Time) []aboutGroup {
+	t := s.Words.T
+	warn := func(when bool, key string) string {
+		if when {
+			return t(key)
+		}
+		return ""
+	}
+	yes := func(b bool, good, bad string) string {
+		if b {
+			return t(good)
+		}
+		return t(bad)
+	}
+	program := aboutGroup{t("about.program"), []aboutFact{
+		{Label: t("about.version"), Value: i.Version},
+		{Label: t("about.built"), Value: i.Go + ", " + i.System},
+		{Label: t("about.machine"), Value: t("about.machine-value", machine, s.Format.Count(i.Processors))},
+		{Label: t("about.started"), Value: instant(s.Format, i.Started)},
+		{Label: t("about.zone"), Value: s.Format.Zone.String()},
+		{Label: t("about.work"), Value: t("about.work-value", i.Saves, i.Refused, i.Failed, i.Sockets), Warning: warn(i.Failed > 0, "about.failed-do")},
+	}}
+	if i.Waiting+i.GivenUp > 0 {
+		program.Facts = append(program.Facts, aboutFact{Label: t("about.outbox"), Value: t("about.outbox-value", i.Waiting, i.GivenUp),
+			Warning: warn(i.GivenUp > 0, "about.outbox-do")})
+	}
+	way := aboutGroup{t("about.way"), []aboutFact{
+		{Label: t("about.address"), Value: i.Address},
+		{Label: t("about.https"), Value: t("about.https-" + string(i.HTTPS)), Warning: warn(i.HTTPS == HTTPSOff, "about.https-do")},
+	}}
+	if !i.Certificate.IsZero() {
+		way.Facts = append(way.Facts, aboutFact{Label: t("about.certificate"), Value: s.Format.Date(i.Certificate),
+			// The plant's own authority renews by itself, long before.
+			Warning: warn(i.Certificate.Sub(now) < soonEnding, "about.certificate-do")})
+	}
+	if i.Fingerprint != "" {
+		way.Facts = append(way.Facts, aboutFact{Label: t("about.fingerprint"), Value: i.Fingerprint, Fixed: true})
+	}
+	data := aboutGroup{t("about.data"), []aboutFact{
+		{Label: t("about.postgres"), Value: t("about.postgres-value", i.Postgres, i.Database)},
+		{Label: t("about.server"), Value: yes(i.Private, "about.server-private", "about.server-own")},
+		{Label: t("about.size"), Value: size(s.Format, i.Bytes)},
+		{Label: t("about.guard"), Value: yes(i.Guarded, "about.guard-yes", "about.guard-no"), Warning: warn(!i.Guarded, "about.guard-do")},
+		{Label: t("about.durable"), Value: yes(i.Durable, "about.durable-yes", "about.durable-no"), Warning: warn(!i.Durable, "about.durable-do")},
+		{Label: t("about.checksums"), Value: yes(i.Checksums, "about.checksums-yes", "about.checksums-no"), Warning: warn(!i.Checksums, "about.checksums-do")},
+		{Label: t("about.clock"), Value: t("about.clock-value", s.Format.Number(i.Skew.Abs().Seconds(), 1)), Warning: warn(i.Skew.Abs() > clocksApart, "about.clock-do")},
+	}}
+	if i.Disk > 0 {
+		data.Facts = append(data.Facts, aboutFact{Label: t("about.disk"), Value: t("about.disk-value", size(s.Format, i.DiskFree), size(s.Format, i.Disk)),
+			Warning: warn(i.DiskFree < tooLittle, "about.disk-now") + warn(i.DiskFree >= tooLittle && i.DiskFree < littleDisk, "about.disk-do")})
+	}
+	record := aboutGroup{t("about.record"), []aboutFact{
+		{Label: t("about.chains"), Value: s.Format.Count(i.Chains)},
+		{Label: t("about.root"), Value: i.Root, Fixed: true},
+	}}
+	return []aboutGroup{program, way, data, record}
+}
+
+// size is a number of bytes as people read it: in binary units with one decimal.
+func size(f ui.Format, bytes int64) string {
+	units := [...]string{"KiB", "MiB", "GiB", "TiB"}
+	v, u := float64(bytes)/1024, 0
+	for v >= 1024 && u < len(units)-1 {
+		v, u = v/1024, u+1
+	}
+	return f.Number(v, 1) + " " + units[u]
+}
