@@ -40,6 +40,11 @@ func (p *program) about(ctx context.Context) (admin.Installation, error) {
 			i.Disk, i.DiskFree = int64(disk.Blocks)*disk.Bsize, int64(disk.Bavail)*disk.Bsize
 		}
 	}
+	messages, err := p.store.OutboxState(ctx)
+	if err != nil {
+		return i, err
+	}
+	i.Waiting, i.GivenUp = messages.Waiting, messages.GivenUp
 	n := p.store.Counts()
 	i.Saves, i.Refused, i.Failed, i.Sockets = n.Saves, n.Refused, n.Failed, p.hub.Stats().Sockets
 	return i, nil

@@ -68,6 +68,14 @@ func (w watching) serve(ctx context.Context, h http.Handler, log *slog.Logger) {
 // watch tells the metrics where to read.
 func (p *program) watch() {
 	s := metrics.Sources{Version: version(), Store: p.store.Counts, Hub: p.hub.Stats, Ready: p.store.Ready}
+	s.Outbox = func(ctx context.Context) (metrics.Outbox, error) {
+		o, err := p.store.OutboxState(ctx)
+		out := metrics.Outbox{Waiting: o.Waiting, GivenUp: o.GivenUp}
+		if !o.Oldest.IsZero() {
+			out.OldestAge = p.Clock().Sub(o.Oldest)
+		}
+		return out, err
+	}
 	if leaf := p.Transport.leaf; leaf != nil {
 		s.Certificate = func() time.Time { return leaf().NotAfter }
 	}
