@@ -84,59 +84,59 @@ const (
 )
 
 func aboutGroups(s ui.Shell, machine string, i Installation, now time.Time) []aboutGroup {
-	t := s.Words.T
-	warn := func(when bool, key string) string {
+	w := s.Words
+	warn := func(when bool, do string) string {
 		if when {
-			return t(key)
+			return do
 		}
 		return ""
 	}
 	yes := func(b bool, good, bad string) string {
 		if b {
-			return t(good)
+			return good
 		}
-		return t(bad)
+		return bad
 	}
-	program := aboutGroup{t("about.program"), []aboutFact{
-		{Label: t("about.version"), Value: i.Version},
-		{Label: t("about.built"), Value: i.Go + ", " + i.System},
-		{Label: t("about.machine"), Value: t("about.machine-value", machine, s.Format.Count(i.Processors))},
-		{Label: t("about.started"), Value: instant(s.Format, i.Started)},
-		{Label: t("about.zone"), Value: s.Format.Zone.String()},
-		{Label: t("about.work"), Value: t("about.work-value", i.Saves, i.Refused, i.Failed, i.Sockets), Warning: warn(i.Failed > 0, "about.failed-do")},
+	program := aboutGroup{w.T("about.program"), []aboutFact{
+		{Label: w.T("about.version"), Value: i.Version},
+		{Label: w.T("about.built"), Value: i.Go + ", " + i.System},
+		{Label: w.T("about.machine"), Value: w.T("about.machine-value", machine, s.Format.Count(i.Processors))},
+		{Label: w.T("about.started"), Value: instant(s.Format, i.Started)},
+		{Label: w.T("about.zone"), Value: s.Format.Zone.String()},
+		{Label: w.T("about.work"), Value: w.T("about.work-value", i.Saves, i.Refused, i.Failed, i.Sockets), Warning: warn(i.Failed > 0, w.T("about.failed-do"))},
 	}}
 	if i.Waiting+i.GivenUp > 0 {
-		program.Facts = append(program.Facts, aboutFact{Label: t("about.outbox"), Value: t("about.outbox-value", i.Waiting, i.GivenUp),
-			Warning: warn(i.GivenUp > 0, "about.outbox-do")})
+		program.Facts = append(program.Facts, aboutFact{Label: w.T("about.outbox"), Value: w.T("about.outbox-value", i.Waiting, i.GivenUp),
+			Warning: warn(i.GivenUp > 0, w.T("about.outbox-do"))})
 	}
-	way := aboutGroup{t("about.way"), []aboutFact{
-		{Label: t("about.address"), Value: i.Address},
-		{Label: t("about.https"), Value: t("about.https-" + string(i.HTTPS)), Warning: warn(i.HTTPS == HTTPSOff, "about.https-do")},
+	way := aboutGroup{w.T("about.way"), []aboutFact{
+		{Label: w.T("about.address"), Value: i.Address},
+		{Label: w.T("about.https"), Value: w.T("about.https-" + string(i.HTTPS)), Warning: warn(i.HTTPS == HTTPSOff, w.T("about.https-do"))},
 	}}
 	if !i.Certificate.IsZero() {
-		way.Facts = append(way.Facts, aboutFact{Label: t("about.certificate"), Value: s.Format.Date(i.Certificate),
+		way.Facts = append(way.Facts, aboutFact{Label: w.T("about.certificate"), Value: s.Format.Date(i.Certificate),
 			// The plant's own authority renews by itself, long before.
-			Warning: warn(i.Certificate.Sub(now) < soonEnding, "about.certificate-do")})
+			Warning: warn(i.Certificate.Sub(now) < soonEnding, w.T("about.certificate-do"))})
 	}
 	if i.Fingerprint != "" {
-		way.Facts = append(way.Facts, aboutFact{Label: t("about.fingerprint"), Value: i.Fingerprint, Fixed: true})
+		way.Facts = append(way.Facts, aboutFact{Label: w.T("about.fingerprint"), Value: i.Fingerprint, Fixed: true})
 	}
-	data := aboutGroup{t("about.data"), []aboutFact{
-		{Label: t("about.postgres"), Value: t("about.postgres-value", i.Postgres, i.Database)},
-		{Label: t("about.server"), Value: yes(i.Private, "about.server-private", "about.server-own")},
-		{Label: t("about.size"), Value: size(s.Format, i.Bytes)},
-		{Label: t("about.guard"), Value: yes(i.Guarded, "about.guard-yes", "about.guard-no"), Warning: warn(!i.Guarded, "about.guard-do")},
-		{Label: t("about.durable"), Value: yes(i.Durable, "about.durable-yes", "about.durable-no"), Warning: warn(!i.Durable, "about.durable-do")},
-		{Label: t("about.checksums"), Value: yes(i.Checksums, "about.checksums-yes", "about.checksums-no"), Warning: warn(!i.Checksums, "about.checksums-do")},
-		{Label: t("about.clock"), Value: t("about.clock-value", s.Format.Number(i.Skew.Abs().Seconds(), 1)), Warning: warn(i.Skew.Abs() > clocksApart, "about.clock-do")},
+	data := aboutGroup{w.T("about.data"), []aboutFact{
+		{Label: w.T("about.postgres"), Value: w.T("about.postgres-value", i.Postgres, i.Database)},
+		{Label: w.T("about.server"), Value: yes(i.Private, w.T("about.server-private"), w.T("about.server-own"))},
+		{Label: w.T("about.size"), Value: size(s.Format, i.Bytes)},
+		{Label: w.T("about.guard"), Value: yes(i.Guarded, w.T("about.guard-yes"), w.T("about.guard-no")), Warning: warn(!i.Guarded, w.T("about.guard-do"))},
+		{Label: w.T("about.durable"), Value: yes(i.Durable, w.T("about.durable-yes"), w.T("about.durable-no")), Warning: warn(!i.Durable, w.T("about.durable-do"))},
+		{Label: w.T("about.checksums"), Value: yes(i.Checksums, w.T("about.checksums-yes"), w.T("about.checksums-no")), Warning: warn(!i.Checksums, w.T("about.checksums-do"))},
+		{Label: w.T("about.clock"), Value: w.T("about.clock-value", s.Format.Number(i.Skew.Abs().Seconds(), 1)), Warning: warn(i.Skew.Abs() > clocksApart, w.T("about.clock-do"))},
 	}}
 	if i.Disk > 0 {
-		data.Facts = append(data.Facts, aboutFact{Label: t("about.disk"), Value: t("about.disk-value", size(s.Format, i.DiskFree), size(s.Format, i.Disk)),
-			Warning: warn(i.DiskFree < tooLittle, "about.disk-now") + warn(i.DiskFree >= tooLittle && i.DiskFree < littleDisk, "about.disk-do")})
+		data.Facts = append(data.Facts, aboutFact{Label: w.T("about.disk"), Value: w.T("about.disk-value", size(s.Format, i.DiskFree), size(s.Format, i.Disk)),
+			Warning: warn(i.DiskFree < tooLittle, w.T("about.disk-now")) + warn(i.DiskFree >= tooLittle && i.DiskFree < littleDisk, w.T("about.disk-do"))})
 	}
-	record := aboutGroup{t("about.record"), []aboutFact{
-		{Label: t("about.chains"), Value: s.Format.Count(i.Chains)},
-		{Label: t("about.root"), Value: i.Root, Fixed: true},
+	record := aboutGroup{w.T("about.record"), []aboutFact{
+		{Label: w.T("about.chains"), Value: s.Format.Count(i.Chains)},
+		{Label: w.T("about.root"), Value: i.Root, Fixed: true},
 	}}
 	return []aboutGroup{program, way, data, record}
 }
