@@ -111,7 +111,7 @@ func aboutGroups(s ui.Shell, machine string, i Installation, now time.Time) []ab
 	}
 	way := aboutGroup{w.T("about.way"), []aboutFact{
 		{Label: w.T("about.address"), Value: i.Address},
-		{Label: w.T("about.https"), Value: w.T("about.https-" + string(i.HTTPS)), Warning: warn(i.HTTPS == HTTPSOff, w.T("about.https-do"))},
+		{Label: w.T("about.https"), Value: w.T("about.https." + string(i.HTTPS)), Warning: warn(i.HTTPS == HTTPSOff, w.T("about.https-do"))},
 	}}
 	if !i.Certificate.IsZero() {
 		way.Facts = append(way.Facts, aboutFact{Label: w.T("about.certificate"), Value: s.Format.Date(i.Certificate),
