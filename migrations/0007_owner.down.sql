@@ -1,1 +1,1 @@
-drop table plant_settings;
+drop table owner_standing, ending, acceptance, protection, plant_settings;

@@ -181,6 +181,7 @@ func (p *program) Run(ctx context.Context) error {
 	p.background = cancel
 	p.running.Go(func() { p.feed.Run(background) })
 	p.lookAfter(background)
+	p.running.Go(func() { p.store.KeepStandings(background, p.Log) })
 	served := make(chan error, 1)
 	p.running.Go(func() { served <- p.listen() })
 	p.running.Go(func() { p.Transport.keep(background, p.Log) })

@@ -58,7 +58,12 @@ type CharacteristicState struct {
 	Reach     *Reach        // of the open matter; nil: none, or not found yet
 	Contained []Containment // still open, the oldest first
 
-	Escalation Escalation // of the open matter
+	Escalation  Escalation    // of the open matter
+	ReadAt      time.Time     // the instant of all this
+	Rules       OwnerSettings // by which its owner is found
+	Standing    Standing
+	Acceptance  Acceptance   // the newest, whether or not it still holds
+	Protections []Protection // that have not ended, oldest first
 }
 
 // MachineNow is a machine with what it does at the moment.
@@ -169,27 +174,6 @@ func (c CharacteristicState) Since() time.Time {
 		return c.Due.At
 	}
 	return c.Segment.From
-}
-
-// Owner is who must act on a characteristic.
-type Owner string
-
-const (
-	Nobody      Owner = "nobody"
-	AtStation   Owner = "station"
-	Engineering Owner = "engineering"
-)
-
-// Owner routes the characteristic: an open matter belongs to the station, missing
-// limits to engineering, all else to nobody.
-func (c CharacteristicState) Owner() Owner {
-	switch {
-	case c.Matter != nil:
-		return AtStation
-	case c.Revision == nil:
-		return Engineering
-	}
-	return Nobody
 }
 
 // Stretch says which part of a history is asked for. With Last set it is the newest

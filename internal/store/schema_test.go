@@ -58,7 +58,8 @@ func TestApplicationRoleCannotRewriteTheRecord(t *testing.T) {
 	}
 	for _, table := range []string{"subgroup", "round", "ledger", "revision", "boundary", "change", "machine_state", "setup", "reaction_plan", "plant_settings",
 		"matter_answer", "matter_fix", "matter_verification", "knob",
-		"gauge_check", "containment_entry"} {
+		"gauge_check", "containment_entry",
+		"protection", "acceptance", "ending"} {
 		for _, sql := range []string{"update " + table + " set plant_id = plant_id", "delete from " + table, "truncate " + table} {
 			if _, err := app.Pool().Exec(ctx, sql); err == nil || !strings.Contains(err.Error(), "permission denied") {
 				t.Errorf("%s: %v, want permission denied", sql, err)

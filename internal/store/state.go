@@ -144,7 +144,7 @@ func (g *gathering) readMachines(ctx context.Context, tx pgx.Tx, stations []uuid
 
 func (g *gathering) readCharacteristics(ctx context.Context, tx pgx.Tx, stations []uuid.UUID) error {
 	rows, err := tx.Query(ctx, `select c.id, c.station_id, c.machine_id, c.part_id, c.family, c.name, c.position,
-			cs.version, cs.setup_version, cs.last_taken, cs.last_due, segment.at, force.revision_id
+			cs.version, cs.setup_version, cs.last_taken, cs.last_due, segment.at, force.revision_id, `+ownerColumns+`
 		from characteristic c join characteristic_state cs on cs.characteristic_id = c.id
 		left join lateral (select b.at from boundary b where b.characteristic_id = c.id and b.at <= $2 order by b.at desc, b.id desc limit 1) segment on true
 		left join lateral (select b.revision_id from boundary b where b.characteristic_id = c.id and b.at <= $2 and b.kind in ('revision', 'setup')
@@ -157,9 +157,13 @@ func (g *gathering) readCharacteristics(ctx context.Context, tx pgx.Tx, stations
 	var part, revision *uuid.UUID
 	var lastTaken, lastDue, from *time.Time
 	var setup int
-	_, err = pgx.ForEachRow(rows, []any{&c.ID, &c.StationID, &c.MachineID, &part, &c.Family, &c.Name, &c.Position,
-		&c.Version, &setup, &lastTaken, &lastDue, &from, &revision}, func() error {
+	var owner ownerRow
+	_, err = pgx.ForEachRow(rows, append([]any{&c.ID, &c.StationID, &c.MachineID, &part, &c.Family, &c.Name, &c.Position,
+		&c.Version, &setup, &lastTaken, &lastDue, &from, &revision}, owner.targets()...), func() error {
 		v := c
+		if err := owner.into(&v, g.settings.Owner, g.now); err != nil {
+			return err
+		}
 		v.PartID, v.LastTaken, v.LastDue = orNil(part), orZero(lastTaken), orZero(lastDue)
 		v.Segment = plant.Segment{From: orZero(from), Revision: orNil(revision)}
 		st := g.byStation[v.StationID]

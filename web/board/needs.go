@@ -48,9 +48,21 @@ type needView struct {
 	names   []string // of a round that was not taken
 }
 
-// studyView is one characteristic that has no frozen limits.
+// studyView is one characteristic that engineering owns.
 type studyView struct {
 	Station, Name, Progress, Link, Line string
+	Protected                           string // how its product is protected meanwhile
+	Unprotected                         bool   // it has to be, and nobody has said how
+}
+
+func (v studyView) rank() int {
+	switch {
+	case v.Unprotected:
+		return 0
+	case v.Protected != "":
+		return 1
+	}
+	return 2
 }
 
 func newNeeds(f ui.Format, states []plant.StationState) needsView {
@@ -71,6 +83,8 @@ func newNeeds(f ui.Format, states []plant.StationState) needsView {
 			}
 		}
 	}
+	// Product that nobody protects comes first, then what is known not to be capable.
+	slices.SortStableFunc(v.Engineering, func(a, b studyView) int { return a.rank() - b.rank() })
 	if more := len(v.Engineering) - studiesShown; more > 1 {
 		v.Engineering, v.More = v.Engineering[:studiesShown], v.Engineering[studiesShown:]
 		v.MoreText = f.Words.T("board.more", more)
@@ -221,10 +235,21 @@ func addLate(f ui.Format, list []needView, seen map[lateKey]int, st *plant.Stati
 
 func newStudy(f ui.Format, st *plant.StationState, c *plant.CharacteristicState) studyView {
 	v := studyView{Station: st.Name, Name: c.Name, Link: chartAddress(st.ID, c.ID), Line: st.LineID.String()}
-	if c.Collected < limits.EnoughSubgroups {
+	o := c.Ownership()
+	switch {
+	case o.Reason != plant.NoLimits:
+		v.Progress = f.Words.T("board.reason-since", f.OwnerReason(*c), f.OwnerSince(o))
+	case c.Collected < limits.EnoughSubgroups:
 		v.Progress = f.Words.T("board.collected", c.Collected, limits.EnoughSubgroups)
-	} else {
+	default:
 		v.Progress = f.Words.T("board.can-freeze", c.Collected)
+	}
+	if v.Unprotected = c.WantsProtection(); !v.Unprotected && o.Reason.WantsProtection() {
+		var said []string
+		for _, p := range c.Protections {
+			said = append(said, f.Words.T("owner.method."+string(p.Method)))
+		}
+		v.Protected = f.Words.T("owner.protected-by", strings.Join(said, ", "))
 	}
 	return v
 }

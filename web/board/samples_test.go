@@ -44,6 +44,7 @@ func quiet(station plant.Station, name, unit string, decimals int, centre int64)
 		Due:       plant.Due{At: noon.Add(18 * time.Minute), Occasion: plant.ByTime, State: plant.Later},
 	}
 	unitSize := decimal(1, decimals).Float()
+	c.Standing = plant.Standing{Revision: c.Segment.Revision, Figure: plant.Figure{Grade: plant.AtCapable}}
 	c.Revision = &plant.Revision{ID: c.Segment.Revision, Number: 1, Chart: limits.XBarR, Center: float64(centre) * unitSize,
 		Sigma: 3 * unitSize, Multiple: 3, Rules: setup.DefaultRules()}
 	r := rand.New(rand.NewPCG(7, uint64(station.ID[0])<<8|uint64(len(name))))

@@ -64,10 +64,8 @@ func ownerFact(f ui.Format, c plant.CharacteristicState) fact {
 		v.Sub = w.T("desk.fact.taken", c.Matter.TakenByName, f.Clock(c.Matter.TakenAt))
 	case c.Matter != nil:
 		v.Sub = w.T("desk.fact.not-taken")
-	case c.Revision == nil:
-		v.Sub = w.T("desk.fact.wants-limits")
 	default:
-		v.Sub = w.T("desk.fact.leave")
+		v.Sub = w.T("desk.fact.owner-reason", upperFirst(f.OwnerReason(c)), f.OwnerSince(c.Ownership()))
 	}
 	return v
 }

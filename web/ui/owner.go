@@ -1,0 +1,56 @@
+package ui
+
+import "holdfast/internal/plant"
+
+// OwnerReason says in words why somebody owns a characteristic, with the numbers that it
+// follows from.
+func (f Format) OwnerReason(c plant.CharacteristicState) string {
+	w, o, fig := f.Words, c.Ownership(), c.Standing.Figure
+	switch o.Reason {
+	case plant.Settling:
+		return w.T("owner.settling", c.Quiet(), c.Rules.StableSubgroups)
+	case plant.TooFew:
+		return f.tooFew(c)
+	case plant.NotCapable:
+		return w.T("owner.not-capable", f.Index(fig.Bound), f.Index(c.Rules.Capable))
+	case plant.AcceptanceEnded:
+		return w.T("owner.acceptance-ended", f.Index(fig.Bound), f.Clock(c.Acceptance.Ends()))
+	case plant.IsCapable:
+		return w.T("owner.capable", f.Index(fig.Bound))
+	case plant.IsAccepted:
+		return w.T("owner.accepted", f.Index(fig.Bound), f.Clock(c.Acceptance.Ends()))
+	}
+	return w.T("owner.reason." + string(o.Reason))
+}
+
+// tooFew says what is missing: subgroups under the limits or readings for the figure.
+func (f Format) tooFew(c plant.CharacteristicState) string {
+	w, fig := f.Words, c.Standing.Figure
+	switch quiet := c.Quiet(); {
+	case quiet < c.Rules.StableSubgroups:
+		return w.T("owner.too-few-subgroups", quiet, c.Rules.StableSubgroups)
+	case fig.Readings < c.Rules.LeastReadings:
+		return w.T("owner.too-few-readings", fig.Readings, c.Rules.LeastReadings)
+	}
+	return w.T("owner.too-few-subgroups", fig.Subgroups, c.Rules.LeastSubgroups)
+}
+
+// OwnerSince says since when, "since Tue 12:42", or that it is longer than the record
+// that was looked at.
+func (f Format) OwnerSince(o plant.Ownership) string {
+	switch {
+	case o.Since.IsZero():
+		return ""
+	case o.AtLeast:
+		return f.Words.T("owner.since-before", f.Clock(o.Since))
+	}
+	return f.Words.T("owner.since", f.Clock(o.Since))
+}
+
+// Index writes a capability index.
+func (f Format) Index(v float64) string { return f.Number(v, 2) }
+
+// ProtectionWords says how product is protected: the method, and what is to be done.
+func (f Format) ProtectionWords(p plant.Protection) string {
+	return f.Words.T("owner.protection", f.Words.T("owner.method."+string(p.Method)), p.Instruction)
+}
