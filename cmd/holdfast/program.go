@@ -100,11 +100,10 @@ func newProgram(ctx context.Context, s settings) (*program, error) {
 
 // join makes the parts and ties them together.
 func (p *program) join(ctx context.Context) error {
-	pl, err := p.store.Plant(ctx)
-	if err != nil {
-		return fmt.Errorf("read the plant: %w", err)
+	if err := p.readPlant(ctx); err != nil {
+		return err
 	}
-	p.plant.Store(&pl)
+	pl := p.plant.Load()
 	if guarded, err := p.store.Guarded(ctx); err != nil {
 		return err
 	} else if !guarded {
@@ -131,7 +130,7 @@ func (p *program) join(ctx context.Context) error {
 	if err != nil {
 		p.Log.Warn("the machine does not tell its name", "error", err)
 	}
-	p.admin = admin.New(admin.Deps{Log: p.Log, Machine: machine, About: p.about})
+	p.admin = admin.New(admin.Deps{Log: p.Log, Machine: machine, Store: p.store, Signer: door, Hasher: hasher, Changed: p.readPlant, About: p.about})
 	cfg := web.Config{
 		Log: p.Log, Now: p.Clock, Plant: func() plant.Plant { return *p.plant.Load() },
 		Sessions: p.sessions, Checker: door, Hub: p.hub,
@@ -166,6 +165,32 @@ func (p *program) join(ctx context.Context) error {
 	return nil
 }
 
+// readPlant reads name, time zone and shifts anew.
+func (p *program) readPlant(ctx context.Context) error {
+	pl, err := p.store.Plant(ctx)
+	if err != nil {
+		return fmt.Errorf("read the plant: %w", err)
+	}
+	p.plant.Store(&pl)
+	return nil
+}
+
+// keepPlant reads the plant now and then: another server may have changed it.
+func (p *program) keepPlant(ctx context.Context) {
+	tick := time.NewTicker(time.Minute)
+	defer tick.Stop()
+	for {
+		select {
+		case <-ctx.Done():
+			return
+		case <-tick.C:
+			if err := p.readPlant(ctx); err != nil && ctx.Err() == nil {
+				p.Log.Warn("the plant could not be read again", "error", err)
+			}
+		}
+	}
+}
+
 // URL is the address at which the program answers on this machine.
 func (p *program) URL() string {
 	if p.Transport.config != nil {
@@ -182,6 +207,7 @@ func (p *program) Run(ctx context.Context) error {
 	p.running.Go(func() { p.feed.Run(background) })
 	p.lookAfter(background)
 	p.running.Go(func() { p.store.KeepStandings(background, p.Log) })
+	p.running.Go(func() { p.keepPlant(background) })
 	served := make(chan error, 1)
 	p.running.Go(func() { served <- p.listen() })
 	p.running.Go(func() { p.Transport.keep(background, p.Log) })

@@ -39,15 +39,16 @@ type who []visitorKind
 var everybody = who{nobody, operator, supervisor, engineer, administrator, atTablet, manager, bare, wall, sender, revoked}
 
 var (
-	people   = who{operator, supervisor, engineer, administrator, atTablet, manager}
-	takers   = who{operator, supervisor, atTablet, manager}
-	seers    = who{operator, supervisor, engineer, atTablet, manager}
-	watchers = append(who{wall}, seers...) // the board, to look at
-	deskers  = who{supervisor, engineer}
-	setters  = who{engineer}
-	managers = who{administrator}
-	tablets  = who{bare, atTablet, manager}
-	senders  = who{sender}
+	people    = who{operator, supervisor, engineer, administrator, atTablet, manager}
+	takers    = who{operator, supervisor, atTablet, manager}
+	seers     = who{operator, supervisor, engineer, atTablet, manager}
+	watchers  = append(who{wall}, seers...) // the board, to look at
+	deskers   = who{supervisor, engineer}
+	setters   = who{engineer}
+	managers  = who{administrator}
+	arrangers = who{engineer, administrator}
+	tablets   = who{bare, atTablet, manager}
+	senders   = who{sender}
 )
 
 // routeRow is one route: whom it answers, and with what. All others are refused as
@@ -97,8 +98,35 @@ var routeTable = []routeRow{
 	{"POST /enrol", everybody, 422},
 	{"POST /theme", everybody, 303},
 	{"GET /live", watchers, 400}, // no upgrade was asked for
-	{"GET /admin/", managers, 200},
 	{"GET /admin/about", managers, 200},
+	{"GET /admin/", arrangers, 200},
+	{"GET /admin/start", arrangers, 200},
+	{"POST /admin/start/{step}", arrangers, 422},
+	{"GET /admin/plant", arrangers, 200},
+	{"POST /admin/plant", arrangers, 422},
+	{"POST /admin/plant/shifts", arrangers, 303}, // an empty calendar is one
+	{"GET /admin/floor", arrangers, 200},
+	{"GET /admin/parts", arrangers, 200},
+	{"GET /admin/thing/{kind}/new", arrangers, 200},
+	{"POST /admin/thing/{kind}/new", arrangers, 422},
+	{"GET /admin/thing/{kind}/{id}", arrangers, 200},
+	{"POST /admin/thing/{kind}/{id}", arrangers, 422},
+	{"POST /admin/thing/{kind}/{id}/retire", arrangers, 422},
+	{"POST /admin/thing/{kind}/{id}/move", arrangers, 422},
+	{"GET /admin/gauges", setters, 200},
+	{"GET /admin/characteristics", setters, 200},
+	{"GET /admin/characteristic/new", setters, 200},
+	{"POST /admin/characteristic/new", setters, 422},
+	{"GET /admin/characteristic/{id}", setters, 200},
+	{"POST /admin/characteristic/{id}", setters, 422},
+	{"GET /admin/characteristic/{id}/known-limits", setters, 200},
+	{"POST /admin/characteristic/{id}/known-limits", setters, 422},
+	{"GET /admin/chart-choice", setters, 200},
+	{"GET /admin/description", setters, 200},
+	{"POST /admin/description", setters, 422},
+	{"GET /admin/description/{id}", setters, 404}, // no file waits
+	{"POST /admin/description/{id}", setters, 404},
+	{"GET /admin/description/files/{file}", setters, 200},
 	{"GET /admin/qualification", managers, 200},
 	{"GET /admin/qualification.json", managers, 404}, // none was run
 	{"POST /admin/qualification", managers, 303},
@@ -143,6 +171,7 @@ func TestEveryRouteByEveryRoleAndByNobody(t *testing.T) {
 	a := r.MustRecord(t, r.Diameter, 14998, 14999, 14998, 14999, 14998)
 	path := strings.NewReplacer("{station}", r.Station.ID.String(), "{round}", a.Round.String(), "{matter}", a.Parts[0].Matter.String(),
 		"{characteristic}", r.Diameter.ID.String(), "{machine}", r.Machine.ID.String(), "{id}", r.Diameter.ID.String(),
+		"/thing/{kind}/{id}", "/thing/line/"+r.Line.ID.String(), "{kind}", "line", "{step}", "floor", "{file}", "template.csv",
 		"/static/*", "/static/css/tokens.css", "/live", "/live?topic=board")
 
 	routes, err := web.Routes(r.program.server.Handler)

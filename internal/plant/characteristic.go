@@ -17,6 +17,7 @@ type Characteristic struct {
 	Family    string    // of a family of parts, or of any part when both are empty
 	Name      string
 	Position  int
+	Retired   bool
 }
 
 // Setup is one version of how a characteristic is measured, specified, sampled and

@@ -77,6 +77,11 @@ const (
 	Manage                          // people, devices, the installation
 	AnswerCalls                     // be called about what nobody takes; quiet a known matter
 	DecideProduct                   // state what became of product that was kept aside
+
+	// ArrangePlant is for what the plant has: lines, stations, machines, parts, shifts, its
+	// name and time zone. Engineers may too, since it is they who find a machine missing
+	// when they describe what is measured on it.
+	ArrangePlant
 )
 
 var mayDo = map[Action]Roles{
@@ -88,6 +93,7 @@ var mayDo = map[Action]Roles{
 	Manage:        {Administrator},
 	AnswerCalls:   {Supervisor},
 	DecideProduct: {Supervisor, Engineer},
+	ArrangePlant:  {Engineer, Administrator},
 }
 
 // May reports whether this person may do a. Somebody who is not active may do

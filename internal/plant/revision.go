@@ -44,6 +44,11 @@ type Basis struct {
 	To        time.Time `json:"to"`
 	Subgroups int       `json:"subgroups"` // that were used
 	LeftOut   []LeftOut `json:"left_out,omitempty"`
+
+	// Given says that centre and sigma were stated from earlier knowledge and not computed
+	// from subgroups on record here: the limits are unproved until a revision from data
+	// takes their place.
+	Given bool `json:"given,omitempty"`
 }
 
 // LeftOut is a subgroup kept out of the limits. There is always a cause.

@@ -15,6 +15,8 @@ type Plant struct {
 	Location *time.Location // shifts, pages and prints are in its wall time
 	Demo     bool           // made by the demonstration; said on every page
 	Shifts   []Shift        // in the order of their starts
+
+	ConfirmedAt time.Time // when somebody said that name and time zone are right, zero while nobody did
 }
 
 // Shift begins every day at a local wall time and lasts until the next begins, so a
@@ -30,6 +32,7 @@ type Line struct {
 	ID       uuid.UUID
 	Name     string
 	Position int
+	Retired  bool // kept for what was recorded, offered no more
 }
 
 // Station is a place with a tablet where samples are taken.
@@ -39,6 +42,7 @@ type Station struct {
 	Name     string
 	Family   string // stations of one family share a catalogue of causes
 	Position int
+	Retired  bool
 }
 
 // Machine makes the parts. PartsPerHour is its rate, 0 when not known.
@@ -49,19 +53,22 @@ type Machine struct {
 	Position     int
 	PartsPerHour float64
 	Streams      []Stream
+	Retired      bool
 }
 
 // Stream is one of several parallel sources on a machine.
 type Stream struct {
-	ID   uuid.UUID
-	Name string
+	ID      uuid.UUID
+	Name    string
+	Retired bool
 }
 
 // Part is what a machine makes; parts of one family may share a chart.
 type Part struct {
-	ID     uuid.UUID
-	Name   string
-	Family string
+	ID      uuid.UUID
+	Name    string
+	Family  string
+	Retired bool
 }
 
 // Gauge is what a characteristic is measured with.
@@ -69,8 +76,9 @@ type Gauge struct {
 	ID         uuid.UUID
 	Name       string
 	Resolution *Decimal
-	NextCheck  time.Time // a day
+	NextCheck  time.Time // a day, zero when none is set
 	CheckDays  int       // from one good check to the next; 0: each check says when the next is
+	Retired    bool
 }
 
 // Cause is one entry of the catalogue of a station family.

@@ -17,7 +17,7 @@ func (s *Store) AddCause(ctx context.Context, family string, c plant.Cause, posi
 	return s.arrange(ctx, "cause added", c.ID, by, map[string]any{"name": c.Name, "family": family}, func(tx pgx.Tx) error {
 		_, err := tx.Exec(ctx, `insert into cause (id, plant_id, family, name, position) values ($1, $2, $3, $4, $5)`,
 			c.ID, s.plant(), family, c.Name, position)
-		return taken(err, "cause_name_once", "There is a cause of this name already.")
+		return nameTaken(err)
 	})
 }
 
@@ -75,7 +75,7 @@ func (s *Store) oneCause(tag interface{ RowsAffected() int64 }, err error) error
 	if err == nil && tag.RowsAffected() == 0 {
 		return plant.NotFoundf("", "There is no such cause.")
 	}
-	return taken(err, "cause_name_once", "There is a cause of this name already.")
+	return nameTaken(err)
 }
 
 // Causes lists what is offered at the stations of a family, with what belongs to every

@@ -110,7 +110,7 @@ func revisionBody(r plant.Revision, signature *ledger.Signature) ledger.Revision
 	body := ledger.Revision{
 		Revision: r.ID, Number: r.Number, SetupVersion: r.SetupVersion, Chart: string(r.Chart), Estimator: string(r.Estimator),
 		Center: ledger.Number(r.Center), Sigma: ledger.Number(r.Sigma), Multiple: ledger.Number(r.Multiple),
-		From: ledger.At(r.Basis.From), To: ledger.At(r.Basis.To), Subgroups: r.Basis.Subgroups, Reason: r.Reason,
+		From: ledger.At(r.Basis.From), To: ledger.At(r.Basis.To), Subgroups: r.Basis.Subgroups, Given: r.Basis.Given, Reason: r.Reason,
 		InForceFrom: ledger.Time(r.InForceFrom), Signature: signature, Location: []string{}, Dispersion: []string{},
 	}
 	for _, rule := range r.Rules.Location {

@@ -26,7 +26,7 @@ func (s *Store) History(ctx context.Context, characteristic uuid.UUID, stretch p
 	if err != nil {
 		return h, fmt.Errorf("read characteristic: %w", missing(err, "There is no such characteristic."))
 	}
-	st, err := s.StationState(ctx, station, 25)
+	st, err := s.stationStateWith(ctx, station, 25, characteristic) // its record stays when it is retired
 	if err != nil {
 		return h, err
 	}

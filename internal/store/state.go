@@ -25,12 +25,18 @@ type gathering struct {
 	machines        map[uuid.UUID]*plant.MachineNow
 	changes         map[uuid.UUID][]plant.Change
 	parts           map[uuid.UUID]plant.Part
+	also            uuid.UUID // a characteristic that is read although it is retired
 }
 
 // StationStates reads how it stands now at the given stations, or at all of them when
 // none is given, with the newest so many points of each characteristic. Its cost does
 // not depend on how long the history is.
 func (s *Store) StationStates(ctx context.Context, points int, ids ...uuid.UUID) ([]plant.StationState, error) {
+	return s.stationStates(ctx, points, uuid.Nil, ids...)
+}
+
+// stationStates is StationStates with one characteristic more, which may be retired.
+func (s *Store) stationStates(ctx context.Context, points int, also uuid.UUID, ids ...uuid.UUID) ([]plant.StationState, error) {
 	set, err := s.Settings(ctx) // before the transaction: it may take a connection of its own
 	if err != nil {
 		return nil, err
@@ -40,7 +46,7 @@ func (s *Store) StationStates(ctx context.Context, points int, ids ...uuid.UUID)
 		g := &gathering{s: s, settings: set, now: s.now(), byStation: map[uuid.UUID]*plant.StationState{},
 			characteristics: map[uuid.UUID]*plant.CharacteristicState{}, setupVersions: map[uuid.UUID]int{},
 			inForce: map[uuid.UUID]uuid.UUID{}, machines: map[uuid.UUID]*plant.MachineNow{}, changes: map[uuid.UUID][]plant.Change{},
-			parts: map[uuid.UUID]plant.Part{}}
+			parts: map[uuid.UUID]plant.Part{}, also: also}
 		var err error
 		out, err = g.gather(ctx, tx, points, ids)
 		return err
@@ -53,7 +59,11 @@ func (s *Store) StationStates(ctx context.Context, points int, ids ...uuid.UUID)
 
 // StationState reads one station.
 func (s *Store) StationState(ctx context.Context, id uuid.UUID, points int) (plant.StationState, error) {
-	list, err := s.StationStates(ctx, points, id)
+	return s.stationStateWith(ctx, id, points, uuid.Nil)
+}
+
+func (s *Store) stationStateWith(ctx context.Context, id uuid.UUID, points int, also uuid.UUID) (plant.StationState, error) {
+	list, err := s.stationStates(ctx, points, also, id)
 	if err != nil {
 		return plant.StationState{}, err
 	}
@@ -94,7 +104,7 @@ func (g *gathering) gather(ctx context.Context, tx pgx.Tx, points int, ids []uui
 func (g *gathering) readStations(ctx context.Context, tx pgx.Tx, ids []uuid.UUID) error {
 	rows, err := tx.Query(ctx, `select s.id, s.name, s.family, s.position, l.id, l.name, l.position
 		from station s join line l on l.id = s.line_id
-		where s.plant_id = $1 and (cardinality($2::uuid[]) = 0 or s.id = any($2)) order by l.position, l.name, s.position, s.name`, g.s.plant(), ids)
+		where s.plant_id = $1 and (cardinality($2::uuid[]) = 0 and s.retired_at is null or s.id = any($2)) order by l.position, l.name, s.position, s.name`, g.s.plant(), ids)
 	if err != nil {
 		return fmt.Errorf("read stations: %w", err)
 	}
@@ -110,9 +120,9 @@ func (g *gathering) readStations(ctx context.Context, tx pgx.Tx, ids []uuid.UUID
 
 func (g *gathering) readMachines(ctx context.Context, tx pgx.Tx, stations []uuid.UUID) error {
 	rows, err := tx.Query(ctx, `select m.id, m.station_id, m.name, m.position, m.parts_per_hour,
-			coalesce((select array_agg(t.id order by t.position) from stream t where t.machine_id = m.id), '{}'),
-			coalesce((select array_agg(t.name order by t.position) from stream t where t.machine_id = m.id), '{}'),
-			p.id, p.name, p.family
+			coalesce((select array_agg(t.id order by t.position) from stream t where t.machine_id = m.id and t.retired_at is null), '{}'),
+			coalesce((select array_agg(t.name order by t.position) from stream t where t.machine_id = m.id and t.retired_at is null), '{}'),
+			p.id, p.name, p.family, m.retired_at is not null
 		from machine m
 		left join lateral (select x.part_id from machine_state x where x.machine_id = m.id and x.at <= $2 order by x.at desc, x.id desc limit 1) x on true
 		left join part p on p.id = x.part_id
@@ -126,7 +136,7 @@ func (g *gathering) readMachines(ctx context.Context, tx pgx.Tx, stations []uuid
 	var part *uuid.UUID
 	var partName, partFamily *string
 	var order []uuid.UUID
-	_, err = pgx.ForEachRow(rows, []any{&m.ID, &m.StationID, &m.Name, &m.Position, &m.PartsPerHour, &streamIDs, &streamNames, &part, &partName, &partFamily}, func() error {
+	_, err = pgx.ForEachRow(rows, []any{&m.ID, &m.StationID, &m.Name, &m.Position, &m.PartsPerHour, &streamIDs, &streamNames, &part, &partName, &partFamily, &m.Retired}, func() error {
 		now := &plant.MachineNow{Machine: m}
 		now.Streams = nil
 		for i := range streamIDs {
@@ -144,12 +154,12 @@ func (g *gathering) readMachines(ctx context.Context, tx pgx.Tx, stations []uuid
 
 func (g *gathering) readCharacteristics(ctx context.Context, tx pgx.Tx, stations []uuid.UUID) error {
 	rows, err := tx.Query(ctx, `select c.id, c.station_id, c.machine_id, c.part_id, c.family, c.name, c.position,
-			cs.version, cs.setup_version, cs.last_taken, cs.last_due, segment.at, force.revision_id, `+ownerColumns+`
+			cs.version, cs.setup_version, cs.last_taken, cs.last_due, segment.at, force.revision_id, c.retired_at is not null, `+ownerColumns+`
 		from characteristic c join characteristic_state cs on cs.characteristic_id = c.id
 		left join lateral (select b.at from boundary b where b.characteristic_id = c.id and b.at <= $2 order by b.at desc, b.id desc limit 1) segment on true
 		left join lateral (select b.revision_id from boundary b where b.characteristic_id = c.id and b.at <= $2 and b.kind in ('revision', 'setup')
 			order by b.at desc, b.id desc limit 1) force on true
-		where c.station_id = any($1) order by c.position, c.name, c.id`, stations, g.now)
+		where c.station_id = any($1) and (c.retired_at is null or c.id = $3) order by c.position, c.name, c.id`, stations, g.now, g.also)
 	if err != nil {
 		return fmt.Errorf("read characteristics: %w", err)
 	}
@@ -159,7 +169,7 @@ func (g *gathering) readCharacteristics(ctx context.Context, tx pgx.Tx, stations
 	var setup int
 	var owner ownerRow
 	_, err = pgx.ForEachRow(rows, append([]any{&c.ID, &c.StationID, &c.MachineID, &part, &c.Family, &c.Name, &c.Position,
-		&c.Version, &setup, &lastTaken, &lastDue, &from, &revision}, owner.targets()...), func() error {
+		&c.Version, &setup, &lastTaken, &lastDue, &from, &revision, &c.Retired}, owner.targets()...), func() error {
 		v := c
 		if err := owner.into(&v, g.settings.Owner, g.now); err != nil {
 			return err
@@ -342,7 +352,7 @@ func (g *gathering) assemble(ctx context.Context, tx pgx.Tx) ([]plant.StationSta
 	out := make([]plant.StationState, len(g.stations))
 	for i, st := range g.stations {
 		for _, m := range g.machines {
-			if m.StationID == st.ID {
+			if m.StationID == st.ID && !m.Retired {
 				st.Machines = append(st.Machines, *m)
 			}
 		}

@@ -36,18 +36,22 @@ func (s *Store) findPlant(ctx context.Context) error {
 }
 
 // Plant reads the plant; NotFound when the database is still empty.
-func (s *Store) Plant(ctx context.Context) (plant.Plant, error) {
+func (s *Store) Plant(ctx context.Context) (plant.Plant, error) { return s.plantFrom(ctx, s.pool) }
+
+func (s *Store) plantFrom(ctx context.Context, q querier) (plant.Plant, error) {
 	var p plant.Plant
 	var zone string
-	err := s.pool.QueryRow(ctx, `select id, name, time_zone, demo from plant where id = $1`, s.plant()).
-		Scan(&p.ID, &p.Name, &zone, &p.Demo)
+	var confirmed *time.Time
+	err := q.QueryRow(ctx, `select id, name, time_zone, demo, confirmed_at from plant where id = $1`, s.plant()).
+		Scan(&p.ID, &p.Name, &zone, &p.Demo, &confirmed)
+	p.ConfirmedAt = orZero(confirmed)
 	if err != nil {
 		return p, missing(err, "No plant has been set up here yet.")
 	}
 	if p.Location, err = time.LoadLocation(zone); err != nil {
 		return p, fmt.Errorf("time zone of the plant: %w", err)
 	}
-	rows, err := s.pool.Query(ctx, `select id, name, extract(epoch from starts)::bigint from shift where plant_id = $1 order by starts`, p.ID)
+	rows, err := q.Query(ctx, `select id, name, extract(epoch from starts)::bigint from shift where plant_id = $1 and retired_at is null order by starts`, p.ID)
 	if err != nil {
 		return p, fmt.Errorf("read shifts: %w", err)
 	}
@@ -70,8 +74,8 @@ func (s *Store) CreatePlant(ctx context.Context, p plant.Plant) error {
 	now := s.now()
 	err := s.inTx(ctx, func(tx pgx.Tx) error {
 		b := &pgx.Batch{}
-		b.Queue(`insert into plant (id, name, time_zone, demo, created_at) values ($1, $2, $3, $4, $5)`,
-			p.ID, p.Name, p.Location.String(), p.Demo, now)
+		b.Queue(`insert into plant (id, name, time_zone, demo, created_at, confirmed_at) values ($1, $2, $3, $4, $5, $6)`,
+			p.ID, p.Name, p.Location.String(), p.Demo, now, timeOrNull(p.ConfirmedAt))
 		for _, sh := range p.Shifts {
 			b.Queue(`insert into shift (id, plant_id, name, starts) values ($1, $2, $3, make_interval(secs => $4)::time)`,
 				newID(), p.ID, sh.Name, sh.Starts.Seconds())
@@ -101,60 +105,29 @@ func (s *Store) arrange(ctx context.Context, what string, subject, person uuid.U
 	})
 }
 
-// taken turns a violated natural key into words.
-func taken(err error, constraint, message string) error {
-	if violates(err, constraint) {
-		return &plant.Error{Kind: plant.Conflict, Field: "name", Message: message, Err: err}
-	}
-	return err
-}
-
 // AddLine adds a lane.
 func (s *Store) AddLine(ctx context.Context, l plant.Line, by uuid.UUID) error {
-	return s.arrange(ctx, "line added", l.ID, by, map[string]any{"name": l.Name}, func(tx pgx.Tx) error {
-		_, err := tx.Exec(ctx, `insert into line (id, plant_id, name, position) values ($1, $2, $3, $4)`, l.ID, s.plant(), l.Name, l.Position)
-		return taken(err, "line_name_once", "There is a line of this name already.")
-	})
+	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.addLine(ctx, l) })
 }
 
 // AddStation adds a station to a line.
 func (s *Store) AddStation(ctx context.Context, st plant.Station, by uuid.UUID) error {
-	return s.arrange(ctx, "station added", st.ID, by, map[string]any{"name": st.Name, "line": st.LineID}, func(tx pgx.Tx) error {
-		_, err := tx.Exec(ctx, `insert into station (id, plant_id, line_id, name, family, position) values ($1, $2, $3, $4, $5, $6)`,
-			st.ID, s.plant(), st.LineID, st.Name, st.Family, st.Position)
-		return taken(err, "station_name_once", "There is a station of this name already.")
-	})
+	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.addStation(ctx, st) })
 }
 
 // AddMachine adds a machine with its streams.
 func (s *Store) AddMachine(ctx context.Context, m plant.Machine, by uuid.UUID) error {
-	return s.arrange(ctx, "machine added", m.ID, by, map[string]any{"name": m.Name, "station": m.StationID}, func(tx pgx.Tx) error {
-		_, err := tx.Exec(ctx, `insert into machine (id, plant_id, station_id, name, position, parts_per_hour) values ($1, $2, $3, $4, $5, $6)`,
-			m.ID, s.plant(), m.StationID, m.Name, m.Position, m.PartsPerHour)
-		if err != nil {
-			return taken(err, "machine_name_once", "There is a machine of this name already.")
-		}
-		for i, st := range m.Streams {
-			if _, err := tx.Exec(ctx, `insert into stream (id, plant_id, machine_id, name, position) values ($1, $2, $3, $4, $5)`,
-				st.ID, s.plant(), m.ID, st.Name, i); err != nil {
-				return taken(err, "stream_name_once", "A machine names each of its streams once.")
-			}
-		}
-		return nil
-	})
+	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.addMachine(ctx, m) })
 }
 
 // AddPart adds a part.
 func (s *Store) AddPart(ctx context.Context, p plant.Part, by uuid.UUID) error {
-	return s.arrange(ctx, "part added", p.ID, by, map[string]any{"name": p.Name, "family": p.Family}, func(tx pgx.Tx) error {
-		_, err := tx.Exec(ctx, `insert into part (id, plant_id, name, family) values ($1, $2, $3, $4)`, p.ID, s.plant(), p.Name, p.Family)
-		return taken(err, "part_name_once", "There is a part of this name already.")
-	})
+	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.addPart(ctx, p) })
 }
 
-// Parts lists the parts by name.
+// Parts lists the parts that are made, by name.
 func (s *Store) Parts(ctx context.Context) ([]plant.Part, error) {
-	rows, err := s.pool.Query(ctx, `select id, name, family from part where plant_id = $1 order by name`, s.plant())
+	rows, err := s.pool.Query(ctx, `select id, name, family from part where plant_id = $1 and retired_at is null order by name`, s.plant())
 	if err != nil {
 		return nil, fmt.Errorf("read parts: %w", err)
 	}
@@ -165,45 +138,15 @@ func (s *Store) Parts(ctx context.Context) ([]plant.Part, error) {
 
 // AddGauge adds a gauge.
 func (s *Store) AddGauge(ctx context.Context, g plant.Gauge, by uuid.UUID) error {
-	return s.arrange(ctx, "gauge added", g.ID, by, map[string]any{"name": g.Name}, func(tx pgx.Tx) error {
-		_, err := tx.Exec(ctx, `insert into gauge (id, plant_id, name, resolution, next_check, check_days) values ($1, $2, $3, $4::text::numeric, $5, $6)`,
-			g.ID, s.plant(), g.Name, decimalOrNull(g.Resolution), timeOrNull(g.NextCheck), g.CheckDays)
-		return taken(err, "gauge_name_once", "There is a gauge of this name already.")
-	})
+	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.addGauge(ctx, g) })
 }
 
-// AddCharacteristic adds a characteristic with the first version of its set-up, its
-// state row and the head of its ledger chain.
+// AddCharacteristic adds a characteristic with the first version of its set-up.
 func (s *Store) AddCharacteristic(ctx context.Context, c plant.Characteristic, setup plant.Setup, by uuid.UUID) error {
-	setup.Version, setup.MadeAt = 1, s.now()
-	if err := setup.Validate(); err != nil {
-		return err
-	}
-	err := s.inTx(ctx, func(tx pgx.Tx) error {
-		_, err := tx.Exec(ctx, `insert into characteristic (id, plant_id, station_id, machine_id, part_id, family, name, position)
-			values ($1, $2, $3, $4, $5, $6, $7, $8)`,
-			c.ID, s.plant(), c.StationID, c.MachineID, orNull(c.PartID), c.Family, c.Name, c.Position)
-		if err != nil {
-			return taken(err, "characteristic_name_once", "This machine has a characteristic of this name already.")
-		}
-		if err := s.insertSetup(ctx, tx, c.ID, setup, by); err != nil {
-			return err
-		}
-		entry, head, err := ledger.Seal(c.ID, ledger.Head{}, setupBody(c.ID, setup, by))
-		if err != nil {
-			return err
-		}
-		b := &pgx.Batch{}
-		s.queueLedger(b, entry)
-		b.Queue(`insert into characteristic_state (characteristic_id, plant_id, station_id, setup_version, ledger_seq, ledger_hash)
-			values ($1, $2, $3, $4, $5, $6)`, c.ID, s.plant(), c.StationID, setup.Version, head.Seq, head.Hash[:])
-		return tx.SendBatch(ctx, b).Close()
-	})
+	err := s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.addCharacteristic(ctx, c, setup) })
 	if err != nil {
 		return fmt.Errorf("add characteristic: %w", err)
 	}
-	s.measured.Delete(c.StationID)
-	s.changed(c.StationID)
 	return nil
 }
 
@@ -241,12 +184,15 @@ func (s *Store) insertSetup(ctx context.Context, tx pgx.Tx, id uuid.UUID, v plan
 const selectSetup = `select version, unit, decimals, target::text, lower_spec::text, upper_spec::text, worse, chart, size,
 	plan, control_plan, gauge_id, made_at from setup`
 
-func scanSetup(r pgx.CollectableRow) (plant.Setup, error) {
+func scanSetup(r pgx.CollectableRow) (plant.Setup, error) { return scanSetupOf(r) }
+
+// scanSetupOf reads a set-up from a row that begins with the columns of before.
+func scanSetupOf(r pgx.CollectableRow, before ...any) (plant.Setup, error) {
 	var v plant.Setup
 	var target, lower, upper *string
 	var gauge *uuid.UUID
 	var plan, control []byte
-	err := r.Scan(&v.Version, &v.Unit, &v.Decimals, &target, &lower, &upper, &v.Worse, &v.Chart, &v.Size, &plan, &control, &gauge, &v.MadeAt)
+	err := r.Scan(append(before, &v.Version, &v.Unit, &v.Decimals, &target, &lower, &upper, &v.Worse, &v.Chart, &v.Size, &plan, &control, &gauge, &v.MadeAt)...)
 	if err != nil {
 		return v, err
 	}

@@ -103,7 +103,7 @@ var sealed = []string{
 
 // CheckRecord compares the tables with the ledger: subgroups and their statistics,
 // set-ups, revisions, matters and what was done about them, reaction plans, boundaries,
-// changes, machine states, people and devices. A chain that holds
+// changes, machine states, people and devices, and what the plant has. A chain that holds
 // says nothing about a table that was changed beside it. The ledger itself is
 // VerifyLedger's question. It writes nothing.
 func (s *Store) CheckRecord(ctx context.Context) (out []Difference, err error) {
@@ -115,7 +115,7 @@ func (s *Store) CheckRecord(ctx context.Context) (out []Difference, err error) {
 }
 
 func checkRecord(ctx context.Context, q querier) (out []Difference, err error) {
-	for _, sql := range slices.Concat(sealed, sealedSettings, sealedReaction, sealedEscalation, sealedProduct, sealedPeople, sealedOwner) {
+	for _, sql := range slices.Concat(sealed, sealedSettings, sealedReaction, sealedEscalation, sealedProduct, sealedPeople, sealedOwner, sealedThings) {
 		rows, err := q.Query(ctx, sql+` limit 100`)
 		if err != nil {
 			return nil, fmt.Errorf("compare with the ledger: %w", err)

@@ -36,7 +36,7 @@ func TestQualificationInTheBrowser(t *testing.T) {
 	b.Keys("\r")
 	b.WaitFor(`location.pathname === "/admin"`)
 	b.Accessible("start page")
-	b.Click(`.admin-panel a[href="/admin/qualification"]`)
+	b.Click(`.setup-cards a[href="/admin/qualification"]`)
 	b.WaitFor(`document.querySelector("[data-testid=never]")`)
 	b.Accessible("not run yet")
 	b.Click(`[data-testid=never] button`)

@@ -86,6 +86,13 @@ func (r *runner) run(ctx context.Context, opt qualify.Options) (qualify.Record, 
 	}
 }
 
+// nothing is the record of a plant in which nothing is set up.
+type nothing struct{ Store }
+
+func (nothing) Outline(context.Context) (plant.Outline, error) {
+	return plant.Outline{Plant: plant.Plant{Name: "Kestrel Row", Location: zone}}, nil
+}
+
 // site is the surface behind the real router, with real sessions.
 type site struct {
 	*httptest.Server
@@ -103,7 +110,7 @@ func newSite(t testing.TB, run Runner) *site {
 		all = append(all, plant.Person{ID: uuid.New(), Login: string(r), Name: strings.ToUpper(string(r)[:1]) + string(r)[1:] + " 1", Roles: plant.Roles{r}, Active: true})
 	}
 	sessions := auth.NewSessions(auth.SessionOptions{Store: memstore.NewWithCleanupInterval(0), People: all, PlainHTTP: true, Log: log, Fail: web.SessionFault(log)})
-	s.admin = New(Deps{Log: slog.New(slog.NewTextHandler(s.log, nil)), Machine: "press-hall-1", Run: run,
+	s.admin = New(Deps{Log: slog.New(slog.NewTextHandler(s.log, nil)), Machine: "press-hall-1", Run: run, Store: nothing{},
 		About: func(context.Context) (Installation, error) { return Installation{}, nil }})
 	s.Server = httptest.NewServer(web.New(web.Config{Log: log, Now: func() time.Time { return noon }, Sessions: sessions, Checker: all, Hub: hub,
 		Plant: func() plant.Plant { return plant.Plant{Name: "Kestrel Row", Location: zone} }, Admin: s.admin}))

@@ -67,7 +67,7 @@ var sheets = map[Surface][]string{
 	Station: {"css/chart.css", "css/station.css"},
 	Board:   {"css/chart.css", "css/board.css"},
 	Desk:    {"css/chart.css", "css/desk.css"},
-	Admin:   {"css/desk.css"},
+	Admin:   {"css/admin.css", "css/setup.css"},
 	Door:    {"css/door.css"},
 }
 

@@ -106,6 +106,7 @@ type Revision struct {
 	To           *Time      `json:"basis_to,omitempty"`
 	Subgroups    int        `json:"basis_subgroups"`
 	LeftOut      []LeftOut  `json:"left_out,omitempty"`
+	Given        bool       `json:"given,omitempty"` // centre and sigma were stated, not computed
 	Reason       string     `json:"reason"`
 	InForceFrom  Time       `json:"in_force_from"`
 	Signature    *Signature `json:"signature,omitempty"`

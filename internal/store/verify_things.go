@@ -1,0 +1,13 @@
+package store
+
+// sealedThings compares the names of what the plant has, and whether it is retired, with
+// the newest that was sealed about each.
+var sealedThings = []string{`with e as (select seq, (b->>'subject')::uuid as subject, b->'content' as content
+		from (select seq, convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'arrangement') x where b->'content' is not null),
+	named as (select distinct on (subject) subject, content->>'name' as name from e where content ? 'name' order by subject, seq desc),
+	retired as (select distinct on (subject) subject, (content->>'retired')::boolean as retired from e where content ? 'retired' order by subject, seq desc),
+	t as (select id, name, retired_at from line union all select id, name, retired_at from station union all select id, name, retired_at from machine
+		union all select id, name, retired_at from part union all select id, name, retired_at from gauge union all select id, name, retired_at from characteristic)
+	select t.id, format('%s is not on record as it was sealed', t.name) from t
+	join named n on n.subject = t.id left join retired r on r.subject = t.id
+	where n.name <> t.name or coalesce(r.retired, false) <> (t.retired_at is not null)`}
