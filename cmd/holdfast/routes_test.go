@@ -137,7 +137,9 @@ var routeTable = []routeRow{
 	{"GET /station/{station}/round/{round}", takers, 200},
 	{"GET /station/{station}/matter/{matter}", takers, 200},
 	{"POST /station/{station}/matter/{matter}/take", takers, 409}, // a version that nobody saw
+	{"POST /station/{station}/matter/{matter}/step", takers, 422},
 	{"POST /station/{station}/matter/{matter}/close", takers, 422},
+	{"POST /station/{station}/matter/{matter}/verify", takers, 422}, // without a fix to verify
 	{"GET /station/{station}/change", takers, 200},
 	{"POST /station/{station}/change", takers, 422},
 	{"GET /station/{station}/change/{characteristic}", takers, 200},

@@ -97,7 +97,7 @@ func (b *builder) structure(ctx context.Context, st *store.Store, hash Hash) err
 		}
 		b.walkers = append(b.walkers, w)
 	}
-	return nil
+	return b.plans(ctx, st, by)
 }
 
 // causes fills the catalogue with what has ever gone wrong, by family of stations.

@@ -41,7 +41,6 @@ type followUp struct {
 	at     time.Time
 	matter uuid.UUID
 	track  *track
-	taken  bool
 }
 
 func newWalker(b *builder, pl place, index int, s plant.Station, m plant.Machine, parts map[string]uuid.UUID) *walker {
@@ -298,38 +297,19 @@ func (w *walker) freeze(ctx context.Context, t *track) error {
 	return nil
 }
 
-// act is what somebody does about a matter: takes it, and some time later closes it
-// with what was found.
+// act is the next thing that somebody does about a matter.
 func (w *walker) act(ctx context.Context, f followUp) error {
-	m, err := w.store.Matter(ctx, f.matter)
+	h := hands{store: w.store, rng: w.rng, track: f.track, day: w.day(), operator: w.operator(), supervisor: w.b.people[plant.Supervisor][0], now: w.at,
+		turn: func(found fault) error { return w.turn(ctx, f.track, -found.shift*f.track.sigma, found.action) }}
+	again, err := h.next(ctx, f.matter)
 	if err != nil {
 		return err
 	}
-	if !m.Open() {
-		return nil
-	}
-	who := w.operator()
-	if !f.taken {
-		if err := w.store.TakeMatter(ctx, m.ID, m.Version, who); err != nil {
-			return err
-		}
-		f.at, f.taken = w.at.Add(w.minutes(12, 70)), true
+	if again > 0 {
+		f.at = w.at.Add(again)
 		w.follow = append(w.follow, f)
-		return nil
 	}
-	req := plant.ClosingRequest{Matter: m.ID, Version: m.Version, Person: who, Cause: "Not found"}
-	if found, ok := f.track.find(w.day()); ok {
-		req.Cause, req.Action = found.cause, found.action
-		if found.turn {
-			if err := w.turn(ctx, f.track, -found.shift*f.track.sigma, found.action); err != nil {
-				return err
-			}
-			req.FixedAt = w.at
-		}
-	} else if f.track.hasOpenFault(w.day()) {
-		return nil // it stays open into the visitor's day
-	}
-	return w.store.CloseMatter(ctx, req)
+	return nil
 }
 
 func (t *track) hasOpenFault(day float64) bool {

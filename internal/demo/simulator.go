@@ -24,8 +24,10 @@ type Simulator struct {
 	now    func() time.Time
 	begun  time.Time
 	people []uuid.UUID // operators
-	tracks map[uuid.UUID]*track
-	waits  map[uuid.UUID]time.Time // when somebody will come to what is due or open
+
+	supervisor uuid.UUID
+	tracks     map[uuid.UUID]*track
+	waits      map[uuid.UUID]time.Time // when somebody will come to what is due or open
 }
 
 // NewSimulator makes a simulator of the works that the store holds.
@@ -39,6 +41,9 @@ func NewSimulator(ctx context.Context, st *store.Store, log *slog.Logger, now fu
 	for _, p := range all {
 		if p.Roles.Has(plant.Operator) {
 			s.people = append(s.people, p.ID)
+		}
+		if p.Roles.Has(plant.Supervisor) {
+			s.supervisor = p.ID
 		}
 	}
 	if len(s.people) == 0 {
@@ -192,14 +197,11 @@ func (s *Simulator) matters(ctx context.Context, st plant.StationState) error {
 			}
 			continue
 		}
-		if m.TakenBy != s.people[0] || !s.ripe(m.ID, 15*time.Minute, 45*time.Minute) {
+		if m.TakenBy != s.people[0] || !s.ripe(m.ID, 3*time.Minute, 9*time.Minute) {
 			continue
 		}
-		req := plant.ClosingRequest{Matter: m.ID, Version: m.Version, Person: s.people[0], Cause: "Not found"}
-		if f, ok := t.find(s.days()); ok {
-			req.Cause, req.Action = f.cause, f.action
-		}
-		if err := s.store.CloseMatter(ctx, req); err != nil && !plant.IsKind(err, plant.Conflict) {
+		h := hands{store: s.store, rng: s.rng, track: t, day: s.days(), operator: s.people[0], supervisor: s.supervisor}
+		if _, err := h.next(ctx, m.ID); err != nil && !plant.IsKind(err, plant.Conflict) {
 			return err
 		}
 	}

@@ -147,7 +147,7 @@ func (m Matter) Progress() Progress {
 		p.Confirm, p.Verify = p.Confirm || plan.Confirm, p.Verify || plan.Verify
 		for i, s := range plan.Steps {
 			w := WalkStep{PlanStep: s, Kind: k.Kind, Plan: plan.ID, Step: i + 1}
-			w.Answer, w.Remedy = m.answer(p.Attempt, w, false), m.answer(p.Attempt, w, true)
+			w.Answer, w.Remedy = m.Answered(p.Attempt, w.Plan, w.Step, false), m.Answered(p.Attempt, w.Plan, w.Step, true)
 			p.Steps = append(p.Steps, w)
 		}
 	}
@@ -176,12 +176,13 @@ func (m Matter) stage(p Progress) Stage {
 	return StageReady
 }
 
-// answer is the one that counts: the last that was given.
-func (m Matter) answer(attempt int, w WalkStep, remedy bool) *StepAnswer {
+// Answered is the answer to a step that counts in an attempt: the last that was given;
+// nil when there is none.
+func (m Matter) Answered(attempt int, plan uuid.UUID, step int, remedy bool) *StepAnswer {
 	var last *StepAnswer
 	for i := range m.Answers {
 		a := &m.Answers[i]
-		if a.Attempt == attempt && a.Plan == w.Plan && a.Step == w.Step && a.Remedy == remedy && (last == nil || a.Seq > last.Seq) {
+		if a.Attempt == attempt && a.Plan == plan && a.Step == step && a.Remedy == remedy && (last == nil || a.Seq > last.Seq) {
 			last = a
 		}
 	}

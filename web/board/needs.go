@@ -124,6 +124,9 @@ func newMatter(f ui.Format, st *plant.StationState, c *plant.CharacteristicState
 	v.Say = f.Words.T("board.say", st.Name, v.Why)
 	if !m.TakenAt.IsZero() {
 		v.Taken = f.Words.T("board.taken", m.TakenByName, f.Clock(m.TakenAt))
+		if where := ui.StageWords(f.Words, m.Progress()); where != "" {
+			v.Taken = f.Words.T("matter.where-and-taken", where, v.Taken)
+		}
 	}
 	v.Call = matterCall(f, st, c)
 	return v

@@ -62,6 +62,9 @@ func ownerFact(f ui.Format, c plant.CharacteristicState) fact {
 	switch {
 	case c.Matter != nil && c.Matter.TakenByName != "":
 		v.Sub = w.T("desk.fact.taken", c.Matter.TakenByName, f.Clock(c.Matter.TakenAt))
+		if where := ui.StageWords(w, c.Matter.Progress()); where != "" {
+			v.Sub = w.T("matter.where-and-taken", where, v.Sub)
+		}
 	case c.Matter != nil:
 		v.Sub = w.T("desk.fact.not-taken")
 	default:

@@ -133,6 +133,9 @@ func openTask(f ui.Format, station uuid.UUID, c plant.CharacteristicState) taskV
 		When: f.Since(c.Matter.OpenedAt), Sub: f.Words.T("station.nobody-took")}
 	if c.Matter.TakenByName != "" {
 		t.Sub = f.Words.T("station.taken-by", c.Matter.TakenByName)
+		if where := ui.StageWords(f.Words, c.Matter.Progress()); where != "" {
+			t.Sub = f.Words.T("matter.where-and-who", where, c.Matter.TakenByName)
+		}
 	}
 	return t
 }

@@ -26,7 +26,10 @@ type Store interface {
 	Correct(ctx context.Context, c plant.Correction) (plant.PartAnswer, error)
 	Matter(ctx context.Context, id uuid.UUID) (plant.Matter, error)
 	TakeMatter(ctx context.Context, id uuid.UUID, version int, person uuid.UUID) error
+	AnswerStep(ctx context.Context, a plant.StepAnswer) error
 	CloseMatter(ctx context.Context, c plant.ClosingRequest) error
+	VerifyFix(ctx context.Context, v plant.VerifyRequest) error
+	PlanInForce(ctx context.Context, characteristic uuid.UUID, kind plant.MatterKind) (*plant.ReactionPlan, error)
 	LogChange(ctx context.Context, c plant.Change) error
 	SetMachine(ctx context.Context, m plant.MachineState) error
 	Causes(ctx context.Context, family string) ([]plant.Cause, error)
@@ -79,7 +82,9 @@ func (s *Surface) Routes(r chi.Router) {
 	get("/{station}/round/{round}", s.showVerdict)
 	get("/{station}/matter/{matter}", s.showMatter)
 	post("/{station}/matter/{matter}/take", s.takeMatter)
+	post("/{station}/matter/{matter}/step", s.answerStep)
 	post("/{station}/matter/{matter}/close", s.closeMatter)
+	post("/{station}/matter/{matter}/verify", s.verifyFix)
 	get("/{station}/change", s.showChange)
 	post("/{station}/change", s.logChange)
 	get("/{station}/change/{characteristic}", s.showAdjustment)

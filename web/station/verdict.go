@@ -283,6 +283,10 @@ func (v *verdictView) step(f ui.Format, st plant.StationState, m told, history p
 	if open.TakenByName == "" {
 		v.Matter.Take = path(st.ID, "matter", open.ID.String(), "take")
 	}
+	if step, more, ok := fixWords(f, *open, taken, len(m.Firings) > 0); ok {
+		v.Step, v.StepMore = step, more
+		return
+	}
 	switch {
 	case m.Verdict == plant.Hold:
 		v.Step, v.StepMore = w.T("station.step-hold"), w.T("station.step-hold-more")

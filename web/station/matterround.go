@@ -1,0 +1,46 @@
+package station
+
+import (
+	"context"
+	"time"
+
+	"holdfast/internal/plant"
+	"holdfast/web/ui"
+)
+
+// fixWords say what a round after a fix means for the matter that waits for it. ok is
+// false when it means nothing in particular.
+func fixWords(f ui.Format, m plant.Matter, taken time.Time, fired bool) (step, more string, ok bool) {
+	n := len(m.Fixes)
+	if n == 0 || taken.Before(m.Fixes[n-1].Since()) {
+		return "", "", false
+	}
+	w := f.Words
+	switch p := m.Progress(); {
+	case fired && p.Fix == nil:
+		return w.T("matter.round-refutes"), w.T("matter.round-refutes-more"), true
+	case !fired && (p.Stage == plant.StageReady || p.Stage == plant.StageVerifying):
+		return w.T("matter.round-confirms"), w.T("matter.round-confirms-more"), true
+	}
+	return "", "", false
+}
+
+// overdueSteps are what the plan says while a round of the station is overdue. They end
+// with the round and keep nobody from taking it.
+func (s *Surface) overdueSteps(ctx context.Context, st plant.StationState) ([]string, error) {
+	for _, c := range byDue(st.Characteristics) {
+		if c.Due.State < plant.Late {
+			continue
+		}
+		plan, err := s.store.PlanInForce(ctx, c.ID, plant.MatterOverdue)
+		if err != nil || plan == nil {
+			return nil, err
+		}
+		var steps []string
+		for _, step := range plan.Steps {
+			steps = append(steps, step.Says)
+		}
+		return steps, nil
+	}
+	return nil, nil
+}
