@@ -156,6 +156,11 @@ var routeTable = []routeRow{
 	{"GET /desk/", deskers, 200},
 	{"GET /desk/settings", deskers, 200},
 	{"POST /desk/settings", setters, 422},
+	{"GET /desk/plans", deskers, 200},
+	{"GET /desk/plan", deskers, 404}, // of no kind
+	{"POST /desk/plan", setters, 404},
+	{"GET /desk/causes", deskers, 200},
+	{"POST /desk/causes", setters, 422},
 	{"GET /desk/characteristic/{id}", deskers, 200},
 	{"GET /desk/characteristic/{id}/revisions", deskers, 200},
 	{"GET /desk/characteristic/{id}/adjusting-points", deskers, 200},

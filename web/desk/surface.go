@@ -23,6 +23,13 @@ type Store interface {
 	RevisionAt(ctx context.Context, characteristic uuid.UUID, at time.Time) (plant.Revision, error)
 	Freeze(ctx context.Context, f plant.FreezeRequest) (plant.Revision, error)
 	Causes(ctx context.Context, family string) ([]plant.Cause, error)
+	AllCauses(ctx context.Context) ([]plant.Cause, error)
+	NewCause(ctx context.Context, c plant.Cause, by uuid.UUID) error
+	RenameCause(ctx context.Context, id uuid.UUID, name string, by uuid.UUID) error
+	RetireCause(ctx context.Context, id uuid.UUID, retired bool, by uuid.UUID) error
+	Plans(ctx context.Context) ([]plant.ReactionPlan, error)
+	PlanVersions(ctx context.Context, scope plant.PlanScope, kind plant.MatterKind) ([]plant.ReactionPlan, error)
+	SavePlan(ctx context.Context, p plant.ReactionPlan) (plant.ReactionPlan, error)
 	Settings(ctx context.Context) (plant.Settings, error)
 	SettingsVersions(ctx context.Context) ([]plant.Settings, error)
 	ChangeSettings(ctx context.Context, c plant.SettingsChange) (plant.Settings, error)
@@ -56,6 +63,9 @@ func New(d Deps) *Desk { return &Desk{log: d.Log, store: d.Store, signer: d.Sign
 func (d *Desk) Routes(r chi.Router) {
 	r.Get("/", ui.Handle(d.log, d.list))
 	r.Get("/settings", ui.Handle(d.log, d.showSettings))
+	r.Get("/plans", ui.Handle(d.log, d.showPlans))
+	r.Get("/plan", ui.Handle(d.log, d.showPlan))
+	r.Get("/causes", ui.Handle(d.log, d.showCauses))
 	r.Get("/characteristic/{id}", ui.Handle(d.log, d.chart))
 	r.Get("/characteristic/{id}/revisions", ui.Handle(d.log, d.revisions))
 	r.Get("/characteristic/{id}/adjusting-points", ui.Handle(d.log, d.showKnobs))
@@ -63,6 +73,8 @@ func (d *Desk) Routes(r chi.Router) {
 		r.Use(ui.Require(plant.SetLimits))
 		r.Post("/settings", ui.Handle(d.log, d.changeSettings))
 		r.Post("/characteristic/{id}/adjusting-points", ui.Handle(d.log, d.saveKnob))
+		r.Post("/plan", ui.Handle(d.log, d.editPlan))
+		r.Post("/causes", ui.Handle(d.log, d.editCauses))
 		r.Get("/characteristic/{id}/study", ui.Handle(d.log, d.showStudy))
 		r.Get("/characteristic/{id}/study/freeze", ui.Handle(d.log, d.showFreeze))
 		r.Post("/characteristic/{id}/study/freeze", ui.Handle(d.log, d.freeze))
