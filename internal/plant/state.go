@@ -54,6 +54,7 @@ type CharacteristicState struct {
 	LastDue   time.Time
 	Due       Due
 	Machine   MachineNow
+
 	Gauge     *GaugeNow     // that it is measured with; nil: none is named
 	Reach     *Reach        // of the open matter; nil: none, or not found yet
 	Contained []Containment // still open, the oldest first
@@ -64,6 +65,8 @@ type CharacteristicState struct {
 	Standing    Standing
 	Acceptance  Acceptance   // the newest, whether or not it still holds
 	Protections []Protection // that have not ended, oldest first
+
+	OverduePlan *ReactionPlan // in force, while a round is overdue; nil: none
 }
 
 // MachineNow is a machine with what it does at the moment.

@@ -24,11 +24,14 @@ func plansInForce(characteristic, kind, plantID string) string {
 
 const planColumns = `p.id, p.characteristic_id, p.family, p.kind, p.version, p.withdrawn, p.steps, p.confirm, p.verify, p.made_at, p.person_id, coalesce(n.name, '')`
 
-func scanPlan(r pgx.CollectableRow) (p plant.ReactionPlan, err error) {
+func onlyPlan(r pgx.CollectableRow) (plant.ReactionPlan, error) { return scanPlan(r) }
+
+// scanPlan reads a plan behind the columns that before takes.
+func scanPlan(r pgx.CollectableRow, before ...any) (p plant.ReactionPlan, err error) {
 	var characteristic, person *uuid.UUID
 	var steps []byte
-	if err = r.Scan(&p.ID, &characteristic, &p.Scope.Family, &p.Kind, &p.Version, &p.Withdrawn, &steps, &p.Confirm, &p.Verify,
-		&p.MadeAt, &person, &p.PersonName); err != nil {
+	if err = r.Scan(append(before, &p.ID, &characteristic, &p.Scope.Family, &p.Kind, &p.Version, &p.Withdrawn, &steps, &p.Confirm, &p.Verify,
+		&p.MadeAt, &person, &p.PersonName)...); err != nil {
 		return p, err
 	}
 	p.Scope.Characteristic, p.Person = orNil(characteristic), orNil(person)
@@ -43,7 +46,7 @@ func (s *Store) readPlans(ctx context.Context, q querier, sql string, args ...an
 	if err != nil {
 		return nil, fmt.Errorf("read reaction plans: %w", err)
 	}
-	plans, err := pgx.CollectRows(rows, scanPlan)
+	plans, err := pgx.CollectRows(rows, onlyPlan)
 	if err != nil {
 		return nil, fmt.Errorf("read reaction plans: %w", err)
 	}
@@ -141,4 +144,33 @@ func (s *Store) PlanInForce(ctx context.Context, characteristic uuid.UUID, kind 
 		return nil, err
 	}
 	return &plans[0], nil
+}
+
+// overduePlans adds the plans that count while a round is overdue, where one is.
+func (g *gathering) overduePlans(ctx context.Context, tx pgx.Tx) error {
+	var late []uuid.UUID
+	for id, c := range g.characteristics {
+		if c.Due.State >= plant.Late {
+			late = append(late, id)
+		}
+	}
+	if len(late) == 0 {
+		return nil
+	}
+	rows, err := tx.Query(ctx, `select l.id, `+planColumns+` from unnest($1::uuid[]) l (id) cross join lateral (`+plansInForce("l.id", "$2", "$3")+` limit 1) p
+		left join person n on n.id = p.person_id`, late, string(plant.MatterOverdue), g.s.plant())
+	if err != nil {
+		return fmt.Errorf("read plans for overdue rounds: %w", err)
+	}
+	var of uuid.UUID
+	_, err = pgx.CollectRows(rows, func(r pgx.CollectableRow) (p plant.ReactionPlan, err error) {
+		if p, err = scanPlan(r, &of); err == nil {
+			g.characteristics[of].OverduePlan = &p
+		}
+		return p, err
+	})
+	if err != nil {
+		return fmt.Errorf("read plans for overdue rounds: %w", err)
+	}
+	return nil
 }

@@ -115,7 +115,7 @@ func readFixes(rows pgx.Rows, matters map[uuid.UUID]*plant.Matter) error {
 }
 
 func readMatterPlans(rows pgx.Rows, matters map[uuid.UUID]*plant.Matter) error {
-	plans, err := pgx.CollectRows(rows, scanPlan)
+	plans, err := pgx.CollectRows(rows, onlyPlan)
 	if err != nil {
 		return err
 	}

@@ -377,7 +377,7 @@ func (g *gathering) assemble(ctx context.Context, tx pgx.Tx) ([]plant.StationSta
 		}
 		out[i] = *st
 	}
-	return out, nil
+	return out, g.overduePlans(ctx, tx)
 }
 
 // collected counts the subgroups since learning began, as far as it matters.

@@ -46,7 +46,7 @@ func TestAPlanIsWrittenShownAndKeptInVersions(t *testing.T) {
 	b.get(to).is(http.StatusOK).has("Version 1 is in force", "17 to 19.5\u00a0bar", "Outside: Set it to 18.", "A second person verifies it.", "Save as version 2")
 	b.post("/desk/plan", form).is(http.StatusConflict).has("Somebody has changed this plan meanwhile.", "First.", "Save as version 2")
 	own := "/desk/plan?kind=location+up&characteristic=" + s.Diameter.ID.String()
-	b.get(own).has("Nothing of its own. In force: as Family: turning.", "First.", "Save as version 1")
+	b.get(own).has("Nothing of its own. In force is the plan of: Family: turning.", "First.", "Save as version 1")
 	b.get("/desk/plans").is(http.StatusOK).has("2 steps, second person", "The plant")
 	reader.get(at).is(http.StatusOK).has("First.").hasNot(`data-testid="plan-form"`)
 	reader.post("/desk/plan", form).is(http.StatusForbidden)

@@ -185,7 +185,9 @@ func newCell(f ui.Format, s scopes, plans []plant.ReactionPlan, scope plant.Plan
 	cell.Text = f.Words.T("plan.none")
 	for _, w := range s.wider(scope) {
 		if newestPlan(plans, w, kind) != nil {
-			cell.Text = f.Words.T("plan.as", s.name(f, w))
+			if cell.Text = f.Words.T("plan.as-plant"); w.Family != "" {
+				cell.Text = f.Words.T("plan.as-family")
+			}
 			break
 		}
 	}

@@ -1,7 +1,6 @@
 package station
 
 import (
-	"context"
 	"time"
 
 	"holdfast/internal/plant"
@@ -23,24 +22,4 @@ func fixWords(f ui.Format, m plant.Matter, taken time.Time, fired bool) (step, m
 		return w.T("matter.round-confirms"), w.T("matter.round-confirms-more"), true
 	}
 	return "", "", false
-}
-
-// overdueSteps are what the plan says while a round of the station is overdue. They end
-// with the round and keep nobody from taking it.
-func (s *Surface) overdueSteps(ctx context.Context, st plant.StationState) ([]string, error) {
-	for _, c := range byDue(st.Characteristics) {
-		if c.Due.State < plant.Late {
-			continue
-		}
-		plan, err := s.store.PlanInForce(ctx, c.ID, plant.MatterOverdue)
-		if err != nil || plan == nil {
-			return nil, err
-		}
-		var steps []string
-		for _, step := range plan.Steps {
-			steps = append(steps, step.Says)
-		}
-		return steps, nil
-	}
-	return nil, nil
 }

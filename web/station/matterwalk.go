@@ -188,7 +188,7 @@ func readAnswer(r *http.Request, m plant.Matter) (plant.StepAnswer, stepForm, er
 	if a.Said == plant.SaidValue && typed.Value != "" {
 		value, err := plant.ParseDecimal(typed.Value)
 		if err != nil {
-			return a, typed, err
+			return a, typed, plant.Invalidf("value", "Type the value that you read.").Because(err)
 		}
 		a.Value = &value
 	}

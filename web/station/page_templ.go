@@ -369,10 +369,6 @@ func workPage(s ui.Shell, v workView) templ.Component {
 					return templ_7745c5c3_Err
 				}
 			}
-			templ_7745c5c3_Err = overduePlan(s.Words, v.Overdue).Render(ctx, templ_7745c5c3_Buffer)
-			if templ_7745c5c3_Err != nil {
-				return templ_7745c5c3_Err
-			}
 			if v.Round != nil {
 				templ_7745c5c3_Err = round(s.Words, *v.Round).Render(ctx, templ_7745c5c3_Buffer)
 				if templ_7745c5c3_Err != nil {

@@ -207,9 +207,6 @@ func (s *Surface) work(w http.ResponseWriter, r *http.Request) error {
 	if p := pick(st, want); len(p.Of) > 0 {
 		round := newRound(f, st, p, typesDeviation(r))
 		v.Round = &round
-		if v.Overdue, err = s.overdueSteps(r.Context(), st); err != nil {
-			return err
-		}
 	} else {
 		v.Idle = newIdle(f, st)
 	}
@@ -222,8 +219,6 @@ type workView struct {
 	Round *roundView
 	Idle  idleView
 	Done  string
-
-	Overdue []string // what the plan says while the round is overdue
 }
 
 func (s *Surface) renderWork(w http.ResponseWriter, r *http.Request, status int, st plant.StationState, v workView) error {
@@ -231,9 +226,6 @@ func (s *Surface) renderWork(w http.ResponseWriter, r *http.Request, status int,
 	shell.OwnMain = true
 	shell.Topics = []string{ui.TopicStation(st.ID)}
 	shell.Scripts = []string{"js/station-sent.js"}
-	if len(v.Overdue) > 0 {
-		shell.Styles = append(shell.Styles, reactionStyles)
-	}
 	if v.Round != nil {
 		shell.Scripts = append(shell.Scripts, "js/station-round.js")
 	}

@@ -22,6 +22,7 @@ type sideView struct {
 	ID       string
 	Station  uuid.UUID
 	Due      []taskView
+	Overdue  []string // what the plan says about the first of them that is overdue
 	Next     []taskView
 	More     int // coming samples beyond those in Next
 	Quiet    string
@@ -92,6 +93,11 @@ func newSide(f ui.Format, st plant.StationState) sideView {
 		switch {
 		case isDue(c):
 			v.Due = append(v.Due, dueTask(f, st.ID, c))
+			if v.Overdue == nil && c.OverduePlan != nil {
+				for _, step := range c.OverduePlan.Steps {
+					v.Overdue = append(v.Overdue, step.Says)
+				}
+			}
 		case c.Due.State != plant.Later:
 		case len(v.Next) < mostNext:
 			v.Next = append(v.Next, taskView{Href: measurePath(st.ID, c.ID), Name: c.Name, When: f.Clock(c.Due.At), Sub: f.Words.T("station.parts", c.Setup.Size)})

@@ -29,7 +29,6 @@ type Store interface {
 	AnswerStep(ctx context.Context, a plant.StepAnswer) error
 	CloseMatter(ctx context.Context, c plant.ClosingRequest) error
 	VerifyFix(ctx context.Context, v plant.VerifyRequest) error
-	PlanInForce(ctx context.Context, characteristic uuid.UUID, kind plant.MatterKind) (*plant.ReactionPlan, error)
 	LogChange(ctx context.Context, c plant.Change) error
 	SetMachine(ctx context.Context, m plant.MachineState) error
 	Causes(ctx context.Context, family string) ([]plant.Cause, error)
