@@ -48,7 +48,6 @@ type stepRow struct {
 	Off    bool   // not as it should be
 	Here   bool   // it is the one that is asked
 	Href   string // looks back at it
-	Label  string
 }
 
 // leaveOut are the reasons for which a step is left out, by word.
@@ -121,7 +120,6 @@ func newStepRow(f ui.Format, step plant.WalkStep, n int) stepRow {
 	row := stepRow{Number: itoa(n), Says: step.Says}
 	if step.Answer != nil {
 		row.Answer, row.Off = answerWords(f, step), step.Off(*step.Answer)
-		row.Label = f.Words.T("matter.see-answer", n, step.Says)
 	}
 	return row
 }

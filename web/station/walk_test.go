@@ -86,6 +86,7 @@ func TestAPlanIsWalkedStepByStep(t *testing.T) {
 	bad := s.MustRecord(t, s.Diameter, 14996, 14997, 14998, 14995, 14999)
 	b.get(s.at("round", bad.Round.String())).says("The fix did not hold.", "walk the plan again")
 	b.get(at).says("The fix did not hold. The plan is walked again.", "Step 1 of 3", "What did not hold", "signalled again at")
+	s.Clock.Advance(time.Minute)
 	b.answer(at, "yes", nil).is(http.StatusSeeOther)
 	b.answer(at, "value", url.Values{"value": {"16"}}).is(http.StatusSeeOther)
 	b.answer(at, "done", nil).is(http.StatusSeeOther) // set to 18 bar
@@ -168,7 +169,7 @@ func TestPlanIsWalkedWithAnInterruptionByTwoPeopleAndSigned(t *testing.T) {
 	second.Click("[data-testid=say-done]")
 	second.WaitFor(count + ` === "Step 2 of 3"`)
 	second.Fill("#step-value", "18.2")
-	second.Keys("\r")
+	second.Click("[data-testid=say-value]")
 	second.WaitFor(count + ` === "Step 3 of 3"`)
 
 	first.Open(at)
