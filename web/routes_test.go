@@ -46,6 +46,7 @@ var table = []row{
 	{route: "POST /sign-in/demo", may: everybody, status: 404},
 	{route: "POST /sign-out", may: everybody, status: 303},
 	{route: "POST /theme", may: everybody, status: 303},
+	{route: "POST /language", may: everybody, status: 422},
 	// Without an upgrade the hub answers 400 to those whom it would serve.
 	{route: "GET /live", path: "/live?topic=board", may: seers, status: 400},
 

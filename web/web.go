@@ -10,6 +10,7 @@ import (
 	"time"
 
 	"github.com/go-chi/chi/v5"
+	"github.com/google/uuid"
 
 	"holdfast/internal/auth"
 	"holdfast/internal/live"
@@ -66,6 +67,10 @@ type Config struct {
 
 	// Metrics answers scrapes at /metrics and asks for its own token; nil when nobody may.
 	Metrics http.Handler
+
+	// SetLanguage keeps the language that a person has chosen. Without it every choice
+	// is kept in the browser.
+	SetLanguage func(ctx context.Context, person uuid.UUID, language string) error
 
 	// Ready reports whether the server can do its work, for /readyz.
 	Ready func(ctx context.Context) error
@@ -125,6 +130,7 @@ func New(c Config) http.Handler {
 		if c.Authority != nil {
 			(&door.Trust{Log: c.Log, Authority: c.Authority}).Routes(r)
 		}
+		r.Post(ui.LanguageAddress, ui.Handle(c.Log, ui.SetLanguage(c.SetLanguage)))
 		(&door.Handler{Log: c.Log, Checker: c.Checker, Sessions: c.Sessions, Demo: c.DemoPeople, Tablet: c.Tablet, First: c.First}).Routes(r)
 		mount(r, ui.Station, c.Station)
 		mount(r, ui.Board, c.Board)
@@ -142,7 +148,7 @@ func mount(r chi.Router, name ui.Surface, s Surface) {
 		return
 	}
 	r.Route("/"+string(name), func(r chi.Router) {
-		r.Use(ui.Require(ui.ActionFor(name)))
+		r.Use(ui.Require(ui.ActionFor(name)), ui.Speak(name))
 		s.Routes(r)
 	})
 }
@@ -168,6 +174,9 @@ func (s *server) visitor(next http.Handler) http.Handler {
 		f := ui.FrameOf(r)
 		if p, ok := auth.FromContext(r.Context()); ok {
 			f.Person, f.SignedIn, f.Session = p, true, s.Sessions.ID(r.Context())
+			if own, ok := words.Known(p.Language); ok {
+				f.Words = own
+			}
 		}
 		f.Device, _ = auth.DeviceFrom(r.Context())
 		f.Revoked = auth.Revoked(r.Context())

@@ -145,6 +145,10 @@ func (p *program) join(ctx context.Context) error {
 	if p.Metrics.token != "" {
 		cfg.Metrics = p.metrics.Handler(p.Metrics.token)
 	}
+	cfg.SetLanguage = func(ctx context.Context, person plantID, language string) error {
+		defer p.sessions.Forget(person)
+		return p.store.SetLanguage(ctx, person, language)
+	}
 	if p.Demo && pl.Demo {
 		cfg.DemoPeople = p.store.People
 	}

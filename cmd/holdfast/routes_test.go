@@ -97,6 +97,7 @@ var routeTable = []routeRow{
 	{"GET /enrol", everybody, 200},
 	{"POST /enrol", everybody, 422},
 	{"POST /theme", everybody, 303},
+	{"POST /language", everybody, 422},
 	{"GET /live", watchers, 400}, // no upgrade was asked for
 	{"GET /admin/about", managers, 200},
 	{"GET /admin/", arrangers, 200},

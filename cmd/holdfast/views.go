@@ -15,7 +15,6 @@ import (
 	"holdfast/web/desk"
 	"holdfast/web/station"
 	"holdfast/web/ui"
-	"holdfast/web/words"
 )
 
 type plantID = uuid.UUID
@@ -50,13 +49,13 @@ func newViews(st *store.Store, p *atomic.Pointer[plant.Plant], now func() time.T
 func (v *views) changed(stations []uuid.UUID) []string {
 	v.mu.Lock()
 	defer v.mu.Unlock()
-	topics := []string{ui.TopicBoard}
+	topics := ui.InEveryLanguage(ui.Board, ui.TopicBoard)
 	for _, id := range stations {
 		v.dirty[id] = true
-		topics = append(topics, ui.TopicStation(id))
+		topics = append(topics, ui.InEveryLanguage(ui.Station, ui.TopicStation(id))...)
 		for c, st := range v.stations {
 			if st == id {
-				topics = append(topics, ui.TopicChart(c))
+				topics = append(topics, ui.InEveryLanguage(ui.Desk, ui.TopicChart(c))...)
 			}
 		}
 	}
@@ -122,18 +121,23 @@ func (v *views) render(ctx context.Context, topics []string) (map[string][]live.
 		return nil, err
 	}
 	p := *v.plant.Load()
-	f := ui.NewFormat(words.For("en"), p.Location, v.now())
+	now := v.now()
 	out := make(map[string][]live.Fragment, len(topics))
 	for _, topic := range topics {
+		what, w, ok := ui.TopicLanguage(topic)
+		if !ok {
+			continue
+		}
+		f := ui.NewFormat(w, p.Location, now)
 		var fragments []live.Fragment
 		var err error
-		if topic == ui.TopicBoard {
+		if what == ui.TopicBoard {
 			fragments, err = board.Fragments(f, p, v.states)
-		} else if id, ok := ui.StationOfTopic(topic); ok {
+		} else if id, ok := ui.StationOfTopic(what); ok {
 			if i, known := v.place[id]; known {
 				fragments, err = station.Fragments(f, v.states[i])
 			}
-		} else if id, ok := ui.ChartOfTopic(topic); ok {
+		} else if id, ok := ui.ChartOfTopic(what); ok {
 			fragments, err = v.chart(ctx, f, id)
 		}
 		if err != nil {

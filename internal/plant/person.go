@@ -42,6 +42,8 @@ type Person struct {
 	Roles  Roles
 	Active bool
 
+	Language string // in which pages speak to this person, "" when that is left to the device
+
 	Badge         string    // what the scanner types; "" when there is none
 	HasSecret     bool      // may sign in by login and secret, and sign records
 	HasPIN        bool      // may sign in by badge and PIN on an enrolled tablet

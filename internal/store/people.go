@@ -14,7 +14,7 @@ import (
 	"holdfast/internal/plant/ledger"
 )
 
-const selectPerson = `select id, login, name, roles, active, secret, coalesce(badge, ''), pin, erased_at, sessions_since from person`
+const selectPerson = `select id, login, name, roles, active, language, secret, coalesce(badge, ''), pin, erased_at, sessions_since from person`
 
 type personRow struct {
 	plant.Person
@@ -24,7 +24,7 @@ type personRow struct {
 func scanPerson(r pgx.CollectableRow) (p personRow, err error) {
 	var roles []string
 	var erased, since *time.Time
-	err = r.Scan(&p.ID, &p.Login, &p.Name, &roles, &p.Active, &p.secret, &p.Badge, &p.pin, &erased, &since)
+	err = r.Scan(&p.ID, &p.Login, &p.Name, &roles, &p.Active, &p.Language, &p.secret, &p.Badge, &p.pin, &erased, &since)
 	for _, role := range roles {
 		p.Roles = append(p.Roles, plant.Role(role))
 	}
@@ -97,6 +97,19 @@ func (s *Store) PeopleByID(ctx context.Context, ids []uuid.UUID) ([]plant.Person
 		p, err := scanPerson(r)
 		return p.Person, err
 	})
+}
+
+// SetLanguage keeps in which language pages speak to a person; "" leaves it to the
+// device. It is a preference and no fact, so it is not entered in the ledger.
+func (s *Store) SetLanguage(ctx context.Context, id uuid.UUID, language string) error {
+	tag, err := s.pool.Exec(ctx, `update person set language = $2 where id = $1 and plant_id = $3`, id, language, s.plant())
+	if err != nil {
+		return fmt.Errorf("set language: %w", err)
+	}
+	if tag.RowsAffected() == 0 {
+		return plant.NotFoundf("", "There is no such person.")
+	}
+	return nil
 }
 
 // signature binds a person's signature for the ledger. The caller has checked that

@@ -135,7 +135,7 @@ function start(form) {
     const key = event.target.closest("[data-key]");
     if (!key) return;
     if (!current) go(sections.find((s) => !s.root.hidden).inputs.at(-1));
-    type(current, key.dataset.key);
+    type(current, key.dataset.types ?? key.dataset.key);
     current.dispatchEvent(new Event("input", { bubbles: true }));
   });
 
@@ -201,11 +201,12 @@ function digits(text, decimals) {
   return m[1] === "-" || m[1] === "\u2212" ? 0 - units : units;
 }
 
-// text writes whole last digits as a number with its decimals.
-function text(units, decimals) {
+// text writes whole last digits as a number with its decimals and the decimal sign of
+// the page.
+function text(units, decimals, sign = ".") {
   const s = String(Math.abs(units)).padStart(decimals + 1, "0");
   const cut = s.length - decimals;
-  return (units < 0 ? "-" : "") + (decimals ? `${s.slice(0, cut)}.${s.slice(cut)}` : s);
+  return (units < 0 ? "-" : "") + (decimals ? `${s.slice(0, cut)}${sign}${s.slice(cut)}` : s);
 }
 
 const numberOr = (value, none) => (value === undefined ? none : Number(value));
@@ -307,7 +308,7 @@ class Section {
       if (input.value.trim() === "") continue;
       const units = this.units(input.value, from);
       if (units === null || Number.isNaN(units)) continue;
-      input.value = to === "deviation" ? String(units - this.target) : text(units, this.decimals);
+      input.value = to === "deviation" ? String(units - this.target) : text(units, this.decimals, this.falls.dataset.decimal);
     }
   }
 }

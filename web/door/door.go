@@ -207,6 +207,7 @@ func (h *Handler) signOut(w http.ResponseWriter, r *http.Request) error {
 func (h *Handler) render(w http.ResponseWriter, r *http.Request, status int, v signIn) error {
 	shell := ui.ShellFor(r, ui.Door, ui.FrameOf(r).Words.T("door.title"))
 	shell.Path = ui.SignInPath(v.To)
+	shell.BarEnd = ui.LanguageSwitch(shell)
 	var err error
 	if v.Demo, err = h.demoButtons(r); err != nil {
 		return err

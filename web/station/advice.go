@@ -56,11 +56,11 @@ func (s *Surface) adviser(ctx context.Context, f ui.Format, st plant.StationStat
 func (a *adviser) view() (adjustView, error) {
 	f, w, s := a.f, a.f.Words, a.c.Setup
 	v := adjustView{Action: path(a.st.ID, "change"), Token: uuid.Must(uuid.NewV7()).String(), Machine: a.c.MachineID.String(), ID: a.c.ID.String(),
-		Name: a.c.Name, Unit: s.Unit, Decimals: s.Decimals, By: 1, Size: plant.FormatUnits(1, s.Decimals),
+		Name: a.c.Name, Unit: s.Unit, Decimals: s.Decimals, By: 1, Size: f.Units(1, s.Decimals),
 		Up: w.T("station.larger"), Down: w.T("station.smaller"), Open: a.c.Matter != nil, Back: path(a.st.ID)}
 	v.Steps = w.T("station.steps-of", f.Units(1, s.Decimals), s.Unit)
 	if k := a.knob; k != nil {
-		v.Knob, v.Unit, v.Decimals, v.By, v.Size = k.ID.String(), k.Unit, k.Step.Decimals, k.Step.Units, k.Step.String()
+		v.Knob, v.Unit, v.Decimals, v.By, v.Size = k.ID.String(), k.Unit, k.Step.Decimals, k.Step.Units, f.Decimal(k.Step)
 		v.Steps = a.oneStep()
 		v.Up, v.Down = w.T("adjusting.up"), w.T("adjusting.down")
 		v.UpDoes, v.DownDoes = w.T("adjusting.makes-larger"), w.T("adjusting.makes-smaller")
@@ -151,7 +151,7 @@ func (a *adviser) advise(v *adjustView) error {
 	case plant.AdviseTurn:
 		v.Title = w.T("adjusting.turn", a.by(advice))
 		v.Says = []string{w.T("adjusting.since-signal", advice.Rounds, a.off(advice, advice.Offset), a.between(advice)), w.T("adjusting.cause-first")}
-		v.suggest(advice.Turn)
+		v.suggest(a.f, advice.Turn)
 	case plant.AdviseNone:
 		v.Title = w.T("adjusting.none")
 		v.Says = []string{w.T("adjusting.since-signal", advice.Rounds, a.off(advice, advice.Offset), a.between(advice)), w.T("adjusting.none-text")}
@@ -159,7 +159,7 @@ func (a *adviser) advise(v *adjustView) error {
 		v.Title = w.T("adjusting.set-up", a.by(advice))
 		v.Says = []string{w.T("adjusting.set-up-text", w.T("adjusting.after."+string(advice.SetUpBy)), f.Clock(advice.SetUpAt), advice.Try, a.off(advice, advice.Deviation)),
 			w.T("adjusting.set-up-why", advice.Try)}
-		v.suggest(advice.Turn)
+		v.suggest(a.f, advice.Turn)
 	case plant.AdviseSettled:
 		v.Title = w.T("adjusting.settled")
 		v.Says = []string{w.T("adjusting.set-up-text", w.T("adjusting.after."+string(advice.SetUpBy)), f.Clock(advice.SetUpAt), advice.Try, a.off(advice, advice.Deviation)),
@@ -170,12 +170,12 @@ func (a *adviser) advise(v *adjustView) error {
 
 // suggest puts the advised turn into the fields, where the person changes it to what was
 // really done.
-func (v *adjustView) suggest(turn plant.Decimal) {
+func (v *adjustView) suggest(f ui.Format, turn plant.Decimal) {
 	v.Direction = "up"
 	if turn.Units < 0 {
 		v.Direction, turn.Units = "down", -turn.Units
 	}
-	v.Size = turn.String()
+	v.Size = f.Decimal(turn)
 }
 
 // leave says what correcting the last round would be expected to do.

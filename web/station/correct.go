@@ -115,7 +115,7 @@ func newCorrectPart(f ui.Format, c plant.CharacteristicState, p plant.Point, typ
 			}
 			rv.Problem = typed.problems[i]
 		case i < len(p.Readings):
-			rv.Raw = plant.FormatUnits(p.Readings[i], p.Stats.Decimals)
+			rv.Raw = f.Units(p.Readings[i], p.Stats.Decimals)
 		}
 		v.Readings = append(v.Readings, rv)
 	}

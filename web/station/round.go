@@ -186,6 +186,15 @@ func newAsk(f ui.Format, e draftEntry) askView {
 	return a
 }
 
+// otherSign is the decimal sign that the language does not write. It is taken as well,
+// and the key says so.
+func otherSign(w *words.Printer) string {
+	if w.T("ui.decimal-sign") == "," {
+		return "."
+	}
+	return ","
+}
+
 // work is GET /station/{station}: the page that stays open all shift.
 func (s *Surface) work(w http.ResponseWriter, r *http.Request) error {
 	st, err := s.stationIn(r, chart.VerdictLength)

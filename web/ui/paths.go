@@ -12,6 +12,7 @@ const (
 	SignOutAddress   = "/sign-out"
 	StillHereAddress = "/still-here" // tells that somebody is at work on a page that sends nothing else
 	ThemeAddress     = "/theme"
+	LanguageAddress  = "/language"
 )
 
 // maxPath is the longest path that is gone back to, in bytes.

@@ -7,6 +7,7 @@ import (
 	"testing"
 
 	"holdfast/internal/plant"
+	"holdfast/web/words"
 )
 
 func TestLocalPathKeepsOnlyOurOwn(t *testing.T) {
@@ -107,5 +108,34 @@ func TestTopicsAskForTheRightsOfTheirPage(t *testing.T) {
 		if got != want || ok != (want != 0) {
 			t.Errorf("%q: %v, %v; want %v", topic, got, ok, want)
 		}
+	}
+}
+
+func TestTopicsNameTheLanguageOfTheirPage(t *testing.T) {
+	t.Parallel()
+	const id = "01900000-0000-7000-8000-000000000001"
+	for topic, want := range map[string]string{
+		"station/" + id: "en", "station/" + id + "@de": "de", "station/" + id + "@es": "es", "board": "en",
+		// Spelt otherwise, not there, or not spoken by the surface: the hub would render
+		// it for nobody.
+		"station/" + id + "@en": "", "station/" + id + "@de-AT": "", "station/" + id + "@": "", "station/" + id + "@de@de": "", "board@de": "",
+	} {
+		got := ""
+		if base, w, ok := TopicLanguage(topic); ok && strings.HasPrefix(topic, base) {
+			got = w.Lang()
+		}
+		if _, may := TopicAction(topic); got != want || may != (want != "") {
+			t.Errorf("%q is in %q, may be watched: %v; want %q", topic, got, may, want)
+		}
+	}
+	german := words.For("de")
+	if got := topicsIn(german, []string{"station/" + id}); len(got) != 1 || got[0] != "station/"+id+"@de" {
+		t.Errorf("a German page watches %v", got)
+	}
+	if got := InEveryLanguage(Board, TopicBoard); len(got) != 1 {
+		t.Errorf("the board is said in English alone, its topics are %v", got)
+	}
+	if got := InEveryLanguage(Station, "station/"+id); len(got) < 3 || got[0] != "station/"+id {
+		t.Errorf("the station has the topics %v", got)
 	}
 }

@@ -108,7 +108,7 @@ func urls(lists ...[]string) []string {
 func (s Shell) bodyAttributes() templ.Attributes {
 	a := templ.Attributes{"class": string(s.Surface)}
 	if len(s.Topics) > 0 {
-		a["data-live"] = "/live?" + url.Values{"topic": s.Topics}.Encode()
+		a["data-live"] = "/live?" + url.Values{"topic": topicsIn(s.Words, s.Topics)}.Encode()
 		a["data-sign-in"] = SignInPath(s.Path)
 	}
 	return a

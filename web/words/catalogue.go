@@ -132,13 +132,17 @@ var (
 )
 
 func init() {
-	d, err := Read(embedded, "en")
-	if err == nil {
-		english = d
-		err = Register("en", d)
-	}
-	if err != nil {
-		panic("words: the embedded catalogue is broken: " + err.Error())
+	for _, lang := range []string{"en", "de", "es"} {
+		d, err := Read(embedded, lang)
+		if err == nil {
+			if lang == "en" {
+				english = d
+			}
+			err = Register(lang, d)
+		}
+		if err != nil {
+			panic("words: the embedded catalogue is broken: " + err.Error())
+		}
 	}
 }
 
@@ -175,6 +179,9 @@ func Read(files fs.FS, folder string) (Dictionary, error) {
 		}
 		for k, m := range one {
 			key, _ := keyIn(path.Base(name), k) // looked at above
+			if _, twice := all[key]; twice {
+				return nil, fmt.Errorf("%s: %q stands in another file, too", name, k)
+			}
 			all[key] = m
 		}
 	}
@@ -201,6 +208,17 @@ func keysOf(data []byte) ([]string, error) {
 		}
 	}
 	return keys, nil
+}
+
+// surfacesOf are the first parts of the keys.
+func surfacesOf(dict map[string]entry) map[string]bool {
+	says := make(map[string]bool)
+	for key := range dict {
+		if surface, _, ok := strings.Cut(key, "."); ok {
+			says[surface] = true
+		}
+	}
+	return says
 }
 
 // entry marks a key as known.
@@ -238,7 +256,7 @@ func Register(lang string, d Dictionary) error {
 	if _, known := next.printers[tag.String()]; !known {
 		next.tags = append(next.tags, tag)
 	}
-	next.printers[tag.String()] = &Printer{tag: tag, dict: dict, base: base,
+	next.printers[tag.String()] = &Printer{tag: tag, dict: dict, base: base, says: surfacesOf(dict),
 		out: message.NewPrinter(tag, message.Catalog(cat))}
 	next.matcher = language.NewMatcher(next.tags)
 	current.Store(next)

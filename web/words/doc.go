@@ -50,7 +50,8 @@
 //
 //	"At most %d rules can be on.": "Höchstens %d Regeln können eingeschaltet sein."
 //
-// A page says it by Printer.Problem, or ui.ProblemOf at a field. A test reads the
+// An area with many of them may have a file of its own, problems-reaction.json. A page
+// says it by Printer.Problem, or ui.ProblemOf at a field. A test reads the
 // sources and names each sentence that a language lacks, and each that is said
 // nowhere any more.
 //

@@ -7,9 +7,12 @@ import (
 	"holdfast/internal/plant"
 )
 
-// problemFile holds the sentences of plant.Error in another language. Its keys are
-// the English formats as they stand in the sources, so English needs no such file.
-const problemFile = "problems.json"
+// problemFiles hold the sentences of plant.Error in another language: problems.json and,
+// for an area with many, problems-….json. Their keys are the English formats as they
+// stand in the sources, so English needs no such files.
+func problemFile(name string) bool {
+	return name == "problems.json" || strings.HasPrefix(name, "problems-")
+}
 
 const problemKey = "problem: "
 
@@ -50,7 +53,7 @@ func (p *Printer) Number(s string) string {
 // keyIn is the key under which a message of a file is kept, and an error when it
 // does not belong there.
 func keyIn(file, key string) (string, error) {
-	if file == problemFile {
+	if problemFile(file) {
 		return problemKey + key, nil
 	}
 	if surface := strings.TrimSuffix(file, ".json") + "."; !strings.HasPrefix(key, surface) {

@@ -7,6 +7,7 @@ import (
 	"go/token"
 	"io/fs"
 	"path/filepath"
+	"regexp"
 	"slices"
 	"strconv"
 	"strings"
@@ -228,9 +229,17 @@ func differences(english, other words.Message) (faults []string) {
 			}
 		}
 		for n, v := range want {
-			// The number that decides is left out where the form says it in words.
-			if _, ok := got[n]; !ok && !(form != "" && form != "other" && n == other.Plural) {
+			// The number that decides is left out where the form says it in words, and
+			// what the English form leaves out.
+			_, there := got[n]
+			_, asked := verbsOf(english.Forms[form])[n]
+			if special := form != "" && form != "other"; !there && !(special && (n == other.Plural || english.Forms[form] != "" && !asked)) {
 				faults = append(faults, fmt.Sprintf("%q leaves out argument %d (%%%s)", format, n, v))
+			}
+		}
+		for _, name := range braces.FindAllString(english.Formats()[0], -1) {
+			if !strings.Contains(format, name) {
+				faults = append(faults, fmt.Sprintf("%q leaves out %s", format, name))
 			}
 		}
 		if strings.Contains(format, "%[") && strings.Count(format, "%[") != len(verb.FindAllString(strings.ReplaceAll(format, "%%", ""), -1)) {
@@ -240,6 +249,9 @@ func differences(english, other words.Message) (faults []string) {
 	slices.Sort(faults)
 	return slices.Compact(faults)
 }
+
+// braces are names that a script fills in.
+var braces = regexp.MustCompile(`\{[a-z]+\}`)
 
 func formsOf(m words.Message) map[string]string {
 	if m.Forms == nil {

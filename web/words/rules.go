@@ -19,7 +19,7 @@ func (p *Printer) Rule(r watch.Rule, side plant.Side) string {
 	if !p.Has(key) {
 		return p.T("ui.rule.unknown")
 	}
-	return p.T(key, strconv.FormatFloat(r.Z, 'g', -1, 64), r.K, r.M)
+	return p.T(key, p.Number(strconv.FormatFloat(r.Z, 'g', -1, 64)), r.K, r.M)
 }
 
 // RuleKey says the rule that a firing or a matter's line keeps by its key

@@ -14,6 +14,7 @@ type Printer struct {
 	tag  language.Tag
 	dict map[string]entry
 	base map[string]entry // English, for keys that dict lacks
+	says map[string]bool  // surfaces of which it has words
 	out  *message.Printer
 }
 
@@ -35,6 +36,16 @@ func (p *Printer) Has(key string) bool {
 	return own || base
 }
 
+// On is the printer for the pages of a surface ("station", "board"): this one when its
+// language has words of that surface, else the English one, so that no page mixes
+// two languages. A test holds the words of a surface complete once there are any.
+func (p *Printer) On(surface string) *Printer {
+	if p.says[surface] {
+		return p
+	}
+	return current.Load().printers[language.English.String()]
+}
+
 // Lang is the language as the lang attribute of a page wants it.
 func (p *Printer) Lang() string { return p.tag.String() }
 
@@ -51,6 +62,12 @@ var current atomic.Pointer[shelf]
 // there is.
 func For(lang string) *Printer {
 	return current.Load().match(lang)
+}
+
+// Known returns the printer of exactly this language; false when there is none.
+func Known(lang string) (*Printer, bool) {
+	p, ok := current.Load().printers[lang]
+	return p, ok
 }
 
 // Languages lists what there is, English first.

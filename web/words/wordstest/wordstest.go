@@ -36,6 +36,16 @@ func Register(t testing.TB) *words.Printer {
 	return words.For(Lang)
 }
 
+// LanguageNames are the languages as the switch names them: each in itself, so they look
+// translated in no language.
+func LanguageNames() []string {
+	var names []string
+	for _, lang := range words.Languages() {
+		names = append(names, words.For(lang).T("ui.language"))
+	}
+	return names
+}
+
 var accents = strings.NewReplacer(
 	"a", "á", "e", "ë", "i", "î", "o", "ö", "u", "û", "c", "ç", "n", "ñ", "s", "š", "y", "ý", "z", "ž",
 	"A", "Á", "E", "Ë", "I", "Î", "O", "Ö", "U", "Û", "C", "Ç", "N", "Ñ", "S", "Š", "Y", "Ý", "Z", "Ž")

@@ -1,0 +1,64 @@
+package ui
+
+import (
+	"context"
+	"net/http"
+
+	"github.com/google/uuid"
+
+	"holdfast/internal/plant"
+	"holdfast/web/words"
+)
+
+// Speak makes the pages of a surface speak the language of the request where that
+// language has the surface's words, else English: whole pages, never mixed ones.
+func Speak(s Surface) func(http.Handler) http.Handler {
+	return func(next http.Handler) http.Handler {
+		return http.HandlerFunc(func(w http.ResponseWriter, r *http.Request) {
+			f := FrameOf(r)
+			f.Words = f.Words.On(string(s))
+			next.ServeHTTP(w, WithFrame(r, f))
+		})
+	}
+}
+
+// SetLanguage answers the switch. Whoever is signed in chooses for themselves, and keep
+// stores it; nobody chooses for the device, in its browser. A nil keep leaves every
+// choice to the browser.
+func SetLanguage(keep func(ctx context.Context, person uuid.UUID, language string) error) func(w http.ResponseWriter, r *http.Request) error {
+	return func(w http.ResponseWriter, r *http.Request) error {
+		if err := ParseForm(w, r); err != nil {
+			return err
+		}
+		f := FrameOf(r)
+		lang := r.PostForm.Get("language")
+		if _, known := words.Known(lang); !known {
+			return plant.Invalidf("language", "There is no such language here. Pick one from the list.")
+		}
+		if f.SignedIn && keep != nil {
+			if err := keep(r.Context(), f.Person.ID, lang); err != nil {
+				return err
+			}
+		} else {
+			http.SetCookie(w, &http.Cookie{Name: words.Cookie, Value: lang, Path: "/", MaxAge: aYear,
+				HttpOnly: true, Secure: f.Secure, SameSite: http.SameSiteLaxMode})
+		}
+		Redirect(w, r, LocalPath(r.PostForm.Get("to")))
+		return nil
+	}
+}
+
+// languageView is one language of the switch, named in itself.
+type languageView struct {
+	Lang    string
+	Name    string
+	Current bool
+}
+
+func languages(s Shell) []languageView {
+	var all []languageView
+	for _, lang := range words.Languages() {
+		all = append(all, languageView{lang, words.For(lang).T("ui.language"), lang == s.Words.Lang()})
+	}
+	return all
+}
