@@ -161,7 +161,7 @@ func TestPagesHaveNoFindingsOfAxe(t *testing.T) {
 	c := s.Diameter
 	for _, theme := range []string{"day", "night"} {
 		sc.value(`document.cookie = "theme=` + theme + `; path=/"`)
-		for _, at := range []string{"/desk", path(c), path(c) + "?as=table", path(c) + "?last=x", path(s.Length), path(c, "study"), path(c, "study") + "?do=leave",
+		for _, at := range []string{"/desk", "/desk/plans", "/desk/plan?kind=location+up&family=turning", "/desk/causes", path(c), path(c) + "?as=table", path(c) + "?last=x", path(s.Length), path(c, "study"), path(c, "study") + "?do=leave",
 			path(s.Length, "study"), path(c, "study", "freeze"), path(c, "revisions"), path(c, "revisions") + "?at=x"} {
 			sc.open(at)
 			sc.waitFor(`document.querySelector("main h1")`)
@@ -177,7 +177,7 @@ func TestPagesHaveNoFindingsOfAxe(t *testing.T) {
 	}
 	// 1280 px at 400 %.
 	sc.do(chromedp.EmulateViewport(320, 900))
-	for _, at := range []string{"/desk", path(c), path(c) + "?as=table", path(c, "study"), path(c, "study", "freeze"), path(c, "revisions")} {
+	for _, at := range []string{"/desk", "/desk/plans", "/desk/plan?kind=location+up&family=turning", "/desk/causes", path(c), path(c) + "?as=table", path(c, "study"), path(c, "study", "freeze"), path(c, "revisions")} {
 		sc.open(at)
 		sc.waitFor(`document.querySelector("main h1")`)
 		sc.want(at+" reflows", `document.documentElement.scrollWidth <= innerWidth`, "true")

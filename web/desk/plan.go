@@ -42,7 +42,6 @@ type stepInput struct {
 	N                               int
 	Says, Unit, Lower, Upper, IfNot string
 	Answers                         []planChoice
-	Value                           bool // limits are asked for
 	Last                            bool
 }
 
@@ -302,7 +301,7 @@ func (d *Desk) renderPlan(w http.ResponseWriter, r *http.Request, status int, fo
 func (v *planView) fill(f ui.Format, form planForm) {
 	t, p := f.Words, form.plan
 	for i, s := range p.Steps {
-		in := stepInput{N: i + 1, Says: s.Says, Unit: s.Unit, IfNot: s.IfNot, Value: s.Kind == plant.StepValue, Last: i == len(p.Steps)-1}
+		in := stepInput{N: i + 1, Says: s.Says, Unit: s.Unit, IfNot: s.IfNot, Last: i == len(p.Steps)-1}
 		if s.Lower != nil {
 			in.Lower = f.Decimal(*s.Lower)
 		}
