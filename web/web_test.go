@@ -36,7 +36,7 @@ func TestEveryAnswerCarriesTheSecurityHeaders(t *testing.T) {
 			t.Errorf("%s: %v", path, res.Header)
 		}
 	}
-	secure := newFixture(t, func(c *web.Config) { c.Secure = true })
+	secure := newFixture(t, func(c *web.Config) { c.Secure, c.Strict = true, time.Hour })
 	if got := secure.visitor(t, "").get("/healthz").Header.Get("Strict-Transport-Security"); got == "" {
 		t.Error("https is not asked for again")
 	}

@@ -104,6 +104,43 @@ func (d *database) privateDir() string {
 	return d.Data
 }
 
+// beside reaches the database for small work while another program may be serving it:
+// a private cluster that is served already is used as it stands. Its schema must be the
+// one that this program knows, since a running server is not migrated under its feet.
+func (d *database) beside(ctx context.Context, log *slog.Logger, f func(*store.Store) error) error {
+	if d.URL != "" || d.Data == "" {
+		return d.withStore(ctx, log, f)
+	}
+	owner, err := localpg.Attach(d.Data, localpg.Database)
+	if errors.Is(err, localpg.ErrNotServed) {
+		return d.withStore(ctx, log, f)
+	}
+	if err != nil {
+		return err
+	}
+	current, err := store.Current(ctx, owner)
+	if err != nil {
+		return err
+	}
+	if !current {
+		return errors.New("the program that serves this data folder is of another version; stop it first, or use its own command")
+	}
+	app, err := asApp(ctx, owner)
+	if err != nil {
+		return err
+	}
+	return openStore(ctx, app, f)
+}
+
+func openStore(ctx context.Context, url string, f func(*store.Store) error) error {
+	st, err := store.Open(ctx, store.Options{URL: url})
+	if err != nil {
+		return err
+	}
+	defer st.Close()
+	return f(st)
+}
+
 func (d *database) with(ctx context.Context, log *slog.Logger, f func(reached) error) error {
 	r, done, err := d.open(ctx, log, false)
 	if err != nil {
@@ -114,14 +151,7 @@ func (d *database) with(ctx context.Context, log *slog.Logger, f func(reached) e
 }
 
 func (d *database) withStore(ctx context.Context, log *slog.Logger, f func(*store.Store) error) error {
-	return d.with(ctx, log, func(r reached) error {
-		st, err := store.Open(ctx, store.Options{URL: r.url})
-		if err != nil {
-			return err
-		}
-		defer st.Close()
-		return f(st)
-	})
+	return d.with(ctx, log, func(r reached) error { return openStore(ctx, r.url, f) })
 }
 
 func rootOf(heads map[uuid.UUID]ledger.Head) [ledger.Size]byte { return ledger.Root(heads) }

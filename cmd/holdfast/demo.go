@@ -130,12 +130,13 @@ func (c *demoCmd) build(ctx context.Context, db reached, out io.Writer) (string,
 		fmt.Fprintf(&b, "    %-16s %s\n", login, string(secret))
 		return hasher.Hash(ctx, secret)
 	}
+	hashPIN := func(ctx context.Context, pin string) (string, error) { return hasher.Hash(ctx, auth.Secret(pin)) }
 	finished, err := c.begin()
 	if err != nil {
 		return "", err
 	}
 	fmt.Fprintf(out, "Making Kestrel Row and its last %d days\n", demo.Days)
-	err = demo.Build(ctx, st, hash, time.Now(), func(done float64) { fmt.Fprintf(out, "  %3.0f %%\n", 100*done) })
+	err = demo.Build(ctx, st, hash, hashPIN, time.Now(), func(done float64) { fmt.Fprintf(out, "  %3.0f %%\n", 100*done) })
 	if err != nil {
 		return "", err
 	}

@@ -50,17 +50,7 @@ func (r *running) visitOn(t testing.TB, d plant.Device) (*visitor, plant.Device)
 	if res, body := v.post("/enrol", url.Values{"code": {code.Code[:4] + " " + code.Code[4:]}}); res.StatusCode != http.StatusSeeOther {
 		t.Fatalf("enrolling %s: %s\n%s", d.Name, res.Status, body)
 	}
-	all, err := r.Devices(context.Background())
-	if err != nil {
-		t.Fatal(err)
-	}
-	for _, one := range all {
-		if one.Name == d.Name {
-			return v, one
-		}
-	}
-	t.Fatalf("%s is not in the list", d.Name)
-	return nil, plant.Device{}
+	return v, r.deviceNamed(t, d.Name)
 }
 
 func (r *running) person(t testing.TB, login string, roles ...plant.Role) plant.Person {

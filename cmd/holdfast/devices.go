@@ -1,11 +1,70 @@
 package main
 
 import (
+	"context"
+	"fmt"
+	"os"
+
+	"github.com/google/uuid"
+
 	"holdfast/internal/auth"
+	"holdfast/internal/demo"
+	"holdfast/internal/plant"
+	"holdfast/web/admin"
 	doorpages "holdfast/web/door"
 )
 
 // tablet is what enrolling and signing in by badge need.
 func (p *program) tablet(door *auth.Door) *doorpages.Tablet {
-	return &doorpages.Tablet{Pins: door, Sessions: p.sessions, Devices: p.devices}
+	t := &doorpages.Tablet{Pins: door, Sessions: p.sessions, Devices: p.devices}
+	if p.Demo {
+		for _, b := range demo.Badges() {
+			t.Badges = append(t.Badges, doorpages.DemoBadge(b))
+		}
+	}
+	return t
+}
+
+// staff is what the pages of people and devices need. What is changed there counts at
+// once: sockets of who or what is out are ended, not only at the next recheck.
+func (p *program) staff(hasher *auth.Hasher) *admin.Staff {
+	return &admin.Staff{
+		Store: p.store,
+		Hash:  func(ctx context.Context, s auth.Secret) (string, error) { return hasher.Hash(ctx, s) },
+		Changed: func(person uuid.UUID) {
+			p.sessions.Forget(person)
+			p.hub.Recheck()
+		},
+		DeviceChanged: func(uuid.UUID) {
+			p.devices.Forget()
+			p.hub.Recheck()
+		},
+	}
+}
+
+// openFirst draws the one-time address under which the first person is made, where there
+// is nobody yet.
+func (p *program) openFirst(ctx context.Context, hasher *auth.Hasher) error {
+	people, err := p.store.People(ctx)
+	if err != nil || len(people) > 0 {
+		return err
+	}
+	p.first = doorpages.NewFirst(func(ctx context.Context, person plant.Person, s auth.Secret) error {
+		hash, err := hasher.Hash(ctx, s)
+		if err != nil {
+			return err
+		}
+		return p.store.AddFirstPerson(ctx, person, hash)
+	})
+	return nil
+}
+
+// tellFirst prints that address, on standard error and not through the log, which may be
+// kept where others read it.
+func (p *program) tellFirst() {
+	if p.first == nil {
+		return
+	}
+	fmt.Fprintf(os.Stderr, "\nNobody can sign in yet. Open this once, on this machine or over https, and make the first person:\n\n    %s%s\n\nIt works until it was used or the program stops.\n\n",
+		p.URL(), p.first.Path())
 }

@@ -24,6 +24,7 @@ import (
 	"holdfast/web/admin"
 	"holdfast/web/board"
 	"holdfast/web/desk"
+	doorpages "holdfast/web/door"
 	"holdfast/web/station"
 )
 
@@ -53,6 +54,7 @@ type program struct {
 	sessions *auth.Sessions
 	devices  *auth.Devices
 	admin    *admin.Admin
+	first    *doorpages.First // nil when there is somebody already
 	listener net.Listener
 	server   *http.Server
 	metrics  *metrics.Metrics
@@ -130,7 +132,7 @@ func (p *program) join(ctx context.Context) error {
 	if err != nil {
 		p.Log.Warn("the machine does not tell its name", "error", err)
 	}
-	p.admin = admin.New(admin.Deps{Log: p.Log, Machine: machine, Store: p.store, Signer: door, Hasher: hasher, Changed: p.readPlant, About: p.about})
+	p.admin = admin.New(admin.Deps{Log: p.Log, Machine: machine, Store: p.store, Signer: door, Hasher: hasher, Changed: p.readPlant, About: p.about, Staff: p.staff(hasher)})
 	cfg := web.Config{
 		Log: p.Log, Now: p.Clock, Plant: func() plant.Plant { return *p.plant.Load() },
 		Sessions: p.sessions, Checker: door, Hub: p.hub,
@@ -152,6 +154,10 @@ func (p *program) join(ctx context.Context) error {
 	if p.Demo && pl.Demo {
 		cfg.DemoPeople = p.store.People
 	}
+	if err := p.openFirst(ctx, hasher); err != nil {
+		return err
+	}
+	cfg.First = p.first
 	if p.listener = p.Listener; p.listener == nil {
 		if p.listener, err = net.Listen("tcp", p.Addr); err != nil {
 			return fmt.Errorf("listen on %s: %w", p.Addr, err)
@@ -219,6 +225,7 @@ func (p *program) Run(ctx context.Context) error {
 		p.running.Go(func() { p.Metrics.serve(background, p.metrics.Handler(p.Metrics.token), p.Log) })
 	}
 	p.Log.Info("serving", "address", p.URL(), "version", version())
+	p.tellFirst()
 	if root := p.Transport.root; root != nil {
 		p.Log.Info("certificate fingerprint "+certs.Fingerprint(root), "compare it at", p.URL()+web.AuthorityAddress)
 	}

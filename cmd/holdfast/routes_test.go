@@ -131,6 +131,19 @@ var routeTable = []routeRow{
 	{"GET /admin/qualification", managers, 200},
 	{"GET /admin/qualification.json", managers, 404}, // none was run
 	{"POST /admin/qualification", managers, 303},
+	{"GET /admin/people", managers, 200},
+	{"POST /admin/people", managers, 422},
+	{"GET /admin/people/{person}", managers, 200},
+	{"POST /admin/people/{person}/roles", managers, 422}, // none at all
+	{"POST /admin/people/{person}/active", managers, 303},
+	{"POST /admin/people/{person}/secret", managers, 200},
+	{"POST /admin/people/{person}/badge", managers, 303}, // taken away
+	{"POST /admin/people/{person}/erase", managers, 422},
+	{"GET /admin/devices", managers, 200},
+	{"POST /admin/devices", managers, 422},
+	{"POST /admin/devices/{device}", managers, 422},
+	{"POST /admin/devices/{device}/revoke", managers, 303},
+	{"POST /admin/devices/code/{code}/withdraw", managers, 303},
 
 	{"GET /station/", takers, 200},
 	{"GET /station/{station}", takers, 200},
@@ -177,9 +190,12 @@ func TestEveryRouteByEveryRoleAndByNobody(t *testing.T) {
 	r.calm(t, 22)
 	r.MustFreeze(t, r.Diameter)
 	a := r.MustRecord(t, r.Diameter, 14998, 14999, 14998, 14999, 14998)
+	spare := r.person(t, "spare", plant.Operator)
+	gone, _ := r.enrol(t, plant.Device{Kind: plant.Wall, Name: "To be revoked"})
 	path := strings.NewReplacer("{station}", r.Station.ID.String(), "{round}", a.Round.String(), "{matter}", a.Parts[0].Matter.String(),
 		"{characteristic}", r.Diameter.ID.String(), "{machine}", r.Machine.ID.String(), "{id}", r.Diameter.ID.String(),
 		"/thing/{kind}/{id}", "/thing/line/"+r.Line.ID.String(), "{kind}", "line", "{step}", "floor", "{file}", "template.csv",
+		"{person}", spare.ID.String(), "{device}", gone.ID.String(), "{code}", uuid.NewString(),
 		"/static/*", "/static/css/tokens.css", "/live", "/live?topic=board")
 
 	routes, err := web.Routes(r.program.server.Handler)

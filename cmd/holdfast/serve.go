@@ -1,7 +1,6 @@
 package main
 
 import (
-	"bufio"
 	"context"
 	"crypto/tls"
 	"crypto/x509"
@@ -9,15 +8,10 @@ import (
 	"fmt"
 	"log/slog"
 	"net/http"
-	"os"
 	"strings"
 	"time"
 
-	"github.com/google/uuid"
-
-	"holdfast/internal/auth"
 	"holdfast/internal/certs"
-	"holdfast/internal/plant"
 	"holdfast/internal/store"
 )
 
@@ -96,70 +90,6 @@ func whyEnded(ctx context.Context) error {
 		return err
 	}
 	return nil
-}
-
-type userCmd struct {
-	Add userAddCmd `cmd:"" help:"Add a person. The secret is read from standard input, or made and printed."`
-}
-
-type userAddCmd struct {
-	database
-	Login    string   `arg:"" help:"Name for signing in."`
-	Name     string   `help:"Printed name." required:""`
-	Role     []string `help:"operator, supervisor, engineer or administrator; may be given more than once." required:"" enum:"operator,supervisor,engineer,administrator"`
-	Make     bool     `help:"Make a secret and print it, instead of reading one."`
-	Plant    string   `help:"Name of the plant, used once, on an empty database." default:"Plant" env:"HOLDFAST_PLANT"`
-	TimeZone string   `help:"Its time zone, used once, on an empty database." default:"UTC" env:"HOLDFAST_TIME_ZONE"`
-}
-
-func (c *userAddCmd) Run(ctx context.Context, log *slog.Logger) error {
-	secret, err := c.secret()
-	if err != nil {
-		return err
-	}
-	return c.withStore(ctx, log, func(st *store.Store) error {
-		if err := firstPlant(ctx, st, c.Plant, c.TimeZone); err != nil {
-			return err
-		}
-		hasher, err := auth.NewHasher(auth.DefaultCost, 1)
-		if err != nil {
-			return err
-		}
-		p := plant.Person{ID: uuid.Must(uuid.NewV7()), Login: plant.CleanLogin(c.Login), Name: plant.CleanText(c.Name), Active: true}
-		for _, r := range c.Role {
-			p.Roles = append(p.Roles, plant.Role(r))
-		}
-		if err := addPerson(ctx, st, hasher, p, secret); err != nil {
-			return err
-		}
-		fmt.Printf("%s may sign in as %q.\n", p.Name, p.Login)
-		if c.Make {
-			fmt.Printf("Secret: %s\nIt is not kept anywhere in clear: note it down now.\n", string(secret))
-		}
-		return nil
-	})
-}
-
-func (c *userAddCmd) secret() (auth.Secret, error) {
-	if c.Make {
-		return auth.RandomSecret(), nil
-	}
-	fmt.Fprint(os.Stderr, "Secret: ")
-	line, err := bufio.NewReader(os.Stdin).ReadString('\n')
-	line = strings.TrimRight(line, "\r\n")
-	if err != nil && line == "" {
-		return "", errors.New("no secret came on standard input; --make makes one")
-	}
-	s := auth.Secret(line)
-	return s, auth.Rules{}.Check(s, c.Login, c.Name)
-}
-
-func addPerson(ctx context.Context, st *store.Store, hasher *auth.Hasher, p plant.Person, secret auth.Secret) error {
-	hash, err := hasher.Hash(ctx, secret)
-	if err != nil {
-		return err
-	}
-	return st.AddPerson(ctx, p, hash, uuid.Nil)
 }
 
 type healthCmd struct {

@@ -27,14 +27,20 @@ type Hash func(ctx context.Context, login string) (string, error)
 
 // Build makes the works in an empty database and writes its history up to now.
 // progress, which may be nil, is told now and then how far it is, from 0 to 1.
-func Build(ctx context.Context, st *store.Store, hash Hash, now time.Time, progress func(done float64)) error {
+func Build(ctx context.Context, st *store.Store, hash Hash, hashPIN HashPIN, now time.Time, progress func(done float64)) error {
 	b := &builder{store: st, begin: now.Add(-Days * 24 * time.Hour), end: now, people: map[plant.Role][]uuid.UUID{}}
 	begun := st.WithClock(func() time.Time { return b.begin })
 	if err := b.structure(ctx, begun, hash); err != nil {
 		return fmt.Errorf("build the demo plant: %w", err)
 	}
+	if err := b.equip(ctx, begun, hashPIN); err != nil {
+		return fmt.Errorf("equip the demo plant: %w", err)
+	}
 	if err := b.history(ctx, progress); err != nil {
 		return fmt.Errorf("write the demo history: %w", err)
+	}
+	if err := b.contacts(ctx); err != nil {
+		return fmt.Errorf("equip the demo plant: %w", err)
 	}
 	return nil
 }

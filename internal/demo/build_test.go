@@ -24,7 +24,7 @@ func TestTheWorksHasALifeBehindIt(t *testing.T) {
 	now := time.Date(2026, 3, 12, 12, 24, 0, 0, time.UTC) // a Thursday noon
 	hash := func(context.Context, string) (string, error) { return "x", nil }
 	began := time.Now()
-	if err := demo.Build(ctx, st, hash, now, nil); err != nil {
+	if err := demo.Build(ctx, st, hash, hash, now, nil); err != nil {
 		t.Fatal(err)
 	}
 	t.Logf("built in %s", time.Since(began).Round(time.Millisecond))

@@ -134,6 +134,13 @@ func (h *Hub) Drop(session string, why Reason) {
 	h.do(func(l *loop) { l.drop(session, why) })
 }
 
+// Recheck asks at once which sessions have ended, and not only at the next turn.
+func (h *Hub) Recheck() {
+	if h.opt.Recheck != nil {
+		h.do(func(l *loop) { l.recheck() })
+	}
+}
+
 // do runs f in the hub's goroutine and waits for it; false means that the hub
 // is closed and f has not run.
 func (h *Hub) do(f func(*loop)) bool {

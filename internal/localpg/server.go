@@ -5,7 +5,6 @@ import (
 	"errors"
 	"fmt"
 	"log/slog"
-	"net/url"
 	"os"
 	"os/exec"
 	"path/filepath"
@@ -209,15 +208,7 @@ func (s *Server) URL() string { return s.ConnString(Database) }
 // ConnString is the connection string of a database of this server as the owner,
 // in URL form. Every other role can be used with the same string: no password is
 // asked for.
-func (s *Server) ConnString(database string) string {
-	u := url.URL{
-		Scheme:   "postgres",
-		User:     url.User(Owner),
-		Path:     "/" + database,
-		RawQuery: url.Values{"host": {s.sockets}, "port": {port}, "sslmode": {"disable"}}.Encode(),
-	}
-	return u.String()
-}
+func (s *Server) ConnString(database string) string { return connString(s.sockets, database) }
 
 // PID is the process id of the server.
 func (s *Server) PID() int { return s.process.Pid }

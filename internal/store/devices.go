@@ -276,3 +276,31 @@ func (s *Store) RevokeDevice(ctx context.Context, id, by uuid.UUID) error {
 	}
 	return nil
 }
+
+// Places lists the lines and stations of the plant that are in use, in their order.
+func (s *Store) Places(ctx context.Context) ([]plant.Line, []plant.Station, error) {
+	rows, err := s.pool.Query(ctx, `select id, name, position from line where plant_id = $1 and retired_at is null order by position, name`, s.plant())
+	if err != nil {
+		return nil, nil, fmt.Errorf("read lines: %w", err)
+	}
+	lines, err := pgx.CollectRows(rows, func(r pgx.CollectableRow) (l plant.Line, err error) {
+		err = r.Scan(&l.ID, &l.Name, &l.Position)
+		return l, err
+	})
+	if err != nil {
+		return nil, nil, fmt.Errorf("read lines: %w", err)
+	}
+	rows, err = s.pool.Query(ctx, `select s.id, s.line_id, s.name, s.family, s.position from station s join line l on l.id = s.line_id
+		where s.plant_id = $1 and s.retired_at is null order by l.position, l.name, s.position, s.name`, s.plant())
+	if err != nil {
+		return nil, nil, fmt.Errorf("read stations: %w", err)
+	}
+	stations, err := pgx.CollectRows(rows, func(r pgx.CollectableRow) (st plant.Station, err error) {
+		err = r.Scan(&st.ID, &st.LineID, &st.Name, &st.Family, &st.Position)
+		return st, err
+	})
+	if err != nil {
+		return nil, nil, fmt.Errorf("read stations: %w", err)
+	}
+	return lines, stations, nil
+}

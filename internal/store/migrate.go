@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"io/fs"
 	"time"
 
 	"github.com/golang-migrate/migrate/v4"
@@ -72,4 +73,39 @@ func newMigrator(ownerURL string) (*migrate.Migrate, error) {
 		return nil, fmt.Errorf("prepare migrations: %w", err)
 	}
 	return m, nil
+}
+
+// Current reports whether the database has exactly the newest schema that this program
+// knows. It changes nothing.
+func Current(ctx context.Context, url string) (bool, error) {
+	newest, err := newestMigration()
+	if err != nil {
+		return false, err
+	}
+	conn, err := pgx.Connect(ctx, url)
+	if err != nil {
+		return false, fmt.Errorf("connect to the database: %w", err)
+	}
+	defer conn.Close(context.WithoutCancel(ctx))
+	var version int64
+	var dirty bool
+	if err := conn.QueryRow(ctx, `select version, dirty from schema_migrations`).Scan(&version, &dirty); err != nil {
+		return false, fmt.Errorf("read the version of the schema: %w", err)
+	}
+	return version == newest && !dirty, nil
+}
+
+func newestMigration() (newest int64, err error) {
+	names, err := fs.Glob(migrations.Files, "*.up.sql")
+	if err != nil {
+		return 0, err
+	}
+	for _, name := range names {
+		var n int64
+		if _, err := fmt.Sscanf(name, "%d_", &n); err != nil {
+			return 0, fmt.Errorf("read the number of migration %s: %w", name, err)
+		}
+		newest = max(newest, n)
+	}
+	return newest, nil
 }

@@ -27,6 +27,13 @@ function start(form) {
     event.preventDefault();
     next.focus();
   });
+  // A scanner that ends with two line ends must not send the form without a PIN.
+  form.addEventListener("submit", (event) => {
+    const empty = fields.find((f) => f.value === "");
+    if (!empty) return;
+    event.preventDefault();
+    empty.focus();
+  });
   keys.addEventListener("pointerdown", (event) => {
     if (event.target.closest("[data-key]")) event.preventDefault(); // the field keeps the focus
   });

@@ -219,6 +219,7 @@ class Live {
     if (this.stopped) return;
     if (code === ENDED) {
       this.stopped = true;
+      if (document.body.dataset.leaving) return; // on the way out already
       location.assign(this.signIn);
       return;
     }

@@ -13,14 +13,22 @@
 //       data-sign                 a reading can be negative
 //       [data-heading]            becomes data-heading-says of the current reading
 //       input[data-reading]       the readings in order
+//       input[data-keyed]         beside each: who keyed it, data-person of the form
 //       [data-short]              why there are fewer, radio buttons
 //       [data-falls]              see falls.js
 //     [data-pad]                  the keys, and [data-main], which is "next" until
 //                                 everything is in and then saves
 //
+// What is typed is kept in this browser (draft.js) until it is sent, so that leaving the
+// page, the lock of a tablet or another person at it lose nothing. data-station names the
+// place; data-several says that readings of other people may be sent from here, which is
+// so on an enrolled tablet. [data-kept] tells that something was brought back, and
+// [data-afresh] throws it away.
+//
 // Targets, bounds and values are whole last digits ("units"): 12.500 with three
 // decimals is 12500. They stay below 1e12, so a Number holds them exactly.
 
+import * as drafts from "./draft.js";
 import { update } from "./falls.js";
 
 const SAME_ENTER = 400; // ms within which a second Enter belongs to the first
@@ -61,6 +69,44 @@ function start(form) {
     if (main.textContent !== label) main.textContent = label;
   }
 
+  const field = (name) => form.elements[name];
+  const draftKey = drafts.keyOf(say.station, field("due").value, field("occasion").value, sections.map((s) => s.root.dataset.ask));
+
+  function keep() {
+    if (sections.every((s) => s.filled() === 0)) {
+      drafts.drop(draftKey);
+      return;
+    }
+    const parts = Object.fromEntries(sections.map((s) => [s.root.dataset.ask, s.kept()]));
+    drafts.write(draftKey, { round: field("round").value, taken: field("taken").value, mode, parts });
+  }
+
+  // restore brings back what was typed into an empty form. It comes back under the number
+  // and the time that it had, so that what was sent already is recognised.
+  function restore() {
+    const draft = drafts.read(draftKey);
+    const empty = sections.every((s) => s.filled() === 0) && !form.querySelector("[aria-invalid]");
+    if (!draft || !empty) return;
+    const mine = (r) => r.value.trim() === "" || r.keyed === say.person;
+    const fits = sections.every((s) => s.takes(draft.parts[s.root.dataset.ask]));
+    if (!fits || (say.several === undefined && !Object.values(draft.parts).every((p) => p.readings.every(mine)))) {
+      drafts.drop(draftKey);
+      return;
+    }
+    field("round").value = draft.round;
+    field("taken").value = draft.taken;
+    for (const s of sections) {
+      s.fill(draft.parts[s.root.dataset.ask]);
+      s.convert(draft.mode, mode);
+    }
+    form.querySelector("[data-kept]").hidden = false;
+  }
+
+  form.querySelector("[data-afresh]").addEventListener("click", () => {
+    drafts.drop(draftKey);
+    location.reload();
+  });
+
   function go(input) {
     current = input;
     const section = sectionOf(input);
@@ -99,7 +145,10 @@ function start(form) {
     const problem = section.judge(input, mode, say);
     section.problem(input, problem);
     if (problem) {
-      if (problem === say.sayLook) section.again(input);
+      if (problem === say.sayLook) {
+        section.again(input);
+        keep();
+      }
       go(input);
       return false;
     }
@@ -112,12 +161,17 @@ function start(form) {
   form.addEventListener("input", (event) => {
     if (event.target.matches("[data-reading]")) {
       sectionOf(event.target).problem(event.target, "");
+      keyedBy(event.target, say.person);
       mark();
+      keep();
     }
   });
   form.addEventListener("change", (event) => {
     if (event.target.name === "entry") change(event.target.value);
-    else if (event.target.closest("[data-short]")) mark();
+    else if (event.target.closest("[data-short]")) {
+      mark();
+      keep();
+    }
   });
   form.addEventListener("keydown", (event) => {
     if (event.key !== "Enter" || !event.target.matches("[data-reading]")) return;
@@ -162,11 +216,19 @@ function start(form) {
   function change(to) {
     for (const s of sections) s.convert(mode, to);
     mode = to;
+    keep();
     document.cookie = `entry=${to}; path=/station; max-age=31536000; samesite=lax${location.protocol === "https:" ? "; secure" : ""}`;
     if (current) go(current);
     else mark();
   }
 
+  // After the other listeners: by then the time of sending stands in the form, and a
+  // send that never arrives can be repeated as the same record.
+  form.addEventListener("submit", (event) => setTimeout(() => { if (!event.defaultPrevented) keep(); }));
+
+  drafts.prune();
+  restore();
+  if (sections.some((s) => s.filled() > 0)) keep(); // under the number that the server gave
   const all = sections.flatMap((s) => s.inputs);
   const first = all.find((i) => i.getAttribute("aria-invalid")) ?? all.find((i) => i.value === "") ?? null;
   if (first) go(first);
@@ -179,6 +241,11 @@ function start(form) {
     show(s);
     s.root.querySelector("[data-short] input")?.focus();
   }
+}
+
+// keyedBy notes who keyed a reading; an empty one is nobody's.
+function keyedBy(input, person) {
+  input.parentElement.querySelector("[data-keyed]").value = input.value.trim() === "" ? "" : person;
 }
 
 // type puts one key into a reading, over what is selected.
@@ -273,6 +340,45 @@ class Section {
     first.dataset.first = "";
     input.after(first);
     input.value = "";
+  }
+
+  // kept is this section as a draft holds it.
+  kept() {
+    return {
+      setup: this.setup(),
+      short: this.root.querySelector("[data-short] input:checked")?.value ?? "",
+      readings: this.inputs.map((i) => ({
+        value: i.value,
+        keyed: i.parentElement.querySelector("[data-keyed]").value,
+        first: this.firsts(i).map((f) => f.value),
+      })),
+    };
+  }
+
+  setup() {
+    return this.form.elements[`setup-${this.root.dataset.ask}`].value;
+  }
+
+  // takes reports whether a draft is of what is asked here.
+  takes(part) {
+    return part?.setup === this.setup() && part.readings.length === this.inputs.length;
+  }
+
+  fill(part) {
+    part.readings.forEach((r, at) => {
+      const input = this.inputs[at];
+      for (const first of r.first) {
+        input.value = first;
+        this.again(input);
+      }
+      input.value = r.value;
+      keyedBy(input, r.keyed);
+    });
+    const short = [...this.root.querySelectorAll("[data-short] input")].find((i) => i.value === part.short);
+    if (short) {
+      short.checked = true;
+      short.closest("details").open = true;
+    }
   }
 
   problem(input, words) {

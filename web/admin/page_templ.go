@@ -81,6 +81,14 @@ func navigation(w *words.Printer, p plant.Person, path string) templ.Component {
 			}
 		}
 		if p.May(plant.Manage) {
+			templ_7745c5c3_Err = navigationLink(peopleAddress, strings.HasPrefix(path, peopleAddress), w.T("staff.people")).Render(ctx, templ_7745c5c3_Buffer)
+			if templ_7745c5c3_Err != nil {
+				return templ_7745c5c3_Err
+			}
+			templ_7745c5c3_Err = navigationLink(devicesAddress, strings.HasPrefix(path, devicesAddress), w.T("staff.devices")).Render(ctx, templ_7745c5c3_Buffer)
+			if templ_7745c5c3_Err != nil {
+				return templ_7745c5c3_Err
+			}
 			templ_7745c5c3_Err = navigationLink(qualificationAddress, path == qualificationAddress, w.T("admin.qualification")).Render(ctx, templ_7745c5c3_Buffer)
 			if templ_7745c5c3_Err != nil {
 				return templ_7745c5c3_Err
@@ -122,7 +130,7 @@ func navigationLink(to string, here bool, text string) templ.Component {
 		var templ_7745c5c3_Var4 string
 		templ_7745c5c3_Var4, templ_7745c5c3_Err = templruntime.NewAttributeExpression(to).ResolveURL(ctx)
 		if templ_7745c5c3_Err != nil {
-			return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/admin/page.templ`, Line: 30, Col: 11}
+			return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/admin/page.templ`, Line: 32, Col: 11}
 		}
 		_, templ_7745c5c3_Err = templ_7745c5c3_Buffer.WriteString(templ_7745c5c3_Var4)
 		if templ_7745c5c3_Err != nil {
@@ -145,7 +153,7 @@ func navigationLink(to string, here bool, text string) templ.Component {
 		var templ_7745c5c3_Var5 string
 		templ_7745c5c3_Var5, templ_7745c5c3_Err = templ.JoinStringErrs(text)
 		if templ_7745c5c3_Err != nil {
-			return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/admin/page.templ`, Line: 34, Col: 8}
+			return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/admin/page.templ`, Line: 36, Col: 8}
 		}
 		_, templ_7745c5c3_Err = templ_7745c5c3_Buffer.WriteString(templ.EscapeString(templ_7745c5c3_Var5))
 		if templ_7745c5c3_Err != nil {

@@ -23,6 +23,7 @@ type Deps struct {
 	Machine string // the name of the machine that the program runs on, "" when it is not known
 	Run     Runner // qualify.Report when nil
 	About   About  // there is no page about the installation when nil
+	Staff   *Staff // people and devices; without it those pages are not there
 
 	Store  Store
 	Signer Signer
@@ -89,6 +90,7 @@ type Admin struct {
 	hasher        Hasher
 	changed       func(ctx context.Context) error
 	qualification *qualification
+	staff         *Staff
 }
 
 // New makes the surface.
@@ -100,7 +102,7 @@ func New(d Deps) *Admin {
 		d.Changed = func(context.Context) error { return nil }
 	}
 	return &Admin{log: d.Log, machine: d.Machine, about: d.About, store: d.Store, signer: d.Signer, hasher: d.Hasher, changed: d.Changed,
-		qualification: &qualification{run: d.Run, log: d.Log}}
+		qualification: &qualification{run: d.Run, log: d.Log}, staff: d.Staff}
 }
 
 // Close ends a qualification that runs and waits for it; no other can be started.
@@ -119,6 +121,7 @@ func (a *Admin) Routes(r chi.Router) {
 	a.setupRoutes(r)
 	r.Group(func(r chi.Router) {
 		r.Use(ui.Require(plant.Manage))
+		a.staffRoutes(r)
 		r.Get("/qualification", ui.Handle(a.log, a.show))
 		r.Post("/qualification", ui.Handle(a.log, a.qualify))
 		r.Get("/qualification.json", ui.Handle(a.log, a.download))

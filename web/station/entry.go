@@ -44,7 +44,8 @@ type draftReading struct {
 	Raw     string
 	Units   int64
 	OK      bool
-	First   []string // earlier typings of it
+	First   []string  // earlier typings of it
+	Keyed   uuid.UUID // who keyed it; Nil is whoever sends
 	Problem string
 }
 
@@ -115,7 +116,7 @@ func readEntry(form url.Values, w *words.Printer, c plant.CharacteristicState, d
 	// An unreadable version is version 0, which no set-up has: the save is refused as
 	// having seen another set-up.
 	e.Setup = number(form.Get("setup-" + id))
-	typed := form["reading-"+id]
+	typed, keyed := form["reading-"+id], form["keyed-"+id]
 	for i, raw := range typed {
 		raw = plant.CleanText(raw)
 		if i >= c.Setup.Size {
@@ -126,6 +127,9 @@ func readEntry(form url.Values, w *words.Printer, c plant.CharacteristicState, d
 		}
 		r := &e.Readings[i]
 		r.Raw = shorten(raw)
+		if i < len(keyed) && r.Raw != "" {
+			r.Keyed, _ = uuid.Parse(keyed[i]) // what cannot be read is nobody's: whoever sends answers for it
+		}
 		for _, first := range form["first-"+id+"-"+itoa(i)] {
 			if first = shorten(plant.CleanText(first)); first != "" && len(r.First) < maxRetyped {
 				r.First = append(r.First, first)
@@ -243,6 +247,7 @@ func (d draft) round(station, person uuid.UUID, taken time.Time, skew time.Durat
 			}
 			out.Readings = append(out.Readings, reading.Units)
 		}
+		out.KeyedBy = e.keyedBy(person)
 		if len(out.Readings) < e.Of.Setup.Size {
 			out.ShortReason = e.Short
 		}
@@ -268,7 +273,11 @@ func (s *Surface) saveRound(w http.ResponseWriter, r *http.Request) error {
 	if err != nil {
 		return err
 	}
-	if d.check(frame.Words) {
+	strangers, err := s.strangers(r, &d)
+	if err != nil {
+		return err
+	}
+	if d.check(frame.Words) || strangers {
 		return s.again(w, r, http.StatusUnprocessableEntity, d)
 	}
 	taken, skew, own, err := sentTime(r.PostForm, frame.Now)

@@ -77,6 +77,7 @@ type roundView struct {
 	Deviation bool
 	Choice    bool // typing as deviation is possible
 	Problem   string
+	Draft     draftView
 	Parts     []askView
 }
 
@@ -109,6 +110,7 @@ type readingView struct {
 	Raw     string
 	Problem string
 	First   []string // earlier typings
+	Keyed   string   // id of who keyed it, "" when nothing is there
 }
 
 // fallsView is where the round falls while it is typed.
@@ -177,6 +179,9 @@ func newAsk(f ui.Format, e draftEntry) askView {
 		if s.Size == 1 {
 			v.Label, v.Heading = f.Words.T("station.the-part"), f.Words.T("station.measure-one")
 		}
+		if r.Keyed != uuid.Nil {
+			v.Keyed = r.Keyed.String()
+		}
 		if r.OK {
 			typed = append(typed, r.Units)
 		}
@@ -236,6 +241,7 @@ func (s *Surface) renderWork(w http.ResponseWriter, r *http.Request, status int,
 	shell.Topics = []string{ui.TopicStation(st.ID)}
 	shell.Scripts = []string{"js/station-sent.js"}
 	if v.Round != nil {
+		v.Round.Draft = draftView{Station: st.ID.String(), Person: shell.Person.ID.String(), Tablet: shell.OnTablet()}
 		shell.Scripts = append(shell.Scripts, "js/station-round.js")
 	}
 	return ui.Render(w, r, status, workPage(shell, v))

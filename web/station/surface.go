@@ -5,6 +5,7 @@ import (
 	"log/slog"
 	"net/http"
 	"net/netip"
+	"time"
 
 	"github.com/go-chi/chi/v5"
 	"github.com/google/uuid"
@@ -34,6 +35,7 @@ type Store interface {
 	Causes(ctx context.Context, family string) ([]plant.Cause, error)
 	Parts(ctx context.Context) ([]plant.Part, error)
 	Knobs(ctx context.Context, machine uuid.UUID) ([]plant.Knob, error)
+	Present(ctx context.Context, device uuid.UUID, since time.Time) ([]uuid.UUID, error)
 }
 
 // Signer tells whose a login and a secret are. Voiding a record is a signature, so the

@@ -112,6 +112,7 @@ func (s *Surface) showVerdict(w http.ResponseWriter, r *http.Request) error {
 	f := ui.FrameOf(r).Format()
 	v := newVerdict(f, st, answer, parts, main, history)
 	shell := s.shell(r, st, v.Title)
+	shell.Scripts = append(shell.Scripts, "js/station-saved.js")
 	return ui.Render(w, r, http.StatusOK, verdictPage(shell, v))
 }
 

@@ -73,6 +73,9 @@ var sheets = map[Surface][]string{
 
 func (s Shell) styles() []string {
 	all := []string{"vendor/modern-normalize/modern-normalize.css", "css/tokens.css", "css/base.css", "css/shell.css"}
+	if s.locks() {
+		all = append(all, "css/lock.css")
+	}
 	return urls(all, sheets[s.Surface], s.Styles)
 }
 
@@ -80,6 +83,9 @@ func (s Shell) scripts() []string {
 	var all []string
 	if len(s.Topics) > 0 {
 		all = append(all, "js/live.js")
+	}
+	if s.locks() {
+		all = append(all, "js/lock.js")
 	}
 	return urls(all, s.Scripts)
 }
