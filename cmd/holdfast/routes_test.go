@@ -177,6 +177,7 @@ var routeTable = []routeRow{
 	{"POST /desk/causes", setters, 422},
 	{"GET /desk/characteristic/{id}", deskers, 200},
 	{"GET /desk/characteristic/{id}/revisions", deskers, 200},
+	{"GET /desk/characteristic/{id}/adjustments", deskers, 200},
 	{"GET /desk/characteristic/{id}/adjusting-points", deskers, 200},
 	{"POST /desk/characteristic/{id}/adjusting-points", setters, 422},
 	{"GET /desk/characteristic/{id}/study", setters, 200},

@@ -209,7 +209,7 @@ func (w *walker) round(ctx context.Context) error {
 		}
 		for _, p := range a.Parts {
 			if p.Characteristic == t.ID && p.Opened {
-				w.follow = append(w.follow, followUp{at: w.at.Add(w.minutes(2, 9)), matter: p.Matter, track: t})
+				w.follow = append(w.follow, followUp{at: w.at.Add(w.comes(t)), matter: p.Matter, track: t})
 			}
 		}
 		if err := w.afterwards(ctx, t); err != nil {
@@ -245,13 +245,10 @@ func (w *walker) afterwards(ctx context.Context, t *track) error {
 			return fmt.Errorf("freeze: %w", err)
 		}
 	}
-	if d := w.day(); d < t.spell.from || d >= t.spell.to {
+	if !w.inSpell(t) || w.followed(t) { // somebody is looking into it
 		return nil
 	}
-	if w.followed(t) {
-		return nil // somebody is looking into it
-	}
-	return w.turn(ctx, t, -t.deviation(), "")
+	return w.overAdjust(ctx, t)
 }
 
 // freeze makes a revision of what was taken since the last one, leaving out what

@@ -82,3 +82,31 @@ func (w *walker) followed(t *track) bool {
 	}
 	return false
 }
+
+// overAdjusts is the share of the last deviation that is corrected in a spell.
+const overAdjusts = 0.85
+
+func (w *walker) overAdjust(ctx context.Context, t *track) error {
+	return w.turn(ctx, t, -overAdjusts*t.deviation(), "")
+}
+
+// comes is how long it takes until somebody comes to a matter, looks how long until it is
+// closed. Who corrects after every sample has no patience for looking.
+func (w *walker) comes(t *track) time.Duration {
+	if w.inSpell(t) {
+		return w.minutes(1, 3)
+	}
+	return w.minutes(2, 9)
+}
+
+func (w *walker) looks(t *track) time.Duration {
+	if w.inSpell(t) {
+		return w.minutes(3, 12)
+	}
+	return w.minutes(12, 70)
+}
+
+func (w *walker) inSpell(t *track) bool {
+	d := w.day()
+	return d >= t.spell.from && d < t.spell.to
+}

@@ -48,7 +48,7 @@ type fault struct {
 }
 
 // spell is a stretch of days in which somebody corrects the process after each sample
-// by its whole deviation from target.
+// by nearly its whole deviation from target.
 type spell struct{ from, to float64 }
 
 func dec(units int64, decimals int) *plant.Decimal {

@@ -124,8 +124,12 @@ func (h History) AuditAdjustments() (AdjustmentAudit, error) {
 		return a, nil
 	}
 	a.Computed, a.Carried = true, review.Carried
+	noise := tiniest(deviations)
 	for j := range a.Items {
 		a.Items[j].Gain, a.Items[j].Governed = review.Gains[j], review.Governed[j]
+		if math.Abs(a.Items[j].Gain) < noise {
+			a.Items[j].Gain = 0
+		}
 	}
 	a.Prompted.Total, a.Prompted.Within = review.Prompted, review.PromptedWithin
 	a.Unprompted.Total, a.Unprompted.Within = review.Unprompted, review.UnpromptedWithin
@@ -134,6 +138,15 @@ func (h History) AuditAdjustments() (AdjustmentAudit, error) {
 	a.capability(h)
 	a.conclude()
 	return a, nil
+}
+
+// tiniest is the square below which a difference is rounding and nothing else.
+func tiniest(deviations []float64) float64 {
+	var top float64
+	for _, d := range deviations {
+		top = math.Max(top, d*d)
+	}
+	return 1e-10 * top
 }
 
 // first is the index of the first point taken at or after t.
@@ -163,8 +176,7 @@ func (a *AdjustmentAudit) aim(h History) {
 }
 
 // zeroPoints are where the setting was made afresh: a changeover, another set-up, a new
-// tool, a restart. A restart that ends a matter in which somebody adjusted is none: that
-// adjustment was the fix, starts afresh by itself, and stays in force.
+// tool, the restart of a fix.
 func (a *AdjustmentAudit) zeroPoints(h History) []int {
 	var out []int
 	for _, b := range h.Course.Boundaries {
@@ -172,7 +184,7 @@ func (a *AdjustmentAudit) zeroPoints(h History) []int {
 		case ByChangeover, BySetup:
 			out = append(out, a.first(b.At))
 		case ByRestart:
-			if !h.adjustedFor(b.At) {
+			if h.settingMade(b.At) {
 				out = append(out, a.first(b.At))
 			}
 		}
@@ -185,19 +197,25 @@ func (a *AdjustmentAudit) zeroPoints(h History) []int {
 	return out
 }
 
-// adjustedFor reports whether the matter that a restart mark ended had an adjustment.
-func (h History) adjustedFor(restart time.Time) bool {
+// settingMade reports whether the restart mark at an instant is that of a fix which may
+// have touched the setting. Closing a matter with nothing done leaves every setting as it
+// is. Where somebody adjusted while the matter was open, that adjustment was the fix: it
+// settles what was carried by itself, and stays in force.
+func (h History) settingMade(restart time.Time) bool {
 	for _, m := range h.Matters {
 		if !m.RestartAt.Equal(restart) {
 			continue
 		}
-		for _, c := range h.Changes {
-			if _, ok := c.EffectOn(h.State.ID); ok && c.Prompted && !c.HappenedAt.Before(m.OpenedTaken) && !c.HappenedAt.After(m.ClosedAt) {
-				return true
+		if m.Closing != Fixed {
+			return false
+		}
+		for _, c := range h.changesOn(h.State.ID) {
+			if c.Prompted && !c.HappenedAt.Before(m.OpenedTaken) && !c.HappenedAt.After(m.ClosedAt) {
+				return false
 			}
 		}
 	}
-	return false
+	return true
 }
 
 // capability is computed where all points were taken under one specification.

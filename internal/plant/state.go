@@ -67,6 +67,8 @@ type CharacteristicState struct {
 	Protections []Protection // that have not ended, oldest first
 
 	OverduePlan *ReactionPlan // in force, while a round is overdue; nil: none
+
+	Changes []Change // that concern it, since the first of Points, oldest first: what charts show of them
 }
 
 // MachineNow is a machine with what it does at the moment.

@@ -165,3 +165,19 @@ func numberOrNull(n int) *int {
 	}
 	return &n
 }
+
+// AdjustmentDays counts the adjustments that move a characteristic, directly or through
+// a knob, by day, oldest first.
+func (s *Store) AdjustmentDays(ctx context.Context, characteristic uuid.UUID) ([]plant.AdjustmentDay, error) {
+	rows, err := s.pool.Query(ctx, `select min(h.happened_at), max(h.happened_at), count(*) filter (where h.prompted), count(*) filter (where not h.prompted)
+		from characteristic c join change h on h.machine_id = c.machine_id
+		where c.id = $1 and c.plant_id = $2 and h.kind = 'adjustment'
+			and (h.moves is null and h.characteristic_id = c.id or h.moves @> jsonb_build_array(jsonb_build_object('characteristic', c.id)))
+		group by date_trunc('day', h.happened_at) order by 1`, characteristic, s.plant())
+	if err != nil {
+		return nil, fmt.Errorf("count adjustments: %w", err)
+	}
+	return pgx.CollectRows(rows, func(r pgx.CollectableRow) (d plant.AdjustmentDay, err error) {
+		return d, r.Scan(&d.First, &d.Last, &d.Prompted, &d.Unprompted)
+	})
+}

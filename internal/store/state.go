@@ -85,13 +85,16 @@ func (g *gathering) gather(ctx context.Context, tx pgx.Tx, points int, ids []uui
 		stationIDs[i] = st.ID
 	}
 	for _, read := range []func(context.Context, pgx.Tx, []uuid.UUID) error{
-		g.readMachines, g.readCharacteristics, g.readMatters, g.readEscalation, g.readLogs, g.readChanges,
+		g.readMachines, g.readCharacteristics, g.readMatters, g.readEscalation, g.readLogs,
 	} {
 		if err := read(ctx, tx, stationIDs); err != nil {
 			return nil, err
 		}
 	}
 	if err := g.readPoints(ctx, tx, points); err != nil {
+		return nil, err
+	}
+	if err := g.readChanges(ctx, tx); err != nil {
 		return nil, err
 	}
 	states, err := g.assemble(ctx, tx)
@@ -227,32 +230,6 @@ func (g *gathering) readLogs(ctx context.Context, tx pgx.Tx, stations []uuid.UUI
 		v.Part = orNil(part)
 		now := g.machines[v.Machine]
 		now.Log, now.State, now.Known = append(now.Log, v), v, true
-		return nil
-	})
-	return err
-}
-
-// readChanges reads the changes since each machine's oldest newest sample: they may ask
-// for a sample.
-func (g *gathering) readChanges(ctx context.Context, tx pgx.Tx, stations []uuid.UUID) error {
-	// The limit inside makes it a short walk along an index for each machine, also where a
-	// characteristic was not sampled for a year.
-	rows, err := tx.Query(ctx, `with since as (
-			select m.id, min(cs.last_taken) as at
-			from machine m left join characteristic c on c.machine_id = m.id
-			left join characteristic_state cs on cs.characteristic_id = c.id
-			where m.station_id = any($1) group by m.id)
-		select h.machine_id, h.kind, h.happened_at from since s cross join lateral (
-			select x.machine_id, x.kind, x.happened_at from change x where x.machine_id = s.id and x.happened_at <= $2
-			order by x.happened_at desc limit 100) h
-		where h.kind in ('tool', 'adjustment') and (s.at is null or h.happened_at > s.at)
-		order by h.happened_at desc`, stations, g.now)
-	if err != nil {
-		return fmt.Errorf("read changes: %w", err)
-	}
-	var c plant.Change
-	_, err = pgx.ForEachRow(rows, []any{&c.Machine, &c.Kind, &c.HappenedAt}, func() error {
-		g.changes[c.Machine] = append(g.changes[c.Machine], c)
 		return nil
 	})
 	return err

@@ -197,6 +197,12 @@ func spark(f ui.Format, c *plant.CharacteristicState, value string, height float
 		s.Points[i] = chart.SparkPoint{Value: p.Stats.Mean(),
 			Restart: i > 0 && points[i-1].TakenAt.Before(c.Segment.From) && !p.TakenAt.Before(c.Segment.From)}
 	}
+	for i := 1; i < len(points); i++ {
+		s.Points[i].Before = ui.EventsBefore(*c, points[i-1].TakenAt, points[i].TakenAt)
+	}
+	if n := len(points); n > 0 {
+		s.After = ui.EventsSince(*c, points[n-1].TakenAt)
+	}
 	markNewest(s.Points, points, c.Matter)
 	return s.SVG()
 }

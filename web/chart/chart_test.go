@@ -226,8 +226,8 @@ func TestAnyInputGivesWellFormedDrawings(t *testing.T) {
 		var st []StationPoint
 		for range rng.IntN(30) {
 			r.Readings, r.Suspect = append(r.Readings, odd(rng)), append(r.Suspect, odd(rng))
-			s.Points = append(s.Points, SparkPoint{odd(rng), rng.IntN(9) == 0, Mark(rng.IntN(3))})
-			st = append(st, StationPoint{Value: odd(rng), Text: word(), Time: word(), Restart: rng.IntN(9) == 0, Mark: Mark(rng.IntN(3))})
+			s.Points = append(s.Points, SparkPoint{odd(rng), rng.IntN(9) == 0, Mark(rng.IntN(3)), oddEvents(rng)})
+			st = append(st, StationPoint{Value: odd(rng), Text: word(), Time: word(), Restart: rng.IntN(9) == 0, Mark: Mark(rng.IntN(3)), Before: oddEvents(rng)})
 		}
 		f := &Falls{ID: word(), Points: st, Limits: oddLimits(rng), Now: odd(rng), Lo: odd(rng), Hi: odd(rng)}
 		v := &Verdict{ID: word(), Points: st, Limits: oddLimits(rng), Reach: rng.IntN(20) - 3, Signal: word()}
@@ -400,4 +400,11 @@ func BenchmarkChartSVG3200(b *testing.B) {
 	for b.Loop() {
 		_ = c.SVG()
 	}
+}
+
+func oddEvents(rng *rand.Rand) (out []Event) {
+	for range rng.IntN(4) {
+		out = append(out, Event{ChangeKind(rng.IntN(4)), rng.IntN(2) == 0})
+	}
+	return out
 }

@@ -2,6 +2,7 @@ package chart
 
 import (
 	"math"
+	"slices"
 	"time"
 )
 
@@ -20,10 +21,14 @@ type Control struct {
 	Location   Panel
 	Dispersion Panel
 	Points     []Point
-	Segments   []Segment
-	Signals    []Signal
-	Reaches    []Reach
-	Changes    []Change
+	// Other is a second series beside the location, one value a point, such as how it
+	// would have been; NaN is missing, nil is none. OtherName is its column in the table.
+	Other     []float64
+	OtherName string
+	Segments  []Segment
+	Signals   []Signal
+	Reaches   []Reach
+	Changes   []Change
 
 	Zone      *time.Location // of the time axis; nil is UTC
 	Shifts    []Tick         // shift beginnings, used where they fit
@@ -103,9 +108,10 @@ type ChangeKind int
 
 // Kinds of change.
 const (
-	Post ChangeKind = iota // tool, material lot, maintenance, setting
-	Up                     // adjustment with a positive size
-	Down                   // adjustment with a negative size
+	Post    ChangeKind = iota // tool, material lot, maintenance, setting
+	Up                        // adjustment with a positive size
+	Down                      // adjustment with a negative size
+	Restart                   // judging starts afresh: a fix, another part
 )
 
 // Change is something done to the process.
@@ -113,7 +119,7 @@ type Change struct {
 	At       time.Time
 	Kind     ChangeKind
 	Prompted bool   // an adjustment made while a matter was open
-	Text     string // signed size, or nothing
+	Text     string // signed size, a word for a post, or nothing
 	Title    string // "10:56, adjusted +0.002 mm, no matter open"
 }
 
@@ -222,8 +228,8 @@ func (c *Control) layout() *frame {
 	}
 
 	// Vertical order: flags, notches, location, flags of dispersion, dispersion, lane.
-	f.loc.lo, f.loc.hi = c.Location.span(pick(
-		func(s *Segment) Limits { return s.Location }, func(p *Point) float64 { return p.Location }))
+	locLimits, locValues := pick(func(s *Segment) Limits { return s.Location }, func(p *Point) float64 { return p.Location })
+	f.loc.lo, f.loc.hi = c.Location.span(locLimits, append(slices.Clip(locValues), c.Other...))
 	if f.two {
 		f.dis.lo, f.dis.hi = c.Dispersion.span(pick(
 			func(s *Segment) Limits { return s.Dispersion }, func(p *Point) float64 { return p.Dispersion }))

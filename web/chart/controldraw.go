@@ -240,67 +240,6 @@ func (f *frame) notchNote(d *builder, k int, x, half float64) {
 	}
 }
 
-// changes draws leaders, arrows and posts on the time axis.
-func (f *frame) changes(d *builder) {
-	d.line("axis", f.x0, f.axis, f.x1, f.axis)
-	type mark struct {
-		c *Change
-		x float64
-	}
-	marks := make([]mark, 0, len(f.c.Changes))
-	for i := range f.c.Changes {
-		marks = append(marks, mark{&f.c.Changes[i], f.timeX(&f.c.Changes[i])})
-	}
-	sort.SliceStable(marks, func(i, j int) bool { return marks[i].x < marks[j].x })
-	for i := range marks { // a post has no leader, so it may give way a little
-		if marks[i].c.Kind != Post || i+1 == len(marks) {
-			continue
-		}
-		if short := 11 - (marks[i+1].x - marks[i].x); short > 0 && marks[i+1].c.Kind != Post {
-			marks[i].x = max(marks[i].x-short, f.x0)
-		}
-	}
-	taken := f.x0 - 40 // right end of what stands on the axis so far
-	for i, m := range marks {
-		d.raw(`<g class="change">`)
-		d.title(m.c.Title)
-		next := f.x1 + right
-		if i+1 < len(marks) {
-			next = marks[i+1].x - 9
-		}
-		if m.c.Kind == Post {
-			d.line("post", m.x, f.axis-16, m.x, f.axis)
-			d.rect("post-head", m.x-6, f.axis-20, 6, 8)
-			taken = f.label(d, m.c.Text, m.x, 6, max(taken, m.x-12), next)
-		} else {
-			d.line("leader", m.x, f.loc.top, m.x, f.axis-24)
-			class := "arrow hollow"
-			if m.c.Prompted {
-				class = "arrow filled"
-			}
-			d.arrow(class, m.x, f.axis, m.c.Kind == Up)
-			taken = f.label(d, m.c.Text, m.x, 12, max(taken, m.x-9), next)
-		}
-		d.raw("</g>")
-	}
-}
-
-// label writes the size of a change to the right of its mark, or to the left,
-// or not at all if both sides are taken; it returns the new taken end.
-func (f *frame) label(d *builder, s string, x, off, taken, next float64) float64 {
-	w := textWidth(s, 12.5)
-	switch {
-	case s == "":
-		return x + off
-	case x+off+w < next:
-		d.text("change-value", x+off, f.axis-8, s, start)
-		return x + off + w
-	case x-off-w > taken && taken < x-off:
-		d.text("change-value", x-off, f.axis-8, s, end)
-	}
-	return x + off
-}
-
 // timeX places an instant between the two points around it.
 func (f *frame) timeX(c *Change) float64 {
 	p := f.c.Points
@@ -322,17 +261,6 @@ func (f *frame) timeX(c *Change) float64 {
 		return f.x(k)
 	}
 	return f.x(k-1) + f.step*min(max(c.At.Sub(p[k-1].At).Seconds()/span, 0), 1)
-}
-
-// arrow is a block arrow standing on the time axis.
-func (d *builder) arrow(class string, x, base float64, up bool) {
-	head, tail := base-22, base-1
-	s := 10.0
-	if !up {
-		head, tail, s = tail, head, -10
-	}
-	d.polygon(class, xy{x, head}, xy{x + 7.5, head + s}, xy{x + 2.8, head + s}, xy{x + 2.8, tail},
-		xy{x - 2.8, tail}, xy{x - 2.8, head + s}, xy{x - 7.5, head + s})
 }
 
 func (f *frame) timeAxis(d *builder) {

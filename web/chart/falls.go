@@ -17,6 +17,7 @@ type Falls struct {
 	Limits Limits
 	Floor  bool
 	Now    float64 // average of what is typed so far; NaN while nothing is
+	After  []Event // done since the last point
 	// Lo and Hi are the axis where there are no limits yet (specification, say);
 	// both zero chooses it from the points.
 	Lo, Hi float64
@@ -30,6 +31,7 @@ type StationPoint struct {
 	Time    string // "07:42"
 	Restart bool
 	Mark    Mark
+	Before  []Event // done between the point before and this one
 }
 
 // Verdict is the picture beside an answer: the last twelve points, the reach,
@@ -41,8 +43,9 @@ type Verdict struct {
 	Points []StationPoint
 	Limits Limits
 	Floor  bool
-	Reach  int    // hatched from that many points before the newest; 0 is none
-	Signal string // pennant at the newest point; empty is none
+	Reach  int     // hatched from that many points before the newest; 0 is none
+	Signal string  // pennant at the newest point; empty is none
+	After  []Event // done since the newest point
 	Lo, Hi float64
 	Words  Words
 }
@@ -69,6 +72,9 @@ type averages struct {
 }
 
 const stationR = 5.0
+
+// eventTall is how tall events stand at the foot of a station's chart.
+const eventTall = 18.0
 
 func newAverages(d *builder, w, h, top, bottom float64, slots int, pts []StationPoint, lim Limits, floorZero bool, lo, hi float64, also float64) *averages {
 	a := &averages{d: d, w: w, h: h, top: top, bottom: bottom, slots: slots, points: pts, limits: lim, floor: math.NaN()}
@@ -116,6 +122,11 @@ func (a *averages) draw(last int, newest bool) {
 		}
 	}
 	d.polyline("trace", run)
+	for i, p := range a.points {
+		if i > 0 {
+			d.events(p.Before, (a.x(a.slot(i, last))+a.x(a.slot(i-1, last)))/2, a.s.bottom, eventTall)
+		}
+	}
 	said := a.saidBeyond(last)
 	for i, p := range a.points {
 		if !finite(p.Value) {
@@ -237,6 +248,7 @@ func (f *Falls) AppendSVG(b []byte) []byte {
 	d.raw(">")
 	a.band()
 	a.draw(FallsLength-1, false)
+	d.events(f.After, (a.x(FallsLength-1)+a.x(FallsLength))/2, a.s.bottom, eventTall)
 	a.provisional(f.Now)
 	if len(pts) > 0 {
 		d.text("tick", a.x(a.slot(0, FallsLength-1))-6, h-8, pts[0].Time, start)
@@ -312,6 +324,7 @@ func (v *Verdict) AppendSVG(b []byte) []byte {
 		d.line("reach-edge", x1, a.s.top, x1, a.s.bottom)
 	}
 	a.draw(last, true)
+	d.events(v.After, min(a.x(last)+14, a.x1), a.s.bottom, eventTall)
 	if n := len(pts); v.Signal != "" && n > 0 && finite(pts[n-1].Value) {
 		y, _ := a.s.y(pts[n-1].Value)
 		f := pennant{x: a.x(last), y: y, clear: stationR * 3.4, open: true, shown: true, left: true}

@@ -1,6 +1,9 @@
 package chart
 
-import "sort"
+import (
+	"math"
+	"sort"
+)
 
 // breaks says whether the line stops before point i.
 func (f *frame) breaks() []bool {
@@ -19,26 +22,34 @@ func (f *frame) breaks() []bool {
 // traces draws the thin lines of both panels.
 func (f *frame) traces(d *builder) {
 	stop := f.breaks()
-	f.trace(d, stop, f.loc, func(p *Point) float64 { return p.Location })
+	if f.c.Other != nil {
+		f.trace(d, "other", stop, f.loc, func(i int) float64 {
+			if i >= len(f.c.Other) {
+				return math.NaN()
+			}
+			return f.c.Other[i]
+		})
+	}
+	f.trace(d, "trace", stop, f.loc, func(i int) float64 { return f.c.Points[i].Location })
 	if f.two {
-		f.trace(d, stop, f.dis, func(p *Point) float64 { return p.Dispersion })
+		f.trace(d, "trace", stop, f.dis, func(i int) float64 { return f.c.Points[i].Dispersion })
 	}
 }
 
-func (f *frame) trace(d *builder, stop []bool, s scale, of func(*Point) float64) {
+func (f *frame) trace(d *builder, class string, stop []bool, s scale, of func(i int) float64) {
 	run := make([]xy, 0, f.n)
 	flush := func() {
 		if f.thin {
 			run = envelope(run)
-			d.polyline("trace dense", run)
+			d.polyline(class+" dense", run)
 		} else {
-			d.polyline("trace", run)
+			d.polyline(class, run)
 		}
 		run = run[:0]
 	}
 	for i := range f.c.Points {
 		p := &f.c.Points[i]
-		v := of(p)
+		v := of(i)
 		if stop[i] {
 			flush()
 		}

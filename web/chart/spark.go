@@ -23,7 +23,8 @@ type Spark struct {
 	Floor  bool // no value can be below zero
 	// Reach, if positive, hatches from that many points before the newest.
 	Reach   int
-	Stopped bool // the machine stands still: the chart recedes
+	Stopped bool    // the machine stands still: the chart recedes
+	After   []Event // done since the newest point
 }
 
 // SparkPoint is one value. NaN is missing; the line breaks there.
@@ -31,6 +32,7 @@ type SparkPoint struct {
 	Value   float64
 	Restart bool // the line breaks before this point
 	Mark    Mark
+	Before  []Event // done between the point before and this one
 }
 
 // SparkLength is how many points a card shows.
@@ -116,6 +118,14 @@ func (s *Spark) AppendSVG(b []byte) []byte {
 				d.chevron(x(i), y-off-4, false)
 			}
 		}
+	}
+	for i, p := range pts {
+		if i > 0 {
+			d.events(p.Before, x(i)-step/2, h-2, 13)
+		}
+	}
+	if len(pts) > 0 {
+		d.events(s.After, x(len(pts)-1)+12, h-2, 13)
 	}
 	d.raw("</svg>")
 	return d.b

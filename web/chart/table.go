@@ -19,6 +19,9 @@ func (c *Control) Table() Table {
 	w := c.Words.filled()
 	two := c.Dispersion.Name != ""
 	t := Table{Caption: c.Label, Head: []string{w.Time, c.Location.Name, w.Band}}
+	if c.Other != nil {
+		t.Head = append(t.Head, c.OtherName)
+	}
 	if two {
 		t.Head = append(t.Head, c.Dispersion.Name, c.Dispersion.Name+": "+strings.ToLower(w.Band))
 	}
@@ -56,6 +59,13 @@ func (c *Control) Table() Table {
 			when = strconv.Itoa(i + 1)
 		}
 		row := []string{when, or(p.LocationText, decimal(p.Location, c.Location.Decimals)), loc.words(w)}
+		if c.Other != nil {
+			other := ""
+			if i < len(c.Other) {
+				other = decimal(c.Other[i], c.Location.Decimals)
+			}
+			row = append(row, other)
+		}
 		if two {
 			row = append(row, or(p.DispersionText, decimal(p.Dispersion, c.Dispersion.Decimals)), dis.words(w))
 		}

@@ -68,7 +68,7 @@ type pictureView struct {
 }
 
 // legend is which marks the chart holds and the legend explains.
-type legend struct{ Prompted, Unprompted, Post, Break, Outside bool }
+type legend struct{ Prompted, Unprompted, Post, Restart, Break, Outside bool }
 
 // lineView is the newest point in words, filled by points.js with others.
 type lineView struct {
@@ -202,6 +202,8 @@ func newPicture(d *drawing, newestStretch bool) pictureView {
 		switch {
 		case c.Kind == chart.Post:
 			v.Marks.Post = true
+		case c.Kind == chart.Restart:
+			v.Marks.Restart = true
 		case c.Prompted:
 			v.Marks.Prompted = true
 		default:

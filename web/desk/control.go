@@ -306,41 +306,6 @@ func (d *drawing) hang(mark *chart.Signal, s plant.Signal, m plant.Matter, i int
 	}
 }
 
-func (d *drawing) putChanges() {
-	w := d.f.Words
-	at := 0
-	for _, ch := range d.h.Changes {
-		c := chart.Change{At: ch.HappenedAt, Prompted: ch.Prompted}
-		what := w.T("desk.change." + string(ch.Kind))
-		if ch.Note != "" {
-			what = w.T("desk.change-note", what, ch.Note)
-		}
-		if ch.Kind == plant.Adjustment && ch.Size != nil && ch.Characteristic == d.h.State.ID {
-			c.Kind = chart.Up
-			if ch.Size.Units < 0 {
-				c.Kind = chart.Down
-			}
-			c.Text = d.f.SignedDecimal(*ch.Size)
-			what = w.T("desk.adjusted", d.f.WithUnit(c.Text, d.setup.Unit))
-			if ch.Prompted {
-				what = w.T("desk.adjusted-prompted", what)
-			} else {
-				what = w.T("desk.adjusted-unprompted", what)
-			}
-		} else if ch.Kind == plant.Adjustment {
-			what = w.T("desk.adjusted-other")
-		}
-		c.Title = w.T("desk.change-at", d.f.Clock(ch.HappenedAt), what)
-		d.c.Changes = append(d.c.Changes, c)
-		for at < len(d.points) && d.points[at].TakenAt.Before(ch.HappenedAt) {
-			at++
-		}
-		if at < len(d.points) {
-			d.c.Points[at].Note = note(d.f, d.c.Points[at].Note, w.T("desk.note.before", what))
-		}
-	}
-}
-
 // label says the chart in a sentence or two.
 func (d *drawing) label() string {
 	w := d.f.Words

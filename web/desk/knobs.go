@@ -18,6 +18,7 @@ type adjustingStore interface {
 	Knobs(ctx context.Context, machine uuid.UUID) ([]plant.Knob, error)
 	KnobVersions(ctx context.Context, id uuid.UUID) ([]plant.Knob, error)
 	SaveKnob(ctx context.Context, k plant.Knob) (plant.Knob, error)
+	AdjustmentDays(ctx context.Context, characteristic uuid.UUID) ([]plant.AdjustmentDay, error)
 }
 
 // knobsView is what can be turned on the machine of a characteristic.

@@ -236,6 +236,9 @@ func (s *studied) picture() *chart.Control {
 		}
 		c.Points = append(c.Points, cp)
 	}
+	if len(s.h.Points) > 0 {
+		c.Changes = events{f, s.h, setup}.all()
+	}
 	used := len(s.h.Points) - outs
 	c.Label = w.T("desk.study.label", s.h.State.Name, used, len(s.h.Points))
 	if !s.ready() {

@@ -68,6 +68,7 @@ func (d *Desk) Routes(r chi.Router) {
 	r.Get("/causes", ui.Handle(d.log, d.showCauses))
 	r.Get("/characteristic/{id}", ui.Handle(d.log, d.chart))
 	r.Get("/characteristic/{id}/revisions", ui.Handle(d.log, d.revisions))
+	r.Get("/characteristic/{id}/adjustments", ui.Handle(d.log, d.audit))
 	r.Get("/characteristic/{id}/adjusting-points", ui.Handle(d.log, d.showKnobs))
 	r.Group(func(r chi.Router) {
 		r.Use(ui.Require(plant.SetLimits))

@@ -83,7 +83,7 @@ func (a *adviser) view() (adjustView, error) {
 	}
 	lo, hi := specAxis(s)
 	v.Chart = (&chart.Verdict{ID: "adjust", Label: w.T("station.verdict-label", a.c.Name), W: adjustW, H: adjustH,
-		Points: stationPoints(f, a.c.Points, s, a.c.Segment), Limits: chartLimits(f, a.c.Revision, s), Lo: lo, Hi: hi, Words: chartWords(w)}).SVG()
+		Points: stationPoints(f, a.c.Points, s, a.c), After: eventsSince(a.c, a.c.Points), Limits: chartLimits(f, a.c.Revision, s), Lo: lo, Hi: hi, Words: chartWords(w)}).SVG()
 	return v, a.advise(&v)
 }
 

@@ -68,14 +68,18 @@ func chartSpec(f ui.Format, s plant.Setup) chart.Spec {
 	return spec
 }
 
-// stationPoints are subgroups as the station's drawings take them. The line breaks
+// stationPoints are subgroups of c as the station's drawings take them. The line breaks
 // where what they are judged by began afresh.
-func stationPoints(f ui.Format, points []plant.Point, s plant.Setup, from plant.Segment) []chart.StationPoint {
+func stationPoints(f ui.Format, points []plant.Point, s plant.Setup, c plant.CharacteristicState) []chart.StationPoint {
+	from := c.Segment
 	var out []chart.StationPoint
 	for i, p := range points {
 		sp := chart.StationPoint{Value: p.Stats.Mean(), Text: f.Mean(p.Stats.Mean(), s), Time: f.Clock(p.TakenAt)}
 		if i > 0 && !from.From.IsZero() && points[i-1].TakenAt.Before(from.From) && !p.TakenAt.Before(from.From) {
 			sp.Restart = true
+		}
+		if i > 0 {
+			sp.Before = ui.EventsBefore(c, points[i-1].TakenAt, p.TakenAt)
 		}
 		for _, signal := range p.Standing() {
 			switch signal.Panel {
@@ -90,6 +94,14 @@ func stationPoints(f ui.Format, points []plant.Point, s plant.Setup, from plant.
 		out = append(out, sp)
 	}
 	return out
+}
+
+// eventsSince is what was done after the last of the points.
+func eventsSince(c plant.CharacteristicState, points []plant.Point) []chart.Event {
+	if len(points) == 0 {
+		return nil
+	}
+	return ui.EventsSince(c, points[len(points)-1].TakenAt)
 }
 
 // specAxis is the axis of averages while there are no limits: the specification,
@@ -129,10 +141,10 @@ func newFalls(f ui.Format, c plant.CharacteristicState, typed []int64) fallsView
 	}
 	id := c.ID.String()
 	label := w.T("station.falls-label", c.Name)
-	points := stationPoints(f, c.Points, s, c.Segment)
+	points, since := stationPoints(f, c.Points, s, c), eventsSince(c, c.Points)
 	lo, hi := specAxis(s)
 	draw := func(name string, width, height float64) string {
-		return (&chart.Falls{ID: "falls-" + name + "-" + id, Label: label, W: width, H: height, Points: points, Limits: lim, Now: average, Lo: lo, Hi: hi, Words: chartWords(w)}).SVG()
+		return (&chart.Falls{ID: "falls-" + name + "-" + id, Label: label, W: width, H: height, Points: points, Limits: lim, Now: average, After: since, Lo: lo, Hi: hi, Words: chartWords(w)}).SVG()
 	}
 	v.Wide, v.Tall = draw("wide", wideW, wideH), draw("tall", tallW, tallH)
 	if s.Lower != nil || s.Upper != nil || s.Target != nil {

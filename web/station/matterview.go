@@ -106,7 +106,7 @@ func newMatter(f ui.Format, person plant.Person, st plant.StationState, c plant.
 	lo, hi := specAxis(c.Setup)
 	v.ChartOf = w.T("station.last-rounds", w.T("station.name-unit", c.Name, c.Setup.Unit))
 	v.Chart = (&chart.Verdict{ID: "matter", Label: w.T("station.verdict-label", c.Name), W: verdictW, H: verdictH,
-		Points: stationPoints(f, c.Points, c.Setup, c.Segment), Limits: chartLimits(f, c.Revision, c.Setup), Lo: lo, Hi: hi, Words: chartWords(w)}).SVG()
+		Points: stationPoints(f, c.Points, c.Setup, c), After: eventsSince(c, c.Points), Limits: chartLimits(f, c.Revision, c.Setup), Lo: lo, Hi: hi, Words: chartWords(w)}).SVG()
 	return v
 }
 

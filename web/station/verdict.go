@@ -355,7 +355,7 @@ func (v *verdictView) draw(f ui.Format, t told) {
 		w, h = besideW, besideH
 	}
 	c := chart.Verdict{ID: "verdict", Label: f.Words.T("station.verdict-label", t.of.Name), W: w, H: h,
-		Points: stationPoints(f, points, s, t.of.Segment), Limits: chartLimits(f, t.of.Revision, s), Signal: signal, Lo: lo, Hi: hi, Words: chartWords(f.Words)}
+		Points: stationPoints(f, points, s, t.of), Limits: chartLimits(f, t.of.Revision, s), Signal: signal, Lo: lo, Hi: hi, Words: chartWords(f.Words)}
 	v.Chart = c.SVG()
 	if t.Verdict != plant.Hold || !t.found {
 		return
