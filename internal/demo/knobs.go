@@ -90,6 +90,24 @@ func (w *walker) overAdjust(ctx context.Context, t *track) error {
 	return w.turn(ctx, t, -overAdjusts*t.deviation(), "")
 }
 
+// doneBy is which kind of change an action is, besides ending a matter: it stands on the
+// charts of its machine.
+var doneBy = map[string]plant.ChangeKind{
+	"Insert changed": plant.ToolChanged, "Die pair changed": plant.ToolChanged, "Bush changed": plant.ToolChanged,
+	"Lot of shells sorted": plant.MaterialLot, "Grease drum changed": plant.MaterialLot,
+	"Nozzle cleaned": plant.Maintenance, "Collet cleaned": plant.Maintenance, "Collet cleaned, pressure set to 18 bar": plant.Maintenance, "Jaws cleaned": plant.Maintenance,
+	"Heater fuse changed": plant.Maintenance, "Anvil tightened": plant.Maintenance, "Stop set and locked": plant.Setting, "Warm-up of ten parts agreed": plant.Setting,
+}
+
+// did records what was done about a fault as a change of the machine.
+func (w *walker) did(ctx context.Context, f fault) error {
+	kind, ok := doneBy[f.action]
+	if !ok {
+		return nil
+	}
+	return w.store.LogChange(ctx, plant.Change{ID: id(), Station: w.station.ID, Machine: w.machine.ID, Kind: kind, HappenedAt: w.at, Person: w.operator()})
+}
+
 // comes is how long it takes until somebody comes to a matter, looks how long until it is
 // closed. Who corrects after every sample has no patience for looking.
 func (w *walker) comes(t *track) time.Duration {

@@ -197,8 +197,9 @@ func (a *Advice) forNothingOpen(h History, s scale) error {
 	}
 	a.Further, a.Unprompted = audit.Further()
 	var steady []Point
+	from := h.steadySince()
 	for i, p := range audit.Points {
-		if h.Course.At(p.TakenAt).Same(h.State.Segment) {
+		if !p.TakenAt.Before(from) {
 			a.Left = append(a.Left, p.Stats.Mean()-audit.Carried[i])
 			steady = append(steady, p)
 		}
@@ -228,6 +229,18 @@ func (a *Advice) forNothingOpen(h History, s scale) error {
 	a.LeftAt, a.MovedTo = level, level+a.Correction
 	a.Chance, err = asFarOff(a.Deviation, level, rev.Sigma/math.Sqrt(float64(last.Stats.N)))
 	return err
+}
+
+// steadySince is the last boundary at which the process itself may have changed; a
+// revision changes only what it is judged by.
+func (h History) steadySince() time.Time {
+	var from time.Time
+	for _, b := range h.Course.Boundaries {
+		if b.Kind != ByRevision && b.At.After(from) {
+			from = b.At
+		}
+	}
+	return from
 }
 
 // compare sets the newest rounds, as they would have been left alone, beside the same
