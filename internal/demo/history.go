@@ -209,7 +209,7 @@ func (w *walker) round(ctx context.Context) error {
 		}
 		for _, p := range a.Parts {
 			if p.Characteristic == t.ID && p.Opened {
-				w.follow = append(w.follow, followUp{at: w.at.Add(w.comes(t)), matter: p.Matter, track: t})
+				w.follow = append(w.follow, followUp{at: w.at.Add(w.patience(t, w.minutes(2, 9))), matter: p.Matter, track: t})
 			}
 		}
 		if err := w.afterwards(ctx, t); err != nil {
@@ -297,14 +297,17 @@ func (w *walker) freeze(ctx context.Context, t *track) error {
 // act is the next thing that somebody does about a matter.
 func (w *walker) act(ctx context.Context, f followUp) error {
 	h := hands{store: w.store, rng: w.rng, track: f.track, day: w.day(), operator: w.operator(), supervisor: w.b.people[plant.Supervisor][0], now: w.at,
-		turn: func(found fault) error { return w.turn(ctx, f.track, -found.shift*f.track.sigma, found.action) }}
+		turn: func(found fault) error { return w.turn(ctx, f.track, -found.shift*f.track.sigma, found.action) },
+		did:  func(found fault) error { return w.did(ctx, found) }}
 	again, err := h.next(ctx, f.matter)
-	if err != nil {
+	switch {
+	case err != nil:
 		return err
-	}
-	if again > 0 {
-		f.at = w.at.Add(again)
+	case again > 0:
+		f.at = w.at.Add(w.patience(f.track, again))
 		w.follow = append(w.follow, f)
+	case w.inSpell(f.track):
+		return w.overAdjust(ctx, f.track)
 	}
 	return nil
 }

@@ -108,20 +108,13 @@ func (w *walker) did(ctx context.Context, f fault) error {
 	return w.store.LogChange(ctx, plant.Change{ID: id(), Station: w.station.ID, Machine: w.machine.ID, Kind: kind, HappenedAt: w.at, Person: w.operator()})
 }
 
-// comes is how long it takes until somebody comes to a matter, looks how long until it is
-// closed. Who corrects after every sample has no patience for looking.
-func (w *walker) comes(t *track) time.Duration {
+// patience is how long somebody takes to the next thing about a matter. Who corrects after
+// every sample has none for looking.
+func (w *walker) patience(t *track, usual time.Duration) time.Duration {
 	if w.inSpell(t) {
-		return w.minutes(1, 3)
+		return min(usual, w.minutes(1, 3))
 	}
-	return w.minutes(2, 9)
-}
-
-func (w *walker) looks(t *track) time.Duration {
-	if w.inSpell(t) {
-		return w.minutes(3, 12)
-	}
-	return w.minutes(12, 70)
+	return usual
 }
 
 func (w *walker) inSpell(t *track) bool {

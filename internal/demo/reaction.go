@@ -22,6 +22,7 @@ type hands struct {
 
 	now  time.Time
 	turn func(found fault) error // turns the machine where that is the fix; nil: never
+	did  func(found fault) error // records what was done to the machine; nil: not at all
 }
 
 func (h hands) minutes(least, most int) time.Duration {
@@ -63,6 +64,11 @@ func (h hands) next(ctx context.Context, id uuid.UUID) (time.Duration, error) {
 					return 0, err
 				}
 				req.FixedAt = h.now
+			}
+			if h.did != nil {
+				if err := h.did(found); err != nil {
+					return 0, err
+				}
 			}
 		}
 	}

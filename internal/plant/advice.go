@@ -14,6 +14,7 @@ type AdviceKind string
 const (
 	AdviseLearning  AdviceKind = "learning"  // no limits: nobody can tell a change from the usual
 	AdviseLeave     AdviceKind = "leave"     // no matter is open: leave it alone
+	AdviseFresh     AdviceKind = "fresh"     // nothing is open, and no round was taken since judging began afresh
 	AdviseOffTarget AdviceKind = "set-off"   // steady, yet set off target: for engineering, not for one round
 	AdviseElsewhere AdviceKind = "elsewhere" // what is open is not about the level
 	AdviseRound     AdviceKind = "round"     // take another round first
@@ -220,7 +221,8 @@ func (a *Advice) forNothingOpen(h History, s scale) error {
 		}
 	}
 	n := len(h.Points)
-	if n == 0 {
+	if n == 0 || h.Points[n-1].TakenAt.Before(from) {
+		a.Kind = AdviseFresh
 		return nil
 	}
 	last := h.Points[n-1]

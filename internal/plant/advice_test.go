@@ -31,6 +31,11 @@ func TestAdviceKinds(t *testing.T) {
 		make   func() (History, *Knob)
 	}{
 		{"nothing open", AdviseLeave, 0, "0.00", func() (History, *Knob) { return stretch(steady...), nil }},
+		{"no round since a matter was closed", AdviseFresh, 0, "0", func() (History, *Knob) {
+			h := stretch(steady...)
+			h.matter(12, 13, Fixed, Location)
+			return h, nil
+		}},
 		{"no limits", AdviseLearning, 0, "0", func() (History, *Knob) {
 			h := stretch(steady...)
 			h.State.Revision = nil

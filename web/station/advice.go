@@ -139,6 +139,10 @@ func (a *adviser) advise(v *adjustView) error {
 	case plant.AdviseLeave:
 		v.Title = w.T("station.adjust-leave")
 		a.leave(v, advice)
+	case plant.AdviseFresh:
+		v.Title, v.Says = w.T("adjusting.round"), []string{w.T("adjusting.fresh-text")}
+		v.Measure = path(a.st.ID) + "?measure=" + a.c.ID.String()
+		a.compare(v, advice)
 	case plant.AdviseOffTarget:
 		v.Title = w.T("adjusting.set-off")
 		v.Says = []string{w.T("adjusting.set-off-text", advice.Rounds, a.off(advice, advice.Offset), a.between(advice)), w.T("adjusting.set-off-why")}
@@ -181,22 +185,20 @@ func (v *adjustView) suggest(f ui.Format, turn plant.Decimal) {
 // leave says what correcting the last round would be expected to do.
 func (a *adviser) leave(v *adjustView, advice plant.Advice) {
 	f, w, s := a.f, a.f.Words, a.c.Setup
-	if advice.HasLast {
-		off := a.off(advice, advice.Deviation)
-		if advice.Chance >= 0.5 {
-			v.Says = append(v.Says, w.T("adjusting.last-often", off))
-		} else {
-			v.Says = append(v.Says, w.T("adjusting.last", off, int(math.Round(1/max(advice.Chance, 1e-6)))))
-		}
-		switch {
-		case advice.Correction == 0:
-			v.Says = append(v.Says, w.T("adjusting.less-than-a-step"))
-		case math.Abs(advice.MovedTo) > math.Abs(advice.LeftAt):
-			v.Says = append(v.Says, w.T("adjusting.further", f.WithUnit(f.Number(math.Abs(advice.MovedTo), s.LimitDecimals()), s.Unit),
-				f.WithUnit(f.Number(math.Abs(advice.LeftAt), s.LimitDecimals()), s.Unit)))
-		default:
-			v.Says = append(v.Says, w.T("adjusting.no-change"))
-		}
+	off := a.off(advice, advice.Deviation)
+	if advice.Chance >= 0.5 {
+		v.Says = append(v.Says, w.T("adjusting.last-often", off))
+	} else {
+		v.Says = append(v.Says, w.T("adjusting.last", off, int(math.Round(1/max(advice.Chance, 1e-6)))))
+	}
+	switch {
+	case advice.Correction == 0:
+		v.Says = append(v.Says, w.T("adjusting.less-than-a-step"))
+	case math.Abs(advice.MovedTo) > math.Abs(advice.LeftAt):
+		v.Says = append(v.Says, w.T("adjusting.further", f.WithUnit(f.Number(math.Abs(advice.MovedTo), s.LimitDecimals()), s.Unit),
+			f.WithUnit(f.Number(math.Abs(advice.LeftAt), s.LimitDecimals()), s.Unit)))
+	default:
+		v.Says = append(v.Says, w.T("adjusting.no-change"))
 	}
 	a.compare(v, advice)
 }
