@@ -31,7 +31,7 @@ func TestTheStationSpeaksFromTheCatalogueAlone(t *testing.T) {
 	b.http.Jar.SetCookies(at, []*http.Cookie{{Name: words.Cookie, Value: wordstest.Lang, Path: "/"}})
 	names := []string{"Holdfast", "Kestrel Row", s.Line.Name, s.Station.Name, s.Other.Name, s.Machine.Name, s.Second.Name, "Lathe 3", s.PartA.Name, s.PartB.Name,
 		s.Diameter.Name, s.Force.Name, s.Mass.Name, s.Length.Name, s.Operator.Name, "Insert chipped", "Swarf in collet", "Not found", "mm", "kN", "g"}
-	names = append(names, wordstest.LanguageNames()...)
+	names = append(wordstest.LanguageNames(), names...)
 	own := func(text string) bool {
 		for _, n := range names {
 			text = strings.ReplaceAll(text, n, "")
