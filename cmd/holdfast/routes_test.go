@@ -154,6 +154,11 @@ var routeTable = []routeRow{
 	{"POST /station/{station}/matter/{matter}/step", takers, 422},
 	{"POST /station/{station}/matter/{matter}/close", takers, 422},
 	{"POST /station/{station}/matter/{matter}/verify", takers, 422}, // without a fix to verify
+	{"GET /station/{station}/matter/{matter}/aside", takers, 200},
+	{"POST /station/{station}/matter/{matter}/aside", takers, 422},
+	{"GET /station/{station}/gauges", takers, 200},
+	{"GET /station/{station}/gauge/{gauge}", takers, 404}, // of no gauge
+	{"POST /station/{station}/gauge/{gauge}", takers, 404},
 	{"GET /station/{station}/change", takers, 200},
 	{"POST /station/{station}/change", takers, 422},
 	{"GET /station/{station}/change/{characteristic}", takers, 200},
@@ -175,6 +180,12 @@ var routeTable = []routeRow{
 	{"POST /desk/plan", setters, 404},
 	{"GET /desk/causes", deskers, 200},
 	{"POST /desk/causes", setters, 422},
+	{"GET /desk/product", deskers, 200},
+	{"POST /desk/product", deskers, 422},
+	{"GET /desk/product/{id}", deskers, 404}, // of no product
+	{"POST /desk/product/{id}", deskers, 404},
+	{"GET /desk/gauges", deskers, 200},
+	{"GET /desk/gauges/{id}", deskers, 404}, // of no gauge
 	{"GET /desk/characteristic/{id}", deskers, 200},
 	{"GET /desk/characteristic/{id}/revisions", deskers, 200},
 	{"GET /desk/characteristic/{id}/adjustments", deskers, 200},

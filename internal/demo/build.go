@@ -145,7 +145,7 @@ func (b *builder) place(ctx context.Context, st *store.Store, pl place, index in
 	w := newWalker(b, pl, index, s, m, parts)
 	for j, g := range pl.gauges {
 		resolution := plant.Decimal{Units: 1, Decimals: g.setup.Decimals}
-		gauge := plant.Gauge{ID: id(), Name: g.gauge, Resolution: &resolution, NextCheck: b.end.AddDate(0, 1, index)}
+		gauge := plant.Gauge{ID: id(), Name: g.gauge, Resolution: &resolution, NextCheck: b.begin.AddDate(0, 0, j), CheckDays: checkEvery}
 		if err := st.AddGauge(ctx, gauge, by); err != nil {
 			return nil, err
 		}

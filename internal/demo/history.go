@@ -34,6 +34,7 @@ type walker struct {
 	store   *store.Store
 	running bool
 	follow  []followUp
+	care    *care
 }
 
 // followUp is what somebody will do about a matter.
@@ -44,7 +45,7 @@ type followUp struct {
 }
 
 func newWalker(b *builder, pl place, index int, s plant.Station, m plant.Machine, parts map[string]uuid.UUID) *walker {
-	w := &walker{b: b, place: pl, station: s, machine: m, rng: rand.New(rand.NewPCG(Seed, uint64(1000+index))), at: b.begin}
+	w := &walker{care: newCare(index), b: b, place: pl, station: s, machine: m, rng: rand.New(rand.NewPCG(Seed, uint64(1000+index))), at: b.begin}
 	for _, name := range pl.parts {
 		w.parts = append(w.parts, parts[name])
 	}
@@ -155,7 +156,10 @@ func (w *walker) setRunning(ctx context.Context, run bool) error {
 			t.due, t.lastDue = w.at.Add(w.minutes(6, 20)), time.Time{}
 		}
 	}
-	return w.machineState(ctx, run)
+	if err := w.machineState(ctx, run); err != nil || !run {
+		return err
+	}
+	return w.atShiftStart(ctx)
 }
 
 func (w *walker) machineState(ctx context.Context, run bool) error {
@@ -324,6 +328,11 @@ func (t *track) hasOpenFault(day float64) bool {
 // finish leaves the place as a visitor finds it.
 func (w *walker) finish(ctx context.Context, end time.Time) error {
 	w.at = end
+	if w.place.name != unstated {
+		if err := w.stateProduct(ctx); err != nil {
+			return err
+		}
+	}
 	if !w.place.stopped {
 		return nil
 	}

@@ -52,6 +52,7 @@ type Suspicion struct {
 	Since   ReachSince
 	From    time.Time // zero: from the very beginning
 	Cut     bool      // the window of subgroups was cut, or nothing good is on record: it may have begun before
+	Start   bool      // From is where the process was started afresh
 	Until   time.Time // of this reason alone, the gauge that is good again; zero: no end of its own
 	Streams []uuid.UUID
 	Change  *EstimatedChange
@@ -211,7 +212,7 @@ func (e ReachEvidence) change(panel Panel, setup Setup) Suspicion {
 	case w.Cut:
 		s.From = w.Points[0].TakenAt
 	default:
-		s.From, s.Cut = segment.From, false
+		s.From, s.Cut, s.Start = segment.From, false, true
 	}
 	return s
 }

@@ -109,6 +109,7 @@ func scanCheck(r pgx.CollectableRow) (c plant.GaugeCheckRecord, err error) {
 func (s *Store) CheckGauge(ctx context.Context, c plant.GaugeCheckRecord) error {
 	now := s.now()
 	c = c.Clean()
+	digest := c.Digest() // as it was sent: without a time a double tap is one check
 	if c.RecordedAt = now; c.At.IsZero() {
 		c.At = now
 	}
@@ -137,7 +138,7 @@ func (s *Store) CheckGauge(ctx context.Context, c plant.GaugeCheckRecord) error 
 		if err != nil {
 			return err
 		}
-		entered, err := s.enterCheck(ctx, tx, c, p.Location)
+		entered, err := s.enterCheck(ctx, tx, c, digest, p.Location)
 		if err != nil || !entered {
 			return err
 		}
@@ -168,8 +169,7 @@ func (s *Store) CheckGauge(ctx context.Context, c plant.GaugeCheckRecord) error 
 }
 
 // enterCheck writes the check and the day of the next; false when it is on record.
-func (s *Store) enterCheck(ctx context.Context, tx pgx.Tx, c plant.GaugeCheckRecord, zone *time.Location) (bool, error) {
-	digest := c.Digest()
+func (s *Store) enterCheck(ctx context.Context, tx pgx.Tx, c plant.GaugeCheckRecord, digest [32]byte, zone *time.Location) (bool, error) {
 	tag, err := tx.Exec(ctx, `insert into gauge_check (id, plant_id, gauge_id, at, good, master, reading, note, next_check, recorded_at, person_id, digest)
 		select $1, $2, g.id, $4, $5, $6::text::numeric, $7::text::numeric, $8, $9, $10, $11, $12 from gauge g where g.id = $3 and g.plant_id = $2
 		on conflict (id) do nothing`,

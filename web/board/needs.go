@@ -35,6 +35,7 @@ type needView struct {
 	Age     string
 	Why     string
 	Taken   string // who took it; empty: nobody yet
+	Reach   string // what is suspect
 	Link    string
 	Line    string
 	Owners  string
@@ -122,6 +123,9 @@ func newMatter(f ui.Format, st *plant.StationState, c *plant.CharacteristicState
 	v.Age, v.since = f.Since(m.OpenedAt), m.OpenedAt
 	v.Why = f.Words.T("board.why", ui.ConditionWord(f.Words, condition), c.Name, why(f, c))
 	v.Say = f.Words.T("board.say", st.Name, v.Why)
+	if says, ok := ui.SayReachOf(f, *c); ok {
+		v.Reach = says.Is
+	}
 	if !m.TakenAt.IsZero() {
 		v.Taken = f.Words.T("board.taken", m.TakenByName, f.Clock(m.TakenAt))
 		if where := ui.StageWords(f.Words, m.Progress()); where != "" {

@@ -38,6 +38,7 @@ type counts struct {
 	hold, look, opened int // open matters
 	unknown, learning  int // characteristics
 	stopped            int // machines
+	kept               int // parts that are kept aside
 	next               time.Time
 	nextAt             string
 }
@@ -60,6 +61,9 @@ func countAll(p plant.Plant, states []plant.StationState, now time.Time) counts 
 			}
 			if c.Matter != nil && !c.Matter.OpenedAt.Before(began) {
 				n.opened++
+			}
+			for _, k := range c.Contained {
+				n.kept += k.Left()
 			}
 			if c.Condition() == plant.IsUnknown {
 				n.unknown++
@@ -103,6 +107,7 @@ func newShift(f ui.Format, p plant.Plant, states []plant.StationState) shiftView
 	add(w.T("board.fact.hold"), n.hold, true)
 	add(w.T("board.fact.look"), n.look, true)
 	add(w.T("board.fact.opened"), n.opened, n.hold+n.look > 0)
+	add(w.T("reach.board-contained"), n.kept, false)
 	add(w.T("board.fact.stopped"), n.stopped, false)
 	add(w.T("board.fact.learning"), n.learning, false)
 	if !n.next.IsZero() {

@@ -189,6 +189,9 @@ func newPicture(d *drawing, newestStretch bool) pictureView {
 		return v
 	}
 	v.SVG, v.Rail = d.c.SVG(), newRail(d).SVG()
+	if d.reach != nil {
+		v.Notes = append(v.Notes, d.reach.notes(d.f, d.setup)...)
+	}
 	if d.h.Clipped {
 		v.Notes = append(v.Notes, w.T("desk.clipped", len(d.h.Points), d.f.Clock(d.points[0].TakenAt)))
 	}

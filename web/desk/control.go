@@ -72,20 +72,20 @@ func panels(w *words.Printer, s plant.Setup) (location, dispersion chart.Panel) 
 
 // drawing is a control chart in the making.
 type drawing struct {
-	f       ui.Format
-	h       plant.History
-	setup   plant.Setup
-	points  []plant.Point // those in the unit that is in use now
-	segs    []plant.Segment
-	c       *chart.Control
-	reach   reach
-	suspect bool
-	other   int // points of another unit, not drawn
+	f      ui.Format
+	h      plant.History
+	setup  plant.Setup
+	points []plant.Point // those in the unit that is in use now
+	segs   []plant.Segment
+	c      *chart.Control
+	reach  *drawnReach
+	sized  map[plant.Panel]bool // panels whose change was said on a flag
+	other  int                  // points of another unit, not drawn
 }
 
 // newDrawing builds the chart of a stretch.
 func newDrawing(f ui.Format, h plant.History) *drawing {
-	d := &drawing{f: f, h: h, setup: h.State.Setup}
+	d := &drawing{f: f, h: h, setup: h.State.Setup, sized: map[plant.Panel]bool{}}
 	for _, p := range h.Points {
 		if h.Setups[p.Setup].Unit != d.setup.Unit {
 			d.other++
@@ -100,12 +100,9 @@ func newDrawing(f ui.Format, h plant.History) *drawing {
 	d.c.Location, d.c.Dispersion = panels(w, d.setup)
 	d.putPoints()
 	d.putSegments()
-	d.reach, d.suspect = reachOf(h, d.points)
+	d.putReach()
 	d.putSignals()
 	d.putChanges()
-	if d.suspect {
-		d.c.Reaches = []chart.Reach{{From: d.reach.From, To: len(d.points) - 1, Text: d.reach.words(f, h.State.Machine)}}
-	}
 	d.c.Label = d.label()
 	return d
 }
@@ -297,9 +294,9 @@ func (d *drawing) hang(mark *chart.Signal, s plant.Signal, m plant.Matter, i int
 	switch {
 	case mark.Open:
 		mark.Newest = i == len(d.points)-1 && d.f.Now.Sub(d.points[i].RecordedAt) < pulseFor
-		if d.suspect && d.reach.At == i {
-			mark.Sub = d.reach.change(d.f, d.setup)
-			d.reach.At = -1 // said once, however many rules fired there
+		if c := d.reach.changeAt(d.points[i], s.Panel); c != nil && !d.sized[s.Panel] {
+			mark.Sub = flagWords(d.f, *c, d.setup)
+			d.sized[s.Panel] = true // said once, however many rules fired there
 		}
 	case m.Cause != "":
 		mark.Text = w.T("desk.signal.cause", mark.Text, m.Cause)

@@ -20,7 +20,7 @@ func newRail(d *drawing) *chart.Rail {
 		outside += p.Outside
 		for _, v := range p.Readings {
 			x := plant.Decimal{Units: v, Decimals: p.Stats.Decimals}.Float()
-			if d.suspect && i >= d.reach.From {
+			if d.reach.covers(i) {
 				r.Suspect = append(r.Suspect, x)
 			} else {
 				r.Readings = append(r.Readings, x)

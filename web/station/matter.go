@@ -68,6 +68,10 @@ func (s *Surface) renderMatter(w http.ResponseWriter, r *http.Request, status in
 		v.Form.Causes = causeChoices(f, causes, typed.cause)
 		v.Form.Earliest, v.Form.Latest = m.OpenedTaken.In(f.Zone).Format(fixLayout), f.Now.In(f.Zone).Format(fixLayout)
 	}
+	var err error
+	if v.Aside, _, err = s.asideOf(r, st, m); err != nil {
+		return err
+	}
 	shell := s.shell(r, st, v.Title)
 	shell.Styles = append(shell.Styles, reactionStyles)
 	return ui.Render(w, r, status, matterPage(shell, v))

@@ -46,6 +46,7 @@ type matterView struct {
 	ChartOf string
 	Caution bool
 	Back    string
+	Aside   *asideView // what to keep aside
 }
 
 type lineOfMatter struct {

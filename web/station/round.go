@@ -220,7 +220,7 @@ func (s *Surface) work(w http.ResponseWriter, r *http.Request) error {
 	v := workView{Side: newSide(f, st), Done: doneWords(f.Words, r.URL.Query().Get("done"))}
 	if p := pick(st, want); len(p.Of) > 0 {
 		round := newRound(f, st, p, typesDeviation(r))
-		v.Round = &round
+		v.Round, v.Doubt = &round, gaugeDoubts(f, p.Of)
 	} else {
 		v.Idle = newIdle(f, st)
 	}
@@ -233,6 +233,7 @@ type workView struct {
 	Round *roundView
 	Idle  idleView
 	Done  string
+	Doubt []string // gauges of this round that are not to be trusted
 }
 
 func (s *Surface) renderWork(w http.ResponseWriter, r *http.Request, status int, st plant.StationState, v workView) error {

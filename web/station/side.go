@@ -19,15 +19,19 @@ const mostNext = 3
 // sideView is the left column: what is due, what comes next, what is open, and what
 // the machines do.
 type sideView struct {
-	ID       string
-	Station  uuid.UUID
-	Due      []taskView
-	Overdue  []string // what the plan says about the first of them that is overdue
-	Next     []taskView
-	More     int // coming samples beyond those in Next
-	Quiet    string
-	Open     []taskView
-	Machines []machineView
+	ID        string
+	Station   uuid.UUID
+	Due       []taskView
+	Overdue   []string // what the plan says about the first of them that is overdue
+	Next      []taskView
+	More      int // coming samples beyond those in Next
+	Quiet     string
+	Open      []taskView
+	Kept      []taskView // product whose matter is closed
+	KeptMore  int
+	Gauges    string // label of the way to the gauges; "" when none is named
+	GaugesDue bool
+	Machines  []machineView
 }
 
 // taskView is one card of the column.
@@ -40,6 +44,7 @@ type taskView struct {
 	Says   string // "Due now", "Late 9 min"
 	When   string
 	Sub    string // "5 parts"
+	Aside  string // what to keep aside
 }
 
 // machineView is a machine with what one tap does to it.
@@ -108,6 +113,13 @@ func newSide(f ui.Format, st plant.StationState) sideView {
 			v.Open = append(v.Open, openTask(f, st.ID, c))
 		}
 	}
+	v.Kept, v.KeptMore = keptTasks(f, st)
+	if n, named := gaugesWaiting(f, st); named {
+		v.Gauges, v.GaugesDue = f.Words.T("reach.gauges"), n > 0
+		if n > 0 {
+			v.Gauges = f.Words.T("reach.gauges-count", n)
+		}
+	}
 	if len(v.Due) == 0 {
 		v.Quiet = quietWords(f, st)
 	}
@@ -137,6 +149,9 @@ func openTask(f ui.Format, station uuid.UUID, c plant.CharacteristicState) taskV
 	t := taskView{Href: path(station, "matter", c.Matter.ID.String()), Name: c.Name, Tone: "open " + ui.Tone(condition),
 		State: ui.Tone(condition), Symbol: ui.SymbolOf(condition), Says: ui.ConditionWord(f.Words, condition),
 		When: f.Since(c.Matter.OpenedAt), Sub: f.Words.T("station.nobody-took")}
+	if says, ok := ui.SayReachOf(f, c); ok {
+		t.Aside = says.Do
+	}
 	if c.Matter.TakenByName != "" {
 		t.Sub = f.Words.T("station.taken-by", c.Matter.TakenByName)
 		if where := ui.StageWords(f.Words, c.Matter.Progress()); where != "" {

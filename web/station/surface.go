@@ -30,6 +30,12 @@ type Store interface {
 	AnswerStep(ctx context.Context, a plant.StepAnswer) error
 	CloseMatter(ctx context.Context, c plant.ClosingRequest) error
 	VerifyFix(ctx context.Context, v plant.VerifyRequest) error
+	Containment(ctx context.Context, id uuid.UUID) (plant.Containment, error)
+	Reaches(ctx context.Context, matters ...uuid.UUID) (map[uuid.UUID]plant.Contained, error)
+	StateProduct(ctx context.Context, e plant.ContainmentEntry) error
+	Gauges(ctx context.Context, stations ...uuid.UUID) ([]plant.GaugeUse, error)
+	GaugeChecks(ctx context.Context, gauge uuid.UUID, most int) ([]plant.GaugeCheckRecord, error)
+	CheckGauge(ctx context.Context, c plant.GaugeCheckRecord) error
 	LogChange(ctx context.Context, c plant.Change) error
 	SetMachine(ctx context.Context, m plant.MachineState) error
 	Causes(ctx context.Context, family string) ([]plant.Cause, error)
@@ -86,6 +92,11 @@ func (s *Surface) Routes(r chi.Router) {
 	post("/{station}/matter/{matter}/step", s.answerStep)
 	post("/{station}/matter/{matter}/close", s.closeMatter)
 	post("/{station}/matter/{matter}/verify", s.verifyFix)
+	get("/{station}/matter/{matter}/aside", s.showAside)
+	post("/{station}/matter/{matter}/aside", s.keepAside)
+	get("/{station}/gauges", s.showGauges)
+	get("/{station}/gauge/{gauge}", s.showGauge)
+	post("/{station}/gauge/{gauge}", s.checkGauge)
 	get("/{station}/change", s.showChange)
 	post("/{station}/change", s.logChange)
 	get("/{station}/change/{characteristic}", s.showAdjustment)

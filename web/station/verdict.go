@@ -13,21 +13,16 @@ import (
 	"holdfast/web/ui"
 )
 
-// lookBack is how many rounds are searched for the last one with every reading within
-// specification.
-const lookBack = 200
-
 // verdictView is the answer to a round, full width.
 type verdictView struct {
 	Tone      string // class of the band
 	Symbol    string
 	Title     string
-	Sentences []string // under the title, the gravest first
-	Corrected string   // it was corrected since, and says so
-	Aside     string   // what to keep aside, when Hold
-	AsideWhy  string
-	Learning  []string // "Axle seat: 12 of 20 subgroups collected."
-	Round     string   // "This round, 10:42"
+	Sentences []string   // under the title, the gravest first
+	Corrected string     // it was corrected since, and says so
+	Aside     *asideView // what to keep aside
+	Learning  []string   // "Axle seat: 12 of 20 subgroups collected."
+	Round     string     // "This round, 10:42"
 	Facts     []factView
 	Next      string // when the next round is due
 	NextIn    string
@@ -105,12 +100,12 @@ func (s *Surface) showVerdict(w http.ResponseWriter, r *http.Request) error {
 	if answer.Station != st.ID {
 		return notFound(r)
 	}
-	parts, main, history, err := s.tell(r, st, answer)
+	parts, main, err := s.tell(r, st, answer)
 	if err != nil {
 		return err
 	}
 	f := ui.FrameOf(r).Format()
-	v := newVerdict(f, st, answer, parts, main, history)
+	v := newVerdict(f, st, answer, parts, main)
 	shell := s.shell(r, st, v.Title)
 	shell.Scripts = append(shell.Scripts, "js/station-saved.js")
 	return ui.Render(w, r, http.StatusOK, verdictPage(shell, v))
@@ -118,7 +113,7 @@ func (s *Surface) showVerdict(w http.ResponseWriter, r *http.Request) error {
 
 // tell gathers the parts of an answer. main is the one that the page is about: the
 // gravest, and of equals one that fired in this round.
-func (s *Surface) tell(r *http.Request, st plant.StationState, answer plant.Answer) (parts []told, main int, history plant.History, err error) {
+func (s *Surface) tell(r *http.Request, st plant.StationState, answer plant.Answer) (parts []told, main int, err error) {
 	for _, p := range answer.Parts {
 		c, ok := characteristicOf(st, p.Characteristic)
 		if !ok {
@@ -128,7 +123,7 @@ func (s *Surface) tell(r *http.Request, st plant.StationState, answer plant.Answ
 		if t.point, t.found = pointOf(c.Points, p.Subgroup); !t.found {
 			older, err := s.store.History(r.Context(), c.ID, plant.Stretch{To: answer.TakenAt, Last: chart.VerdictLength})
 			if err != nil {
-				return nil, 0, history, err
+				return nil, 0, err
 			}
 			t.of.Points = older.Points
 			t.point, t.found = pointOf(older.Points, p.Subgroup)
@@ -141,10 +136,9 @@ func (s *Surface) tell(r *http.Request, st plant.StationState, answer plant.Answ
 		}
 	}
 	if len(parts) == 0 {
-		return nil, 0, history, notFound(r)
+		return nil, 0, notFound(r)
 	}
-	history, err = s.store.History(r.Context(), parts[main].of.ID, plant.Stretch{To: answer.TakenAt, Last: lookBack})
-	return parts, main, history, err
+	return parts, main, nil
 }
 
 func graver(a, b told) bool {
@@ -163,7 +157,7 @@ func pointOf(points []plant.Point, subgroup uuid.UUID) (plant.Point, bool) {
 	return plant.Point{}, false
 }
 
-func newVerdict(f ui.Format, st plant.StationState, answer plant.Answer, parts []told, main int, history plant.History) verdictView {
+func newVerdict(f ui.Format, st plant.StationState, answer plant.Answer, parts []told, main int) verdictView {
 	w, m := f.Words, parts[main]
 	condition := ui.ConditionOf(m.Verdict)
 	v := verdictView{Tone: ui.Tone(condition), Symbol: ui.SymbolOf(condition), Title: ui.VerdictWords(w, m.Verdict),
@@ -173,7 +167,9 @@ func newVerdict(f ui.Format, st plant.StationState, answer plant.Answer, parts [
 		v.Tone = "calm"
 	}
 	v.Sentences = append(v.Sentences, sentences(f, m)...)
+	var measured []plant.CharacteristicState
 	for i, p := range parts {
+		measured = append(measured, p.of)
 		if i != main && (len(p.Firings) > 0 || p.StillOpen) {
 			v.Sentences = append(v.Sentences, sentences(f, p)...)
 		}
@@ -185,7 +181,8 @@ func newVerdict(f ui.Format, st plant.StationState, answer plant.Answer, parts [
 			v.Learning = append(v.Learning, w.T("station.learning-count", p.of.Name, p.of.Collected, limits.EnoughSubgroups))
 		}
 	}
-	v.step(f, st, m, history, answer.TakenAt)
+	v.Sentences = append(v.Sentences, gaugeDoubts(f, measured)...)
+	v.step(f, st, m, answer.TakenAt)
 	v.next(f, st)
 	v.draw(f, m)
 	return v
@@ -267,11 +264,10 @@ func newFact(f ui.Format, t told) factView {
 }
 
 // step says what is to be done now.
-func (v *verdictView) step(f ui.Format, st plant.StationState, m told, history plant.History, taken time.Time) {
+func (v *verdictView) step(f ui.Format, st plant.StationState, m told, taken time.Time) {
 	w := f.Words
 	if m.Verdict == plant.Hold {
 		v.Caution = true
-		v.Aside, v.AsideWhy = asideWords(f, history, taken)
 	}
 	if m.Matter == uuid.Nil || m.of.Matter == nil || m.of.Matter.ID != m.Matter {
 		if m.Verdict == plant.Look || m.Verdict == plant.Hold {
@@ -280,6 +276,8 @@ func (v *verdictView) step(f ui.Format, st plant.StationState, m told, history p
 		return
 	}
 	open := m.of.Matter
+	v.Aside = instruction(f, m.of)
+	v.Caution = v.Caution || v.Aside != nil
 	v.Matter = &stepView{Href: path(st.ID, "matter", open.ID.String()), Version: strconv.Itoa(open.Version), TakenBy: open.TakenByName}
 	if open.TakenByName == "" {
 		v.Matter.Take = path(st.ID, "matter", open.ID.String(), "take")
@@ -305,22 +303,6 @@ func onlyBetter(t told) bool {
 		}
 	}
 	return len(t.Firings) > 0
-}
-
-// asideWords say since when the product is to be kept aside: the last round before
-// this one with every reading within specification.
-func asideWords(f ui.Format, history plant.History, taken time.Time) (what, why string) {
-	w := f.Words
-	for i := len(history.Points) - 1; i >= 0; i-- {
-		if p := history.Points[i]; p.TakenAt.Before(taken) && p.Outside == 0 {
-			at := f.Clock(p.TakenAt)
-			return w.T("station.aside-since", at), w.T("station.aside-why", at)
-		}
-	}
-	if len(history.Points) > 0 && history.Points[0].TakenAt.Before(taken) {
-		return w.T("station.aside-before", f.Clock(history.Points[0].TakenAt)), w.T("station.aside-no-good")
-	}
-	return w.T("station.aside-all"), w.T("station.aside-first")
 }
 
 // next says when the station is next visited.

@@ -1,0 +1,124 @@
+package station_test
+
+import (
+	"net/http"
+	"net/url"
+	"strings"
+	"testing"
+	"time"
+
+	"holdfast/internal/plant"
+	"holdfast/internal/store/storetest"
+)
+
+// gauged gives the diameter a gauge that is checked every week.
+func (s *site) gauged(t testing.TB) plant.Gauge {
+	t.Helper()
+	ctx := t.Context()
+	g := plant.Gauge{ID: storetest.ID(), Name: "Micrometer M-04", CheckDays: 7}
+	if err := s.AddGauge(ctx, g, s.Engineer.ID); err != nil {
+		t.Fatal(err)
+	}
+	h, err := s.History(ctx, s.Diameter.ID, plant.Stretch{Last: 1})
+	if err != nil {
+		t.Fatal(err)
+	}
+	setup := h.State.Setup
+	setup.GaugeID = g.ID
+	if err := s.ChangeSetup(ctx, s.Diameter.ID, setup, setup.Version, s.Engineer.ID); err != nil {
+		t.Fatal(err)
+	}
+	return g
+}
+
+// TestOperatorIsToldWhatToKeepAside: on the verdict, in the column and on the matter, for
+// a look as well; what was put aside is stated by a person and never filled in.
+func TestOperatorIsToldWhatToKeepAside(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	if err := s.SetMachine(t.Context(), plant.MachineState{ID: storetest.ID(), Machine: s.Machine.ID, Running: true}); err != nil {
+		t.Fatal(err)
+	}
+	s.steady(t)
+	b := s.signIn(t, s.Operator)
+	last := s.Clock.Now().Add(-30 * time.Minute) // the round before
+	look := s.MustRecord(t, s.Diameter, 14996, 14997, 14998, 14995, 14999)
+	told := "Keep aside what was made since " + last.Format("15:04") + ", about 60 parts."
+	grown := "Keep aside what was made since " + last.Format("15:04") + ", about 80 parts."
+	b.get(s.at("round", look.Round.String())).is(http.StatusOK).says("Look for a cause", told, "It grows until", "A steady chart is not a release")
+	s.Clock.Advance(10 * time.Minute)
+	b.get(s.at()).is(http.StatusOK).says(grown)
+	matter := s.at("matter", look.Parts[0].Matter.String())
+	b.get(matter).is(http.StatusOK).says(grown, "Nobody has stated yet what was put aside.", matter+"/aside")
+
+	form := b.get(matter+"/aside").is(http.StatusOK).says(grown, "Count them", "A steady chart is not a release")
+	fields := url.Values{"id": {form.field("id")}, "quantity": {"some"}, "place": {"Red rack 3"}, "tag": {"R-17"}}
+	b.post(matter+"/aside", fields).is(http.StatusUnprocessableEntity).says("Type how many parts, in whole numbers.", "Red rack 3")
+	fields.Set("quantity", "0")
+	b.post(matter+"/aside", fields).is(http.StatusUnprocessableEntity).says("Say how many parts were put aside.")
+	fields.Set("quantity", "78")
+	for range 2 { // a double tap is one statement
+		if got := b.post(matter+"/aside", fields).is(http.StatusSeeOther); got.to != matter {
+			t.Errorf("it leads to %s", got.to)
+		}
+	}
+	b.get(matter).says("78 parts are kept aside.", "Put more aside")
+	b.get(matter+"/aside").says("Put aside: 78", "Red rack 3, tag R-17", "Operator 1")
+
+	// The matter is closed, the product stays in the column.
+	m, err := s.Matter(t.Context(), look.Parts[0].Matter)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := s.CloseMatter(t.Context(), plant.ClosingRequest{Matter: m.ID, Version: m.Version, Cause: "Insert chipped", Action: "Insert changed", Person: s.Operator.ID}); err != nil {
+		t.Fatal(err)
+	}
+	b.get(s.at()).says("Kept aside: 78 parts", matter+"/aside").saysNot("Keep aside what was made")
+}
+
+// TestGaugeCheck: overdue it waits in the column; failed it holds the product, and rounds
+// taken with it say so until it is good again.
+func TestGaugeCheck(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	s.steady(t)
+	g := s.gauged(t)
+	b := s.signIn(t, s.Operator)
+	b.get(s.at("gauges")).is(http.StatusOK).says("Micrometer M-04", "No check on record", "Axle seat diameter")
+	at := s.at("gauge", g.ID.String())
+	check := func(result, note string) page {
+		t.Helper()
+		return b.post(at, url.Values{"id": {b.get(at).is(http.StatusOK).field("id")}, "result": {result}, "master": {"15,000"}, "reading": {"15.004"}, "note": {note}})
+	}
+	check("", "").is(http.StatusUnprocessableEntity).says("Say whether the gauge is good.", "15,000")
+	if got := check("good", "").is(http.StatusSeeOther); !strings.HasSuffix(got.to, "/gauges?checked=good") {
+		t.Errorf("it leads to %s", got.to)
+	}
+	good := s.Clock.Now()
+	b.get(s.at("gauges")).says("Good, next check " + itoa(int64(good.AddDate(0, 0, 7).Day())) + " March 2026")
+	b.get(s.at()).says("Gauge checks</a>").saysNot("1 waits")
+	s.Clock.Advance(8 * 24 * time.Hour)
+	b = s.signIn(t, s.Operator)
+	b.get(s.at()).says("Gauge checks: 1 waits")
+	b.get(s.at("gauges")).says("Check overdue since")
+
+	check("failed", "").is(http.StatusUnprocessableEntity).says("Say what was wrong with the gauge.")
+	check("failed", "anvil worn").is(http.StatusSeeOther)
+	b.get(s.at("gauges")+"?checked=failed").says("The failed check is on record.", "Failed at", "not good since")
+	doubt := "Micrometer M-04 failed its check at"
+	b.get(s.at()).says("Hold", "Keep aside what was made since")
+	b.get(s.at()+"?measure="+s.Diameter.ID.String()).says(doubt, "What it says is in doubt.")
+	r := s.Round(s.Diameter, 14990, 14991, 14992, 14989, 14993)
+	r.Entries[0].SetupVersion = 2
+	a, err := s.Record(t.Context(), r)
+	if err != nil {
+		t.Fatal(err)
+	}
+	b.get(s.at("round", a.Round.String())).says("Hold the product", doubt, "was the last good check of the gauge.")
+	b.get(s.at("matter", a.Parts[0].Matter.String())).says("its gauge failed the check")
+	s.Clock.Advance(time.Minute)
+	check("good", "new anvil").is(http.StatusSeeOther)
+	b.get(s.at() + "?measure=" + s.Diameter.ID.String()).saysNot(doubt)
+	b.get(at).says("new anvil", "anvil worn", "15.004 on a master of 15.000")
+	b.get(s.at("gauge", s.Machine.ID.String())).is(http.StatusNotFound)
+}
