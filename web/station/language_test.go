@@ -36,6 +36,7 @@ func TestNothingOverflowsInAnyLanguage(t *testing.T) {
 				tb.Open(path)
 				tb.Want(path, `document.documentElement.lang`, lang)
 				tb.NothingOverflows(lang + " " + path)
+				tb.Want(lang+" "+path+": rows of the top bar", `document.body.className !== "station" || document.querySelector(".topbar").offsetHeight <= 64`, "true")
 			}
 		}
 		tb.Open(s.at())
