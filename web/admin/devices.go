@@ -66,7 +66,7 @@ func (a *Admin) showDevices(w http.ResponseWriter, r *http.Request, status int, 
 	}
 	s := staffShell(r, "staff.devices")
 	t := s.Words
-	v := devicesView{New: add, EnrolAt: "/enrol"}
+	v := devicesView{New: add, EnrolAt: r.Host + "/enrol"}
 	names := map[uuid.UUID]string{}
 	for _, l := range lines {
 		names[l.ID] = l.Name

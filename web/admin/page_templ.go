@@ -89,11 +89,11 @@ func navigation(w *words.Printer, p plant.Person, path string) templ.Component {
 			if templ_7745c5c3_Err != nil {
 				return templ_7745c5c3_Err
 			}
-			templ_7745c5c3_Err = navigationLink(qualificationAddress, path == qualificationAddress, w.T("admin.qualification")).Render(ctx, templ_7745c5c3_Buffer)
+			templ_7745c5c3_Err = navigationLink(qualificationAddress, path == qualificationAddress, w.T("staff.nav-qualification")).Render(ctx, templ_7745c5c3_Buffer)
 			if templ_7745c5c3_Err != nil {
 				return templ_7745c5c3_Err
 			}
-			templ_7745c5c3_Err = navigationLink(aboutAddress, path == aboutAddress, w.T("about.title")).Render(ctx, templ_7745c5c3_Buffer)
+			templ_7745c5c3_Err = navigationLink(aboutAddress, path == aboutAddress, w.T("staff.nav-about")).Render(ctx, templ_7745c5c3_Buffer)
 			if templ_7745c5c3_Err != nil {
 				return templ_7745c5c3_Err
 			}

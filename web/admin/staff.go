@@ -115,7 +115,6 @@ type personView struct {
 	Badge                 string
 	BadgeProblem, Problem string
 	PINProblem            string
-	RolesProblem          string
 	Made                  *madeView
 	Done                  string
 }
