@@ -176,46 +176,22 @@ func (a *AdjustmentAudit) aim(h History) {
 }
 
 // zeroPoints are where the setting was made afresh: a changeover, another set-up, a new
-// tool, the restart of a fix.
+// tool, a setting. The restart mark of a matter is none: cleaning a nozzle does not turn
+// the screw back, and what people have turned stays in force behind it. To start afresh
+// there would take the process for well set at whatever moment the matter was closed.
 func (a *AdjustmentAudit) zeroPoints(h History) []int {
 	var out []int
 	for _, b := range h.Course.Boundaries {
-		switch b.Kind {
-		case ByChangeover, BySetup:
+		if b.Kind == ByChangeover || b.Kind == BySetup {
 			out = append(out, a.first(b.At))
-		case ByRestart:
-			if h.settingMade(b.At) {
-				out = append(out, a.first(b.At))
-			}
 		}
 	}
 	for _, c := range h.Changes {
-		if c.Kind == ToolChanged {
+		if c.Kind == ToolChanged || c.Kind == Setting {
 			out = append(out, a.first(c.HappenedAt))
 		}
 	}
 	return out
-}
-
-// settingMade reports whether the restart mark at an instant is that of a fix which may
-// have touched the setting. Closing a matter with nothing done leaves every setting as it
-// is. Where somebody adjusted while the matter was open, that adjustment was the fix: it
-// settles what was carried by itself, and stays in force.
-func (h History) settingMade(restart time.Time) bool {
-	for _, m := range h.Matters {
-		if !m.RestartAt.Equal(restart) {
-			continue
-		}
-		if m.Closing != Fixed {
-			return false
-		}
-		for _, c := range h.changesOn(h.State.ID) {
-			if c.Prompted && !c.HappenedAt.Before(m.OpenedTaken) && !c.HappenedAt.After(m.ClosedAt) {
-				return false
-			}
-		}
-	}
-	return true
 }
 
 // capability is computed where all points were taken under one specification.

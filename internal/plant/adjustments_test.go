@@ -82,7 +82,7 @@ func TestAuditThroughAKnobCountsWhatMovesThisCharacteristic(t *testing.T) {
 	}
 }
 
-// TestWhatEndsWhatIsCarried: a fix does, closing with nothing done does not, and an
+// TestWhatEndsWhatIsCarried: a new tool does, closing a matter does not, and an
 // adjustment that was the fix stays in force behind the restart mark.
 func TestWhatEndsWhatIsCarried(t *testing.T) {
 	t.Parallel()
@@ -98,8 +98,8 @@ func TestWhatEndsWhatIsCarried(t *testing.T) {
 	h = stretch(values...)
 	h.adjusted(1, 20, false)
 	h.matter(3, 4, Fixed, Location)
-	if c := carried(h); c[4] != 0.2 || c[5] != 0 {
-		t.Errorf("closed with a fix: carried %v", c)
+	if c := carried(h); c[4] != 0.2 || c[7] != 0.2 {
+		t.Errorf("closed with a fix that turned nothing back: carried %v", c)
 	}
 	h = stretch(10, 10.1, 10.5, 10.6, 10.5, 10.1, 9.9, 10)
 	h.matter(3, 5, Fixed, Location)
