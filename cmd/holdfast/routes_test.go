@@ -186,6 +186,11 @@ var routeTable = []routeRow{
 	{"POST /desk/product/{id}", deskers, 404},
 	{"GET /desk/gauges", deskers, 200},
 	{"GET /desk/gauges/{id}", deskers, 404}, // of no gauge
+	{"GET /desk/engineering", deskers, 200},
+	{"GET /desk/characteristic/{id}/owner", deskers, 200},
+	{"POST /desk/characteristic/{id}/owner/protection", setters, 422},
+	{"POST /desk/characteristic/{id}/owner/acceptance", setters, 422},
+	{"POST /desk/characteristic/{id}/owner/end", setters, 422},
 	{"GET /desk/characteristic/{id}", deskers, 200},
 	{"GET /desk/characteristic/{id}/revisions", deskers, 200},
 	{"GET /desk/characteristic/{id}/adjustments", deskers, 200},

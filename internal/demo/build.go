@@ -42,6 +42,9 @@ func Build(ctx context.Context, st *store.Store, hash Hash, hashPIN HashPIN, now
 	if err := b.contacts(ctx); err != nil {
 		return fmt.Errorf("equip the demo plant: %w", err)
 	}
+	if err := b.owners(ctx); err != nil {
+		return fmt.Errorf("find the owners of the demo: %w", err)
+	}
 	return nil
 }
 

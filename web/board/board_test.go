@@ -32,12 +32,12 @@ func TestCardSaysStateAgeNextAndOwner(t *testing.T) {
 	for _, tc := range []struct {
 		station, tone, word, age, next, owner string
 	}{
-		{"Turning 1", "look", "Look", "12 min", "next 12:42", "owner: station"},
-		{"Turning 2", "calm", "Leave", "3 d", "next 12:42", "owner: nobody"},
+		{"Turning 1", "look", "Look", "12 min", "next 12:42", "owner: station, 12 min"},
+		{"Turning 2", "calm", "Leave", "3 d", "next 12:42", "owner: nobody, 12 min"},
 		{"Straightening", "due", "Due", "late 9 min", "due 12:15", "owner: station"},
 		{"Drilling 1", "learning", "Learning", "", "next 12:42", "owner: engineering"},
-		{"Drilling 2", "stopped", "Stopped", "36 min", "paused", "owner: nobody"},
-		{"Press", "hold", "Hold", "26 min", "next 12:42", "owner: station"},
+		{"Drilling 2", "stopped", "Stopped", "36 min", "paused", "owner: nobody, 12 min"},
+		{"Press", "hold", "Hold", "26 min", "next 12:42", "owner: station, 26 min"},
 		{"Greasing", "unknown", "Unknown", "late 3 h", "due 09:24", "owner: station"},
 		{"Final test", "asked", "Due", "2 min", "due 12:22", "owner: station"},
 	} {

@@ -180,7 +180,11 @@ func ownerShown(f ui.Format, c *plant.CharacteristicState) (text string, strong 
 	if o == plant.Nobody && len(list) > 1 {
 		o = list[1]
 	}
-	return f.Words.T("board.owner", ui.OwnerWord(f.Words, o)), o == plant.Engineering
+	word := ui.OwnerWord(f.Words, o)
+	if own := c.Ownership(); own.Owner == o && !own.Since.IsZero() {
+		return f.Words.T("board.owner-for", word, f.Since(own.Since)), o == plant.Engineering
+	}
+	return f.Words.T("board.owner", word), o == plant.Engineering
 }
 
 // spark draws the newest subgroups of a characteristic in the band that is in force.

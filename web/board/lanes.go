@@ -30,7 +30,7 @@ type choice struct {
 }
 
 // ownersOffered are those that a board can be narrowed to.
-var ownersOffered = []plant.Owner{plant.AtStation, plant.Engineering}
+var ownersOffered = plant.Owners
 
 // readChoice reads a choice from the query of an address. What it names and is not
 // there is left out: a board rather shows too much than too little.

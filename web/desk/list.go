@@ -36,6 +36,7 @@ type row struct {
 	For                 string
 	Owner               string
 	Strong              bool // engineering owns it
+	Why, Since          string
 	Limits              string
 	Last, LastAt        string
 }
@@ -47,17 +48,19 @@ const (
 	everything filter = ""
 	needs      filter = "needs"
 	mine       filter = "engineering"
+	stations   filter = "station"
+	nobodys    filter = "nobody"
 	learning   filter = "learning"
 )
 
-var filters = []filter{everything, needs, mine, learning}
+var filters = []filter{everything, needs, mine, stations, nobodys, learning}
 
 func (fl filter) holds(c plant.CharacteristicState) bool {
 	switch fl {
 	case needs:
 		return c.Condition().NeedsPerson()
-	case mine:
-		return c.Owner() == plant.Engineering
+	case mine, stations, nobodys:
+		return c.Owner() == plant.Owner(fl)
 	case learning:
 		return c.Revision == nil
 	}
@@ -151,8 +154,9 @@ func listFilters(f ui.Format, chosen filter, line string, counts map[filter]int,
 
 func newRow(f ui.Format, c plant.CharacteristicState) row {
 	w := f.Words
+	o := c.Ownership()
 	v := row{Href: address(c.ID), Name: c.Name, Machine: c.Machine.Name, State: c.Condition(),
-		Owner: upperFirst(ui.OwnerWord(w, c.Owner())), Strong: c.Owner() == plant.Engineering}
+		Owner: upperFirst(ui.OwnerWord(w, o.Owner)), Strong: o.Owner == plant.Engineering, Why: w.T("owner.reason." + string(o.Reason)), Since: f.OwnerSince(o)}
 	switch v.State {
 	case plant.IsHold, plant.IsLook, plant.IsStopped:
 		v.For = f.Since(c.Since())

@@ -41,6 +41,7 @@ type Store interface {
 	SettingsVersions(ctx context.Context) ([]plant.Settings, error)
 	ChangeSettings(ctx context.Context, c plant.SettingsChange) (plant.Settings, error)
 	adjustingStore
+	ownerStore
 }
 
 // Signer tells whose login and secret these are. Freezing is a signature: the secret
@@ -82,6 +83,7 @@ func (d *Desk) Routes(r chi.Router) {
 		r.Post("/product", ui.Handle(d.log, d.openProduct))
 		r.Post("/product/{id}", ui.Handle(d.log, d.stateProduct))
 	})
+	d.ownerRoutes(r)
 	r.Get("/characteristic/{id}", ui.Handle(d.log, d.chart))
 	r.Get("/characteristic/{id}/revisions", ui.Handle(d.log, d.revisions))
 	r.Get("/characteristic/{id}/adjustments", ui.Handle(d.log, d.audit))

@@ -32,6 +32,7 @@ type sideView struct {
 	Gauges    string // label of the way to the gauges; "" when none is named
 	GaugesDue bool
 	Machines  []machineView
+	Owned     ownedView
 }
 
 // taskView is one card of the column.
@@ -71,6 +72,7 @@ type idleView struct {
 	Name    string // what "Measure" leads to
 	Href    string
 	Choices []taskView // rounds outside the plan
+	Owned   ownedView
 }
 
 func sideID(station uuid.UUID) string { return "side-" + station.String() }
@@ -93,7 +95,7 @@ func byDue(cs []plant.CharacteristicState) []plant.CharacteristicState {
 }
 
 func newSide(f ui.Format, st plant.StationState) sideView {
-	v := sideView{ID: sideID(st.ID), Station: st.ID}
+	v := sideView{ID: sideID(st.ID), Station: st.ID, Owned: newOwned(f, st)}
 	for _, c := range byDue(st.Characteristics) {
 		switch {
 		case isDue(c):
@@ -206,7 +208,7 @@ func newMachine(f ui.Format, m plant.MachineNow) machineView {
 }
 
 func newIdle(f ui.Format, st plant.StationState) idleView {
-	v := idleView{ID: idleID(st.ID), Station: st.ID}
+	v := idleView{ID: idleID(st.ID), Station: st.ID, Owned: newOwned(f, st)}
 	for _, c := range byDue(st.Characteristics) {
 		if isDue(c) && !v.Due {
 			v.Due, v.Name, v.Href = true, c.Name, path(st.ID)

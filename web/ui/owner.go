@@ -1,6 +1,10 @@
 package ui
 
-import "holdfast/internal/plant"
+import (
+	"time"
+
+	"holdfast/internal/plant"
+)
 
 // OwnerReason says in words why somebody owns a characteristic, with the numbers that it
 // follows from.
@@ -18,7 +22,7 @@ func (f Format) OwnerReason(c plant.CharacteristicState) string {
 	case plant.IsCapable:
 		return w.T("owner.capable", f.Index(fig.Bound))
 	case plant.IsAccepted:
-		return w.T("owner.accepted", f.Index(fig.Bound), f.Clock(c.Acceptance.Ends()))
+		return w.T("owner.accepted", f.Index(fig.Bound), f.LastDay(c.Acceptance.Until))
 	}
 	return w.T("owner.reason." + string(o.Reason))
 }
@@ -46,6 +50,9 @@ func (f Format) OwnerSince(o plant.Ownership) string {
 	}
 	return f.Words.T("owner.since", f.Clock(o.Since))
 }
+
+// LastDay is the day that an instant ends: what holds until midnight holds that day.
+func (f Format) LastDay(t time.Time) string { return f.Date(t.Add(-time.Second)) }
 
 // Index writes a capability index.
 func (f Format) Index(v float64) string { return f.Number(v, 2) }

@@ -64,7 +64,7 @@ func (s Shell) windowTitle() string {
 
 // sheets are the style sheets of each surface, after those that all have.
 var sheets = map[Surface][]string{
-	Station: {"css/chart.css", "css/station.css", "css/reach.css"},
+	Station: {"css/chart.css", "css/station.css", "css/reach.css", "css/station-owner.css"},
 	Board:   {"css/chart.css", "css/board.css", "css/reach.css"},
 	Desk:    {"css/chart.css", "css/desk.css", "css/reach.css"},
 	Admin:   {"css/admin.css", "css/setup.css"},
