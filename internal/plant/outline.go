@@ -102,8 +102,8 @@ func CleanName(field, s string) (string, error) {
 	return s, err
 }
 
-// Clean brings the texts of a set-up into the form in which they are kept and refuses
-// those that are too long.
+// Clean brings a set-up into the form in which it is kept: exact numbers with as many
+// decimals as are measured, where that changes nothing. Texts that are too long are refused.
 func (s *Setup) Clean() error {
 	var err error
 	if s.Unit, err = CleanTextWithin("unit", s.Unit, MaxUnit); err != nil {
@@ -116,6 +116,14 @@ func (s *Setup) Clean() error {
 	} {
 		if *text, err = CleanTextWithin(field, *text, MaxDetail); err != nil {
 			return err
+		}
+	}
+	for _, d := range []**Decimal{&s.Target, &s.Lower, &s.Upper} {
+		if *d == nil || s.Decimals < 0 || s.Decimals > MaxDecimals {
+			continue
+		}
+		if n, err := (*d).In(s.Decimals); err == nil {
+			*d = &Decimal{Units: n, Decimals: s.Decimals}
 		}
 	}
 	return nil

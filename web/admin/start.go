@@ -103,6 +103,7 @@ type startView struct {
 	Form         *form
 	Other        []link // other ways on
 	Station      string // where the first round is taken, and whether this person may
+	Measure      string
 	MayTake      bool
 	StationName  string
 	Judged       *judgedView
@@ -215,6 +216,7 @@ func (a *Admin) ask(r *http.Request, v *startView, o plant.Outline, q *asking) e
 		v.Wait = !f.Person.May(plant.Manage)
 	case stepRound, "finished":
 		v.Station, v.StationName = "/station/"+at.station.ID.String(), at.station.Name
+		v.Measure = v.Station + "?measure=" + at.characteristic.ID.String()
 		v.MayTake = f.Person.May(plant.TakeRounds)
 		return a.judged(r, v, at)
 	}

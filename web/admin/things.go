@@ -137,6 +137,9 @@ func (t *thing) load(o plant.Outline) {
 		if !v.NextCheck.IsZero() {
 			t.values.Set("next_check", v.NextCheck.Format("2006-01-02"))
 		}
+		if v.CheckDays > 0 {
+			t.values.Set("check_days", strconv.Itoa(v.CheckDays))
+		}
 	case plant.ACharacteristic:
 		v := o.Characteristic(t.id)
 		t.name, t.retired, t.ordered = v.Name, v.Retired, true
@@ -159,7 +162,7 @@ func (t thing) fields(a *asking, o plant.Outline) []field {
 	case plant.APart:
 		return []field{name, a.field(text, "part_family").optional().suggesting(partFamilies(o))}
 	case plant.AGauge:
-		return []field{name, a.field(decimal, "resolution").optional(), a.field(day, "next_check").optional()}
+		return []field{name, a.field(decimal, "resolution").optional(), a.field(day, "next_check").optional(), a.field(whole, "check_days").optional()}
 	}
 	return []field{name}
 }
@@ -224,7 +227,7 @@ func (a *Admin) save(ctx context.Context, t thing, o plant.Outline, q *asking, b
 		v := plant.Part{ID: t.id, Name: name, Family: q.textOf("part_family", plant.MaxName)}
 		write = either(t, func() error { v.ID = newID(); return a.store.AddPart(ctx, v, by) }, func() error { return a.store.ChangePart(ctx, v, by) })
 	case plant.AGauge:
-		v := plant.Gauge{ID: t.id, Name: name, Resolution: q.decimalOf("resolution"), NextCheck: q.dayOf("next_check")}
+		v := plant.Gauge{ID: t.id, Name: name, Resolution: q.decimalOf("resolution"), NextCheck: q.dayOf("next_check"), CheckDays: q.wholeOf("check_days", 10_000)}
 		if v.Resolution != nil && v.Resolution.Units <= 0 {
 			q.refuse("resolution", q.w.T("setup.problem.above-zero"))
 		}

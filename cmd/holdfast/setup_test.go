@@ -1,0 +1,326 @@
+package main
+
+import (
+	"bytes"
+	"context"
+	"fmt"
+	"mime/multipart"
+	"net/http"
+	"net/url"
+	"regexp"
+	"strings"
+	"testing"
+	"time"
+
+	"github.com/google/uuid"
+
+	"holdfast/internal/auth"
+	"holdfast/internal/browsertest"
+	"holdfast/internal/localpg/pgtest"
+	"holdfast/internal/plant"
+	"holdfast/internal/store"
+	"holdfast/internal/store/storetest"
+)
+
+// serveEmpty serves a database in which nothing is set up but one administrator, as
+// after an installation.
+func serveEmpty(t testing.TB) *running {
+	t.Helper()
+	ctx := context.Background()
+	clock := storetest.NewClock()
+	url := pgtest.Database(t)
+	st, err := store.Open(ctx, store.Options{URL: url, Clock: clock.Now})
+	if err != nil {
+		t.Fatal(err)
+	}
+	t.Cleanup(st.Close)
+	if err := firstPlant(ctx, st, "Plant", "UTC"); err != nil {
+		t.Fatal(err)
+	}
+	hasher, err := auth.NewHasher(cheap, 1)
+	if err != nil {
+		t.Fatal(err)
+	}
+	p := plant.Person{ID: uuid.Must(uuid.NewV7()), Login: "administrator1", Name: "Administrator 1", Roles: plant.Roles{plant.Administrator}, Active: true}
+	if err := addPerson(ctx, st, hasher, p, secret); err != nil {
+		t.Fatal(err)
+	}
+	return serveOn(t, &storetest.Plant{Store: st, Clock: clock, URL: url}, clock.Now)
+}
+
+// journey counts what a newcomer has to do.
+type journey struct {
+	p              *browsertest.Page
+	pages, entries int
+}
+
+func (j *journey) fill(name, text string) {
+	j.p.Fill(`[name="`+name+`"]`, text)
+	j.entries++
+}
+
+func (j *journey) pick(name, value string) {
+	j.p.Value(`document.querySelector('[name="` + name + `"][value="` + value + `"]').click()`)
+	j.entries++
+}
+
+// on sends the step and waits for the next one.
+func (j *journey) on(selector, next string) {
+	j.p.Click(selector)
+	j.p.WaitFor(find(next))
+	j.pages++
+}
+
+// TestFromNothingToAJudgedRound is the first run as a newcomer walks it: an empty
+// database, one administrator, and at the end a round that was judged by limits.
+func TestFromNothingToAJudgedRound(t *testing.T) {
+	t.Parallel()
+	r := serveEmpty(t)
+	b := browsertest.Start(t)
+	began := time.Now()
+	j := &journey{p: r.signIn(t, b, "administrator1")}
+	p := j.p
+	p.WaitFor(`location.pathname === "/admin"`)
+	p.Accessible("overview of an empty plant")
+	j.on(`[data-testid=begin] a`, `[data-testid=step-plant]`)
+	p.Accessible("first step")
+	p.FitsWidth("first step", 320, 1280)
+	j.fill("plant", "Kestrel Row")
+	j.fill("zone", "Europe/London")
+	const next = `[data-testid=step] button[type=submit]`
+	j.on(next, `[data-testid=step-engineer]`)
+	j.on(next, `[data-testid=step-floor]`) // "I do" is chosen
+	j.fill("line_name", "Axles")
+	j.fill("station_name", "Turning 1")
+	j.fill("machine_name", "Lathe 11")
+
+	// Left here, it goes on here.
+	p.Open("/admin/floor")
+	p.Open("/admin")
+	p.Click(`[data-testid=begin] a`)
+	p.WaitFor(find(`[data-testid=step-floor]`))
+	for name, text := range map[string]string{"line_name": "Axles", "station_name": "Turning 1", "machine_name": "Lathe 11"} {
+		p.Fill(`[name="`+name+`"]`, text)
+	}
+	j.on(next, `[data-testid=step-measure]`)
+	p.Accessible("what is measured")
+	for _, f := range [][2]string{{"name", "Axle seat diameter"}, {"unit", "mm"}, {"decimals", "3"}, {"lower", "14.982"}, {"target", "14.991"}, {"upper", "15.000"}} {
+		j.fill(f[0], f[1])
+	}
+	j.on(next, `[data-testid=step-limits]`)
+	p.Accessible("limits")
+	p.FitsWidth("limits", 320)
+	for _, f := range [][2]string{{"center", "14.991"}, {"sigma", "0.0018"}, {"reason", "Study of this lathe last spring"}, {"secret", secret}} {
+		j.fill(f[0], f[1])
+	}
+	j.on(`[data-testid=known] button[type=submit]`, `[data-testid=step-operator]`)
+	for _, f := range [][2]string{{"person_name", "Operator 1"}, {"login", "operator1"}, {"password", secret}} {
+		j.fill(f[0], f[1])
+	}
+	j.on(next, `[data-testid=step-round]`)
+	p.Accessible("the first round")
+
+	j.on(`[data-testid=sign-out] button`, `#login`)
+	p.Value(`document.querySelector("#login").focus()`)
+	p.Keys("operator1\t" + secret + "\r")
+	p.WaitFor(`location.pathname.startsWith("/station/")`)
+	j.pages, j.entries = j.pages+1, j.entries+2
+	o, err := r.Outline(context.Background())
+	if err != nil || len(o.Characteristics) != 1 {
+		t.Fatalf("%+v, %v", o.Characteristics, err)
+	}
+	c := o.Characteristics[0]
+	type5(t, p, "/station/"+c.StationID.String()+"?measure="+c.ID.String(), "14.998", "14.999", "14.998", "14.999", "14.998")
+	j.pages, j.entries = j.pages+1, j.entries+5
+	p.Want("the first round is judged", theVerdict, "Look for a cause")
+	t.Logf("from an empty database to a judged round: %d steps, %d entries, %.1f s by a program (pages looked at by axe included)",
+		j.pages, j.entries, time.Since(began).Seconds())
+
+	a := r.signIn(t, b, "administrator1")
+	a.Open("/admin/start")
+	a.WaitFor(find(`[data-testid=step-finished]`))
+	a.Accessible("finished")
+	a.Want("said of the round", `document.querySelector("[data-testid=first-round]").textContent.includes("judged by the limits in force")`, "true")
+	if o.Plant.Name != "Kestrel Row" || o.Plant.Location.String() != "Europe/London" || !c.Given || c.Revision != 1 {
+		t.Errorf("set up: %+v, %+v", o.Plant, c)
+	}
+	whole(t, r)
+}
+
+// whole demands that the record is as it was sealed.
+func whole(t testing.TB, r *running) {
+	t.Helper()
+	ctx := context.Background()
+	if _, err := r.VerifyLedger(ctx); err != nil {
+		t.Error(err)
+	}
+	if differ, err := r.CheckRecord(ctx); err != nil || len(differ) > 0 {
+		t.Errorf("the record differs from what was sealed: %v, %v", differ, err)
+	}
+}
+
+// TestSetUpPagesAreAccessible looks at every page by day and by night, and narrow.
+func TestSetUpPagesAreAccessible(t *testing.T) {
+	t.Parallel()
+	r := serve(t)
+	r.calm(t, 6)
+	p := r.signIn(t, browsertest.Start(t), "engineer1")
+	for i, path := range []string{"/admin", "/admin/plant", "/admin/floor", "/admin/parts", "/admin/gauges", "/admin/characteristics",
+		"/admin/characteristic/new", "/admin/characteristic/" + r.Diameter.ID.String(), "/admin/characteristic/" + r.Diameter.ID.String() + "/known-limits",
+		"/admin/chart-choice?size=5&batches=pieces&varies=no&special=streams", "/admin/description", "/admin/thing/machine/" + r.Machine.ID.String(), "/admin/thing/gauge/new"} {
+		p.Open(path)
+		p.Value(`document.documentElement.dataset.theme = "` + []string{"day", "night"}[i%2] + `"`)
+		p.Accessible(path)
+		p.FitsWidth(path, 320, 1280)
+	}
+}
+
+// upload sends a file as a form does.
+func (v *visitor) upload(name, content string) (*http.Response, string) {
+	v.t.Helper()
+	var b bytes.Buffer
+	m := multipart.NewWriter(&b)
+	w, err := m.CreateFormFile("file", name)
+	if err == nil {
+		_, err = w.Write([]byte(content))
+	}
+	if err == nil {
+		err = m.Close()
+	}
+	if err != nil {
+		v.t.Fatal(err)
+	}
+	return v.do(http.MethodPost, "/admin/description", m.FormDataContentType(), &b)
+}
+
+var digest = regexp.MustCompile(`name="digest" value="([0-9a-f]+)"`)
+
+func TestAPlantFromAFile(t *testing.T) {
+	t.Parallel()
+	r := serve(t)
+	v := r.visit(t, "engineer1")
+	before, err := r.Outline(context.Background())
+	if err != nil {
+		t.Fatal(err)
+	}
+	var file strings.Builder
+	file.WriteString("Line;Station;Machine;Characteristic;Unit;Decimals;Lower specification limit;Upper specification limit;Parts per subgroup;Sample every minutes\r\n")
+	const machines, each = 100, 10
+	for m := range machines {
+		for c := range each {
+			fmt.Fprintf(&file, "Line %d;Station %d;Machine %d;Characteristic %d;mm;3;9,990;10,010;5;60\r\n", m/20, m/2, m, c)
+		}
+	}
+	res, body := v.upload("plant.csv", file.String())
+	at := res.Header.Get("Location")
+	if res.StatusCode != http.StatusSeeOther || !strings.HasPrefix(at, "/admin/description/") {
+		t.Fatalf("sending: %d to %s: %.300s", res.StatusCode, at, body)
+	}
+	_, body = v.get(at)
+	found := digest.FindStringSubmatch(body)
+	if found == nil || !strings.Contains(body, "1,155 things would be added") {
+		t.Fatalf("the preview does not say what would be added: %.2000s", body)
+	}
+	// Nothing is set up before it is confirmed, and it is the sender's to confirm.
+	if o, err := r.Outline(context.Background()); err != nil || len(o.Characteristics) != len(before.Characteristics) {
+		t.Fatalf("%d characteristics before confirming, %v", len(o.Characteristics), err)
+	}
+	if res, _ := v.post(at, url.Values{"digest": {"another"}}); res.StatusCode != http.StatusConflict {
+		t.Errorf("confirming what was not seen: %d", res.StatusCode)
+	}
+	began := time.Now()
+	if res, body := v.post(at, url.Values{"digest": {found[1]}}); res.StatusCode != http.StatusSeeOther {
+		t.Fatalf("confirming: %d %.500s", res.StatusCode, body)
+	}
+	t.Logf("%d characteristics set up in %.1f s", machines*each, time.Since(began).Seconds())
+	o, err := r.Outline(context.Background())
+	if err != nil || len(o.Characteristics) != len(before.Characteristics)+machines*each || len(o.Machines) != len(before.Machines)+machines {
+		t.Fatalf("%d characteristics on %d machines, %v", len(o.Characteristics), len(o.Machines), err)
+	}
+	if res, _ := v.post(at, url.Values{"digest": {found[1]}}); res.StatusCode != http.StatusConflict {
+		t.Errorf("confirming again: %d, want a conflict and nothing twice", res.StatusCode)
+	}
+	res, _ = v.upload("plant.csv", file.String())
+	if _, body = v.get(res.Header.Get("Location")); !strings.Contains(body, "Everything in this file is there already") {
+		t.Error("the same file again would do something")
+	}
+	// What is taken out is what is there.
+	_, csv := v.get("/admin/description/files/set-up.csv")
+	res, _ = v.upload("set-up.csv", csv)
+	if _, body = v.get(res.Header.Get("Location")); !strings.Contains(body, "Everything in this file is there already") || strings.Contains(body, `data-testid="differs"`) {
+		t.Errorf("the present set-up, read again: %.1500s", body)
+	}
+	whole(t, r)
+
+	for name, content := range map[string]string{"a picture": "\x89PNG\r\n\x1a\n\x00", "nothing": "", "too much": strings.Repeat("Line\n", 190_000)} {
+		if res, _ := v.upload("x", content); res.StatusCode != http.StatusUnprocessableEntity {
+			t.Errorf("%s: %d, want 422", name, res.StatusCode)
+		}
+	}
+	res, _ = v.upload("<script>.csv", "Line,Machine,Characteristic\n<img src=x>,=cmd|' /C calc'!A0,<b>\n")
+	if _, body = v.get(res.Header.Get("Location")); strings.Contains(body, "<img src=x>") || strings.Contains(body, "<script>.csv") || !strings.Contains(body, `data-testid="problems"`) {
+		t.Errorf("hostile words stand in the page as they came: %.1500s", body)
+	}
+	other := r.visit(t, "engineer1") // the same person may, another may not
+	if res, _ := other.get(at); res.StatusCode != http.StatusOK {
+		t.Errorf("the sender elsewhere: %d", res.StatusCode)
+	}
+}
+
+// TestAChangeOfSetUpSaysWhatItDoes before it is saved.
+func TestAChangeOfSetUpSaysWhatItDoes(t *testing.T) {
+	t.Parallel()
+	r := serve(t)
+	r.calm(t, 22)
+	r.MustFreeze(t, r.Diameter)
+	v := r.visit(t, "engineer1")
+	at := "/admin/characteristic/" + r.Diameter.ID.String()
+	form := func(change url.Values) url.Values {
+		f := url.Values{"version": {"1"}, "machine": {r.Machine.ID.String()}, "name": {"Axle seat diameter"}, "of": {""}, "unit": {"mm"}, "decimals": {"3"}, "lower": {"14.982"},
+			"target": {"14.991"}, "upper": {"15.000"}, "size": {"5"}, "chart": {"xbar-r"}, "minutes": {"30"}}
+		for k, v := range change {
+			f[k] = v
+		}
+		return f
+	}
+	for name, tc := range map[string]struct {
+		change url.Values
+		says   string
+	}{
+		"decimals":      {url.Values{"decimals": {"4"}}, "This changes decimals: Learning begins again until new limits are frozen; 22 subgroups stay on record."},
+		"specification": {url.Values{"upper": {"15.010"}}, "Limits stay: revision 1 goes on judging."},
+		"sampling":      {url.Values{"minutes": {"45"}}, "The next sample falls due by the new plan."},
+	} {
+		if res, body := v.post(at, form(tc.change)); res.StatusCode != http.StatusOK || !strings.Contains(body, tc.says) {
+			t.Errorf("%s: %d, does not say %q", name, res.StatusCode, tc.says)
+		}
+	}
+	if setups, err := r.CharacteristicSetups(context.Background(), r.Diameter.ID); err != nil || len(setups) != 1 {
+		t.Fatalf("looking has saved: %d versions, %v", len(setups), err)
+	}
+	if res, _ := v.post(at, form(nil)); res.StatusCode != http.StatusUnprocessableEntity {
+		t.Errorf("nothing changed: %d", res.StatusCode)
+	}
+	seen := form(url.Values{"decimals": {"4"}, "seen": {"yes"}})
+	if res, body := v.post(at, seen); res.StatusCode != http.StatusSeeOther {
+		t.Fatalf("saving: %d %.500s", res.StatusCode, body)
+	}
+	if res, _ := v.post(at, seen); res.StatusCode != http.StatusUnprocessableEntity {
+		t.Errorf("saving what was seen of an older version: %d", res.StatusCode)
+	}
+	h, err := r.History(context.Background(), r.Diameter.ID, plant.Stretch{Last: 1})
+	if err != nil || h.State.Setup.Version != 2 || h.State.Revision != nil {
+		t.Errorf("after it: version %d, %+v, %v; want Learning", h.State.Setup.Version, h.State.Revision, err)
+	}
+	// Gauges and characteristics are the engineer's, the floor is the administrator's too.
+	admin := r.visit(t, "administrator1")
+	if res, _ := admin.get("/admin/thing/gauge/new"); res.StatusCode != http.StatusForbidden {
+		t.Errorf("a gauge by the administrator: %d", res.StatusCode)
+	}
+	if res, _ := admin.post("/admin/thing/station/new", url.Values{"line": {r.Line.ID.String()}, "name": {"Turning 3"}}); res.StatusCode != http.StatusSeeOther {
+		t.Errorf("a station by the administrator: %d", res.StatusCode)
+	}
+	if res, body := admin.post("/admin/thing/line/"+r.Line.ID.String()+"/retire", url.Values{"retired": {"yes"}}); res.StatusCode != http.StatusConflict || !strings.Contains(body, "Retire them first") {
+		t.Errorf("a line with stations: %d", res.StatusCode)
+	}
+}
