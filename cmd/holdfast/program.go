@@ -132,7 +132,7 @@ func (p *program) join(ctx context.Context) error {
 	if err != nil {
 		p.Log.Warn("the machine does not tell its name", "error", err)
 	}
-	p.admin = admin.New(admin.Deps{Log: p.Log, Machine: machine, Store: p.store, Signer: door, Hasher: hasher, Changed: p.readPlant, About: p.about, Staff: p.staff(hasher)})
+	p.admin = admin.New(admin.Deps{Log: p.Log, Machine: machine, Store: p.store, Signer: door, Hasher: hasher, Changed: p.readPlant, Forget: p.sessions.Forget, About: p.about, Staff: p.staff(hasher)})
 	cfg := web.Config{
 		Log: p.Log, Now: p.Clock, Plant: func() plant.Plant { return *p.plant.Load() },
 		Sessions: p.sessions, Checker: door, Hub: p.hub,

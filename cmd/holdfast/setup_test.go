@@ -66,7 +66,8 @@ func (j *journey) pick(name, value string) {
 
 // on sends the step and waits for the next one.
 func (j *journey) on(selector, next string) {
-	j.p.Click(selector)
+	j.p.WaitFor(find(selector))
+	j.p.Value(find(selector) + `.click()`)
 	j.p.WaitFor(find(next))
 	j.pages++
 }

@@ -2,7 +2,6 @@ package store
 
 import (
 	"context"
-	"fmt"
 
 	"github.com/google/uuid"
 	"github.com/jackc/pgx/v5"
@@ -17,6 +16,7 @@ type arranging struct {
 	s        *Store
 	tx       pgx.Tx
 	by       uuid.UUID
+	b        pgx.Batch // what is to be written; it goes in one go, since a plant may be described whole
 	bodies   []ledger.Body
 	stations map[uuid.UUID]bool // whose pages show it
 }
@@ -31,6 +31,9 @@ func (s *Store) arranged(ctx context.Context, by uuid.UUID, f func(ctx context.C
 		a.tx = tx
 		if err := f(ctx, a); err != nil {
 			return err
+		}
+		if err := tx.SendBatch(ctx, &a.b).Close(); err != nil {
+			return nameTaken(err)
 		}
 		return s.appendPlantChain(ctx, tx, a.bodies...)
 	})
@@ -51,18 +54,16 @@ func (a *arranging) say(what string, subject uuid.UUID, content map[string]any) 
 	})
 }
 
-func (a *arranging) addLine(ctx context.Context, l plant.Line) error {
+func (a *arranging) addLine(l plant.Line) {
 	a.say("line added", l.ID, map[string]any{"name": l.Name})
-	_, err := a.tx.Exec(ctx, `insert into line (id, plant_id, name, position) values ($1, $2, $3, $4)`, l.ID, a.s.plant(), l.Name, l.Position)
-	return nameTaken(err)
+	a.b.Queue(`insert into line (id, plant_id, name, position) values ($1, $2, $3, $4)`, l.ID, a.s.plant(), l.Name, l.Position)
 }
 
-func (a *arranging) addStation(ctx context.Context, st plant.Station) error {
+func (a *arranging) addStation(st plant.Station) {
 	a.say("station added", st.ID, map[string]any{"name": st.Name, "line": st.LineID, "family": st.Family})
 	a.stations[st.ID] = true
-	_, err := a.tx.Exec(ctx, `insert into station (id, plant_id, line_id, name, family, position) values ($1, $2, $3, $4, $5, $6)`,
+	a.b.Queue(`insert into station (id, plant_id, line_id, name, family, position) values ($1, $2, $3, $4, $5, $6)`,
 		st.ID, a.s.plant(), st.LineID, st.Name, st.Family, st.Position)
-	return nameTaken(err)
 }
 
 func machineContent(m plant.Machine) map[string]any {
@@ -79,40 +80,30 @@ func machineContent(m plant.Machine) map[string]any {
 	return c
 }
 
-func (a *arranging) addMachine(ctx context.Context, m plant.Machine) error {
+func (a *arranging) addMachine(m plant.Machine) {
 	a.say("machine added", m.ID, machineContent(m))
 	a.stations[m.StationID] = true
-	_, err := a.tx.Exec(ctx, `insert into machine (id, plant_id, station_id, name, position, parts_per_hour) values ($1, $2, $3, $4, $5, $6)`,
+	a.b.Queue(`insert into machine (id, plant_id, station_id, name, position, parts_per_hour) values ($1, $2, $3, $4, $5, $6)`,
 		m.ID, a.s.plant(), m.StationID, m.Name, m.Position, m.PartsPerHour)
-	if err != nil {
-		return nameTaken(err)
-	}
-	return a.putStreams(ctx, m)
+	a.putStreams(m)
 }
 
 // putStreams makes the streams of a machine what m says: those that are not named any
 // more are retired, those that come back are taken up again.
-func (a *arranging) putStreams(ctx context.Context, m plant.Machine) error {
-	if _, err := a.tx.Exec(ctx, `update stream set retired_at = $2 where machine_id = $1 and retired_at is null`, m.ID, a.s.now()); err != nil {
-		return fmt.Errorf("retire streams: %w", err)
-	}
+func (a *arranging) putStreams(m plant.Machine) {
+	a.b.Queue(`update stream set retired_at = $2 where machine_id = $1 and retired_at is null`, m.ID, a.s.now())
 	for i, st := range m.Streams {
-		if st.Retired {
-			continue
-		}
-		if _, err := a.tx.Exec(ctx, `insert into stream (id, plant_id, machine_id, name, position) values ($1, $2, $3, $4, $5)
-			on conflict on constraint stream_name_once do update set position = excluded.position, retired_at = null`,
-			st.ID, a.s.plant(), m.ID, st.Name, i); err != nil {
-			return fmt.Errorf("put stream: %w", err)
+		if !st.Retired {
+			a.b.Queue(`insert into stream (id, plant_id, machine_id, name, position) values ($1, $2, $3, $4, $5)
+				on conflict on constraint stream_name_once do update set position = excluded.position, retired_at = null`,
+				st.ID, a.s.plant(), m.ID, st.Name, i)
 		}
 	}
-	return nil
 }
 
-func (a *arranging) addPart(ctx context.Context, p plant.Part) error {
+func (a *arranging) addPart(p plant.Part) {
 	a.say("part added", p.ID, map[string]any{"name": p.Name, "family": p.Family})
-	_, err := a.tx.Exec(ctx, `insert into part (id, plant_id, name, family) values ($1, $2, $3, $4)`, p.ID, a.s.plant(), p.Name, p.Family)
-	return nameTaken(err)
+	a.b.Queue(`insert into part (id, plant_id, name, family) values ($1, $2, $3, $4)`, p.ID, a.s.plant(), p.Name, p.Family)
 }
 
 func gaugeContent(g plant.Gauge) map[string]any {
@@ -129,11 +120,10 @@ func gaugeContent(g plant.Gauge) map[string]any {
 	return c
 }
 
-func (a *arranging) addGauge(ctx context.Context, g plant.Gauge) error {
+func (a *arranging) addGauge(g plant.Gauge) {
 	a.say("gauge added", g.ID, gaugeContent(g))
-	_, err := a.tx.Exec(ctx, `insert into gauge (id, plant_id, name, resolution, next_check, check_days) values ($1, $2, $3, $4::text::numeric, $5, $6)`,
+	a.b.Queue(`insert into gauge (id, plant_id, name, resolution, next_check, check_days) values ($1, $2, $3, $4::text::numeric, $5, $6)`,
 		g.ID, a.s.plant(), g.Name, decimalOrNull(g.Resolution), timeOrNull(g.NextCheck), g.CheckDays)
-	return nameTaken(err)
 }
 
 func characteristicContent(c plant.Characteristic) map[string]any {
@@ -146,7 +136,7 @@ func characteristicContent(c plant.Characteristic) map[string]any {
 
 // addCharacteristic adds a characteristic with the first version of its set-up, its state
 // row and the head of its ledger chain.
-func (a *arranging) addCharacteristic(ctx context.Context, c plant.Characteristic, setup plant.Setup) error {
+func (a *arranging) addCharacteristic(c plant.Characteristic, setup plant.Setup) error {
 	s := a.s
 	setup.Version, setup.MadeAt = 1, s.now()
 	if err := setup.Validate(); err != nil {
@@ -154,24 +144,20 @@ func (a *arranging) addCharacteristic(ctx context.Context, c plant.Characteristi
 	}
 	a.say("characteristic added", c.ID, characteristicContent(c))
 	a.stations[c.StationID] = true
-	_, err := a.tx.Exec(ctx, `insert into characteristic (id, plant_id, station_id, machine_id, part_id, family, name, position)
+	a.b.Queue(`insert into characteristic (id, plant_id, station_id, machine_id, part_id, family, name, position)
 		values ($1, $2, $3, $4, $5, $6, $7, $8)`,
 		c.ID, s.plant(), c.StationID, c.MachineID, orNull(c.PartID), c.Family, c.Name, c.Position)
-	if err != nil {
-		return nameTaken(err)
-	}
-	if err := s.insertSetup(ctx, a.tx, c.ID, setup, a.by); err != nil {
+	if err := s.queueSetup(&a.b, c.ID, setup, a.by); err != nil {
 		return err
 	}
 	entry, head, err := ledger.Seal(c.ID, ledger.Head{}, setupBody(c.ID, setup, a.by))
 	if err != nil {
 		return err
 	}
-	b := &pgx.Batch{}
-	s.queueLedger(b, entry)
-	b.Queue(`insert into characteristic_state (characteristic_id, plant_id, station_id, setup_version, ledger_seq, ledger_hash)
+	s.queueLedger(&a.b, entry)
+	a.b.Queue(`insert into characteristic_state (characteristic_id, plant_id, station_id, setup_version, ledger_seq, ledger_hash)
 		values ($1, $2, $3, $4, $5, $6)`, c.ID, s.plant(), c.StationID, setup.Version, head.Seq, head.Hash[:])
-	return a.tx.SendBatch(ctx, b).Close()
+	return nil
 }
 
 // nameTaken turns a violated natural key into words. Names of retired things stay taken:

@@ -56,7 +56,7 @@ func (s *Store) Add(ctx context.Context, by uuid.UUID, plan func(plant.Outline) 
 		if err != nil {
 			return err
 		}
-		return a.add(ctx, add)
+		return a.add(add)
 	})
 	if err != nil {
 		return fmt.Errorf("add to the plant: %w", err)
@@ -65,34 +65,24 @@ func (s *Store) Add(ctx context.Context, by uuid.UUID, plan func(plant.Outline) 
 }
 
 // add adds what hangs higher first.
-func (a *arranging) add(ctx context.Context, add plant.Addition) error {
+func (a *arranging) add(add plant.Addition) error {
 	for _, v := range add.Lines {
-		if err := a.addLine(ctx, v); err != nil {
-			return err
-		}
+		a.addLine(v)
 	}
 	for _, v := range add.Stations {
-		if err := a.addStation(ctx, v); err != nil {
-			return err
-		}
+		a.addStation(v)
 	}
 	for _, v := range add.Machines {
-		if err := a.addMachine(ctx, v); err != nil {
-			return err
-		}
+		a.addMachine(v)
 	}
 	for _, v := range add.Parts {
-		if err := a.addPart(ctx, v); err != nil {
-			return err
-		}
+		a.addPart(v)
 	}
 	for _, v := range add.Gauges {
-		if err := a.addGauge(ctx, v); err != nil {
-			return err
-		}
+		a.addGauge(v)
 	}
 	for _, v := range add.Characteristics {
-		if err := a.addCharacteristic(ctx, v.Characteristic, v.Setup); err != nil {
+		if err := a.addCharacteristic(v.Characteristic, v.Setup); err != nil {
 			return err
 		}
 	}

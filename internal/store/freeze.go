@@ -172,11 +172,11 @@ func (s *Store) ChangeSetup(ctx context.Context, characteristic uuid.UUID, setup
 			return err
 		}
 		setup.Version, setup.MadeAt = replaces+1, now
-		if err := s.insertSetup(ctx, tx, l.id, setup, by); err != nil {
+		b := &pgx.Batch{}
+		if err := s.queueSetup(b, l.id, setup, by); err != nil {
 			return err
 		}
 		l.setupVersion = setup.Version
-		b := &pgx.Batch{}
 		if err := s.seal(b, l, setupBody(l.id, setup, by)); err != nil {
 			return err
 		}

@@ -107,22 +107,22 @@ func (s *Store) arrange(ctx context.Context, what string, subject, person uuid.U
 
 // AddLine adds a lane.
 func (s *Store) AddLine(ctx context.Context, l plant.Line, by uuid.UUID) error {
-	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.addLine(ctx, l) })
+	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { a.addLine(l); return nil })
 }
 
 // AddStation adds a station to a line.
 func (s *Store) AddStation(ctx context.Context, st plant.Station, by uuid.UUID) error {
-	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.addStation(ctx, st) })
+	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { a.addStation(st); return nil })
 }
 
 // AddMachine adds a machine with its streams.
 func (s *Store) AddMachine(ctx context.Context, m plant.Machine, by uuid.UUID) error {
-	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.addMachine(ctx, m) })
+	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { a.addMachine(m); return nil })
 }
 
 // AddPart adds a part.
 func (s *Store) AddPart(ctx context.Context, p plant.Part, by uuid.UUID) error {
-	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.addPart(ctx, p) })
+	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { a.addPart(p); return nil })
 }
 
 // Parts lists the parts that are made, by name.
@@ -138,12 +138,12 @@ func (s *Store) Parts(ctx context.Context) ([]plant.Part, error) {
 
 // AddGauge adds a gauge.
 func (s *Store) AddGauge(ctx context.Context, g plant.Gauge, by uuid.UUID) error {
-	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.addGauge(ctx, g) })
+	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { a.addGauge(g); return nil })
 }
 
 // AddCharacteristic adds a characteristic with the first version of its set-up.
 func (s *Store) AddCharacteristic(ctx context.Context, c plant.Characteristic, setup plant.Setup, by uuid.UUID) error {
-	err := s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.addCharacteristic(ctx, c, setup) })
+	err := s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.addCharacteristic(c, setup) })
 	if err != nil {
 		return fmt.Errorf("add characteristic: %w", err)
 	}
@@ -161,7 +161,7 @@ func setupBody(id uuid.UUID, setup plant.Setup, by uuid.UUID) ledger.Setup {
 	return ledger.Setup{Characteristic: id, Version: setup.Version, At: ledger.Time(setup.MadeAt), Person: ledger.ID(by), Content: content}
 }
 
-func (s *Store) insertSetup(ctx context.Context, tx pgx.Tx, id uuid.UUID, v plant.Setup, by uuid.UUID) error {
+func (s *Store) queueSetup(b *pgx.Batch, id uuid.UUID, v plant.Setup, by uuid.UUID) error {
 	plan, err := json.Marshal(v.Plan)
 	if err != nil {
 		return fmt.Errorf("encode sampling plan: %w", err)
@@ -170,14 +170,11 @@ func (s *Store) insertSetup(ctx context.Context, tx pgx.Tx, id uuid.UUID, v plan
 	if err != nil {
 		return fmt.Errorf("encode control plan: %w", err)
 	}
-	_, err = tx.Exec(ctx, `insert into setup (characteristic_id, version, plant_id, unit, decimals, target, lower_spec, upper_spec,
+	b.Queue(`insert into setup (characteristic_id, version, plant_id, unit, decimals, target, lower_spec, upper_spec,
 			worse, chart, size, plan, control_plan, gauge_id, made_at, person_id)
 		values ($1, $2, $3, $4, $5, $6::text::numeric, $7::text::numeric, $8::text::numeric, $9, $10, $11, $12, $13, $14, $15, $16)`,
 		id, v.Version, s.plant(), v.Unit, v.Decimals, decimalOrNull(v.Target), decimalOrNull(v.Lower), decimalOrNull(v.Upper),
 		string(v.Worse), string(v.Chart), v.Size, plan, control, orNull(v.GaugeID), v.MadeAt, orNull(by))
-	if err != nil {
-		return fmt.Errorf("insert set-up: %w", err)
-	}
 	return nil
 }
 

@@ -31,6 +31,7 @@ func (a *Admin) startPerson(r *http.Request, q *asking, role plant.Role) error {
 	}
 	switch q.values.Get("who") {
 	case "me":
+		defer a.forget(f.Person.ID)
 		return a.store.AddRoles(r.Context(), f.Person.ID, plant.Roles{role}, f.Person.ID)
 	case "other":
 	default:

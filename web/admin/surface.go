@@ -31,6 +31,8 @@ type Deps struct {
 	// Changed is called after the plant's name, time zone or shifts were changed, so that
 	// pages show what holds now.
 	Changed func(ctx context.Context) error
+	// Forget is called after a person's roles were changed, so that the next page knows.
+	Forget func(person uuid.UUID)
 }
 
 // Store is what the surface needs of the plant's record.
@@ -89,6 +91,7 @@ type Admin struct {
 	signer        Signer
 	hasher        Hasher
 	changed       func(ctx context.Context) error
+	forget        func(person uuid.UUID)
 	qualification *qualification
 	staff         *Staff
 }
@@ -101,7 +104,10 @@ func New(d Deps) *Admin {
 	if d.Changed == nil {
 		d.Changed = func(context.Context) error { return nil }
 	}
-	return &Admin{log: d.Log, machine: d.Machine, about: d.About, store: d.Store, signer: d.Signer, hasher: d.Hasher, changed: d.Changed,
+	if d.Forget == nil {
+		d.Forget = func(uuid.UUID) {}
+	}
+	return &Admin{log: d.Log, machine: d.Machine, about: d.About, store: d.Store, signer: d.Signer, hasher: d.Hasher, changed: d.Changed, forget: d.Forget,
 		qualification: &qualification{run: d.Run, log: d.Log}, staff: d.Staff}
 }
 
