@@ -79,6 +79,9 @@ func limitsFact(f ui.Format, c plant.CharacteristicState) fact {
 	if r := c.Revision; r != nil {
 		v.Val = w.T("desk.revision", r.Number)
 		v.Sub = w.T("desk.fact.limits-from", f.Clock(r.InForceFrom), r.Basis.Subgroups)
+		if r.Basis.Given {
+			v.Sub = w.T("setup.unproved.fact", f.Clock(r.InForceFrom))
+		}
 		return v
 	}
 	v.Val = w.T("desk.fact.no-limits")

@@ -159,7 +159,11 @@ func newCard(f ui.Format, r plant.Revision, s plant.Setup, inForce *plant.Revisi
 	add(w.T("desk.compare.sigma"), w.T("desk.card.sigma", f.WithUnit(f.Number(r.Sigma, s.LimitDecimals()+1), s.Unit), ways(f, r.Estimator, r.Multiple)))
 	add(w.T("desk.compare.rules"), rulesInWords(f, r.Rules.Location))
 	add(w.T("desk.compare.spread-rules"), rulesInWords(f, r.Rules.Dispersion))
-	add(w.T("desk.card.basis"), w.T("desk.freeze.basis", r.Basis.Subgroups, f.Clock(r.Basis.From), f.Clock(r.Basis.To)))
+	basis := w.T("desk.freeze.basis", r.Basis.Subgroups, f.Clock(r.Basis.From), f.Clock(r.Basis.To))
+	if r.Basis.Given {
+		basis = w.T("setup.unproved.basis")
+	}
+	add(w.T("desk.card.basis"), basis)
 	for i, l := range r.Basis.LeftOut {
 		c.LeftOut = append(c.LeftOut, outRow{Mark: letter(i), Taken: f.Clock(l.TakenAt), Cause: l.Cause})
 	}

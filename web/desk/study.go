@@ -107,7 +107,7 @@ func (s *studied) ready() bool { return s.err == nil && s.trial.CanFreeze() }
 // computed from, by studying those again as they were studied then.
 func (d *Desk) compareBasis(ctx context.Context, s *studied) error {
 	rev := s.h.State.Revision
-	if rev == nil || !s.ready() || rev.Chart != s.h.State.Setup.Chart {
+	if rev == nil || rev.Basis.Given || !s.ready() || rev.Chart != s.h.State.Setup.Chart {
 		return nil
 	}
 	first, last := s.h.Points[0].TakenAt, s.h.Points[len(s.h.Points)-1].TakenAt
