@@ -77,6 +77,16 @@ func (m Matter) AllWithdrawn() bool {
 	return true
 }
 
+// OnlyGauge reports whether a gauge that failed its check is all that stands.
+func (m Matter) OnlyGauge() bool {
+	for _, l := range m.Lines {
+		if !l.Withdrawn && l.Panel != GaugeCheck {
+			return false
+		}
+	}
+	return !m.AllWithdrawn()
+}
+
 // OnlyHold reports whether every standing line puts the product in doubt and none the
 // process.
 func (m Matter) OnlyHold() bool {

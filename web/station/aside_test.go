@@ -114,7 +114,7 @@ func TestGaugeCheck(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	b.get(s.at("round", a.Round.String())).says("Hold the product", doubt, "was the last good check of the gauge.")
+	b.get(s.at("round", a.Round.String())).says("Hold the product", doubt, "its gauge failed the check.", "was the last good check of the gauge.")
 	b.get(s.at("matter", a.Parts[0].Matter.String())).says("its gauge failed the check")
 	s.Clock.Advance(time.Minute)
 	check("good", "new anvil").is(http.StatusSeeOther)

@@ -287,6 +287,8 @@ func (v *verdictView) step(f ui.Format, st plant.StationState, m told, taken tim
 		return
 	}
 	switch {
+	case open.OnlyGauge():
+		v.Step, v.StepMore = w.T("reach.step-gauge"), w.T("reach.step-gauge-more")
 	case m.Verdict == plant.Hold:
 		v.Step, v.StepMore = w.T("station.step-hold"), w.T("station.step-hold-more")
 	case onlyBetter(m):
