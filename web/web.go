@@ -60,7 +60,7 @@ type Config struct {
 	// demonstration.
 	DemoPeople func(ctx context.Context) ([]plant.Person, error)
 
-	Station, Board, Desk, Admin Surface
+	Station, Board, Desk, Admin, Calls Surface
 
 	// API is mounted at /api/v1 and guards itself.
 	API Surface
@@ -136,6 +136,7 @@ func New(c Config) http.Handler {
 		mount(r, ui.Board, c.Board)
 		mount(r, ui.Desk, c.Desk)
 		mount(r, ui.Admin, c.Admin)
+		mount(r, ui.Calls, c.Calls)
 		if c.API != nil {
 			r.Route("/api/v1", c.API.Routes)
 		}

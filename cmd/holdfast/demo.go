@@ -72,7 +72,7 @@ func (c *demoCmd) Run(ctx context.Context, log *slog.Logger) error {
 		return err
 	}
 	p, err := newProgram(ctx, settings{
-		Listener: listener, DatabaseURL: db.url, Hosts: loopbackNames(listener), Demo: true, DataDir: c.privateDir(), Log: log,
+		Listener: listener, DatabaseURL: db.url, Hosts: loopbackNames(listener), Demo: true, Messages: demo.Messages(), DataDir: c.privateDir(), Log: log,
 	})
 	if err != nil {
 		return err

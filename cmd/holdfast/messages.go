@@ -13,6 +13,7 @@ import (
 	"holdfast/internal/escalation"
 	"holdfast/internal/outbox"
 	"holdfast/internal/plant"
+	"holdfast/web/admin"
 	"holdfast/web/calls"
 	"holdfast/web/ui"
 	"holdfast/web/words"
@@ -88,6 +89,17 @@ func (p *program) lookAfter(ctx context.Context) {
 	p.running.Go(func() { watch.Run(ctx) })
 	worker := outbox.Worker{Store: p.store, Senders: p.Messages.Senders(), Log: p.Log, Now: p.Clock}
 	p.running.Go(func() { worker.Run(ctx) })
+}
+
+// messagesPage is what the administrators' page about messages works with.
+func (p *program) messagesPage() admin.Messages {
+	m := admin.Messages{Store: p.store, Try: func(ctx context.Context, target string) error {
+		return tryTarget(ctx, p.Messages, target, p.Clock())
+	}}
+	for _, t := range p.Messages.Targets {
+		m.Targets = append(m.Targets, admin.MessageTarget{Name: t.Name, Way: string(t.Way), Where: t.Where, Lines: strings.Join(t.Lines, ", ")})
+	}
+	return m
 }
 
 type messagesCmd struct {

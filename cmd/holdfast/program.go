@@ -23,6 +23,7 @@ import (
 	"holdfast/web"
 	"holdfast/web/admin"
 	"holdfast/web/board"
+	"holdfast/web/calls"
 	"holdfast/web/desk"
 	doorpages "holdfast/web/door"
 	"holdfast/web/station"
@@ -132,7 +133,7 @@ func (p *program) join(ctx context.Context) error {
 	if err != nil {
 		p.Log.Warn("the machine does not tell its name", "error", err)
 	}
-	p.admin = admin.New(admin.Deps{Log: p.Log, Machine: machine, Store: p.store, Signer: door, Hasher: hasher, Changed: p.readPlant, Forget: p.sessions.Forget, About: p.about, Staff: p.staff(hasher)})
+	p.admin = admin.New(admin.Deps{Log: p.Log, Machine: machine, Store: p.store, Signer: door, Hasher: hasher, Changed: p.readPlant, Forget: p.sessions.Forget, About: p.about, Messages: p.messagesPage(), Staff: p.staff(hasher)})
 	cfg := web.Config{
 		Log: p.Log, Now: p.Clock, Plant: func() plant.Plant { return *p.plant.Load() },
 		Sessions: p.sessions, Checker: door, Hub: p.hub,
@@ -141,6 +142,7 @@ func (p *program) join(ctx context.Context) error {
 		Desk:    desk.New(desk.Deps{Store: p.store, Signer: door, Log: p.Log}),
 		Admin:   p.admin,
 		Tablet:  p.tablet(door),
+		Calls:   calls.New(calls.Deps{Store: p.store, Log: p.Log}),
 		Ready:   p.store.Ready, Hosts: p.Hosts, Secure: p.Transport.https, Strict: p.Transport.strict, Addr: p.Transport.from, Authority: p.Transport.root,
 	}
 	p.watch()

@@ -45,6 +45,7 @@ var (
 	watchers  = append(who{wall}, seers...) // the board, to look at
 	deskers   = who{supervisor, engineer}
 	setters   = who{engineer}
+	called    = who{supervisor}
 	managers  = who{administrator}
 	arrangers = who{engineer, administrator}
 	tablets   = who{bare, atTablet, manager}
@@ -144,6 +145,9 @@ var routeTable = []routeRow{
 	{"POST /admin/devices/{device}", managers, 422},
 	{"POST /admin/devices/{device}/revoke", managers, 303},
 	{"POST /admin/devices/code/{code}/withdraw", managers, 303},
+	{"GET /admin/messages", managers, 200},
+	{"POST /admin/messages/try", managers, 422},
+	{"POST /admin/messages/{id}/again", managers, 404}, // no message of this id
 
 	{"GET /station/", takers, 200},
 	{"GET /station/{station}", takers, 200},
@@ -168,9 +172,14 @@ var routeTable = []routeRow{
 	{"POST /station/{station}/machine/{machine}", takers, 422},
 
 	{"GET /board/", watchers, 200},
+	{"GET /board/alarms", watchers, 200},
 	{"GET /board/at/{station}/{characteristic}", seers, 303},
 	{"GET /board/at/{station}/{characteristic}/{matter}", seers, 303},
 	{"GET /board/chart/{station}/{characteristic}", seers, 303},
+
+	{"GET /calls/", called, 200},
+	{"GET /calls/quiet/{matter}", called, 200},
+	{"POST /calls/quiet/{matter}", called, 422},
 
 	{"GET /desk/", deskers, 200},
 	{"GET /desk/settings", deskers, 200},

@@ -12,6 +12,7 @@ import (
 	"holdfast/internal/plant"
 	"holdfast/internal/store"
 	"holdfast/web/board"
+	"holdfast/web/calls"
 	"holdfast/web/desk"
 	"holdfast/web/station"
 	"holdfast/web/ui"
@@ -49,7 +50,7 @@ func newViews(st *store.Store, p *atomic.Pointer[plant.Plant], now func() time.T
 func (v *views) changed(stations []uuid.UUID) []string {
 	v.mu.Lock()
 	defer v.mu.Unlock()
-	topics := ui.InEveryLanguage(ui.Board, ui.TopicBoard)
+	topics := append(ui.InEveryLanguage(ui.Board, ui.TopicBoard), ui.InEveryLanguage(ui.Station, ui.TopicCalls)...)
 	for _, id := range stations {
 		v.dirty[id] = true
 		topics = append(topics, ui.InEveryLanguage(ui.Station, ui.TopicStation(id))...)
@@ -133,6 +134,8 @@ func (v *views) render(ctx context.Context, topics []string) (map[string][]live.
 		var err error
 		if what == ui.TopicBoard {
 			fragments, err = board.Fragments(f, p, v.states)
+		} else if what == ui.TopicCalls {
+			fragments, err = calls.Fragments(f, plant.OpenCalls(v.states, now))
 		} else if id, ok := ui.StationOfTopic(what); ok {
 			if i, known := v.place[id]; known {
 				fragments, err = station.Fragments(f, v.states[i])

@@ -45,6 +45,9 @@ func Build(ctx context.Context, st *store.Store, hash Hash, hashPIN HashPIN, now
 	if err := b.owners(ctx); err != nil {
 		return fmt.Errorf("find the owners of the demo: %w", err)
 	}
+	if err := b.escalate(ctx); err != nil {
+		return fmt.Errorf("find somebody in the demo: %w", err)
+	}
 	return nil
 }
 

@@ -212,7 +212,7 @@ func (w *walker) round(ctx context.Context) error {
 			t.due = late
 		}
 		for _, p := range a.Parts {
-			if p.Characteristic == t.ID && p.Opened {
+			if p.Characteristic == t.ID && p.Opened && !t.aloneNow(w.day()) {
 				w.follow = append(w.follow, followUp{at: w.at.Add(w.patience(t, w.minutes(2, 9))), matter: p.Matter, track: t})
 			}
 		}

@@ -186,7 +186,7 @@ func (s *Simulator) mishap(t *track, c plant.CharacteristicState) {
 func (s *Simulator) matters(ctx context.Context, st plant.StationState) error {
 	for _, c := range st.Characteristics {
 		m, t := c.Matter, s.tracks[c.ID]
-		if m == nil || t == nil {
+		if m == nil || t == nil || m.TakenBy == uuid.Nil && leaves(c) {
 			continue
 		}
 		if m.TakenBy == uuid.Nil {

@@ -45,6 +45,7 @@ type fault struct {
 	action string
 	open   bool // nobody has found it when the history ends
 	turn   bool // it is here to stay, and the machine was adjusted for it
+	alone  bool // nobody takes what it opens
 }
 
 // spell is a stretch of days in which somebody corrects the process after each sample
@@ -89,8 +90,9 @@ var works = []place{
 	}},
 	{line: "Shells", name: "Shell turning", family: "turning", machine: "Lathe 21", rate: 90, parts: []string{"Shell 28", "Shell 32"}, gauges: []measure{
 		{name: "Bearing bore", gauge: "Bore gauge G-11", mean: 27.9945, sigma: 0.0024, wander: 0.06, revised: true,
-			setup:  plant.Setup{Unit: "mm", Decimals: 3, Target: dec(27994, 3), Lower: dec(27984, 3), Upper: dec(28004, 3), Chart: limits.XBarR, Size: 5, Plan: every(60), ControlPlan: plant.ControlPlan{Operation: "50 shell turning", Drawing: "KR-2010", Plan: "CP-50", SpecialMark: "S"}},
-			faults: []fault{{day: 12.7, shift: -2.3, cause: "Insert chipped", action: "Insert changed"}, {day: 47.9, widen: 1.9, cause: "Chuck jaw dirty", action: "Jaws cleaned"}}},
+			setup: plant.Setup{Unit: "mm", Decimals: 3, Target: dec(27994, 3), Lower: dec(27984, 3), Upper: dec(28004, 3), Chart: limits.XBarR, Size: 5, Plan: every(60), ControlPlan: plant.ControlPlan{Operation: "50 shell turning", Drawing: "KR-2010", Plan: "CP-50", SpecialMark: "S"}},
+			faults: []fault{{day: 12.7, shift: -2.3, cause: "Insert chipped", action: "Insert changed"}, {day: 47.9, widen: 1.9, cause: "Chuck jaw dirty", action: "Jaws cleaned"},
+				{day: Days - 0.085, shift: -2.3, open: true, alone: true, cause: "Insert chipped", action: "Insert changed"}}},
 	}},
 	{line: "Shells", name: "Drilling 1", family: "drilling", machine: "Drill 5", rate: 60, parts: []string{"Shell 28"}, gauges: []measure{
 		{name: "Spoke-hole position", gauge: "Pin gauge P-02", mean: 0.062, sigma: 0.0125, wander: 0.04,
@@ -105,8 +107,9 @@ var works = []place{
 	}},
 	{line: "Shells", name: "Anodising", family: "anodising", machine: "Bath 2", rate: 140, parts: []string{"Shell 28"}, gauges: []measure{
 		{name: "Coating thickness", gauge: "Eddy-current gauge E-01", mean: 9.8, sigma: 0.62,
-			setup:  plant.Setup{Unit: "μm", Decimals: 1, Lower: dec(70, 1), Upper: dec(130, 1), Target: dec(100, 1), Chart: limits.Individuals, Size: 1, Plan: every(60), ControlPlan: plant.ControlPlan{Operation: "70 anodising", Plan: "CP-70"}},
-			faults: []fault{{day: 25.2, shift: -3.2, cause: "Bath temperature low", action: "Heater fuse changed"}}},
+			setup: plant.Setup{Unit: "μm", Decimals: 1, Lower: dec(70, 1), Upper: dec(130, 1), Target: dec(100, 1), Chart: limits.Individuals, Size: 1, Plan: every(60), ControlPlan: plant.ControlPlan{Operation: "70 anodising", Plan: "CP-70"}},
+			faults: []fault{{day: 25.2, shift: -3.2, cause: "Bath temperature low", action: "Heater fuse changed"},
+				{day: Days - 0.16, shift: -3.2, open: true, alone: true, cause: "Bath temperature low", action: "Heater fuse changed"}}},
 		{name: "Bath temperature", gauge: "Thermometer H-09", mean: 19.9, sigma: 0.28, learning: true,
 			setup: plant.Setup{Unit: "°C", Decimals: 1, Lower: dec(180, 1), Upper: dec(220, 1), Target: dec(200, 1), Chart: limits.Individuals, Size: 1, Plan: every(240), ControlPlan: plant.ControlPlan{Operation: "70 anodising", Plan: "CP-70"}}},
 	}},

@@ -275,3 +275,9 @@ func (t *Target) asWebhook(ft fileTarget, reach *Reach, o Options) error {
 	t.Way, t.Where, t.send = ByWebhook, u.Scheme+"://"+u.Host, newWebhook(u, keys, reach, o.Now)
 	return nil
 }
+
+// NewTarget makes a target that no configuration file describes: for the demonstration
+// and for tests.
+func NewTarget(name string, way Way, where string, send Sender) Target {
+	return Target{Name: name, Way: way, Where: where, send: send}
+}

@@ -116,7 +116,10 @@ const leastKey = 24
 // Base64 or as plain text.
 func SigningKeys(s Secret) ([]Secret, error) {
 	var keys []Secret
-	for _, line := range strings.Fields(string(s)) {
+	for line := range strings.Lines(string(s)) {
+		if line = strings.TrimSpace(line); line == "" {
+			continue
+		}
 		key := []byte(line)
 		if coded, ok := strings.CutPrefix(line, "whsec_"); ok {
 			var err error

@@ -35,14 +35,24 @@ func GradeOfLoad(alarms int) LoadGrade {
 	return LoadTooMuch
 }
 
-// AlarmHours counts a station's alarms in the hours before now: the last is the hour that
-// ends now, the one before it the hour before, and so on.
-func (s StationState) AlarmHours(hours int, now time.Time) []int {
+// AlarmHours counts a station's alarms in so many whole hours before end, oldest first.
+func (s StationState) AlarmHours(hours int, end time.Time) []int {
 	out := make([]int, hours)
 	for _, at := range s.Alarms {
-		if ago := int(now.Sub(at) / time.Hour); !at.After(now) && ago < hours {
+		if ago := int(end.Sub(at) / time.Hour); at.Before(end) && ago < hours {
 			out[hours-1-ago]++
 		}
 	}
 	return out
+}
+
+// AlarmsSince counts the station's alarms after an instant.
+func (s StationState) AlarmsSince(t time.Time) int {
+	n := 0
+	for _, at := range s.Alarms {
+		if at.After(t) {
+			n++
+		}
+	}
+	return n
 }

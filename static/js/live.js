@@ -5,7 +5,8 @@
 //
 //   <body data-live="/live?topic=board" data-sign-in="/sign-in">
 //
-// data-sign-in is where to go when the session has ended (default /sign-in).
+// data-sign-in is where to go when the session has ended (default /sign-in); with
+// data-live-stay the page stays, since nothing that it is about is pushed.
 // The state of the link is told in the element with data-live-state; its words
 // come from the page, so that they stay in the catalogue:
 //
@@ -220,7 +221,7 @@ class Live {
     if (code === ENDED) {
       this.stopped = true;
       if (document.body.dataset.leaving) return; // on the way out already
-      location.assign(this.signIn);
+      if (this.signIn) location.assign(this.signIn);
       return;
     }
     if (code === NOT_ALLOWED) {
@@ -256,7 +257,8 @@ async function start() {
   const host = document.querySelector('[data-live]');
   if (!host?.dataset.live) return;
   const indicator = new Indicator(document.querySelector('[data-live-state]'));
-  const live = new Live(host.dataset.live, host.dataset.signIn || '/sign-in', indicator);
+  const signIn = 'liveStay' in host.dataset ? null : host.dataset.signIn || '/sign-in';
+  const live = new Live(host.dataset.live, signIn, indicator);
   try {
     await loadMorph();
   } catch (error) {

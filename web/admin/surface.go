@@ -25,6 +25,8 @@ type Deps struct {
 	About   About  // there is no page about the installation when nil
 	Staff   *Staff // people and devices; without it those pages are not there
 
+	Messages Messages // that leave the box
+
 	Store  Store
 	Signer Signer
 	Hasher Hasher
@@ -94,6 +96,7 @@ type Admin struct {
 	forget        func(person uuid.UUID)
 	qualification *qualification
 	staff         *Staff
+	messages      Messages
 }
 
 // New makes the surface.
@@ -107,7 +110,7 @@ func New(d Deps) *Admin {
 	if d.Forget == nil {
 		d.Forget = func(uuid.UUID) {}
 	}
-	return &Admin{log: d.Log, machine: d.Machine, about: d.About, store: d.Store, signer: d.Signer, hasher: d.Hasher, changed: d.Changed, forget: d.Forget,
+	return &Admin{log: d.Log, machine: d.Machine, about: d.About, messages: d.Messages, store: d.Store, signer: d.Signer, hasher: d.Hasher, changed: d.Changed, forget: d.Forget,
 		qualification: &qualification{run: d.Run, log: d.Log}, staff: d.Staff}
 }
 
@@ -133,6 +136,9 @@ func (a *Admin) Routes(r chi.Router) {
 		r.Get("/qualification.json", ui.Handle(a.log, a.download))
 		if a.about != nil {
 			r.Get("/about", ui.Handle(a.log, a.aboutPage))
+		}
+		if a.messages.Store != nil {
+			a.messageRoutes(r)
 		}
 	})
 }

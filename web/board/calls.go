@@ -9,7 +9,7 @@ import (
 type callView struct {
 	Marked bool   // a step has fired: it stands at the top
 	Quiet  bool   // kept quiet until a stated time: it stands at the end
-	Text   string // what was done, or what comes and when
+	Text   string // what was done, or what comes and when; empty: neither
 	Reason string // of the quiet, and who keeps it
 }
 

@@ -109,7 +109,10 @@ func newNeeds(f ui.Format, states []plant.StationState) needsView {
 	default:
 		v.Density = "many"
 	}
-	if n := len(v.List); n > 0 {
+	switch n := len(v.List); {
+	case n > 0 && v.List[0].Call.Marked:
+		v.Order = f.Words.T("board.needs-order-called", n)
+	case n > 0:
 		v.Order = f.Words.T("board.needs-order", n)
 	}
 	return v

@@ -26,6 +26,7 @@ func newHead(f ui.Format, p plant.Plant) headView {
 type shiftView struct {
 	Facts []factView
 	Next  string
+	Load  string // alarms of the last hour
 }
 
 type factView struct {
@@ -110,6 +111,7 @@ func newShift(f ui.Format, p plant.Plant, states []plant.StationState) shiftView
 	add(w.T("reach.board-contained"), n.kept, false)
 	add(w.T("board.fact.stopped"), n.stopped, false)
 	add(w.T("board.fact.learning"), n.learning, false)
+	v.Load = w.T("board.load.last-hour", alarmsLately(states, f.Now))
 	if !n.next.IsZero() {
 		v.Next = w.T("board.next-round", f.Clock(n.next), n.nextAt)
 	}

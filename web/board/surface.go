@@ -36,6 +36,7 @@ func New(d Deps) *Board { return &Board{store: d.Store, log: d.Log} }
 // Routes adds the addresses under /board.
 func (b *Board) Routes(r chi.Router) {
 	r.Get("/", ui.Handle(b.log, b.show))
+	r.Get("/alarms", ui.Handle(b.log, b.alarms))
 	r.Get("/at/{station}/{characteristic}", ui.Handle(b.log, b.toStation))
 	r.Get("/at/{station}/{characteristic}/{matter}", ui.Handle(b.log, b.toStation))
 	r.Get("/chart/{station}/{characteristic}", ui.Handle(b.log, b.toChart))

@@ -62,6 +62,7 @@ var surfaceActions = map[Surface]plant.Action{
 	Board:   plant.SeeBoard,
 	Desk:    plant.SeeDesk,
 	Admin:   plant.ArrangePlant, // people and the installation ask for plant.Manage
+	Calls:   plant.AnswerCalls,
 }
 
 // ActionFor is what somebody must be allowed to do to open a surface.

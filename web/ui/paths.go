@@ -13,6 +13,7 @@ const (
 	StillHereAddress = "/still-here" // tells that somebody is at work on a page that sends nothing else
 	ThemeAddress     = "/theme"
 	LanguageAddress  = "/language"
+	CallsAddress     = "/calls" // what nobody has taken, and who was told
 )
 
 // maxPath is the longest path that is gone back to, in bytes.

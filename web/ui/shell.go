@@ -6,6 +6,7 @@ import (
 
 	"github.com/a-h/templ"
 
+	"holdfast/internal/plant"
 	"holdfast/static"
 )
 
@@ -19,6 +20,7 @@ const (
 	Desk    Surface = "desk"
 	Admin   Surface = "admin"
 	Door    Surface = "door"
+	Calls   Surface = "calls"
 )
 
 // Shell is the page around a surface's content. ShellFor fills it; a handler sets
@@ -69,10 +71,11 @@ var sheets = map[Surface][]string{
 	Desk:    {"css/chart.css", "css/desk.css", "css/reach.css"},
 	Admin:   {"css/admin.css", "css/setup.css"},
 	Door:    {"css/door.css"},
+	Calls:   {"css/callpages.css"},
 }
 
 func (s Shell) styles() []string {
-	all := []string{"vendor/modern-normalize/modern-normalize.css", "css/tokens.css", "css/base.css", "css/shell.css"}
+	all := []string{"vendor/modern-normalize/modern-normalize.css", "css/tokens.css", "css/base.css", "css/shell.css", "css/calls.css"}
 	if s.locks() {
 		all = append(all, "css/lock.css")
 	}
@@ -81,7 +84,7 @@ func (s Shell) styles() []string {
 
 func (s Shell) scripts() []string {
 	var all []string
-	if len(s.Topics) > 0 {
+	if len(s.topics()) > 0 {
 		all = append(all, "js/live.js")
 	}
 	if s.locks() {
@@ -113,11 +116,27 @@ func urls(lists ...[]string) []string {
 // session has ended.
 func (s Shell) bodyAttributes() templ.Attributes {
 	a := templ.Attributes{"class": string(s.Surface)}
-	if len(s.Topics) > 0 {
-		a["data-live"] = "/live?" + url.Values{"topic": topicsIn(s.Words, s.Topics)}.Encode()
-		a["data-sign-in"] = SignInPath(s.Path)
+	if topics := s.topics(); len(topics) > 0 {
+		a["data-live"] = "/live?" + url.Values{"topic": topicsIn(s.Words, topics)}.Encode()
+		if len(s.Topics) > 0 {
+			a["data-sign-in"] = SignInPath(s.Path)
+		} else {
+			a["data-live-stay"] = true // what is being typed here is not thrown away
+		}
 	}
 	return a
+}
+
+// called reports whether the page is one of somebody who is called about what nobody
+// takes.
+func (s Shell) called() bool { return s.SignedIn && s.Person.May(plant.AnswerCalls) && !s.Bare }
+
+// topics are those of the page and the calls.
+func (s Shell) topics() []string {
+	if !s.called() {
+		return s.Topics
+	}
+	return append(s.Topics[:len(s.Topics):len(s.Topics)], TopicCalls)
 }
 
 // zone is the name of the plant's time zone for scripts.

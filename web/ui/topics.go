@@ -11,7 +11,10 @@ import (
 
 // Topics of the live hub. A page names what it shows, the hub's renderer renders by
 // these names, and /live asks TopicAction who may watch.
-const TopicBoard = "board"
+const (
+	TopicBoard = "board"
+	TopicCalls = "calls" // on every page of who is called about what nobody takes
+)
 
 const (
 	stationTopics = "station/"
@@ -81,7 +84,7 @@ func TopicLanguage(topic string) (string, *words.Printer, bool) {
 
 func surfaceOfTopic(base string) Surface {
 	switch {
-	case strings.HasPrefix(base, stationTopics):
+	case strings.HasPrefix(base, stationTopics), base == TopicCalls: // which speaks as the page that it stands on
 		return Station
 	case strings.HasPrefix(base, chartTopics):
 		return Desk
@@ -96,8 +99,11 @@ func TopicAction(topic string) (plant.Action, bool) {
 	if !ok {
 		return 0, false
 	}
-	if topic == TopicBoard {
+	switch topic {
+	case TopicBoard:
 		return plant.SeeBoard, true
+	case TopicCalls:
+		return plant.AnswerCalls, true
 	}
 	if _, ok := StationOfTopic(topic); ok {
 		return plant.TakeRounds, true
