@@ -138,7 +138,7 @@ func (p *program) join(ctx context.Context) error {
 		Log: p.Log, Now: p.Clock, Plant: func() plant.Plant { return *p.plant.Load() },
 		Sessions: p.sessions, Checker: door, Hub: p.hub,
 		Station: station.New(station.Deps{Store: p.store, Signer: door, Log: p.Log}),
-		Board:   board.New(board.Deps{Store: p.store, Log: p.Log}),
+		Board:   board.New(board.Deps{Store: p.store, Handovers: p.store, Log: p.Log}),
 		Desk:    desk.New(desk.Deps{Store: p.store, Signer: door, Log: p.Log}),
 		Admin:   p.admin,
 		Tablet:  p.tablet(door),
@@ -223,6 +223,7 @@ func (p *program) Run(ctx context.Context) error {
 	served := make(chan error, 1)
 	p.running.Go(func() { served <- p.listen() })
 	p.running.Go(func() { p.Transport.keep(background, p.Log) })
+	p.running.Go(func() { p.keepRoots(background) })
 	if p.Metrics.listener != nil {
 		p.running.Go(func() { p.Metrics.serve(background, p.metrics.Handler(p.Metrics.token), p.Log) })
 	}
@@ -245,6 +246,25 @@ func (p *program) Run(ctx context.Context) error {
 		return fmt.Errorf("stop: %w", err)
 	}
 	return nil
+}
+
+// rootEvery is how often it is looked whether the day of the plant has its root yet.
+const rootEvery = 5 * time.Minute
+
+// keepRoots makes the daily root of the ledger, which the handover prints.
+func (p *program) keepRoots(ctx context.Context) {
+	tick := time.NewTicker(rootEvery)
+	defer tick.Stop()
+	for {
+		if err := p.store.KeepRoot(ctx); err != nil && ctx.Err() == nil {
+			p.Log.Error("keeping the root of the day", "error", err)
+		}
+		select {
+		case <-ctx.Done():
+			return
+		case <-tick.C:
+		}
+	}
 }
 
 func (p *program) listen() error {

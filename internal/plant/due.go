@@ -210,16 +210,22 @@ func (p SamplingPlan) asksFor(o Occasion) bool {
 	return false
 }
 
+// whole is one whole interval of what asked for the sample: the set grace, or an hour,
+// where it was not time.
+func (p SamplingPlan) whole(o Occasion) time.Duration {
+	if o == ByTime && p.EveryMinutes > 0 {
+		return time.Duration(p.EveryMinutes) * time.Minute
+	}
+	if p.GraceMinutes > 0 {
+		return time.Duration(p.GraceMinutes) * time.Minute
+	}
+	return time.Hour
+}
+
 // lateness grades a due time that has passed. The first tenth of an interval, at
 // least one and at most ten minutes, is not called late yet.
 func (p SamplingPlan) lateness(d Due, now time.Time) DueState {
-	whole := time.Duration(p.EveryMinutes) * time.Minute
-	if d.Occasion != ByTime || whole == 0 {
-		whole = time.Duration(p.GraceMinutes) * time.Minute
-		if whole == 0 {
-			whole = time.Hour
-		}
-	}
+	whole := p.whole(d.Occasion)
 	grace := min(max(whole/10, time.Minute), 10*time.Minute)
 	switch by := now.Sub(d.At); {
 	case by > whole:

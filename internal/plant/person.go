@@ -78,6 +78,7 @@ const (
 	SeeDesk                         // charts, revisions and records, read only
 	Manage                          // people, devices, the installation
 	AnswerCalls                     // be called about what nobody takes; quiet a known matter
+	HandOver                        // write and clear notes for the next shift, confirm having read a handover
 	DecideProduct                   // state what became of product that was kept aside
 
 	// ArrangePlant is for what the plant has: lines, stations, machines, parts, shifts, its
@@ -96,6 +97,7 @@ var mayDo = map[Action]Roles{
 	AnswerCalls:   {Supervisor},
 	DecideProduct: {Supervisor, Engineer},
 	ArrangePlant:  {Engineer, Administrator},
+	HandOver:      {Operator, Supervisor},
 }
 
 // May reports whether this person may do a. Somebody who is not active may do

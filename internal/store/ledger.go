@@ -46,7 +46,11 @@ func (s *Store) appendPlantChain(ctx context.Context, tx pgx.Tx, bodies ...ledge
 
 // Heads returns where every chain stands, as their rows say.
 func (s *Store) Heads(ctx context.Context) (map[uuid.UUID]ledger.Head, error) {
-	rows, err := s.pool.Query(ctx, `select characteristic_id, ledger_seq, ledger_hash from characteristic_state
+	return headsOf(ctx, s.pool)
+}
+
+func headsOf(ctx context.Context, q querier) (map[uuid.UUID]ledger.Head, error) {
+	rows, err := q.Query(ctx, `select characteristic_id, ledger_seq, ledger_hash from characteristic_state
 		union all select chain, seq, hash from chain_head`)
 	if err != nil {
 		return nil, fmt.Errorf("read ledger heads: %w", err)

@@ -115,7 +115,7 @@ func (s *Store) CheckRecord(ctx context.Context) (out []Difference, err error) {
 }
 
 func checkRecord(ctx context.Context, q querier) (out []Difference, err error) {
-	for _, sql := range slices.Concat(sealed, sealedSettings, sealedReaction, sealedEscalation, sealedProduct, sealedPeople, sealedOwner, sealedThings) {
+	for _, sql := range slices.Concat(sealed, sealedSettings, sealedReaction, sealedEscalation, sealedProduct, sealedPeople, sealedOwner, sealedThings, sealedHandover) {
 		rows, err := q.Query(ctx, sql+` limit 100`)
 		if err != nil {
 			return nil, fmt.Errorf("compare with the ledger: %w", err)

@@ -22,7 +22,8 @@
 // A pushed element replaces the one with its id, but what a person is at work
 // with stays: typed text, chosen options, the focus, an open details or dialog,
 // and anything marked data-live-keep. After each replaced element it fires the
-// bubbling event "live:morphed".
+// bubbling event "live:morphed", and after each message that brought something
+// "live:state" at the document.
 
 // The one place that knows where the morphing library lies. It is a plain
 // script that defines the global Idiomorph.
@@ -194,6 +195,7 @@ class Live {
         this.attempts = 0; // only a state proves that the other side works
         this.behind.delete(message.topic);
         if (this.behind.size === 0) this.indicator.current();
+        document.dispatchEvent(new CustomEvent('live:state'));
         break;
       case 'stale':
         this.behind.add(message.topic);

@@ -154,12 +154,14 @@ type pageView struct {
 	Lanes   []laneView
 	Needs   needsView
 	Shift   shiftView
-	Choice  choice
-	Chosen  string // in words
-	Menus   []menuView
-	Desk    bool // the viewer may open the desk
-	Empty   bool // no stations at all
-	Nothing bool // nothing belongs to the choice
+
+	Handover bool // its page can be gone to
+	Choice   choice
+	Chosen   string // in words
+	Menus    []menuView
+	Desk     bool // the viewer may open the desk
+	Empty    bool // no stations at all
+	Nothing  bool // nothing belongs to the choice
 }
 
 type laneView struct {

@@ -20,18 +20,20 @@ type Store interface {
 
 // Deps is what the surface works with.
 type Deps struct {
-	Store Store
-	Log   *slog.Logger
+	Store     Store
+	Handovers HandoverStore // there is no handover when nil
+	Log       *slog.Logger
 }
 
 // Board serves /board.
 type Board struct {
-	store Store
-	log   *slog.Logger
+	store     Store
+	handovers HandoverStore
+	log       *slog.Logger
 }
 
 // New makes the surface.
-func New(d Deps) *Board { return &Board{store: d.Store, log: d.Log} }
+func New(d Deps) *Board { return &Board{store: d.Store, handovers: d.Handovers, log: d.Log} }
 
 // Routes adds the addresses under /board.
 func (b *Board) Routes(r chi.Router) {
@@ -40,6 +42,9 @@ func (b *Board) Routes(r chi.Router) {
 	r.Get("/at/{station}/{characteristic}", ui.Handle(b.log, b.toStation))
 	r.Get("/at/{station}/{characteristic}/{matter}", ui.Handle(b.log, b.toStation))
 	r.Get("/chart/{station}/{characteristic}", ui.Handle(b.log, b.toChart))
+	if b.handovers != nil {
+		b.handoverRoutes(r)
+	}
 }
 
 func (b *Board) show(w http.ResponseWriter, r *http.Request) error {
@@ -55,6 +60,7 @@ func (b *Board) show(w http.ResponseWriter, r *http.Request) error {
 	shell.Bar, shell.BarEnd = place(shell.Plant.Name, head), clock(head)
 	v := newPage(shell.Format, shell.Plant, states, readChoice(r.URL.Query(), states))
 	v.Desk = shell.Person.May(plant.SeeDesk)
+	v.Handover = b.handovers != nil && shell.SignedIn
 	return ui.Render(w, r, http.StatusOK, page(shell, v))
 }
 
