@@ -176,6 +176,10 @@ var routeTable = []routeRow{
 	{"GET /board/at/{station}/{characteristic}", seers, 303},
 	{"GET /board/at/{station}/{characteristic}/{matter}", seers, 303},
 	{"GET /board/chart/{station}/{characteristic}", seers, 303},
+	{"GET /board/handover", watchers, 200},
+	{"POST /board/handover/note", takers, 422},
+	{"POST /board/handover/note/{note}/clear", takers, 404}, // of no note
+	{"POST /board/handover/read", takers, 404},              // of no line
 
 	{"GET /calls/", called, 200},
 	{"GET /calls/quiet/{matter}", called, 200},
