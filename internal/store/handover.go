@@ -24,7 +24,7 @@ func (s *Store) ShiftSummaries(ctx context.Context, span plant.ShiftSpan, lines 
 	err := pgx.BeginTxFunc(ctx, s.pool, pgx.TxOptions{IsoLevel: pgx.RepeatableRead, AccessMode: pgx.ReadOnly}, func(tx pgx.Tx) error {
 		g := &shiftReading{s: s, tx: tx, span: span, until: span.To}
 		if now := s.now(); now.Before(span.To) {
-			g.until = now
+			g.until = now.Add(time.Microsecond) // what was recorded at this instant is in it
 		}
 		var err error
 		out, err = g.read(ctx, lines)

@@ -159,11 +159,11 @@ func TestNotesAreCarriedUntilCleared(t *testing.T) {
 	if s := summary(t, p, spanNow(t, p)); len(s.Notes) != 0 {
 		t.Errorf("a day later: %+v", s.Notes)
 	}
-	whole(t, p)
+	agrees(t, p)
 }
 
-// whole demands that tables and ledger agree.
-func whole(t *testing.T, p *storetest.Plant) {
+// agrees demands that tables and ledger agree.
+func agrees(t *testing.T, p *storetest.Plant) {
 	t.Helper()
 	differ, err := p.CheckRecord(context.Background())
 	if err != nil || len(differ) > 0 {
@@ -194,7 +194,7 @@ func TestHandoverIsConfirmedOnceAndWhenItIsOver(t *testing.T) {
 	if s := summary(t, p, span); len(s.Readers) != 2 {
 		t.Errorf("readers %+v", s.Readers)
 	}
-	whole(t, p)
+	agrees(t, p)
 }
 
 func TestOneRootADay(t *testing.T) {
@@ -225,7 +225,7 @@ func TestOneRootADay(t *testing.T) {
 	if err != nil || second == nil || second.Root == first.Root || second.Day == first.Day {
 		t.Errorf("%+v after %+v, %v", second, first, err)
 	}
-	whole(t, p)
+	agrees(t, p)
 
 	// A chain that is cut no longer contains the head that the root was made of.
 	if _, err := p.Pool().Exec(ctx, `delete from ledger where chain = $1 and seq = (select max(seq) from ledger where chain = $1)`, p.Diameter.ID); err != nil {

@@ -16,16 +16,17 @@ async function again() {
     soon();
     return;
   }
+  let page;
   try {
     const answer = await fetch(location.href, { cache: 'no-store', headers: { Accept: 'text/html' } });
     if (!answer.ok || answer.redirected) return;
-    const fresh = new DOMParser().parseFromString(await answer.text(), 'text/html').querySelector('[data-handover]');
-    if (fresh && !typing()) {
-      globalThis.Idiomorph.morph(host, fresh, { morphStyle: 'innerHTML', ignoreActiveValue: true, restoreFocus: true });
-    }
+    page = await answer.text();
   } catch {
-    // no server just now; the next change asks again
+    return; // no server just now; the next change asks again
   }
+  const fresh = new DOMParser().parseFromString(page, 'text/html').querySelector('[data-handover]');
+  if (!fresh || typing()) return;
+  globalThis.Idiomorph.morph(host, fresh.outerHTML, { morphStyle: 'outerHTML', ignoreActiveValue: true, restoreFocus: true });
 }
 
 function soon() {

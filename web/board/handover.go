@@ -253,9 +253,11 @@ type lineView struct {
 	Corrections []handoverCorrection
 	Changes     []handoverChange
 	MoreChanges string
-	Notes       []handoverNote
-	Readers     []string
-	Over        bool
+
+	MoreContained string
+	Notes         []handoverNote
+	Readers       []string
+	Over          bool
 }
 
 type stationKeptView struct {
@@ -295,9 +297,12 @@ type causeView struct {
 func newHandover(s ui.Shell, c handoverChoice, all []plant.ShiftSummary, closed []plant.Matter, root *plant.DailyRoot) handoverView {
 	f, w := s.Format, s.Words
 	v := handoverView{
-		Heading: w.T("handover.heading", shiftName(s, c.Span), f.Day(c.Span.From)),
+		Heading: f.Day(c.Span.From),
 		When:    w.T("handover.when", f.Clock(c.Span.From), f.Time(c.Span.To)),
 		Running: !c.Span.Over(f.Now), Shift: c.Span.From.UTC().Format(time.RFC3339),
+	}
+	if len(s.Plant.Shifts) > 0 {
+		v.Heading = w.T("handover.heading", c.Span.Name, v.Heading)
 	}
 	v.Earlier = c.address(func(c *handoverChoice) { c.Span = s.Plant.SpanAt(c.Span.From.Add(-time.Second)) })
 	if !v.Running {
@@ -321,13 +326,6 @@ func newHandover(s ui.Shell, c handoverChoice, all []plant.ShiftSummary, closed 
 		v.Root = &rootView{Root: fmt.Sprintf("%x", root.Root), Made: w.T("handover.root-made", f.Clock(root.At), root.Chains)}
 	}
 	return v
-}
-
-func shiftName(s ui.Shell, span plant.ShiftSpan) string {
-	if len(s.Plant.Shifts) == 0 {
-		return s.Words.T("handover.day")
-	}
-	return span.Name
 }
 
 func handoverFigures(f ui.Format, list []plant.ShiftSummary) []handoverFigure {
@@ -374,8 +372,11 @@ func handoverFigures(f ui.Format, list []plant.ShiftSummary) []handoverFigure {
 	return out
 }
 
-// changesShown is how many changes of a line are listed; the rest is counted.
-const changesShown = 40
+// So much of a line is listed, the oldest first; the rest is counted.
+const (
+	changesShown   = 40
+	containedShown = 15
+)
 
 func newLineView(f ui.Format, sum plant.ShiftSummary) lineView {
 	w := f.Words
@@ -389,7 +390,11 @@ func newLineView(f ui.Format, sum plant.ShiftSummary) lineView {
 	for _, m := range sum.Ended() {
 		v.Ended = append(v.Ended, newHandoverMatter(f, m, sum.Until))
 	}
-	for _, c := range sum.Contained {
+	for i, c := range sum.Contained {
+		if i == containedShown {
+			v.MoreContained = w.T("handover.more-contained", len(sum.Contained)-containedShown)
+			break
+		}
 		row := handoverContained{Address: chartAddress(c.Station.ID, c.Characteristic.ID), Station: c.Station.Name, Name: c.Characteristic.Name, Since: f.Clock(c.OpenedAt)}
 		if c.Matter != uuid.Nil && c.MatterClosed.IsZero() {
 			row.Address = matterAddress(c.Station.ID, c.Characteristic.ID, c.Matter)
