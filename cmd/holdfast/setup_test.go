@@ -42,7 +42,11 @@ func serveEmpty(t testing.TB) *running {
 		t.Fatal(err)
 	}
 	p := plant.Person{ID: uuid.Must(uuid.NewV7()), Login: "administrator1", Name: "Administrator 1", Roles: plant.Roles{plant.Administrator}, Active: true}
-	if err := addPerson(ctx, st, hasher, p, secret); err != nil {
+	hash, err := hasher.Hash(ctx, secret)
+	if err == nil {
+		err = st.AddPerson(ctx, p, hash, uuid.Nil)
+	}
+	if err != nil {
 		t.Fatal(err)
 	}
 	return serveOn(t, &storetest.Plant{Store: st, Clock: clock, URL: url}, clock.Now)
