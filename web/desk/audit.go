@@ -174,7 +174,7 @@ func spellWords(f ui.Format, s plant.Spell) string {
 // conclude says in words what the adjustments came to.
 func (v *auditView) conclude(f ui.Format, a plant.AdjustmentAudit) {
 	w := f.Words
-	ratio, low, high := f.Number(a.Ratio, 1), f.Number(a.Low, 1), f.Number(a.High, 1)
+	ratio, low, high := f.Number(a.Ratio, 2), f.Number(a.Low, 2), f.Number(a.High, 2)
 	v.Tone = "calm"
 	switch a.Conclusion {
 	case plant.NothingAdjusted:
