@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"math/rand/v2"
+	"slices"
 	"time"
 
 	"github.com/google/uuid"
@@ -16,12 +17,16 @@ import (
 // weekly check against the master finds it late.
 const gaugeWorn = "Gauge pin worn"
 
+// never is the day of a fault that shows otherwise, and wornFrom the one from which the
+// gauge is worn.
+const never, wornFrom = Days + 1, 51
+
 // checkEvery is how often a gauge is checked.
 const checkEvery = 7
 
 // heldBack is the place at which a visitor finds product that is still to be decided
 // about although its matter was closed days ago.
-const heldBack = "Turning 2"
+const heldBack = "Drilling 1"
 
 // unstated is the place at which nobody has stated yet what was put aside, and notChecked
 // the one whose gauge is overdue, when the history ends.
@@ -66,7 +71,7 @@ func (w *walker) checkGauges(ctx context.Context) error {
 		if m := t.setup.Target; m != nil {
 			c.Master, c.Reading = m, m
 		}
-		if !w.worn(t) {
+		if !w.wornOut(t) {
 			if err := w.store.CheckGauge(ctx, c); err != nil {
 				return err
 			}
@@ -95,10 +100,13 @@ func (w *walker) checkGauges(ctx context.Context) error {
 	return nil
 }
 
-// worn reports whether the gauge of a track is not good.
-func (w *walker) worn(t *track) bool {
-	for _, i := range t.acting(w.day()) {
-		if t.faults[i].cause == gaugeWorn {
+// wornOut reports whether the gauge of a track has worn out since its last check; from
+// then on that is what somebody finds.
+func (w *walker) wornOut(t *track) bool {
+	for i, f := range t.faults {
+		if f.cause == gaugeWorn && f.day == never && w.day() >= wornFrom {
+			t.faults = slices.Clone(t.faults)
+			t.faults[i].day = w.day()
 			return true
 		}
 	}
@@ -158,7 +166,7 @@ func (w *walker) stateOne(ctx context.Context, c plant.Containment, found plant.
 		return nil
 	}
 	left := kept - c.Disposed()
-	if w.place.name == heldBack && w.day() > 51 {
+	if w.place.name == heldBack && w.day() > 54 && kept < 3500 {
 		if c.Disposed() == 0 {
 			return say(plant.Released, kept/3, "Each measured on the second gauge", supervisor)
 		}

@@ -98,7 +98,7 @@ var works = []place{
 		{name: "Spoke-hole position", gauge: "Pin gauge P-02", mean: 0.062, sigma: 0.0125, wander: 0.04,
 			setup: plant.Setup{Unit: "mm", Decimals: 3, Upper: dec(100, 3), Worse: plant.High, Chart: limits.XBarS, Size: 8, Plan: every(60), ControlPlan: plant.ControlPlan{Operation: "60 drilling", Drawing: "KR-2010", Plan: "CP-60"}},
 			faults: []fault{{day: 50.2, widen: 1.9, cause: "Gauge anvil dirty", action: "Gauge cleaned and checked against the master"},
-				{day: 53, cause: gaugeWorn, action: "New pin, checked against the master"}}},
+				{day: never, cause: gaugeWorn, action: "New pin, checked against the master"}}},
 	}},
 	{line: "Shells", name: "Drilling 2", family: "drilling", machine: "Drill 6", rate: 60, parts: []string{"Shell 32"}, stopped: true, gauges: []measure{
 		{name: "Spoke-hole position", gauge: "Pin gauge P-03", mean: 0.041, sigma: 0.008, wander: 0.04,
