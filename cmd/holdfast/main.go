@@ -34,6 +34,8 @@ type cli struct {
 	User     userCmd     `cmd:"" help:"People who may sign in."`
 	Audit    auditCmd    `cmd:"" help:"Verify that the record is whole."`
 	Messages messagesCmd `cmd:"" help:"Messages that leave the box when nobody takes something."`
+	Gauge    gaugeCmd    `cmd:"" help:"Send what a gauge tells on a serial port or standard input."`
+	MQTT     mqttCmd     `cmd:"" name:"mqtt" help:"Send what is published at the plant's broker."`
 	Health   healthCmd   `cmd:"" help:"Ask a running server whether it is ready; for container and service checks."`
 	Calc     calcCmd     `cmd:"" help:"Answer a question of the statistics: JSON in, JSON out."`
 	Qualify  qualifyCmd  `cmd:"" help:"Recompute the reference values on this machine: the installation qualification."`

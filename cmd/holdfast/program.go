@@ -22,6 +22,7 @@ import (
 	"holdfast/internal/store"
 	"holdfast/web"
 	"holdfast/web/admin"
+	"holdfast/web/api"
 	"holdfast/web/board"
 	"holdfast/web/calls"
 	"holdfast/web/desk"
@@ -141,6 +142,7 @@ func (p *program) join(ctx context.Context) error {
 		Board:   board.New(board.Deps{Store: p.store, Handovers: p.store, Log: p.Log}),
 		Desk:    desk.New(desk.Deps{Store: p.store, Signer: door, Log: p.Log}),
 		Admin:   p.admin,
+		API:     api.New(api.Deps{Store: p.store, Devices: p.devices, Log: p.Log}),
 		Tablet:  p.tablet(door),
 		Calls:   calls.New(calls.Deps{Store: p.store, Log: p.Log}),
 		Ready:   p.store.Ready, Hosts: p.Hosts, Secure: p.Transport.https, Strict: p.Transport.strict, Addr: p.Transport.from, Authority: p.Transport.root,

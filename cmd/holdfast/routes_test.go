@@ -170,6 +170,13 @@ var routeTable = []routeRow{
 	{"POST /station/{station}/correct", takers, 404}, // of no subgroup
 	{"GET /station/{station}/machine/{machine}", takers, 200},
 	{"POST /station/{station}/machine/{machine}", takers, 422},
+	{"POST /station/{station}/not-taken", takers, 422},
+
+	{"GET /api/v1/", everybody, 200},
+	{"GET /api/v1/station", senders, 422}, // of no station
+	{"POST /api/v1/rounds", senders, 422},
+	{"POST /api/v1/machines/{machine}", senders, 422},
+	{"POST /api/v1/lines", senders, 422},
 
 	{"GET /board/", watchers, 200},
 	{"GET /board/alarms", watchers, 200},

@@ -32,6 +32,7 @@ type Round struct {
 	Skew     time.Duration // to be added to it, as measured when sending
 	Source   string        // "station", "api"
 	Person   uuid.UUID
+	Device   uuid.UUID // that sent it by itself; Nil: a page did
 	Entries  []Entry
 }
 

@@ -92,7 +92,8 @@ type StationState struct {
 
 	Missed         *OverdueRound  // open on record
 	EscalationPlan EscalationPlan // in force here
-	Alarms         []time.Time    // when matters were opened with an alarm in the last AlarmSpan, oldest first
+	Aside          Asides
+	Alarms         []time.Time // when matters were opened with an alarm in the last AlarmSpan, oldest first
 }
 
 // Version grows with every change at the station.

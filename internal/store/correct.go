@@ -55,7 +55,7 @@ func (s *Store) Correct(ctx context.Context, c plant.Correction) (plant.PartAnsw
 	if plant.IsKind(err, plant.Conflict) {
 		pe, _ := errors.AsType[*plant.Error](err)
 		body, _ := json.Marshal(c)
-		if asideErr := s.setAside(ctx, station, c.Subgroup, c.Person, pe.Message, c, sha256.Sum256(body)); asideErr != nil {
+		if asideErr := s.setAside(ctx, plant.Aside{Station: station, About: c.Subgroup, Person: c.Person, Why: pe}, c, sha256.Sum256(body)); asideErr != nil {
 			return part, asideErr
 		}
 	}

@@ -229,7 +229,7 @@ func (s *Store) LogChange(ctx context.Context, c plant.Change) error {
 		})
 	})
 	if pe, ok := errors.AsType[*plant.Error](err); ok && pe.Kind == plant.Conflict {
-		if err := s.setAside(ctx, c.Station, c.ID, c.Person, pe.Message, c, digest); err != nil {
+		if err := s.setAside(ctx, plant.Aside{Station: c.Station, About: c.ID, Person: c.Person, Why: pe}, c, digest); err != nil {
 			return err
 		}
 	}

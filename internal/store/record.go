@@ -97,7 +97,7 @@ func (s *Store) record(ctx context.Context, r plant.Round) (plant.Answer, error)
 		answer, err = s.storedAnswer(ctx, r, rec.digest)
 	}
 	if pe, ok := errors.AsType[*plant.Error](err); ok && (pe.Kind == plant.Conflict || pe.Field == "taken_at") {
-		if err := s.setAside(ctx, r.Station, r.ID, r.Person, pe.Message, r, rec.digest); err != nil {
+		if err := s.setAside(ctx, plant.Aside{Station: r.Station, About: r.ID, Person: r.Person, Device: r.Device, Why: pe}, r, rec.digest); err != nil {
 			return answer, err
 		}
 	}
@@ -276,10 +276,10 @@ func (rec *recording) commit(ctx context.Context) error {
 		return fmt.Errorf("encode answer: %w", err)
 	}
 	r := rec.round
-	rec.batch.Queue(`insert into round (id, plant_id, station_id, due_at, occasion, taken_at, taken_raw, skew_ms, recorded_at, person_id, source, digest, answer)
-		values ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $12, $13)`,
+	rec.batch.Queue(`insert into round (id, plant_id, station_id, due_at, occasion, taken_at, taken_raw, skew_ms, recorded_at, person_id, source, digest, answer, device_id)
+		values ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $12, $13, $14)`,
 		r.ID, rec.s.plant(), r.Station, timeOrNull(r.DueAt), string(r.Occasion), r.TakenAt(), r.TakenRaw, r.Skew.Milliseconds(),
-		rec.now, orNull(r.Person), r.Source, rec.digest[:], answer)
+		rec.now, orNull(r.Person), r.Source, rec.digest[:], answer, orNull(r.Device))
 	rec.batch.Queue("commit")
 	if err := rec.conn.SendBatch(ctx, rec.batch).Close(); err != nil {
 		return fmt.Errorf("write round: %w", err)
@@ -322,7 +322,7 @@ func (rec *recording) ledgerBody(e plant.Entry, a roundAround, setup plant.Setup
 	body := ledger.Subgroup{
 		Subgroup: row.id, Version: row.version, Round: r.ID, Station: r.Station, SetupVersion: setup.Version,
 		TakenAt: ledger.Time(row.taken), TakenRaw: ledger.Time(r.TakenRaw), SkewMS: r.Skew.Milliseconds(), RecordedAt: ledger.Time(rec.now),
-		Machine: a.machine, Part: ledger.ID(a.part), Lot: a.lot, Gauge: ledger.ID(setup.GaugeID), Source: r.Source, Person: ledger.ID(r.Person),
+		Machine: a.machine, Part: ledger.ID(a.part), Lot: a.lot, Gauge: ledger.ID(setup.GaugeID), Source: r.Source, Device: ledger.ID(r.Device), Person: ledger.ID(r.Person),
 		Decimals: setup.Decimals, Readings: e.Readings, KeyedBy: e.KeyedBy, Streams: e.Streams, ShortReason: e.ShortReason,
 		Answer: string(part.Verdict),
 	}
@@ -363,22 +363,4 @@ func (s *Store) Answer(ctx context.Context, round uuid.UUID) (plant.Answer, erro
 		return answer, fmt.Errorf("read answer: %w", err)
 	}
 	return answer, nil
-}
-
-// setAside keeps what could not be taken as it came. The same thing set aside twice is
-// kept once.
-func (s *Store) setAside(ctx context.Context, station, about, person uuid.UUID, why string, what any, digest [32]byte) error {
-	body, err := json.Marshal(what)
-	if err != nil {
-		return fmt.Errorf("encode what is set aside: %w", err)
-	}
-	_, err = s.pool.Exec(ctx, `insert into set_aside (id, plant_id, station_id, about, why, body, digest, came_at, person_id)
-		select $1, $2, st.id, $4, $5, $6, $7, $8, p.id
-		from (values (1)) one left join station st on st.id = $3 left join person p on p.id = $9
-		on conflict on constraint set_aside_once do nothing`,
-		newID(), s.plant(), station, about, why, body, digest[:], s.now(), person)
-	if err != nil {
-		return fmt.Errorf("set aside: %w", err)
-	}
-	return nil
 }

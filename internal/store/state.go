@@ -85,7 +85,7 @@ func (g *gathering) gather(ctx context.Context, tx pgx.Tx, points int, ids []uui
 		stationIDs[i] = st.ID
 	}
 	for _, read := range []func(context.Context, pgx.Tx, []uuid.UUID) error{
-		g.readMachines, g.readCharacteristics, g.readMatters, g.readEscalation, g.readLogs,
+		g.readMachines, g.readCharacteristics, g.readMatters, g.readEscalation, g.readLogs, g.readAsides,
 	} {
 		if err := read(ctx, tx, stationIDs); err != nil {
 			return nil, err

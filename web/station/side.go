@@ -31,6 +31,7 @@ type sideView struct {
 	KeptMore  int
 	Gauges    string // label of the way to the gauges; "" when none is named
 	GaugesDue bool
+	NotTaken  notTakenView
 	Machines  []machineView
 	Owned     ownedView
 }
@@ -95,7 +96,7 @@ func byDue(cs []plant.CharacteristicState) []plant.CharacteristicState {
 }
 
 func newSide(f ui.Format, st plant.StationState) sideView {
-	v := sideView{ID: sideID(st.ID), Station: st.ID, Owned: newOwned(f, st)}
+	v := sideView{ID: sideID(st.ID), Station: st.ID, Owned: newOwned(f, st), NotTaken: newNotTaken(f, st)}
 	for _, c := range byDue(st.Characteristics) {
 		switch {
 		case isDue(c):

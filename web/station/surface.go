@@ -40,6 +40,7 @@ type Store interface {
 	SetMachine(ctx context.Context, m plant.MachineState) error
 	Causes(ctx context.Context, family string) ([]plant.Cause, error)
 	Parts(ctx context.Context) ([]plant.Part, error)
+	ClearAsides(ctx context.Context, station uuid.UUID, until time.Time, person uuid.UUID) error
 	Knobs(ctx context.Context, machine uuid.UUID) ([]plant.Knob, error)
 	Present(ctx context.Context, device uuid.UUID, since time.Time) ([]uuid.UUID, error)
 }
@@ -104,6 +105,7 @@ func (s *Surface) Routes(r chi.Router) {
 	post("/{station}/correct", s.correct)
 	get("/{station}/machine/{machine}", s.showMachine)
 	post("/{station}/machine/{machine}", s.setMachine)
+	post("/{station}/not-taken", s.clearNotTaken)
 }
 
 // notFound is what an address gets that leads to nothing here.

@@ -67,6 +67,7 @@ type Subgroup struct {
 	Lot          string      `json:"lot,omitempty"`
 	Gauge        *uuid.UUID  `json:"gauge,omitempty"`
 	Source       string      `json:"source"`
+	Device       *uuid.UUID  `json:"device,omitempty"`
 	Person       *uuid.UUID  `json:"person,omitempty"`
 	Decimals     int         `json:"decimals"`
 	Readings     []int64     `json:"readings"`
