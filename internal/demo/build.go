@@ -48,6 +48,9 @@ func Build(ctx context.Context, st *store.Store, hash Hash, hashPIN HashPIN, now
 	if err := b.escalate(ctx); err != nil {
 		return fmt.Errorf("find somebody in the demo: %w", err)
 	}
+	if err := b.outside(ctx); err != nil {
+		return fmt.Errorf("tell what came from outside: %w", err)
+	}
 	return nil
 }
 
