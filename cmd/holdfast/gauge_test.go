@@ -1,0 +1,126 @@
+package main
+
+import (
+	"context"
+	"fmt"
+	"log/slog"
+	"os"
+	"path/filepath"
+	"strings"
+	"testing"
+	"time"
+
+	"golang.org/x/sync/errgroup"
+	"golang.org/x/sys/unix"
+
+	"holdfast/internal/plant"
+	"holdfast/internal/relay"
+)
+
+// pseudoTerminal is a serial port with the gauge's end of the cable.
+func pseudoTerminal(t *testing.T) (gauge *os.File, port string) {
+	t.Helper()
+	gauge, err := os.OpenFile("/dev/ptmx", os.O_RDWR|unix.O_NOCTTY, 0)
+	if err != nil {
+		t.Fatal(err)
+	}
+	t.Cleanup(func() { _ = gauge.Close() })
+	fd := int(gauge.Fd())
+	if err := unix.IoctlSetPointerInt(fd, unix.TIOCSPTLCK, 0); err != nil {
+		t.Fatal(err)
+	}
+	n, err := unix.IoctlGetInt(fd, unix.TIOCGPTN)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return gauge, fmt.Sprintf("/dev/pts/%d", n)
+}
+
+func TestAGaugeOnASerialPort(t *testing.T) {
+	t.Parallel()
+	r := serve(t)
+	ctx := context.Background()
+	_, token := r.enrol(t, plant.Device{Kind: plant.Sender, Name: "Bore gauge", Station: r.Station.ID})
+	gauge, port := pseudoTerminal(t)
+	folder := t.TempDir()
+	c := gaugeCmd{Port: port, Baud: 9600, Characteristic: r.Diameter.Name, Unit: "mm", Size: 5, Suffix: "<", Within: time.Hour}
+	c.Server, c.TokenFile, c.Spool = r.url, filepath.Join(folder, "token"), filepath.Join(folder, "spool")
+	if err := os.WriteFile(c.TokenFile, []byte(token+"\n"), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	running, stop := context.WithCancel(ctx)
+	var g errgroup.Group
+	g.Go(func() error { return c.Run(running, slog.New(slog.DiscardHandler)) })
+	defer func() {
+		stop()
+		if err := g.Wait(); err != nil {
+			t.Error(err)
+		}
+	}()
+	// Until the port is open, the terminal would eat what is written.
+	for end := time.Now().Add(20 * time.Second); ; time.Sleep(20 * time.Millisecond) {
+		if raw, err := unix.IoctlGetTermios(int(gauge.Fd()), unix.TCGETS); err == nil && raw.Lflag&unix.ICANON == 0 {
+			break
+		} else if time.Now().After(end) {
+			t.Fatalf("the port was not opened: %v", err)
+		}
+	}
+	for _, line := range []string{"14.991 mm<", "14,990<", "0.5902 in<", "14.990<", "14.990<", "14.992 mm<", "14.9"} { // the last breaks off
+		if _, err := gauge.WriteString(line + map[bool]string{true: "", false: "\r\n"}[line == "14.9"]); err != nil {
+			t.Fatal(err)
+		}
+	}
+	var readings []int64
+	for end := time.Now().Add(20 * time.Second); len(readings) == 0; time.Sleep(20 * time.Millisecond) {
+		_ = r.Pool().QueryRow(ctx, `select readings from subgroup where characteristic_id = $1`, r.Diameter.ID).Scan(&readings)
+		if time.Now().After(end) {
+			t.Fatal("no subgroup came")
+		}
+	}
+	if fmt.Sprint(readings) != "[14991 14990 14990 14990 14992]" {
+		t.Errorf("on record: %v", readings)
+	}
+	if _, body := r.visit(t, "operator1").get("/station/" + r.Station.ID.String()); !strings.Contains(body, "A reading came in another unit") || !strings.Contains(body, "0.5902 in") {
+		t.Error("the station does not show the line in another unit")
+	}
+}
+
+func TestTheFileOfTheBroker(t *testing.T) {
+	t.Parallel()
+	folder := t.TempDir()
+	log := slog.New(slog.DiscardHandler)
+	s, err := relay.OpenSpool(filepath.Join(folder, "spool"), log)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer s.Close()
+	password := filepath.Join(folder, "password")
+	if err := os.WriteFile(password, []byte("open sesame\n"), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	read := func(text string) (*relay.Broker, error) {
+		path := filepath.Join(folder, "broker.toml")
+		if err := os.WriteFile(path, []byte(text), 0o600); err != nil {
+			t.Fatal(err)
+		}
+		return readBroker(path, s, log)
+	}
+	const head = "broker = \"ssl://broker.plant:8883\"\nclient = \"holdfast-axles\"\n"
+	b, err := read(head + "user = \"holdfast\"\npassword_file = \"" + password + "\"\nrounds = \"axles/rounds\"\n" +
+		"[[readings]]\ntopic = \"axles/diameter\"\ncharacteristic = \"Axle seat diameter\"\nunit = \"mm\"\nsize = 5\n")
+	if err != nil {
+		t.Fatal(err)
+	}
+	if g := b.Readings["axles/diameter"]; g == nil || g.Size != 5 || g.Unit != "mm" || b.Password != "open sesame" || b.Rounds != "axles/rounds" || b.TLS == nil {
+		t.Errorf("read %+v", b)
+	}
+	for _, wrong := range []string{
+		"client = \"x\"\nrounds = \"r\"\n", head, head + "rounds = \"r\"\npassword = \"x\"\n",
+		head + "[[readings]]\ntopic = \"a/#\"\ncharacteristic = \"D\"\nunit = \"mm\"\nsize = 5\n",
+		head + "[[readings]]\ntopic = \"a\"\ncharacteristic = \"D\"\nsize = 5\n",
+	} {
+		if _, err := read(wrong); err == nil {
+			t.Errorf("this was taken: %s", wrong)
+		}
+	}
+}
