@@ -63,23 +63,31 @@ func (s *Store) containments(ctx context.Context, q querier, upTo any, where str
 		return nil, fmt.Errorf("read containments: %w", err)
 	}
 	list, err := pgx.CollectRows(rows, scanContainment)
-	if err != nil || len(list) == 0 {
-		return nil, wrapped("read containments", err)
+	if err != nil {
+		return nil, fmt.Errorf("read containments: %w", err)
+	}
+	return list, s.addEntries(ctx, q, upTo, list)
+}
+
+// addEntries reads what was stated about containments, where there are any.
+func (s *Store) addEntries(ctx context.Context, q querier, upTo any, list []plant.Containment) error {
+	if len(list) == 0 {
+		return nil
 	}
 	ids, place := make([]uuid.UUID, len(list)), make(map[uuid.UUID]int, len(list))
 	for i, c := range list {
 		ids[i], place[c.ID] = c.ID, i
 	}
-	rows, err = q.Query(ctx, selectEntries+` where e.containment_id = any($1) and e.recorded_at <= $2 order by e.recorded_at, e.id`, ids, upTo)
+	rows, err := q.Query(ctx, selectEntries+` where e.containment_id = any($1) and e.recorded_at <= $2 order by e.recorded_at, e.id`, ids, upTo)
 	if err != nil {
-		return nil, fmt.Errorf("read what was kept aside: %w", err)
+		return fmt.Errorf("read what was kept aside: %w", err)
 	}
 	entries, err := pgx.CollectRows(rows, scanEntry)
 	for _, e := range entries {
 		c := &list[place[e.Containment]]
 		c.Entries = append(c.Entries, e)
 	}
-	return list, wrapped("read what was kept aside", err)
+	return wrapped("read what was kept aside", err)
 }
 
 // wrapped is err with what was being done, nil for nil.

@@ -403,23 +403,32 @@ func (g *gathering) product(ctx context.Context, tx pgx.Tx, states []plant.Stati
 			}
 		}
 	}
-	rows, err := tx.Query(ctx, selectGauge+` where g.id = any($1)`, gauges)
-	if err != nil {
-		return fmt.Errorf("read gauges: %w", err)
-	}
+	b := &pgx.Batch{}
+	b.Queue(selectGauge+` where g.id = any($1)`, gauges)
+	b.Queue(selectContainment+` where c.plant_id = $1 and c.station_id = any($2) and c.settled_at is null
+		order by c.opened_at, c.id limit $3`, g.s.plant(), stations, mostContained)
+	results := tx.SendBatch(ctx, b)
+	defer results.Close()
+	rows, _ := results.Query() // an error shows when the rows are read
 	list, err := pgx.CollectRows(rows, scanGauge)
 	if err != nil {
 		return fmt.Errorf("read gauges: %w", err)
+	}
+	rows, _ = results.Query()
+	contained, err := pgx.CollectRows(rows, scanContainment)
+	if err != nil {
+		return fmt.Errorf("read containments: %w", err)
+	}
+	if err := results.Close(); err != nil {
+		return fmt.Errorf("read what is in doubt: %w", err)
+	}
+	if err := g.s.addEntries(ctx, tx, "infinity", contained); err != nil {
+		return err
 	}
 	for i := range list {
 		for _, c := range byGauge[list[i].ID] {
 			c.Gauge = &list[i]
 		}
-	}
-	contained, err := g.s.containments(ctx, tx, "infinity", ` where c.plant_id = $1 and c.station_id = any($2) and c.settled_at is null
-		order by c.opened_at, c.id limit $3`, g.s.plant(), stations, mostContained)
-	if err != nil {
-		return err
 	}
 	for _, k := range contained {
 		if c := of[k.Characteristic.ID]; c != nil {
