@@ -20,7 +20,7 @@ var (
 	takers    = who{plant.Operator, plant.Supervisor}
 	seers     = who{plant.Operator, plant.Supervisor, plant.Engineer}
 	deskers   = who{plant.Supervisor, plant.Engineer}
-	managers  = who{plant.Administrator}
+	arrangers = who{plant.Engineer, plant.Administrator}
 	voiders   = who{plant.Supervisor}
 )
 
@@ -59,9 +59,9 @@ var table = []row{
 	{route: "GET /desk/", may: deskers, status: 200},
 	{route: "POST /desk/void", may: voiders, status: 303},
 	{route: "GET /desk/panic", may: deskers, status: 500},
-	{route: "GET /admin/", may: managers, status: 200},
-	{route: "POST /admin/void"}, // who manages voids nothing, and who voids does not manage
-	{route: "GET /admin/panic", may: managers, status: 500},
+	{route: "GET /admin/", may: arrangers, status: 200},
+	{route: "POST /admin/void"}, // who arranges voids nothing, and who voids does not arrange
+	{route: "GET /admin/panic", may: arrangers, status: 500},
 }
 
 // missing compares the routes that there are with the table's.

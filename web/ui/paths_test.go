@@ -77,7 +77,7 @@ func TestHomesAndSurfacesByRole(t *testing.T) {
 	}{
 		{person(plant.Operator), "/station", "station board"},
 		{person(plant.Supervisor), "/board", "station board desk"},
-		{person(plant.Engineer), "/desk", "board desk"},
+		{person(plant.Engineer), "/desk", "board desk admin"},
 		{person(plant.Administrator), "/admin", "admin"},
 		{person(plant.Operator, plant.Supervisor), "/board", "station board desk"},
 		{person(plant.Administrator, plant.Engineer), "/desk", "board desk admin"},
