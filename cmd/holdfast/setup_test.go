@@ -63,11 +63,6 @@ func (j *journey) fill(name, text string) {
 	j.entries++
 }
 
-func (j *journey) pick(name, value string) {
-	j.p.Value(`document.querySelector('[name="` + name + `"][value="` + value + `"]').click()`)
-	j.entries++
-}
-
 // on sends the step and waits for the next one.
 func (j *journey) on(selector, next string) {
 	j.p.WaitFor(find(selector))

@@ -28,12 +28,6 @@ func (c *clock) now() time.Time {
 	return c.at
 }
 
-func (c *clock) advance(d time.Duration) {
-	c.mu.Lock()
-	defer c.mu.Unlock()
-	c.at = c.at.Add(d)
-}
-
 // names resolves names as a test says.
 type names map[string][]string
 
@@ -47,11 +41,6 @@ func (n names) LookupNetIP(_ context.Context, _, host string) ([]netip.Addr, err
 		out = append(out, netip.MustParseAddr(a))
 	}
 	return out, nil
-}
-
-// loopback allows the local receivers of a test.
-func loopback(hosts ...string) Reach {
-	return Reach{Hosts: hosts, Networks: []netip.Prefix{netip.MustParsePrefix("127.0.0.0/8")}}
 }
 
 func message(target string) plant.Outgoing {

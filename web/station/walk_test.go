@@ -63,7 +63,7 @@ func TestAPlanIsWalkedStepByStep(t *testing.T) {
 	second.get(at).says("Step 1 of 3", "Answered: No. Then:", "Change the insert.")
 	second.get(s.at()).says("Step 1 of 3, Operator 1")
 	second.answer(at, "done", nil).is(http.StatusSeeOther)
-	page = b.get(at).says("Step 2 of 3", "What do you read? It should be 17 to 19", "No (Operator 1, ", "then Done (Supervisor 1, ", "not as it should be")
+	b.get(at).says("Step 2 of 3", "What do you read? It should be 17 to 19", "No (Operator 1, ", "then Done (Supervisor 1, ", "not as it should be")
 	for raw, says := range map[string]string{"": "Type the value that you read.", "much": "Type the value that you read."} {
 		b.answer(at, "value", url.Values{"value": {raw}}).is(http.StatusUnprocessableEntity).says(says)
 	}
