@@ -71,6 +71,13 @@ func (r *receiver) serve(w http.ResponseWriter, req *http.Request) {
 	r.answer(w, req, n)
 }
 
+// times is how often it was asked.
+func (r *receiver) times() int {
+	r.mu.Lock()
+	defer r.mu.Unlock()
+	return r.asked
+}
+
 // webhookTo reads a configuration with the receiver as its only target.
 func webhookTo(t testing.TB, url string, now func() time.Time) Sender {
 	t.Helper()

@@ -92,13 +92,13 @@ func TestAReceiverThatComesBackGetsEverything(t *testing.T) {
 		t.Fatal(err)
 	}
 	w := worker(p, p.Store, map[string]Sender{"tickets": webhookTo(t, r.URL, p.Clock.Now)})
-	if err := w.Deliver(ctx, "tickets"); err != nil || r.asked != 0 {
-		t.Errorf("asked %d times while the target is left alone, %v", r.asked, err)
+	if err := w.Deliver(ctx, "tickets"); err != nil || r.times() != 0 {
+		t.Errorf("asked %d times while the target is left alone, %v", r.times(), err)
 	}
 	for n := 1; n <= 4; n++ {
 		p.Clock.Advance(longPause)
-		if err := w.Deliver(ctx, "tickets"); err != nil || r.asked != n {
-			t.Fatalf("asked %d times, want %d; %v", r.asked, n, err)
+		if err := w.Deliver(ctx, "tickets"); err != nil || r.times() != n {
+			t.Fatalf("asked %d times, want %d; %v", r.times(), n, err)
 		}
 	}
 	if o := outboxOf(t, p); o.Waiting != 0 || o.GivenUp != 0 {
@@ -149,15 +149,15 @@ func TestWhatIsNeverTakenIsGivenUpAndSentAgain(t *testing.T) {
 		t.Errorf("%+v", u)
 	}
 	back.Store(true)
-	asked := r.asked
+	asked := r.times()
 	if err := p.SendAgain(ctx, byTarget["tickets"].ID, p.Administrator.ID); err != nil {
 		t.Fatal(err)
 	}
 	if err := p.SendAgain(ctx, byTarget["tickets"].ID, p.Administrator.ID); !plant.IsKind(err, plant.NotFound) {
 		t.Errorf("sent again twice: %v", err)
 	}
-	if err := w.Deliver(ctx, "tickets"); err != nil || r.asked != asked+1 {
-		t.Errorf("asked %d times more, %v", r.asked-asked, err)
+	if err := w.Deliver(ctx, "tickets"); err != nil || r.times() != asked+1 {
+		t.Errorf("asked %d times more, %v", r.times()-asked, err)
 	}
 	if o := outboxOf(t, p); o.Waiting != 0 || o.GivenUp != 1 {
 		t.Errorf("%+v", o)
@@ -184,8 +184,8 @@ func TestARefusalForGoodIsGivenUpSoon(t *testing.T) {
 		}
 		p.Clock.Advance(longPause)
 	}
-	if o := outboxOf(t, p); r.asked != lastingMost || o.GivenUp != 1 || told != 1 {
-		t.Errorf("asked %d times, told %d times, %+v", r.asked, told, o)
+	if o := outboxOf(t, p); r.times() != lastingMost || o.GivenUp != 1 || told != 1 {
+		t.Errorf("asked %d times, told %d times, %+v", r.times(), told, o)
 	}
 }
 
@@ -220,14 +220,14 @@ func TestAServerThatDiesLosesItsClaim(t *testing.T) {
 			t.Fatal(err)
 		}
 	}
-	if r.asked != 0 {
+	if r.times() != 0 {
 		t.Error("another server sent what was being sent")
 	}
 	die()
 	wg.Wait()
 	p.Clock.Advance(lease)
-	if err := other.Deliver(context.Background(), "tickets"); err != nil || r.asked != 1 {
-		t.Errorf("asked %d times after the claim ran out, %v", r.asked, err)
+	if err := other.Deliver(context.Background(), "tickets"); err != nil || r.times() != 1 {
+		t.Errorf("asked %d times after the claim ran out, %v", r.times(), err)
 	}
 }
 
