@@ -134,7 +134,7 @@ func TestAnOpenSignalStandsOnTheChartWithItsReach(t *testing.T) {
 	s := newSite(t)
 	openMatter(t, s)
 	b := s.signIn(t, s.Engineer)
-	b.get(path(s.Diameter)).is(http.StatusOK).has("Beyond 3 sigma, high side", "Reach: since", "parts", `class="pennant open"`, "Nobody has taken it yet.", "Station", ">1</text>", "revision 1, frozen")
+	b.get(path(s.Diameter)).is(http.StatusOK).has("Beyond 3 sigma, high side", "Suspect since", "parts", `class="pennant open"`, "Nobody has taken it yet.", "Station", ">1</text>", "revision 1, frozen")
 	s.fill(t, s.Diameter, 1, 5, 15004, 1, 4, nil)
 	b.get(path(s.Diameter)).is(http.StatusOK).has("Hold", `class="ring-hold"`, "outside specification")
 
