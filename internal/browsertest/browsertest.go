@@ -140,10 +140,46 @@ func (p *Page) Keys(text string) {
 	p.Do(chromedp.KeyEvent(text))
 }
 
-// Click clicks what a CSS selector finds first, once it can be seen.
+// Click clicks what a CSS selector finds first, once it can be seen and has come to rest:
+// on a page that is still loading it would move away from under the pointer.
 func (p *Page) Click(selector string) {
 	p.t.Helper()
-	p.Do(chromedp.WaitVisible(chromedp.CSS(selector)), chromedp.Click(chromedp.CSS(selector)))
+	p.Do(chromedp.WaitVisible(chromedp.CSS(selector)))
+	p.rest(selector)
+	p.Do(chromedp.Click(chromedp.CSS(selector)))
+}
+
+// rest waits until the page is loaded, its fonts too, and an element stands where it
+// stood two frames ago.
+func (p *Page) rest(selector string) {
+	p.t.Helper()
+	name, err := json.Marshal(selector)
+	if err != nil {
+		p.t.Fatal(err)
+	}
+	still := `(async () => {
+		const at = () => JSON.stringify(document.querySelector(` + string(name) + `)?.getBoundingClientRect());
+		const frames = () => new Promise((done) => { requestAnimationFrame(() => requestAnimationFrame(done)); setTimeout(done, 250); });
+		if (document.readyState !== "complete") return false;
+		await document.fonts.ready;
+		const before = at();
+		await frames();
+		return before !== undefined && before === at();
+	})()`
+	ctx, cancel := context.WithTimeout(p.ctx, patience)
+	defer cancel()
+	for {
+		// A page that is being left has no answer: the next one is asked.
+		v, err := chromedp.Run(ctx, chromedp.Evaluate[bool](still, chromedp.EvalAwaitPromise))
+		if err == nil && v {
+			return
+		}
+		select {
+		case <-ctx.Done():
+			p.t.Fatalf("%s never came to rest at %s:\n%.1500s", selector, p.location(), p.text())
+		case <-time.After(20 * time.Millisecond):
+		}
+	}
 }
 
 // Fill replaces what stands in a field.
