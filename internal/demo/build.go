@@ -148,6 +148,9 @@ func (b *builder) place(ctx context.Context, st *store.Store, pl place, index in
 		return nil, err
 	}
 	m := plant.Machine{ID: id(), StationID: s.ID, Name: pl.machine, PartsPerHour: pl.rate}
+	for _, name := range pl.streams {
+		m.Streams = append(m.Streams, plant.Stream{ID: id(), Name: name})
+	}
 	if err := st.AddMachine(ctx, m, by); err != nil {
 		return nil, err
 	}

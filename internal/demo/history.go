@@ -199,6 +199,8 @@ func (w *walker) round(ctx context.Context) error {
 		if t.setup.Size > 2 && w.rng.IntN(400) == 0 {
 			e.Readings, e.ShortReason = t.last[:t.setup.Size-1], "part lost"
 		}
+		e.Streams = plant.NextStreams(w.machine.Streams, t.setup.Size, nil)
+		e.Streams = e.Streams[:min(len(e.Streams), len(e.Readings))]
 		r.Entries = append(r.Entries, e)
 	}
 	a, err := w.store.Record(ctx, r)

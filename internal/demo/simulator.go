@@ -154,7 +154,8 @@ func (s *Simulator) round(ctx context.Context, st plant.StationState) error {
 		}
 		s.mishap(t, c)
 		t.last = t.sample(s.days())
-		r.Entries = append(r.Entries, plant.Entry{Characteristic: c.ID, SetupVersion: c.Setup.Version, Readings: t.last})
+		r.Entries = append(r.Entries, plant.Entry{Characteristic: c.ID, SetupVersion: c.Setup.Version, Readings: t.last,
+			Streams: plant.NextStreams(c.Machine.InUse(), len(t.last), nil)})
 	}
 	if len(r.Entries) == 0 {
 		return nil

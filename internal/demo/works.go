@@ -14,6 +14,7 @@ type place struct {
 	family  string
 	machine string
 	rate    float64 // parts an hour
+	streams []string // parallel sources on the machine
 	parts   []string
 	gauges  []measure
 	stopped bool // stands still when the history ends
@@ -94,7 +95,7 @@ var works = []place{
 			faults: []fault{{day: 12.7, shift: -2.3, cause: "Insert chipped", action: "Insert changed"}, {day: 47.9, widen: 1.9, cause: "Chuck jaw dirty", action: "Jaws cleaned"},
 				{day: Days - 0.085, shift: -2.3, open: true, alone: true, cause: "Insert chipped", action: "Insert changed"}}},
 	}},
-	{line: "Shells", name: "Drilling 1", family: "drilling", machine: "Drill 5", rate: 60, parts: []string{"Shell 28"}, gauges: []measure{
+	{line: "Shells", name: "Drilling 1", family: "drilling", machine: "Drill 5", rate: 60, streams: []string{"Spindle 1", "Spindle 2", "Spindle 3", "Spindle 4"}, parts: []string{"Shell 28"}, gauges: []measure{
 		{name: "Spoke-hole position", gauge: "Pin gauge P-02", mean: 0.062, sigma: 0.0125, wander: 0.04,
 			setup: plant.Setup{Unit: "mm", Decimals: 3, Upper: dec(100, 3), Worse: plant.High, Chart: limits.XBarS, Size: 8, Plan: every(60), ControlPlan: plant.ControlPlan{Operation: "60 drilling", Drawing: "KR-2010", Plan: "CP-60"}},
 			faults: []fault{{day: 50.2, widen: 1.9, cause: "Gauge anvil dirty", action: "Gauge cleaned and checked against the master"},

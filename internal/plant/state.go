@@ -18,6 +18,7 @@ type Point struct {
 	Setup          int // version it was taken under
 	Stats          Statistics
 	Readings       []int64
+	Streams        []uuid.UUID // empty, or one a reading
 	Outside        int // readings outside specification
 	Part           uuid.UUID
 	Lot            string

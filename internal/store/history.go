@@ -70,7 +70,7 @@ func (s *Store) historyPoints(ctx context.Context, tx pgx.Tx, h *plant.History, 
 	}
 	h.Points, err = pgx.CollectRows(rows, func(r pgx.CollectableRow) (p plant.Point, err error) {
 		var part, person *uuid.UUID
-		err = r.Scan(&p.Characteristic, &p.TakenAt, &p.Subgroup, &p.Version, &p.Round, &p.Setup, &p.Stats.Decimals, &p.Readings,
+		err = r.Scan(&p.Characteristic, &p.TakenAt, &p.Subgroup, &p.Version, &p.Round, &p.Setup, &p.Stats.Decimals, &p.Readings, &p.Streams,
 			&p.Stats.Sum, &p.Stats.Range, &p.Stats.SD, &p.Outside, &part, &p.Lot, &p.RecordedAt, &person, &p.ShortReason, &p.Reason, &p.Voided, &p.PersonName)
 		p.Stats.N, p.Part, p.Person = len(p.Readings), orNil(part), orNil(person)
 		return p, err

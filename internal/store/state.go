@@ -235,7 +235,7 @@ func (g *gathering) readLogs(ctx context.Context, tx pgx.Tx, stations []uuid.UUI
 	return err
 }
 
-const pointColumns = `taken_at, id, version, round_id, setup_version, decimals, readings, reading_sum, reading_range, reading_sd,
+const pointColumns = `taken_at, id, version, round_id, setup_version, decimals, readings, streams, reading_sum, reading_range, reading_sd,
 	outside, part_id, lot, recorded_at, person_id, short_reason, reason, voided`
 
 func (g *gathering) readPoints(ctx context.Context, tx pgx.Tx, points int) error {
@@ -286,12 +286,12 @@ func (g *gathering) readPoints(ctx context.Context, tx pgx.Tx, points int) error
 func scanPoints(rows pgx.Rows, add func(plant.Point)) error {
 	var p plant.Point
 	var part, person *uuid.UUID
-	_, err := pgx.ForEachRow(rows, []any{&p.Characteristic, &p.TakenAt, &p.Subgroup, &p.Version, &p.Round, &p.Setup, &p.Stats.Decimals, &p.Readings,
+	_, err := pgx.ForEachRow(rows, []any{&p.Characteristic, &p.TakenAt, &p.Subgroup, &p.Version, &p.Round, &p.Setup, &p.Stats.Decimals, &p.Readings, &p.Streams,
 		&p.Stats.Sum, &p.Stats.Range, &p.Stats.SD, &p.Outside, &part, &p.Lot, &p.RecordedAt, &person, &p.ShortReason, &p.Reason, &p.Voided}, func() error {
 		v := p
 		v.Stats.N, v.Part, v.Person = len(p.Readings), orNil(part), orNil(person)
 		add(v)
-		p.Readings = nil
+		p.Readings, p.Streams = nil, nil
 		return nil
 	})
 	if err != nil {

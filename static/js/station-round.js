@@ -14,6 +14,8 @@
 //       [data-heading]            becomes data-heading-says of the current reading
 //       input[data-reading]       the readings in order
 //       input[data-keyed]         beside each: who keyed it, data-person of the form
+//       [data-from]               beside each: which stream of the machine it is from
+//       select[data-stream]       where that is changed, by the id of the reading
 //       [data-short]              why there are fewer, radio buttons
 //       [data-falls]              see falls.js
 //     [data-pad]                  the keys, and [data-main], which is "next" until
@@ -113,7 +115,7 @@ function start(form) {
     show(section);
     if (document.activeElement !== input) input.focus();
     if (input.value) input.select();
-    section.heading(input.dataset.headingSays);
+    section.heading(input.dataset.headingSays, section.from(input));
     mark();
   }
 
@@ -168,6 +170,10 @@ function start(form) {
   });
   form.addEventListener("change", (event) => {
     if (event.target.name === "entry") change(event.target.value);
+    else if (event.target.matches("[data-stream]")) {
+      sections.find((s) => s.root.contains(event.target)).names();
+      keep();
+    }
     else if (event.target.closest("[data-short]")) {
       mark();
       keep();
@@ -310,9 +316,27 @@ class Section {
     return n === this.inputs.length || (n > 0 && this.root.querySelector("[data-short] input:checked") !== null);
   }
 
-  heading(words) {
+  heading(words, from = "") {
     const h = this.root.querySelector("[data-heading]");
-    if (h.textContent !== words) h.textContent = words;
+    const says = from ? `${words} · ${from}` : words;
+    if (h.textContent !== says) h.textContent = says;
+  }
+
+  stream(input) {
+    return this.root.querySelector(`[data-stream="${input.id}"]`);
+  }
+
+  // from is the name of the stream that a part is to come from, "" where there are none.
+  from(input) {
+    return this.stream(input)?.selectedOptions[0]?.textContent ?? "";
+  }
+
+  // names says beside each reading which stream is chosen for it.
+  names() {
+    for (const input of this.inputs) {
+      const place = input.parentElement.querySelector("[data-from]");
+      if (place) place.textContent = this.from(input);
+    }
   }
 
   // judge says what is wrong with a reading, "" when nothing is.
@@ -351,6 +375,7 @@ class Section {
         value: i.value,
         keyed: i.parentElement.querySelector("[data-keyed]").value,
         first: this.firsts(i).map((f) => f.value),
+        stream: this.stream(i)?.value,
       })),
     };
   }
@@ -373,7 +398,10 @@ class Section {
       }
       input.value = r.value;
       keyedBy(input, r.keyed);
+      const stream = this.stream(input);
+      if (stream && [...stream.options].some((o) => o.value === r.stream)) stream.value = r.stream;
     });
+    this.names();
     const short = [...this.root.querySelectorAll("[data-short] input")].find((i) => i.value === part.short);
     if (short) {
       short.checked = true;

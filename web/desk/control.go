@@ -136,13 +136,13 @@ func (d *drawing) putPoints() {
 	values := dispersions(d.setup.Chart, d.points, d.h.Setups, d.begins)
 	d.c.Points = make([]chart.Point, len(d.points))
 	for i, p := range d.points {
-		d.c.Points[i] = chartPoint(d.f, d.setup, p, values[i], d.c.Dispersion.Decimals)
+		d.c.Points[i] = chartPoint(d.f, d.setup, d.h.State.Machine.Machine, p, values[i], d.c.Dispersion.Decimals)
 		d.c.Points[i].Restart = d.begins(i)
 	}
 }
 
 // chartPoint is one subgroup as charts and the line under them show it.
-func chartPoint(f ui.Format, s plant.Setup, p plant.Point, dispersion float64, decimals int) chart.Point {
+func chartPoint(f ui.Format, s plant.Setup, m plant.Machine, p plant.Point, dispersion float64, decimals int) chart.Point {
 	cp := chart.Point{At: p.TakenAt, Location: p.Stats.Mean(), Dispersion: dispersion, When: when(f, p.TakenAt),
 		LocationText: f.Mean(p.Stats.Mean(), s), DispersionText: f.WithUnit(f.Number(dispersion, decimals), s.Unit),
 		Person: p.PersonName, Outside: p.Outside > 0}
@@ -150,6 +150,11 @@ func chartPoint(f ui.Format, s plant.Setup, p plant.Point, dispersion float64, d
 		readings := make([]string, len(p.Readings))
 		for k, v := range p.Readings {
 			readings[k] = f.Units(v, p.Stats.Decimals)
+			if k < len(p.Streams) {
+				if from := m.StreamName(p.Streams[k]); from != "" {
+					readings[k] = f.Words.T("desk.chart.from-stream", from, readings[k])
+				}
+			}
 		}
 		cp.Readings = strings.Join(readings, "\u2002")
 	}

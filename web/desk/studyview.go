@@ -227,7 +227,7 @@ func (s *studied) picture() *chart.Control {
 	values := s.dispersions()
 	outs := 0
 	for i, p := range s.h.Points {
-		cp := chartPoint(f, setup, p, values[i], c.Dispersion.Decimals)
+		cp := chartPoint(f, setup, s.h.State.Machine.Machine, p, values[i], c.Dispersion.Decimals)
 		cp.When = w.T("desk.study.when", i+1, cp.When)
 		cp.Restart = i > 0 && !s.h.Course.At(s.h.Points[i-1].TakenAt).Same(s.h.Course.At(p.TakenAt))
 		if cause := s.state.cause(p.Subgroup); cause != "" {

@@ -108,6 +108,9 @@ func newCorrectPart(f ui.Format, c plant.CharacteristicState, p plant.Point, typ
 	for i := range size {
 		id := v.Subgroup + "-" + strconv.Itoa(i)
 		rv := readingView{ID: "correct-" + id, Label: w.T("station.part", i+1)}
+		if i < len(p.Streams) {
+			rv.From = c.Machine.StreamName(p.Streams[i])
+		}
 		switch {
 		case mine:
 			if i < len(typed.raw) {

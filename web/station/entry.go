@@ -46,6 +46,7 @@ type draftReading struct {
 	OK      bool
 	First   []string  // earlier typings of it
 	Keyed   uuid.UUID // who keyed it; Nil is whoever sends
+	Stream  uuid.UUID // of the machine that the part came from; Nil: none was named
 	Problem string
 }
 
@@ -53,8 +54,19 @@ func emptyEntries(cs []plant.CharacteristicState) []draftEntry {
 	out := make([]draftEntry, len(cs))
 	for i, c := range cs {
 		out[i] = draftEntry{Of: c, Setup: c.Setup.Version, Readings: make([]draftReading, c.Setup.Size)}
+		for j, stream := range plant.NextStreams(c.Machine.InUse(), c.Setup.Size, lastStreams(c)) {
+			out[i].Readings[j].Stream = stream
+		}
 	}
 	return out
+}
+
+// lastStreams are the streams of the newest subgroup.
+func lastStreams(c plant.CharacteristicState) []uuid.UUID {
+	if len(c.Points) == 0 {
+		return nil
+	}
+	return c.Points[len(c.Points)-1].Streams
 }
 
 // readDraft reads the posted form. What it cannot belong to is an error; what a
@@ -116,7 +128,7 @@ func readEntry(form url.Values, w *words.Printer, c plant.CharacteristicState, d
 	// An unreadable version is version 0, which no set-up has: the save is refused as
 	// having seen another set-up.
 	e.Setup = number(form.Get("setup-" + id))
-	typed, keyed := form["reading-"+id], form["keyed-"+id]
+	typed, keyed, streams := form["reading-"+id], form["keyed-"+id], form["stream-"+id]
 	for i, raw := range typed {
 		raw = plant.CleanText(raw)
 		if i >= c.Setup.Size {
@@ -129,6 +141,11 @@ func readEntry(form url.Values, w *words.Printer, c plant.CharacteristicState, d
 		r.Raw = shorten(raw)
 		if i < len(keyed) && r.Raw != "" {
 			r.Keyed, _ = uuid.Parse(keyed[i]) // what cannot be read is nobody's: whoever sends answers for it
+		}
+		if i < len(streams) {
+			if r.Stream, _ = uuid.Parse(streams[i]); r.Stream == uuid.Nil && r.Raw != "" {
+				e.Problem = w.T("station.no-stream", i+1)
+			}
 		}
 		for _, first := range form["first-"+id+"-"+itoa(i)] {
 			if first = shorten(plant.CleanText(first)); first != "" && len(r.First) < maxRetyped {
@@ -220,7 +237,7 @@ func (e *draftEntry) check(w *words.Printer, deviation bool) (bad bool) {
 		return true
 	}
 	switch {
-	case wrong > 0:
+	case wrong > 0 || e.Problem != "":
 		return true
 	case e.Extra > 0:
 		e.Problem = w.T("station.too-many", n+e.Extra, s.Size)
@@ -247,13 +264,24 @@ func (d draft) round(station, person uuid.UUID, taken time.Time, skew time.Durat
 			}
 			out.Readings = append(out.Readings, reading.Units)
 		}
-		out.KeyedBy = e.keyedBy(person)
+		out.KeyedBy, out.Streams = e.keyedBy(person), e.streams()
 		if len(out.Readings) < e.Of.Setup.Size {
 			out.ShortReason = e.Short
 		}
 		r.Entries = append(r.Entries, out)
 	}
 	return r
+}
+
+// streams are the streams of the readings; empty where the form named none.
+func (e draftEntry) streams() []uuid.UUID {
+	var out []uuid.UUID
+	for _, r := range e.Readings {
+		if r.OK && r.Stream != uuid.Nil {
+			out = append(out, r.Stream)
+		}
+	}
+	return out
 }
 
 // saveRound is POST /station/{station}/round. A round that is right needs to know only

@@ -99,6 +99,7 @@ type askView struct {
 	Short     string // chosen reason
 	ShortOpen bool
 	ShortSays string // problem
+	Streams   []streamView
 	Falls     fallsView
 }
 
@@ -111,7 +112,12 @@ type readingView struct {
 	Problem string
 	First   []string // earlier typings
 	Keyed   string   // id of who keyed it, "" when nothing is there
+	Stream  string   // id of the stream that the part is to come from
+	From    string   // its name, "" where there are none
 }
+
+// streamView is one stream of the machine, to choose.
+type streamView struct{ ID, Name string }
 
 // fallsView is where the round falls while it is typed.
 type fallsView struct {
@@ -172,6 +178,9 @@ func newAsk(f ui.Format, e draftEntry) askView {
 	if lo, hi, ok := askOutside(c); ok {
 		a.AskBelow, a.AskAbove, a.Sign = strconv.FormatInt(lo, 10), strconv.FormatInt(hi, 10), lo < 0
 	}
+	for _, st := range c.Machine.InUse() {
+		a.Streams = append(a.Streams, streamView{ID: st.ID.String(), Name: st.Name})
+	}
 	var typed []int64
 	for i, r := range e.Readings {
 		v := readingView{ID: "reading-" + a.ID + "-" + strconv.Itoa(i), Label: f.Words.T("station.part", i+1),
@@ -181,6 +190,9 @@ func newAsk(f ui.Format, e draftEntry) askView {
 		}
 		if r.Keyed != uuid.Nil {
 			v.Keyed = r.Keyed.String()
+		}
+		if len(a.Streams) > 0 {
+			v.Stream, v.From = r.Stream.String(), c.Machine.StreamName(r.Stream)
 		}
 		if r.OK {
 			typed = append(typed, r.Units)

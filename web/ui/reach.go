@@ -29,6 +29,8 @@ func SayReach(f Format, r *plant.Reach, s plant.Suspect, m plant.MachineNow) (Re
 		}
 	}
 	if names := streamNames(m, r); names != "" {
+		v.Do = f.Words.T("reach.do.only", v.Do, names)
+		v.Is = f.Words.T("reach.is.only", v.Is, names)
 		v.Why = append(v.Why, f.Words.T("reach.why.streams", names))
 	}
 	v.Why = append(v.Why, reachEnd(f, r, m))
