@@ -13,7 +13,7 @@ type place struct {
 	name    string
 	family  string
 	machine string
-	rate    float64 // parts an hour
+	rate    float64  // parts an hour
 	streams []string // parallel sources on the machine
 	parts   []string
 	gauges  []measure

@@ -19,7 +19,7 @@ type Point struct {
 	Stats          Statistics
 	Readings       []int64
 	Streams        []uuid.UUID // empty, or one a reading
-	Outside        int // readings outside specification
+	Outside        int         // readings outside specification
 	Part           uuid.UUID
 	Lot            string
 	Person         uuid.UUID

@@ -6,8 +6,6 @@ import (
 	"testing"
 	"time"
 
-	"github.com/chromedp/chromedp"
-
 	"holdfast/internal/plant"
 	"holdfast/internal/store/storetest"
 )
@@ -87,7 +85,7 @@ func TestAdjustingOnATablet(t *testing.T) {
 	s.steady(t)
 	s.offset(t)
 	tb := s.tablet(t)
-	click := func(sel string) { t.Helper(); tb.Do(chromedp.Click(sel)) }
+	click := func(sel string) { t.Helper(); tb.Click(sel) }
 	ready := func(testid string) {
 		t.Helper()
 		tb.WaitFor(`document.querySelector("[data-testid=` + testid + `]")`)

@@ -76,16 +76,16 @@ func TestRoundByKeypadAsDeviation(t *testing.T) {
 	tap := func(keys ...string) {
 		t.Helper()
 		for _, k := range keys {
-			tb.Do(chromedp.Click(`[data-key="` + k + `"]`))
+			tb.Click(`[data-key="` + k + `"]`)
 		}
 	}
-	main := func() { t.Helper(); tb.Do(chromedp.Click("[data-main]")) }
+	main := func() { t.Helper(); tb.Click("[data-main]") }
 	tap("1", "4", ".", "9", "9", "9", "back", "5")
 	tb.Want("typed", theValue, "14.995")
 	tb.Want("the button", `document.querySelector("[data-main]").textContent`, "Next part")
 	main()
 	tb.Want("second question", theHeading, "Measure part 2 of 5")
-	tb.Do(chromedp.Click(`[name="entry"][value="deviation"]`))
+	tb.Click(`[name="entry"][value="deviation"]`)
 	tb.Want("converted", `document.querySelector("[data-reading]").value`, "4")
 	tb.Want("the point gives way to the sign", `getComputedStyle(document.querySelector("[data-key='.']")).display+getComputedStyle(document.querySelector("[data-key=sign]")).display`, "noneflex")
 	tb.Do(chromedp.Focus(`[data-reading][id$="-1"]`))
