@@ -1,14 +1,10 @@
 package plant
 
 import (
-	"math"
 	"slices"
 	"time"
 
 	"github.com/google/uuid"
-
-	"holdfast/internal/spc/changepoint"
-	"holdfast/internal/spc/limits"
 )
 
 // ReachWindow is how many subgroups back a change is looked for.
@@ -182,149 +178,6 @@ func confined(reasons []Suspicion) (out []uuid.UUID) {
 	return out
 }
 
-// change estimates when what a panel's first firing shows began.
-func (e ReachEvidence) change(panel Panel, setup Setup) Suspicion {
-	w := e.Location
-	if panel == Dispersion {
-		w = e.Dispersion
-	}
-	s := Suspicion{Since: SinceChange, From: e.Matter.OpenedTaken, Cut: true}
-	if len(w.Points) == 0 {
-		return s
-	}
-	segment := e.Segments[panel]
-	last := w.Points[len(w.Points)-1]
-	rev, ok := e.Revisions[segment.Revision]
-	var est changepoint.Estimate
-	var err error
-	if ok {
-		est, err = estimateChange(rev, setup, w.Points, panel)
-	}
-	if !ok || err != nil {
-		// Nothing can be estimated: the last subgroup before the signal is all that is known.
-		s.From, s.Cut = w.Points[max(len(w.Points)-2, 0)].TakenAt, true
-		return s
-	}
-	s.Change = &EstimatedChange{Panel: panel, Subgroup: last.Subgroup, Signal: last.TakenAt, Began: w.Points[est.After+1].TakenAt, Size: est.Size, SE: est.SizeSE}
-	switch earliest := est.Likely[0]; {
-	case earliest >= 0:
-		s.From, s.Cut = w.Points[earliest].TakenAt, false
-	case w.Cut:
-		s.From = w.Points[0].TakenAt
-	default:
-		s.From, s.Cut, s.Start = segment.From, false, true
-	}
-	return s
-}
-
-func estimateChange(rev Revision, s Setup, points []ReachPoint, panel Panel) (changepoint.Estimate, error) {
-	if panel == Location {
-		means, sizes := make([]float64, len(points)), make([]int, len(points))
-		for i, p := range points {
-			means[i], sizes[i] = p.Stats.Mean(), p.Stats.N
-		}
-		return changepoint.Location(means, sizes, rev.Center, rev.Sigma)
-	}
-	variances, df := make([]float64, len(points)), make([]int, len(points))
-	for i, p := range points {
-		variances[i], df[i] = p.Stats.SD*p.Stats.SD, p.Stats.N-1
-		if rev.Chart == limits.Individuals {
-			d := p.Stats.Mean() - rev.Center
-			variances[i], df[i] = d*d, 1
-		}
-	}
-	return changepoint.Dispersion(variances, df, rev.Sigma, Decimal{Units: 1, Decimals: s.Decimals}.Float())
-}
-
-// goodRounds goes back, for each stream with a reading outside in the first such
-// subgroup, to the last round in which all of its readings were within. Where readings
-// name no stream the whole subgroup counts.
-func (e ReachEvidence) goodRounds() []Suspicion {
-	points := e.Reading.Points
-	if len(points) == 0 {
-		return []Suspicion{{Since: SinceGoodRound, From: e.Matter.OpenedTaken, Cut: true}}
-	}
-	first := points[len(points)-1]
-	streams := first.outsideStreams(e.Setups[first.Setup])
-	if len(streams) == 0 {
-		return []Suspicion{e.goodRound(func(p ReachPoint) bool { return p.Outside == 0 })}
-	}
-	var out []Suspicion
-	for _, id := range streams {
-		s := e.goodRound(func(p ReachPoint) bool { return p.streamWithin(id, e.Setups[p.Setup]) })
-		s.Streams = []uuid.UUID{id}
-		out = append(out, s)
-	}
-	return out
-}
-
-func (e ReachEvidence) goodRound(good func(ReachPoint) bool) Suspicion {
-	points := e.Reading.Points
-	s := Suspicion{Since: SinceGoodRound}
-	for i := len(points) - 2; i >= 0; i-- {
-		if good(points[i]) {
-			s.From = points[i].TakenAt
-			return s
-		}
-	}
-	s.Cut = true // no good round is on record, or none within the window
-	if e.Reading.Cut || len(points) > 1 {
-		s.From = points[0].TakenAt
-	}
-	return s
-}
-
-// outsideStreams are the streams with a reading outside; none when readings name none.
-func (p ReachPoint) outsideStreams(s Setup) (out []uuid.UUID) {
-	if len(p.Streams) != len(p.Readings) {
-		return nil
-	}
-	for i, v := range p.Readings {
-		if id := p.Streams[i]; s.Outside(v, p.Stats.Decimals) != Neither && !slices.Contains(out, id) {
-			out = append(out, id)
-		}
-	}
-	return out
-}
-
-// streamWithin reports whether the subgroup shows that a stream was within specification.
-func (p ReachPoint) streamWithin(id uuid.UUID, s Setup) bool {
-	if len(p.Streams) != len(p.Readings) {
-		return p.Outside == 0
-	}
-	seen := false
-	for i, v := range p.Readings {
-		if p.Streams[i] != id {
-			continue
-		}
-		if seen = true; s.Outside(v, p.Stats.Decimals) != Neither {
-			return false
-		}
-	}
-	return seen
-}
-
-// goodCheck goes back from the first failed check to the last good one of that gauge, and
-// forward to the first good one after the last that failed.
-func (e ReachEvidence) goodCheck(first time.Time) Suspicion {
-	s := Suspicion{Since: SinceGoodCheck, Cut: true}
-	var lastFailed time.Time
-	for _, c := range e.Checks {
-		switch {
-		case !c.Good && c.At.After(lastFailed):
-			lastFailed = c.At
-		case c.Good && c.At.Before(first) && c.At.After(s.From):
-			s.From, s.Cut = c.At, false
-		}
-	}
-	for _, c := range e.Checks {
-		if c.Good && c.At.After(lastFailed) && (s.Until.IsZero() || c.At.Before(s.Until)) {
-			s.Until = c.At
-		}
-	}
-	return s
-}
-
 // end finds what ended the growth: the first correction or new start with nothing standing
 // after it. With a gauge alone in doubt that is its next good check; a failed gauge is
 // mended by no change to the process.
@@ -376,61 +229,4 @@ func (r *Reach) end(e ReachEvidence) {
 // characteristic.
 func (c Change) corrects(characteristic uuid.UUID) bool {
 	return c.Kind != ChangedOver && (c.Characteristic == uuid.Nil || c.Characteristic == characteristic)
-}
-
-// Suspect is a reach as of an instant: how much was made.
-type Suspect struct {
-	Parts int
-	Known bool // false: the machine's rate, or what it did so far back, is not on record
-	About bool // from running time and rate, or shared evenly among streams, and then to two figures
-}
-
-// Suspects counts what the reach holds at now, by the machine's log. part confines it to
-// the running time of one part; uuid.Nil is any. machine is the machine as it is set up.
-func (r Reach) Suspects(m Machine, part uuid.UUID, now time.Time) Suspect {
-	if len(r.Reasons) == 0 {
-		return Suspect{Known: true}
-	}
-	to := now
-	if !r.Until.IsZero() && r.Until.Before(now) {
-		to = r.Until
-	}
-	log := r.Log.of(part)
-	switch {
-	case r.From.IsZero(), len(log) > 0 && log[0].At.After(r.From):
-		return Suspect{} // what the machine did then is not known
-	}
-	made, about := m.PartsMade(log, r.From, to)
-	if about && m.PartsPerHour <= 0 {
-		return Suspect{}
-	}
-	if n := len(m.Streams); n > 0 && len(r.Streams) > 0 && len(r.Streams) < n {
-		made, about = made*float64(len(r.Streams))/float64(n), true
-	}
-	if !about {
-		return Suspect{Parts: int(math.Round(made)), Known: true}
-	}
-	return Suspect{Parts: twoFigures(made), Known: true, About: true}
-}
-
-// twoFigures rounds a number of parts that is not known exactly.
-func twoFigures(parts float64) int {
-	step := math.Pow(10, math.Max(0, math.Floor(math.Log10(math.Max(parts, 1)))-1))
-	return int(math.Round(parts/step) * step)
-}
-
-// of is the log with the stretches of other parts standing still, so that running time
-// counts one part alone. Counter readings count every part, so they go as soon as there
-// was another.
-func (l MachineLog) of(part uuid.UUID) MachineLog {
-	other := func(s MachineState) bool { return s.Part != uuid.Nil && s.Part != part }
-	if part == uuid.Nil || !slices.ContainsFunc(l, other) {
-		return l
-	}
-	out := slices.Clone(l)
-	for i := range out {
-		out[i].Running = out[i].Running && !other(out[i])
-		out[i].Counter = nil
-	}
-	return out
 }
