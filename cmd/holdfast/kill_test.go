@@ -3,6 +3,7 @@ package main
 import (
 	"bufio"
 	"context"
+	"flag"
 	"fmt"
 	"net/http"
 	"net/http/cookiejar"
@@ -170,6 +171,14 @@ func (b *tablet) round(ctx context.Context, i int) error {
 	return ctx.Err()
 }
 
+// How long the kill test is. The bar, 20,000 answered rounds, takes minutes:
+//
+//	go test -run NothingAnswered ./cmd/holdfast -kill-rounds 6700 -kills 30 -timeout 30m -v
+var (
+	killRounds = flag.Int("kill-rounds", 100, "rounds of each of three tablets in the kill test")
+	killTimes  = flag.Int("kills", 6, "kills of server and PostgreSQL in the kill test")
+)
+
 // TestNothingAnsweredIsLostOrDoubled kills the server and the private Postgres by turns
 // while three tablets save, with durability on. Everything that was answered is on
 // record once, the judgements are those of one fold and the ledger holds.
@@ -187,12 +196,12 @@ func TestNothingAnsweredIsLostOrDoubled(t *testing.T) {
 	st, charts := hurtPlant(t, app)
 	st.Close() // its connections would outlive nothing here
 
-	const each = 100
+	each, kills := *killRounds, *killTimes
 	var address atomic.Pointer[string]
 	base, kill := startServing(t, app)
 	first := base // tablets read it while base moves on
 	address.Store(&first)
-	ctx, cancel := context.WithTimeout(context.Background(), 3*time.Minute)
+	ctx, cancel := context.WithTimeout(context.Background(), max(3*time.Minute, time.Duration(each)*200*time.Millisecond))
 	defer cancel()
 	tablets := make([]*tablet, len(charts))
 	failed := make([]error, len(charts))
@@ -215,7 +224,6 @@ func TestNothingAnsweredIsLostOrDoubled(t *testing.T) {
 			}
 		})
 	}
-	const kills = 6
 	for n := range kills {
 		for want := int64(len(charts) * each * (n + 1) / (kills + 2)); done.Load() < want && ctx.Err() == nil; {
 			time.Sleep(time.Millisecond)
