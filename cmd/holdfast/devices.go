@@ -42,6 +42,14 @@ func (p *program) staff(hasher *auth.Hasher) *admin.Staff {
 	}
 }
 
+// admissionChanged forgets who and what was let in and asks again about all sockets: it was
+// changed by some server, or on the command line.
+func (p *program) admissionChanged() {
+	p.devices.Forget()
+	p.sessions.ForgetAll()
+	p.hub.Recheck()
+}
+
 // openFirst draws the one-time address under which the first person is made, where there
 // is nobody yet.
 func (p *program) openFirst(ctx context.Context, hasher *auth.Hasher) error {

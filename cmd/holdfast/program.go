@@ -129,6 +129,7 @@ func (p *program) join(ctx context.Context) error {
 		Fail:     web.SessionFault(p.Log),
 		FindMany: p.store.FindSessions, FindPeople: p.store.PeopleByID, DeleteExpired: p.store.DeleteExpiredSessions,
 	})
+	p.feed.OnAdmission(p.admissionChanged)
 	door := &auth.Door{Credentials: p.store, Hasher: hasher, Throttle: auth.NewThrottle(p.Clock), Pins: auth.NewThrottle(p.Clock), Log: p.Log}
 	machine, err := os.Hostname()
 	if err != nil {

@@ -120,7 +120,7 @@ func TestATabletThroughAShift(t *testing.T) {
 		t.Errorf("keyed by %v, %v; want %v", keyed, err, want)
 	}
 
-	// Revoked, both are out within a second, with their sockets.
+	// Revoked, both are out; how soon is measured elsewhere.
 	for _, one := range []struct {
 		name string
 		page *browsertest.Page
@@ -130,13 +130,10 @@ func TestATabletThroughAShift(t *testing.T) {
 			tablet.WaitFor(`document.querySelector("[data-live-state]")?.textContent.trim() === "live"`)
 		}
 		d := r.deviceNamed(t, one.name)
-		began := time.Now()
 		if res, _ := r.visit(t, "administrator1").post("/admin/devices/"+d.ID.String()+"/revoke", nil); res.StatusCode != 303 {
 			t.Fatalf("revoking %s: %d", one.name, res.StatusCode)
 		}
 		one.page.WaitFor(find("[data-testid=revoked]"))
-		took := time.Since(began)
-		t.Logf("%s saw that it was revoked after %v", one.name, took.Round(time.Millisecond))
 	}
 	if differ, err := r.CheckRecord(context.Background()); err != nil || len(differ) > 0 {
 		t.Errorf("the record differs: %v, %v", differ, err)

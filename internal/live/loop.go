@@ -55,6 +55,7 @@ type loop struct {
 	rendered  chan round
 
 	checking bool
+	again    bool // asked for while a question was under way, which may have been answered before
 	checked  chan []string
 }
 
@@ -111,6 +112,10 @@ func (l *loop) run() {
 			l.checking = false
 			for _, s := range ended {
 				l.drop(s, SessionEnded)
+			}
+			if l.again {
+				l.again = false
+				l.recheck()
 			}
 		}
 	}
@@ -370,7 +375,11 @@ func (l *loop) failed(t *topic, err error, now time.Time) {
 
 // recheck asks which sessions have ended, at most one question at a time.
 func (l *loop) recheck() {
-	if l.checking || len(l.sessions) == 0 {
+	if l.checking {
+		l.again = true
+		return
+	}
+	if len(l.sessions) == 0 {
 		return
 	}
 	l.checking = true

@@ -13,8 +13,12 @@ import (
 )
 
 // channel carries the ids of stations that changed, between the servers on one
-// database: "NODE ID ID ...".
+// database: "NODE ID ID ...", and that people or devices did (admission).
 const channel = "holdfast_changed"
+
+// admission is the notice that somebody or some device may be let in no longer, or as
+// something else: "admission". It names nobody; who hears it looks again at all.
+const admission = "admission"
 
 // perNotice is how many station ids fit into one notice (its limit is 8000 bytes).
 const perNotice = 200
@@ -26,6 +30,7 @@ type Feed struct {
 	store   *Store
 	log     *slog.Logger
 	tell    func(stations []uuid.UUID)
+	admit   func() // may be nil
 	node    string
 	gather  time.Duration
 	catchUp time.Duration
@@ -43,6 +48,26 @@ func (s *Store) NewFeed(log *slog.Logger, tell func(stations []uuid.UUID)) *Feed
 	}
 	s.OnChange(f.changed)
 	return f
+}
+
+// OnAdmission sets what is told that people or devices were changed, by whichever server
+// or on the command line: what is remembered of them counts no more. It must not block,
+// and must be set before Run.
+func (f *Feed) OnAdmission(tell func()) { f.admit = tell }
+
+func (f *Feed) admissionChanged() {
+	if f.admit != nil {
+		f.admit()
+	}
+}
+
+// admissionChanged tells every server that people or devices were changed. It comes after
+// the commit, so who hears it reads the change. That it cannot be said is no reason to
+// answer that nothing was changed: the servers look again by themselves within a second.
+func (s *Store) admissionChanged(ctx context.Context) {
+	ctx, cancel := context.WithTimeout(context.WithoutCancel(ctx), 2*time.Second)
+	defer cancel()
+	_ = s.notify(ctx, admission)
 }
 
 func (f *Feed) changed(stations []uuid.UUID) {
@@ -87,7 +112,7 @@ func (f *Feed) announce(ctx context.Context) {
 		f.mu.Unlock()
 		for len(ids) > 0 {
 			n := min(len(ids), perNotice)
-			if err := f.notify(ctx, f.node+" "+strings.Join(ids[:n], " ")); err != nil {
+			if err := f.store.notify(ctx, f.node+" "+strings.Join(ids[:n], " ")); err != nil {
 				if ctx.Err() == nil {
 					f.log.Warn("could not announce changes; other servers find them later", "error", err)
 				}
@@ -100,13 +125,13 @@ func (f *Feed) announce(ctx context.Context) {
 
 // notify sends one notice. It need not outlive a crash, so it waits for no disk and
 // takes no turn of those who do.
-func (f *Feed) notify(ctx context.Context, payload string) error {
+func (s *Store) notify(ctx context.Context, payload string) error {
 	b := &pgx.Batch{}
 	b.Queue("begin")
 	b.Queue("set local synchronous_commit = off")
 	b.Queue("select pg_notify($1, $2)", channel, payload)
 	b.Queue("commit")
-	return f.store.pool.SendBatch(ctx, b).Close()
+	return s.pool.SendBatch(ctx, b).Close()
 }
 
 // listen keeps one connection of its own, and after each reconnect marks every station,
@@ -140,6 +165,7 @@ func (f *Feed) listenOnce(ctx context.Context) error {
 	if err := f.markAll(ctx); err != nil {
 		return err
 	}
+	f.admissionChanged()
 	for {
 		wait, cancel := context.WithTimeout(ctx, 20*time.Second)
 		n, err := conn.WaitForNotification(wait)
@@ -161,6 +187,10 @@ func (f *Feed) listenOnce(ctx context.Context) error {
 }
 
 func (f *Feed) heard(payload string) {
+	if payload == admission {
+		f.admissionChanged()
+		return
+	}
 	fields := strings.Fields(payload)
 	if len(fields) == 0 || fields[0] == f.node {
 		return

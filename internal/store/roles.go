@@ -35,5 +35,6 @@ func (s *Store) AddRoles(ctx context.Context, person uuid.UUID, roles plant.Role
 	if err != nil {
 		return fmt.Errorf("add roles: %w", err)
 	}
+	s.admissionChanged(ctx)
 	return nil
 }

@@ -131,6 +131,7 @@ func (s *Store) changePerson(ctx context.Context, what string, id, by uuid.UUID,
 	if err != nil {
 		return fmt.Errorf("%s: %w", what, err)
 	}
+	s.admissionChanged(ctx)
 	return nil
 }
 
@@ -212,5 +213,6 @@ func (s *Store) EraseName(ctx context.Context, id, by uuid.UUID) error {
 	if err != nil {
 		return fmt.Errorf("erase a name: %w", err)
 	}
+	s.admissionChanged(ctx)
 	return nil
 }
