@@ -61,6 +61,7 @@ type Config struct {
 	DemoPeople func(ctx context.Context) ([]plant.Person, error)
 
 	Station, Board, Desk, Admin, Calls Surface
+	Account                            Surface // everybody's own page
 
 	// API is mounted at /api/v1 and guards itself.
 	API Surface
@@ -137,6 +138,12 @@ func New(c Config) http.Handler {
 		mount(r, ui.Desk, c.Desk)
 		mount(r, ui.Admin, c.Admin)
 		mount(r, ui.Calls, c.Calls)
+		if c.Account != nil {
+			r.Route(ui.AccountAddress, func(r chi.Router) {
+				r.Use(ui.RequirePerson, ui.Speak(ui.Account))
+				c.Account.Routes(r)
+			})
+		}
 		if c.API != nil {
 			r.Route("/api/v1", c.API.Routes)
 		}

@@ -62,18 +62,24 @@ func (r *running) person(t testing.TB, login string, roles ...plant.Role) plant.
 	return p
 }
 
-// badge gives somebody a badge with the PIN of all tests.
-func (r *running) badge(t testing.TB, person uuid.UUID, badge string) {
+// hash is what is stored of a secret.
+func (r *running) hash(t testing.TB, s auth.Secret) string {
 	t.Helper()
 	hasher, err := auth.NewHasher(cheap, 1)
 	if err != nil {
 		t.Fatal(err)
 	}
-	hash, err := hasher.Hash(context.Background(), pin)
+	hash, err := hasher.Hash(context.Background(), s)
 	if err != nil {
 		t.Fatal(err)
 	}
-	if err := r.SetBadge(context.Background(), person, badge, hash, uuid.Nil); err != nil {
+	return hash
+}
+
+// badge gives somebody a badge with the PIN of all tests.
+func (r *running) badge(t testing.TB, person uuid.UUID, badge string) {
+	t.Helper()
+	if err := r.SetBadge(context.Background(), person, badge, r.hash(t, pin), uuid.Nil); err != nil {
 		t.Fatal(err)
 	}
 }

@@ -10,6 +10,7 @@ import (
 	"holdfast/internal/auth"
 	"holdfast/internal/demo"
 	"holdfast/internal/plant"
+	"holdfast/web/account"
 	"holdfast/web/admin"
 	doorpages "holdfast/web/door"
 )
@@ -40,6 +41,18 @@ func (p *program) staff(hasher *auth.Hasher) *admin.Staff {
 			p.hub.Recheck()
 		},
 	}
+}
+
+// account is everybody's own page.
+func (p *program) account(door *auth.Door, hasher *auth.Hasher) *account.Surface {
+	return account.New(account.Deps{
+		Store: p.store, Checker: door, Sessions: p.sessions, Log: p.Log,
+		Hash: func(ctx context.Context, s auth.Secret) (string, error) { return hasher.Hash(ctx, s) },
+		Changed: func(person uuid.UUID) {
+			p.sessions.Forget(person)
+			p.hub.Recheck()
+		},
+	})
 }
 
 // admissionChanged forgets who and what was let in and asks again about all sockets: it was

@@ -146,6 +146,7 @@ func (p *program) join(ctx context.Context) error {
 		API:     api.New(api.Deps{Store: p.store, Devices: p.devices, Log: p.Log}),
 		Tablet:  p.tablet(door),
 		Calls:   calls.New(calls.Deps{Store: p.store, Log: p.Log}),
+		Account: p.account(door, hasher),
 		Ready:   p.store.Ready, Hosts: p.Hosts, Secure: p.Transport.https, Strict: p.Transport.strict, Addr: p.Transport.from, Authority: p.Transport.root,
 	}
 	p.watch()

@@ -188,6 +188,10 @@ var routeTable = []routeRow{
 	{"POST /board/handover/note/{note}/clear", takers, 404}, // of no note
 	{"POST /board/handover/read", takers, 404},              // of no line
 
+	{"GET /account/", people, 200},
+	{"POST /account/password", people, 422},
+	{"POST /account/pin", people, 422},
+
 	{"GET /calls/", called, 200},
 	{"GET /calls/quiet/{matter}", called, 200},
 	{"POST /calls/quiet/{matter}", called, 422},

@@ -145,33 +145,15 @@ func lastAdministrator() error {
 	return plant.Conflictf("", "This is the last administrator who may sign in. Make somebody else one first.")
 }
 
-// SetSecret replaces the hash of a person's secret and ends their sessions.
-func (s *Store) SetSecret(ctx context.Context, id uuid.UUID, secretHash string, by uuid.UUID) error {
-	return s.changePerson(ctx, "secret changed", id, by, nil,
-		`update person set secret = $3, sessions_since = $4 where id = $1 and plant_id = $2 and erased_at is null`, secretHash, s.now())
-}
-
-// SetBadge gives a person a badge and the hash of its PIN, and ends their sessions. An
-// empty badge takes both away.
-func (s *Store) SetBadge(ctx context.Context, id uuid.UUID, badge, pinHash string, by uuid.UUID) error {
-	badge = plant.CleanBadge(badge)
-	if len(badge) > plant.MaxBadge {
-		return plant.Invalidf("badge", "A badge holds at most %d characters.", plant.MaxBadge)
-	}
-	var kept *string
-	if badge != "" {
-		kept = &badge
-	} else {
-		pinHash = ""
-	}
-	return s.changePerson(ctx, "badge changed", id, by, map[string]any{"badge": badge != ""},
-		`update person set badge = $3, pin = $4, sessions_since = $5 where id = $1 and plant_id = $2 and erased_at is null`, kept, pinHash, s.now())
-}
-
-// SetActive lets a person sign in or keeps them out.
+// SetActive lets a person sign in or keeps them out. Keeping out ends their sessions for
+// good: letting them in again revives none.
 func (s *Store) SetActive(ctx context.Context, id uuid.UUID, active bool, by uuid.UUID) error {
-	return s.changePerson(ctx, "person changed", id, by, map[string]any{"active": active},
-		`update person set active = $3 where id = $1 and plant_id = $2 and erased_at is null`, active)
+	content := map[string]any{"active": active}
+	if active {
+		return s.changePerson(ctx, "person changed", id, by, content,
+			`update person set active = true where id = $1 and plant_id = $2 and erased_at is null`)
+	}
+	return s.endSessions(ctx, "person changed", id, by, content, `active = false`, ``)
 }
 
 // SetRoles replaces what a person may be.

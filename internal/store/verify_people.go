@@ -12,6 +12,17 @@ var sealedPeople = []string{
 	select p.id, format('person %s may do or be something else than was sealed', p.id) from person p
 	left join roles r on r.subject = p.id::text left join active a on a.subject = p.id::text left join erased x on x.subject = p.id::text
 	where r.v is distinct from to_jsonb(p.roles) or coalesce(a.v, true) <> p.active or x.v is distinct from p.erased_at`,
+	// A badge that nobody sealed, and sessions that were to be over and are not. Until the
+	// instant was sealed too there is only the act to go by.
+	`with e as (select seq, convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'arrangement'),
+	badge as (select distinct on (b->>'subject') b->>'subject' as subject, (b->'content'->>'badge')::boolean as v from e
+		where b->>'what' = 'badge changed' order by b->>'subject', seq desc),
+	ended as (select distinct on (b->>'subject') b->>'subject' as subject, (b->'content'->>'sessions_since')::timestamptz as v from e
+		where b->>'what' in ('secret changed', 'pin changed', 'badge changed') or b->'content' ? 'sessions_since' order by b->>'subject', seq desc)
+	select p.id, format('badge or sessions of person %s are not as they were sealed', p.id) from person p
+	left join badge b on b.subject = p.id::text left join ended n on n.subject = p.id::text
+	where p.erased_at is null and coalesce(b.v, false) <> (p.badge is not null)
+		or n.subject is null and p.sessions_since is not null or n.v is not null and n.v is distinct from p.sessions_since`,
 	`with e as (select seq, convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'device'),
 	holds as (select distinct on (b->>'device') b from e where b->>'step' in ('enrolled', 'changed') order by b->>'device', seq desc),
 	first as (select b from e where b->>'step' = 'enrolled'), revoked as (select b from e where b->>'step' = 'revoked')

@@ -66,7 +66,7 @@ func TestImportsRunOneWay(t *testing.T) {
 	// The library for ids knows how to be a database value and reads the machine's
 	// address; that is as near as the domain comes to either.
 	network := []string{"net/http", "database/sql", "github.com/jackc/pgx/v5"}
-	surfaces := []string{"holdfast/web/station", "holdfast/web/board", "holdfast/web/desk", "holdfast/web/admin", "holdfast/web/calls", "holdfast/web/api"}
+	surfaces := []string{"holdfast/web/station", "holdfast/web/board", "holdfast/web/desk", "holdfast/web/admin", "holdfast/web/calls", "holdfast/web/api", "holdfast/web/account"}
 	for _, p := range ours(t) {
 		bad := func(dep, why string) { t.Errorf("%s depends on %s: %s", p.ImportPath, dep, why) }
 		for _, dep := range p.Deps {

@@ -14,6 +14,7 @@ const (
 	ThemeAddress     = "/theme"
 	LanguageAddress  = "/language"
 	CallsAddress     = "/calls" // what nobody has taken, and who was told
+	AccountAddress   = "/account"
 )
 
 // maxPath is the longest path that is gone back to, in bytes.
@@ -25,6 +26,14 @@ func SignInPath(back string) string {
 		return SignInAddress
 	}
 	return SignInAddress + "?" + url.Values{"to": {back}}.Encode()
+}
+
+// AccountPath is everybody's own page, with the way back to a local path.
+func AccountPath(back string) string {
+	if back = LocalPath(back); back == "/" {
+		return AccountAddress
+	}
+	return AccountAddress + "?" + url.Values{"to": {back}}.Encode()
 }
 
 // LocalPath returns path when it is a path of this server, with its query, and "/"

@@ -21,6 +21,7 @@ const (
 	Admin   Surface = "admin"
 	Door    Surface = "door"
 	Calls   Surface = "calls"
+	Account Surface = "account"
 )
 
 // Shell is the page around a surface's content. ShellFor fills it; a handler sets
@@ -52,6 +53,14 @@ func ShellFor(r *http.Request, s Surface, title string) Shell {
 	return Shell{Frame: f, Format: f.Format(), Surface: s, Title: title, Path: LocalPath(path)}
 }
 
+// accountPath leads to one's own page and back here; on that page it leads to itself.
+func (s Shell) accountPath() string {
+	if s.Surface == Account {
+		return s.Path
+	}
+	return AccountPath(s.Path)
+}
+
 // windowTitle is what the browser's tab says.
 func (s Shell) windowTitle() string {
 	name := s.Plant.Name
@@ -72,6 +81,7 @@ var sheets = map[Surface][]string{
 	Admin:   {"css/admin.css", "css/setup.css"},
 	Door:    {"css/door.css"},
 	Calls:   {"css/callpages.css"},
+	Account: {"css/account.css"},
 }
 
 func (s Shell) styles() []string {

@@ -19,10 +19,10 @@ var shared = []string{"ui", "words", "chart"}
 
 // translated are the surfaces that every language speaks. Another surface follows as a
 // whole: as soon as a language has one of its keys, all that its pages say is asked for.
-var translated = []string{"door", "station"}
+var translated = []string{"door", "station", "account"}
 
 // surfaces are the packages that have pages of their own.
-var surfaces = []string{"door", "station", "board", "desk", "admin"}
+var surfaces = []string{"door", "station", "account", "board", "desk", "admin"}
 
 // What a page can say is what its package asks of the catalogue, in whatever file it
 // stands; so a new file of words needs no entry here.
