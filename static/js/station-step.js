@@ -15,6 +15,7 @@ for (const stepper of document.querySelectorAll("[data-stepper]")) {
       const value = Number(input.value.replace(",", "."));
       const units = Number.isFinite(value) ? Math.round(value * 10 ** decimals) + by * Number(button.dataset.step) : by;
       input.value = (Math.max(by, units) / 10 ** decimals).toFixed(decimals).replace(".", stepper.dataset.decimal || ".");
+      input.dispatchEvent(new Event("input", { bubbles: true })); // typed is typed, see typed.js
     });
   }
 }

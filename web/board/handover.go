@@ -134,7 +134,7 @@ func (b *Board) showHandover(w http.ResponseWriter, r *http.Request, status int,
 	s := ui.ShellFor(r, ui.Board, f.Words.T("handover.title"))
 	s.Path = c.address(nil)
 	s.Styles = []string{"css/handover.css"}
-	s.Scripts = []string{"js/handover.js"}
+	s.Scripts = []string{"js/handover.js", ui.TypedScript}
 	s.OwnMain = true
 	s.Bar = place(s.Plant.Name, newHead(s.Format, s.Plant))
 	if !c.Span.Over(f.Now) {

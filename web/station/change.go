@@ -1,8 +1,10 @@
 package station
 
 import (
+	"cmp"
 	"errors"
 	"net/http"
+	"net/url"
 	"slices"
 	"strings"
 
@@ -133,6 +135,9 @@ func (s *Surface) renderAdjustment(w http.ResponseWriter, r *http.Request, statu
 	shell := s.shell(r, st, v.Title)
 	shell.Scripts = []string{"js/station-sent.js", "js/station-step.js"}
 	shell.Styles = []string{"css/station-adjust.css"}
+	if r.Method == http.MethodPost { // to the address of all changes, from this page
+		shell.Path = path(st.ID, "change", v.ID) + "?" + url.Values{"knob": {cmp.Or(v.Knob, noKnob)}}.Encode()
+	}
 	return ui.Render(w, r, status, adjustPage(shell, v))
 }
 

@@ -4,6 +4,7 @@ import (
 	"net/http"
 	"net/url"
 	"strconv"
+	"strings"
 	"time"
 
 	"github.com/google/uuid"
@@ -264,10 +265,25 @@ func (s *Surface) renderWork(w http.ResponseWriter, r *http.Request, status int,
 func (s *Surface) shell(r *http.Request, st plant.StationState, title string) ui.Shell {
 	shell := ui.ShellFor(r, ui.Station, title)
 	if r.Method != http.MethodGet && r.Method != http.MethodHead {
-		shell.Path = path(st.ID)
+		shell.Path = formPath(r.URL.Path, shell.Path)
 	}
 	shell.Bar = placeBar(shell.Words, st)
 	return shell
+}
+
+// posts are the last parts of addresses that take what a form sends and show no page.
+var posts = []string{"/round", "/take", "/step", "/close", "/verify", "/not-taken"}
+
+// formPath is the page of a form that was sent, to come back to: where it was sent from,
+// with its query, or what is above where it was sent to.
+func formPath(sentTo, from string) string {
+	for _, p := range posts {
+		sentTo = strings.TrimSuffix(sentTo, p)
+	}
+	if at, _, _ := strings.Cut(from, "?"); at == sentTo {
+		return from
+	}
+	return sentTo
 }
 
 func typesDeviation(r *http.Request) bool {

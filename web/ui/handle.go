@@ -230,6 +230,7 @@ func RenderJSON(w http.ResponseWriter, status int, v any) error {
 
 // Redirect leads on to a local path with 303, which turns a post into a get.
 func Redirect(w http.ResponseWriter, r *http.Request, path string) {
+	tellTaken(w, r)
 	w.Header().Set("Cache-Control", "no-store")
 	http.Redirect(w, r, LocalPath(path), http.StatusSeeOther)
 }

@@ -100,6 +100,9 @@ func (s Shell) scripts() []string {
 	if s.locks() {
 		all = append(all, "js/lock.js")
 	}
+	if s.Surface == Station {
+		all = append(all, TypedScript)
+	}
 	return urls(all, s.Scripts)
 }
 
@@ -122,10 +125,14 @@ func urls(lists ...[]string) []string {
 	return all
 }
 
-// bodyAttributes tell the live script where to listen and where to go when the
-// session has ended.
+// bodyAttributes tell scripts who is signed in and whether others are here too, and the
+// live one where to listen and where to go when the session has ended.
 func (s Shell) bodyAttributes() templ.Attributes {
 	a := templ.Attributes{"class": string(s.Surface)}
+	if s.SignedIn {
+		a["data-person"] = s.Person.ID.String()
+		a["data-shared"] = s.OnTablet()
+	}
 	if topics := s.topics(); len(topics) > 0 {
 		a["data-live"] = "/live?" + url.Values{"topic": topicsIn(s.Words, topics)}.Encode()
 		if len(s.Topics) > 0 {
