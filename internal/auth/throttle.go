@@ -24,8 +24,10 @@ import (
 //   - one source, whatever the login: 30 free, then 1 s doubling up to 30 s;
 //   - one login from four or more sources: 20 free, then 1 s doubling up to 30 s.
 //
-// A login that has come in from a source before is held up there by the first
-// count alone. So nobody can lock out a plant: failures from one source never
+// A login that has come in from a source before, and for which nothing wrong was
+// typed there since, is not held up by the other two. One wrong try there, and all
+// three count: otherwise whoever guesses at tablets that know their people would
+// have the free tries of each. So nobody can lock out a plant: failures from one source never
 // hold up another, and those from many hold up people at their usual tablets not
 // at all, and at a new one for half a minute at most. What a guesser can do is
 // hold up logins at the source that they share with them, up to five minutes
@@ -97,7 +99,7 @@ func (t *Throttle) Try(login string, from Source) (a *Attempt, pause time.Durati
 	defer t.mu.Unlock()
 	now := t.now()
 	pause = t.pairs.pause(p, now)
-	if _, known := t.known.get(p); !known {
+	if _, known := t.known.get(p); !known || t.pairs.failing(p, now) {
 		pause = max(pause, t.addrs.pause(p.from, now))
 		if c, ok := t.names.entries.get(p.login); ok && len(c.from) >= manyAddresses {
 			pause = max(pause, t.names.pause(p.login, now))
@@ -163,6 +165,12 @@ type count struct {
 
 func newCounts[K comparable](free int, longest time.Duration) counts[K] {
 	return counts[K]{free: free, longest: longest, entries: newLRU[K, *count](throttleEntries)}
+}
+
+// failing reports whether anything wrong is remembered of the key.
+func (c *counts[K]) failing(k K, now time.Time) bool {
+	e, ok := c.entries.get(k)
+	return ok && e.failures > 0 && now.Sub(e.last) < throttleForget
 }
 
 // pause is how long the key has to wait from now on.
