@@ -66,8 +66,8 @@ func (p *program) admissionChanged() {
 // openFirst draws the one-time address under which the first person is made, where there
 // is nobody yet.
 func (p *program) openFirst(ctx context.Context, hasher *auth.Hasher) error {
-	people, err := p.store.People(ctx)
-	if err != nil || len(people) > 0 {
+	nobody, err := p.nobody(ctx)
+	if err != nil || !nobody {
 		return err
 	}
 	p.first = doorpages.NewFirst(func(ctx context.Context, person plant.Person, s auth.Secret) error {
@@ -76,8 +76,14 @@ func (p *program) openFirst(ctx context.Context, hasher *auth.Hasher) error {
 			return err
 		}
 		return p.store.AddFirstPerson(ctx, person, hash)
-	})
+	}, p.nobody)
 	return nil
+}
+
+// nobody reports that nobody was ever added.
+func (p *program) nobody(ctx context.Context) (bool, error) {
+	people, err := p.store.People(ctx)
+	return len(people) == 0, err
 }
 
 // tellFirst prints that address, on standard error and not through the log, which may be

@@ -22,11 +22,14 @@ const (
 )
 
 // First makes the first person of an empty plant, for whoever has the address that was
-// printed when the program started. The address works until it was used once or the
-// program ends, and only where nobody listens in between: on this machine or over https.
+// printed when the program started. The address works until it was used once, until there
+// is somebody by another way, or until the program ends, and only where nobody listens in between: on this machine or over https.
 type First struct {
 	// Add adds the person and refuses with plant.Conflict when there is anybody.
 	Add func(ctx context.Context, p plant.Person, s auth.Secret) error
+	// Nobody reports that there is nobody yet: somebody may have been added on the command
+	// line or by another server.
+	Nobody func(ctx context.Context) (bool, error)
 
 	token string
 	mu    sync.Mutex
@@ -34,8 +37,8 @@ type First struct {
 }
 
 // NewFirst draws the address.
-func NewFirst(add func(ctx context.Context, p plant.Person, s auth.Secret) error) *First {
-	return &First{Add: add, token: rand.Text()}
+func NewFirst(add func(ctx context.Context, p plant.Person, s auth.Secret) error, nobody func(ctx context.Context) (bool, error)) *First {
+	return &First{Add: add, Nobody: nobody, token: rand.Text()}
 }
 
 // Path is the address, to be printed once.
@@ -45,6 +48,13 @@ func (f *First) Path() string { return firstAddress + "/" + f.token }
 // caller holds the lock.
 func (f *First) admits(r *http.Request) error {
 	frame := ui.FrameOf(r)
+	if !f.used {
+		nobody, err := f.Nobody(r.Context())
+		if err != nil {
+			return err
+		}
+		f.used = !nobody // for good: people are kept out, never removed
+	}
 	switch {
 	case f.used || subtle.ConstantTimeCompare([]byte(chi.URLParam(r, "token")), []byte(f.token)) != 1:
 		return &plant.Error{Kind: plant.NotFound, Message: frame.Words.T("devices.first-gone")}
