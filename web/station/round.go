@@ -188,6 +188,8 @@ func newAsk(f ui.Format, e draftEntry) askView {
 			Heading: f.Words.T("station.measure", i+1, s.Size), Raw: r.Raw, Problem: r.Problem, First: r.First}
 		if s.Size == 1 {
 			v.Label, v.Heading = f.Words.T("station.the-part"), f.Words.T("station.measure-one")
+		} else if len(a.Streams) > 0 { // the name of the stream is to have room behind it
+			v.Heading = f.Words.T("station.part-of", i+1, s.Size)
 		}
 		if r.Keyed != uuid.Nil {
 			v.Keyed = r.Keyed.String()

@@ -651,7 +651,7 @@ func ask(w *words.Printer, a askView, index int, unplanned bool) templ.Component
 			if templ_7745c5c3_Err != nil {
 				return templ_7745c5c3_Err
 			}
-			var templ_7745c5c3_Var39 = []any{"readings", templ.KV("many", a.Size > 10), templ.KV("one", a.Size == 1)}
+			var templ_7745c5c3_Var39 = []any{"readings", templ.KV("several", a.Size > 6 && a.Size <= 10), templ.KV("many", a.Size > 10), templ.KV("one", a.Size == 1)}
 			templ_7745c5c3_Err = templ.RenderCSSItems(ctx, templ_7745c5c3_ElementWriter, templ_7745c5c3_Var39...)
 			if templ_7745c5c3_Err != nil {
 				return templ_7745c5c3_Err

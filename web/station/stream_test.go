@@ -46,7 +46,7 @@ func TestPartsComeFromSpindles(t *testing.T) {
 	tb.Open(measure)
 	tb.WaitFor(`document.querySelector("[data-scripted]")`)
 	tb.Want("the turn goes on", theSources, "Spindle 2,Spindle 1,Spindle 2,Spindle 1,Spindle 2")
-	tb.Want("the first question", theHeading, "Measure part 1 of 5 · Spindle 2")
+	tb.Want("the first question", theHeading, "Part 1 of 5 · Spindle 2")
 	tb.Keys("14.991\r14.992\r")
 	tb.Click("[data-streams] summary")
 	tb.Value(`(() => { const s = document.querySelectorAll("[data-stream]")[2]; s.selectedIndex = 0; s.dispatchEvent(new Event("change", { bubbles: true })); })()`)
