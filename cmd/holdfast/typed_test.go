@@ -19,7 +19,6 @@ type typedForm struct {
 	want       string
 	kept       string // the element that says that it was brought back
 	save       string // what is clicked at last
-	saved      string // true once it is taken
 	by         string // who it is on record as
 }
 
@@ -48,12 +47,22 @@ func TestWhatIsHalfTypedSurvives(t *testing.T) {
 	r := serve(t)
 	r.calm(t, 22)
 	r.MustFreeze(t, r.Diameter)
+	lower, upper := plant.Decimal{Units: 17}, plant.Decimal{Units: 19}
+	if _, err := r.SavePlan(t.Context(), plant.ReactionPlan{Kind: plant.MatterReading, Scope: plant.PlanScope{Characteristic: r.Mass.ID}, Person: r.Engineer.ID,
+		Steps: []plant.PlanStep{{Says: "Read the collet pressure.", Kind: plant.StepValue, Unit: "bar", Lower: &lower, Upper: &upper, IfNot: "Set it to 18 bar."}}}); err != nil {
+		t.Fatal(err)
+	}
 	r.Clock.Advance(30 * time.Minute)
+	r.MustRecord(t, r.Mass, 160)
 	last := r.MustRecord(t, r.Diameter, 14998, 14999, 14998, 14999, 14998)
 	r.badge(t, r.Operator.ID, "1001")
 	r.badge(t, r.Supervisor.ID, "1003")
-	m := r.openMatter(t)
 	at := "/station/" + r.Station.ID.String()
+	m, planned := r.matterOf(t, r.Diameter), r.matterOf(t, r.Mass)
+	if err := r.TakeMatter(t.Context(), planned.ID, planned.Version, r.Operator.ID); err != nil {
+		t.Fatal(err)
+	}
+	walk := at + "/matter/" + planned.ID.String()
 	const keptNote = `form[data-typed] [data-typed-kept]:not([hidden])`
 	b := browsertest.Start(t)
 	for _, f := range []typedForm{
@@ -78,6 +87,12 @@ func TestWhatIsHalfTypedSurvives(t *testing.T) {
 		{name: "note for the next shift", path: "/board/handover", fill: func(p *browsertest.Page) { into(p, "textarea[name=text]", "Coolant is low") },
 			typed: find("textarea[name=text]") + ".value", want: "Coolant is low", save: ".ho-write button[type=submit]",
 			by: `select person_id from shift_note where text = 'Coolant is low'`},
+		{name: "reason to leave a step out", path: walk, fill: func(p *browsertest.Page) {
+			p.Click("details.leave-out > summary")
+			into(p, "[data-testid=leave-out] input[name=note]", "No gauge here")
+		}, typed: find("[data-testid=leave-out] input[name=note]") + `.value + " " + ` + find("details.leave-out") + `.open`, want: "No gauge here true"},
+		{name: "step of a plan", path: walk, fill: func(p *browsertest.Page) { into(p, "#step-value", "18") },
+			typed: find("#step-value") + ".value", want: "18", save: "[data-testid=say-value]", by: `select person_id from matter_answer where matter_id = '` + planned.ID.String() + `'`},
 		{name: "matter", path: at + "/matter/" + m.ID.String(), fill: func(p *browsertest.Page) {
 			p.Click("input[name=cause][value=own] + span")
 			into(p, "input[name=own]", "Chips in the chuck")
@@ -198,4 +213,20 @@ func TestWhatIsTypedAwayFromATabletIsOnesOwn(t *testing.T) {
 	if keys := p.Value(`Object.keys(localStorage).filter((k) => k.includes("` + r.Diameter.ID.String() + `")).join()`); strings.Contains(keys, "typed") {
 		t.Errorf("thrown away and still kept: %s", keys)
 	}
+}
+
+// matterOf is what is open on a characteristic.
+func (r *running) matterOf(t testing.TB, c plant.Characteristic) plant.Matter {
+	t.Helper()
+	st, err := r.StationState(t.Context(), c.StationID, 1)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, one := range st.Characteristics {
+		if one.ID == c.ID && one.Matter != nil {
+			return *one.Matter
+		}
+	}
+	t.Fatalf("no matter is open on %s", c.Name)
+	return plant.Matter{}
 }
