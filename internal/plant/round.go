@@ -33,6 +33,7 @@ type Round struct {
 	Source   string        // "station", "api"
 	Person   uuid.UUID
 	Device   uuid.UUID // that sent it by itself; Nil: a page did
+	Lot      string    // order or lot that the parts are of; "": what the machine runs
 	Entries  []Entry
 }
 
@@ -67,6 +68,7 @@ func SubgroupID(round, characteristic uuid.UUID) uuid.UUID {
 func (r Round) Clean() Round {
 	r.TakenRaw = CutTime(r.TakenRaw)
 	r.Source, r.Occasion = CleanText(r.Source), Occasion(CleanText(string(r.Occasion)))
+	r.Lot = CleanText(r.Lot)
 	r.Entries = slices.Clone(r.Entries)
 	for i := range r.Entries {
 		e := &r.Entries[i]
@@ -88,7 +90,8 @@ func (r Round) Digest() [32]byte {
 		Occasion Occasion
 		TakenRaw time.Time
 		Entries  []Entry
-	}{r.Station, r.Occasion, CutTime(r.TakenRaw), r.Entries})
+		Lot      string `json:",omitempty"`
+	}{r.Station, r.Occasion, CutTime(r.TakenRaw), r.Entries, r.Lot})
 	if err != nil {
 		panic(fmt.Sprintf("a round is always JSON: %v", err)) // ids, integers and text only
 	}
@@ -106,6 +109,9 @@ func (r Round) Check() error {
 	}
 	if len(r.Entries) > 50 {
 		return Invalidf("", "A round holds at most 50 characteristics.")
+	}
+	if _, err := CleanTextWithin("lot", r.Lot, MaxName); err != nil {
+		return err
 	}
 	seen := make(map[uuid.UUID]bool, len(r.Entries))
 	for _, e := range r.Entries {

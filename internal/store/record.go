@@ -199,6 +199,12 @@ func (rec *recording) entry(ctx context.Context, e plant.Entry, l *locked, a rou
 	if err := e.CheckAgainst(setup); err != nil {
 		return plant.PartAnswer{}, err
 	}
+	if err := checkStreams(ctx, rec.conn, e, a.machine); err != nil {
+		return plant.PartAnswer{}, err
+	}
+	if rec.round.Lot != "" {
+		a.lot = rec.round.Lot
+	}
 	taken := rec.round.TakenAt()
 	row := &subgroupRow{
 		position: position{taken, plant.SubgroupID(rec.round.ID, l.id)}, version: 1, setup: setup.Version,

@@ -20,6 +20,7 @@ import (
 type Store interface {
 	StationSetups(ctx context.Context, id uuid.UUID) (plant.StationState, error)
 	StationState(ctx context.Context, id uuid.UUID, points int) (plant.StationState, error)
+	StationStreams(ctx context.Context, station uuid.UUID) (map[uuid.UUID][]plant.Stream, error)
 	RoundSetups(ctx context.Context, round uuid.UUID) (map[uuid.UUID]plant.Setup, error)
 	Record(ctx context.Context, r plant.Round) (plant.Answer, error)
 	SetMachine(ctx context.Context, m plant.MachineState) error
@@ -120,9 +121,25 @@ func place(d plant.Device, named uuid.UUID) (uuid.UUID, error) {
 	return named, nil
 }
 
+// KeptHeader tells a sender that what was refused was kept here: at a station, which shows
+// it, or only on record, where it belongs to no station.
+const (
+	KeptHeader = "Holdfast-Kept"
+	keptShown  = "station"
+	keptOnly   = "record"
+)
+
+func kept(w http.ResponseWriter, station uuid.UUID) {
+	where := keptShown
+	if station == uuid.Nil {
+		where = keptOnly
+	}
+	w.Header().Set(KeptHeader, where)
+}
+
 // keep sets aside what was refused because of what it says, so that the station shows
 // it, and returns why it was refused. What the record set aside itself is left to it.
-func (s *Surface) keep(r *http.Request, station, about uuid.UUID, content any, why error) error {
+func (s *Surface) keep(w http.ResponseWriter, r *http.Request, station, about uuid.UUID, content any, why error) error {
 	pe := problemOf(why)
 	if pe == nil || pe.Kind != plant.Invalid && pe.Kind != plant.NotFound {
 		return why
@@ -140,5 +157,6 @@ func (s *Surface) keep(r *http.Request, station, about uuid.UUID, content any, w
 	if err := s.Store.SetAside(ctx, plant.Aside{Station: station, About: about, Device: d.ID, Why: pe}, body); err != nil {
 		return err
 	}
+	kept(w, station)
 	return why
 }

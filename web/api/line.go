@@ -17,7 +17,7 @@ type sentLine struct {
 	Station        uuid.UUID `json:"station"`
 	Characteristic string    `json:"characteristic"`
 	Line           string    `json:"line"`
-	Why            string    `json:"why"` // "unit" or "number"
+	Why            string    `json:"why"` // "unit", "number" or "refused"
 	At             time.Time `json:"at"`
 }
 
@@ -25,20 +25,23 @@ func (s *Surface) line(w http.ResponseWriter, r *http.Request) error {
 	var sent sentLine
 	body, err := read(r, &sent)
 	if err != nil {
-		return s.keep(r, uuid.Nil, sent.ID, asText(body), err)
+		return s.keep(w, r, uuid.Nil, sent.ID, asText(body), err)
 	}
 	station, err := place(senderOf(r), sent.Station)
 	if err == nil {
 		err = numbered(sent.ID)
 	}
 	if err != nil {
-		return s.keep(r, uuid.Nil, sent.ID, sent, err)
+		return s.keep(w, r, uuid.Nil, sent.ID, sent, err)
 	}
 	why := plant.Invalidf("line", "A line came that holds no reading: %q.", short(sent.Line))
-	if sent.Why == "unit" {
+	switch sent.Why {
+	case "unit":
 		why = plant.Invalidf("line", "A reading came in another unit: %q.", short(sent.Line))
+	case "refused":
+		why = plant.Invalidf("line", "Something that a sender brought was refused: %q.", short(sent.Line))
 	}
-	if err := s.keep(r, station, sent.ID, sent, why); err != error(why) {
+	if err := s.keep(w, r, station, sent.ID, sent, why); err != error(why) {
 		return err
 	}
 	return ui.RenderJSON(w, http.StatusOK, map[string]any{"id": sent.ID, "message": why.Message})

@@ -27,18 +27,18 @@ func (s *Surface) machine(w http.ResponseWriter, r *http.Request) error {
 	var sent sentMachine
 	body, err := read(r, &sent)
 	if err != nil {
-		return s.keep(r, uuid.Nil, sent.ID, asText(body), err)
+		return s.keep(w, r, uuid.Nil, sent.ID, asText(body), err)
 	}
 	station, err := place(senderOf(r), sent.Station)
 	if err != nil {
-		return s.keep(r, uuid.Nil, sent.ID, sent.content(), err)
+		return s.keep(w, r, uuid.Nil, sent.ID, sent.content(), err)
 	}
 	state, err := s.machineState(r, sent, station)
 	if err == nil {
 		err = s.Store.SetMachine(r.Context(), state)
 	}
 	if err != nil {
-		return s.keep(r, station, sent.ID, sent.content(), err)
+		return s.keep(w, r, station, sent.ID, sent.content(), err)
 	}
 	return ui.RenderJSON(w, http.StatusOK, map[string]any{"id": sent.ID, "machine": state.Machine})
 }

@@ -19,6 +19,7 @@ type sentRound struct {
 	SentAt   time.Time   `json:"sent_at"`
 	DueAt    time.Time   `json:"due_at"`
 	Occasion string      `json:"occasion"`
+	Lot      string      `json:"lot"`
 	Entries  []sentEntry `json:"entries"`
 }
 
@@ -29,6 +30,7 @@ type sentEntry struct {
 	Unit           string    `json:"unit"`
 	Setup          int       `json:"setup"`
 	Readings       []*string `json:"readings"`
+	Streams        []string  `json:"streams"` // ids or names, one a reading, lost ones included; or none
 	Short          string    `json:"short"`
 }
 
@@ -36,22 +38,26 @@ func (s *Surface) round(w http.ResponseWriter, r *http.Request) error {
 	var sent sentRound
 	body, err := read(r, &sent)
 	if err != nil {
-		return s.keep(r, uuid.Nil, sent.ID, asText(body), err)
+		return s.keep(w, r, uuid.Nil, sent.ID, asText(body), err)
 	}
 	station, err := place(senderOf(r), sent.Station)
 	if err != nil {
-		return s.keep(r, uuid.Nil, sent.ID, sent.content(), err)
+		return s.keep(w, r, uuid.Nil, sent.ID, sent.content(), err)
 	}
 	round, err := s.understand(r, sent, station)
 	if err != nil {
-		return s.keep(r, station, sent.ID, sent.content(), err)
+		if pe := problemOf(err); pe != nil && pe.Field == "station" {
+			station = uuid.Nil // there is none of this number that could show it
+		}
+		return s.keep(w, r, station, sent.ID, sent.content(), err)
 	}
 	answer, err := s.Store.Record(r.Context(), round)
 	if err != nil {
-		if pe := problemOf(err); pe != nil && pe.Field == "taken_at" {
+		if pe := problemOf(err); pe != nil && (pe.Kind == plant.Conflict || pe.Field == "taken_at") {
+			kept(w, station)
 			return err // the record has set it aside
 		}
-		return s.keep(r, station, sent.ID, sent.content(), err)
+		return s.keep(w, r, station, sent.ID, sent.content(), err)
 	}
 	return ui.RenderJSON(w, http.StatusOK, answer)
 }
@@ -90,10 +96,18 @@ func (s *Surface) understand(r *http.Request, sent sentRound, station uuid.UUID)
 	if err != nil {
 		return plant.Round{}, err
 	}
-	round := plant.Round{ID: sent.ID, Station: station, DueAt: sent.DueAt, Occasion: occasion, TakenRaw: sent.TakenAt,
+	lot, err := plant.CleanTextWithin("lot", sent.Lot, plant.MaxName)
+	if err != nil {
+		return plant.Round{}, err
+	}
+	streams, err := s.streams(r, sent, station)
+	if err != nil {
+		return plant.Round{}, err
+	}
+	round := plant.Round{ID: sent.ID, Station: station, Lot: lot, DueAt: sent.DueAt, Occasion: occasion, TakenRaw: sent.TakenAt,
 		Skew: skewOf(sent.SentAt, ui.FrameOf(r).Now), Source: "api", Device: senderOf(r).ID}
 	for i, e := range sent.Entries {
-		entry, err := e.understand(fmt.Sprintf("entries[%d]", i), st, known)
+		entry, err := e.understand(fmt.Sprintf("entries[%d]", i), st, known, streams)
 		if err != nil {
 			return plant.Round{}, err
 		}
@@ -102,13 +116,26 @@ func (s *Surface) understand(r *http.Request, sent sentRound, station uuid.UUID)
 	return round, nil
 }
 
-func (e sentEntry) understand(at string, st plant.StationState, known map[uuid.UUID]plant.Setup) (plant.Entry, error) {
+// streams reads the streams of the station's machines when the round names any.
+func (s *Surface) streams(r *http.Request, sent sentRound, station uuid.UUID) (map[uuid.UUID][]plant.Stream, error) {
+	for _, e := range sent.Entries {
+		if len(e.Streams) > 0 {
+			return s.Store.StationStreams(r.Context(), station)
+		}
+	}
+	return nil, nil
+}
+
+// understand brings an entry into the subgroup that it means. known are the set-ups of a
+// round that is on record already, and streams those of the station's machines.
+func (e sentEntry) understand(at string, st plant.StationState, known map[uuid.UUID]plant.Setup, streams map[uuid.UUID][]plant.Stream) (plant.Entry, error) {
 	c, ok := find(st, e.Characteristic)
 	if !ok {
 		return plant.Entry{}, plant.Invalidf(at+".characteristic", "This station measures no %q.", short(e.Characteristic))
 	}
 	setup := c.Setup
-	if stored, ok := known[c.ID]; ok {
+	stored, again := known[c.ID]
+	if again {
 		setup = stored // it is sent again: it means what it meant
 	}
 	switch {
@@ -118,14 +145,25 @@ func (e sentEntry) understand(at string, st plant.StationState, known map[uuid.U
 		return plant.Entry{}, plant.Invalidf(at+".unit", "Readings in %s came where %s is measured in %s. They were not taken.", short(e.Unit), c.Name, setup.Unit)
 	case len(e.Readings) > setup.Size:
 		return plant.Entry{}, plant.Invalidf(at+".readings", "There are %d readings where %d are asked.", len(e.Readings), setup.Size)
+	case len(e.Streams) > 0 && len(e.Streams) != len(e.Readings):
+		return plant.Entry{}, plant.Invalidf(at+".streams", "There are %d streams for %d readings. Name one for each reading, lost ones included, or none.", len(e.Streams), len(e.Readings))
 	}
 	out := plant.Entry{Characteristic: c.ID, SetupVersion: setup.Version, ShortReason: e.Short}
 	if e.Setup != 0 {
 		out.SetupVersion = e.Setup
 	}
 	for i, text := range e.Readings {
+		var stream uuid.UUID
+		if len(e.Streams) > 0 {
+			if stream, ok = streamOf(streams[c.MachineID], e.Streams[i], again); !ok {
+				return plant.Entry{}, plant.Invalidf(fmt.Sprintf("%s.streams[%d]", at, i), "The machine of %s has no stream %q.", c.Name, short(e.Streams[i]))
+			}
+		}
 		if text == nil {
 			continue
+		}
+		if stream != uuid.Nil {
+			out.Streams = append(out.Streams, stream)
 		}
 		v, err := plant.ParseReading(*text, setup.Decimals)
 		if err != nil {
@@ -156,6 +194,17 @@ func find(st plant.StationState, text string) (found plant.CharacteristicState, 
 		}
 	}
 	return found, ok
+}
+
+// streamOf finds a stream by its id or name. One that is retired takes no new readings;
+// a round that is sent again names what it named.
+func streamOf(streams []plant.Stream, text string, again bool) (uuid.UUID, bool) {
+	for _, x := range streams {
+		if (x.Name == text || x.ID.String() == text) && (again || !x.Retired) {
+			return x.ID, true
+		}
+	}
+	return uuid.Nil, false
 }
 
 func occasionOf(text string) (plant.Occasion, bool) {

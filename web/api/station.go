@@ -25,6 +25,7 @@ type machine struct {
 	Running bool      `json:"running"`
 	Part    string    `json:"part"`
 	Lot     string    `json:"lot"`
+	Streams []string  `json:"streams,omitempty"`
 }
 
 type toMeasure struct {
@@ -56,9 +57,19 @@ func (s *Surface) station(w http.ResponseWriter, r *http.Request) error {
 	if err != nil {
 		return err
 	}
+	streams, err := s.Store.StationStreams(r.Context(), id)
+	if err != nil {
+		return err
+	}
 	out := stationNow{Station: st.ID, Name: st.Name, Now: ui.FrameOf(r).Now, Machines: []machine{}, Characteristics: []toMeasure{}}
 	for _, m := range st.Machines {
-		out.Machines = append(out.Machines, machine{m.ID, m.Name, m.Running(), m.Part.Name, m.State.Lot})
+		one := machine{ID: m.ID, Name: m.Name, Running: m.Running(), Part: m.Part.Name, Lot: m.State.Lot}
+		for _, x := range streams[m.ID] {
+			if !x.Retired {
+				one.Streams = append(one.Streams, x.Name)
+			}
+		}
+		out.Machines = append(out.Machines, one)
 	}
 	for _, c := range st.Characteristics {
 		out.Characteristics = append(out.Characteristics, toMeasure{ID: c.ID, Name: c.Name, Machine: c.MachineID, Unit: c.Setup.Unit,
