@@ -208,6 +208,30 @@ func TestAMatterFromSignalToVerified(t *testing.T) {
 	} {
 		found(t, p, sql)
 	}
+	const unconfirmed = "was closed without the round that its plan demands to confirm the fix"
+	since := ` where characteristic_id = '` + p.Diameter.ID.String() + `' and taken_at >= (select restart_at from matter_fix where number = 2)`
+	for _, sql := range []string{
+		`delete from subgroup` + since,
+		`update subgroup set voided = true, recorded_at = recorded_at - interval '1 microsecond'` + since,
+		`update subgroup set recorded_at = recorded_at + interval '1 hour'` + since,
+		`update matter_fix set restart_at = restart_at + interval '1 hour' where number = 2`,
+	} {
+		foundSaying(t, p, sql, unconfirmed)
+	}
+	// What confirmed the fix did so, also when it is voided afterwards.
+	p.Clock.Advance(time.Minute)
+	last, err := p.History(ctx, p.Diameter.ID, plant.Stretch{Last: 1})
+	if err != nil {
+		t.Fatal(err)
+	}
+	point := last.Points[len(last.Points)-1]
+	if _, err := p.Correct(ctx, plant.Correction{Characteristic: p.Diameter.ID, Subgroup: point.Subgroup, TakenAt: point.TakenAt, Replaces: 1, Void: true,
+		Reason: plant.CorrectionReasons[0], Person: p.Supervisor.ID}); err != nil {
+		t.Fatal(err)
+	}
+	if ds, err := p.CheckRecord(ctx); err != nil || len(ds) > 0 {
+		t.Errorf("an honest record differs: %v, %v", ds, err)
+	}
 }
 
 // player of matters: everything that people do about one characteristic, in any order.

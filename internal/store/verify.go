@@ -27,6 +27,18 @@ var sealed = []string{
 	`select c.id, format('%s versions of subgroups are on record, %s were sealed', s.n, e.n) from characteristic c
 	cross join lateral (select count(*) as n from subgroup where characteristic_id = c.id) s
 	cross join lateral (select count(*) as n from ledger where chain = c.id and kind = 'subgroup') e where s.n <> e.n`,
+	// The round of each first version is the visit that was sealed, by the device and in the
+	// way that it came. A correction is no visit of its own.
+	`select e.chain, format('round %s is not on record as it was sealed', b->>'round')
+	from (select chain, convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'subgroup') e
+	left join round r on r.id = (b->>'round')::uuid
+	where b->>'version' = '1' and (r.id is null or r.station_id <> (b->>'station')::uuid or r.taken_at <> (b->>'taken_at')::timestamptz
+		or r.taken_raw <> (b->>'taken_raw')::timestamptz or r.skew_ms <> (b->>'skew_ms')::bigint or r.recorded_at <> (b->>'recorded_at')::timestamptz
+		or r.source <> b->>'source' or r.device_id is distinct from (b->>'device')::uuid or r.person_id is distinct from (b->>'person')::uuid)`,
+	`select s.characteristic_id, format('subgroup %s is on record for another round than was sealed', s.id) from subgroup s
+	left join round r on r.id = s.round_id where r.id is null`,
+	`select r.station_id, format('round %s holds nothing that was sealed', r.id) from round r
+	where not exists (select from subgroup s where s.round_id = r.id)`,
 	// What was computed when a subgroup was entered follows from its readings.
 	`select s.characteristic_id, format('the statistics of subgroup %s, version %s, are not those of its readings', s.id, s.version)
 	from subgroup s join setup u on u.characteristic_id = s.characteristic_id and u.version = s.setup_version

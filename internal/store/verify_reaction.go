@@ -43,6 +43,16 @@ var sealedReaction = []string{
 	cross join lateral generate_series(1, jsonb_array_length(p.steps)) st (n)
 	where not exists (select from matter_answer a where a.matter_id = (b->>'matter')::uuid and a.plan_id = p.id and a.step = st.n and not a.remedy
 		and a.attempt = (select max(f.number) from matter_fix f where f.matter_id = a.matter_id))`,
+	// A round confirms a fix when it was taken behind it, was on record when the matter was
+	// closed and had not been voided by then; what was voided later did confirm it.
+	`select e.chain, format('matter %s was closed without the round that its plan demands to confirm the fix', b->>'matter')
+	from (select chain, convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'matter' and body like '%"plans":%') e
+	join lateral (select coalesce(f.restart_at, f.at) as since from matter_fix f where f.matter_id = (b->>'matter')::uuid
+		order by f.number desc limit 1) fix on true
+	where exists (select from jsonb_array_elements_text(b->'plans') x (plan) join reaction_plan p on p.id = x.plan::uuid where p.confirm)
+		and not exists (select from subgroup s where s.characteristic_id = e.chain and s.taken_at >= fix.since and s.recorded_at <= (b->>'at')::timestamptz
+			and not exists (select from subgroup v where v.characteristic_id = e.chain and v.taken_at = s.taken_at and v.id = s.id
+				and v.voided and v.recorded_at < (b->>'at')::timestamptz))`,
 	`select e.chain, format('matter %s was closed without the second person that its plan demands', b->>'matter')
 	from (select chain, convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'matter' and body like '%"plans":%') e
 	where exists (select from jsonb_array_elements_text(b->'plans') x (plan) join reaction_plan p on p.id = x.plan::uuid where p.verify)

@@ -2,6 +2,8 @@ package store_test
 
 import (
 	"context"
+	"slices"
+	"strings"
 	"testing"
 	"time"
 
@@ -96,6 +98,12 @@ func TestTablesChangedBesideTheLedgerAreFound(t *testing.T) {
 // it back.
 func found(t testing.TB, p *storetest.Plant, sql string) {
 	t.Helper()
+	foundSaying(t, p, sql, "")
+}
+
+// foundSaying is found where one of the differences must say this.
+func foundSaying(t testing.TB, p *storetest.Plant, sql, says string) {
+	t.Helper()
 	ctx := context.Background()
 	tx, err := p.Pool().Begin(ctx)
 	if err != nil {
@@ -106,10 +114,54 @@ func found(t testing.TB, p *storetest.Plant, sql string) {
 		t.Fatalf("%s: %d rows, %v", sql, tag.RowsAffected(), err)
 	}
 	ds, err := store.CheckRecordIn(ctx, tx)
-	if err != nil || len(ds) == 0 {
-		t.Errorf("not found: %s (%v)", sql, err)
+	if err != nil || !slices.ContainsFunc(ds, func(d store.Difference) bool { return strings.Contains(d.What, says) }) {
+		t.Errorf("not found: %s (%v); told %v, want %q", sql, err, ds, says)
 	}
 	if err := tx.Rollback(ctx); err != nil {
 		t.Fatal(err)
 	}
+}
+
+// TestARoundOfAnotherSenderIsFound: which device sent a round, and how it came, is as
+// much a fact as its readings.
+func TestARoundOfAnotherSenderIsFound(t *testing.T) {
+	t.Parallel()
+	p := storetest.New(t, "x")
+	ctx := context.Background()
+	var senders []plant.Device
+	for _, name := range []string{"Bore gauge", "Test bench"} {
+		code, err := p.MakeDeviceCode(ctx, plant.Device{Kind: plant.Sender, Name: name, Station: p.Station.ID}, p.Administrator.ID)
+		if err != nil {
+			t.Fatal(err)
+		}
+		d, err := p.Enrol(ctx, code.Code, []byte(name))
+		if err != nil {
+			t.Fatal(err)
+		}
+		senders = append(senders, d)
+	}
+	r := p.Round(p.Diameter, calm...)
+	r.Source, r.Device, r.Person, r.Skew, r.Lot = "api", senders[0].ID, [16]byte{}, -time.Second, "K-2231"
+	r.TakenRaw = r.TakenRaw.Add(time.Second)
+	if _, err := p.Record(ctx, r); err != nil {
+		t.Fatal(err)
+	}
+	p.Clock.Advance(time.Minute)
+	a := p.MustRecord(t, p.Diameter, calm...)
+	correct(t, p, a, 1, low)
+	if ds, err := p.CheckRecord(ctx); err != nil || len(ds) > 0 {
+		t.Fatalf("an honest record differs: %v, %v", ds, err)
+	}
+	const is = " is not on record as it was sealed"
+	one := ` where source = 'api'`
+	for _, change := range []string{
+		`device_id = '` + senders[1].ID.String() + `'`, `device_id = null`, `source = 'station'`, `taken_raw = taken_raw + interval '1 second'`, `skew_ms = 0`,
+		`station_id = '` + p.Other.ID.String() + `'`, `person_id = '` + p.Operator.ID.String() + `'`, `recorded_at = recorded_at + interval '1 minute'`,
+	} {
+		foundSaying(t, p, `update round set `+change+one, "round "+r.ID.String()+is)
+	}
+	foundSaying(t, p, `delete from round`+one, "round "+r.ID.String()+is)
+	foundSaying(t, p, `insert into round select gen_random_uuid(), plant_id, station_id, due_at, occasion, taken_at, taken_raw, skew_ms, recorded_at, person_id, source, digest, answer, device_id
+		from round`+one, "holds nothing that was sealed")
+	foundSaying(t, p, `update subgroup set lot = 'K-2232' where lot = 'K-2231'`, is)
 }
