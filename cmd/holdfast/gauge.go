@@ -30,8 +30,7 @@ type sending struct {
 
 // with runs f while what is in the spool is sent.
 func (c *sending) with(ctx context.Context, log *slog.Logger, f func(ctx context.Context, s *relay.Spool) error) error {
-	token, err := readSecret(c.TokenFile)
-	if err != nil {
+	if _, err := readSecret(c.TokenFile); err != nil {
 		return err
 	}
 	trust, err := trusting(c.CA)
@@ -43,7 +42,7 @@ func (c *sending) with(ctx context.Context, log *slog.Logger, f func(ctx context
 		return err
 	}
 	defer s.Close()
-	p := relay.Poster{Spool: s, Server: c.Server, Token: token, Now: time.Now, Log: log, Pause: time.Second,
+	p := relay.Poster{Spool: s, Server: c.Server, Token: func() (string, error) { return readSecret(c.TokenFile) }, Now: time.Now, Log: log, Pause: time.Second,
 		HTTP: &http.Client{Timeout: 30 * time.Second, Transport: &http.Transport{Proxy: http.ProxyFromEnvironment, TLSClientConfig: trust, IdleConnTimeout: time.Minute},
 			CheckRedirect: func(*http.Request, []*http.Request) error { return http.ErrUseLastResponse }}}
 	background, stop := context.WithCancel(ctx)
@@ -92,6 +91,8 @@ type gaugeCmd struct {
 	Station        string        `help:"Id of the station, where the sender belongs to no single one."`
 	Unit           string        `help:"Unit of the readings. A line that states another is not taken." required:""`
 	Size           int           `help:"Readings of a subgroup." required:""`
+	Streams        []string      `name:"stream" help:"Stream of the machine that the readings come from: one for all of them, or one for each reading of a subgroup in their order." sep:"none"`
+	Lot            string        `help:"Order or lot that is measured. Left out: the one that the machine runs."`
 	Prefix         string        `help:"What stands before every reading."`
 	Suffix         string        `help:"What stands behind every reading."`
 	Sequence       bool          `help:"A running number stands before the reading: a line that comes twice under one is one reading. Otherwise it is two."`
@@ -99,12 +100,13 @@ type gaugeCmd struct {
 }
 
 func (c *gaugeCmd) Run(ctx context.Context, log *slog.Logger) error {
-	if c.Size < 1 || c.Size > 25 {
-		return errors.New("--size: a subgroup has 1 to 25 readings")
+	source := relay.Source{Characteristic: c.Characteristic, Station: c.Station, Size: c.Size, Streams: c.Streams, Within: c.Within,
+		Pattern: relay.Pattern{Prefix: c.Prefix, Suffix: c.Suffix, Unit: c.Unit, Sequence: c.Sequence}}
+	if err := source.Check(); err != nil {
+		return err
 	}
 	return c.with(ctx, log, func(ctx context.Context, s *relay.Spool) error {
-		g := &relay.Gather{Spool: s, Now: time.Now, Source: relay.Source{Characteristic: c.Characteristic, Station: c.Station, Size: c.Size, Within: c.Within,
-			Pattern: relay.Pattern{Prefix: c.Prefix, Suffix: c.Suffix, Unit: c.Unit, Sequence: c.Sequence}}}
+		g := &relay.Gather{Spool: s, Now: time.Now, Source: source, Lot: func() string { return c.Lot }}
 		if err := g.Flush(); err != nil {
 			log.Error("what waited could not be kept", "error", err)
 		}

@@ -33,6 +33,11 @@ type mqttCmd struct {
 //	characteristic = "Axle seat diameter"
 //	unit = "mm"
 //	size = 5
+//	lot_topic = "axles/turning-1/lot"    # says, as plain text, the order or lot that runs from then on
+//	streams = ["spindle 1", "spindle 2", "spindle 1", "spindle 2", "spindle 1"]
+//	                                     # one for each reading in their order, or one for all that this topic says
+//
+// Several topics of one characteristic fill the same subgroup, such as one for each spindle.
 type brokerFile struct {
 	Broker       string
 	Client       string
@@ -48,7 +53,9 @@ type brokerFile struct {
 		Size           int
 		Prefix, Suffix string
 		Sequence       bool
-		WithinMinutes  int `toml:"within_minutes"`
+		WithinMinutes  int    `toml:"within_minutes"`
+		LotTopic       string `toml:"lot_topic"`
+		Streams        []string
 	}
 }
 
@@ -75,28 +82,46 @@ func readBroker(path string, s *relay.Spool, log *slog.Logger) (*relay.Broker, e
 	if f.Broker == "" || f.Client == "" {
 		return nil, fmt.Errorf("%s: name the broker and a client", path)
 	}
-	b := &relay.Broker{URL: f.Broker, Client: f.Client, User: f.User, Rounds: f.Rounds, Readings: map[string]*relay.Gather{}, Spool: s, Now: time.Now, Log: log}
+	b := &relay.Broker{URL: f.Broker, Client: f.Client, User: f.User, Rounds: f.Rounds, Readings: map[string]*relay.Gather{}, Lots: map[string]bool{}, Spool: s, Now: time.Now, Log: log}
 	if f.PasswordFile != "" {
 		if b.Password, err = readSecret(f.PasswordFile); err != nil {
 			return nil, err
 		}
 	}
+	if f.User != "" && !strings.HasPrefix(f.Broker, "ssl://") && !strings.HasPrefix(f.Broker, "wss://") && !strings.HasPrefix(f.Broker, "tls://") {
+		log.Warn("user and password travel to the broker in the clear; use ssl:// where the broker has it", "broker", f.Broker)
+	}
 	if b.TLS, err = trusting(f.CA); err != nil {
 		return nil, err
 	}
 	for _, r := range f.Readings {
-		if strings.ContainsAny(r.Topic, "+#") {
-			return nil, fmt.Errorf("%s: a topic of readings has no wildcard, since each means one characteristic", path)
-		}
-		if r.Topic == "" || r.Characteristic == "" || r.Unit == "" || r.Size < 1 || r.Size > 25 {
-			return nil, fmt.Errorf("%s: readings need topic, characteristic, unit and a size of 1 to 25", path)
+		if strings.ContainsAny(r.Topic+r.LotTopic, "+#") {
+			return nil, fmt.Errorf("%s: a topic of readings or of a lot has no wildcard, since each means one thing", path)
 		}
 		within := 30 * time.Minute
 		if r.WithinMinutes > 0 {
 			within = time.Duration(r.WithinMinutes) * time.Minute
 		}
-		g := &relay.Gather{Spool: s, Now: time.Now, Source: relay.Source{Characteristic: r.Characteristic, Station: r.Station, Size: r.Size, Within: within,
-			Pattern: relay.Pattern{Prefix: r.Prefix, Suffix: r.Suffix, Unit: r.Unit, Sequence: r.Sequence}}}
+		g := &relay.Gather{Spool: s, Now: time.Now, Source: relay.Source{Characteristic: r.Characteristic, Station: r.Station, Size: r.Size, Streams: r.Streams,
+			Within: within, Pattern: relay.Pattern{Prefix: r.Prefix, Suffix: r.Suffix, Unit: r.Unit, Sequence: r.Sequence}}}
+		if err := g.Check(); err != nil {
+			return nil, fmt.Errorf("%s: %s: %w", path, r.Topic, err)
+		}
+		if r.Topic == "" || b.Readings[r.Topic] != nil || b.Lots[r.Topic] || r.Topic == f.Rounds {
+			return nil, fmt.Errorf("%s: readings need a topic of their own, %q", path, r.Topic)
+		}
+		if r.LotTopic != "" {
+			if b.Readings[r.LotTopic] != nil || r.LotTopic == r.Topic || r.LotTopic == f.Rounds {
+				return nil, fmt.Errorf("%s: %s says readings or rounds, and no lot", path, r.LotTopic)
+			}
+			b.Lots[r.LotTopic] = true
+			g.Lot = func() string { return s.Lot(r.LotTopic) }
+		}
+		for topic, o := range b.Readings {
+			if o.Characteristic == g.Characteristic && o.Station == g.Station && (o.Size != g.Size || o.Unit != g.Unit || len(o.Streams) != 1 || len(g.Streams) != 1) {
+				return nil, fmt.Errorf("%s: %s and %s fill the same subgroup: they need the same size and unit, and one stream each", path, topic, r.Topic)
+			}
+		}
 		if err := g.Flush(); err != nil {
 			log.Error("what waited could not be kept", "error", err)
 		}

@@ -6,7 +6,11 @@ import (
 	"encoding/json"
 	"fmt"
 	"log/slog"
+	"strings"
+	"sync"
 	"time"
+	"unicode"
+	"unicode/utf8"
 
 	mqtt "github.com/eclipse/paho.mqtt.golang"
 	"github.com/google/uuid"
@@ -23,6 +27,7 @@ type Broker struct {
 	TLS      *tls.Config
 	Rounds   string             // topic of whole rounds, as POST /api/v1/rounds takes them; "" for none
 	Readings map[string]*Gather // by topic
+	Lots     map[string]bool    // topics that say which order or lot runs from now on
 	Spool    *Spool
 	Now      func() time.Time
 	Log      *slog.Logger
@@ -37,6 +42,7 @@ func (b *Broker) Run(ctx context.Context) error {
 	opt := mqtt.NewClientOptions().AddBroker(b.URL).SetClientID(b.Client).SetUsername(b.User).SetPassword(b.Password).SetTLSConfig(b.TLS).
 		SetCleanSession(false).SetAutoAckDisabled(true).SetOrderMatters(true).
 		SetAutoReconnect(true).SetMaxReconnectInterval(connectPause).SetConnectRetry(true).SetConnectRetryInterval(time.Second).
+		SetConnectionNotificationHandler(b.tell()).
 		SetDefaultPublishHandler(func(_ mqtt.Client, m mqtt.Message) {
 			if b.take(m) {
 				m.Ack()
@@ -76,9 +82,32 @@ func (b *Broker) Run(ctx context.Context) error {
 	}
 }
 
+// tell logs why the broker does not let us in: a certificate of another authority, one that
+// is over, a wrong password. It is tried every second, so the same is said once a minute.
+func (b *Broker) tell() mqtt.ConnectionNotificationHandler {
+	var mu sync.Mutex
+	var last string
+	var at time.Time
+	return func(_ mqtt.Client, n mqtt.ConnectionNotification) {
+		failed, ok := n.(mqtt.ConnectionNotificationBrokerFailed)
+		if !ok {
+			return
+		}
+		mu.Lock()
+		defer mu.Unlock()
+		if why := failed.Reason.Error(); why != last || time.Since(at) > time.Minute {
+			last, at = why, time.Now()
+			b.Log.Error("the broker cannot be connected to; it is tried again", "broker", b.URL, "error", why)
+		}
+	}
+}
+
 func (b *Broker) topics() map[string]byte {
 	all := make(map[string]byte, len(b.Readings)+1)
 	for topic := range b.Readings {
+		all[topic] = 1
+	}
+	for topic := range b.Lots {
 		all[topic] = 1
 	}
 	if b.Rounds != "" {
@@ -93,7 +122,10 @@ func (b *Broker) take(m mqtt.Message) bool {
 	source := b.Rounds
 	g := b.Readings[m.Topic()]
 	if g != nil {
-		source = g.Characteristic
+		source = g.key()
+	}
+	if b.Lots[m.Topic()] {
+		return b.lot(m.Topic(), string(m.Payload()))
 	}
 	if g == nil && b.Rounds == "" {
 		b.Log.Warn("a message came that no topic of ours asks for", "topic", m.Topic())
@@ -113,6 +145,27 @@ func (b *Broker) take(m mqtt.Message) bool {
 		b.Log.Error("a message could not be kept; the broker keeps it", "topic", m.Topic(), "error", err)
 	}
 	return durable && err == nil
+}
+
+// maxLot is the most characters of an order or lot that the server takes.
+const maxLot = 80
+
+// lot keeps which lot runs from now on. Of one that cannot be, none is known.
+func (b *Broker) lot(topic, payload string) bool {
+	lot := strings.TrimSpace(payload)
+	bad := !utf8.ValidString(lot) || utf8.RuneCountInString(lot) > maxLot || strings.ContainsFunc(lot, unicode.IsControl)
+	if bad {
+		lot = ""
+	}
+	err := b.Spool.SetLot(topic, lot)
+	if err == nil && bad {
+		g := Gather{Source: Source{Characteristic: topic}, Spool: b.Spool, Now: b.Now}
+		_, err = g.bad(strings.ToValidUTF8(payload, "\uFFFD"), errRefused, "", b.Now())
+	}
+	if err != nil {
+		b.Log.Error("a lot could not be kept; the broker keeps it", "topic", topic, "error", err)
+	}
+	return err == nil
 }
 
 // round keeps a whole round under its own number. What is no round is a bad line.

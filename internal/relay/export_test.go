@@ -1,6 +1,10 @@
 package relay
 
-import "syscall"
+import (
+	"syscall"
+
+	mqtt "github.com/eclipse/paho.mqtt.golang"
+)
 
 // fullDisk takes part of a line and no more, as a disk does that is full.
 type fullDisk struct{ file }
@@ -20,3 +24,18 @@ func FillDisk(s *Spool, full bool) {
 		s.file = fullDisk{s.file}
 	}
 }
+
+// payload is a message of the broker that is no repetition.
+type payload struct {
+	mqtt.Message
+	topic string
+	body  []byte
+}
+
+func (p payload) Topic() string     { return p.topic }
+func (p payload) Payload() []byte   { return p.body }
+func (p payload) MessageID() uint16 { return 1 }
+func (p payload) Duplicate() bool   { return false }
+
+// TakePayload gives the broker's reader one message; true when it may be acknowledged.
+func TakePayload(b *Broker, topic string, body []byte) bool { return b.take(payload{topic: topic, body: body}) }

@@ -27,6 +27,8 @@ type Line struct {
 var (
 	ErrUnit   = errors.New("unit")
 	ErrNumber = errors.New("number")
+	// errRefused is of what holds no reading by its nature, and cannot be.
+	errRefused = errors.New("refused")
 )
 
 var (

@@ -222,7 +222,7 @@ func TestAnOldBeginningIsSentAsAShortSubgroup(t *testing.T) {
 	take(t, g, "1.1", "1.2")
 	now = now.Add(2 * time.Minute)
 	take(t, g, "2.1")
-	m, ok := s.Next()
+	m, ok := s.Next(nil)
 	if !ok || len(s.Waiting("Diameter")) != 1 || !json.Valid(m.Body) || !slices.Contains([]string{"rounds"}, m.Path) {
 		t.Errorf("%s waits, with %v", m.Body, s.Waiting("Diameter"))
 	}

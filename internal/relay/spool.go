@@ -42,6 +42,8 @@ type Reading struct {
 	ID     string    `json:"id"`
 	Number string    `json:"number"`
 	At     time.Time `json:"at"`
+	Stream string    `json:"stream,omitempty"`
+	Lot    string    `json:"lot,omitempty"` // that ran when it came
 }
 
 // record is one line of the file.
@@ -52,6 +54,7 @@ type record struct {
 	Put     *Message `json:"put,omitempty"`
 	Ends    bool     `json:"ends,omitempty"` // what waited of the source became a message
 	Done    string   `json:"done,omitempty"`
+	Lot     *string  `json:"lot,omitempty"` // that runs from now on, as its topic says
 }
 
 // file is what the spool needs of one; tests put a disk that is full in its place.
@@ -82,6 +85,7 @@ type Spool struct {
 	partial map[string][]Reading
 	loose   map[string]int // readings of a source that are not on the disk
 	marks   map[string][]string
+	lots    map[string]string // by topic
 	more    chan struct{}
 }
 
@@ -97,7 +101,7 @@ func OpenSpool(path string, log *slog.Logger) (*Spool, error) {
 		return nil, fmt.Errorf("the spool %s is used by another process: %w", path, err)
 	}
 	s := &Spool{log: log, path: path, lock: lock, held: map[string]record{}, partial: map[string][]Reading{}, loose: map[string]int{},
-		marks: map[string][]string{}, more: make(chan struct{}, 1)}
+		marks: map[string][]string{}, lots: map[string]string{}, more: make(chan struct{}, 1)}
 	if err := s.load(); err != nil {
 		_ = lock.Close()
 		return nil, err
@@ -151,14 +155,18 @@ func (s *Spool) apply(r record) {
 		delete(s.partial, r.Source)
 		delete(s.loose, r.Source)
 	}
-	switch {
-	case r.Reading != nil:
+	if r.Reading != nil {
 		s.partial[r.Source] = append(s.partial[r.Source], *r.Reading)
-	case r.Put != nil:
+	}
+	if r.Put != nil {
 		s.pending = append(s.pending, *r.Put)
-	case r.Done != "":
+	}
+	if r.Done != "" {
 		s.pending = slices.DeleteFunc(s.pending, func(m Message) bool { return m.ID == r.Done })
 		delete(s.held, r.Done)
+	}
+	if r.Lot != nil {
+		s.lots[r.Source] = *r.Lot
 	}
 }
 
@@ -241,21 +249,20 @@ func (s *Spool) Put(source, mark string, ends bool, m Message) (durable bool, er
 		durable = true
 	}
 	s.apply(rec)
-	select {
-	case s.more <- struct{}{}:
-	default:
-	}
+	s.tell()
 	return durable, nil
 }
 
-// Next gives the oldest message that is not done.
-func (s *Spool) Next() (Message, bool) {
+// Next gives the oldest message that is not done and not put off; nil puts off none.
+func (s *Spool) Next(putOff func(id string) bool) (Message, bool) {
 	s.mu.Lock()
 	defer s.mu.Unlock()
-	if len(s.pending) == 0 {
-		return Message{}, false
+	for _, m := range s.pending {
+		if putOff == nil || !putOff(m.ID) {
+			return m, true
+		}
 	}
-	return s.pending[0], true
+	return Message{}, false
 }
 
 // Len is how many messages wait.
@@ -265,73 +272,37 @@ func (s *Spool) Len() int {
 	return len(s.pending)
 }
 
-// More tells that something was put since it was read last.
-func (s *Spool) More() <-chan struct{} { return s.more }
+func (s *Spool) tell() {
+	select {
+	case s.more <- struct{}{}:
+	default:
+	}
+}
 
-// Done notes that the server has taken or refused a message. When that cannot be
-// written, the message is sent once more after a restart, under the same number.
-func (s *Spool) Done(id string) {
+// SetLot keeps the order or lot that a topic says runs from now on; Lot gives it.
+func (s *Spool) SetLot(topic, lot string) error {
 	s.mu.Lock()
 	defer s.mu.Unlock()
-	was := s.held[id]
-	r := record{Source: was.Source, Ends: was.Ends, Done: id}
-	_ = s.append(r) // said in the log
-	r.Ends = false
-	s.apply(r)
-	if s.size > compactAt && s.size > 4*s.live() {
-		if err := s.compact(); err != nil {
-			s.log.Warn("the spool could not be written anew", "file", s.path, "error", err)
-		}
+	if s.lots[topic] == lot {
+		return nil
 	}
+	rec := record{Source: topic, Lot: &lot}
+	if err := s.append(rec); err != nil {
+		return errors.Join(ErrFull, err)
+	}
+	s.apply(rec)
+	return nil
 }
 
-func (s *Spool) live() (size int64) {
-	for _, m := range s.pending {
-		size += int64(len(m.Body))
-	}
-	return size
+// Lot is the lot that a topic said last, "" when it has said none.
+func (s *Spool) Lot(topic string) string {
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	return s.lots[topic]
 }
 
-// compact writes the file anew with what is still needed, beside the old one, and then
-// puts it in its place.
-func (s *Spool) compact() error {
-	var b bytes.Buffer
-	enc := json.NewEncoder(&b)
-	for source, marks := range s.marks {
-		for _, m := range marks {
-			_ = enc.Encode(record{Source: source, Mark: m})
-		}
-	}
-	for i := range s.pending {
-		if err := enc.Encode(record{Put: &s.pending[i]}); err != nil {
-			return err
-		}
-	}
-	for source, readings := range s.partial {
-		for i := range readings {
-			_ = enc.Encode(record{Source: source, Reading: &readings[i]})
-		}
-	}
-	f, err := os.OpenFile(s.path+".new", os.O_CREATE|os.O_WRONLY|os.O_TRUNC|os.O_APPEND, 0o600)
-	if err != nil {
-		return err
-	}
-	_, err = f.Write(b.Bytes())
-	if err == nil {
-		err = f.Sync()
-	}
-	if err == nil {
-		err = os.Rename(s.path+".new", s.path)
-	}
-	if err != nil {
-		return errors.Join(err, f.Close())
-	}
-	_ = s.file.Close()
-	s.file, s.size = f, int64(b.Len())
-	clear(s.held)
-	clear(s.loose)
-	return syncFolder(s.path)
-}
+// More tells that something was put since it was read last.
+func (s *Spool) More() <-chan struct{} { return s.more }
 
 // Close lets go of the file.
 func (s *Spool) Close() error { return errors.Join(s.file.Close(), s.lock.Close()) }
