@@ -4,6 +4,7 @@ import (
 	"context"
 	"crypto/tls"
 	"encoding/json"
+	"errors"
 	"fmt"
 	"log/slog"
 	"strings"
@@ -13,6 +14,7 @@ import (
 	"unicode/utf8"
 
 	mqtt "github.com/eclipse/paho.mqtt.golang"
+	"github.com/eclipse/paho.mqtt.golang/packets"
 	"github.com/google/uuid"
 )
 
@@ -31,6 +33,8 @@ type Broker struct {
 	Spool    *Spool
 	Now      func() time.Time
 	Log      *slog.Logger
+
+	onTaken func(again bool) // tests hear of each message that was taken
 }
 
 const connectPause = 10 * time.Second
@@ -40,12 +44,15 @@ const connectPause = 10 * time.Second
 func (b *Broker) Run(ctx context.Context) error {
 	lost := make(chan struct{}, 1)
 	opt := mqtt.NewClientOptions().AddBroker(b.URL).SetClientID(b.Client).SetUsername(b.User).SetPassword(b.Password).SetTLSConfig(b.TLS).
-		SetCleanSession(false).SetAutoAckDisabled(true).SetOrderMatters(true).
+		SetProtocolVersion(4).SetCleanSession(false).SetAutoAckDisabled(true).SetOrderMatters(true).
 		SetAutoReconnect(true).SetMaxReconnectInterval(connectPause).SetConnectRetry(true).SetConnectRetryInterval(time.Second).
 		SetConnectionNotificationHandler(b.tell()).
 		SetDefaultPublishHandler(func(_ mqtt.Client, m mqtt.Message) {
 			if b.take(m) {
 				m.Ack()
+				if b.onTaken != nil {
+					b.onTaken(m.Duplicate())
+				}
 				return
 			}
 			select {
@@ -89,13 +96,21 @@ func (b *Broker) tell() mqtt.ConnectionNotificationHandler {
 	var last string
 	var at time.Time
 	return func(_ mqtt.Client, n mqtt.ConnectionNotification) {
-		failed, ok := n.(mqtt.ConnectionNotificationBrokerFailed)
-		if !ok {
+		var reason error
+		switch n := n.(type) {
+		case mqtt.ConnectionNotificationBrokerFailed: // there was no connection
+			reason = n.Reason
+		case mqtt.ConnectionNotificationFailed: // the broker said no
+			if !errors.Is(n.Reason, packets.ErrorNetworkError) {
+				reason = n.Reason
+			}
+		}
+		if reason == nil {
 			return
 		}
 		mu.Lock()
 		defer mu.Unlock()
-		if why := failed.Reason.Error(); why != last || time.Since(at) > time.Minute {
+		if why := reason.Error(); why != last || time.Since(at) > time.Minute {
 			last, at = why, time.Now()
 			b.Log.Error("the broker cannot be connected to; it is tried again", "broker", b.URL, "error", why)
 		}

@@ -56,7 +56,7 @@ func (p *Poster) Run(ctx context.Context) {
 	p.later = map[string]putOff{}
 	pause := p.Pause
 	for ctx.Err() == nil {
-		m, ok := p.Spool.Next(func(id string) bool { return time.Now().Before(p.later[id].until) })
+		m, ok := p.next()
 		if !ok {
 			p.wait(ctx)
 			continue
@@ -100,17 +100,33 @@ func (p *Poster) Run(ctx context.Context) {
 	}
 }
 
+// next is what is sent next: what was not tried yet before what was put off, or that would
+// hold up the rest; of that, the one whose time came first.
+func (p *Poster) next() (Message, bool) {
+	if m, ok := p.Spool.Next(func(id string) bool { _, was := p.later[id]; return was }); ok {
+		return m, true
+	}
+	first, ok := p.firstPutOff()
+	if !ok || time.Now().Before(p.later[first].until) {
+		return Message{}, false
+	}
+	return p.Spool.Next(func(id string) bool { return id != first })
+}
+
+func (p *Poster) firstPutOff() (first string, ok bool) {
+	for id, l := range p.later {
+		if !ok || l.until.Before(p.later[first].until) {
+			first, ok = id, true
+		}
+	}
+	return first, ok
+}
+
 // wait waits for something to send: new, or put off until now.
 func (p *Poster) wait(ctx context.Context) {
 	var due <-chan time.Time
-	if len(p.later) > 0 {
-		var first time.Time
-		for _, l := range p.later {
-			if first.IsZero() || l.until.Before(first) {
-				first = l.until
-			}
-		}
-		due = time.After(time.Until(first))
+	if first, ok := p.firstPutOff(); ok {
+		due = time.After(time.Until(p.later[first].until))
 	}
 	select {
 	case <-ctx.Done():

@@ -264,14 +264,14 @@ func TestAFullDisk(t *testing.T) {
 	}
 }
 
-// startBroker starts the plant's broker on an address.
-func startBroker(t *testing.T, at string) *broker.Server {
+// startBroker starts the plant's broker.
+func startBroker(t *testing.T, l net.Listener) *broker.Server {
 	t.Helper()
 	b := broker.New(&broker.Options{InlineClient: true, Logger: quiet})
 	if err := b.AddHook(new(auth.AllowHook), nil); err != nil {
 		t.Fatal(err)
 	}
-	if err := b.AddListener(listeners.NewTCP(listeners.Config{ID: "t", Address: at})); err != nil {
+	if err := b.AddListener(listeners.NewNet("t", l)); err != nil {
 		t.Fatal(err)
 	}
 	if err := b.Serve(); err != nil {
@@ -282,13 +282,9 @@ func startBroker(t *testing.T, at string) *broker.Server {
 
 func TestFromTheBroker(t *testing.T) {
 	t.Parallel()
-	l, err := net.Listen("tcp", "127.0.0.1:0")
-	if err != nil {
-		t.Fatal(err)
-	}
+	l := listen(t)
 	at := l.Addr().String()
-	_ = l.Close()
-	hub := startBroker(t, at)
+	hub := startBroker(t, l)
 	defer hub.Close()
 	to := serve(t)
 	s := open(t, filepath.Join(t.TempDir(), "spool"))
