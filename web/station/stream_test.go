@@ -95,6 +95,8 @@ func TestAStreamMustBeOneOfTheMachine(t *testing.T) {
 	a, c := two[0].ID.String(), two[1].ID.String()
 	form[name] = []string{a, c, "", c, a}
 	b.post(s.at("round"), form).is(http.StatusUnprocessableEntity).says("Say which spindle or cavity part 3 came from.")
+	form[name] = []string{a, c, uuid.NewString(), c, a}
+	b.post(s.at("round"), form).is(http.StatusUnprocessableEntity).says("14.992")
 	form[name] = []string{a, c, a, c, a}
 	b.post(s.at("round"), form).is(http.StatusSeeOther)
 	b.get(s.at("correct")).is(http.StatusOK).says("Spindle 2")
