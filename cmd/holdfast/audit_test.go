@@ -34,6 +34,7 @@ func printed(t *testing.T, run func() error) (string, error) {
 }
 
 func TestAuditAgainstKeptHeads(t *testing.T) {
+	t.Parallel()
 	ctx, log := context.Background(), slog.New(slog.DiscardHandler)
 	p := storetest.New(t, "x")
 	p.MustRecord(t, p.Diameter, 14990, 14991, 14992, 14990, 14991)

@@ -15,6 +15,7 @@ import (
 // One shift opens a matter and writes a note; the next reads both, clears the note and
 // confirms; the sheet is printed on A4 with the root of the day.
 func TestHandoverFromShiftToShift(t *testing.T) {
+	t.Parallel()
 	r := serve(t)
 	r.calm(t, 20)
 	r.MustFreeze(t, r.Diameter)

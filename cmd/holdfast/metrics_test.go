@@ -9,6 +9,7 @@ import (
 )
 
 func TestMetricsAreForTheMonitorOnly(t *testing.T) {
+	t.Parallel()
 	const token = "a token of some length"
 	file := filepath.Join(t.TempDir(), "token")
 	if err := os.WriteFile(file, []byte(token+"\n"), 0o600); err != nil {

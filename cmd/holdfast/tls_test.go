@@ -23,6 +23,7 @@ import (
 )
 
 func TestPlainHTTPIsForThisMachineOnly(t *testing.T) {
+	t.Parallel()
 	for addr, good := range map[string]bool{
 		"127.0.0.1:80": true, "[::1]:80": true, "localhost:80": true,
 		":80": false, "0.0.0.0:80": false, "10.0.0.5:80": false, "[::]:80": false, "works.example:80": false, "nonsense": false,
@@ -80,6 +81,7 @@ func fetch(t *testing.T, c *http.Client, url string) (*http.Response, string) {
 }
 
 func TestServesOverItsOwnAuthority(t *testing.T) {
+	t.Parallel()
 	r, way, dir := serveTLS(t)
 	c := way.client(t)
 	if !strings.HasPrefix(r.url, "https://") {
@@ -127,6 +129,7 @@ func TestServesOverItsOwnAuthority(t *testing.T) {
 }
 
 func TestStartPrintsTheFingerprint(t *testing.T) {
+	t.Parallel()
 	state := t.TempDir()
 	way, err := transport{TLS: "auto"}.prepare("127.0.0.1:0", state, time.Now)
 	if err != nil {
@@ -146,6 +149,7 @@ func TestStartPrintsTheFingerprint(t *testing.T) {
 }
 
 func TestNobodyGetsPastTheProxy(t *testing.T) {
+	t.Parallel()
 	proxied := func(r string, forwarded ...string) (*http.Request, secured) {
 		req, err := http.NewRequest(http.MethodGet, "http://works.example/station", nil)
 		if err != nil {
@@ -196,6 +200,7 @@ func TestNobodyGetsPastTheProxy(t *testing.T) {
 // A browser that trusts the generated authority, under a name that is not localhost, has
 // all that the station needs for its queue.
 func TestBrowserOverHTTPS(t *testing.T) {
+	t.Parallel()
 	const name = "works.plant.example"
 	r, way, _ := serveTLS(t, name)
 	key := sha256.Sum256(way.root.RawSubjectPublicKeyInfo)
@@ -223,6 +228,7 @@ func TestBrowserOverHTTPS(t *testing.T) {
 }
 
 func TestHealthOfNobody(t *testing.T) {
+	t.Parallel()
 	err := (&healthCmd{URL: "http://127.0.0.1:1"}).Run(context.Background())
 	if op, ok := errors.AsType[*net.OpError](err); !ok {
 		t.Errorf("nobody there: %v, %v", err, op)
