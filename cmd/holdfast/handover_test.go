@@ -36,11 +36,11 @@ func TestHandoverFromShiftToShift(t *testing.T) {
 	before.FitsWidth("handover", 1280, 320)
 	before.Size(1280, 800)
 	before.Want("nothing to confirm while the shift runs", `document.querySelectorAll("form[action$='/read']").length`, "0")
-	before.Click(".ho-write button")
+	before.Click(".ho-write button[type=submit]")
 	before.WaitFor(`document.querySelector(".problem")`) // an empty note is none
 	before.Accessible("an empty note")
 	before.Fill(".ho-write textarea", "Coolant low, barrel ordered")
-	before.Click(".ho-write button")
+	before.Click(".ho-write button[type=submit]")
 	before.WaitFor(`document.querySelector("[data-testid=notes]").textContent.includes("barrel ordered")`)
 
 	// A running shift follows by itself, and leaves alone what somebody types.

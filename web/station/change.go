@@ -200,9 +200,11 @@ func (s *Surface) logChange(w http.ResponseWriter, r *http.Request) error {
 	}
 	taken, skew, own, err := sentTime(form, frame.Now)
 	if err == nil {
-		if c.HappenedAt = taken.Add(skew); !own {
-			c.HappenedAt = s.stamps.of(c.ID, frame.Now)
+		at := frame.Now
+		if own {
+			at = taken.Add(skew)
 		}
+		c.HappenedAt = s.stamps.as(c.ID, frame.Now, at)
 		err = s.store.LogChange(r.Context(), c)
 	}
 	if err == nil {

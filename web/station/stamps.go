@@ -15,30 +15,36 @@ import (
 // double tap.
 const stampKept = 10 * time.Minute
 
-// stamps keeps for a while when something was first sent, for what comes without a
-// time of its own. A double tap then repeats the first send instead of contradicting
-// it.
+// stamps keeps for a while what time something had when it was first sent: for what comes
+// without a time of its own, and for what comes with one, whose correction is measured
+// anew at every send and is never the same to the millisecond. A double tap then repeats
+// the first send instead of contradicting it.
 type stamps struct {
 	mu    sync.Mutex
-	first map[uuid.UUID]time.Time
+	first map[uuid.UUID]stamp
 }
 
-func newStamps() *stamps { return &stamps{first: make(map[uuid.UUID]time.Time)} }
+type stamp struct{ sent, at time.Time }
+
+func newStamps() *stamps { return &stamps{first: make(map[uuid.UUID]stamp)} }
 
 // of returns when id was first sent, which is now if it never was.
-func (s *stamps) of(id uuid.UUID, now time.Time) time.Time {
+func (s *stamps) of(id uuid.UUID, now time.Time) time.Time { return s.as(id, now, now) }
+
+// as returns what time id had when it was first sent, which is at if it never was.
+func (s *stamps) as(id uuid.UUID, now, at time.Time) time.Time {
 	s.mu.Lock()
 	defer s.mu.Unlock()
-	if at, ok := s.first[id]; ok && now.Sub(at) < stampKept {
-		return at
+	if first, ok := s.first[id]; ok && now.Sub(first.sent) < stampKept {
+		return first.at
 	}
-	for k, at := range s.first {
-		if now.Sub(at) >= stampKept {
+	for k, first := range s.first {
+		if now.Sub(first.sent) >= stampKept {
 			delete(s.first, k)
 		}
 	}
-	s.first[id] = now
-	return now
+	s.first[id] = stamp{now, at}
+	return at
 }
 
 // forget drops a stamp: what was sent was refused, and the next try is a new one.
