@@ -114,7 +114,20 @@ func TestTheFileOfTheBroker(t *testing.T) {
 	if g := b.Readings["axles/diameter"]; g == nil || g.Size != 5 || g.Unit != "mm" || b.Password != "open sesame" || b.Rounds != "axles/rounds" || b.TLS == nil {
 		t.Errorf("read %+v", b)
 	}
+	const spindle = "[[readings]]\ntopic = \"axles/%[1]s\"\ncharacteristic = \"D\"\nunit = \"mm\"\nsize = 4\nlot_topic = \"axles/lot\"\nstreams = [\"spindle %[1]s\"]\n"
+	one, two := fmt.Sprintf(spindle, "1"), fmt.Sprintf(spindle, "2")
+	if b, err = read(head + one + two); err != nil {
+		t.Fatal(err)
+	}
+	if err := s.SetLot("axles/lot", "K-2231"); err != nil {
+		t.Fatal(err)
+	}
+	if g := b.Readings["axles/2"]; g == nil || len(g.Streams) != 1 || g.Streams[0] != "spindle 2" || !b.Lots["axles/lot"] || g.Lot() != "K-2231" {
+		t.Errorf("read %+v", b)
+	}
 	for _, wrong := range []string{
+		head + one + one, head + one + strings.Replace(two, "size = 4", "size = 5", 1), head + one + strings.Replace(two, "streams", "#streams", 1),
+		head + strings.Replace(one, "[\"spindle 1\"]", "[\"a\", \"b\"]", 1), head + strings.Replace(one, "axles/lot", "axles/1", 1), head + strings.Replace(one, "axles/lot", "axles/+", 1),
 		"client = \"x\"\nrounds = \"r\"\n", head, head + "rounds = \"r\"\npassword = \"x\"\n",
 		head + "[[readings]]\ntopic = \"a/#\"\ncharacteristic = \"D\"\nunit = \"mm\"\nsize = 5\n",
 		head + "[[readings]]\ntopic = \"a\"\ncharacteristic = \"D\"\nsize = 5\n",

@@ -38,7 +38,8 @@ var columns = []Column{
 	{Key: "chart", Header: "Chart", Hint: "average and range, average and standard deviation, or single readings; empty: chosen by the number of parts.", example: "average and range"},
 	{Key: "gauge", Header: "Gauge", Hint: "What it is measured with.", example: "Micrometer M-04"},
 	{Key: "resolution", Header: "Gauge resolution", Hint: "The smallest step that the gauge shows.", example: "0.001", number: true},
-	{Key: "next_check", Header: "Gauge next check", Hint: "A day, as 2027-01-31."},
+	{Key: "next_check", Header: "Gauge next check", Hint: "A day, as 2027-01-31.", example: "2027-01-31"},
+	{Key: "check_days", Header: "Days between gauge checks", Hint: "From one good check to the next; empty: each check says when the next is.", example: "180", number: true},
 	{Key: "minutes", Header: "Sample every minutes", Hint: "Of running time; may be empty.", example: "30", number: true},
 	{Key: "parts", Header: "Sample every parts", Hint: "Made since the last sample; may be empty.", number: true},
 	{Key: "events", Header: "Sample after", Hint: "start-up, changeover, tool change, an adjustment, first piece, last piece, with | between them.", example: "tool change"},
@@ -50,6 +51,8 @@ var columns = []Column{
 	{Key: "risk_analysis", Header: "Risk analysis", Hint: "Its reference.", example: "RA-20.3"},
 	{Key: "special_mark", Header: "Special characteristic", Hint: "The mark that the customer or the plant uses.", example: "S"},
 	{Key: "method", Header: "Method", Hint: "How it is measured.", example: "micrometer, seat centre"},
+	{Key: "shift", Header: "Shift", Hint: "A shift of the plant, in a row of its own. The shifts of a file together are the shift calendar of a plant that has none yet."},
+	{Key: "shift_starts", Header: "Shift starts", Hint: "A time of the day on the clock of the plant, as 06:00. It ends where the next one starts."},
 }
 
 // Columns lists the columns in the order in which they are written.

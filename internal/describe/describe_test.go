@@ -34,6 +34,9 @@ func read(t *testing.T, content string, o plant.Outline) Plan {
 func with(o plant.Outline, a plant.Addition) plant.Outline {
 	o.Lines, o.Stations, o.Machines = append(o.Lines, a.Lines...), append(o.Stations, a.Stations...), append(o.Machines, a.Machines...)
 	o.Parts, o.Gauges, o.Characteristics = append(o.Parts, a.Parts...), append(o.Gauges, a.Gauges...), append(o.Characteristics, a.Characteristics...)
+	if len(a.Shifts) > 0 {
+		o.Plant.Shifts = a.Shifts
+	}
 	return o
 }
 

@@ -7,6 +7,10 @@
 // (Columns lists them); their order is free, and those that are not needed may be left
 // out. Within a file things are known by their names, as in the plant.
 //
+// A row may also name one shift and when it starts. The shifts of a file become the
+// calendar of a plant that has none; a calendar that is there is changed on its page only,
+// since one more shift would change when the others end.
+//
 // Reading decides nothing by guess: what cannot be understood is a Problem with its row
 // and column, and a file with problems adds nothing. What is in the plant already stays
 // as it is, so the same file may be read again.

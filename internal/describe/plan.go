@@ -85,7 +85,10 @@ func (p Plan) Digest() string {
 		all = append(all, []any{"part", v.Name, v.Family})
 	}
 	for _, v := range add.Gauges {
-		all = append(all, []any{"gauge", v.Name, v.Resolution, v.NextCheck})
+		all = append(all, []any{"gauge", v.Name, v.Resolution, v.NextCheck, v.CheckDays})
+	}
+	for _, v := range add.Shifts {
+		all = append(all, []any{"shift", v.Name, v.Starts})
 	}
 	for _, v := range add.Characteristics {
 		s := v.Setup
@@ -121,6 +124,7 @@ func Read(t Table, o plant.Outline) Plan {
 			break
 		}
 	}
+	r.calendar()
 	if r.plan.Rows == 0 {
 		r.row.number = 0
 		r.problem(plant.Invalidf("file", "Below the names of the columns nothing stands in the file."))
@@ -176,11 +180,15 @@ func (r *reader) about(err error) {
 	if err == nil {
 		return
 	}
+	pe := problemOf(err)
+	r.problemIn(pe.Field, pe)
+}
+
+func problemOf(err error) *plant.Error {
 	if pe, ok := errors.AsType[*plant.Error](err); ok {
-		r.problemIn(pe.Field, pe)
-		return
+		return pe
 	}
-	r.problem(plant.Invalidf("", "This cannot be read.").Because(err))
+	return plant.Invalidf("", "This cannot be read.").Because(err)
 }
 
 // head reads the names of the columns.

@@ -17,14 +17,15 @@ import (
 // Sheet is a table that is to be written, by the keys of the columns.
 type Sheet []map[string]string
 
-// Example is the content of the template: two rows of an invented works, one of a
-// characteristic and one of a part alone.
+// Example is the content of the template: rows of an invented works, one of a
+// characteristic, one of a part alone and two of the shifts.
 func Example() Sheet {
 	first := map[string]string{}
 	for _, c := range columns {
 		first[c.Key] = c.example
 	}
-	return Sheet{first, {"part": "Axle 100", "part_family": "axles"}}
+	return Sheet{first, {"part": "Axle 100", "part_family": "axles"},
+		{"shift": "early", "shift_starts": "06:00"}, {"shift": "late", "shift_starts": "18:00"}}
 }
 
 // Present is the set-up of now. What is retired is left out.
@@ -68,6 +69,9 @@ func Present(o plant.Outline) Sheet {
 			gaugeCells(row, g)
 			s = append(s, row)
 		}
+	}
+	for _, sh := range o.Plant.Shifts {
+		s = append(s, map[string]string{"shift": sh.Name, "shift_starts": fmt.Sprintf("%02d:%02d", int(sh.Starts.Hours()), int(sh.Starts.Minutes())%60)})
 	}
 	return s
 }
@@ -118,6 +122,9 @@ func gaugeCells(row map[string]string, g plant.Gauge) {
 	row["gauge"], row["resolution"] = g.Name, decimalText(g.Resolution)
 	if !g.NextCheck.IsZero() {
 		row["next_check"] = g.NextCheck.Format("2006-01-02")
+	}
+	if g.CheckDays > 0 {
+		row["check_days"] = strconv.Itoa(g.CheckDays)
 	}
 }
 

@@ -15,6 +15,7 @@ type Addition struct {
 	Parts           []Part
 	Gauges          []Gauge
 	Characteristics []Described
+	Shifts          []Shift // the calendar of a plant that has none
 }
 
 // Empty reports whether there is nothing to add.
@@ -22,7 +23,7 @@ func (a Addition) Empty() bool { return a.Count() == 0 }
 
 // Count is how many things it adds.
 func (a Addition) Count() int {
-	return len(a.Lines) + len(a.Stations) + len(a.Machines) + len(a.Parts) + len(a.Gauges) + len(a.Characteristics)
+	return len(a.Lines) + len(a.Stations) + len(a.Machines) + len(a.Parts) + len(a.Gauges) + len(a.Characteristics) + len(a.Shifts)
 }
 
 // Description is a file that describes a plant and waits to be looked at and confirmed.

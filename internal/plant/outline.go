@@ -20,6 +20,7 @@ const (
 	AMachine        Thing = "machine"
 	APart           Thing = "part"
 	AGauge          Thing = "gauge"
+	AShift          Thing = "shift" // of the calendar: it is in no list of things
 	ACharacteristic Thing = "characteristic"
 )
 

@@ -38,7 +38,9 @@ func (p payload) MessageID() uint16 { return 1 }
 func (p payload) Duplicate() bool   { return false }
 
 // TakePayload gives the broker's reader one message; true when it may be acknowledged.
-func TakePayload(b *Broker, topic string, body []byte) bool { return b.take(payload{topic: topic, body: body}) }
+func TakePayload(b *Broker, topic string, body []byte) bool {
+	return b.take(payload{topic: topic, body: body})
+}
 
 // OnTaken has f called with each message that was taken and acknowledged.
 func OnTaken(b *Broker, f func(again bool)) { b.onTaken = f }

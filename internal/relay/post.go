@@ -23,7 +23,7 @@ type Poster struct {
 	Log    *slog.Logger
 	Pause  time.Duration // after the first failure; it doubles up to a minute
 
-	later    map[string]putOff
+	later  map[string]putOff
 	inARow int // messages that were put off one after another
 }
 

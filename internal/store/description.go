@@ -56,7 +56,7 @@ func (s *Store) Add(ctx context.Context, by uuid.UUID, plan func(plant.Outline) 
 		if err != nil {
 			return err
 		}
-		return a.add(add)
+		return a.add(ctx, add)
 	})
 	if err != nil {
 		return fmt.Errorf("add to the plant: %w", err)
@@ -65,7 +65,7 @@ func (s *Store) Add(ctx context.Context, by uuid.UUID, plan func(plant.Outline) 
 }
 
 // add adds what hangs higher first.
-func (a *arranging) add(add plant.Addition) error {
+func (a *arranging) add(ctx context.Context, add plant.Addition) error {
 	for _, v := range add.Lines {
 		a.addLine(v)
 	}
@@ -85,6 +85,9 @@ func (a *arranging) add(add plant.Addition) error {
 		if err := a.addCharacteristic(v.Characteristic, v.Setup); err != nil {
 			return err
 		}
+	}
+	if len(add.Shifts) > 0 {
+		return a.setShifts(ctx, add.Shifts)
 	}
 	return nil
 }

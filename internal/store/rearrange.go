@@ -27,25 +27,27 @@ func (s *Store) SetShifts(ctx context.Context, shifts []plant.Shift, by uuid.UUI
 	if err := plant.CheckShifts(shifts); err != nil {
 		return err
 	}
-	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error {
-		var calendar []map[string]any
-		for _, sh := range shifts {
-			calendar = append(calendar, map[string]any{"name": sh.Name, "starts_minute": int(sh.Starts.Minutes())})
+	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error { return a.setShifts(ctx, shifts) })
+}
+
+func (a *arranging) setShifts(ctx context.Context, shifts []plant.Shift) error {
+	var calendar []map[string]any
+	for _, sh := range shifts {
+		calendar = append(calendar, map[string]any{"name": sh.Name, "starts_minute": int(sh.Starts.Minutes())})
+	}
+	a.say("shifts changed", a.s.plant(), map[string]any{"shifts": calendar})
+	b := &pgx.Batch{}
+	b.Queue(`update shift set retired_at = $2 where plant_id = $1 and retired_at is null`, a.s.plant(), a.s.now())
+	for _, sh := range shifts {
+		id := sh.ID
+		if id == uuid.Nil {
+			id = newID()
 		}
-		a.say("shifts changed", s.plant(), map[string]any{"shifts": calendar})
-		b := &pgx.Batch{}
-		b.Queue(`update shift set retired_at = $2 where plant_id = $1 and retired_at is null`, s.plant(), s.now())
-		for _, sh := range shifts {
-			id := sh.ID
-			if id == uuid.Nil {
-				id = newID()
-			}
-			b.Queue(`insert into shift (id, plant_id, name, starts) values ($1, $2, $3, make_interval(secs => $4)::time)
-				on conflict (id) do update set name = excluded.name, starts = excluded.starts, retired_at = null
-				where shift.plant_id = excluded.plant_id`, id, s.plant(), sh.Name, sh.Starts.Seconds())
-		}
-		return nameTaken(a.tx.SendBatch(ctx, b).Close())
-	})
+		b.Queue(`insert into shift (id, plant_id, name, starts) values ($1, $2, $3, make_interval(secs => $4)::time)
+			on conflict (id) do update set name = excluded.name, starts = excluded.starts, retired_at = null
+			where shift.plant_id = excluded.plant_id`, id, a.s.plant(), sh.Name, sh.Starts.Seconds())
+	}
+	return nameTaken(a.tx.SendBatch(ctx, b).Close())
 }
 
 // one demands that a statement touched one row of the plant.
@@ -78,28 +80,6 @@ func (s *Store) ChangeStation(ctx context.Context, st plant.Station, by uuid.UUI
 		return one(a.tx.Exec(ctx, `update station set name = $3, family = $4, line_id = $5 where id = $1 and plant_id = $2
 			and exists (select from line where id = $5 and plant_id = $2 and (retired_at is null or id = station.line_id))`,
 			st.ID, s.plant(), st.Name, st.Family, st.LineID))
-	})
-}
-
-// ChangeMachine changes a machine's name, rate and streams. It stays at its station:
-// what was measured on it was measured there.
-func (s *Store) ChangeMachine(ctx context.Context, m plant.Machine, by uuid.UUID) error {
-	if err := m.Check(); err != nil {
-		return err
-	}
-	return s.arranged(ctx, by, func(ctx context.Context, a *arranging) error {
-		err := a.tx.QueryRow(ctx, `select station_id from machine where id = $1 and plant_id = $2 for update`, m.ID, s.plant()).Scan(&m.StationID)
-		if err != nil {
-			return missing(err, "There is no such machine.")
-		}
-		a.say("machine changed", m.ID, machineContent(m))
-		a.stations[m.StationID] = true
-		if err := one(a.tx.Exec(ctx, `update machine set name = $3, parts_per_hour = $4 where id = $1 and plant_id = $2`,
-			m.ID, s.plant(), m.Name, m.PartsPerHour)); err != nil {
-			return err
-		}
-		a.putStreams(m)
-		return nil
 	})
 }
 

@@ -134,7 +134,8 @@ func (rec *recording) write(ctx context.Context) error {
 	}
 	for _, e := range rec.round.Entries {
 		if held[e.Characteristic].station != rec.round.Station {
-			return plant.NotFoundf("", "This characteristic belongs to another station.")
+			// Its machine may have moved while the round was on its way.
+			return plant.Conflictf("", "This is measured at another station now. The round was set aside for a person; nothing was lost.")
 		}
 	}
 	rec.batch = &pgx.Batch{}

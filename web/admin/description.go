@@ -142,6 +142,7 @@ func newPreview(f ui.Format, o plant.Outline, p describe.Plan) previewView {
 	add(plant.AMachine, namesOf(p.Add.Machines, func(v plant.Machine) string { return v.Name }))
 	add(plant.APart, namesOf(p.Add.Parts, func(v plant.Part) string { return v.Name }))
 	add(plant.AGauge, namesOf(p.Add.Gauges, func(v plant.Gauge) string { return v.Name }))
+	add(plant.AShift, namesOf(p.Add.Shifts, func(v plant.Shift) string { return v.Name + " " + clockText(v) }))
 	both := together(o, p.Add)
 	for _, c := range p.Add.Characteristics {
 		row := measureRow{item: item{Name: c.Name}, Machine: both.Machine(c.MachineID).Name, Of: ofWords(w, both, c.Characteristic),

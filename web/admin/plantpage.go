@@ -101,10 +101,14 @@ func (a *Admin) storePlant(r *http.Request, p plant.Plant) error {
 func shiftRows(shifts []plant.Shift) []shiftRow {
 	var rows []shiftRow
 	for _, s := range shifts {
-		minutes := int(s.Starts / time.Minute)
-		rows = append(rows, shiftRow{len(rows) + 1, s.ID.String(), s.Name, fmt.Sprintf("%02d:%02d", minutes/60, minutes%60)})
+		rows = append(rows, shiftRow{len(rows) + 1, s.ID.String(), s.Name, clockText(s)})
 	}
 	return rows
+}
+
+func clockText(s plant.Shift) string {
+	minutes := int(s.Starts / time.Minute)
+	return fmt.Sprintf("%02d:%02d", minutes/60, minutes%60)
 }
 
 // changeShifts reads a row for each shift; a row without name and start is none.

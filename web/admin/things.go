@@ -154,11 +154,8 @@ func (t thing) fields(a *asking, o plant.Outline) []field {
 		return []field{a.field(choice, "line").among(lineOptions(o, a.values.Get("line"))), name,
 			a.field(text, "family").optional().suggesting(stationFamilies(o))}
 	case plant.AMachine:
-		all := []field{name, a.field(decimal, "rate").optional(), a.field(text, "streams").optional()}
-		if t.id == uuid.Nil {
-			all = append([]field{a.field(choice, "station").among(stationOptions(o))}, all...)
-		}
-		return all
+		return []field{a.field(choice, "station").among(stationOptions(o, a.values.Get("station"))), name,
+			a.field(decimal, "rate").optional(), a.field(text, "streams").optional()}
 	case plant.APart:
 		return []field{name, a.field(text, "part_family").optional().suggesting(partFamilies(o))}
 	case plant.AGauge:
@@ -177,10 +174,10 @@ func lineOptions(o plant.Outline, with string) []option {
 	return out
 }
 
-func stationOptions(o plant.Outline) []option {
+func stationOptions(o plant.Outline, with string) []option {
 	var out []option
 	for _, s := range o.Stations {
-		if !s.Retired {
+		if !s.Retired || s.ID.String() == with {
 			out = append(out, option{Value: s.ID.String(), Text: o.Line(s.LineID).Name + ", " + s.Name})
 		}
 	}
@@ -253,10 +250,9 @@ func either(t thing, add, change func() error) func() error {
 
 func machineOf(t thing, o plant.Outline, q *asking, name string) plant.Machine {
 	v := plant.Machine{ID: t.id, Name: name, Position: len(o.Machines)}
-	if t.id == uuid.Nil {
-		if v.StationID = idOf(q.values.Get("station")); o.Station(v.StationID).ID == uuid.Nil || o.Station(v.StationID).Retired {
-			q.refuse("station", q.w.T("setup.problem.choose"))
-		}
+	v.StationID = idOf(q.values.Get("station"))
+	if st := o.Station(v.StationID); st.ID == uuid.Nil || st.Retired && o.Machine(t.id).StationID != st.ID {
+		q.refuse("station", q.w.T("setup.problem.choose"))
 	}
 	if d := q.decimalOf("rate"); d != nil {
 		v.PartsPerHour = d.Float()
