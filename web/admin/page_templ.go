@@ -11,6 +11,7 @@ import templruntime "github.com/a-h/templ/runtime"
 
 import (
 	"holdfast/internal/plant"
+	"holdfast/web/ui"
 	"holdfast/web/words"
 	"strings"
 )
@@ -33,76 +34,7 @@ func navigation(w *words.Printer, p plant.Person, path string) templ.Component {
 		}
 		ctx = templ.InitializeContext(ctx)
 		ctx = templ.ClearChildren(ctx)
-		templ_7745c5c3_Err = templruntime.WriteString(templ_7745c5c3_Buffer, 1, "<nav class=\"admin-nav\" aria-label=\"")
-		if templ_7745c5c3_Err != nil {
-			return templ_7745c5c3_Err
-		}
-		var templ_7745c5c3_Var2 string
-		templ_7745c5c3_Var2, templ_7745c5c3_Err = templruntime.NewAttributeExpression(w.T("admin.nav")).Resolve(ctx)
-		if templ_7745c5c3_Err != nil {
-			return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/admin/page.templ`, Line: 11, Col: 53}
-		}
-		_, templ_7745c5c3_Err = templ_7745c5c3_Buffer.WriteString(templ_7745c5c3_Var2)
-		if templ_7745c5c3_Err != nil {
-			return templ_7745c5c3_Err
-		}
-		templ_7745c5c3_Err = templruntime.WriteString(templ_7745c5c3_Buffer, 2, "\">")
-		if templ_7745c5c3_Err != nil {
-			return templ_7745c5c3_Err
-		}
-		templ_7745c5c3_Err = navigationLink(home, path == home || path == home+"/" || path == startAddress, w.T("admin.nav-start")).Render(ctx, templ_7745c5c3_Buffer)
-		if templ_7745c5c3_Err != nil {
-			return templ_7745c5c3_Err
-		}
-		templ_7745c5c3_Err = navigationLink(plantAddress, path == plantAddress, w.T("setup.plant")).Render(ctx, templ_7745c5c3_Buffer)
-		if templ_7745c5c3_Err != nil {
-			return templ_7745c5c3_Err
-		}
-		templ_7745c5c3_Err = navigationLink(floorAddress, path == floorAddress, w.T("setup.floor")).Render(ctx, templ_7745c5c3_Buffer)
-		if templ_7745c5c3_Err != nil {
-			return templ_7745c5c3_Err
-		}
-		templ_7745c5c3_Err = navigationLink(partsAddress, path == partsAddress, w.T("setup.parts")).Render(ctx, templ_7745c5c3_Buffer)
-		if templ_7745c5c3_Err != nil {
-			return templ_7745c5c3_Err
-		}
-		if p.May(plant.SetLimits) {
-			templ_7745c5c3_Err = navigationLink(gaugesAddress, path == gaugesAddress, w.T("setup.gauges")).Render(ctx, templ_7745c5c3_Buffer)
-			if templ_7745c5c3_Err != nil {
-				return templ_7745c5c3_Err
-			}
-			templ_7745c5c3_Err = navigationLink(measureAddress, strings.HasPrefix(path, home+"/characteristic"), w.T("setup.characteristics")).Render(ctx, templ_7745c5c3_Buffer)
-			if templ_7745c5c3_Err != nil {
-				return templ_7745c5c3_Err
-			}
-			templ_7745c5c3_Err = navigationLink(describeAddress, strings.HasPrefix(path, describeAddress), w.T("setup.describe.nav")).Render(ctx, templ_7745c5c3_Buffer)
-			if templ_7745c5c3_Err != nil {
-				return templ_7745c5c3_Err
-			}
-		}
-		if p.May(plant.Manage) {
-			templ_7745c5c3_Err = navigationLink(peopleAddress, strings.HasPrefix(path, peopleAddress), w.T("staff.people")).Render(ctx, templ_7745c5c3_Buffer)
-			if templ_7745c5c3_Err != nil {
-				return templ_7745c5c3_Err
-			}
-			templ_7745c5c3_Err = navigationLink(devicesAddress, strings.HasPrefix(path, devicesAddress), w.T("staff.devices")).Render(ctx, templ_7745c5c3_Buffer)
-			if templ_7745c5c3_Err != nil {
-				return templ_7745c5c3_Err
-			}
-			templ_7745c5c3_Err = navigationLink(qualificationAddress, path == qualificationAddress, w.T("staff.nav-qualification")).Render(ctx, templ_7745c5c3_Buffer)
-			if templ_7745c5c3_Err != nil {
-				return templ_7745c5c3_Err
-			}
-			templ_7745c5c3_Err = navigationLink(messagesAddress, strings.HasPrefix(path, messagesAddress), w.T("messages.page")).Render(ctx, templ_7745c5c3_Buffer)
-			if templ_7745c5c3_Err != nil {
-				return templ_7745c5c3_Err
-			}
-			templ_7745c5c3_Err = navigationLink(aboutAddress, path == aboutAddress, w.T("staff.nav-about")).Render(ctx, templ_7745c5c3_Buffer)
-			if templ_7745c5c3_Err != nil {
-				return templ_7745c5c3_Err
-			}
-		}
-		templ_7745c5c3_Err = templruntime.WriteString(templ_7745c5c3_Buffer, 3, "</nav>")
+		templ_7745c5c3_Err = ui.Navigation(w.T("admin.nav"), pagesOf(w, p, path)).Render(ctx, templ_7745c5c3_Buffer)
 		if templ_7745c5c3_Err != nil {
 			return templ_7745c5c3_Err
 		}
@@ -110,65 +42,29 @@ func navigation(w *words.Printer, p plant.Person, path string) templ.Component {
 	})
 }
 
-func navigationLink(to string, here bool, text string) templ.Component {
-	return templruntime.GeneratedTemplate(func(templ_7745c5c3_Input templruntime.GeneratedComponentInput) (templ_7745c5c3_Err error) {
-		templ_7745c5c3_W, ctx := templ_7745c5c3_Input.Writer, templ_7745c5c3_Input.Context
-		if templ_7745c5c3_CtxErr := ctx.Err(); templ_7745c5c3_CtxErr != nil {
-			return templ_7745c5c3_CtxErr
-		}
-		templ_7745c5c3_Buffer, templ_7745c5c3_IsBuffer := templruntime.GetBuffer(templ_7745c5c3_W)
-		if !templ_7745c5c3_IsBuffer {
-			defer func() {
-				templ_7745c5c3_BufErr := templruntime.ReleaseBuffer(templ_7745c5c3_Buffer)
-				if templ_7745c5c3_Err == nil {
-					templ_7745c5c3_Err = templ_7745c5c3_BufErr
-				}
-			}()
-		}
-		ctx = templ.InitializeContext(ctx)
-		ctx = templ.ClearChildren(ctx)
-		templ_7745c5c3_Err = templruntime.WriteString(templ_7745c5c3_Buffer, 4, "<a href=\"")
-		if templ_7745c5c3_Err != nil {
-			return templ_7745c5c3_Err
-		}
-		var templ_7745c5c3_Var4 string
-		templ_7745c5c3_Var4, templ_7745c5c3_Err = templruntime.NewAttributeExpression(to).ResolveURL(ctx)
-		if templ_7745c5c3_Err != nil {
-			return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/admin/page.templ`, Line: 33, Col: 11}
-		}
-		_, templ_7745c5c3_Err = templ_7745c5c3_Buffer.WriteString(templ_7745c5c3_Var4)
-		if templ_7745c5c3_Err != nil {
-			return templ_7745c5c3_Err
-		}
-		templ_7745c5c3_Err = templruntime.WriteString(templ_7745c5c3_Buffer, 5, "\"")
-		if templ_7745c5c3_Err != nil {
-			return templ_7745c5c3_Err
-		}
-		if here {
-			templ_7745c5c3_Err = templruntime.WriteString(templ_7745c5c3_Buffer, 6, " aria-current=\"page\"")
-			if templ_7745c5c3_Err != nil {
-				return templ_7745c5c3_Err
-			}
-		}
-		templ_7745c5c3_Err = templruntime.WriteString(templ_7745c5c3_Buffer, 7, ">")
-		if templ_7745c5c3_Err != nil {
-			return templ_7745c5c3_Err
-		}
-		var templ_7745c5c3_Var5 string
-		templ_7745c5c3_Var5, templ_7745c5c3_Err = templ.JoinStringErrs(text)
-		if templ_7745c5c3_Err != nil {
-			return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/admin/page.templ`, Line: 37, Col: 8}
-		}
-		_, templ_7745c5c3_Err = templ_7745c5c3_Buffer.WriteString(templ.EscapeString(templ_7745c5c3_Var5))
-		if templ_7745c5c3_Err != nil {
-			return templ_7745c5c3_Err
-		}
-		templ_7745c5c3_Err = templruntime.WriteString(templ_7745c5c3_Buffer, 8, "</a>")
-		if templ_7745c5c3_Err != nil {
-			return templ_7745c5c3_Err
-		}
-		return nil
-	})
+func pagesOf(w *words.Printer, p plant.Person, path string) []ui.NavLink {
+	begins := func(with string) bool { return strings.HasPrefix(path, with) }
+	links := []ui.NavLink{
+		ui.To(home, w.T("admin.nav-start"), path == home || path == home+"/" || path == startAddress),
+		ui.To(plantAddress, w.T("setup.plant"), path == plantAddress),
+		ui.To(floorAddress, w.T("setup.floor"), path == floorAddress),
+		ui.To(partsAddress, w.T("setup.parts"), path == partsAddress),
+	}
+	if p.May(plant.SetLimits) {
+		links = append(links,
+			ui.To(gaugesAddress, w.T("setup.gauges"), path == gaugesAddress),
+			ui.To(measureAddress, w.T("setup.characteristics"), begins(home+"/characteristic")),
+			ui.To(describeAddress, w.T("setup.describe.nav"), begins(describeAddress)))
+	}
+	if p.May(plant.Manage) {
+		links = append(links,
+			ui.To(peopleAddress, w.T("staff.people"), begins(peopleAddress)),
+			ui.To(devicesAddress, w.T("staff.devices"), begins(devicesAddress)),
+			ui.To(qualificationAddress, w.T("staff.nav-qualification"), path == qualificationAddress),
+			ui.To(messagesAddress, w.T("messages.page"), begins(messagesAddress)),
+			ui.To(aboutAddress, w.T("staff.nav-about"), path == aboutAddress))
+	}
+	return links
 }
 
 var _ = templruntime.GeneratedTemplate

@@ -7,6 +7,7 @@ import (
 	"slices"
 	"strconv"
 	"strings"
+	"unicode/utf8"
 
 	"github.com/google/uuid"
 
@@ -169,6 +170,10 @@ type laneView struct {
 	Rows     int
 	Cards    []cardView
 }
+
+// long reports whether the name, which stands upright beside a lane of one row, needs two
+// lines.
+func (l laneView) long() bool { return utf8.RuneCountInString(l.Name) > 18 }
 
 // menuView is one thing that can be chosen, as links.
 type menuView struct {
