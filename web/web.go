@@ -33,6 +33,7 @@ type Sessions interface {
 	Middleware(next http.Handler) http.Handler
 	LoadOnly(next http.Handler) http.Handler
 	ID(ctx context.Context) string
+	Expires(ctx context.Context) time.Time
 }
 
 // Hub is what the router needs of live.Hub.
@@ -181,7 +182,7 @@ func (s *server) visitor(next http.Handler) http.Handler {
 	return http.HandlerFunc(func(w http.ResponseWriter, r *http.Request) {
 		f := ui.FrameOf(r)
 		if p, ok := auth.FromContext(r.Context()); ok {
-			f.Person, f.SignedIn, f.Session = p, true, s.Sessions.ID(r.Context())
+			f.Person, f.SignedIn, f.Session, f.SessionEnds = p, true, s.Sessions.ID(r.Context()), s.Sessions.Expires(r.Context())
 			if own, ok := words.Known(p.Language); ok {
 				f.Words = own
 			}

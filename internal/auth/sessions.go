@@ -31,7 +31,8 @@ type SessionOptions struct {
 	People  People
 	Devices *Devices // nil where no device is ever enrolled
 
-	Lifetime time.Duration // from sign-in, whatever happens; 12 h, a shift with overtime
+	Lifetime time.Duration // from sign-in, or from asking to stay; 12 h, a shift with overtime
+	Longest  time.Duration // from sign-in, however often somebody asks to stay; 24 h
 	Idle     time.Duration // since the last request; 4 h. An open live page is not a request
 
 	// PlainHTTP leaves out the Secure attribute and the __Host- prefix of the
@@ -97,6 +98,7 @@ type Sessions struct {
 // NewSessions starts keeping sessions. Close must be called to end it.
 func NewSessions(opt SessionOptions) *Sessions {
 	opt.Lifetime = cmp.Or(opt.Lifetime, 12*time.Hour)
+	opt.Longest = cmp.Or(opt.Longest, 24*time.Hour)
 	opt.Idle = cmp.Or(opt.Idle, 4*time.Hour)
 	if opt.Now == nil {
 		opt.Now = time.Now
@@ -251,16 +253,35 @@ func (s *Sessions) ID(ctx context.Context) string {
 }
 
 // Expires is when the session will end if nothing more is requested, so that a
-// page can warn in time. It is the zero time when nobody is signed in.
+// page can warn in time. It is the zero time when nobody is signed in. That a tablet ends
+// unused sessions much sooner is left out: it locks before, and warns of that by itself.
 func (s *Sessions) Expires(ctx context.Context) time.Time {
 	if _, ok := FromContext(ctx); !ok {
 		return time.Time{}
 	}
-	idle := time.Unix(s.scs.GetInt64(ctx, keySeen), 0).Add(s.idle(visitOf(ctx).device))
+	idle := time.Unix(s.scs.GetInt64(ctx, keySeen), 0).Add(s.opt.Idle)
 	if end := s.scs.Deadline(ctx); end.Before(idle) {
 		return end
 	}
 	return idle
+}
+
+// Stay puts the end of the session off on somebody's wish: to Lifetime from now, though not
+// beyond Longest from the sign-in. It returns when the session ends now, if nothing more is
+// requested; the zero time when nobody is signed in.
+func (s *Sessions) Stay(ctx context.Context) time.Time {
+	if _, ok := FromContext(ctx); !ok {
+		return time.Time{}
+	}
+	end := s.opt.Now().Add(s.opt.Lifetime)
+	if last := time.UnixMicro(s.scs.GetInt64(ctx, keyBegun)).Add(s.opt.Longest); last.Before(end) {
+		end = last
+	}
+	if end.After(s.scs.Deadline(ctx)) {
+		s.scs.SetDeadline(ctx, end)
+	}
+	s.touch(ctx)
+	return s.Expires(ctx)
 }
 
 // slackOfLock is how much later than the tablet itself the server ends a session that

@@ -90,6 +90,13 @@ func newHouse(t *testing.T, change func(*SessionOptions)) *house {
 		h.tell(w, r)
 	})
 	pages.HandleFunc("/who", h.tell)
+	pages.HandleFunc("/stay", func(w http.ResponseWriter, r *http.Request) {
+		left := time.Duration(0)
+		if ends := h.Stay(r.Context()); !ends.IsZero() {
+			left = ends.Sub(h.clock.now())
+		}
+		_, _ = io.WriteString(w, left.Round(time.Minute).String()+" ")
+	})
 	pages.HandleFunc("/held", func(w http.ResponseWriter, r *http.Request) {
 		h.held <- struct{}{}
 		<-h.hold
@@ -300,6 +307,25 @@ func TestSessionEndsAtItsLifetimeHoweverUsed(t *testing.T) {
 	h.clock.add(40 * time.Minute)
 	v.expect("/who", "anna")
 	h.clock.add(21 * time.Minute)
+	v.expect("/who", "nobody")
+}
+
+func TestSessionIsPutOffOnAWishAndNotForEver(t *testing.T) {
+	t.Parallel()
+	h := newHouse(t, func(o *SessionOptions) { o.Lifetime, o.Longest, o.Idle = time.Hour, 150*time.Minute, 50*time.Minute })
+	v := h.visitor()
+	v.expect("/stay", "0s") // nobody has nothing to put off
+	v.expect("/in", "anna")
+	for i, left := range []string{"50m0s", "50m0s", "50m0s", "30m0s"} { // unused for 50 minutes it ends, and at last after 150
+		if i > 0 {
+			h.clock.add(40 * time.Minute)
+		}
+		v.expect("/stay", left)
+		v.expect("/who", "anna")
+	}
+	h.clock.add(29 * time.Minute)
+	v.expect("/who", "anna")
+	h.clock.add(2 * time.Minute)
 	v.expect("/who", "nobody")
 }
 

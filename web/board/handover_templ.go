@@ -1881,11 +1881,7 @@ func handoverCauses(w *words.Printer, v causesView) templ.Component {
 			var templ_7745c5c3_Var107 string
 			templ_7745c5c3_Var107, templ_7745c5c3_Err = templruntime.NewAttributeExpression(w.T("handover.causes")).Resolve(ctx)
 			if templ_7745c5c3_Err != nil {
-<<<<<<< HEAD
-				return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/board/handover.templ`, Line: 271, Col: 88}
-=======
-				return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/board/handover.templ`, Line: 270, Col: 87}
->>>>>>> 2d95878 (ui: pages of a surface behind one button on a small window, in a row of their own where they are many)
+				return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/board/handover.templ`, Line: 271, Col: 87}
 			}
 			_, templ_7745c5c3_Err = templ_7745c5c3_Buffer.WriteString(templ_7745c5c3_Var107)
 			if templ_7745c5c3_Err != nil {

@@ -7,6 +7,7 @@ import (
 	"net/http"
 	"net/netip"
 	"net/url"
+	"time"
 
 	"github.com/go-chi/chi/v5"
 
@@ -26,6 +27,8 @@ type Checker interface {
 type Sessions interface {
 	SignIn(ctx context.Context, p plant.Person) error
 	SignOut(ctx context.Context) error
+	// Stay puts the end of the session off and returns when it is now.
+	Stay(ctx context.Context) time.Time
 }
 
 // Handler serves the door.
@@ -53,7 +56,7 @@ func (h *Handler) Routes(r chi.Router) {
 		r.Get(enrolAddress, ui.Handle(h.Log, h.showEnrol))
 		r.Post(enrolAddress, ui.Handle(h.Log, h.enrol))
 		r.Post(badgeAddress, ui.Handle(h.Log, h.signInByBadge))
-		r.With(ui.RequirePerson).Post(ui.StillHereAddress, stillHere)
+		r.With(ui.RequirePerson).Post(ui.StillHereAddress, ui.Handle(h.Log, h.stillHere))
 	}
 	if h.First != nil {
 		r.Get(firstAddress+"/{token}", ui.Handle(h.Log, h.showFirst))

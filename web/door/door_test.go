@@ -13,6 +13,7 @@ import (
 	"slices"
 	"strings"
 	"testing"
+	"time"
 
 	"github.com/go-chi/chi/v5"
 	"github.com/google/uuid"
@@ -55,7 +56,8 @@ func (s *sessions) SignIn(_ context.Context, p plant.Person) error {
 	s.in = append(s.in, p)
 	return s.fails
 }
-func (s *sessions) SignOut(context.Context) error { s.out++; return nil }
+func (s *sessions) SignOut(context.Context) error  { s.out++; return nil }
+func (s *sessions) Stay(context.Context) time.Time { return time.Time{} }
 
 func person(name string, role plant.Role) plant.Person {
 	return plant.Person{ID: uuid.New(), Login: strings.ToLower(name), Name: name, Roles: plant.Roles{role}, Active: true}

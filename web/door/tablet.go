@@ -114,10 +114,19 @@ func (h *Handler) renderTablet(w http.ResponseWriter, r *http.Request, status in
 }
 
 // stillHere keeps the session of somebody who types and sends nothing; the session
-// middleware around it has noted the use.
-func stillHere(w http.ResponseWriter, _ *http.Request) {
+// middleware around it has noted the use. Who asks to stay is told how long the session
+// goes on now, in milliseconds.
+func (h *Handler) stillHere(w http.ResponseWriter, r *http.Request) error {
 	w.Header().Set("Cache-Control", "no-store")
+	if r.URL.Query().Has("stay") {
+		return ui.RenderJSON(w, http.StatusOK, staying{h.Sessions.Stay(r.Context()).Sub(ui.FrameOf(r).Now).Milliseconds()})
+	}
 	w.WriteHeader(http.StatusNoContent)
+	return nil
+}
+
+type staying struct {
+	Left int64 `json:"left"`
 }
 
 // enrolling is what the page shows on which a device is let in.

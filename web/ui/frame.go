@@ -13,18 +13,19 @@ import (
 // Frame is what all pages of one request share. The router gathers it once, before
 // any surface is asked.
 type Frame struct {
-	Person    plant.Person // the zero value when nobody is signed in
-	SignedIn  bool
-	Session   string       // names the session to the live hub; never the secret itself
-	Device    plant.Device // that the browser is enrolled as; the zero value when it is none
-	Revoked   bool         // the browser was enrolled once and is no longer let in
-	Addr      netip.Addr   // of the browser, or of the proxy nearest to us that is not trusted
-	Plant     plant.Plant
-	Now       time.Time
-	Theme     Theme
-	Words     *words.Printer
-	RequestID string
-	Secure    bool // cookies are sent over https only
+	Person      plant.Person // the zero value when nobody is signed in
+	SignedIn    bool
+	Session     string       // names the session to the live hub; never the secret itself
+	SessionEnds time.Time    // if nothing more is requested; zero when nobody is signed in
+	Device      plant.Device // that the browser is enrolled as; the zero value when it is none
+	Revoked     bool         // the browser was enrolled once and is no longer let in
+	Addr        netip.Addr   // of the browser, or of the proxy nearest to us that is not trusted
+	Plant       plant.Plant
+	Now         time.Time
+	Theme       Theme
+	Words       *words.Printer
+	RequestID   string
+	Secure      bool // cookies are sent over https only
 }
 
 type frameKey struct{}

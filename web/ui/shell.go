@@ -86,7 +86,7 @@ var sheets = map[Surface][]string{
 
 func (s Shell) styles() []string {
 	all := []string{"vendor/modern-normalize/modern-normalize.css", "css/tokens.css", "css/base.css", "css/shell.css", "css/calls.css"}
-	if s.locks() {
+	if s.SignedIn {
 		all = append(all, "css/lock.css")
 	}
 	return urls(all, sheets[s.Surface], s.Styles)
@@ -102,6 +102,9 @@ func (s Shell) scripts() []string {
 	}
 	if s.Surface == Station {
 		all = append(all, TypedScript)
+	}
+	if s.SignedIn {
+		all = append(all, "js/session.js")
 	}
 	return urls(all, s.Scripts)
 }
