@@ -171,10 +171,19 @@ func spellWords(f ui.Format, s plant.Spell) string {
 	return w.T("audit.spell-day", day(s.From), count)
 }
 
+// times is a ratio for people. Few adjustments leave its interval open upwards, and
+// twenty figures would say no more than that.
+func times(f ui.Format, ratio float64) string {
+	if ratio > biggestFactor {
+		return f.Words.T("audit.more-than", f.Number(biggestFactor, 1))
+	}
+	return f.Number(ratio, 2)
+}
+
 // conclude says in words what the adjustments came to.
 func (v *auditView) conclude(f ui.Format, a plant.AdjustmentAudit) {
 	w := f.Words
-	ratio, low, high := f.Number(a.Ratio, 2), f.Number(a.Low, 2), f.Number(a.High, 2)
+	ratio, low, high := times(f, a.Ratio), times(f, a.Low), times(f, a.High)
 	v.Tone = "calm"
 	switch a.Conclusion {
 	case plant.NothingAdjusted:
@@ -227,8 +236,8 @@ func auditFacts(f ui.Format, h plant.History, a plant.AdjustmentAudit) []fact {
 	}
 	out := []fact{sum(w.T("audit.fact.unprompted"), a.Unprompted), sum(w.T("audit.fact.prompted"), a.Prompted)}
 	if a.Unprompted.Count > 0 && a.Computed && !math.IsInf(a.High, 1) {
-		out = append(out, fact{Cap: w.T("audit.fact.ratio"), Val: w.T("audit.fact.times", f.Number(min(a.Ratio, biggestFactor), 2)),
-			Sub: w.T("audit.fact.between", f.Number(a.Low, 2), f.Number(min(a.High, biggestFactor), 2))})
+		out = append(out, fact{Cap: w.T("audit.fact.ratio"), Val: w.T("audit.fact.times", times(f, a.Ratio)),
+			Sub: w.T("audit.fact.between", times(f, a.Low), times(f, a.High))})
 	}
 	if a.HasPpk {
 		out = append(out, fact{Cap: w.T("audit.fact.ppk"), Val: f.Number(a.Ppk, 2), Sub: w.T("audit.fact.ppk-stayed", f.Number(a.PpkStayed, 2))})
