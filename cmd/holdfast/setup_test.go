@@ -159,22 +159,6 @@ func whole(t testing.TB, r *running) {
 	}
 }
 
-// TestSetUpPagesAreAccessible looks at every page by day and by night, and narrow.
-func TestSetUpPagesAreAccessible(t *testing.T) {
-	t.Parallel()
-	r := serve(t)
-	r.calm(t, 6)
-	p := r.signIn(t, browsertest.Start(t), "engineer1")
-	for i, path := range []string{"/admin", "/admin/plant", "/admin/floor", "/admin/parts", "/admin/gauges", "/admin/characteristics",
-		"/admin/characteristic/new", "/admin/characteristic/" + r.Diameter.ID.String(), "/admin/characteristic/" + r.Diameter.ID.String() + "/known-limits",
-		"/admin/chart-choice?size=5&batches=pieces&varies=no&special=streams", "/admin/description", "/admin/thing/machine/" + r.Machine.ID.String(), "/admin/thing/gauge/new"} {
-		p.Open(path)
-		p.Value(`document.documentElement.dataset.theme = "` + []string{"day", "night"}[i%2] + `"`)
-		p.Accessible(path)
-		p.FitsWidth(path, 320, 1280)
-	}
-}
-
 // upload sends a file as a form does.
 func (v *visitor) upload(name, content string) (*http.Response, string) {
 	v.t.Helper()

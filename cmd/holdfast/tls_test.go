@@ -213,8 +213,12 @@ func TestBrowserOverHTTPS(t *testing.T) {
 	}
 	p := b.Person("https://" + net.JoinHostPort(name, port))
 	p.Open("/authority")
-	p.Accessible("the page of the authority")
-	p.FitsWidth("the page of the authority", 1280, 320)
+	p.ForEverybody("the page of the authority")
+	for _, lang := range []string{"de", "es"} {
+		speak(p, lang)
+		fitsATablet(p, lang, "/authority")
+	}
+	speak(p, "en")
 	p.Size(1280, 800)
 	p.Open("/sign-in")
 	p.Fill("#login", "operator1")

@@ -11,6 +11,7 @@ import (
 
 	"github.com/google/uuid"
 
+	"holdfast/internal/browsertest"
 	"holdfast/internal/localpg"
 	"holdfast/internal/localpg/pgtest"
 	"holdfast/internal/plant"
@@ -85,6 +86,14 @@ func TestTheFirstPersonComesByAnAddressThatWorksOnce(t *testing.T) {
 	r := serveOn(t, &storetest.Plant{Store: st, URL: at, Clock: clock}, clock.Now)
 	path := r.program.first.Path()
 	v := r.visit(t, "")
+	p := browsertest.Start(t).Person(r.url)
+	p.Open(path)
+	p.WaitFor(`document.querySelector("main form")`)
+	p.ForEverybody("the page for the first person")
+	for _, lang := range []string{"de", "es"} {
+		speak(p, lang)
+		fitsATablet(p, lang, path)
+	}
 	if res, _ := v.get(path); res.StatusCode != http.StatusOK {
 		t.Errorf("the address: %d", res.StatusCode)
 	}

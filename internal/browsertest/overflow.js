@@ -12,6 +12,8 @@
     }
     return false;
   };
+  // clamped tells what ends with three dots after some lines on purpose.
+  const clamped = (e) => { for (let a = e; a; a = a.parentElement) if (getComputedStyle(a).webkitLineClamp !== "none") return true; return false; };
   // box is the nearest ancestor that gives text its place.
   const box = (e) => {
     while (e.parentElement && /^(inline|contents)/.test(getComputedStyle(e).display) && !/^inline-(block|flex|grid)/.test(getComputedStyle(e).display)) e = e.parentElement;
@@ -27,14 +29,16 @@
     range.selectNodeContents(node);
     const svg = e.closest("svg");
     const around = (svg ?? box(e)).getBoundingClientRect();
-    const slack = svg ? 1 : parseFloat(getComputedStyle(e).fontSize) * 0.3; // upwards and downwards letters are less tall than their boxes
+    const slack = svg ? (getComputedStyle(svg).overflow === "visible" ? 4 : 1) : parseFloat(getComputedStyle(e).fontSize) * 0.3; // upwards and downwards letters are less tall than their boxes
     for (const r of svg ? [e.getBoundingClientRect()] : range.getClientRects()) {
       if (!r.width || !r.height) continue;
       const off = Math.max(around.left - r.left, r.right - around.right);
       if (off > 1) found.push(`"${says(node)}" stands ${Math.round(off)} px outside of ${name(svg ?? box(e))}`);
       else if (r.right > innerWidth + 1 || r.left < -1) found.push(`"${says(node)}" stands outside of the window`);
+      else if (clamped(e)) continue;
       else if (r.bottom > around.bottom + slack || r.top < around.top - slack) found.push(`"${says(node)}" is taller than ${name(svg ?? box(e))}`);
     }
+    if (clamped(e)) continue;
     // A part that is cut off and cannot be scrolled hides what does not fit.
     for (let a = e; a && !svg; a = a.parentElement) {
       const s = getComputedStyle(a);

@@ -103,24 +103,3 @@ func TestRoundByKeypadAsDeviation(t *testing.T) {
 	tb.WaitFor(`document.querySelector("[data-scripted]")`)
 	tb.Want("the way of typing is remembered", `document.querySelector('[name="entry"]:checked').value`, "deviation")
 }
-
-func TestPagesAreAccessibleAndReflow(t *testing.T) {
-	t.Parallel()
-	s := newSite(t)
-	matter := s.open(t)
-	hold := s.MustRecord(t, s.Force, 610, 612, 691, 611, 609, 613)
-	s.Clock.Advance(time.Minute)
-	tb := s.tablet(t)
-	for _, path := range []string{
-		"/station?all", s.at() + "?measure=" + s.Diameter.ID.String(), s.at("round", hold.Round.String()), matter,
-		s.at("change"), s.at("change", s.Mass.ID.String()), s.at("machine", s.Machine.ID.String()),
-	} {
-		tb.Size(320, 800) // 1280 px at 400 %
-		tb.Open(path)
-		tb.FitsWidth(path, 320)
-		tb.Size(1280, 800)
-		tb.Accessible(path)
-	}
-	tb.Value(`(document.documentElement.dataset.theme = "night")`)
-	tb.Accessible("night")
-}
