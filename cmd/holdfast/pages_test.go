@@ -28,6 +28,8 @@ func (w *works) pageTable() map[string][]sight {
 		"GET /sign-in": {{nobody, []string{"/sign-in"}}, {bare, []string{"/sign-in", "/sign-in?locked=yes"}}},
 		"GET /enrol":   {{nobody, []string{"/enrol"}}},
 
+		"GET /account/": {{operator, []string{"/account/"}}, {atTablet, []string{"/account/"}}, {administrator, []string{"/account/"}}},
+
 		"GET /station/":                                  {{operator, []string{"/station/?all"}}},
 		"GET /station/{station}":                         {{operator, []string{station, station + "?measure=" + id(w.Diameter)}}, {atTablet, []string{station}}, {supervisor, []string{station}}},
 		"GET /station/{station}/round/{round}":           {{operator, []string{station + "/round/" + w.lookRound.String(), station + "/round/" + w.holdRound.String()}}},

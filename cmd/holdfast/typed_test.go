@@ -31,7 +31,7 @@ func into(p *browsertest.Page, selector, text string) {
 
 // speak switches the language of whoever is signed in, by the menu in the bar or, where a
 // page has none, as that menu does.
-func speak(p *browsertest.Page, lang string) {
+func choose(p *browsertest.Page, lang string) {
 	p.Value(`(() => { const f = document.createElement("form"); f.method = "post"; f.action = "/language";
 		for (const [n, v] of [["language", "` + lang + `"], ["to", location.pathname + location.search]]) {
 			const i = document.createElement("input"); i.name = n; i.value = v; f.append(i); }
@@ -127,11 +127,11 @@ func TestWhatIsHalfTypedSurvives(t *testing.T) {
 				f.want = p.Value(f.typed)
 			}
 			p.Want(f.name+" as typed", f.typed, f.want)
-			speak(p, "de")
+			choose(p, "de")
 			is("in another language")
 			lock("1001")
 			is("after the lock, by the same person")
-			speak(p, "en")
+			choose(p, "en")
 			is("in the first language again")
 			p.Click("[data-sign-out] button")
 			badgeIn(p, "1003")
@@ -143,9 +143,9 @@ func TestWhatIsHalfTypedSurvives(t *testing.T) {
 			lock("1001")
 			is("after the lock, by the first person")
 			lock("1003")
-			speak(p, "es")
+			choose(p, "es")
 			is("after the lock, by another person in another language")
-			speak(p, "en")
+			choose(p, "en")
 			if f.save == "" {
 				return
 			}
