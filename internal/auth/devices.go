@@ -8,6 +8,7 @@ import (
 	"fmt"
 	"log/slog"
 	"net/http"
+	"slices"
 	"net/netip"
 	"strings"
 	"sync"
@@ -271,7 +272,8 @@ func deviceOfSession(session string) (uuid.UUID, bool) {
 }
 
 // present tells which devices with sockets are let in, and notes that they were heard
-// of: an open page sends no requests.
+// of: an open page sends no requests. Where one is not let in any more, what is remembered
+// is forgotten first: its page asks for another as soon as its socket ends.
 func (d *Devices) present(ctx context.Context, ids []uuid.UUID) (map[uuid.UUID]bool, error) {
 	if d == nil || len(ids) == 0 {
 		return nil, nil
@@ -283,6 +285,9 @@ func (d *Devices) present(ctx context.Context, ids []uuid.UUID) (map[uuid.UUID]b
 	letIn := make(map[uuid.UUID]bool, len(active))
 	for _, id := range active {
 		letIn[id] = true
+	}
+	if slices.ContainsFunc(ids, func(id uuid.UUID) bool { return !letIn[id] }) {
+		d.Forget()
 	}
 	d.heard(ctx, active...)
 	return letIn, nil

@@ -143,7 +143,7 @@ func TestBadRoundsWriteNothing(t *testing.T) {
 		{"too many readings", plant.Invalid, func(r *plant.Round) { r.Entries[0].Readings = make([]int64, 6) }},
 		{"short without a reason", plant.Invalid, func(r *plant.Round) { r.Entries[0].Readings = make([]int64, 4) }},
 		{"unknown characteristic", plant.NotFound, func(r *plant.Round) { r.Entries[0].Characteristic = storetest.ID() }},
-		{"of another station", plant.NotFound, func(r *plant.Round) { r.Entries[0].Characteristic = p.Length.ID }},
+		{"of another station", plant.Conflict, func(r *plant.Round) { r.Entries[0].Characteristic = p.Length.ID }},
 		{"twice the same", plant.Invalid, func(r *plant.Round) { r.Entries = append(r.Entries, r.Entries[0]) }},
 		{"in the future", plant.Invalid, func(r *plant.Round) { r.TakenRaw = p.Clock.Now().Add(3 * time.Minute) }},
 		{"long ago", plant.Invalid, func(r *plant.Round) { r.TakenRaw = p.Clock.Now().Add(-8 * 24 * time.Hour) }},
