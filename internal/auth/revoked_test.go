@@ -39,9 +39,11 @@ func (o *oneDevice) ActiveDevices(_ context.Context, ids []uuid.UUID) ([]uuid.UU
 	return ids, nil
 }
 
-func (o *oneDevice) Enrol(context.Context, string, []byte) (plant.Device, error) { return o.Device, nil }
-func (o *oneDevice) NoteContact(context.Context, ...uuid.UUID) error             { return nil }
-func (o *oneDevice) NotePresence(context.Context, uuid.UUID, uuid.UUID) error    { return nil }
+func (o *oneDevice) Enrol(context.Context, string, []byte) (plant.Device, error) {
+	return o.Device, nil
+}
+func (o *oneDevice) NoteContact(context.Context, ...uuid.UUID) error          { return nil }
+func (o *oneDevice) NotePresence(context.Context, uuid.UUID, uuid.UUID) error { return nil }
 
 // A socket that is ended sends its page to the server at once. Whatever was remembered of
 // the device must be gone by then, also where the check of the sockets is the first to see
