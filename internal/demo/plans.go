@@ -37,14 +37,14 @@ func value(says, unit string, lower, upper *plant.Decimal, ifNot string) plant.P
 // machines need, and three characteristics have one of their own.
 var reactionPlans = []planned{
 	{kinds: []plant.MatterKind{plant.MatterUp, plant.MatterDown, plant.MatterPattern, plant.MatterDispersion}, steps: []plant.PlanStep{
-		ask("Measure the last part again. Is the reading the same?", "Clean the gauge, measure it a third time and correct the round if it was a slip."),
+		ask("Does the record show what the gauge showed?", "It was a slip of typing: correct the round. A part that is measured again goes on record as a round of its own."),
 		askNot("Was anything changed since the last round: tool, lot, setting, person?", "Write down what was changed under Log a change."),
 		do("Look at the machine: noise, coolant, chips, clamping."),
 	}},
 	{kinds: []plant.MatterKind{plant.MatterReading}, confirm: true, verify: true, steps: []plant.PlanStep{
-		do("Stop the machine at the end of the part."),
-		ask("Measure the part again with a clean gauge. Is it outside again?", "Correct the round: it was a slip. Then look at the next five parts."),
-		do("Put a red tag on what was made since the last good round and set it aside."),
+		do("Stop the machine at the end of the part, and press Machine stopped here."),
+		ask("Does the record show what the gauge showed?", "It was a slip of typing: correct the round. A part that is measured again goes on record as a round of its own."),
+		do("Put a red tag on all that this page says to keep aside, and set it aside."),
 	}},
 	{kinds: []plant.MatterKind{plant.MatterGauge}, verify: true, steps: []plant.PlanStep{
 		do("Take the gauge out of use and put it in the blocked drawer."),
