@@ -86,9 +86,10 @@ func TestGaugeCheck(t *testing.T) {
 	b := s.signIn(t, s.Operator)
 	b.get(s.at("gauges")).is(http.StatusOK).says("Micrometer M-04", "No check on record", "Axle seat diameter")
 	at := s.at("gauge", g.ID.String())
+	reading := "15.001"
 	check := func(result, note string) page {
 		t.Helper()
-		return b.post(at, url.Values{"id": {b.get(at).is(http.StatusOK).field("id")}, "result": {result}, "master": {"15,000"}, "reading": {"15.004"}, "note": {note}})
+		return b.post(at, url.Values{"id": {b.get(at).is(http.StatusOK).field("id")}, "result": {result}, "master": {"15,000"}, "reading": {reading}, "note": {note}})
 	}
 	check("", "").is(http.StatusUnprocessableEntity).says("Say whether the gauge is good.", "15,000")
 	if got := check("good", "").is(http.StatusSeeOther); !strings.HasSuffix(got.to, "/gauges?checked=good") {
@@ -119,6 +120,27 @@ func TestGaugeCheck(t *testing.T) {
 	s.Clock.Advance(time.Minute)
 	check("good", "new anvil").is(http.StatusSeeOther)
 	b.get(s.at() + "?measure=" + s.Diameter.ID.String()).saysNot(doubt)
-	b.get(at).says("new anvil", "anvil worn", "15.004 on a master of 15.000")
+	b.get(at).says("new anvil", "anvil worn", "15.001 on a master of 15.000")
 	b.get(s.at("gauge", s.Machine.ID.String())).is(http.StatusNotFound)
+}
+
+// TestGaugeThatIsOffIsAskedAbout: called good and far from its master, it is recorded only
+// when somebody confirms it for these very values; failed is never asked about.
+func TestGaugeThatIsOffIsAskedAbout(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	g := s.gauged(t)
+	b := s.signIn(t, s.Operator)
+	at := s.at("gauge", g.ID.String())
+	form := url.Values{"id": {b.get(at).field("id")}, "result": {"good"}, "master": {"15,000"}, "reading": {"15.020"}}
+	asked := b.post(at, form).is(http.StatusUnprocessableEntity).says("The gauge is off by 0.020.", "0.018", "It is good all the same", `value="15.020"`)
+	b.get(at).says("None yet.").saysNot("It is good all the same")
+	yes := asked.field("good-as")
+	form.Set("reading", "15.030")
+	form.Set("good-as", yes)
+	b.post(at, form).is(http.StatusUnprocessableEntity).says("The gauge is off by 0.030.")
+	form.Set("reading", "15.020")
+	b.post(at, form).is(http.StatusSeeOther)
+	b.get(at).says("15.020 on a master of 15.000")
+	b.post(at, url.Values{"id": {b.get(at).field("id")}, "result": {"failed"}, "master": {"15,000"}, "reading": {"15.020"}, "note": {"anvil worn"}}).is(http.StatusSeeOther)
 }

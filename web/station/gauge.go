@@ -38,6 +38,8 @@ type gaugeView struct {
 	Note     string
 	Next     string
 	NextBy   string // how the next day is found; "" when it is asked for
+	Off      string // how far off it is, when it is asked whether it is good all the same
+	OffAs    string // the values that a yes to this is about
 	Problems map[string]string
 	Checks   []checkView
 	Back     string
@@ -184,6 +186,11 @@ func (s *Surface) checkGauge(w http.ResponseWriter, r *http.Request) error {
 			v.Problems["next"] = words.T("reach.check-date")
 		}
 	}
+	if len(v.Problems) == 0 && c.Good {
+		if err := s.askIfOff(r, g, c, &v); err != nil {
+			return err
+		}
+	}
 	if len(v.Problems) > 0 {
 		return s.renderGauge(w, r, http.StatusUnprocessableEntity, st, g, v)
 	}
@@ -196,6 +203,43 @@ func (s *Surface) checkGauge(w http.ResponseWriter, r *http.Request) error {
 		return err
 	}
 	ui.Redirect(w, r, path(st.ID, "gauges")+"?checked="+v.Result)
+	return nil
+}
+
+// askIfOff asks about a check that is called good and is far from its master: once good is
+// on record, it shortens what is suspect later. A yes counts for the values that it was
+// asked about and for no others.
+func (s *Surface) askIfOff(r *http.Request, g plant.GaugeUse, c plant.GaugeCheckRecord, v *gaugeView) error {
+	var at []uuid.UUID
+	for _, st := range g.Stations {
+		at = append(at, st.ID)
+	}
+	states, err := s.store.StationStates(r.Context(), 1, at...)
+	if err != nil {
+		return err
+	}
+	var measures []plant.Setup
+	for _, st := range states {
+		for _, ch := range st.Characteristics {
+			if ch.Setup.GaugeID == g.ID {
+				measures = append(measures, ch.Setup)
+			}
+		}
+	}
+	off := c.Off(g.Gauge, measures)
+	if off == nil {
+		return nil
+	}
+	v.OffAs = c.Reading.String() + " / " + c.Master.String()
+	if r.PostForm.Get("good-as") == v.OffAs {
+		return nil
+	}
+	f := ui.FrameOf(r).Format()
+	v.Off = f.Words.T("reach.check-off-steps", f.Words.Number(off.By))
+	if off.Tolerance != nil {
+		v.Off = f.Words.T("reach.check-off", f.Words.Number(off.By), f.Decimal(*off.Tolerance))
+	}
+	v.Problems["off"] = f.Words.T("reach.check-off-ask")
 	return nil
 }
 
