@@ -41,6 +41,7 @@ type productView struct {
 	Action   string
 	Signer   string
 	Done     string
+	Early    []string // why a statement may come too early, or from the wrong person
 	May      bool
 	Open     bool // parts are left to decide about
 	Typed    productForm
@@ -84,6 +85,11 @@ func (d *Desk) renderProduct(w http.ResponseWriter, r *http.Request, status int,
 		}
 		v.Reach, _ = ui.SayReach(f, k.Reach, k.Suspect, machine)
 	}
+	if v.May && v.Open && c.Matter != uuid.Nil {
+		if v.Early, err = d.early(r, c.Matter); err != nil {
+			return err
+		}
+	}
 	for _, e := range c.Entries {
 		v.Entries = append(v.Entries, ui.SayEntry(f, e))
 	}
@@ -101,6 +107,24 @@ func (d *Desk) renderProduct(w http.ResponseWriter, r *http.Request, status int,
 	shell := ui.ShellFor(r, ui.Desk, f.Words.T("reach.product-of", f.Words.T("reach.product-title"), c.Characteristic.Name))
 	shell.Bar = bar(f.Words, uuid.Nil, false, "product")
 	return ui.Render(w, r, status, productPage(shell, v))
+}
+
+// early says what speaks against deciding about the product of a matter now: it is still
+// open, so that more may become suspect, or the one who would sign judges what they did
+// themselves. Neither forbids it.
+func (d *Desk) early(r *http.Request, matter uuid.UUID) (out []string, err error) {
+	m, err := d.store.Matter(r.Context(), matter)
+	if err != nil {
+		return nil, err
+	}
+	fr := ui.FrameOf(r)
+	if m.Open() {
+		out = append(out, fr.Words.T("reach.product-early", fr.Words.T("reach.product-stage."+string(m.Progress().Stage))))
+	}
+	if n := len(m.Fixes); n > 0 && m.Fixes[n-1].Person == fr.Person.ID {
+		out = append(out, fr.Words.T("reach.product-own-fix"))
+	}
+	return out, nil
 }
 
 // madeOn reads the machine that made the product, for its name and its streams.

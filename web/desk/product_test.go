@@ -42,7 +42,7 @@ func TestProductIsDecidedAboutOnTheDesk(t *testing.T) {
 	decide := func(step, quantity, note, secret string) url.Values {
 		return url.Values{"form": {"decide"}, "step": {step}, "quantity": {quantity}, "note": {note}, "secret": {secret}}
 	}
-	b.get(at).has(`data-testid="decide"`, "81 parts are kept aside.")
+	b.get(at).has(`data-testid="decide"`, "81 parts are kept aside.", "The matter is still open: nobody has taken it. More may become suspect.").hasNot("You recorded the fix")
 	state(decide("", "80", "", "right")).is(http.StatusUnprocessableEntity).has("Say what became of the product.")
 	state(decide("scrapped", "80", "", "")).is(http.StatusUnprocessableEntity).has("this is a signature")
 	state(decide("scrapped", "80", "", "wrong")).is(http.StatusUnprocessableEntity).has("This is not your password.", `value="80"`)
@@ -55,9 +55,10 @@ func TestProductIsDecidedAboutOnTheDesk(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	if err := s.CloseMatter(t.Context(), plant.ClosingRequest{Matter: m, Version: open.Version, Cause: "Insert chipped", Action: "Insert changed", Person: s.Operator.ID}); err != nil {
+	if err := s.CloseMatter(t.Context(), plant.ClosingRequest{Matter: m, Version: open.Version, Cause: "Insert chipped", Action: "Insert changed", Person: s.Supervisor.ID}); err != nil {
 		t.Fatal(err)
 	}
+	b.get(at).has("You recorded the fix of this matter.").hasNot("The matter is still open")
 	b.get("/desk/product").has("10 parts are kept aside in 1 place.", "closed ")
 	state(decide("scrapped", "10", "", "right")).is(http.StatusSeeOther)
 	b.get("/desk/product").has("No product is in doubt", "Settled lately")

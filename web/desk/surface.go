@@ -30,6 +30,7 @@ type Store interface {
 	Plans(ctx context.Context) ([]plant.ReactionPlan, error)
 	PlanVersions(ctx context.Context, scope plant.PlanScope, kind plant.MatterKind) ([]plant.ReactionPlan, error)
 	SavePlan(ctx context.Context, p plant.ReactionPlan) (plant.ReactionPlan, error)
+	Matter(ctx context.Context, id uuid.UUID) (plant.Matter, error)
 	Contained(ctx context.Context, at time.Time) ([]plant.Containment, error)
 	SettledContainments(ctx context.Context, most int) ([]plant.Containment, error)
 	Containment(ctx context.Context, id uuid.UUID) (plant.Containment, error)

@@ -83,19 +83,32 @@ func (s *Surface) asideOf(r *http.Request, st plant.StationState, m plant.Matter
 	if !suspect && !kept.Stated() {
 		return nil, nil, nil
 	}
-	w := f.Words
-	switch {
-	case kept.Left() > 0:
-		v.State = w.T("reach.aside-left", kept.Left())
-	case kept.Stated():
-		v.State = w.T("reach.aside-settled")
-	default:
-		v.State = w.T("reach.aside-none")
-	}
+	v.State = asideState(f, kept)
 	if kept.SettledAt.IsZero() {
 		v.Href = asidePath(st.ID, m.ID)
 	}
 	return v, &kept, nil
+}
+
+// asideState says what was stated of the product so far.
+func asideState(f ui.Format, kept plant.Containment) string {
+	switch {
+	case kept.Left() > 0:
+		return f.Words.T("reach.aside-left", kept.Left())
+	case kept.Stated():
+		return f.Words.T("reach.aside-settled")
+	}
+	return f.Words.T("reach.aside-none")
+}
+
+// containedOf is the product of the open matter of a characteristic.
+func containedOf(c plant.CharacteristicState) (none plant.Containment) {
+	for _, k := range c.Contained {
+		if c.Matter != nil && k.Matter == c.Matter.ID {
+			return k
+		}
+	}
+	return none
 }
 
 // showAside is GET /station/{station}/matter/{matter}/aside.

@@ -63,6 +63,7 @@ func TestOperatorIsToldWhatToKeepAside(t *testing.T) {
 		}
 	}
 	b.get(matter).says("78 parts are kept aside.", "Put more aside")
+	b.get(s.at()).says(grown + " 78 parts are kept aside.")
 	b.get(matter+"/aside").says("Put aside: 78", "Red rack 3, tag R-17", "Operator 1")
 
 	// The matter is closed, the product stays in the column.

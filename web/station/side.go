@@ -154,6 +154,9 @@ func openTask(f ui.Format, station uuid.UUID, c plant.CharacteristicState) taskV
 		When: f.Since(c.Matter.OpenedAt), Sub: f.Words.T("station.nobody-took")}
 	if says, ok := ui.SayReachOf(f, c); ok {
 		t.Aside = says.Do
+		if kept := containedOf(c); kept.Stated() { // the instruction stands, and so does what was done about it
+			t.Aside += " " + asideState(f, kept)
+		}
 	}
 	if c.Matter.TakenByName != "" {
 		t.Sub = f.Words.T("station.taken-by", c.Matter.TakenByName)
