@@ -73,6 +73,43 @@ type MatterOfShift struct {
 	Matter
 	StationName, Name string
 	Setup             Setup
+	Quiet             Quiet // the newest that was kept when the summary ends; the zero value: none was
+}
+
+// At is the matter as it stood at an instant: what people did later is left out. Its lines
+// are judgements and stay as they are judged now.
+func (m Matter) At(t time.Time) Matter {
+	later := func(at time.Time) bool { return !at.Before(t) }
+	if later(m.TakenAt) {
+		m.TakenBy, m.TakenByName, m.TakenAt = uuid.Nil, "", time.Time{}
+	}
+	if later(m.ClosedAt) {
+		m.ClosedAt = time.Time{}
+	}
+	m.Answers = slices.DeleteFunc(slices.Clone(m.Answers), func(a StepAnswer) bool { return later(a.At) })
+	m.Fixes = slices.DeleteFunc(slices.Clone(m.Fixes), func(f Fix) bool { return later(f.At) })
+	for i := range m.Fixes {
+		f := &m.Fixes[i]
+		if later(f.ConfirmedAt) {
+			f.ConfirmedAt = time.Time{}
+		}
+		if later(f.SignalAt) {
+			f.SignalAt = time.Time{}
+		}
+		if f.Word != nil && later(f.Word.At) {
+			f.Word = nil
+		}
+	}
+	return m
+}
+
+// QuietUntil is until when nobody is called about it at an instant; zero: it is not quiet.
+func (m MatterOfShift) QuietUntil(t time.Time) time.Time {
+	until, on := m.At(t).EscalatesFrom(Escalation{Quiet: m.Quiet}, t)
+	if on || !m.Quiet.Set() || !t.Before(until) {
+		return time.Time{}
+	}
+	return until
 }
 
 // Age is how long it had been open when the summary ends, or until it was closed.

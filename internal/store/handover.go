@@ -272,8 +272,15 @@ func (g *shiftReading) readMatters(ctx context.Context) error {
 	if err != nil {
 		return err
 	}
+	quiets, err := g.readQuiets(ctx, list)
+	if err != nil {
+		return err
+	}
+	if err := g.s.progress(ctx, g.tx, list...); err != nil {
+		return err
+	}
 	for _, m := range list {
-		v := plant.MatterOfShift{Matter: *m, StationName: g.stations[m.Station].Name}
+		v := plant.MatterOfShift{Matter: *m, Quiet: quiets[m.ID], StationName: g.stations[m.Station].Name}
 		if c := g.byID[m.Characteristic]; c != nil {
 			v.Name, v.Setup = c.Name, c.setup
 		}

@@ -65,6 +65,21 @@ func TestShiftSummaryHoldsWhatTheShiftDid(t *testing.T) {
 		t.Errorf("samples %+v", k)
 	}
 
+	// Kept quiet: said with the matter until its time is over, and of no summary before it.
+	m, err := p.Matter(ctx, matter)
+	if err != nil {
+		t.Fatal(err)
+	}
+	until := plant.CutTime(p.Clock.Now().Add(time.Hour))
+	if err := p.QuietMatter(ctx, plant.QuietRequest{ID: storetest.ID(), Matter: matter, Version: m.Version, Until: until, Reason: "insert is ordered", Person: p.Supervisor.ID}); err != nil {
+		t.Fatal(err)
+	}
+	p.Clock.Advance(time.Minute)
+	s = summary(t, p, span)
+	if q := s.StillOpen()[0]; q.Quiet.Reason != "insert is ordered" || !q.QuietUntil(s.Until).Equal(until) || !q.QuietUntil(until).IsZero() {
+		t.Errorf("quiet %+v, until %v", q.Quiet, q.QuietUntil(s.Until))
+	}
+
 	// A correction takes the signal back: it is listed, with what it took back.
 	correctCalm(t, p, a)
 	p.Clock.Advance(time.Minute)
@@ -72,8 +87,7 @@ func TestShiftSummaryHoldsWhatTheShiftDid(t *testing.T) {
 	if len(s.Corrections) != 1 || s.Corrections[0].Reason == "" || len(s.Corrections[0].Withdrew) == 0 {
 		t.Errorf("corrections %+v", s.Corrections)
 	}
-	m, err := p.Matter(ctx, matter)
-	if err != nil {
+	if m, err = p.Matter(ctx, matter); err != nil {
 		t.Fatal(err)
 	}
 	if err := p.CloseMatter(ctx, plant.ClosingRequest{Matter: matter, Version: m.Version, Person: p.Operator.ID}); err != nil {
