@@ -83,7 +83,14 @@ func (s *studied) checks() []check {
 			good(w.T("desk.fine.normal"))
 		}
 	}
-	return append(append(warn, fine...), s.comparedWithBasis()...)
+	for _, c := range s.comparedWithBasis() {
+		if c.Warn {
+			warn = append(warn, c)
+		} else {
+			fine = append(fine, c)
+		}
+	}
+	return append(warn, fine...)
 }
 
 // comparedWithBasis says what the two-sample tests find against the basis of the
@@ -92,7 +99,7 @@ func (s *studied) comparedWithBasis() []check {
 	w, rev, setup := s.f.Words, s.h.State.Revision, s.h.State.Setup
 	switch {
 	case s.basis.Overlap:
-		return []check{{Text: w.T("desk.basis.overlap", rev.Number)}}
+		return []check{{Warn: true, Text: w.T("desk.basis.overlap", rev.Number)}}
 	case !s.basis.Done:
 		return nil
 	}
@@ -102,11 +109,12 @@ func (s *studied) comparedWithBasis() []check {
 	if c.SigmaRatio < 1 {
 		sigma = w.T("desk.basis.sigma-below", percent(1-c.SigmaRatio), rev.Number, pWords(s, c.SigmaP))
 	}
+	otherCentre, otherSigma := c.CenterP < proposalLevel, c.SigmaP < proposalLevel
 	verdict := w.T("desk.basis.same")
-	if c.CenterP < proposalLevel || c.SigmaP < proposalLevel {
+	if otherCentre || otherSigma {
 		verdict = w.T("desk.basis.differs")
 	}
-	return []check{{Text: shift}, {Text: sigma}, {Text: verdict}}
+	return []check{{Text: shift, Warn: otherCentre}, {Text: sigma, Warn: otherSigma}, {Text: verdict, Warn: otherCentre || otherSigma}}
 }
 
 func percent(v float64) int { return int(math.Round(v * 100)) }

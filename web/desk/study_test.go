@@ -285,5 +285,6 @@ func TestANewStretchIsComparedWithTheBasis(t *testing.T) {
 	from := s.Clock.Now().Add(time.Minute)
 	s.fill(t, s.Diameter, 30, 5, 14994, 2, 7, nil)
 	b.get(path(s.Diameter, "study")+"?from="+from.Format("2006-01-02T15:04")).is(http.StatusOK).
-		has("from the data of revision 1, p below 0.001", "the process is another one than it was then", "On record", "Revision 1")
+		has("from the data of revision 1, p below 0.001", "the process is another one than it was then", "On record", "Revision 1").
+		has(`Look:</span> At the 1 % level the process is another one`)
 }
