@@ -324,7 +324,8 @@ func (v *planView) fill(f ui.Format, form planForm) {
 	}
 	for i, s := range p.Clean().Steps {
 		step := ui.NewStep(f, s)
-		step.Count, step.About, step.Preview = t.T("matter.step-of", i+1, len(p.Steps)), ui.MatterKindWord(t, p.Kind), true
+		// Of how many cannot be said here: a matter of several kinds asks the steps of all their plans.
+		step.Count, step.About, step.Preview = t.T("plan.step", i+1), ui.MatterKindWord(t, p.Kind), true
 		v.Preview, v.IfNot = append(v.Preview, step), append(v.IfNot, ifNotWords(f, s))
 	}
 	if p.Confirm && v.Flags {
