@@ -113,6 +113,26 @@ func TestMatterIsTakenAndClosedWithCauseAndAction(t *testing.T) {
 	}
 }
 
+// TestRefusedClosingIsBroughtIntoView: the form stands below what was measured, so that a
+// refusal at the top of the page would look as if nothing had happened.
+func TestRefusedClosingIsBroughtIntoView(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	at := s.open(t)
+	tb := s.tablet(t)
+	tb.Size(1280, 600)
+	tb.Open(at)
+	tb.Click("[data-testid=take]")
+	tb.WaitFor(`document.querySelector("[data-testid=taken-by]")`)
+	tb.Value(`document.querySelector("input[name=cause]").labels[0].click()`)
+	tb.Click("[data-testid=close]")
+	tb.WaitFor(`document.getElementById("action-problem")`)
+	tb.WaitFor(`document.activeElement.name === "action"`)
+	for _, what := range []string{`document.getElementById("action-problem")`, `document.activeElement`} {
+		tb.Want(what+" is in view", `(({ top, bottom }) => top >= 0 && bottom <= innerHeight)(`+what+`.getBoundingClientRect())`, "true")
+	}
+}
+
 func fixed(at time.Time) url.Values {
 	return url.Values{"cause": {"own"}, "own": {"something loose"}, "action": {"new insert"}, "fixed_at": {at.Format("2006-01-02T15:04")}}
 }

@@ -106,6 +106,7 @@ func (s Shell) scripts() []string {
 	if s.SignedIn {
 		all = append(all, "js/session.js")
 	}
+	all = append(all, "js/problem.js")
 	return urls(all, s.Scripts)
 }
 
