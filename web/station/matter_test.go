@@ -29,7 +29,10 @@ func TestVerdictSaysWhatToDo(t *testing.T) {
 	b := s.signIn(t, s.Operator)
 	leave := s.MustRecord(t, s.Diameter, 14990, 14991, 14992, 14989, 14993)
 	b.get(s.at("round", leave.Round.String())).is(http.StatusOK).
-		says("Leave it alone", "The process is steady. Do not adjust.", "14.9910", "On target.").saysNot(`data-testid="take"`, `data-testid="caution"`)
+		says("Leave it alone", "The process is steady. Do not adjust.", "14.9910").saysNot(`data-testid="take"`, `data-testid="caution"`)
+	s.Clock.Advance(30 * time.Minute)
+	above := s.MustRecord(t, s.Diameter, 14990, 14991, 14993, 14990, 14993)
+	b.get(s.at("round", above.Round.String())).says("Leave it alone", "14.9914").saysNot("above target", "On target.") // no invitation to adjust
 
 	s.Clock.Advance(30 * time.Minute)
 	look := s.MustRecord(t, s.Diameter, 14996, 14997, 14998, 14995, 14999)

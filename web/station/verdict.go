@@ -245,7 +245,9 @@ func newFact(f ui.Format, t told) factView {
 	}
 	mean := t.point.Stats.Mean()
 	v.Value = f.Mean(mean, s)
-	if s.Target != nil {
+	// How far it lies from target stands in large letters: beside a verdict to leave the
+	// process alone it would be an invitation to adjust.
+	if s.Target != nil && (t.Verdict == plant.Look || t.Verdict == plant.Hold) {
 		off := mean - s.Target.Float()
 		amount := f.WithUnit(f.Number(max(off, -off), s.MeanDecimals()), s.Unit)
 		switch {
