@@ -59,6 +59,13 @@ func TestAdviceWithNothingOpenAndThenWithASignal(t *testing.T) {
 	b.get(s.at("change", s.Diameter.ID.String())).says("A signal is open", "Take another round first", "measure="+s.Diameter.ID.String())
 	s.Clock.Advance(10 * time.Minute)
 	s.MustRecord(t, s.Diameter, 14996, 14997, 14998, 14995, 14999) // 0.0060 above target
+	cause := b.get(s.at("change", s.Diameter.ID.String())).
+		says("Look for the cause first", "1 round since then averages 0.0060\u00a0mm above target", "X offset of turret 1 by \u22120.003\u00a0mm", `data-testid="to-cause"`).
+		saysNot("checked", "Adjust X offset")
+	if got := cause.field("size"); got != "0.001" {
+		t.Errorf("nobody has looked for the cause, and the size is %q", got)
+	}
+	s.take(t, b)
 	turn := b.get(s.at("change", s.Diameter.ID.String())).
 		says("Adjust X offset of turret 1 by \u22120.003\u00a0mm", "1 round since then averages 0.0060\u00a0mm above target", "Look for the cause first", "recorded as prompted", `value="down" checked`)
 	if got := turn.field("size"); got != "0.003" {
@@ -75,6 +82,23 @@ func TestAdviceWithNothingOpenAndThenWithASignal(t *testing.T) {
 	b.get(s.at("change", s.Diameter.ID.String())).says("Do not adjust: the evidence allows none", "95 % interval")
 	s.MustRecord(t, s.Force, 610, 612, 691, 611, 609, 613)
 	b.get(s.at("change", s.Force.ID.String())).says("Adjusting does not cure this")
+}
+
+// take takes what is open on the diameter.
+func (s *site) take(t *testing.T, b *browser) {
+	t.Helper()
+	st, err := s.StationState(t.Context(), s.Station.ID, 1)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, c := range st.Characteristics {
+		if c.ID == s.Diameter.ID && c.Matter != nil {
+			at := s.at("matter", c.Matter.ID.String())
+			b.post(at+"/take", url.Values{"version": {b.get(at).field("version")}}).is(http.StatusSeeOther)
+			return
+		}
+	}
+	t.Fatal("nothing is open on the diameter")
 }
 
 // TestAdjustingOnATablet goes both ways by touch: with nothing open, past the advice, to
@@ -116,6 +140,18 @@ func TestAdjustingOnATablet(t *testing.T) {
 	tb.WaitFor(`location.search.includes("measure=")`)
 	s.Clock.Advance(5 * time.Minute)
 	s.MustRecord(t, s.Diameter, 14996, 14997, 14998, 14995, 14999)
+	tb.Open(page)
+	looks := func(testid string) string {
+		return tb.Value(`getComputedStyle(document.querySelector("[data-testid=` + testid + `]")).backgroundColor`)
+	}
+	tb.Want("the cause comes first", `document.querySelectorAll("[name=direction]:checked").length + document.querySelector("[data-testid=advice]").textContent`, "0Look for the cause first")
+	tb.Accessible("the cause first")
+	dark, light := looks("to-cause"), looks("log")
+	click(`[name="direction"][value="down"]`)
+	if a, b := looks("log"), looks("to-cause"); dark == light || a != dark || b != light {
+		t.Errorf("with a direction chosen logging is %s and the cause %s; before it was %s and %s", a, b, light, dark)
+	}
+	s.take(t, s.signIn(t, s.Operator))
 	tb.Open(page)
 	tb.Want("advised", `document.querySelector("[data-testid=advice]").dataset.kind`, "turn")
 	tb.Accessible("advised")

@@ -153,6 +153,13 @@ func (a *adviser) advise(v *adjustView) error {
 		v.Title, v.Says = w.T("adjusting.round"), []string{w.T("adjusting.round-text")}
 		v.Measure = path(a.st.ID) + "?measure=" + a.c.ID.String()
 	case plant.AdviseTurn:
+		if m := a.c.Matter; m != nil && untouched(*m) {
+			v.Cause = path(a.st.ID, "matter", m.ID.String())
+			v.Title = w.T("adjusting.cause-title")
+			v.Says = []string{w.T("adjusting.cause-text"), w.T("adjusting.since-signal", advice.Rounds, a.off(advice, advice.Offset), a.between(advice)),
+				w.T("adjusting.numbers-allow", a.by(advice))}
+			break // nothing is put into the fields
+		}
 		v.Title = w.T("adjusting.turn", a.by(advice))
 		v.Says = []string{w.T("adjusting.since-signal", advice.Rounds, a.off(advice, advice.Offset), a.between(advice)), w.T("adjusting.cause-first")}
 		v.suggest(a.f, advice.Turn)
@@ -170,6 +177,11 @@ func (a *adviser) advise(v *adjustView) error {
 			w.T("adjusting.settled-text")}
 	}
 	return nil
+}
+
+// untouched reports whether nobody has looked for the cause of a matter yet.
+func untouched(m plant.Matter) bool {
+	return m.TakenBy == uuid.Nil && len(m.Answers) == 0 && len(m.Fixes) == 0
 }
 
 // suggest puts the advised turn into the fields, where the person changes it to what was

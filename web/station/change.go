@@ -70,6 +70,7 @@ type adjustView struct {
 	Record    string // what adjusting did here before
 	Foot      string
 	Measure   string // where another round is taken
+	Cause     string // where the cause is looked for, while nobody has
 	Last      string
 	Chart     string
 	Note      string
