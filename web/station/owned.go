@@ -21,6 +21,12 @@ type ownedRow struct {
 	Strong                     bool // engineering
 }
 
+// actedOn reports whether somebody has to do something now. Soon after a matter the
+// station owns it still, for the board and the desk, and has nothing to do but go on.
+func actedOn(o plant.Ownership) bool {
+	return o.Owner != plant.Nobody && o.Reason != plant.Settling
+}
+
 func newOwned(f ui.Format, st plant.StationState) ownedView {
 	var v ownedView
 	for _, c := range st.Characteristics {
@@ -28,7 +34,7 @@ func newOwned(f ui.Format, st plant.StationState) ownedView {
 			v.Protect = append(v.Protect, protectView{c.Name, f.Words.T("owner.method." + string(p.Method)), p.Instruction,
 				f.Words.T("owner.since-by", f.Clock(p.From), p.DecidedBy)})
 		}
-		if o := c.Ownership(); o.Owner != plant.Nobody {
+		if o := c.Ownership(); actedOn(o) {
 			v.Owners = append(v.Owners, ownedRow{c.Name, ui.OwnerWord(f.Words, o.Owner), f.OwnerSince(o), f.OwnerReason(c), o.Owner == plant.Engineering})
 		}
 	}

@@ -6,6 +6,7 @@ import (
 	"testing"
 	"time"
 
+	"holdfast/internal/plant"
 	"holdfast/web/station"
 	"holdfast/web/ui"
 	"holdfast/web/words"
@@ -51,6 +52,43 @@ func TestWhatIsDueIsSaidInMinutes(t *testing.T) {
 	b.get(s.at()).says("Late 9 min")
 	s.Clock.Advance(time.Hour)
 	b.get(s.at()).says("Late 1 h", "#s-unknown")
+}
+
+// TestSoonAfterAMatterNobodyIsCalledToAct: the station owns it still, for the board and
+// the desk, and has nothing to do about it.
+func TestSoonAfterAMatterNobodyIsCalledToAct(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	s.steady(t)
+	s.MustRecord(t, s.Diameter, 14996, 14997, 14998, 14995, 14999)
+	st, err := s.StationState(t.Context(), s.Station.ID, 12)
+	if err != nil {
+		t.Fatal(err)
+	}
+	shown := func() string {
+		t.Helper()
+		fragments, err := station.Fragments(ui.NewFormat(words.For("en"), time.UTC, s.Clock.Now()), st)
+		if err != nil {
+			t.Fatal(err)
+		}
+		return string(fragments[1].HTML)
+	}
+	for i := range st.Characteristics {
+		c := &st.Characteristics[i]
+		if c.ID != s.Diameter.ID {
+			continue
+		}
+		if html := shown(); !strings.Contains(html, "a matter is open") {
+			t.Errorf("with a matter open it says %s", html)
+		}
+		c.Matter, c.Standing = nil, plant.Standing{Revision: c.Revision.ID, AfterMatter: true}
+		if o := c.Ownership(); o.Owner != plant.AtStation || o.Reason != plant.Settling {
+			t.Fatalf("soon after a matter it is owned by %s, %s", o.Owner, o.Reason)
+		}
+		if html := shown(); strings.Contains(html, "since the last matter") {
+			t.Errorf("soon after a matter it says %s", html)
+		}
+	}
 }
 
 func TestStationIsRememberedByTheTablet(t *testing.T) {
