@@ -18,8 +18,10 @@ func fixWords(f ui.Format, m plant.Matter, taken time.Time, fired bool) (step, m
 	switch p := m.Progress(); {
 	case fired && p.Fix == nil:
 		return w.T("matter.round-refutes"), w.T("matter.round-refutes-more"), true
-	case !fired && (p.Stage == plant.StageReady || p.Stage == plant.StageVerifying):
-		return w.T("matter.round-confirms"), w.T("matter.round-confirms-more"), true
+	case !fired && p.Stage == plant.StageReady:
+		return w.T("matter.round-confirms"), w.T("matter.confirmed-close"), true
+	case !fired && p.Stage == plant.StageVerifying:
+		return w.T("matter.round-confirms"), w.T("matter.confirmed-verify"), true
 	}
 	return "", "", false
 }

@@ -72,7 +72,7 @@ func TestAPlanIsWalkedStepByStep(t *testing.T) {
 	b.get(at+"?step=2").says("18.2\u00a0bar (Operator 1", "Go on with step 3", "Answer it again")
 	again := b.get(at + "?step=2")
 	b.post(at+"/step", url.Values{"id": {again.field("id")}, "plan": {again.field("plan")}, "attempt": {"1"}, "step": {"2"}, "seq": {again.field("seq")}, "said": {"value"}, "value": {"17.5"}}).is(http.StatusSeeOther)
-	b.post(at+"/close", url.Values{"version": {b.get(at).field("version")}, "cause": {"none"}, "done": {"nothing"}}).is(http.StatusUnprocessableEntity)
+	b.post(at+"/close", url.Values{"version": {second.get(at).field("version")}, "cause": {"none"}, "done": {"nothing"}}).is(http.StatusUnprocessableEntity)
 	b.answer(at, "skipped", url.Values{"reason": {"found"}}).is(http.StatusSeeOther)
 	page = b.get(at).says("Say what was found and done", "Record what was done", "17.5\u00a0bar", "Left out: The cause is found already")
 	closing := fixed(s.Clock.Now().Add(-time.Minute))
@@ -95,10 +95,11 @@ func TestAPlanIsWalkedStepByStep(t *testing.T) {
 	b.post(at+"/close", closing).is(http.StatusSeeOther)
 	s.Clock.Advance(10 * time.Minute)
 	good := s.MustRecord(t, s.Diameter, 14990, 14991, 14992, 14990, 14991)
-	b.get(s.at("round", good.Round.String())).says("The round after the fix shows nothing new.")
+	b.get(s.at("round", good.Round.String())).says("The round after the fix shows nothing new.", "a second person verifies it before it is closed").saysNot("it can be closed")
 
 	// Who fixed it cannot verify, nor can an operator; a supervisor signs, or sends it back.
-	page = b.get(at).says("A second person verifies it", "Operator 1 recorded the fix.").saysNot(`name="password"`)
+	b.get(at).says("A second person verifies it", "Operator 1 recorded the fix.").saysNot(`name="password"`)
+	page = second.get(at)
 	b.post(at+"/verify", url.Values{"version": {page.field("version")}, "fix": {s.Station.ID.String()}, "password": {"right"}}).is(http.StatusForbidden)
 	page = second.get(at).says("With your password you sign, as Supervisor 1")
 	sign := url.Values{"version": {page.field("version")}, "fix": {page.field("fix")}, "do": {"accept"}}
