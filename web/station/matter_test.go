@@ -78,7 +78,8 @@ func TestMatterIsTakenAndClosedWithCauseAndAction(t *testing.T) {
 	b.get(s.at()).says("Operator 1 has taken it")
 	other.post(at+"/take", url.Values{"version": {version}}).is(http.StatusConflict).says("Operator 1 was quicker and took this", "nothing of yours was recorded")
 
-	version = b.get(at).field("version")
+	other.get(at).says("Take it over")
+	version = b.get(at).saysNot("Take it over", `data-testid="take"`).field("version") // it is Operator 1's already
 	opened := s.Clock.Now().Add(-10 * time.Minute)
 	for _, tc := range []struct {
 		name string

@@ -21,6 +21,7 @@ type matterView struct {
 	Where   string // "Step 2 of 4"
 	Lines   []lineOfMatter
 	TakenBy string
+	Mine    bool // who looks at it has taken it
 	Take    string
 	Version string
 	Problem string // about the whole: somebody was quicker
@@ -92,7 +93,7 @@ func newMatter(f ui.Format, person plant.Person, st plant.StationState, c plant.
 	condition := ui.ConditionOf(m.Kind())
 	v := matterView{Tone: ui.Tone(condition), Symbol: ui.SymbolOf(condition), Title: ui.VerdictWords(w, m.Kind()), Name: c.Name,
 		Since: w.T("station.open-since", f.Clock(m.OpenedAt), f.Since(m.OpenedAt)), Where: ui.StageWords(w, p), TakenBy: m.TakenByName,
-		Version: itoa(m.Version), Back: path(st.ID), Problem: typed.problem}
+		Mine: m.TakenBy == person.ID, Version: itoa(m.Version), Back: path(st.ID), Problem: typed.problem}
 	here := path(st.ID, "matter", m.ID.String())
 	v.Take, v.Close = here+"/take", here+"/close"
 	v.Caution = len(p.Steps) > 0 || m.Kind() == plant.Hold
