@@ -87,7 +87,7 @@ type gaugeCmd struct {
 	sending
 	Port           string        `arg:"" help:"Serial port, such as /dev/ttyUSB0, or - for standard input." default:"-"`
 	Baud           int           `help:"Speed of the serial port; 8 bits, no parity, 1 stop bit." default:"9600"`
-	Characteristic string        `help:"What is measured: name or id." required:""`
+	Characteristic string        `help:"What is measured: name, \"Machine / name\" where the name is there twice, or id." required:""`
 	Station        string        `help:"Id of the station, where the sender belongs to no single one."`
 	Unit           string        `help:"Unit of the readings. A line that states another is not taken." required:""`
 	Size           int           `help:"Readings of a subgroup." required:""`

@@ -45,9 +45,10 @@ func (m measuredStation) clone() plant.StationState {
 func (s *Store) stationSetups(ctx context.Context, id uuid.UUID) (plant.StationState, error) {
 	var st plant.StationState
 	rows, err := s.pool.Query(ctx, `select t.id, t.name, t.family, t.position, l.id, l.name, l.position,
-			c.id, c.machine_id, c.part_id, c.family, c.name, c.position, cs.version, cs.setup_version, force.revision_id
+			c.id, c.machine_id, c.part_id, c.family, c.name, c.position, cs.version, cs.setup_version, force.revision_id, m.name
 		from station t join line l on l.id = t.line_id
 		left join characteristic c on c.station_id = t.id
+		left join machine m on m.id = c.machine_id
 		left join characteristic_state cs on cs.characteristic_id = c.id
 		left join lateral (select b.revision_id from boundary b where b.characteristic_id = c.id and b.at <= $3 and b.kind in ('revision', 'setup')
 			order by b.at desc, b.id desc limit 1) force on true
@@ -62,16 +63,17 @@ func (s *Store) stationSetups(ctx context.Context, id uuid.UUID) (plant.StationS
 	}
 	var found []row
 	var cID, machine, part, revision *uuid.UUID
-	var family, name *string
+	var family, name, on *string
 	var position, setup *int
 	var version *int64
 	_, err = pgx.ForEachRow(rows, []any{&st.ID, &st.Name, &st.Family, &st.Station.Position, &st.Line.ID, &st.Line.Name, &st.Line.Position,
-		&cID, &machine, &part, &family, &name, &position, &version, &setup, &revision}, func() error {
+		&cID, &machine, &part, &family, &name, &position, &version, &setup, &revision, &on}, func() error {
 		if cID == nil {
 			return nil
 		}
 		r := row{setup: *setup, revision: orNil(revision)}
 		r.c.Characteristic = plant.Characteristic{ID: *cID, StationID: st.ID, MachineID: *machine, PartID: orNil(part), Family: *family, Name: *name, Position: *position}
+		r.c.Machine.ID, r.c.Machine.Name = *machine, *on
 		r.c.Version = *version
 		found = append(found, r)
 		return nil

@@ -26,7 +26,7 @@ type sentRound struct {
 // sentEntry is the subgroup of one characteristic. A reading that is null is a part
 // that was lost.
 type sentEntry struct {
-	Characteristic string    `json:"characteristic"` // id or name
+	Characteristic string    `json:"characteristic"` // id, name, or "machine / name"
 	Unit           string    `json:"unit"`
 	Setup          int       `json:"setup"`
 	Readings       []*string `json:"readings"`
@@ -130,7 +130,11 @@ func (s *Surface) streams(r *http.Request, sent sentRound, station uuid.UUID) (m
 // round that is on record already, and streams those of the station's machines.
 func (e sentEntry) understand(at string, st plant.StationState, known map[uuid.UUID]plant.Setup, streams map[uuid.UUID][]plant.Stream) (plant.Entry, error) {
 	c, ok := find(st, e.Characteristic)
-	if !ok {
+	switch {
+	case !ok && c.ID != uuid.Nil:
+		return plant.Entry{}, plant.Invalidf(at+".characteristic", "This station measures %q more than once, each on a machine of its own. Name it by its id, or with its machine: %q.",
+			c.Name, named(c))
+	case !ok:
 		return plant.Entry{}, plant.Invalidf(at+".characteristic", "This station measures no %q.", short(e.Characteristic))
 	}
 	setup := c.Setup
@@ -178,23 +182,34 @@ func (e sentEntry) understand(at string, st plant.StationState, known map[uuid.U
 	return out, nil
 }
 
-// find looks for a characteristic by its id or by its name, which must be the name of
-// one only.
+// find looks for a characteristic by its id, by its name, or by "machine / name". Where
+// more than one has the name it returns one of them and false.
 func find(st plant.StationState, text string) (found plant.CharacteristicState, ok bool) {
-	id, err := uuid.Parse(text)
+	if id, err := uuid.Parse(text); err == nil {
+		return only(st, func(c plant.CharacteristicState) bool { return c.ID == id })
+	}
+	found, ok = only(st, func(c plant.CharacteristicState) bool { return c.Name == text })
+	if found.ID == uuid.Nil {
+		return only(st, func(c plant.CharacteristicState) bool { return named(c) == text })
+	}
+	return found, ok
+}
+
+// only is the one characteristic that is meant, or one of several and false.
+func only(st plant.StationState, meant func(plant.CharacteristicState) bool) (found plant.CharacteristicState, ok bool) {
 	for _, c := range st.Characteristics {
-		if err == nil && c.ID == id {
-			return c, true
-		}
-		if err != nil && c.Name == text {
+		if meant(c) {
 			if ok {
-				return plant.CharacteristicState{}, false
+				return found, false
 			}
 			found, ok = c, true
 		}
 	}
 	return found, ok
 }
+
+// named is a characteristic's name with its machine's before it.
+func named(c plant.CharacteristicState) string { return c.Machine.Name + " / " + c.Name }
 
 // streamOf finds a stream by its id or name. One that is retired takes no new readings;
 // a round that is sent again names what it named.
