@@ -24,7 +24,7 @@ import (
 type sending struct {
 	Server    string `help:"Address of the server, https://HOST:PORT." required:"" env:"HOLDFAST_SERVER"`
 	TokenFile string `help:"File that holds the token of this sender." required:"" type:"existingfile" env:"HOLDFAST_TOKEN_FILE"`
-	CA        string `name:"ca" help:"Certificate of the plant's authority, PEM." type:"existingfile" env:"HOLDFAST_CA"`
+	CA        string `name:"ca" help:"Certificate of the plant's authority, from /authority of the server, PEM or DER." type:"existingfile" env:"HOLDFAST_CA"`
 	Spool     string `help:"File that keeps what the server has not taken yet." required:"" env:"HOLDFAST_SPOOL"`
 }
 
@@ -43,7 +43,7 @@ func (c *sending) with(ctx context.Context, log *slog.Logger, f func(ctx context
 	}
 	defer s.Close()
 	p := relay.Poster{Spool: s, Server: c.Server, Token: func() (string, error) { return readSecret(c.TokenFile) }, Now: time.Now, Log: log, Pause: time.Second,
-		HTTP: &http.Client{Timeout: 30 * time.Second, Transport: &http.Transport{Proxy: http.ProxyFromEnvironment, TLSClientConfig: trust, IdleConnTimeout: time.Minute},
+		HTTP: &http.Client{Timeout: 30 * time.Second, Transport: knowing{&http.Transport{Proxy: http.ProxyFromEnvironment, TLSClientConfig: trust, IdleConnTimeout: time.Minute}, *c},
 			CheckRedirect: func(*http.Request, []*http.Request) error { return http.ErrUseLastResponse }}}
 	background, stop := context.WithCancel(ctx)
 	var running sync.WaitGroup
@@ -76,10 +76,33 @@ func trusting(ca string) (*tls.Config, error) {
 		return nil, err
 	}
 	c.RootCAs = x509.NewCertPool()
-	if !c.RootCAs.AppendCertsFromPEM(body) {
+	if c.RootCAs.AppendCertsFromPEM(body) {
+		return c, nil
+	}
+	root, err := x509.ParseCertificate(body) // in DER, as tablets load it
+	if err != nil {
 		return nil, fmt.Errorf("%s holds no certificate", ca)
 	}
+	c.RootCAs.AddCert(root)
 	return c, nil
+}
+
+// knowing says what to do about a server whose authority the sender does not know.
+type knowing struct {
+	http.RoundTripper
+	sending
+}
+
+func (k knowing) RoundTrip(r *http.Request) (*http.Response, error) {
+	res, err := k.RoundTripper.RoundTrip(r)
+	if _, unknown := errors.AsType[x509.UnknownAuthorityError](err); unknown {
+		at := strings.TrimRight(k.Server, "/") + "/authority"
+		if k.CA != "" {
+			return nil, fmt.Errorf("%w; --ca %s is not of the authority that signed it: load it again from %s, and compare the fingerprint", err, k.CA, at)
+		}
+		return nil, fmt.Errorf("%w; load the certificate of the plant's authority from %s, compare its fingerprint, and name the file with --ca", err, at)
+	}
+	return res, err
 }
 
 // gaugeCmd sends what a gauge tells.

@@ -20,6 +20,7 @@ import (
 
 	"holdfast/internal/browsertest"
 	"holdfast/internal/certs"
+	"holdfast/internal/relay"
 )
 
 func TestPlainHTTPIsForThisMachineOnly(t *testing.T) {
@@ -99,6 +100,9 @@ func TestServesOverItsOwnAuthority(t *testing.T) {
 	if res.Header.Get("Content-Type") != "application/x-x509-ca-cert" || body != string(way.root.Raw) {
 		t.Errorf("the certificate came as %q, %d bytes", res.Header.Get("Content-Type"), len(body))
 	}
+	if res, body = fetch(t, c, r.url+"/authority.pem"); body != string(certs.PEM(way.root)) || !strings.HasSuffix(res.Header.Get("Content-Disposition"), `.pem"`) {
+		t.Errorf("for programs the certificate came as %q\n%s", res.Header.Get("Content-Disposition"), body)
+	}
 
 	// Whoever types the address without its scheme is told where to go, and nothing else.
 	plain := "http://" + strings.TrimPrefix(r.url, "https://")
@@ -125,6 +129,40 @@ func TestServesOverItsOwnAuthority(t *testing.T) {
 	}
 	if err := (&healthCmd{URL: r.url}).Run(context.Background()); err == nil {
 		t.Error("health trusts a certificate that it does not know")
+	}
+}
+
+// A sender is told what it lacks, and takes the certificate in both forms.
+func TestASenderTrustsTheAuthority(t *testing.T) {
+	t.Parallel()
+	r, way, _ := serveTLS(t)
+	folder := t.TempDir()
+	pem, der, token := filepath.Join(folder, "a.pem"), filepath.Join(folder, "a.crt"), filepath.Join(folder, "token")
+	for path, body := range map[string][]byte{pem: certs.PEM(way.root), der: way.root.Raw, token: []byte("of nobody")} {
+		if err := os.WriteFile(path, body, 0o600); err != nil {
+			t.Fatal(err)
+		}
+	}
+	// Whoever is told that the token is worth nothing has reached the server.
+	for ca, want := range map[string]string{"": "name the file with --ca", pem: "worth nothing", der: "worth nothing"} {
+		var log lockedBuffer
+		s := sending{Server: r.url, TokenFile: token, CA: ca, Spool: filepath.Join(folder, "spool"+filepath.Base(ca))}
+		err := s.with(context.Background(), slog.New(slog.NewTextHandler(&log, nil)), func(ctx context.Context, spool *relay.Spool) error {
+			g := &relay.Gather{Spool: spool, Now: r.Clock.Now, Source: relay.Source{Characteristic: r.Diameter.Name, Size: 1, Pattern: relay.Pattern{Unit: "mm"}}}
+			if _, err := g.Take("nothing", ""); err != nil { // a line that the station is shown
+				return err
+			}
+			for end := time.Now().Add(20 * time.Second); !strings.Contains(log.String(), want); time.Sleep(5 * time.Millisecond) {
+				if time.Now().After(end) {
+					t.Errorf("with --ca %q: no %q in\n%s", ca, want, log.String())
+					break
+				}
+			}
+			return nil
+		})
+		if err != nil {
+			t.Error(err)
+		}
 	}
 }
 

@@ -312,6 +312,9 @@ func Fingerprint(c *x509.Certificate) string {
 	return b.String()
 }
 
+// PEM is a certificate as programs read it from a file.
+func PEM(c *x509.Certificate) []byte { return encodeCert(c.Raw) }
+
 // ReadRoot reads the authority's certificate from its folder, for whoever has to trust it
 // on this machine.
 func ReadRoot(dir string) (*x509.Certificate, error) {

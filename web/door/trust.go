@@ -16,7 +16,10 @@ import (
 // open to everybody: a tablet needs it before anybody can sign in there safely.
 const AuthorityAddress = "/authority"
 
-const authorityFile = AuthorityAddress + ".crt"
+const (
+	authorityFile = AuthorityAddress + ".crt"
+	authorityPEM  = AuthorityAddress + ".pem"
+)
 
 // Trust serves the certificate of the plant's own authority.
 type Trust struct {
@@ -28,6 +31,7 @@ type Trust struct {
 func (t *Trust) Routes(r chi.Router) {
 	r.Get(AuthorityAddress, ui.Handle(t.Log, t.show))
 	r.Get(authorityFile, t.file)
+	r.Get(authorityPEM, t.pem)
 }
 
 // trust is what the page shows.
@@ -53,9 +57,18 @@ func (t *Trust) show(w http.ResponseWriter, r *http.Request) error {
 
 // file is the certificate in DER under the type that devices offer to install.
 func (t *Trust) file(w http.ResponseWriter, _ *http.Request) {
+	t.send(w, "application/x-x509-ca-cert", ".crt", t.Authority.Raw)
+}
+
+// pem is the certificate as curl and the senders of this program are given it.
+func (t *Trust) pem(w http.ResponseWriter, _ *http.Request) {
+	t.send(w, "application/x-pem-file", ".pem", certs.PEM(t.Authority))
+}
+
+func (t *Trust) send(w http.ResponseWriter, kind, ending string, body []byte) {
 	h := w.Header()
-	h.Set("Content-Type", "application/x-x509-ca-cert")
-	h.Set("Content-Disposition", `attachment; filename="holdfast-authority-`+t.Authority.NotBefore.Format(time.DateOnly)+`.crt"`)
+	h.Set("Content-Type", kind)
+	h.Set("Content-Disposition", `attachment; filename="holdfast-authority-`+t.Authority.NotBefore.Format(time.DateOnly)+ending+`"`)
 	h.Set("Cache-Control", "no-store")
-	_, _ = w.Write(t.Authority.Raw)
+	_, _ = w.Write(body)
 }
