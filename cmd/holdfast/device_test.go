@@ -96,3 +96,17 @@ func (v *visitor) signInByBadge(badge, pin string) {
 		v.t.Fatalf("signing in with badge %s: %s\n%s", badge, res.Status, body)
 	}
 }
+
+// A sender has no browser: its code comes as the line that fetches the token.
+func TestTheCodeOfASender(t *testing.T) {
+	t.Parallel()
+	r := serve(t)
+	code, err := r.MakeDeviceCode(context.Background(), plant.Device{Kind: plant.Sender, Name: "Bore gauge", Station: r.Station.ID}, r.Administrator.ID)
+	if err != nil {
+		t.Fatal(err)
+	}
+	_, body := r.visit(t, "administrator1").get("/admin/devices")
+	if want := "curl -X POST " + r.url + "/enrol -H &#39;Accept: application/json&#39; -d code=" + code.Code; !strings.Contains(body, want) || strings.Contains(body, "in the browser of the device") {
+		t.Errorf("no %q, or a browser is spoken of", want)
+	}
+}

@@ -29,9 +29,13 @@ func (p *program) tablet(door *auth.Door) *doorpages.Tablet {
 // staff is what the pages of people and devices need. What is changed there counts at
 // once: sockets of who or what is out are ended, not only at the next recheck.
 func (p *program) staff(hasher *auth.Hasher) *admin.Staff {
+	authority := ""
+	if p.Transport.root != nil {
+		authority = doorpages.AuthorityAddress
+	}
 	return &admin.Staff{
-		Store: p.store,
-		Hash:  func(ctx context.Context, s auth.Secret) (string, error) { return hasher.Hash(ctx, s) },
+		Store: p.store, AuthorityAt: authority,
+		Hash: func(ctx context.Context, s auth.Secret) (string, error) { return hasher.Hash(ctx, s) },
 		Changed: func(person uuid.UUID) {
 			p.sessions.Forget(person)
 			p.hub.Recheck()

@@ -21,11 +21,13 @@ type devicesView struct {
 	Lines    []placeView
 	Stations []placeView
 	EnrolAt  string
+	Trust    string // page of the server's own authority; "" where it has none
 	Done     string
 }
 
 type codeView struct {
 	ID, Code, Name, Kind, Until string
+	Curl                        string // what fetches the token of a sender, "" for what has a browser
 }
 
 type deviceView struct {
@@ -66,7 +68,7 @@ func (a *Admin) showDevices(w http.ResponseWriter, r *http.Request, status int, 
 	}
 	s := staffShell(r, "staff.devices")
 	t := s.Words
-	v := devicesView{New: add, EnrolAt: r.Host + "/enrol"}
+	v := devicesView{New: add, EnrolAt: r.Host + "/enrol", Trust: a.staff.AuthorityAt}
 	names := map[uuid.UUID]string{}
 	for _, l := range lines {
 		names[l.ID] = l.Name
@@ -77,8 +79,12 @@ func (a *Admin) showDevices(w http.ResponseWriter, r *http.Request, status int, 
 		v.Stations = append(v.Stations, placeView{st.ID.String(), t.T("staff.station-of", st.Name, names[st.LineID])})
 	}
 	for _, c := range codes {
-		v.Codes = append(v.Codes, codeView{ID: c.ID.String(), Code: c.Code[:4] + " " + c.Code[4:], Name: c.Device.Name,
-			Kind: t.T("staff.kind." + string(c.Device.Kind)), Until: s.Format.Time(c.ExpiresAt)})
+		one := codeView{ID: c.ID.String(), Code: c.Code[:4] + " " + c.Code[4:], Name: c.Device.Name,
+			Kind: t.T("staff.kind." + string(c.Device.Kind)), Until: s.Format.Time(c.ExpiresAt)}
+		if c.Device.Kind == plant.Sender {
+			one.Curl = enrolByCurl(v.EnrolAt, c.Code, ui.FrameOf(r).Secure, v.Trust != "")
+		}
+		v.Codes = append(v.Codes, one)
 	}
 	if len(v.Codes) > 0 {
 		s.Scripts = []string{"js/admin-codes.js"} // the list shows by itself that a device came in
@@ -105,6 +111,18 @@ func (a *Admin) showDevices(w http.ResponseWriter, r *http.Request, status int, 
 		}
 	}
 	return ui.Render(w, r, status, devicesPage(s, v))
+}
+
+// enrolByCurl is the line that lets a sender in, which has no browser.
+func enrolByCurl(at, code string, secure, ownAuthority bool) string {
+	scheme, trust := "http://", ""
+	if secure {
+		scheme = "https://"
+	}
+	if ownAuthority {
+		trust = "--cacert authority.pem "
+	}
+	return "curl " + trust + "-X POST " + scheme + at + " -H 'Accept: application/json' -d code=" + code
 }
 
 // posted reads a device from a form. A place that cannot be read is none, and the device

@@ -21,6 +21,8 @@ type Staff struct {
 	Changed func(person uuid.UUID)
 	// DeviceChanged is told of a device that was changed or revoked here.
 	DeviceChanged func(device uuid.UUID)
+	// AuthorityAt is the page of the server's own authority, "" where it has none.
+	AuthorityAt string
 }
 
 // StaffStore is what they need of the plant's record.
