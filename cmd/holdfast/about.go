@@ -29,6 +29,14 @@ func (p *program) about(ctx context.Context) (admin.Installation, error) {
 	}
 	i.Postgres, i.Database, i.Bytes, i.Guarded, i.Durable, i.Checksums = db.Version, db.Database, db.Bytes, db.Guarded, db.Durable, db.Checksums
 	i.Skew = time.Since(db.Now)
+	switch follows, err := followsTimeServer(); {
+	case err != nil:
+		i.TimeServer = admin.TimeServerUntold
+	case !follows:
+		i.TimeServer = admin.TimeServerNone
+	default:
+		i.TimeServer = admin.TimeServerFollowed
+	}
 	heads, err := p.store.Heads(ctx)
 	if err != nil {
 		return i, err

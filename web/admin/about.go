@@ -30,6 +30,7 @@ type Installation struct {
 	Guarded, Durable   bool
 	Checksums          bool
 	Skew               time.Duration // of the database's clock against this machine's
+	TimeServer         TimeServer
 
 	Chains int
 	Root   string // over all heads, in hexadecimal digits
@@ -49,6 +50,15 @@ const (
 	HTTPSAuto  HTTPS = "auto"  // the plant's own authority
 	HTTPSFiles HTTPS = "files" // certificate in files
 	HTTPSProxy HTTPS = "proxy" // a proxy ends TLS
+)
+
+// TimeServer is whether the machine's clock follows one.
+type TimeServer string
+
+const (
+	TimeServerFollowed TimeServer = "followed"
+	TimeServerNone     TimeServer = "none"
+	TimeServerUntold   TimeServer = "untold" // the system does not say
 )
 
 // About reads the installation.
@@ -130,6 +140,10 @@ func aboutGroups(s ui.Shell, machine string, i Installation, now time.Time) []ab
 		{Label: w.T("about.checksums"), Value: yes(i.Checksums, w.T("about.checksums-yes"), w.T("about.checksums-no")), Warning: warn(!i.Checksums, w.T("about.checksums-do"))},
 		{Label: w.T("about.clock"), Value: w.T("about.clock-value", s.Format.Number(i.Skew.Abs().Seconds(), 1)), Warning: warn(i.Skew.Abs() > clocksApart, w.T("about.clock-do"))},
 	}}
+	if i.TimeServer != "" {
+		data.Facts = append(data.Facts, aboutFact{Label: w.T("about.time-server"), Value: w.T("about.time-server." + string(i.TimeServer)),
+			Warning: warn(i.TimeServer == TimeServerNone, w.T("about.time-server-do"))})
+	}
 	if i.Disk > 0 {
 		data.Facts = append(data.Facts, aboutFact{Label: w.T("about.disk"), Value: w.T("about.disk-value", size(s.Format, i.DiskFree), size(s.Format, i.Disk)),
 			Warning: warn(i.DiskFree < tooLittle, w.T("about.disk-now")) + warn(i.DiskFree >= tooLittle && i.DiskFree < littleDisk, w.T("about.disk-do"))})

@@ -17,7 +17,7 @@ func well() Installation {
 		Version: "v1.2", Go: "go1.26", System: "linux/amd64", Processors: 4, Started: noon.Add(-time.Hour),
 		Address: "https://10.0.0.5:8443", HTTPS: HTTPSAuto, Fingerprint: "AB:CD", Certificate: noon.AddDate(1, 0, 0),
 		Postgres: "15.4", Database: "holdfast", Private: true, Bytes: 3 << 30, Guarded: true, Durable: true, Checksums: true,
-		Chains: 12, Root: strings.Repeat("0f", 32), Disk: 100 << 30, DiskFree: 50 << 30, Saves: 41,
+		Chains: 12, Root: strings.Repeat("0f", 32), TimeServer: TimeServerFollowed, Disk: 100 << 30, DiskFree: 50 << 30, Saves: 41,
 	}
 }
 
@@ -46,6 +46,7 @@ func TestAboutWarnsOfWhatNeedsSomebody(t *testing.T) {
 		"not durable":          func(i *Installation) { i.Durable = false },
 		"no checksums":         func(i *Installation) { i.Checksums = false },
 		"clocks apart":         func(i *Installation) { i.Skew = -5 * time.Second },
+		"no time server":       func(i *Installation) { i.TimeServer = TimeServerNone },
 		"disk filling":         func(i *Installation) { i.DiskFree = 3 << 30 },
 		"disk as good as full": func(i *Installation) { i.DiskFree = 1 << 20 },
 	} {
