@@ -207,6 +207,18 @@ function start(form) {
     if (current && current.value.trim() === "") go(current);
     else if (!current || commit(current)) next(current);
   });
+  // A gauge may go on typing when all parts are in. That belongs to no part, and its Enter
+  // must not save: it is said instead.
+  let spilt = false;
+  main.addEventListener("keydown", (event) => {
+    if (/^[-+.,\d\u2212]$/.test(event.key)) spilt = true;
+    else if (event.key === "Enter" && spilt) {
+      event.preventDefault();
+      spilt = false;
+      armedAt = performance.now();
+      (sections.find((s) => !s.root.hidden) ?? sections[0]).heading(say.saySpilt);
+    }
+  });
   form.addEventListener("submit", (event) => {
     for (const s of sections) {
       for (const input of s.inputs) {

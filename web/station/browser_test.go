@@ -56,6 +56,10 @@ func TestRoundByGaugeThatTypes(t *testing.T) {
 	tb.Keys("\r") // a gauge that ends with two
 	tb.Value(`await new Promise((done) => setTimeout(done, 500))`)
 	tb.Want("nothing is sent yet", theFocus, "Save the round")
+	tb.Keys("14.993\r") // a sixth, after five are in
+	tb.Want("a number too many", theHeading, "All parts were in: the last number is not taken. Save the round.")
+	tb.Value(`await new Promise((done) => setTimeout(done, 500))`)
+	tb.Want("nor is it sent by that", theFocus, "Save the round")
 	tb.Keys("\r")
 	tb.WaitFor(`document.querySelector("[data-testid=verdict]")`)
 	tb.Want("verdict", `document.querySelector("h1").textContent`, "Leave it alone")
