@@ -55,6 +55,7 @@ type CharacteristicState struct {
 	LastDue   time.Time
 	Due       Due
 	Machine   MachineNow
+	Beside    bool // other machines stand at its station, so that its own is to be named
 
 	Gauge     *GaugeNow     // that it is measured with; nil: none is named
 	Reach     *Reach        // of the open matter; nil: none, or not found yet
@@ -70,6 +71,15 @@ type CharacteristicState struct {
 	OverduePlan *ReactionPlan // in force, while a round is overdue; nil: none
 
 	Changes []Change // that concern it, since the first of Points, oldest first: what charts show of them
+}
+
+// Title is what the characteristic is called among all that is measured at its station:
+// its name, with the machine where the station has several.
+func (c CharacteristicState) Title() string {
+	if !c.Beside || c.Machine.Name == "" {
+		return c.Name
+	}
+	return c.Name + " (" + c.Machine.Name + ")"
 }
 
 // MachineNow is a machine with what it does at the moment.

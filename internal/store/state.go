@@ -260,6 +260,7 @@ func (g *gathering) assemble(ctx context.Context, tx pgx.Tx) ([]plant.StationSta
 				return nil, err
 			}
 			c.Machine = *g.machines[c.MachineID]
+			c.Beside = len(st.Machines) > 1
 			g.due(c)
 		}
 		out[i] = *st

@@ -143,7 +143,7 @@ func newCard(f ui.Format, st *plant.StationState) cardView {
 
 func newMark(f ui.Format, c *plant.CharacteristicState) markView {
 	condition := c.Condition()
-	return markView{Name: c.Name, Tone: tone(condition), Symbol: ui.SymbolOf(condition),
+	return markView{Name: c.Title(), Tone: tone(condition), Symbol: ui.SymbolOf(condition),
 		Word: ui.ConditionWord(f.Words, condition), Age: age(f, c), Link: chartAddress(c.StationID, c.ID)}
 }
 
@@ -193,9 +193,9 @@ func spark(f ui.Format, c *plant.CharacteristicState, value string, height float
 	s := chart.Spark{ID: "spark-" + c.ID.String(), W: sparkW, H: height, Limits: band(c),
 		Stopped: !c.Machine.Running(), Points: make([]chart.SparkPoint, len(points))}
 	if c.Revision == nil {
-		s.Label = f.Words.T("board.spark-learning", len(points), c.Name, value)
+		s.Label = f.Words.T("board.spark-learning", len(points), c.Title(), value)
 	} else {
-		s.Label = f.Words.T("board.spark", len(points), c.Name, value)
+		s.Label = f.Words.T("board.spark", len(points), c.Title(), value)
 	}
 	for i, p := range points {
 		s.Points[i] = chart.SparkPoint{Value: p.Stats.Mean(),

@@ -124,7 +124,7 @@ func newMatter(f ui.Format, st *plant.StationState, c *plant.CharacteristicState
 	v.Link = matterAddress(st.ID, c.ID, m.ID)
 	v.Matter = m.ID.String()
 	v.Age, v.since = f.Since(m.OpenedAt), m.OpenedAt
-	v.Why = f.Words.T("board.why", ui.ConditionWord(f.Words, condition), c.Name, why(f, c))
+	v.Why = f.Words.T("board.why", ui.ConditionWord(f.Words, condition), c.Title(), why(f, c))
 	v.Say = f.Words.T("board.say", st.Name, v.Why)
 	if says, ok := ui.SayReachOf(f, *c); ok {
 		v.Reach = says.Is
@@ -226,7 +226,7 @@ func addLate(f ui.Format, list []needView, seen map[lateKey]int, st *plant.Stati
 	}
 	key := lateKey{c.Due.At, condition == plant.IsUnknown}
 	if i, ok := seen[key]; ok {
-		list[i].names = append(list[i].names, c.Name)
+		list[i].names = append(list[i].names, c.Title())
 		if call := roundCall(f, st, c); call.Marked || list[i].Call.Text == "" {
 			list[i].Call = call // the round on record is named by one of them
 		}
@@ -236,15 +236,15 @@ func addLate(f ui.Format, list []needView, seen map[lateKey]int, st *plant.Stati
 	v := need(st, condition)
 	v.Link = stationAddress(st.ID, c.ID)
 	v.Age, v.since = f.Age(c.Due.LateBy(f.Now)), c.Due.At
-	v.names = []string{c.Name}
-	v.Why = w.T("board.why", ui.ConditionWord(w, condition), c.Name, reason)
+	v.names = []string{c.Title()}
+	v.Why = w.T("board.why", ui.ConditionWord(w, condition), c.Title(), reason)
 	v.Call = roundCall(f, st, c)
 	seen[key] = len(list)
 	return append(list, v)
 }
 
 func newStudy(f ui.Format, st *plant.StationState, c *plant.CharacteristicState) studyView {
-	v := studyView{Station: st.Name, Name: c.Name, Link: chartAddress(st.ID, c.ID), Line: st.LineID.String()}
+	v := studyView{Station: st.Name, Name: c.Title(), Link: chartAddress(st.ID, c.ID), Line: st.LineID.String()}
 	o := c.Ownership()
 	switch {
 	case o.Reason != plant.NoLimits:

@@ -118,7 +118,7 @@ func TestBoardOfARealPlant(t *testing.T) {
 	for _, n := range all(t, page, "data-testid", "need") {
 		needed += text(n) + "\n"
 	}
-	if !strings.Contains(needed, "Hold, Axle seat diameter: outside specification, above the upper limit, at 15.012") || !strings.Contains(needed, "Nobody yet") {
+	if !strings.Contains(needed, "Hold, Axle seat diameter (Lathe 1): outside specification, above the upper limit, at 15.012") || !strings.Contains(needed, "Nobody yet") {
 		t.Errorf("needs a person:\n%s", needed)
 	}
 	engineering := all(t, page, "data-testid", "with-engineering")

@@ -40,7 +40,7 @@ func TextOf(f ui.Format, p plant.Plant, c plant.Call, address string) (Text, err
 type said struct{ title, why, since string }
 
 func saying(f ui.Format, c plant.Call) said {
-	w, station, name := f.Words, c.Station.Name, c.Characteristic.Name
+	w, station, name := f.Words, c.Station.Name, c.Characteristic.Title()
 	age := f.Age(f.Now.Sub(c.Since))
 	if c.Kind == plant.RoundCalls {
 		return said{title: w.T("calls.title-round", station, name, f.Clock(c.Since), age), why: w.T("calls.why-round"),
@@ -87,7 +87,7 @@ func linkOf(c plant.Call) string {
 
 func mail(f ui.Format, p plant.Plant, c plant.Call, v said, link string) string {
 	w := f.Words
-	lines := []string{v.title + ".", "", capital(v.why) + ".", v.since, w.T("calls.where", p.Name, c.Line.Name, c.Station.Name, c.Characteristic.Name), ""}
+	lines := []string{v.title + ".", "", capital(v.why) + ".", v.since, w.T("calls.where", p.Name, c.Line.Name, c.Station.Name, c.Characteristic.Title()), ""}
 	if c.Kind == plant.HoldCalls {
 		lines = append(lines, w.T("calls.hold-caution"), "")
 	}

@@ -94,7 +94,7 @@ func newQuiet(f ui.Format, st *plant.StationState, c *plant.CharacteristicState,
 	call := plant.Call{Kind: m.CallKind(), Matter: m, Station: st.Station, Characteristic: *c, Since: m.OpenedAt}
 	condition := conditionOf(call.Kind)
 	v := quietView{
-		What: w.T("calls.what", ui.ConditionWord(w, condition), st.Name, c.Name), Why: capital(whyOf(f, call)) + ".",
+		What: w.T("calls.what", ui.ConditionWord(w, condition), st.Name, c.Title()), Why: capital(whyOf(f, call)) + ".",
 		Since: w.T("calls.since", f.Clock(m.OpenedAt), f.Since(m.OpenedAt)), Tone: ui.Tone(condition), Symbol: ui.SymbolOf(condition),
 		Link: linkOf(call), Address: quietAddress(m.ID), In: in, Longest: w.T("calls.quiet-longest", span(f, longest)),
 		UntilProblem: ui.ProblemOf(w, problem, "until"), ReasonProblem: ui.ProblemOf(w, problem, "reason"), Problem: ui.ProblemOf(w, problem, "id"),

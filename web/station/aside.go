@@ -181,7 +181,7 @@ func keptTasks(f ui.Format, st plant.StationState) (out []taskView, more int) {
 				continue
 			}
 			place, tag := k.Where()
-			t := taskView{Href: asidePath(st.ID, k.Matter), Name: c.Name, Tone: "kept", State: "calm", Symbol: "hold",
+			t := taskView{Href: asidePath(st.ID, k.Matter), Name: c.Title(), Tone: "kept", State: "calm", Symbol: "hold",
 				Says: w.T("reach.contained", k.Left()), When: f.Since(k.OpenedAt), Sub: ui.SayWhere(f, place, tag)}
 			if !k.Stated() {
 				t.Says, t.Sub = w.T("reach.contained-unstated"), w.T("reach.contained-unstated-sub")

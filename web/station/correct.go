@@ -91,7 +91,7 @@ func newCorrectPart(f ui.Format, c plant.CharacteristicState, p plant.Point, typ
 	w := f.Words
 	mine := typed != nil && typed.Subgroup == p.Subgroup
 	v := correctPart{Characteristic: c.ID.String(), Subgroup: p.Subgroup.String(), TakenAt: p.TakenAt.UTC().Format(time.RFC3339Nano),
-		Replaces: strconv.Itoa(p.Version), What: w.T("station.name-unit", c.Name, c.Setup.Unit), Voided: p.Voided}
+		Replaces: strconv.Itoa(p.Version), What: w.T("station.name-unit", c.Title(), c.Setup.Unit), Voided: p.Voided}
 	if mine {
 		v.ReasonProblem, v.ShortProblem, v.Problem, v.SecretProblem = typed.part.ReasonProblem, typed.part.ShortProblem, typed.part.Problem, typed.part.SecretProblem
 	}

@@ -37,7 +37,7 @@ func TestVerdictSaysWhatToDo(t *testing.T) {
 	s.Clock.Advance(30 * time.Minute)
 	look := s.MustRecord(t, s.Diameter, 14996, 14997, 14998, 14995, 14999)
 	said := b.get(s.at("round", look.Round.String())).is(http.StatusOK)
-	said.says("Look for a cause", "Axle seat diameter: beyond 3 sigma, high side.", "Look for what changed.", `data-testid="take"`, "0.0060\u00a0mm above target.")
+	said.says("Look for a cause", "Axle seat diameter (Lathe 1): beyond 3 sigma, high side.", "Look for what changed.", `data-testid="take"`, "0.0060\u00a0mm above target.")
 
 	s.Clock.Advance(30 * time.Minute)
 	quiet := s.MustRecord(t, s.Diameter, 14990, 14991, 14992, 14989, 14993)

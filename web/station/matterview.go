@@ -91,7 +91,7 @@ type attemptView struct {
 func newMatter(f ui.Format, person plant.Person, st plant.StationState, c plant.CharacteristicState, m plant.Matter, typed typedMatter) matterView {
 	w, p := f.Words, m.Progress()
 	condition := ui.ConditionOf(m.Kind())
-	v := matterView{Tone: ui.Tone(condition), Symbol: ui.SymbolOf(condition), Title: ui.VerdictWords(w, m.Kind()), Name: c.Name,
+	v := matterView{Tone: ui.Tone(condition), Symbol: ui.SymbolOf(condition), Title: ui.VerdictWords(w, m.Kind()), Name: c.Title(),
 		Since: w.T("station.open-since", f.Clock(m.OpenedAt), f.Since(m.OpenedAt)), Where: ui.StageWords(w, p), TakenBy: m.TakenByName,
 		Mine: m.TakenBy == person.ID, Version: itoa(m.Version), Back: path(st.ID), Problem: typed.problem}
 	here := path(st.ID, "matter", m.ID.String())
@@ -145,7 +145,7 @@ func (v *matterView) asked(f ui.Format, person plant.Person, st plant.StationSta
 	case plant.StageWithdrawn:
 		v.Closing, v.Withdrawn, v.Fix = true, true, nil
 	case plant.StageConfirming:
-		v.Confirm = &confirmView{Name: c.Name, Href: measurePath(st.ID, c.ID)}
+		v.Confirm = &confirmView{Name: c.Title(), Href: measurePath(st.ID, c.ID)}
 	case plant.StageVerifying:
 		v.Verify = newVerify(f, person, m, *p.Fix, path(st.ID, "matter", m.ID.String()), typed.verify)
 	case plant.StageClosed:

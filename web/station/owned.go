@@ -31,11 +31,11 @@ func newOwned(f ui.Format, st plant.StationState) ownedView {
 	var v ownedView
 	for _, c := range st.Characteristics {
 		for _, p := range c.Protections {
-			v.Protect = append(v.Protect, protectView{c.Name, f.Words.T("owner.method." + string(p.Method)), p.Instruction,
+			v.Protect = append(v.Protect, protectView{c.Title(), f.Words.T("owner.method." + string(p.Method)), p.Instruction,
 				f.Words.T("owner.since-by", f.Clock(p.From), p.DecidedBy)})
 		}
 		if o := c.Ownership(); actedOn(o) {
-			v.Owners = append(v.Owners, ownedRow{c.Name, ui.OwnerWord(f.Words, o.Owner), f.OwnerSince(o), f.OwnerReason(c), o.Owner == plant.Engineering})
+			v.Owners = append(v.Owners, ownedRow{c.Title(), ui.OwnerWord(f.Words, o.Owner), f.OwnerSince(o), f.OwnerReason(c), o.Owner == plant.Engineering})
 		}
 	}
 	return v

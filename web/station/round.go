@@ -167,7 +167,7 @@ func fillRound(f ui.Format, st plant.StationState, d draft) roundView {
 
 func newAsk(f ui.Format, e draftEntry) askView {
 	c, s := e.Of, e.Of.Setup
-	a := askView{ID: c.ID.String(), Name: c.Name, What: f.Words.T("station.name-unit", c.Name, s.Unit),
+	a := askView{ID: c.ID.String(), Name: c.Title(), What: f.Words.T("station.name-unit", c.Title(), s.Unit),
 		Setup: s.Version, Size: s.Size, Decimals: s.Decimals, Problem: e.Problem, Short: e.Short, ShortSays: e.ShortProblem,
 		ShortOpen: e.Short != "" || e.ShortProblem != ""}
 	if s.Target != nil {

@@ -5,6 +5,12 @@ import (
 	"strings"
 	"testing"
 	"time"
+
+	"github.com/google/uuid"
+
+	"holdfast/internal/plant"
+	"holdfast/internal/spc/limits"
+	"holdfast/internal/store/storetest"
 )
 
 func TestRoundIsSavedOnceAndAnswered(t *testing.T) {
@@ -35,4 +41,25 @@ func TestRoundIsSavedOnceAndAnswered(t *testing.T) {
 	if got := b.get(s.at()).is(http.StatusOK); strings.Contains(got.body, `data-testid="round"`) {
 		t.Error("the round is still asked for")
 	}
+}
+
+// TestTheMachineIsNamedWhereThereAreSeveral: a characteristic of the same name on both
+// machines of a station is told apart wherever it stands.
+func TestTheMachineIsNamedWhereThereAreSeveral(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	twin := plant.Characteristic{ID: uuid.Must(uuid.NewV7()), StationID: s.Station.ID, MachineID: s.Second.ID, Name: s.Diameter.Name}
+	setup := plant.Setup{Unit: "mm", Decimals: 3, Target: storetest.Decimal(t, "14.991"), Lower: storetest.Decimal(t, "14.982"), Upper: storetest.Decimal(t, "15.000"),
+		Chart: limits.Individuals, Size: 1, Plan: plant.SamplingPlan{EveryMinutes: 30}}
+	if err := s.AddCharacteristic(t.Context(), twin, setup, uuid.Nil); err != nil {
+		t.Fatal(err)
+	}
+	s.Clock.Advance(31 * time.Minute)
+	b := s.signIn(t, s.Operator)
+	one, two := "Axle seat diameter (Lathe 1)", "Axle seat diameter (Lathe 2)"
+	working := b.get(s.at()).is(http.StatusOK).says("<b>"+one+"</b>", "<b>"+two+"</b>", one+", mm", two+", mm")
+	answer := b.post(s.at("round"), working.round(twin, "15.007")).is(http.StatusSeeOther)
+	b.get(answer.to).is(http.StatusOK).says(two + ": part 1 is outside specification")
+	b.get(s.at()).is(http.StatusOK).says("<b>" + two + "</b>") // it is open now
+	b.get("/station/" + s.Other.ID.String()).is(http.StatusOK).says("<b>Shoulder length</b>").saysNot("(Lathe 3)")
 }

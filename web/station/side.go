@@ -108,7 +108,7 @@ func newSide(f ui.Format, st plant.StationState) sideView {
 			}
 		case c.Due.State != plant.Later:
 		case len(v.Next) < mostNext:
-			v.Next = append(v.Next, taskView{Href: measurePath(st.ID, c.ID), Name: c.Name, When: f.Clock(c.Due.At), Sub: f.Words.T("station.parts", c.Setup.Size)})
+			v.Next = append(v.Next, taskView{Href: measurePath(st.ID, c.ID), Name: c.Title(), When: f.Clock(c.Due.At), Sub: f.Words.T("station.parts", c.Setup.Size)})
 		default:
 			v.More++
 		}
@@ -133,7 +133,7 @@ func newSide(f ui.Format, st plant.StationState) sideView {
 }
 
 func dueTask(f ui.Format, station uuid.UUID, c plant.CharacteristicState) taskView {
-	t := taskView{Href: measurePath(station, c.ID), Name: c.Name, Tone: "now", State: "due", Symbol: "due",
+	t := taskView{Href: measurePath(station, c.ID), Name: c.Title(), Tone: "now", State: "due", Symbol: "due",
 		Says: f.Words.T("station.due-now"), When: f.Clock(c.Due.At), Sub: f.Words.T("station.parts", c.Setup.Size)}
 	if c.Due.State >= plant.Late {
 		t.Says = f.Words.T("station.late", f.Age(c.Due.LateBy(f.Now)))
@@ -149,7 +149,7 @@ func dueTask(f ui.Format, station uuid.UUID, c plant.CharacteristicState) taskVi
 
 func openTask(f ui.Format, station uuid.UUID, c plant.CharacteristicState) taskView {
 	condition := ui.ConditionOf(c.Matter.Kind())
-	t := taskView{Href: path(station, "matter", c.Matter.ID.String()), Name: c.Name, Tone: "open " + ui.Tone(condition),
+	t := taskView{Href: path(station, "matter", c.Matter.ID.String()), Name: c.Title(), Tone: "open " + ui.Tone(condition),
 		State: ui.Tone(condition), Symbol: ui.SymbolOf(condition), Says: ui.ConditionWord(f.Words, condition),
 		When: f.Since(c.Matter.OpenedAt), Sub: f.Words.T("station.nobody-took")}
 	if says, ok := ui.SayReachOf(f, c); ok {
@@ -215,10 +215,10 @@ func newIdle(f ui.Format, st plant.StationState) idleView {
 	v := idleView{ID: idleID(st.ID), Station: st.ID, Owned: newOwned(f, st)}
 	for _, c := range byDue(st.Characteristics) {
 		if isDue(c) && !v.Due {
-			v.Due, v.Name, v.Href = true, c.Name, path(st.ID)
+			v.Due, v.Name, v.Href = true, c.Title(), path(st.ID)
 			v.Title, v.Lead = f.Words.T("station.due-title"), dueTask(f, st.ID, c).Says
 		}
-		v.Choices = append(v.Choices, taskView{Href: measurePath(st.ID, c.ID), Name: c.Name, Sub: f.Words.T("station.parts", c.Setup.Size)})
+		v.Choices = append(v.Choices, taskView{Href: measurePath(st.ID, c.ID), Name: c.Title(), Sub: f.Words.T("station.parts", c.Setup.Size)})
 	}
 	if !v.Due {
 		v.Title = quietWords(f, st)

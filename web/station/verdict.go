@@ -178,7 +178,7 @@ func newVerdict(f ui.Format, st plant.StationState, answer plant.Answer, parts [
 		}
 		v.Facts = append(v.Facts, newFact(f, p))
 		if p.of.Revision == nil && p.Verdict == plant.Learning {
-			v.Learning = append(v.Learning, w.T("station.learning-count", p.of.Name, p.of.Collected, limits.EnoughSubgroups))
+			v.Learning = append(v.Learning, w.T("station.learning-count", p.of.Title(), p.of.Collected, limits.EnoughSubgroups))
 		}
 	}
 	v.Sentences = append(v.Sentences, gaugeDoubts(f, measured)...)
@@ -192,7 +192,7 @@ func newVerdict(f ui.Format, st plant.StationState, answer plant.Answer, parts [
 func sentences(f ui.Format, t told) []string {
 	w, s := f.Words, t.of.Setup
 	if !t.found {
-		return []string{w.T("station.voided", t.of.Name)}
+		return []string{w.T("station.voided", t.of.Title())}
 	}
 	var out []string
 	for _, firing := range t.Firings {
@@ -200,13 +200,13 @@ func sentences(f ui.Format, t told) []string {
 			out = append(out, outsideWords(f, t)...)
 			continue
 		}
-		out = append(out, w.T("station.fired", t.of.Name, w.Firing(firing, s)))
+		out = append(out, w.T("station.fired", t.of.Title(), w.Firing(firing, s)))
 	}
 	switch {
 	case t.StillOpen && t.of.Matter != nil && t.of.Matter.ID == t.Matter:
-		out = append(out, w.T("station.still-open-since", t.of.Name, f.Clock(t.of.Matter.OpenedTaken)))
+		out = append(out, w.T("station.still-open-since", t.of.Title(), f.Clock(t.of.Matter.OpenedTaken)))
 	case t.StillOpen:
-		out = append(out, w.T("station.still-open", t.of.Name))
+		out = append(out, w.T("station.still-open", t.of.Title()))
 	}
 	if len(out) > 0 {
 		return out
@@ -226,9 +226,9 @@ func outsideWords(f ui.Format, t told) []string {
 		reading := f.Reading(units, t.point.Stats.Decimals, s)
 		switch s.Outside(units, t.point.Stats.Decimals) {
 		case plant.High:
-			out = append(out, f.Words.T("station.outside-high", t.of.Name, i+1, reading, f.WithUnit(f.Decimal(*s.Upper), s.Unit)))
+			out = append(out, f.Words.T("station.outside-high", t.of.Title(), i+1, reading, f.WithUnit(f.Decimal(*s.Upper), s.Unit)))
 		case plant.Low:
-			out = append(out, f.Words.T("station.outside-low", t.of.Name, i+1, reading, f.WithUnit(f.Decimal(*s.Lower), s.Unit)))
+			out = append(out, f.Words.T("station.outside-low", t.of.Title(), i+1, reading, f.WithUnit(f.Decimal(*s.Lower), s.Unit)))
 		}
 	}
 	return out
@@ -236,9 +236,9 @@ func outsideWords(f ui.Format, t told) []string {
 
 func newFact(f ui.Format, t told) factView {
 	w, s := f.Words, t.of.Setup
-	v := factView{Name: w.T("station.average", t.of.Name, t.point.Stats.N), State: ui.ConditionOf(t.Verdict)}
+	v := factView{Name: w.T("station.average", t.of.Title(), t.point.Stats.N), State: ui.ConditionOf(t.Verdict)}
 	if s.Size == 1 {
-		v.Name = t.of.Name
+		v.Name = t.of.Title()
 	}
 	if !t.found {
 		return v
@@ -314,10 +314,10 @@ func (v *verdictView) next(f ui.Format, st plant.StationState) {
 	for _, c := range byDue(st.Characteristics) {
 		switch {
 		case isDue(c):
-			v.Now, v.Next, v.NextIn = true, f.Words.T("station.due-now"), c.Name
+			v.Now, v.Next, v.NextIn = true, f.Words.T("station.due-now"), c.Title()
 			return
 		case c.Due.State == plant.Later:
-			v.Next, v.NextIn = f.Clock(c.Due.At), f.Words.T("station.next-in", c.Name, f.Age(c.Due.At.Sub(f.Now)))
+			v.Next, v.NextIn = f.Clock(c.Due.At), f.Words.T("station.next-in", c.Title(), f.Age(c.Due.At.Sub(f.Now)))
 			return
 		}
 	}
@@ -335,12 +335,12 @@ func (v *verdictView) draw(f ui.Format, t told) {
 			break
 		}
 	}
-	v.ChartOf = f.Words.T("station.last-rounds", f.Words.T("station.name-unit", t.of.Name, s.Unit))
+	v.ChartOf = f.Words.T("station.last-rounds", f.Words.T("station.name-unit", t.of.Title(), s.Unit))
 	w, h := float64(verdictW), float64(verdictH)
 	if t.Verdict == plant.Hold {
 		w, h = besideW, besideH
 	}
-	c := chart.Verdict{ID: "verdict", Label: f.Words.T("station.verdict-label", t.of.Name), W: w, H: h,
+	c := chart.Verdict{ID: "verdict", Label: f.Words.T("station.verdict-label", t.of.Title()), W: w, H: h,
 		Points: stationPoints(f, points, s, t.of), Limits: chartLimits(f, t.of.Revision, s), Signal: signal, Lo: lo, Hi: hi, Words: chartWords(f.Words)}
 	v.Chart = c.SVG()
 	if t.Verdict != plant.Hold || !t.found {
@@ -350,7 +350,7 @@ func (v *verdictView) draw(f ui.Format, t told) {
 	for i, units := range t.point.Readings {
 		readings[i] = plant.Decimal{Units: units, Decimals: t.point.Stats.Decimals}.Float()
 	}
-	v.Parts = (&chart.Strip{ID: "verdict-parts", Label: f.Words.T("station.parts-label", t.of.Name), W: stripW, H: besideH,
+	v.Parts = (&chart.Strip{ID: "verdict-parts", Label: f.Words.T("station.parts-label", t.of.Title()), W: stripW, H: besideH,
 		Spec: chartSpec(f, s), Readings: readings, Size: len(readings), Words: chartWords(f.Words)}).SVG()
 }
 
