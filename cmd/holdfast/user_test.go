@@ -94,6 +94,15 @@ func TestTheFirstPersonComesByAnAddressThatWorksOnce(t *testing.T) {
 		speak(p, lang)
 		fitsATablet(p, lang, path)
 	}
+	p.Open("/sign-in")
+	p.WaitFor(find("[data-testid=nobody-yet]"))
+	for _, lang := range []string{"de", "es"} {
+		speak(p, lang)
+		fitsATablet(p, lang, "/sign-in")
+	}
+	if _, body := v.get("/sign-in"); !strings.Contains(body, "Nobody can sign in here yet") || strings.Contains(body, path) {
+		t.Error("the sign-in page does not say that there is nobody yet, or gives the address away")
+	}
 	if res, _ := v.get(path); res.StatusCode != http.StatusOK {
 		t.Errorf("the address: %d", res.StatusCode)
 	}
@@ -119,6 +128,9 @@ func TestTheFirstPersonComesByAnAddressThatWorksOnce(t *testing.T) {
 	other := r.visit(t, "")
 	if res, _ := other.get(path); res.StatusCode != http.StatusNotFound {
 		t.Errorf("the address once more: %d, want 404", res.StatusCode)
+	}
+	if _, body := other.get("/sign-in"); strings.Contains(body, "nobody-yet") {
+		t.Error("the sign-in page still says that there is nobody")
 	}
 	if res, _ := other.post(path, form); res.StatusCode != http.StatusNotFound {
 		t.Errorf("a second first person: %d, want 404", res.StatusCode)

@@ -216,6 +216,11 @@ func (h *Handler) render(w http.ResponseWriter, r *http.Request, status int, v s
 		return err
 	}
 	v.Revoked = shell.Revoked
+	if h.First != nil {
+		if v.Nobody, err = h.First.waits(r.Context()); err != nil {
+			return err
+		}
+	}
 	return ui.Render(w, r, status, page(shell, v))
 }
 

@@ -44,19 +44,35 @@ func NewFirst(add func(ctx context.Context, p plant.Person, s auth.Secret) error
 // Path is the address, to be printed once.
 func (f *First) Path() string { return firstAddress + "/" + f.token }
 
+// waits reports whether there is still nobody, so that the address works.
+func (f *First) waits(ctx context.Context) (bool, error) {
+	f.mu.Lock()
+	defer f.mu.Unlock()
+	return f.open(ctx)
+}
+
+// open is waits for whoever holds the lock.
+func (f *First) open(ctx context.Context) (bool, error) {
+	if !f.used {
+		nobody, err := f.Nobody(ctx)
+		if err != nil {
+			return false, err
+		}
+		f.used = !nobody // for good: people are kept out, never removed
+	}
+	return !f.used, nil
+}
+
 // admits answers a request that must not be here, and reports whether it may go on. The
 // caller holds the lock.
 func (f *First) admits(r *http.Request) error {
 	frame := ui.FrameOf(r)
-	if !f.used {
-		nobody, err := f.Nobody(r.Context())
-		if err != nil {
-			return err
-		}
-		f.used = !nobody // for good: people are kept out, never removed
+	open, err := f.open(r.Context())
+	if err != nil {
+		return err
 	}
 	switch {
-	case f.used || subtle.ConstantTimeCompare([]byte(chi.URLParam(r, "token")), []byte(f.token)) != 1:
+	case !open || subtle.ConstantTimeCompare([]byte(chi.URLParam(r, "token")), []byte(f.token)) != 1:
 		return &plant.Error{Kind: plant.NotFound, Message: frame.Words.T("devices.first-gone")}
 	case !frame.Secure && !frame.Addr.Unmap().IsLoopback():
 		return &plant.Error{Kind: plant.Forbidden, Message: frame.Words.T("devices.first-where")}

@@ -13,6 +13,7 @@ type signIn struct {
 	To              string // local path to go on to
 	TimedOut        bool
 	Revoked         bool // this browser was a device once
+	Nobody          bool // there is nobody who could sign in
 	Demo            []demoPerson
 }
 
