@@ -154,11 +154,25 @@ function start(form) {
       go(input);
       return false;
     }
+    settle(input);
     return true;
+  }
+
+  // settle writes a reading as it is recorded: with all its decimals and the decimal sign
+  // of the page. What is no reading stays as it was typed, and so does a deviation.
+  function settle(input) {
+    const written = sectionOf(input).written(input.value, mode);
+    if (written === null || written === input.value) return;
+    input.value = written;
+    keep();
   }
 
   form.addEventListener("focusin", (event) => {
     if (event.target.matches("[data-reading]") && event.target !== current) go(event.target);
+  });
+  form.addEventListener("focusout", (event) => {
+    const input = event.target;
+    if (input.matches("[data-reading]") && sectionOf(input).judge(input, mode, say) === "") settle(input);
   });
   form.addEventListener("input", (event) => {
     if (event.target.matches("[data-reading]")) {
@@ -317,6 +331,13 @@ class Section {
     if (mode !== "deviation" || this.target === null) return digits(value, this.decimals);
     const deviation = digits(value, 0);
     return deviation === null ? null : deviation + this.target;
+  }
+
+  // written is a reading in full as it is recorded, null when it is none.
+  written(value, mode) {
+    if (value.trim() === "" || (mode === "deviation" && this.target !== null)) return null;
+    const units = digits(value, this.decimals);
+    return units === null || Number.isNaN(units) ? null : text(units, this.decimals, this.falls.dataset.decimal);
   }
 
   filled() {

@@ -8,6 +8,7 @@ import (
 	"github.com/chromedp/chromedp/kb"
 
 	"holdfast/internal/browsertest"
+	"holdfast/web/words"
 )
 
 // tablet is a Chromium at the station, with the operator signed in.
@@ -27,6 +28,8 @@ const (
 	theAverage = `[...document.querySelectorAll("[data-falls-average]")].find((h) => h.offsetParent).textContent`
 	theProblem = `[...document.querySelectorAll(".problem")].map((p) => p.textContent.trim()).join("")`
 	theValue   = `document.activeElement.value`
+
+	theReadings = `[...document.querySelectorAll("[data-reading]")].map((i) => i.value).join(" ")`
 )
 
 func TestRoundByGaugeThatTypes(t *testing.T) {
@@ -50,7 +53,8 @@ func TestRoundByGaugeThatTypes(t *testing.T) {
 	tb.Want("letters", theProblem, "Part 3: This is not a number. Type it again.")
 	tb.Keys(kb.Backspace + "14.9961\r")
 	tb.Want("too many decimals", theProblem, "Part 3: This has more decimals than are measured.")
-	tb.Keys("14.996\r14.991\r14.992\r") // what was wrong is selected, so typing replaces it
+	tb.Keys("14.996\r14.99\r14.992\r") // what was wrong is selected, so typing replaces it
+	tb.Want("with all their decimals and the sign of the page", theReadings, "14.994 14.989 14.996 14.990 14.992")
 	tb.Want("all in: saving is armed", theFocus, "Save the round")
 	tb.Want("the heading", theHeading, "All parts are in. Save the round.")
 	tb.Keys("\r") // a gauge that ends with two
@@ -67,6 +71,24 @@ func TestRoundByGaugeThatTypes(t *testing.T) {
 	if err := s.Pool().QueryRow(t.Context(), `select jsonb_array_length(retyped) from subgroup where retyped is not null`).Scan(&retyped); err != nil || retyped != 1 {
 		t.Errorf("%d earlier typings are kept, %v", retyped, err)
 	}
+}
+
+// TestReadingsAreWrittenAsTheLanguageWritesThem: in German with a comma, also when a
+// reading is left without Enter; what cannot be right stays as it was typed.
+func TestReadingsAreWrittenAsTheLanguageWritesThem(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	s.steady(t)
+	s.Clock.Advance(time.Minute)
+	tb := s.tablet(t)
+	tb.Value(`document.cookie = "` + words.Cookie + `=de; path=/"`)
+	tb.Open(s.at() + "?measure=" + s.Diameter.ID.String())
+	tb.WaitFor(`document.querySelector("[data-scripted]")`)
+	tb.Keys("14.99\r14.994")
+	tb.Do(chromedp.Focus(`[data-reading][id$="-2"]`))
+	tb.Keys("14.9961")
+	tb.Do(chromedp.Focus(`[data-reading][id$="-3"]`))
+	tb.Want("the readings", theReadings, "14,990 14,994 14.9961  ")
 }
 
 func TestRoundByKeypadAsDeviation(t *testing.T) {
