@@ -21,7 +21,8 @@ func (p *program) about(ctx context.Context) (admin.Installation, error) {
 		i.Fingerprint = certs.Fingerprint(p.Transport.root)
 	}
 	if p.Transport.leaf != nil {
-		i.Certificate = p.Transport.leaf().NotAfter
+		leaf := p.Transport.leaf()
+		i.Certificate, i.Names = leaf.NotAfter, namesIn(leaf)
 	}
 	db, err := p.store.Inspect(ctx)
 	if err != nil {

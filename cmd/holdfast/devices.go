@@ -97,5 +97,5 @@ func (p *program) tellFirst() {
 		return
 	}
 	fmt.Fprintf(os.Stderr, "\nNobody can sign in yet. Open this once, on this machine or over https, and make the first person:\n\n    %s%s\n\nIt works until it was used or the program stops.\n\n",
-		p.URL(), p.first.Path())
+		p.fromOutside(), p.first.Path())
 }

@@ -234,7 +234,7 @@ func (p *program) Run(ctx context.Context) error {
 	p.Log.Info("serving", "address", p.URL(), "version", version())
 	p.tellFirst()
 	if root := p.Transport.root; root != nil {
-		p.Log.Info("certificate fingerprint "+certs.Fingerprint(root), "compare it at", p.URL()+web.AuthorityAddress)
+		p.Log.Info("certificate fingerprint "+certs.Fingerprint(root), "compare it at", p.fromOutside()+web.AuthorityAddress)
 	}
 	select {
 	case err := <-served:

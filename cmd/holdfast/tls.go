@@ -134,6 +134,40 @@ func loopback(addr string) bool {
 	return err == nil && ip.IsLoopback()
 }
 
+// fromOutside is the address for people: with the name that the certificate is for.
+func (p *program) fromOutside() string {
+	if p.Transport.leaf != nil {
+		if at := outside(p.listener.Addr().String(), p.Transport.leaf()); at != "" {
+			return at
+		}
+	}
+	return p.URL()
+}
+
+// outside is the address under the first name of a certificate that leads to a server
+// from other machines, or "" when there is none or only this machine reaches the server.
+func outside(listening string, c *x509.Certificate) string {
+	_, port, err := net.SplitHostPort(listening)
+	if err != nil || loopback(listening) {
+		return ""
+	}
+	for _, n := range namesIn(c) {
+		if host := net.JoinHostPort(n, port); !loopback(host) && !strings.HasPrefix(n, "*") {
+			return "https://" + host
+		}
+	}
+	return ""
+}
+
+// namesIn are the names and addresses that a certificate is for.
+func namesIn(c *x509.Certificate) []string {
+	names := slices.Clone(c.DNSNames)
+	for _, ip := range c.IPAddresses {
+		names = append(names, ip.String())
+	}
+	return names
+}
+
 // keep tends certificates until ctx ends. What fails is logged and tried again: the
 // certificate in use goes on meanwhile.
 func (s secured) keep(ctx context.Context, log *slog.Logger) {

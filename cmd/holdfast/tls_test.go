@@ -186,6 +186,29 @@ func TestStartPrintsTheFingerprint(t *testing.T) {
 	}
 }
 
+func TestAddressesForPeopleHaveTheNameOfTheCertificate(t *testing.T) {
+	t.Parallel()
+	for _, c := range []struct {
+		listening string
+		names     []string
+		want      string
+	}{
+		{"[::]:8443", []string{"works.plant.example"}, "https://works.plant.example:8443"},
+		{"0.0.0.0:8443", []string{"10.0.0.5", "localhost"}, "https://10.0.0.5:8443"},
+		{"0.0.0.0:8443", []string{"fd00::5"}, "https://[fd00::5]:8443"},
+		{"0.0.0.0:8443", []string{"localhost"}, ""},
+		{"127.0.0.1:8443", []string{"works.plant.example"}, ""}, // it would lead nowhere
+	} {
+		way, err := transport{TLS: "auto", TLSNames: c.names}.prepare(c.listening, t.TempDir(), time.Now)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if got := outside(c.listening, way.leaf()); got != c.want {
+			t.Errorf("%s with %v: %q, want %q", c.listening, c.names, got, c.want)
+		}
+	}
+}
+
 func TestNobodyGetsPastTheProxy(t *testing.T) {
 	t.Parallel()
 	proxied := func(r string, forwarded ...string) (*http.Request, secured) {

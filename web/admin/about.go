@@ -3,6 +3,7 @@ package admin
 import (
 	"context"
 	"net/http"
+	"strings"
 	"time"
 
 	"holdfast/web/ui"
@@ -20,8 +21,9 @@ type Installation struct {
 
 	Address     string
 	HTTPS       HTTPS
-	Fingerprint string // of the plant's own authority
-	Certificate time.Time
+	Fingerprint string    // of the plant's own authority
+	Certificate time.Time // when it ends
+	Names       []string  // that it holds
 
 	Postgres, Database string
 	Private            bool // the program runs its own server
@@ -127,6 +129,9 @@ func aboutGroups(s ui.Shell, machine string, i Installation, now time.Time) []ab
 		way.Facts = append(way.Facts, aboutFact{Label: w.T("about.certificate"), Value: s.Format.Date(i.Certificate),
 			// The plant's own authority renews by itself, long before.
 			Warning: warn(i.Certificate.Sub(now) < soonEnding, w.T("about.certificate-do"))})
+	}
+	if len(i.Names) > 0 {
+		way.Facts = append(way.Facts, aboutFact{Label: w.T("about.names"), Value: strings.Join(i.Names, ", ")})
 	}
 	if i.Fingerprint != "" {
 		way.Facts = append(way.Facts, aboutFact{Label: w.T("about.fingerprint"), Value: i.Fingerprint, Fixed: true})

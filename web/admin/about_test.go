@@ -15,7 +15,7 @@ import (
 func well() Installation {
 	return Installation{
 		Version: "v1.2", Go: "go1.26", System: "linux/amd64", Processors: 4, Started: noon.Add(-time.Hour),
-		Address: "https://10.0.0.5:8443", HTTPS: HTTPSAuto, Fingerprint: "AB:CD", Certificate: noon.AddDate(1, 0, 0),
+		Address: "https://10.0.0.5:8443", HTTPS: HTTPSAuto, Fingerprint: "AB:CD", Certificate: noon.AddDate(1, 0, 0), Names: []string{"works.plant.example", "10.0.0.5"},
 		Postgres: "15.4", Database: "holdfast", Private: true, Bytes: 3 << 30, Guarded: true, Durable: true, Checksums: true,
 		Chains: 12, Root: strings.Repeat("0f", 32), TimeServer: TimeServerFollowed, Disk: 100 << 30, DiskFree: 50 << 30, Saves: 41,
 	}
@@ -34,7 +34,7 @@ func TestAboutWarnsOfWhatNeedsSomebody(t *testing.T) {
 	v := s.visitor(t, "administrator")
 	now = well()
 	if res, body := v.get(aboutAddress); res.StatusCode != http.StatusOK || strings.Contains(body, "about-warning") ||
-		!strings.Contains(body, "3.0 GiB") || !strings.Contains(body, now.Root) || !strings.Contains(body, "AB:CD") {
+		!strings.Contains(body, "3.0 GiB") || !strings.Contains(body, now.Root) || !strings.Contains(body, "AB:CD") || !strings.Contains(body, "works.plant.example, 10.0.0.5") {
 		t.Errorf("of a good installation: %s\n%s", res.Status, body)
 	}
 	for name, spoil := range map[string]func(*Installation){
