@@ -101,6 +101,7 @@ func (h *Handler) signInByBadge(w http.ResponseWriter, r *http.Request) error {
 func (h *Handler) renderTablet(w http.ResponseWriter, r *http.Request, status int, v tabletSignIn) error {
 	shell := ui.ShellFor(r, ui.Door, ui.FrameOf(r).Words.T("door.title"))
 	shell.Path = ui.SignInPath(v.To)
+	shell.BarEnd = ui.LanguageSwitch(shell)
 	shell.Styles, shell.Scripts = []string{"css/door-tablet.css"}, []string{"js/door-pad.js"}
 	// Who would step in by one click at a tablet finds that beside the password.
 	people, err := h.demoPeople(r)
