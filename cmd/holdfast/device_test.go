@@ -110,3 +110,33 @@ func TestTheCodeOfASender(t *testing.T) {
 		t.Errorf("no %q, or a browser is spoken of", want)
 	}
 }
+
+// Whoever stands at a tablet chooses its language before signing in, and it stays.
+func TestTheLanguageOfATablet(t *testing.T) {
+	t.Parallel()
+	r := serve(t)
+	v, _ := r.visitOn(t, plant.Device{Kind: plant.Tablet, Name: "Tablet 1", Station: r.Station.ID})
+	if _, body := v.get("/sign-in"); !strings.Contains(body, "pad-form") || !strings.Contains(body, `name="language" value="es"`) {
+		t.Fatalf("a tablet's sign-in offers no language:\n%s", body)
+	}
+	v.post("/language", url.Values{"language": {"es"}, "to": {"/sign-in"}})
+	for _, path := range []string{"/sign-in", "/sign-in?locked=yes", "/enrol"} {
+		if _, body := v.get(path); !strings.Contains(body, `lang="es"`) || strings.Contains(body, `<html lang="en"`) {
+			t.Errorf("%s is not in the language that was chosen", path)
+		}
+	}
+}
+
+// Nobody becomes something because a box was ticked already.
+func TestSomebodyNewHasNoRoleYet(t *testing.T) {
+	t.Parallel()
+	r := serve(t)
+	v := r.visit(t, "administrator1")
+	_, body := v.get("/admin/people")
+	if _, form, found := strings.Cut(body, `data-testid="add-person"`); !found || !strings.Contains(form, `value="operator"`) || strings.Contains(form, " checked") {
+		t.Error("a role is ticked for somebody new, or none can be")
+	}
+	if _, body := v.get("/admin/messages"); strings.Contains(body, "Every message was delivered") || !strings.Contains(body, "No target is set") {
+		t.Error("with no target the page says that messages were delivered")
+	}
+}

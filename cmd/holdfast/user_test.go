@@ -103,7 +103,7 @@ func TestTheFirstPersonComesByAnAddressThatWorksOnce(t *testing.T) {
 	if _, body := v.get("/sign-in"); !strings.Contains(body, "Nobody can sign in here yet") || strings.Contains(body, path) {
 		t.Error("the sign-in page does not say that there is nobody yet, or gives the address away")
 	}
-	if res, _ := v.get(path); res.StatusCode != http.StatusOK {
+	if res, body := v.get(path); res.StatusCode != http.StatusOK || !strings.Contains(body, "<b>Administrator:</b>") {
 		t.Errorf("the address: %d", res.StatusCode)
 	}
 	if res, _ := v.get(path[:len(path)-4] + "AAAA"); res.StatusCode != http.StatusNotFound {

@@ -139,7 +139,7 @@ func postedRoles(r *http.Request) plant.Roles {
 }
 
 func (a *Admin) people(w http.ResponseWriter, r *http.Request) error {
-	return a.showPeople(w, r, http.StatusOK, addView{Roles: rolesOf(r, plant.Roles{plant.Operator})}, nil)
+	return a.showPeople(w, r, http.StatusOK, addView{Roles: rolesOf(r, nil)}, nil)
 }
 
 func (a *Admin) showPeople(w http.ResponseWriter, r *http.Request, status int, add addView, made *madeView) error {
@@ -237,7 +237,7 @@ func (a *Admin) addPerson(w http.ResponseWriter, r *http.Request) error {
 	if err != nil {
 		return err
 	}
-	return a.showPeople(w, r, http.StatusOK, addView{Roles: rolesOf(r, plant.Roles{plant.Operator})}, made)
+	return a.showPeople(w, r, http.StatusOK, addView{Roles: rolesOf(r, nil)}, made)
 }
 
 func (a *Admin) setBadge(r *http.Request, person uuid.UUID, badge string, pin auth.Secret) error {

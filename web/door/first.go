@@ -90,15 +90,15 @@ type firstPerson struct {
 }
 
 type roleChoice struct {
-	Role, Does string
-	Chosen     bool
+	Role, Name, Does string
+	Chosen           bool
 }
 
 func firstRoles(r *http.Request, chosen plant.Roles) []roleChoice {
 	w := ui.FrameOf(r).Words
 	var out []roleChoice
 	for _, role := range plant.AllRoles {
-		out = append(out, roleChoice{string(role), w.T("devices.role." + string(role)), chosen.Has(role)})
+		out = append(out, roleChoice{string(role), w.T("account.role." + string(role)), w.T("devices.role." + string(role)), chosen.Has(role)})
 	}
 	return out
 }
