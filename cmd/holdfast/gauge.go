@@ -33,7 +33,7 @@ func (c *sending) with(ctx context.Context, log *slog.Logger, f func(ctx context
 	if _, err := readSecret(c.TokenFile); err != nil {
 		return err
 	}
-	trust, err := trusting(c.CA)
+	client, err := c.client()
 	if err != nil {
 		return err
 	}
@@ -42,9 +42,7 @@ func (c *sending) with(ctx context.Context, log *slog.Logger, f func(ctx context
 		return err
 	}
 	defer s.Close()
-	p := relay.Poster{Spool: s, Server: c.Server, Token: func() (string, error) { return readSecret(c.TokenFile) }, Now: time.Now, Log: log, Pause: time.Second,
-		HTTP: &http.Client{Timeout: 30 * time.Second, Transport: knowing{&http.Transport{Proxy: http.ProxyFromEnvironment, TLSClientConfig: trust, IdleConnTimeout: time.Minute}, *c},
-			CheckRedirect: func(*http.Request, []*http.Request) error { return http.ErrUseLastResponse }}}
+	p := relay.Poster{Spool: s, Server: c.Server, Token: func() (string, error) { return readSecret(c.TokenFile) }, Now: time.Now, Log: log, Pause: time.Second, HTTP: client}
 	background, stop := context.WithCancel(ctx)
 	var running sync.WaitGroup
 	running.Go(func() { p.Run(background) })
@@ -52,6 +50,17 @@ func (c *sending) with(ctx context.Context, log *slog.Logger, f func(ctx context
 	stop()
 	running.Wait()
 	return err
+}
+
+// client is the way to the server.
+func (c *sending) client() (*http.Client, error) {
+	trust, err := trusting(c.CA)
+	if err != nil {
+		return nil, err
+	}
+	return &http.Client{Timeout: 30 * time.Second,
+		Transport:     knowing{&http.Transport{Proxy: http.ProxyFromEnvironment, TLSClientConfig: trust, IdleConnTimeout: time.Minute}, *c},
+		CheckRedirect: func(*http.Request, []*http.Request) error { return http.ErrUseLastResponse }}, nil
 }
 
 func readSecret(path string) (string, error) {
@@ -128,7 +137,13 @@ func (c *gaugeCmd) Run(ctx context.Context, log *slog.Logger) error {
 	if err := source.Check(); err != nil {
 		return err
 	}
+	client, err := c.client()
+	if err != nil {
+		return err
+	}
 	return c.with(ctx, log, func(ctx context.Context, s *relay.Spool) error {
+		m := &measured{gauge: c, client: client, decimals: -1}
+		source.Fits = func(number string) bool { return m.fits(ctx, number) }
 		g := &relay.Gather{Spool: s, Now: time.Now, Source: source, Lot: func() string { return c.Lot }}
 		if err := g.Flush(); err != nil {
 			log.Error("what waited could not be kept", "error", err)

@@ -65,7 +65,7 @@ func TestAGaugeOnASerialPort(t *testing.T) {
 			t.Fatalf("the port was not opened: %v", err)
 		}
 	}
-	for _, line := range []string{"14.991 mm<", "14,990<", "0.5902 in<", "14.990<", "14.990<", "14.992 mm<", "14.9"} { // the last breaks off
+	for _, line := range []string{"14.991 mm<", "14,990<", "0.5902 in<", "14.9915<", "14.990<", "14.990<", "14.992 mm<", "14.9"} { // the last breaks off
 		if _, err := gauge.WriteString(line + map[bool]string{true: "", false: "\r\n"}[line == "14.9"]); err != nil {
 			t.Fatal(err)
 		}
@@ -82,6 +82,8 @@ func TestAGaugeOnASerialPort(t *testing.T) {
 	}
 	if _, body := r.visit(t, "operator1").get("/station/" + r.Station.ID.String()); !strings.Contains(body, "A reading came in another unit") || !strings.Contains(body, "0.5902 in") {
 		t.Error("the station does not show the line in another unit")
+	} else if !strings.Contains(body, "A line came that holds no reading") || !strings.Contains(body, "14.9915") {
+		t.Error("the station does not show the line with more decimals than are measured")
 	}
 }
 

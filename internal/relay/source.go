@@ -23,6 +23,9 @@ type Source struct {
 	// Within is how long a subgroup may take. What came longer ago is sent as a short
 	// subgroup, since it does not belong to what comes now.
 	Within time.Duration
+	// Fits reports whether the server can take a number as a reading; nil: that is not
+	// known. A number that it would refuse must not take a subgroup with it.
+	Fits func(number string) bool
 }
 
 // Check reports what in a source cannot be.
@@ -67,6 +70,9 @@ func (g *Gather) lot() string {
 func (g *Gather) Take(text, mark string) (durable bool, err error) {
 	now := g.Now()
 	line, err := g.Parse(text)
+	if err == nil && g.Fits != nil && !g.Fits(line.Number) {
+		err = ErrNumber
+	}
 	if err != nil {
 		return g.bad(text, err, mark, now)
 	}
