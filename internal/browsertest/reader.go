@@ -35,6 +35,14 @@ func (p *Page) Media(features ...Flag) {
 	})
 }
 
+// Print makes the browser draw the page as it is on paper.
+func (p *Page) Print() {
+	p.t.Helper()
+	p.Do(func(ctx context.Context, window *chromedp.Target) (none chromedp.Void, err error) {
+		return none, window.Call(ctx, "Emulation.setEmulatedMedia", map[string]string{"media": "print"}, nil)
+	})
+}
+
 type feature struct {
 	Name  string `json:"name"`
 	Value string `json:"value"`

@@ -48,14 +48,9 @@ type auditView struct {
 	Assumes    []string
 	Empty      string
 	Knobs      string
+	Squared    string // the unit of a gain
 	Unprompted bool
 	Prompted   bool
-}
-
-// auditRow is one adjustment with what it gained.
-type auditRow struct {
-	When, What, Size, Prompted, Governed, Gain, Total string
-	Loss                                              bool
 }
 
 // audit is GET .../adjustments.
@@ -247,11 +242,16 @@ func auditFacts(f ui.Format, h plant.History, a plant.AdjustmentAudit) []fact {
 
 // signedFigure writes v with its sign to three figures of as.
 func signedFigure(f ui.Format, v, as float64) string {
-	decimals := 2
-	if m := math.Abs(as); m > 0 {
-		decimals = min(max(2-int(math.Floor(math.Log10(m))), 0), 9)
+	return f.Signed(v, figureDecimals(as))
+}
+
+// figureDecimals is how many decimals show three figures of v.
+func figureDecimals(v float64) int {
+	m := math.Abs(v)
+	if m == 0 || math.IsInf(m, 0) || math.IsNaN(m) {
+		return 2
 	}
-	return f.Signed(v, decimals)
+	return min(max(2-int(math.Floor(math.Log10(m))), 0), 9)
 }
 
 // auditChart is the series as it was and as it would have been, on one chart.
@@ -283,32 +283,6 @@ func (v *auditView) asTable(f ui.Format, h plant.History, a plant.AdjustmentAudi
 	}
 	v.Table = &t
 	v.AsTable = withQuery(address(v.ID, "adjustments"), v.Asked.values())
-}
-
-func (v *auditView) rows(f ui.Format, h plant.History, a plant.AdjustmentAudit) {
-	w, s := f.Words, h.State.Setup
-	for i := len(a.Items) - 1; i >= 0; i-- {
-		it := a.Items[i]
-		v.Prompted, v.Unprompted = v.Prompted || it.Change.Prompted, v.Unprompted || !it.Change.Prompted
-		if len(v.Rows) == mostAudited {
-			continue
-		}
-		row := auditRow{When: f.Clock(it.Change.HappenedAt), Size: f.WithUnit(f.SignedDecimal(it.Effect.Trimmed(s.Decimals)), s.Unit),
-			Prompted: w.T("audit.unprompted"), Governed: f.Count(it.Governed), Loss: it.Gain < 0}
-		if it.Change.Prompted {
-			row.Prompted = w.T("audit.prompted")
-		}
-		if k := it.Change; k.Knob != uuid.Nil {
-			row.What = w.T("audit.turned", k.KnobName, f.WithUnit(f.SignedDecimal(*k.Turned), k.KnobUnit))
-		}
-		if it.Governed > 0 {
-			row.Gain, row.Total = signedFigure(f, it.Gain, it.Gain), signedFigure(f, it.Total(), it.Total())
-		}
-		v.Rows = append(v.Rows, row)
-	}
-	if n := len(a.Items); n > mostAudited {
-		v.RowsCut = w.T("audit.rows-cut", mostAudited, n)
-	}
 }
 
 // assumptions are what the figures rest on.

@@ -920,9 +920,9 @@ func auditList(s ui.Shell, v auditView) templ.Component {
 				return templ_7745c5c3_Err
 			}
 			var templ_7745c5c3_Var50 string
-			templ_7745c5c3_Var50, templ_7745c5c3_Err = templ.JoinStringErrs(s.Words.T("audit.col.gain"))
+			templ_7745c5c3_Var50, templ_7745c5c3_Err = templ.JoinStringErrs(inUnit(s.Words, s.Words.T("audit.col.gain"), v.Squared))
 			if templ_7745c5c3_Err != nil {
-				return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/desk/audit.templ`, Line: 144, Col: 64}
+				return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/desk/audit.templ`, Line: 144, Col: 92}
 			}
 			_, templ_7745c5c3_Err = templ_7745c5c3_Buffer.WriteString(templ.EscapeString(templ_7745c5c3_Var50))
 			if templ_7745c5c3_Err != nil {
@@ -933,9 +933,9 @@ func auditList(s ui.Shell, v auditView) templ.Component {
 				return templ_7745c5c3_Err
 			}
 			var templ_7745c5c3_Var51 string
-			templ_7745c5c3_Var51, templ_7745c5c3_Err = templ.JoinStringErrs(s.Words.T("audit.col.total"))
+			templ_7745c5c3_Var51, templ_7745c5c3_Err = templ.JoinStringErrs(inUnit(s.Words, s.Words.T("audit.col.total"), v.Squared))
 			if templ_7745c5c3_Err != nil {
-				return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/desk/audit.templ`, Line: 145, Col: 65}
+				return templ.Error{Err: templ_7745c5c3_Err, FileName: `web/desk/audit.templ`, Line: 145, Col: 93}
 			}
 			_, templ_7745c5c3_Err = templ_7745c5c3_Buffer.WriteString(templ.EscapeString(templ_7745c5c3_Var51))
 			if templ_7745c5c3_Err != nil {

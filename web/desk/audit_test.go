@@ -5,6 +5,7 @@ import (
 	"math/rand/v2"
 	"net/http"
 	"net/url"
+	"regexp"
 	"strings"
 	"testing"
 	"time"
@@ -58,7 +59,16 @@ func TestAuditShowsWhatAdjustingDid(t *testing.T) {
 	page := b.get(path(s.Mass, "adjustments")).is(http.StatusOK).
 		has("Adjusting with no signal open did harm", "further from target", "the fingerprint of over-adjustment", "Dosing screw", "none open",
 			`class="other`, `class="arrow hollow"`, "as it would have been", "What this rests on", "Ppk as it was", "95 % interval").
+		has("Gain of one, g²", "In all, g²").
 		hasNot(s.Operator.Name, s.Supervisor.Name, "MISSING", "EXTRA")
+	// All gains have the same decimals, so that the column can be read down.
+	decimals := map[int]bool{}
+	for _, cell := range regexp.MustCompile(`<td class="num(?: loss)?">[+\x{2212}]?\d+\.(\d+)</td>`).FindAllStringSubmatch(page.body, -1) {
+		decimals[len(cell[1])] = true
+	}
+	if len(decimals) != 1 {
+		t.Errorf("gains have %d different numbers of decimals", len(decimals))
+	}
 	if n := page.count("<tr>"); n < 40 {
 		t.Errorf("%d rows are listed", n)
 	}
@@ -120,6 +130,9 @@ func hiddenOf(t *testing.T, p page, name string) string {
 	return value
 }
 
+// barShown tells whether the bar with the menu and the person is drawn.
+const barShown = `document.querySelector(".topbar").checkVisibility()`
+
 func TestAuditPagesAreAccessible(t *testing.T) {
 	t.Parallel()
 	s := newSite(t)
@@ -138,6 +151,10 @@ func TestAuditPagesAreAccessible(t *testing.T) {
 		page.Size(1440, 900)
 		page.Accessible(p)
 	}
+	page.Open(path(s.Mass, "adjustments"))
+	page.Want("the bar on the screen", barShown, "true")
+	page.Print()
+	page.Want("the bar on paper", barShown, "false")
 	page.Value(`(document.documentElement.dataset.theme = "night")`)
 	page.Accessible("night")
 }
