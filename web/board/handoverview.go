@@ -130,13 +130,13 @@ func newHandover(s ui.Shell, c handoverChoice, all []plant.ShiftSummary, closed 
 func handoverFigures(f ui.Format, list []plant.ShiftSummary) []handoverFigure {
 	w := f.Words
 	var kept plant.Kept
-	var opened, taken, closed, open, places, parts, prompted, unprompted, changes, unstated int
+	var opened, taken, closed, open, cases, parts, prompted, unprompted, changes, unstated int
 	for _, s := range list {
 		kept = kept.Add(s.Kept())
 		o, t, c, still := s.Counts()
 		opened, taken, closed, open = opened+o, taken+t, closed+c, open+still
 		for _, k := range s.Contained {
-			places++
+			cases++
 			parts += k.Left()
 			if !k.Stated() {
 				unstated++
@@ -156,7 +156,7 @@ func handoverFigures(f ui.Format, list []plant.ShiftSummary) []handoverFigure {
 	out := []handoverFigure{
 		{Label: w.T("handover.samples"), Value: w.T("handover.of", f.Count(kept.Good+kept.Late), f.Count(kept.Promised)), Detail: w.T("handover.samples-detail", kept.Late, kept.Missed, kept.Besides)},
 		{Label: w.T("handover.matters"), Value: f.Count(open), Detail: w.T("handover.matters-detail", opened, taken, closed)},
-		{Label: w.T("handover.contained"), Value: f.Count(parts), Detail: w.T("handover.contained-detail", places, unstated)},
+		{Label: w.T("handover.contained"), Value: f.Count(parts), Detail: w.T("handover.contained-detail", cases, unstated)},
 		{Label: w.T("handover.adjustments"), Value: f.Count(prompted + unprompted), Detail: w.T("handover.adjustments-detail", prompted, unprompted, changes)},
 	}
 	if kept.Missed > 0 {
@@ -165,7 +165,7 @@ func handoverFigures(f ui.Format, list []plant.ShiftSummary) []handoverFigure {
 	if open > 0 {
 		out[1].Tone = "look"
 	}
-	if places > 0 {
+	if cases > 0 {
 		out[2].Tone = "hold"
 	}
 	return out

@@ -28,7 +28,7 @@ func TestProductIsDecidedAboutOnTheDesk(t *testing.T) {
 	m := s.MustRecord(t, s.Diameter, 15003, 15003, 15004, 15002, 15003).Parts[0].Matter
 	s.Clock.Advance(10 * time.Minute)
 	at := "/desk/product/" + m.String()
-	b.get("/desk/product").is(http.StatusOK).has(at, "Axle seat diameter", "Outside specification, above the upper limit", "about 80", "In 1 case nobody has stated yet")
+	b.get("/desk/product").is(http.StatusOK).has(at, "Axle seat diameter", "Outside specification, above the upper limit", "about 80", "0 parts are kept aside, 1 case is open.", "In 1 case nobody has stated yet")
 	b.get(path(s.Diameter)).is(http.StatusOK).has("Suspect since", "biased away from zero, because only large changes signal", "reach-edge")
 
 	state := func(form url.Values) page {
@@ -59,7 +59,7 @@ func TestProductIsDecidedAboutOnTheDesk(t *testing.T) {
 		t.Fatal(err)
 	}
 	b.get(at).has("You recorded the fix of this matter.").hasNot("The matter is still open")
-	b.get("/desk/product").has("10 parts are kept aside in 1 place.", "closed ")
+	b.get("/desk/product").has("10 parts are kept aside, 1 case is open.", "closed ")
 	state(decide("scrapped", "10", "", "right")).is(http.StatusSeeOther)
 	b.get("/desk/product").has("No product is in doubt", "Settled lately")
 

@@ -69,14 +69,12 @@ func (d *Desk) renderProducts(w http.ResponseWriter, r *http.Request, status int
 	v := productListView{New: form, May: ui.FrameOf(r).Person.May(plant.DecideProduct)}
 	chosen := r.URL.Query().Get("line")
 	v.Lines = productLines(f, open, chosen)
-	left, places, unstated := 0, 0, 0
+	left, unstated := 0, 0
 	for _, c := range open {
 		if chosen != "" && c.Line.ID.String() != chosen {
 			continue
 		}
-		if n := c.Left(); n > 0 {
-			left, places = left+n, places+1
-		}
+		left += c.Left()
 		if !c.Stated() {
 			unstated++
 		}
@@ -88,7 +86,7 @@ func (d *Desk) renderProducts(w http.ResponseWriter, r *http.Request, status int
 		}
 	}
 	if len(v.Open) > 0 {
-		v.Sum = f.Words.T("reach.product-sum", f.Count(left), places)
+		v.Sum = f.Words.T("reach.product-sum", f.Count(left), len(v.Open)) // as the handover counts them
 	}
 	if unstated > 0 {
 		v.Unstated = f.Words.T("reach.product-unstated", unstated)
