@@ -284,7 +284,7 @@ func TestANewStretchIsComparedWithTheBasis(t *testing.T) {
 	b.get(path(s.Diameter, "study")).is(http.StatusOK).has("The stretch shares subgroups with revision 1")
 	from := s.Clock.Now().Add(time.Minute)
 	s.fill(t, s.Diameter, 30, 5, 14994, 2, 7, nil)
-	p := b.get(path(s.Diameter, "study") + "?from=" + from.Format("2006-01-02T15:04")).is(http.StatusOK).
+	p := b.get(path(s.Diameter, "study")+"?from="+from.Format("2006-01-02T15:04")).is(http.StatusOK).
 		has("from the data of revision 1, p below 0.001", "the process is another one than it was then", "On record", "Revision 1")
 	// A matter is open, the centre moved, the process is another one: none of them is ticked off.
 	if n := p.count(`<li class="warn">`); n != 3 {
