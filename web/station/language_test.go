@@ -1,6 +1,7 @@
 package station_test
 
 import (
+	"fmt"
 	"net/http"
 	"net/url"
 	"strconv"
@@ -30,13 +31,13 @@ func TestNothingOverflowsInAnyLanguage(t *testing.T) {
 			continue
 		}
 		speak(t, tb, lang)
-		for _, size := range [][2]int64{{1280, 800}, {800, 1280}} {
+		for _, size := range [][2]int64{{1280, 800}, {1024, 768}, {800, 1280}} {
 			tb.Size(size[0], size[1])
 			for _, path := range pages {
 				tb.Open(path)
 				tb.Want(path, `document.documentElement.lang`, lang)
 				tb.NothingOverflows(lang + " " + path)
-				tb.Want(lang+" "+path+": rows of the top bar", `document.body.className !== "station" || document.querySelector(".topbar").offsetHeight <= 64`, "true")
+				tb.Want(fmt.Sprint(lang, " ", path, " at ", size[0], ": rows of the top bar"), `document.body.className !== "station" || document.querySelector(".topbar").offsetHeight <= 64`, "true")
 			}
 		}
 		tb.Open(s.at())
