@@ -176,6 +176,26 @@ func (d *builder) circle(class string, x, y, r float64) {
 	d.raw("/>")
 }
 
+// dots draws points of one radius as one path: subpaths of no length, which the round
+// caps of class "dots" make discs. A card of a board is pushed to every screen at each
+// round, and 25 circles were a third of it.
+func (d *builder) dots(at []xy, r float64) {
+	if len(at) == 0 {
+		return
+	}
+	d.open("path", "dots")
+	d.attr("stroke-width", 2*r)
+	d.raw(` d="`)
+	for _, p := range at {
+		d.raw("M")
+		d.num(p.x)
+		d.raw(" ")
+		d.num(p.y)
+		d.raw("h0")
+	}
+	d.raw(`"/>`)
+}
+
 type anchor int
 
 const (

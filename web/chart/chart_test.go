@@ -124,9 +124,9 @@ func checkSVG(t *testing.T, name, svg string) {
 }
 
 var (
-	geometry   = map[string]bool{"x": true, "y": true, "x1": true, "y1": true, "x2": true, "y2": true, "cx": true, "cy": true, "r": true, "width": true, "height": true}
+	geometry   = map[string]bool{"x": true, "y": true, "x1": true, "y1": true, "x2": true, "y2": true, "cx": true, "cy": true, "r": true, "width": true, "height": true, "stroke-width": true}
 	coordinate = regexp.MustCompile(`^-?[0-9]{1,5}(\.[0-9])?$`)
-	path       = regexp.MustCompile(`^[-0-9., MHVZ]*$`)
+	path       = regexp.MustCompile(`^[-0-9., MHVZh]*$`)
 )
 
 func TestSamplesAreWellFormed(t *testing.T) {

@@ -82,7 +82,7 @@ func (s *Spark) AppendSVG(b []byte) []byte {
 		from := x(max(newest-s.Reach, 0))
 		d.hatched("reach", from, 0, x(newest)-from, h, id+"-reach")
 	}
-	run := make([]xy, 0, len(pts))
+	run, dots := make([]xy, 0, len(pts)), make([]xy, 0, len(pts))
 	for i, p := range pts {
 		if p.Restart || !finite(p.Value) {
 			d.polyline("trace", run)
@@ -91,9 +91,13 @@ func (s *Spark) AppendSVG(b []byte) []byte {
 		if finite(p.Value) {
 			y, _ := sc.y(p.Value)
 			run = append(run, xy{x(i), y})
+			if i != newest {
+				dots = append(dots, xy{x(i), y})
+			}
 		}
 	}
 	d.polyline("trace", run)
+	d.dots(dots, r)
 	for i, p := range pts {
 		if !finite(p.Value) {
 			continue
@@ -101,8 +105,6 @@ func (s *Spark) AppendSVG(b []byte) []byte {
 		y, inside := sc.y(p.Value)
 		if i == newest {
 			d.circle("dot newest", x(i), y, r*1.75)
-		} else {
-			d.circle("dot", x(i), y, r)
 		}
 		switch p.Mark {
 		case SignalMark:
