@@ -168,6 +168,7 @@ func mainJob(t *testing.T, h hands) {
 	r.Clock.Advance(time.Minute)
 	h.pick(operator, "input[name=cause]")
 	h.fill(operator, "input[name=action]", "Insert changed")
+	h.pick(operator, "input[name=rest]")
 	h.press(operator, "[data-testid=close-form] button[type=submit]")
 	board.WaitFor("!" + needs + `.includes("Look, Axle seat diameter")`)
 

@@ -106,8 +106,9 @@ func TestWhatIsHalfTypedSurvives(t *testing.T) {
 			p.Click("input[name=cause][value=own] + span")
 			into(p, "input[name=own]", "Chips in the chuck")
 			into(p, "input[name=action]", "Chuck cleaned")
-		}, typed: find("[name=cause]:checked") + `?.value + " " + ` + find("input[name=own]") + `.value + " " + ` + find("input[name=action]") + `.value`,
-			want: "own Chips in the chuck Chuck cleaned", save: "[data-testid=close]", by: `select closed_by from matter where id = '` + m.ID.String() + `'`},
+			p.Click("input[name=rest][value=used] + span")
+		}, typed: find("[name=cause]:checked") + `?.value + " " + ` + find("input[name=own]") + `.value + " " + ` + find("input[name=action]") + `.value + " " + ` + find("[name=rest]:checked") + `?.value`,
+			want: "own Chips in the chuck Chuck cleaned used", save: "[data-testid=close]", by: `select closed_by from matter where id = '` + m.ID.String() + `'`},
 	} {
 		func() {
 			if f.typed == "" {

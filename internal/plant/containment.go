@@ -31,7 +31,7 @@ func (s ContainmentStep) Disposes() bool { return slices.Contains(Dispositions, 
 
 // Decides reports whether the step lets product out of the containment, or says that
 // there is none: that is for people who are authorised to, and a signature.
-func (s ContainmentStep) Decides() bool { return s != KeptAside }
+func (s ContainmentStep) Decides() bool { return s != KeptAside && !s.OfRest() }
 
 // maxKept keeps sums far within what an integer holds.
 const maxKept = 100_000_000
@@ -101,8 +101,11 @@ func (c Containment) Disposed() (n int) {
 // Left is how many are still kept aside.
 func (c Containment) Left() int { return c.Kept() - c.Disposed() }
 
-// Stated reports whether anybody has stated anything about the product yet.
-func (c Containment) Stated() bool { return len(c.Entries) > 0 }
+// Stated reports whether anybody has stated yet what was put aside. Where the rest is says
+// nothing about that: product of which nothing was put aside still waits for a person.
+func (c Containment) Stated() bool {
+	return slices.ContainsFunc(c.Entries, func(e ContainmentEntry) bool { return !e.Step.OfRest() })
+}
 
 // Settled reports whether nothing is left to be stated: the matter is closed, somebody
 // stated what was put aside, and of all of it what became of it.
@@ -161,6 +164,11 @@ func (c Containment) Admit(e ContainmentEntry) (ContainmentEntry, error) {
 			return e, Invalidf("note", "Say why no product is in doubt.")
 		}
 		e.Quantity, e.Delta = 0, 0
+	case e.Step.OfRest():
+		if e.Quantity == 0 {
+			return e, Invalidf("quantity", "Say of how many parts.")
+		}
+		e.Delta = 0
 	case !e.Step.Disposes():
 		return e, Invalidf("step", "Say what became of the product.")
 	case e.Quantity == 0:

@@ -26,7 +26,8 @@ func (s *Store) openContainment(b *pgx.Batch, l *locked, matter uuid.UUID, now t
 // doubt and nobody put any aside.
 func settleWithMatter(b *pgx.Batch, matter uuid.UUID, suspects bool, now time.Time) {
 	b.Queue(`update containment c set settled_at = $2 where c.matter_id = $1 and c.settled_at is null and
-			coalesce((select sum(e.delta) = 0 from containment_entry e where e.containment_id = c.id), not $3)`, matter, now, suspects)
+			coalesce((select sum(e.delta) = 0 from containment_entry e where e.containment_id = c.id and e.step <> all ($4)), not $3)`,
+		matter, now, suspects, plant.RestAnswers)
 }
 
 const selectContainment = `select c.id, c.matter_id, c.opened_at, c.settled_at, m.closed_at,

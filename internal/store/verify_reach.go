@@ -36,7 +36,8 @@ var sealedProduct = []string{
 	// Whether it is settled follows from what was stated.
 	`select c.characteristic_id, format('containment %s is %s on record, %s parts are left', c.id, case when c.settled_at is null then 'open' else 'settled' end, left_of.n)
 	from containment c left join matter m on m.id = c.matter_id
-	cross join lateral (select count(*) as stated, coalesce(sum(x.delta), 0) as n from containment_entry x where x.containment_id = c.id) left_of
+	cross join lateral (select count(*) filter (where x.step not in ('gone', 'used', 'unmade', 'miscounted', 'unknown')) as stated,
+		coalesce(sum(x.delta), 0) as n from containment_entry x where x.containment_id = c.id) left_of
 	where c.settled_at is not null and (left_of.n <> 0 or c.matter_id is not null and m.closed_at is null)
 		or c.settled_at is null and left_of.stated > 0 and left_of.n = 0 and (c.matter_id is null or m.closed_at is not null)`,
 }

@@ -70,7 +70,7 @@ type handoverMatter struct {
 }
 
 type handoverContained struct {
-	Address, Station, Name, Quantity, Where, Since string
+	Address, Station, Name, Quantity, Where, Rest, Since string
 }
 
 type handoverCorrection struct{ When, What, Reason string }
@@ -203,7 +203,7 @@ func newLineView(f ui.Format, sum plant.ShiftSummary) lineView {
 			row.Quantity = w.T("handover.not-stated")
 		}
 		place, tag := c.Where()
-		row.Where = strings.Join(nonEmpty(place, tag), ", ")
+		row.Where, row.Rest = strings.Join(nonEmpty(place, tag), ", "), ui.SayRest(f, c)
 		v.Contained = append(v.Contained, row)
 	}
 	for _, c := range sum.Corrections {

@@ -25,7 +25,7 @@ type productOf struct {
 
 // productForm is a statement as it was typed.
 type productForm struct {
-	Which                            string // "decide", "keep" or "other"
+	Which                            string // "decide", "keep", "rest" or "other"
 	Step, Quantity, Place, Tag, Note string
 }
 
@@ -43,7 +43,9 @@ type productView struct {
 	Done     string
 	Early    []string // why a statement may come too early, or from the wrong person
 	May      bool
-	Open     bool // parts are left to decide about
+	Open     bool   // parts are left to decide about
+	Asks     string // where the suspect parts are that were not put aside
+	Missing  string // of how many it is asked
 	Typed    productForm
 	Problems map[string]string // by form and field
 }
@@ -93,14 +95,8 @@ func (d *Desk) renderProduct(w http.ResponseWriter, r *http.Request, status int,
 	for _, e := range c.Entries {
 		v.Entries = append(v.Entries, ui.SayEntry(f, e))
 	}
-	switch {
-	case c.Left() > 0:
-		v.State = f.Words.T("reach.aside-left", c.Left())
-	case c.Stated():
-		v.State = f.Words.T("reach.aside-settled")
-	default:
-		v.State = f.Words.T("reach.aside-none")
-	}
+	v.State, v.Asks = ui.SayAside(f, c), ui.AskRest(f, c, k.Suspect)
+	v.Missing = strconv.Itoa(c.Missing(k.Suspect))
 	if r.URL.Query().Get("stated") != "" {
 		v.Done = f.Words.T("reach.product-done")
 	}
@@ -180,7 +176,7 @@ func (d *Desk) stateProduct(w http.ResponseWriter, r *http.Request) error {
 	return d.renderProduct(w, r, status, c, typed, problems)
 }
 
-// readProduct reads a statement from one of the three forms; problems are by form and
+// readProduct reads a statement from one of the forms; problems are by form and
 // field.
 func readProduct(r *http.Request) (productForm, plant.ContainmentEntry, map[string]string) {
 	p, words := r.PostForm, ui.FrameOf(r).Words
@@ -191,6 +187,10 @@ func readProduct(r *http.Request) (productForm, plant.ContainmentEntry, map[stri
 	switch t.Which {
 	case "keep":
 		e.Step = plant.KeptAside
+	case "rest":
+		if !e.Step.OfRest() {
+			problems["rest.step"] = words.T("reach.rest.say")
+		}
 	case "other":
 		if e.Step != plant.NothingToKeep && e.Step != plant.CountedAgain {
 			problems["other.step"] = words.T("reach.product-no-step")

@@ -37,6 +37,12 @@ func TestProductIsDecidedAboutOnTheDesk(t *testing.T) {
 		return b.post(at, form)
 	}
 	b.get(at).is(http.StatusOK).has("Suspect since", "about 80 parts", "Nobody has stated yet", "A steady chart is not a release").hasNot(`data-testid="decide"`)
+	asks := "About 80 parts are suspect, none put aside: where are they?"
+	b.get(at).has(asks)
+	state(url.Values{"form": {"rest"}, "quantity": {"80"}}).is(http.StatusUnprocessableEntity).has("Say where the rest is.")
+	state(url.Values{"form": {"rest"}, "quantity": {"80"}, "step": {"used"}, "note": {"built in at once"}}).is(http.StatusSeeOther)
+	b.get(at).has("Nothing was put aside.", "Not put aside, used up: 80", "built in at once").hasNot(asks)
+	b.get("/desk/product").has("In 1 case nobody has stated yet", "Not put aside, used up: 80 (built in at once)")
 	state(url.Values{"form": {"keep"}, "quantity": {"81"}}).is(http.StatusUnprocessableEntity).has("Say where they were put.")
 	state(url.Values{"form": {"keep"}, "quantity": {"81"}, "place": {"Red rack 3"}, "tag": {"R-17"}}).is(http.StatusSeeOther)
 	decide := func(step, quantity, note, secret string) url.Values {

@@ -32,7 +32,7 @@ type productRow struct {
 	Why                 string
 	Computed            string
 	Stated, Left        string
-	Where               string
+	Where, Rest         string
 	Age                 string
 	Matter              string
 	Waits               bool // nobody has stated anything yet
@@ -150,7 +150,7 @@ func newProductRow(f ui.Format, c plant.Containment, found plant.Contained) prod
 	w := f.Words
 	v := productRow{Href: productPath(c.ID), Name: c.Characteristic.Name, Station: c.Station.Name, Age: f.Since(c.OpenedAt), Waits: !c.Stated()}
 	place, tag := c.Where()
-	v.Where = ui.SayWhere(f, place, tag)
+	v.Where, v.Rest = ui.SayWhere(f, place, tag), ui.SayRest(f, c)
 	v.Left, v.Stated = f.Count(c.Left()), f.Count(c.Kept())
 	switch {
 	case c.Matter == uuid.Nil:

@@ -22,6 +22,10 @@ type asideView struct {
 	State string // "340 parts are kept aside", "Nobody has stated yet …"
 	Href  string // where it is stated; "" when it is settled
 	More  bool   // something was stated already
+	Rest  string // where the suspect parts are that were not put aside, as answered
+	Asks  string // the same as a question, while it is to be asked
+
+	missing int // of how many parts it is asked
 }
 
 // asidePageView is the page on which a person states what was put aside.
@@ -83,22 +87,12 @@ func (s *Surface) asideOf(r *http.Request, st plant.StationState, m plant.Matter
 	if !suspect && !kept.Stated() {
 		return nil, nil, nil
 	}
-	v.State = asideState(f, kept)
+	v.State, v.Rest, v.Asks = ui.SayAside(f, kept), ui.SayRest(f, kept), ui.AskRest(f, kept, found[m.ID].Suspect)
+	v.missing = kept.Missing(found[m.ID].Suspect)
 	if kept.SettledAt.IsZero() {
 		v.Href = asidePath(st.ID, m.ID)
 	}
 	return v, &kept, nil
-}
-
-// asideState says what was stated of the product so far.
-func asideState(f ui.Format, kept plant.Containment) string {
-	switch {
-	case kept.Left() > 0:
-		return f.Words.T("reach.aside-left", kept.Left())
-	case kept.Stated():
-		return f.Words.T("reach.aside-settled")
-	}
-	return f.Words.T("reach.aside-none")
 }
 
 // containedOf is the product of the open matter of a characteristic.
@@ -186,6 +180,7 @@ func keptTasks(f ui.Format, st plant.StationState) (out []taskView, more int) {
 			if !k.Stated() {
 				t.Says, t.Sub = w.T("reach.contained-unstated"), w.T("reach.contained-unstated-sub")
 			}
+			t.Aside = ui.SayRest(f, k)
 			out = append(out, t)
 		}
 	}

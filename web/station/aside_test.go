@@ -66,15 +66,47 @@ func TestOperatorIsToldWhatToKeepAside(t *testing.T) {
 	b.get(s.at()).says(grown + " 78 parts are kept aside.")
 	b.get(matter+"/aside").says("Put aside: 78", "Red rack 3, tag R-17", "Operator 1")
 
+	// By the closing many more were made than were put aside: where they are is asked once,
+	// and "not known" is an answer.
+	b.get(matter).saysNot(`data-testid="rest"`) // 78 of about 80 are all
+	s.Clock.Advance(60 * time.Minute)
+	asks := "About 200 parts are suspect, 78 put aside: where is the rest?"
+	closing := url.Values{"version": {b.get(matter).says(asks).field("version")}, "cause": {"none"}, "done": {"nothing"}}
+	b.post(matter+"/close", closing).is(http.StatusUnprocessableEntity).says(asks, "Say where the rest is.")
+	closing.Set("rest", "gone")
+	closing.Set("rest_note", "washing line")
+	closing.Set("cause", "")
+	b.post(matter+"/close", closing).is(http.StatusUnprocessableEntity).says(asks, "washing line").saysNot("Say where the rest is.")
+	closing.Set("cause", "none")
+	b.post(matter+"/close", closing).is(http.StatusSeeOther)
+
 	// The matter is closed, the product stays in the column.
-	m, err := s.Matter(t.Context(), look.Parts[0].Matter)
-	if err != nil {
+	rest := "Not put aside, already gone on: 122 (washing line)"
+	b.get(matter).says("Closed", "78 parts are kept aside.", rest)
+	b.get(matter+"/aside").says("Not put aside, already gone on: 122", "washing line")
+	b.get(s.at()).says("Kept aside: 78 parts", matter+"/aside", rest).saysNot("Keep aside what was made")
+	if _, err := s.VerifyLedger(t.Context()); err != nil {
+		t.Errorf("the record: %v", err)
+	}
+}
+
+// TestNothingPutAsideWaitsForAPerson: where everything suspect has gone on the closing is
+// not held up, and what became of the product is still to be said.
+func TestNothingPutAsideWaitsForAPerson(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	if err := s.SetMachine(t.Context(), plant.MachineState{ID: storetest.ID(), Machine: s.Machine.ID, Running: true}); err != nil {
 		t.Fatal(err)
 	}
-	if err := s.CloseMatter(t.Context(), plant.ClosingRequest{Matter: m.ID, Version: m.Version, Cause: "Insert chipped", Action: "Insert changed", Person: s.Operator.ID}); err != nil {
-		t.Fatal(err)
+	matter := s.open(t)
+	b := s.signIn(t, s.Operator)
+	page := b.get(matter).says("About 80 parts are suspect, none put aside: where are they?")
+	b.post(matter+"/close", url.Values{"version": {page.field("version")}, "cause": {"none"}, "done": {"nothing"}, "rest": {"unknown"}}).is(http.StatusSeeOther)
+	b.get(matter).says("Closed", "Nothing was put aside.", "Not put aside, not known where: 80", "State what was put aside")
+	b.get(s.at()).says("Product in doubt", "Not put aside, not known where: 80")
+	if _, err := s.VerifyLedger(t.Context()); err != nil {
+		t.Errorf("the record: %v", err)
 	}
-	b.get(s.at()).says("Kept aside: 78 parts", matter+"/aside").saysNot("Keep aside what was made")
 }
 
 // TestGaugeCheck: overdue it waits in the column; failed it holds the product, and rounds

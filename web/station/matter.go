@@ -72,6 +72,9 @@ func (s *Surface) renderMatter(w http.ResponseWriter, r *http.Request, status in
 	if v.Aside, _, err = s.asideOf(r, st, m); err != nil {
 		return err
 	}
+	if v.Aside != nil && (v.Closing || v.Ready()) {
+		v.Form.Rest = typed.closing.Rest.asked(f, v.Aside.Asks)
+	}
 	shell := s.shell(r, st, v.Title)
 	shell.Styles = append(shell.Styles, reactionStyles)
 	return ui.Render(w, r, status, matterPage(shell, v))

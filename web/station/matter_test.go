@@ -138,7 +138,7 @@ func TestRefusedClosingIsBroughtIntoView(t *testing.T) {
 }
 
 func fixed(at time.Time) url.Values {
-	return url.Values{"cause": {"own"}, "own": {"something loose"}, "action": {"new insert"}, "fixed_at": {at.Format("2006-01-02T15:04")}}
+	return url.Values{"cause": {"own"}, "own": {"something loose"}, "action": {"new insert"}, "fixed_at": {at.Format("2006-01-02T15:04")}, "rest": {"unknown"}}
 }
 
 func TestChangeIsLoggedInTwoTapsAndSaysWhenNoSignalIsOpen(t *testing.T) {

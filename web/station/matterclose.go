@@ -31,6 +31,7 @@ type closingForm struct {
 	CauseProblem  string
 	ActionProblem string
 	FixedProblem  string
+	Rest          restForm
 }
 
 type causeView struct {
@@ -56,7 +57,7 @@ func causeChoices(f ui.Format, causes []plant.Cause, chosen string) []causeView 
 func typedClosing(r *http.Request) (closingForm, string) {
 	p := r.PostForm
 	return closingForm{Own: plant.CleanText(p.Get("own")), Action: plant.CleanText(p.Get("action")), Nothing: p.Get("done") == "nothing",
-		FixedAt: p.Get("fixed_at")}, p.Get("cause")
+		FixedAt: p.Get("fixed_at"), Rest: typedRest(p)}, p.Get("cause")
 }
 
 // closeMatter is POST .../close.
@@ -71,8 +72,14 @@ func (s *Surface) closeMatter(w http.ResponseWriter, r *http.Request) error {
 		return err
 	}
 	req, bad := s.closing(r, m, causes, &form, chosen)
-	if !bad {
-		err = s.store.CloseMatter(r.Context(), req)
+	rest, unsaid, err := s.restOf(r, st, m, &form.Rest)
+	if err != nil {
+		return err
+	}
+	if !bad && !unsaid {
+		if err = s.stateRest(r, rest); err == nil {
+			err = s.store.CloseMatter(r.Context(), req)
+		}
 		if err == nil {
 			return s.afterClosing(w, r, st, m)
 		}
@@ -110,6 +117,8 @@ func (c *closingForm) place(field, problem string) {
 		c.ActionProblem = problem
 	case "fixed_at":
 		c.FixedProblem = problem
+	case "note", "quantity":
+		c.Rest.Problem = problem
 	default:
 		c.CauseProblem = problem
 	}

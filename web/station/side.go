@@ -155,7 +155,7 @@ func openTask(f ui.Format, station uuid.UUID, c plant.CharacteristicState) taskV
 	if says, ok := ui.SayReachOf(f, c); ok {
 		t.Aside = says.Do
 		if kept := containedOf(c); kept.Stated() { // the instruction stands, and so does what was done about it
-			t.Aside += " " + asideState(f, kept)
+			t.Aside += " " + ui.SayAside(f, kept)
 		}
 	}
 	if c.Matter.TakenByName != "" {

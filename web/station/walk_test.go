@@ -179,6 +179,8 @@ func TestPlanIsWalkedWithAnInterruptionByTwoPeopleAndSigned(t *testing.T) {
 	first.WaitFor(`document.querySelector("[data-testid=close-form]")`)
 	first.Value(`document.querySelector("input[name=cause]").labels[0].click()`)
 	first.Fill("input[name=action]", "Insert changed")
+	first.Click("input[name=rest][value=gone]")
+	first.Accessible("where the rest is")
 	first.Click("[data-testid=close]")
 	first.WaitFor(`document.querySelector("[data-testid=confirm]")`)
 	first.Accessible("waiting for a round")

@@ -160,6 +160,50 @@ func SayEntry(f Format, e plant.ContainmentEntry) EntrySaid {
 	return v
 }
 
+// SayRest says where suspect product is that was not put aside; "" where nobody was asked.
+func SayRest(f Format, c plant.Containment) string {
+	e, ok := c.Rest()
+	if !ok {
+		return ""
+	}
+	said := SayEntry(f, e)
+	if said.Note == "" {
+		return said.What
+	}
+	return f.Words.T("reach.rest.with-note", said.What, said.Note)
+}
+
+// AskRest asks where product is that is suspect and was not put aside; "" where nothing is
+// to be asked.
+func AskRest(f Format, c plant.Containment, s plant.Suspect) string {
+	switch w := f.Words; {
+	case c.Missing(s) == 0:
+		return ""
+	case c.Kept() == 0 && s.About:
+		return w.T("reach.rest.ask-all-about", s.Parts)
+	case c.Kept() == 0:
+		return w.T("reach.rest.ask-all", s.Parts)
+	case s.About:
+		return w.T("reach.rest.ask-about", s.Parts, c.Kept())
+	default:
+		return w.T("reach.rest.ask", s.Parts, c.Kept())
+	}
+}
+
+// SayAside says what was stated of the product so far.
+func SayAside(f Format, c plant.Containment) string {
+	_, rest := c.Rest()
+	switch {
+	case c.Left() > 0:
+		return f.Words.T("reach.aside-left", c.Left())
+	case c.Stated():
+		return f.Words.T("reach.aside-settled")
+	case rest:
+		return f.Words.T("reach.rest.nothing-aside")
+	}
+	return f.Words.T("reach.aside-none")
+}
+
 // SayWhere says where product lies and what is written on it.
 func SayWhere(f Format, place, tag string) string {
 	var parts []string
