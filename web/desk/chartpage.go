@@ -174,7 +174,7 @@ func spanLinks(f ui.Format, id uuid.UUID, a asked, table bool) []link {
 }
 
 func newFactsView(f ui.Format, h plant.History) factsView {
-	return factsView{ID: factsID(h.State.ID), Facts: newFacts(f, h.State)}
+	return factsView{ID: factsID(h.State.ID), Facts: newFacts(f, h)}
 }
 
 func newPicture(d *drawing, newestStretch bool) pictureView {

@@ -13,18 +13,22 @@ type fact struct {
 }
 
 // newFacts are state, owner, limits in force and sampling of a characteristic.
-func newFacts(f ui.Format, c plant.CharacteristicState) []fact {
-	return []fact{stateFact(f, c), ownerFact(f, c), limitsFact(f, c), samplingFact(f, c)}
+func newFacts(f ui.Format, h plant.History) []fact {
+	c := h.State
+	return []fact{stateFact(f, h), ownerFact(f, c), limitsFact(f, c), samplingFact(f, c)}
 }
 
-func stateFact(f ui.Format, c plant.CharacteristicState) fact {
-	w := f.Words
+func stateFact(f ui.Format, h plant.History) fact {
+	w, c := f.Words, h.State
 	v := fact{Cap: w.T("desk.fact.state"), State: c.Condition()}
 	since := c.Since()
 	switch v.State {
 	case plant.IsHold, plant.IsLook:
 		v.Val = w.T("desk.fact.for", f.Since(since))
 		v.Sub = w.T("desk.fact.since-what", f.Clock(c.Matter.OpenedTaken), matterWords(f, *c.Matter, c.Setup))
+		if parts := ui.SayOutside(f, c, *c.Matter, h.Points, h.Setups); len(parts) > 0 {
+			v.Sub = w.T("desk.fact.newest-part", v.Sub, parts[len(parts)-1])
+		}
 	case plant.IsDue, plant.IsLate, plant.IsUnknown:
 		v.Val = f.Late(c.Due)
 		v.Sub = w.T("desk.fact.due-since", f.Clock(since))

@@ -59,6 +59,9 @@ func (s *Surface) renderMatter(w http.ResponseWriter, r *http.Request, status in
 		return notFound(r)
 	}
 	v := newMatter(f, frame.Person, st, c, m, typed)
+	if err := s.nameParts(r, f, c, m, &v); err != nil {
+		return err
+	}
 	if v.Closing {
 		causes, err := s.store.Causes(r.Context(), st.Family)
 		if err != nil {
@@ -121,4 +124,31 @@ func (s *Surface) quicker(w http.ResponseWriter, r *http.Request, typed typedMat
 		typed.problem = words.T("station.somebody-quicker")
 	}
 	return s.renderMatter(w, r, ui.StatusOf(plant.Conflict), st, m, typed)
+}
+
+// Of a long matter the newest subgroups are looked at, and of those the newest readings
+// are named.
+const (
+	mostLooked = 200
+	mostNamed  = 6
+)
+
+// nameParts names the readings outside specification behind the lines of a matter.
+func (s *Surface) nameParts(r *http.Request, f ui.Format, c plant.CharacteristicState, m plant.Matter, v *matterView) error {
+	for i, l := range m.Lines {
+		if l.Panel != plant.Reading || l.Withdrawn {
+			continue
+		}
+		h, err := s.store.History(r.Context(), c.ID, plant.Stretch{From: l.First, To: l.Last, Last: mostLooked})
+		if err != nil {
+			return err
+		}
+		said := ui.SayOutside(f, c, m, h.Points, h.Setups)
+		if more := len(said) - mostNamed; more > 0 {
+			said = append(said[more:], f.Words.T("ui.outside-part.more", more))
+		}
+		v.Lines[i].Parts = said
+		return nil // the lines of both sides tell of the same readings
+	}
+	return nil
 }

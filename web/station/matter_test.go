@@ -53,6 +53,8 @@ func TestVerdictSaysWhatToDo(t *testing.T) {
 	b.get(s.at("round", hold.Round.String())).is(http.StatusOK).says("Hold the product",
 		"part 3 is outside specification, 6.91\u00a0kN; the upper limit is 6.80\u00a0kN",
 		"Keep aside what was made since "+good.Format("15:04"), "every reading within specification", "A steady chart is not a release")
+	// The matter names the same part, its value and the limit, whenever it is looked at.
+	b.get(s.at("matter", hold.Parts[0].Matter.String())).is(http.StatusOK).says("Part 3: 6.81\u00a0kN, upper limit 6.80\u00a0kN", s.Clock.Now().Format("15:04")+", Part 3: 6.91\u00a0kN, upper limit 6.80\u00a0kN")
 }
 
 // open makes a matter and returns its address.

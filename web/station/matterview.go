@@ -51,9 +51,10 @@ type matterView struct {
 }
 
 type lineOfMatter struct {
-	Says string
-	When string
-	Note string
+	Says  string
+	When  string
+	Note  string
+	Parts []string // of readings outside specification: which, how far, past which limit
 }
 
 // fixView is what was found and done.

@@ -80,6 +80,10 @@ func TestPartsComeFromSpindles(t *testing.T) {
 		if c.ID == s.Diameter.ID && (c.Reach == nil || !slices.Equal(c.Reach.Streams, []uuid.UUID{two[1].ID})) {
 			t.Errorf("the reach is %+v; want the second spindle alone", c.Reach)
 		}
+		if c.ID == s.Diameter.ID && c.Matter != nil {
+			tb.Open(s.at("matter", c.Matter.ID.String()))
+			tb.WaitFor(`document.querySelector("[data-testid=parts]").textContent.endsWith(", Part 5, Spindle 2: 15.002\u00a0mm, upper limit 15.000\u00a0mm")`)
+		}
 	}
 }
 
