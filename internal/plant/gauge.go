@@ -3,6 +3,7 @@ package plant
 import (
 	"crypto/sha256"
 	"fmt"
+	"slices"
 	"time"
 
 	"github.com/google/uuid"
@@ -79,6 +80,38 @@ func (g GaugeNow) Failed() bool { return !g.FailedSince.IsZero() }
 // Overdue reports whether the day of the next check is over, in the plant's zone.
 func (g GaugeNow) Overdue(now time.Time, zone *time.Location) bool {
 	return !g.NextCheck.IsZero() && g.NextCheck.Format(time.DateOnly) < now.In(zone).Format(time.DateOnly)
+}
+
+// OverdueSince is when the day of the next check was over, in the plant's zone.
+func (g GaugeNow) OverdueSince(zone *time.Location) time.Time {
+	y, m, d := g.NextCheck.Date()
+	return time.Date(y, m, d+1, 0, 0, 0, 0, zone)
+}
+
+// GaugeOverdue is a gauge whose check is overdue, with what is measured with it at one
+// station.
+type GaugeOverdue struct {
+	GaugeNow
+	Of    []string
+	First uuid.UUID // the first characteristic of those
+}
+
+// OverdueGauges lists the gauges of a station whose check is overdue, the oldest first.
+// One that failed is not among them: its matters are open.
+func (s StationState) OverdueGauges(now time.Time, zone *time.Location) []GaugeOverdue {
+	var out []GaugeOverdue
+	for _, c := range s.Characteristics {
+		if c.Gauge == nil || c.Gauge.Failed() || !c.Gauge.Overdue(now, zone) {
+			continue
+		}
+		i := slices.IndexFunc(out, func(g GaugeOverdue) bool { return g.ID == c.Gauge.ID })
+		if i < 0 {
+			i, out = len(out), append(out, GaugeOverdue{GaugeNow: *c.Gauge, First: c.ID})
+		}
+		out[i].Of = append(out[i].Of, c.Title())
+	}
+	slices.SortStableFunc(out, func(a, b GaugeOverdue) int { return a.NextCheck.Compare(b.NextCheck) })
+	return out
 }
 
 // NextAfter is the day of the check after a good one: as the person said, else by the

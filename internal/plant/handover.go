@@ -58,8 +58,16 @@ type ShiftSummary struct {
 	Contained   []Containment   // still kept aside at Until
 	Corrections []CorrectionOfShift
 	Changes     []ChangeOfShift
-	Notes       []ShiftNote // not cleared by its beginning
+	Gauges      []GaugeOfShift // whose check was overdue at Until
+	Notes       []ShiftNote    // not cleared by its beginning
 	Readers     []ShiftReader
+}
+
+// GaugeOfShift is a gauge whose check is overdue, at one station.
+type GaugeOfShift struct {
+	Station Station
+	First   uuid.UUID // that is measured with it there
+	Gauge   GaugeNow  // its name, and the day on which the check was due
 }
 
 // StationKept is how the sampling plans of a station were kept.

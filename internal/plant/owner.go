@@ -52,6 +52,36 @@ type Ownership struct {
 	For     time.Time   `json:"for"`                // since then for this reason
 	AtLeast bool        `json:"at_least,omitempty"` // Since is where the record that was looked at begins
 	Unknown bool        `json:"-"`                  // long overdue or out of contact: the owner is as before
+
+	Finding Finding `json:"finding,omitzero"` // of engineering, while the station has to find a special cause first
+}
+
+// Finding is what engineering found of a process before it became unstable: that it is not
+// capable. It stands beside the station's ownership, and is engineering's again since the
+// same instant once the process is stable and neither limits nor specification have changed.
+type Finding struct {
+	Reason  OwnerReason `json:"reason"` // "" when there is none
+	Since   time.Time   `json:"since"`
+	AtLeast bool        `json:"at_least,omitempty"`
+}
+
+// after carries the finding of engineering over from the ownership before; same is false
+// where limits or specification have changed since.
+func (o Ownership) after(last Ownership, same bool) Ownership {
+	if !same {
+		return o
+	}
+	found := last.Finding
+	if last.Reason.WantsProtection() {
+		found = Finding{last.Reason, last.Since, last.AtLeast}
+	}
+	switch {
+	case o.Reason == MatterOpen, o.Reason == Settling, o.Reason == TooFew:
+		o.Finding = found
+	case o.Reason == last.Finding.Reason:
+		o.Since, o.AtLeast = last.Finding.Since, last.Finding.AtLeast
+	}
+	return o
 }
 
 // situation is all that routing looks at.
@@ -131,6 +161,9 @@ func (c CharacteristicState) Ownership() Ownership {
 	last := c.Standing.Last
 	if last.Owner == owner && last.Reason == reason {
 		out.Since, out.For, out.AtLeast = last.Since, last.For, last.AtLeast
+		if c.sameLimits() {
+			out.Finding = last.Finding
+		}
 		return out
 	}
 	out.For = c.reasonSince(reason)
@@ -138,7 +171,12 @@ func (c CharacteristicState) Ownership() Ownership {
 	if out.Since = out.For; last.Owner == owner && reason != AcceptanceEnded {
 		out.Since, out.AtLeast = last.Since, last.AtLeast
 	}
-	return out
+	return out.after(last, c.sameLimits())
+}
+
+// sameLimits reports whether the limits in force are those that the standing knows.
+func (c CharacteristicState) sameLimits() bool {
+	return c.Revision != nil && c.Standing.Revision == c.Revision.ID
 }
 
 // known is what the standing knows of the limits that are in force now.
@@ -176,5 +214,6 @@ func (c CharacteristicState) reasonSince(r OwnerReason) time.Time {
 // WantsProtection reports whether product of this characteristic has to be protected
 // and nobody has said how.
 func (c CharacteristicState) WantsProtection() bool {
-	return c.Ownership().Reason.WantsProtection() && len(c.Protections) == 0
+	o := c.Ownership()
+	return (o.Reason.WantsProtection() || o.Finding.Reason.WantsProtection()) && len(c.Protections) == 0
 }

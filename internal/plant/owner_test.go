@@ -180,6 +180,49 @@ func TestTheCourseOfTheOwnerFollowsTheRecord(t *testing.T) {
 	}
 }
 
+// TestWhatEngineeringFoundOutlastsAMatter: while the station looks for a special cause the
+// finding stands beside it, and afterwards it is engineering's since the same instant; not
+// under new limits or another specification.
+func TestWhatEngineeringFoundOutlastsAMatter(t *testing.T) {
+	t.Parallel()
+	r := recordOf(hourly(120, 14))
+	for i, at := range []float64{40, 75} {
+		r.Matters = append(r.Matters, Matter{ID: uuid.New(), OpenedAt: hour(at), OpenedTaken: hour(at), ClosedAt: hour(at + 1 + float64(i)), Lines: []MatterLine{{Firing: Firing{Panel: Location, Rule: "r"}}}})
+	}
+	_, course := r.Fold()
+	if want := []OwnerReason{NoLimits, TooFew, NotCapable, MatterOpen, Settling, NotCapable, MatterOpen, Settling, NotCapable}; !slices.Equal(said(course), want) {
+		t.Fatalf("course %v", said(course))
+	}
+	found := Finding{Reason: NotCapable, Since: course[2].Since}
+	for i, o := range course[2:] {
+		if o.Owner == AtStation && o.Finding != found || o.Owner == Engineering && (!o.Since.Equal(found.Since) || o.Finding != Finding{}) {
+			t.Errorf("%d: %+v, the finding is since %s", i, o, found.Since)
+		}
+	}
+	for name, change := range map[string]func(*OwnerRecord){
+		"new limits": func(r *OwnerRecord) {
+			r.Course = r.Course.With(Boundary{At: hour(40.5), Kind: ByRevision, Revision: uuid.New()})
+		},
+		"another specification": func(r *OwnerRecord) {
+			r.Setups = append(r.Setups, Setup{Version: 2, MadeAt: hour(40.5), Lower: spec(-20), Upper: spec(20)})
+		},
+	} {
+		r := r
+		r.Matters = r.Matters[:1]
+		change(&r)
+		for _, at := range []float64{40.7, 41} { // open, and closed a moment ago
+			r.Until = hour(at)
+			if standing, _ := r.Fold(); standing.Last.Owner != AtStation && standing.Last.Reason != TooFew || standing.Last.Finding != (Finding{}) {
+				t.Errorf("%s: at %v %+v", name, at, standing.Last)
+			}
+		}
+		r.Until = hour(1000)
+		if standing, _ := r.Fold(); standing.Last.Owner != Engineering || !standing.Last.Since.After(hour(40)) {
+			t.Errorf("%s: in the end %+v", name, standing.Last)
+		}
+	}
+}
+
 // TestSubgroupsBetweenASignalAndItsFixAreNoPartOfTheFigure: the fix came before the
 // closing, and what was taken between the two is the mended process.
 func TestSubgroupsBetweenASignalAndItsFixAreNoPartOfTheFigure(t *testing.T) {

@@ -90,6 +90,8 @@ func (r OwnerRecord) Fold() (Standing, []Ownership) {
 	var course []Ownership
 	var s Standing
 	var grader grader
+	var before Standing
+	var setup Setup
 	begin := r.begin()
 	instants := r.instants()
 	if r.Cut {
@@ -100,6 +102,10 @@ func (r OwnerRecord) Fold() (Standing, []Ownership) {
 		var now situation
 		var rules OwnerSettings
 		s, now, rules = r.at(at, &grader)
+		was := setup
+		setup = r.setupAt(at)
+		same := s.Revision != uuid.Nil && s.Revision == before.Revision && sameDecimal(was.Lower, setup.Lower) && sameDecimal(was.Upper, setup.Upper)
+		before = s
 		owner, reason := route(now, rules)
 		next := Ownership{Owner: owner, Reason: reason, Since: at, For: at, AtLeast: r.Cut && i == 0}
 		if n := len(course); n > 0 {
@@ -108,8 +114,12 @@ func (r OwnerRecord) Fold() (Standing, []Ownership) {
 				next.Since, next.AtLeast = last.Since, last.AtLeast
 			}
 			if last.Owner == owner && last.Reason == reason {
+				if !same {
+					course[n-1].Finding = Finding{}
+				}
 				continue
 			}
+			next = next.after(last, same)
 		}
 		course = append(course, next)
 	}

@@ -64,7 +64,7 @@ type ofShift struct {
 func (g *shiftReading) read(ctx context.Context, lines []uuid.UUID) ([]plant.ShiftSummary, error) {
 	for _, step := range []func(context.Context) error{
 		func(ctx context.Context) error { return g.readFloor(ctx, lines) },
-		g.readCharacteristics, g.readSamples, g.readLogs, g.readChanges, g.readMatters, g.readCorrections, g.readNotes, g.readReaders, g.readContained,
+		g.readCharacteristics, g.readSamples, g.readLogs, g.readChanges, g.readMatters, g.readCorrections, g.readNotes, g.readReaders, g.readContained, g.readGauges,
 	} {
 		if err := step(ctx); err != nil {
 			return nil, err
@@ -368,6 +368,38 @@ func (g *shiftReading) readContained(ctx context.Context) error {
 		sum.Contained = append(sum.Contained, c)
 	}
 	return err
+}
+
+// readGauges reads the gauges whose check was overdue when the summary ends: by the newest
+// good check before, or as the gauge says where none came since.
+func (g *shiftReading) readGauges(ctx context.Context) error {
+	p, err := g.s.Plant(ctx)
+	if err != nil {
+		return err
+	}
+	rows, err := g.tx.Query(ctx, `select used.station_id, used.characteristic_id, g.id, g.name, due.day
+		from (select distinct on (cs.station_id, u.gauge_id) cs.station_id, u.gauge_id, cs.characteristic_id from characteristic_state cs
+			join setup u on u.characteristic_id = cs.characteristic_id and u.version = cs.setup_version
+			where cs.station_id = any($1) and u.gauge_id is not null order by cs.station_id, u.gauge_id, cs.characteristic_id) used
+		join gauge g on g.id = used.gauge_id
+		left join lateral (select k.at, k.next_check from gauge_check k where k.gauge_id = g.id and k.good and k.recorded_at < $2
+			order by k.at desc, k.id desc limit 1) good on true
+		cross join lateral (select case
+			when not exists (select from gauge_check k where k.gauge_id = g.id and k.good and k.recorded_at >= $2) then g.next_check
+			when good.next_check is not null then good.next_check
+			when g.check_days > 0 then (good.at at time zone $3)::date + g.check_days end as day) due
+		where due.day < ($2 at time zone $3)::date order by due.day, g.name, g.id`, g.stationIDs, g.until, p.Location.String())
+	if err != nil {
+		return fmt.Errorf("read gauges: %w", err)
+	}
+	var station, first uuid.UUID
+	var gauge plant.GaugeNow
+	_, err = pgx.ForEachRow(rows, []any{&station, &first, &gauge.ID, &gauge.Name, &gauge.NextCheck}, func() error {
+		sum := g.at(station)
+		sum.Gauges = append(sum.Gauges, plant.GaugeOfShift{Station: g.stations[station], First: first, Gauge: gauge})
+		return nil
+	})
+	return wrapped("read gauges", err)
 }
 
 // ClosedMatters reads the matters that were closed between two instants, for the causes of

@@ -250,3 +250,36 @@ func TestOneRootADay(t *testing.T) {
 		t.Errorf("a cut chain was not found: %v %v", differ, err)
 	}
 }
+
+// TestHandoverNamesOverdueGaugeChecks: as they stood when the shift ended, whatever was
+// checked since.
+func TestHandoverNamesOverdueGaugeChecks(t *testing.T) {
+	t.Parallel()
+	p := storetest.New(t, "")
+	ctx := context.Background()
+	g := gauged(t, p, "Micrometer M-04", p.Diameter)
+	check := func() {
+		t.Helper()
+		if err := p.CheckGauge(ctx, plant.GaugeCheckRecord{ID: storetest.ID(), Gauge: g.ID, Good: true, Person: p.Operator.ID}); err != nil {
+			t.Fatal(err)
+		}
+	}
+	check()
+	due := p.Clock.Now().AddDate(0, 0, 7).Format(time.DateOnly)
+	if s := summary(t, p, spanNow(t, p)); len(s.Gauges) != 0 {
+		t.Errorf("checked just now: %+v", s.Gauges)
+	}
+	p.Clock.Advance(9 * 24 * time.Hour)
+	late := spanNow(t, p)
+	p.Clock.Advance(48 * time.Hour) // that shift is over
+	for _, when := range []string{"overdue still", "checked since"} {
+		s := summary(t, p, late)
+		if len(s.Gauges) != 1 || s.Gauges[0].Gauge.Name != g.Name || s.Gauges[0].Gauge.NextCheck.Format(time.DateOnly) != due || s.Gauges[0].First != p.Diameter.ID {
+			t.Errorf("%s: %+v, want one due %s", when, s.Gauges, due)
+		}
+		check()
+	}
+	if s := summary(t, p, spanNow(t, p)); len(s.Gauges) != 0 {
+		t.Errorf("checked now: %+v", s.Gauges)
+	}
+}

@@ -163,6 +163,32 @@ func TestSparkRingsTheOpenMatterOnly(t *testing.T) {
 	}
 }
 
+// TestAnOverdueGaugeCheckNeedsAPerson: once on a line, after what is about the process and
+// the product, however long it has been due.
+func TestAnOverdueGaugeCheckNeedsAPerson(t *testing.T) {
+	t.Parallel()
+	states := twelve()
+	g := &plant.GaugeNow{Gauge: plant.Gauge{ID: named("gauge"), Name: "Micrometer M-04", NextCheck: noon.AddDate(0, 0, -3)}}
+	for i := range states[:2] {
+		states[i].LineID = states[0].LineID
+		states[i].Characteristics[0].Gauge = g
+	}
+	before := newNeeds(format(), twelve())
+	v := newNeeds(format(), states)
+	last := v.List[len(v.List)-1]
+	if len(v.List) != len(before.List)+1 || !strings.HasPrefix(last.Why, "Gauge check overdue: Micrometer M-04, due ") || !strings.HasPrefix(last.Taken, "Measures ") || last.Age != "2 d" {
+		t.Errorf("%d needs, the last %+v", len(v.List), last)
+	}
+	failed := *g
+	failed.FailedSince = noon
+	for i := range states[:2] {
+		states[i].Characteristics[0].Gauge = &failed
+	}
+	if v := newNeeds(format(), states); len(v.List) != len(before.List) {
+		t.Errorf("a gauge that failed has its matters, and %d needs", len(v.List))
+	}
+}
+
 func TestNeedsAreOldestFirstInWords(t *testing.T) {
 	t.Parallel()
 	v := newNeeds(format(), twelve())

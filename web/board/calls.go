@@ -19,7 +19,7 @@ func (v callView) place() int {
 	case v.Marked:
 		return 0
 	case v.Quiet:
-		return 2
+		return 3 // behind what is no matter
 	}
 	return 1
 }

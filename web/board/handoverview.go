@@ -48,6 +48,7 @@ type lineView struct {
 	Stations    []stationKeptView
 	Open        []handoverMatter
 	Contained   []handoverContained
+	Gauges      []handoverGauge
 	Ended       []handoverMatter
 	Corrections []handoverCorrection
 	Changes     []handoverChange
@@ -72,6 +73,8 @@ type handoverMatter struct {
 type handoverContained struct {
 	Address, Station, Name, Quantity, Where, Rest, Since string
 }
+
+type handoverGauge struct{ Address, Station, Says string }
 
 type handoverCorrection struct{ When, What, Reason string }
 
@@ -205,6 +208,9 @@ func newLineView(f ui.Format, sum plant.ShiftSummary) lineView {
 		place, tag := c.Where()
 		row.Where, row.Rest = strings.Join(nonEmpty(place, tag), ", "), ui.SayRest(f, c)
 		v.Contained = append(v.Contained, row)
+	}
+	for _, g := range sum.Gauges {
+		v.Gauges = append(v.Gauges, handoverGauge{stationAddress(g.Station.ID, g.First), g.Station.Name, w.T("handover.gauge", g.Gauge.Name, ui.SayDay(f, g.Gauge.NextCheck))})
 	}
 	for _, c := range sum.Corrections {
 		what := w.T("handover.corrected", len(c.Withdrew), c.StationName, c.Name, f.Clock(c.TakenAt))

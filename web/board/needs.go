@@ -47,6 +47,15 @@ type needView struct {
 	since   time.Time
 	gravity int
 	names   []string // of a round that was not taken
+	gauge   bool     // a check is overdue: after all that is about product and process
+}
+
+// place orders the list before age does.
+func (v needView) place() int {
+	if v.gauge {
+		return 2
+	}
+	return v.Call.place()
 }
 
 // studyView is one characteristic that engineering owns.
@@ -68,8 +77,15 @@ func (v studyView) rank() int {
 
 func newNeeds(f ui.Format, states []plant.StationState) needsView {
 	var v needsView
+	checks := map[[2]uuid.UUID]bool{}
 	for i := range states {
 		st := &states[i]
+		for _, g := range st.OverdueGauges(f.Now, f.Zone) {
+			if key := [2]uuid.UUID{g.ID, st.LineID}; !checks[key] { // a line that shares it between stations has one check to do
+				checks[key] = true
+				v.List = append(v.List, newGaugeCheck(f, st, g))
+			}
+		}
 		late := map[lateKey]int{} // place in v.List
 		for j := range st.Characteristics {
 			c := &st.Characteristics[j]
@@ -79,7 +95,7 @@ func newNeeds(f ui.Format, states []plant.StationState) needsView {
 			if c.Overdue() {
 				v.List = addLate(f, v.List, late, st, c)
 			}
-			if c.Owner() == plant.Engineering {
+			if o := c.Ownership(); o.Owner == plant.Engineering || o.Finding.Reason != "" {
 				v.Engineering = append(v.Engineering, newStudy(f, st, c))
 			}
 		}
@@ -91,7 +107,7 @@ func newNeeds(f ui.Format, states []plant.StationState) needsView {
 		v.MoreText = f.Words.T("board.more", more)
 	}
 	slices.SortStableFunc(v.List, func(a, b needView) int {
-		if n := a.Call.place() - b.Call.place(); n != 0 {
+		if n := a.place() - b.place(); n != 0 {
 			return n
 		}
 		if n := a.since.Compare(b.since); n != 0 {
@@ -243,10 +259,23 @@ func addLate(f ui.Format, list []needView, seen map[lateKey]int, st *plant.Stati
 	return append(list, v)
 }
 
+// newGaugeCheck is the check of a gauge that is overdue.
+func newGaugeCheck(f ui.Format, st *plant.StationState, g plant.GaugeOverdue) needView {
+	v := need(st, plant.IsLate)
+	v.gauge, v.since = true, g.OverdueSince(f.Zone)
+	v.Link, v.Age = stationAddress(st.ID, g.First), f.Since(v.since)
+	v.Why = f.Words.T("board.gauge", g.Name, ui.SayDay(f, g.NextCheck))
+	v.Taken = f.Words.T("board.gauge-of", strings.Join(g.Of, ", "))
+	return v
+}
+
 func newStudy(f ui.Format, st *plant.StationState, c *plant.CharacteristicState) studyView {
 	v := studyView{Station: st.Name, Name: c.Title(), Link: chartAddress(st.ID, c.ID), Line: st.LineID.String()}
 	o := c.Ownership()
+	finding := f.OwnerFinding(o)
 	switch {
+	case finding != "":
+		v.Progress = finding
 	case o.Reason != plant.NoLimits:
 		v.Progress = f.Words.T("board.reason-since", f.OwnerReason(*c), f.OwnerSince(o))
 	case c.Collected < limits.EnoughSubgroups:
@@ -254,7 +283,7 @@ func newStudy(f ui.Format, st *plant.StationState, c *plant.CharacteristicState)
 	default:
 		v.Progress = f.Words.T("board.can-freeze", c.Collected)
 	}
-	if v.Unprotected = c.WantsProtection(); !v.Unprotected && o.Reason.WantsProtection() {
+	if v.Unprotected = c.WantsProtection(); !v.Unprotected && (o.Reason.WantsProtection() || finding != "") {
 		var said []string
 		for _, p := range c.Protections {
 			said = append(said, f.Words.T("owner.method."+string(p.Method)))

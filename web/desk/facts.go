@@ -74,6 +74,9 @@ func ownerFact(f ui.Format, c plant.CharacteristicState) fact {
 	default:
 		v.Sub = w.T("desk.fact.owner-reason", upperFirst(f.OwnerReason(c)), f.OwnerSince(c.Ownership()))
 	}
+	if found := f.OwnerFinding(c.Ownership()); found != "" {
+		v.Sub = w.T("desk.fact.owner-finding", v.Sub, ui.OwnerWord(w, plant.Engineering), found)
+	}
 	return v
 }
 

@@ -206,6 +206,7 @@ type ownerView struct {
 	Strong       bool
 	Reason       string
 	Since        string
+	Finding      string // of engineering, while the station owns it
 	Unknown      bool
 	Figure       figureView
 	Course       []courseRow
@@ -243,7 +244,7 @@ func newOwnerView(f ui.Format, h plant.History, course []plant.Ownership, protec
 	w, c := f.Words, h.State
 	o := c.Ownership()
 	v := ownerView{ID: c.ID, Title: w.T("owner.page-of", c.Name), Owner: upperFirst(ui.OwnerWord(w, o.Owner)), Strong: o.Owner == plant.Engineering, Reason: upperFirst(f.OwnerReason(c)),
-		Since: f.OwnerSince(o), Unknown: o.Unknown, Figure: newFigure(f, c), Wants: c.WantsProtection()}
+		Since: f.OwnerSince(o), Finding: f.OwnerFinding(o), Unknown: o.Unknown, Figure: newFigure(f, c), Wants: c.WantsProtection()}
 	for _, o := range slices.Backward(course) {
 		row := courseRow{Since: f.Clock(o.For), Owner: upperFirst(ui.OwnerWord(w, o.Owner)), Reason: w.T("owner.reason." + string(o.Reason)), Strong: o.Owner == plant.Engineering}
 		if o.AtLeast {
@@ -341,13 +342,17 @@ func newEngineering(f ui.Format, states []plant.StationState, why string) engine
 	for _, st := range states {
 		for _, c := range st.Characteristics {
 			o := c.Ownership()
-			if o.Owner != plant.Engineering {
+			reason := upperFirst(f.OwnerReason(c))
+			if found := f.OwnerFinding(o); found != "" { // it is engineering's again after the matter
+				reason = f.Words.T("owner.finding-and", upperFirst(found), f.OwnerReason(c))
+				o.Reason, o.Since, o.AtLeast = o.Finding.Reason, o.Finding.Since, o.Finding.AtLeast
+			} else if o.Owner != plant.Engineering {
 				continue
 			}
 			counts[""]++
 			counts[o.Reason]++
 			row := engineeringRow{Href: address(c.ID, "owner"), Chart: address(c.ID), Name: c.Name, Place: f.Words.T("owner.place", st.Line.Name, st.Name),
-				Reason: upperFirst(f.OwnerReason(c)), Age: f.Since(o.Since), Since: f.OwnerSince(o), Unprotected: c.WantsProtection(), owned: o}
+				Reason: reason, Age: f.Since(o.Since), Since: f.OwnerSince(o), Unprotected: c.WantsProtection(), owned: o}
 			if row.Unprotected {
 				v.Missing++
 			}

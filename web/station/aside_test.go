@@ -133,7 +133,7 @@ func TestGaugeCheck(t *testing.T) {
 	b.get(s.at()).says("Gauge checks</a>").saysNot("1 waits")
 	s.Clock.Advance(8 * 24 * time.Hour)
 	b = s.signIn(t, s.Operator)
-	b.get(s.at()).says("Gauge checks: 1 waits")
+	b.get(s.at()).says("Gauge checks: 1 waits", "Check Micrometer M-04", at) // a task like a round
 	b.get(s.at("gauges")).says("Check overdue since")
 
 	check("failed", "").is(http.StatusUnprocessableEntity).says("Say what was wrong with the gauge.")

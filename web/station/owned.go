@@ -36,6 +36,9 @@ func newOwned(f ui.Format, st plant.StationState) ownedView {
 		}
 		if o := c.Ownership(); actedOn(o) {
 			v.Owners = append(v.Owners, ownedRow{c.Title(), ui.OwnerWord(f.Words, o.Owner), f.OwnerSince(o), f.OwnerReason(c), o.Owner == plant.Engineering})
+			if found := f.OwnerFinding(o); found != "" {
+				v.Owners = append(v.Owners, ownedRow{Name: c.Title(), Owner: ui.OwnerWord(f.Words, plant.Engineering), Reason: found, Strong: true})
+			}
 		}
 	}
 	return v

@@ -5,6 +5,7 @@ import (
 	"context"
 	"fmt"
 	"sort"
+	"strings"
 
 	"github.com/google/uuid"
 
@@ -70,7 +71,9 @@ type idleView struct {
 	Due     bool
 	Title   string
 	Lead    string
-	Name    string // what "Measure" leads to
+	Symbol  string // of what Title says is open
+	Tone    string
+	Button  string // to what is to be done
 	Href    string
 	Choices []taskView // rounds outside the plan
 	Owned   ownedView
@@ -116,6 +119,9 @@ func newSide(f ui.Format, st plant.StationState) sideView {
 			v.Open = append(v.Open, openTask(f, st.ID, c))
 		}
 	}
+	for _, g := range st.OverdueGauges(f.Now, f.Zone) {
+		v.Due = append(v.Due, gaugeTask(f, st.ID, g))
+	}
 	v.Kept, v.KeptMore = keptTasks(f, st)
 	if n, named := gaugesWaiting(f, st); named {
 		v.Gauges, v.GaugesDue = f.Words.T("reach.gauges"), n > 0
@@ -145,6 +151,12 @@ func dueTask(f ui.Format, station uuid.UUID, c plant.CharacteristicState) taskVi
 		t.Sub = f.Words.T("station.parts-occasion", t.Sub, ui.OccasionWord(f.Words, o))
 	}
 	return t
+}
+
+// gaugeTask is the check of a gauge that is overdue, a task like a round.
+func gaugeTask(f ui.Format, station uuid.UUID, g plant.GaugeOverdue) taskView {
+	return taskView{Href: path(station, "gauge", g.ID.String()), Name: f.Words.T("reach.check-title", g.Name), Tone: "now", State: "due", Symbol: "due",
+		Says: f.Words.T("station.late", f.Since(g.OverdueSince(f.Zone))), When: ui.SayDay(f, g.NextCheck), Sub: strings.Join(g.Of, ", ")}
 }
 
 func openTask(f ui.Format, station uuid.UUID, c plant.CharacteristicState) taskView {
@@ -215,19 +227,54 @@ func newIdle(f ui.Format, st plant.StationState) idleView {
 	v := idleView{ID: idleID(st.ID), Station: st.ID, Owned: newOwned(f, st)}
 	for _, c := range byDue(st.Characteristics) {
 		if isDue(c) && !v.Due {
-			v.Due, v.Name, v.Href = true, c.Title(), path(st.ID)
+			v.Due, v.Button, v.Href = true, f.Words.T("station.measure-it", c.Title()), path(st.ID)
 			v.Title, v.Lead = f.Words.T("station.due-title"), dueTask(f, st.ID, c).Says
 		}
 		v.Choices = append(v.Choices, taskView{Href: measurePath(st.ID, c.ID), Name: c.Title(), Sub: f.Words.T("station.parts", c.Setup.Size)})
 	}
-	if !v.Due {
-		v.Title = quietWords(f, st)
-		v.Lead = f.Words.T("station.idle-lead")
-		if len(v.Choices) == 0 {
-			v.Lead = ""
-		}
+	if v.Due {
+		return v
+	}
+	if c, ok := gravestOpen(st); ok {
+		v.open(f, st.ID, c)
+		return v
+	}
+	if due := st.OverdueGauges(f.Now, f.Zone); len(due) > 0 {
+		t := gaugeTask(f, st.ID, due[0])
+		v.Title, v.Lead, v.Button, v.Href = f.Words.T("reach.gauge-due"), t.Says, t.Name, t.Href
+		return v
+	}
+	v.Title = quietWords(f, st)
+	v.Lead = f.Words.T("station.idle-lead")
+	if len(v.Choices) == 0 {
+		v.Lead = ""
 	}
 	return v
+}
+
+// gravestOpen is what is open at a station and asks most of people, the oldest of those.
+func gravestOpen(st plant.StationState) (out plant.CharacteristicState, ok bool) {
+	for _, c := range st.Characteristics {
+		if c.Matter == nil {
+			continue
+		}
+		more := 0
+		if ok {
+			more = c.Condition().Gravity() - out.Condition().Gravity()
+		}
+		if !ok || more > 0 || more == 0 && c.Matter.OpenedAt.Before(out.Matter.OpenedAt) {
+			out, ok = c, true
+		}
+	}
+	return out, ok
+}
+
+// open says what is open instead of that nothing is due, and what its next step is.
+func (v *idleView) open(f ui.Format, station uuid.UUID, c plant.CharacteristicState) {
+	t := openTask(f, station, c)
+	v.Title = f.Words.T("station.idle-open."+string(c.Matter.Kind()), f.Clock(c.Matter.OpenedAt))
+	v.Lead = f.Words.T("station.fired", t.Name, t.Sub)
+	v.Symbol, v.Tone, v.Button, v.Href = t.Symbol, t.State, f.Words.T("station.idle-open-button"), t.Href
 }
 
 // Fragments renders what is pushed into the page of a station: the same components

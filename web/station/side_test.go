@@ -105,3 +105,20 @@ func TestStationIsRememberedByTheTablet(t *testing.T) {
 		t.Errorf("an engineer gets %d", got.status)
 	}
 }
+
+// TestAnOpenHoldIsTheLargeWord: while nothing is due, what is open stands there, with its
+// next step, and not that nothing is due.
+func TestAnOpenHoldIsTheLargeWord(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	b := s.signIn(t, s.Operator)
+	s.MustRecord(t, s.Force, 610, 612, 608, 611, 609, 613)
+	b.get(s.at()).is(http.StatusOK).says("Nothing is due").saysNot(`data-testid="measure"`)
+	at := s.Clock.Now().Format("15:04")
+	a := s.MustRecord(t, s.Force, 610, 612, 691, 611, 609, 613)
+	idle := b.get(s.at()).is(http.StatusOK)
+	idle.says("Hold: product kept aside since "+at, "Go on with it", "Nobody has taken it yet", "matter/"+a.Parts[0].Matter.String())
+	if h1 := idle.body[strings.Index(idle.body, `data-testid="idle"`):]; strings.Contains(h1[:strings.Index(h1, "</h1>")], "Nothing is due") {
+		t.Error("the large word is that nothing is due")
+	}
+}

@@ -20,11 +20,12 @@ func SayOutside(f Format, c plant.CharacteristicState, m plant.Matter, points []
 			setup = c.Setup
 		}
 		for i, units := range p.Readings {
-			limit, key := setup.Upper, "ui.outside-part.high"
-			switch setup.Outside(units, p.Stats.Decimals) {
+			side := setup.Outside(units, p.Stats.Decimals)
+			limit := setup.Upper
+			switch side {
 			case plant.High:
 			case plant.Low:
-				limit, key = setup.Lower, "ui.outside-part.low"
+				limit = setup.Lower
 			default:
 				continue
 			}
@@ -34,7 +35,7 @@ func SayOutside(f Format, c plant.CharacteristicState, m plant.Matter, points []
 					part = f.Words.T("ui.outside-part.from", part, name)
 				}
 			}
-			said := f.Words.T(key, part, f.Reading(units, p.Stats.Decimals, setup), f.WithUnit(f.Decimal(*limit), setup.Unit))
+			said := f.Words.T("ui.outside-part."+string(side), part, f.Reading(units, p.Stats.Decimals, setup), f.WithUnit(f.Decimal(*limit), setup.Unit))
 			out = append(out, f.Words.T("ui.outside-part.at", f.Clock(p.TakenAt), said))
 		}
 	}

@@ -39,6 +39,15 @@ func (f Format) tooFew(c plant.CharacteristicState) string {
 	return w.T("owner.too-few-subgroups", fig.Subgroups, c.Rules.LeastSubgroups)
 }
 
+// OwnerFinding says what engineering had found before the process became unstable, while
+// the station owns it; "" where there is nothing.
+func (f Format) OwnerFinding(o plant.Ownership) string {
+	if o.Owner != plant.AtStation || o.Finding.Reason == "" {
+		return ""
+	}
+	return f.Words.T("owner.finding", f.OwnerSince(plant.Ownership{Since: o.Finding.Since, AtLeast: o.Finding.AtLeast}))
+}
+
 // OwnerSince says since when, "since Tue 12:42", or that it is longer than the record
 // that was looked at.
 func (f Format) OwnerSince(o plant.Ownership) string {
