@@ -119,7 +119,7 @@ func New(c Config) http.Handler {
 	}).ServeHTTP)
 
 	r.Get("/healthz", s.healthy)
-	r.Get("/readyz", s.ready)
+	r.Get(ReadyAddress, s.ready)
 	if c.Metrics != nil {
 		r.Method(http.MethodGet, "/metrics", c.Metrics)
 	}
@@ -213,6 +213,13 @@ func (s *server) live(w http.ResponseWriter, r *http.Request) {
 	s.Hub.Serve(w, r, live.Watch{Topics: topics, Session: f.Session})
 }
 
+// ReadyAddress is where machines ask whether the server can do its work, and ServerHeader
+// marks the answer as this program's.
+const (
+	ReadyAddress = "/readyz"
+	ServerHeader = "X-Holdfast"
+)
+
 func (s *server) healthy(w http.ResponseWriter, _ *http.Request) { plain(w, http.StatusOK, "ok\n") }
 
 const readyWithin = 2 * time.Second
@@ -230,6 +237,7 @@ func (s *server) ready(w http.ResponseWriter, r *http.Request) {
 }
 
 func plain(w http.ResponseWriter, status int, text string) {
+	w.Header().Set(ServerHeader, "serving")
 	w.Header().Set("Content-Type", "text/plain; charset=utf-8")
 	w.Header().Set("Cache-Control", "no-store")
 	w.WriteHeader(status)

@@ -51,7 +51,7 @@ func (c *checkCmd) findings(ctx context.Context) []finding {
 	if dir := c.stateDir(); dir != "" {
 		add(checkFolder(dir)...)
 	}
-	add(checkPort(c.Addr), checkClock())
+	add(c.checkPort(ctx), checkClock())
 	add(c.checkCertificate()...)
 	return out
 }

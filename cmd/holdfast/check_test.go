@@ -103,3 +103,34 @@ func TestReportPutsTheGravestLast(t *testing.T) {
 		t.Error(err)
 	}
 }
+
+// TestCheckBesideTheRunningServer: a port that the server itself holds is as it should be,
+// over https only with the certificate that these flags mean.
+func TestCheckBesideTheRunningServer(t *testing.T) {
+	own, foreign := t.TempDir(), t.TempDir()
+	tr := transport{TLS: "auto", TLSDir: own, TLSNames: []string{"works.example"}}
+	https := serveWith(t, func(s *settings) {
+		way, err := tr.prepare(s.Addr, "", time.Now)
+		if err != nil {
+			t.Fatal(err)
+		}
+		s.Transport = way
+	})
+	plain := serve(t)
+	if _, err := certs.OpenAuthority(foreign, []string{"works.example"}, time.Now); err != nil {
+		t.Fatal(err)
+	}
+	for name, tc := range map[string]struct {
+		checkCmd
+		want grade
+	}{
+		"plain":                   {checkCmd{Addr: plain.program.listener.Addr().String(), transport: transport{TLS: "off"}}, good},
+		"https":                   {checkCmd{Addr: https.program.listener.Addr().String(), transport: tr}, good},
+		"another authority":       {checkCmd{Addr: https.program.listener.Addr().String(), transport: transport{TLS: "auto", TLSDir: foreign}}, wrong},
+		"plain where it is https": {checkCmd{Addr: https.program.listener.Addr().String(), transport: transport{TLS: "off"}}, wrong},
+	} {
+		if f := tc.checkPort(t.Context()); f.grade != tc.want {
+			t.Errorf("%s: %+v", name, f)
+		}
+	}
+}

@@ -6,7 +6,6 @@ import (
 	"errors"
 	"fmt"
 	"io/fs"
-	"net"
 	"os"
 	"path/filepath"
 	"slices"
@@ -152,19 +151,6 @@ func flush(dir string) (time.Duration, error) {
 	}
 	slices.Sort(took)
 	return took[len(took)/2], nil
-}
-
-func checkPort(addr string) finding {
-	l, err := net.Listen("tcp", addr)
-	if err != nil {
-		do := "Choose another with --addr, or end what listens there; it may be this server."
-		if errors.Is(err, syscall.EACCES) {
-			do = "Ports below 1024 need a right: setcap cap_net_bind_service=+ep, or AmbientCapabilities in the unit."
-		}
-		return finding{wrong, "port", err.Error() + ".", do}
-	}
-	_ = l.Close()
-	return finding{good, "port", addr + " is free.", ""}
 }
 
 // unsynchronised is STA_UNSYNC of adjtimex(2).

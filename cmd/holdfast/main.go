@@ -11,6 +11,7 @@ import (
 	"os"
 	"os/signal"
 	"runtime/debug"
+	"strings"
 	"syscall"
 
 	"github.com/alecthomas/kong"
@@ -51,13 +52,18 @@ func main() {
 	if err == nil || errors.Is(err, context.Canceled) && ctx.Err() != nil {
 		return
 	}
-	fmt.Fprintln(os.Stderr, "holdfast:", err)
+	if !errors.Is(err, errNoCommand) { // the help has said it
+		fmt.Fprintln(os.Stderr, "holdfast:", err)
+	}
 	os.Exit(status(err))
 }
 
+// errNoCommand is a command line that stops before it names what to do.
+var errNoCommand = errors.New("no command is named")
+
 // status is 2 for a command line that cannot be understood and 1 for what went wrong.
 func status(err error) int {
-	if _, ok := errors.AsType[*kong.ParseError](err); ok {
+	if _, ok := errors.AsType[*kong.ParseError](err); ok || errors.Is(err, errNoCommand) {
 		return 2
 	}
 	return 1
@@ -67,17 +73,37 @@ func run(ctx context.Context, args []string) error {
 	var c cli
 	parser, err := kong.New(&c, kong.Name("holdfast"),
 		kong.Description("Live control charting for a plant: samples, limits, run rules, and what to do about a signal."),
-		kong.UsageOnError(), kong.ConfigureHelp(kong.HelpOptions{Compact: true}))
+		kong.ConfigureHelp(kong.HelpOptions{Compact: true}))
 	if err != nil {
 		return err
 	}
 	k, err := parser.Parse(args)
+	if pe, ok := errors.AsType[*kong.ParseError](err); ok && unfinished(pe.Context) {
+		parser.Stdout = os.Stderr
+		if err := pe.Context.PrintUsage(false); err != nil {
+			return err
+		}
+		return errNoCommand
+	}
 	if err != nil {
 		return err
 	}
 	k.BindTo(ctx, (*context.Context)(nil))
 	k.Bind(c.logger())
 	return k.Run()
+}
+
+// unfinished reports whether all that was typed is understood and a command is still to be
+// named: nothing was typed, or a command that only holds others.
+func unfinished(c *kong.Context) bool {
+	if c.Error != nil {
+		return false
+	}
+	node := c.Selected()
+	if node == nil {
+		node = c.Model.Node
+	}
+	return len(node.Children) > 0
 }
 
 func (c *cli) logger() *slog.Logger {
@@ -96,12 +122,18 @@ func version() string {
 	if !ok {
 		return "unknown"
 	}
+	return versionOf(info)
+}
+
+// versionOf names the version and the commit once: the version that a checkout is given
+// ends in the commit already, and says itself that files were changed.
+func versionOf(info *debug.BuildInfo) string {
 	v := info.Main.Version
 	for _, s := range info.Settings {
-		if s.Key == "vcs.revision" && len(s.Value) >= 12 {
+		if s.Key == "vcs.revision" && len(s.Value) >= 12 && !strings.Contains(v, s.Value[:12]) {
 			v += " " + s.Value[:12]
 		}
-		if s.Key == "vcs.modified" && s.Value == "true" {
+		if s.Key == "vcs.modified" && s.Value == "true" && !strings.Contains(v, "+dirty") {
 			v += " (changed)"
 		}
 	}
