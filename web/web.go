@@ -73,6 +73,9 @@ type Config struct {
 	// SetLanguage keeps the language that a person has chosen. Without it every choice
 	// is kept in the browser.
 	SetLanguage func(ctx context.Context, person uuid.UUID, language string) error
+	// SetDeviceLanguage keeps the language that was chosen at an enrolled tablet while
+	// nobody was signed in. Without it that choice is kept by the browser too.
+	SetDeviceLanguage func(ctx context.Context, device uuid.UUID, language string) error
 
 	// Ready reports whether the server can do its work, for /readyz.
 	Ready func(ctx context.Context) error
@@ -132,7 +135,7 @@ func New(c Config) http.Handler {
 		if c.Authority != nil {
 			(&door.Trust{Log: c.Log, Authority: c.Authority}).Routes(r)
 		}
-		r.Post(ui.LanguageAddress, ui.Handle(c.Log, ui.SetLanguage(c.SetLanguage)))
+		r.Post(ui.LanguageAddress, ui.Handle(c.Log, ui.SetLanguage(c.SetLanguage, c.SetDeviceLanguage)))
 		(&door.Handler{Log: c.Log, Checker: c.Checker, Sessions: c.Sessions, Demo: c.DemoPeople, Tablet: c.Tablet, First: c.First}).Routes(r)
 		mount(r, ui.Station, c.Station)
 		mount(r, ui.Board, c.Board)
@@ -181,13 +184,16 @@ func (s *server) frame(next http.Handler) http.Handler {
 func (s *server) visitor(next http.Handler) http.Handler {
 	return http.HandlerFunc(func(w http.ResponseWriter, r *http.Request) {
 		f := ui.FrameOf(r)
+		f.Device, _ = auth.DeviceFrom(r.Context())
+		if set, ok := words.Known(f.Device.Language); ok {
+			f.Words = set
+		}
 		if p, ok := auth.FromContext(r.Context()); ok {
 			f.Person, f.SignedIn, f.Session, f.SessionEnds = p, true, s.Sessions.ID(r.Context()), s.Sessions.Expires(r.Context())
 			if own, ok := words.Known(p.Language); ok {
 				f.Words = own
 			}
 		}
-		f.Device, _ = auth.DeviceFrom(r.Context())
 		f.Revoked = auth.Revoked(r.Context())
 		if f.OnWall() {
 			f.Session = auth.DeviceSession(f.Device.ID)

@@ -219,7 +219,7 @@ func TestWhatOneSeesOfOneself(t *testing.T) {
 	}
 	_, body := v.get("/account")
 	for text, times := range map[string]int{">not by PIN<": 2, ">Operator<": 1, ">Administrator<": 1, ">Engineer<": 1, ">Tablet of an administrator<": 1,
-		">An ordinary browser<": 1, `class="account-here"`: 1, "A tablet signed out of": 0} {
+		">An ordinary browser<": 1, `class="stay-here"`: 1, "A tablet signed out of": 0} {
 		if n := strings.Count(body, text); n != times {
 			t.Errorf("%q stands there %d times, want %d", text, n, times)
 		}

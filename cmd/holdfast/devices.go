@@ -10,6 +10,7 @@ import (
 	"holdfast/internal/auth"
 	"holdfast/internal/demo"
 	"holdfast/internal/plant"
+	"holdfast/internal/store"
 	"holdfast/web/account"
 	"holdfast/web/admin"
 	doorpages "holdfast/web/door"
@@ -44,19 +45,35 @@ func (p *program) staff(hasher *auth.Hasher) *admin.Staff {
 			p.devices.Forget()
 			p.hub.Recheck()
 		},
+		Sessions: sessionEnder{p.sessions, p.store},
 	}
 }
 
 // account is everybody's own page.
 func (p *program) account(door *auth.Door, hasher *auth.Hasher) *account.Surface {
 	return account.New(account.Deps{
-		Store: p.store, Checker: door, Sessions: p.sessions, Log: p.Log,
+		Store: p.store, Checker: door, Sessions: sessionEnder{p.sessions, p.store}, Log: p.Log,
 		Hash: func(ctx context.Context, s auth.Secret) (string, error) { return hasher.Hash(ctx, s) },
 		Changed: func(person uuid.UUID) {
 			p.sessions.Forget(person)
 			p.hub.Recheck()
 		},
 	})
+}
+
+// sessionEnder are the sessions; when one is ended, all servers hear of it.
+type sessionEnder struct {
+	*auth.Sessions
+	store *store.Store
+}
+
+// End ends one session of a person.
+func (e sessionEnder) End(ctx context.Context, person uuid.UUID, id string) error {
+	ended, err := e.Sessions.End(person, id)
+	if ended {
+		e.store.SessionEnded(ctx)
+	}
+	return err
 }
 
 // admissionChanged forgets who and what was let in and asks again about all sockets: it was

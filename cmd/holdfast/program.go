@@ -157,6 +157,10 @@ func (p *program) join(ctx context.Context) error {
 		defer p.sessions.Forget(person)
 		return p.store.SetLanguage(ctx, person, language)
 	}
+	cfg.SetDeviceLanguage = func(ctx context.Context, device plantID, language string) error {
+		defer p.devices.Forget()
+		return p.store.SetDeviceLanguage(ctx, device, language)
+	}
 	if p.Demo && pl.Demo {
 		cfg.DemoPeople = p.store.People
 	}

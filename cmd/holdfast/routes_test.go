@@ -140,6 +140,8 @@ var routeTable = []routeRow{
 	{"POST /admin/people/{person}/secret", managers, 200},
 	{"POST /admin/people/{person}/badge", managers, 303}, // taken away
 	{"POST /admin/people/{person}/erase", managers, 422},
+	{"POST /admin/people/{person}/name", managers, 422},
+	{"POST /admin/people/{person}/end", managers, 303}, // no session is named
 	{"GET /admin/devices", managers, 200},
 	{"POST /admin/devices", managers, 422},
 	{"POST /admin/devices/{device}", managers, 422},
@@ -189,6 +191,7 @@ var routeTable = []routeRow{
 	{"POST /board/handover/read", takers, 404},              // of no line
 
 	{"GET /account/", people, 200},
+	{"POST /account/end", people, 303}, // no session is named
 	{"POST /account/password", people, 422},
 	{"POST /account/pin", people, 422},
 

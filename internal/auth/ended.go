@@ -48,6 +48,8 @@ func (s *Sessions) Ended(ctx context.Context, ids []string) ([]string, error) {
 			return nil, err
 		}
 		if over {
+			// Its page asks at once, and must not be let in by what is remembered.
+			s.stored.known.forget(id)
 			ended = append(ended, id)
 		}
 	}

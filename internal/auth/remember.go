@@ -55,7 +55,7 @@ func (g guardedStore) DeleteCtx(_ context.Context, key string) error { return g.
 
 // sessionCache remembers stored sessions for about a second: a page and its parts ask
 // once. A session that ends here is forgotten at once, one that ends on another server
-// within that second.
+// as soon as that server tells, or within that second.
 type sessionCache struct {
 	now func() time.Time
 
@@ -97,6 +97,13 @@ func (c *sessionCache) forget(key string) {
 	defer c.mu.Unlock()
 	c.writes++
 	delete(c.entries, key)
+}
+
+func (c *sessionCache) forgetAll() {
+	c.mu.Lock()
+	defer c.mu.Unlock()
+	c.writes++
+	clear(c.entries)
 }
 
 // peopleCache remembers people for about a second: a page with its parts and its

@@ -86,6 +86,7 @@ type Sessions struct {
 	opt    SessionOptions
 	scs    *scs.SessionManager
 	people *peopleCache
+	stored guardedStore
 
 	// writes keeps apart the renewal of a session's last use and its end: the
 	// store's write would otherwise bring back what was deleted in between.
@@ -117,7 +118,8 @@ func NewSessions(opt SessionOptions) *Sessions {
 	s.people = &peopleCache{people: opt.People, many: opt.FindPeople, now: opt.Now, entries: make(map[uuid.UUID]cached)}
 
 	m := scs.New()
-	m.Store = guardedStore{s, opt.Store, &sessionCache{now: opt.Now, entries: make(map[string]cachedSession)}}
+	s.stored = guardedStore{s, opt.Store, &sessionCache{now: opt.Now, entries: make(map[string]cachedSession)}}
+	m.Store = s.stored
 	m.Lifetime = opt.Lifetime
 	m.IdleTimeout = 0 // it would write at every request; see touch
 	m.HashTokenInStore = true
@@ -301,5 +303,9 @@ func (s *Sessions) idle(d plant.Device) time.Duration {
 // used, after their roles were changed on this server.
 func (s *Sessions) Forget(person uuid.UUID) { s.people.forget(person) }
 
-// ForgetAll does so for everybody, after somebody was changed elsewhere.
-func (s *Sessions) ForgetAll() { s.people.forgetAll() }
+// ForgetAll does so for everybody, and for the sessions themselves, after somebody was
+// changed or a session ended elsewhere.
+func (s *Sessions) ForgetAll() {
+	s.people.forgetAll()
+	s.stored.known.forgetAll()
+}

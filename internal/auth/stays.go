@@ -14,6 +14,7 @@ import (
 
 // Stay is a place where somebody is signed in.
 type Stay struct {
+	ID     string    // of the session, as Sessions.ID
 	Device uuid.UUID // that it was begun on; Nil is a browser that is no device
 	Begun  time.Time
 	Seen   time.Time // to the minute or so
@@ -54,8 +55,29 @@ func (s *Sessions) Of(ctx context.Context, person uuid.UUID, devices []plant.Dev
 		if over || s.opt.Now().Sub(c.seen) >= s.idle(known[c.device]) {
 			continue
 		}
-		stays = append(stays, Stay{Device: c.device, Begun: c.begun, Seen: c.seen, Here: id == here})
+		stays = append(stays, Stay{ID: id, Device: c.device, Begun: c.begun, Seen: c.seen, Here: id == here})
 	}
 	slices.SortFunc(stays, func(a, b Stay) int { return b.Begun.Compare(a.Begun) })
 	return stays, nil
+}
+
+// End ends one session of a person, by the id that Of gave. That it is over already, or is
+// somebody else's, changes nothing; then it returns false.
+func (s *Sessions) End(person uuid.UUID, id string) (bool, error) {
+	data, there, err := s.opt.Store.Find(id)
+	if err != nil {
+		return false, fmt.Errorf("find a session: %w", err)
+	}
+	if !there {
+		return false, nil
+	}
+	c, err := s.claimOf(id, data)
+	if err != nil || c.person != person {
+		return false, err
+	}
+	if err := s.stored.Delete(id); err != nil {
+		return false, fmt.Errorf("end a session: %w", err)
+	}
+	s.opt.OnEnd(id)
+	return true, nil
 }

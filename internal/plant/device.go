@@ -37,6 +37,7 @@ type Device struct {
 	Station     uuid.UUID     // of a tablet; of a sender that belongs to one place, else Nil
 	Line        uuid.UUID     // of a wall screen; Nil is the whole plant
 	LockAfter   time.Duration // of a tablet: it locks after so long without a touch
+	Language    string        // of a tablet: what it speaks to whoever has no language of their own; "" leaves it to its browser
 	EnrolledAt  time.Time
 	EnrolledBy  uuid.UUID
 	LastContact time.Time // to the minute or so
@@ -102,9 +103,9 @@ func (d Device) Clean() (Device, error) {
 			return d, Invalidf("lock", "A tablet locks after 1 to 240 minutes.")
 		}
 	case Wall:
-		d.Station, d.LockAfter = uuid.Nil, 0
+		d.Station, d.LockAfter, d.Language = uuid.Nil, 0, ""
 	case Sender:
-		d.Line, d.LockAfter = uuid.Nil, 0
+		d.Line, d.LockAfter, d.Language = uuid.Nil, 0, ""
 	}
 	return d, nil
 }

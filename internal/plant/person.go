@@ -145,3 +145,9 @@ func CleanRoles(rs Roles) (Roles, error) {
 	}
 	return out, nil
 }
+
+// FormerName is a name under which somebody was printed before.
+type FormerName struct {
+	Name  string
+	Until time.Time
+}

@@ -15,13 +15,13 @@ import (
 	"holdfast/internal/plant/ledger"
 )
 
-const selectDevice = `select id, kind, name, station_id, line_id, lock_minutes, enrolled_at, enrolled_by, last_contact, revoked_at from device`
+const selectDevice = `select id, kind, name, station_id, line_id, lock_minutes, language, enrolled_at, enrolled_by, last_contact, revoked_at from device`
 
 func scanDevice(r pgx.CollectableRow) (d plant.Device, err error) {
 	var station, line, by *uuid.UUID
 	var lock int
 	var contact, revoked *time.Time
-	err = r.Scan(&d.ID, &d.Kind, &d.Name, &station, &line, &lock, &d.EnrolledAt, &by, &contact, &revoked)
+	err = r.Scan(&d.ID, &d.Kind, &d.Name, &station, &line, &lock, &d.Language, &d.EnrolledAt, &by, &contact, &revoked)
 	d.Station, d.Line, d.EnrolledBy = orNil(station), orNil(line), orNil(by)
 	d.LockAfter = time.Duration(lock) * time.Minute
 	d.LastContact, d.RevokedAt = orZero(contact), orZero(revoked)
@@ -199,7 +199,8 @@ func deviceBody(d plant.Device, step string, at time.Time, by uuid.UUID) ledger.
 		Station: ledger.ID(d.Station), Line: ledger.ID(d.Line), LockMinutes: lockMinutes(d)}
 }
 
-// ChangeDevice gives a device another name, place or lock. Its kind stays.
+// ChangeDevice gives a device another name, place, lock or language. Its kind stays. The
+// language is a preference and is not entered in the ledger.
 func (s *Store) ChangeDevice(ctx context.Context, d plant.Device, by uuid.UUID) error {
 	err := s.inTx(ctx, func(tx pgx.Tx) error {
 		if err := tx.QueryRow(ctx, `select kind from device where id = $1 and plant_id = $2 and revoked_at is null for update`,
@@ -213,8 +214,8 @@ func (s *Store) ChangeDevice(ctx context.Context, d plant.Device, by uuid.UUID) 
 		if err := s.deviceNameFree(ctx, tx, d.Name, d.ID); err != nil {
 			return err
 		}
-		if _, err := tx.Exec(ctx, `update device set name = $2, station_id = $3, line_id = $4, lock_minutes = $5 where id = $1`,
-			d.ID, d.Name, orNull(d.Station), orNull(d.Line), lockMinutes(d)); err != nil {
+		if _, err := tx.Exec(ctx, `update device set name = $2, station_id = $3, line_id = $4, lock_minutes = $5, language = $6 where id = $1`,
+			d.ID, d.Name, orNull(d.Station), orNull(d.Line), lockMinutes(d), d.Language); err != nil {
 			if violates(err, "device_name_once") {
 				return deviceNameTaken(err)
 			}
@@ -224,6 +225,19 @@ func (s *Store) ChangeDevice(ctx context.Context, d plant.Device, by uuid.UUID) 
 	})
 	if err != nil {
 		return fmt.Errorf("change a device: %w", err)
+	}
+	s.admissionChanged(ctx)
+	return nil
+}
+
+// SetDeviceLanguage keeps in which language a tablet speaks, chosen at the tablet itself.
+func (s *Store) SetDeviceLanguage(ctx context.Context, id uuid.UUID, language string) error {
+	tag, err := s.pool.Exec(ctx, `update device set language = $2 where id = $1 and plant_id = $3 and revoked_at is null`, id, language, s.plant())
+	if err != nil {
+		return fmt.Errorf("set the language of a device: %w", err)
+	}
+	if tag.RowsAffected() == 0 {
+		return plant.NotFoundf("", "There is no such device.")
 	}
 	s.admissionChanged(ctx)
 	return nil

@@ -2,8 +2,6 @@ package store
 
 import (
 	"context"
-	"crypto/sha256"
-	"encoding/hex"
 	"fmt"
 	"time"
 
@@ -121,6 +119,5 @@ func (s *Store) signature(ctx context.Context, q querier, person uuid.UUID, mean
 	if err != nil {
 		return nil, fmt.Errorf("read signer: %w", missing(err, "There is no such person."))
 	}
-	sum := sha256.Sum256(append(salt, name...))
-	return &ledger.Signature{Person: person, NameHash: hex.EncodeToString(sum[:]), At: ledger.Time(s.now()), Meaning: meaning}, nil
+	return &ledger.Signature{Person: person, NameHash: nameHash(salt, name), At: ledger.Time(s.now()), Meaning: meaning}, nil
 }

@@ -31,6 +31,10 @@ func (s *Store) FindSessions(ctx context.Context, keys []string) (map[string][]b
 	return out, nil
 }
 
+// SessionEnded tells every server that somebody's session was ended by another than its own
+// browser.
+func (s *Store) SessionEnded(ctx context.Context) { s.admissionChanged(ctx) }
+
 // DeleteExpiredSessions clears away what has expired.
 func (s *Store) DeleteExpiredSessions(ctx context.Context) error {
 	if _, err := s.pool.Exec(ctx, `delete from sessions where expiry < current_timestamp`); err != nil {

@@ -167,7 +167,7 @@ func (s *Store) SetRoles(ctx context.Context, id uuid.UUID, roles plant.Roles, b
 		`update person set roles = $3 where id = $1 and plant_id = $2 and erased_at is null`, texts)
 }
 
-// EraseName takes the name of a person out of the plant for good, with the salt under
+// EraseName takes the names of a person out of the plant for good, with the salt under
 // which signatures are bound to it, their login, badge and secrets. What they entered
 // stays on record under their id, which is shown shortened in place of the name. They
 // must have been kept out before.
@@ -188,6 +188,9 @@ func (s *Store) EraseName(ctx context.Context, id, by uuid.UUID) error {
 		short := strings.ToUpper(id.String()[len(id.String())-6:])
 		if _, err := tx.Exec(ctx, `update person set name = $2, login = $3, name_salt = '', secret = '', badge = null, pin = '', erased_at = $4
 			where id = $1`, id, "Person "+short, "erased-"+id.String(), now); err != nil {
+			return err
+		}
+		if _, err := tx.Exec(ctx, `delete from person_name where person_id = $1`, id); err != nil {
 			return err
 		}
 		return s.appendPlantChain(ctx, tx, ledger.Arrangement{What: "name erased", Subject: id, At: ledger.Time(now), Person: ledger.ID(by)})

@@ -1,7 +1,7 @@
 package store
 
 // sealedPeople compares people and devices with what was sealed about them. Names of
-// people are not sealed, so that they can be erased.
+// people are not sealed, so that they can be erased; where one was mended, hashes are.
 var sealedPeople = []string{
 	`with e as (select seq, convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'arrangement'),
 	roles as (select distinct on (b->>'subject') b->>'subject' as subject, b->'content'->'roles' as v from e
@@ -12,6 +12,15 @@ var sealedPeople = []string{
 	select p.id, format('person %s may do or be something else than was sealed', p.id) from person p
 	left join roles r on r.subject = p.id::text left join active a on a.subject = p.id::text left join erased x on x.subject = p.id::text
 	where r.v is distinct from to_jsonb(p.roles) or coalesce(a.v, true) <> p.active or x.v is distinct from p.erased_at`,
+	// A name that was mended is bound from then on, and so is the one before it.
+	`with e as (select seq, b->>'subject' as subject, b->'content' as c from
+		(select seq, convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'arrangement') l where b->>'what' = 'name changed'),
+	latest as (select distinct on (subject) subject, c->>'name_hash' as v from e order by subject, seq desc)
+	select p.id, format('person %s is not named as was sealed', p.id) from person p left join latest l on l.subject = p.id::text
+	where p.erased_at is null and (l.v <> encode(sha256(p.name_salt || convert_to(p.name, 'UTF8')), 'hex')
+		or exists (select from e where e.subject = p.id::text and not exists (select from person_name n
+			where n.person_id = p.id and encode(sha256(p.name_salt || convert_to(n.name, 'UTF8')), 'hex') = e.c->>'was_hash'))
+		or (select count(*) from e where e.subject = p.id::text) <> (select count(*) from person_name n where n.person_id = p.id))`,
 	// A badge that nobody sealed, and sessions that were to be over and are not. Until the
 	// instant was sealed too there is only the act to go by.
 	`with e as (select seq, convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'arrangement'),

@@ -30,10 +30,10 @@ type Checker interface {
 	CheckPIN(ctx context.Context, badge string, pin auth.Secret) (plant.Person, error)
 }
 
-// Sessions knows where somebody is signed in, and lets the session of a request go on under
-// a new token.
+// Sessions knows where somebody is signed in, ends one of these sessions, and lets the
+// session of a request go on under a new token.
 type Sessions interface {
-	Of(ctx context.Context, person uuid.UUID, devices []plant.Device) ([]auth.Stay, error)
+	ui.Stays
 	Renew(ctx context.Context) error
 }
 
@@ -59,6 +59,7 @@ func (s *Surface) Routes(r chi.Router) {
 	r.Get("/", ui.Handle(s.Log, s.show))
 	r.Post("/password", ui.Handle(s.Log, s.changePassword))
 	r.Post("/pin", ui.Handle(s.Log, s.changePIN))
+	r.Post("/end", ui.Handle(s.Log, s.end))
 }
 
 func (s *Surface) show(w http.ResponseWriter, r *http.Request) error {
@@ -69,6 +70,8 @@ func (s *Surface) show(w http.ResponseWriter, r *http.Request) error {
 		v.Done = t.T("account.done-password")
 	case "pin":
 		v.Done = t.T("account.done-pin")
+	case "end":
+		v.Done = t.T("account.done-end")
 	}
 	p, err := s.Store.Person(r.Context(), ui.FrameOf(r).Person.ID)
 	if err != nil {
@@ -85,5 +88,17 @@ func (s *Surface) done(w http.ResponseWriter, r *http.Request, person uuid.UUID,
 		return err
 	}
 	ui.Redirect(w, r, ui.AccountAddress+"?"+url.Values{"done": {what}, "to": {back}}.Encode())
+	return nil
+}
+
+// end ends one session of whoever asks.
+func (s *Surface) end(w http.ResponseWriter, r *http.Request) error {
+	if err := ui.ParseForm(w, r); err != nil {
+		return err
+	}
+	if err := s.Sessions.End(r.Context(), ui.FrameOf(r).Person.ID, r.PostForm.Get("session")); err != nil {
+		return err
+	}
+	ui.Redirect(w, r, ui.AccountAddress+"?"+url.Values{"done": {"end"}, "to": {ui.LocalPath(r.PostForm.Get("to"))}}.Encode())
 	return nil
 }

@@ -3,8 +3,6 @@ package account
 import (
 	"net/http"
 
-	"github.com/google/uuid"
-
 	"holdfast/internal/auth"
 	"holdfast/internal/plant"
 	"holdfast/web/ui"
@@ -18,7 +16,7 @@ type view struct {
 	Less               bool // and there is more that it does not open
 	HasSecret, HasPIN  bool
 	Password, PIN      block
-	Stays              []stayView
+	Stays              []ui.StayView
 	Done               string
 	Back               string
 }
@@ -33,12 +31,6 @@ func (b block) any() bool { return b.OldProblem+b.NewProblem+b.AgainProblem+b.Pr
 type roleView struct {
 	Name, Does string
 	Shut       bool // not opened by the PIN of this session
-}
-
-// stayView is one place where this person is signed in.
-type stayView struct {
-	Where, Since, Used string
-	Here               bool
 }
 
 func (s *Surface) render(w http.ResponseWriter, r *http.Request, status int, p plant.Person, v view) error {
@@ -62,16 +54,8 @@ func (s *Surface) render(w http.ResponseWriter, r *http.Request, status int, p p
 	if err != nil {
 		return err
 	}
-	stays, err := s.Sessions.Of(r.Context(), p.ID, devices)
-	if err != nil {
+	if v.Stays, err = ui.StaysOf(r.Context(), s.Sessions, shell, p.ID, devices); err != nil {
 		return err
-	}
-	names := map[uuid.UUID]string{uuid.Nil: t.T("account.a-browser")}
-	for _, d := range devices {
-		names[d.ID] = d.Name
-	}
-	for _, one := range stays {
-		v.Stays = append(v.Stays, stayView{Where: names[one.Device], Since: shell.Format.Clock(one.Begun), Used: shell.Format.Clock(one.Seen), Here: one.Here})
 	}
 	return ui.Render(w, r, status, page(shell, v))
 }

@@ -10,19 +10,21 @@ import (
 
 	"holdfast/internal/plant"
 	"holdfast/web/ui"
+	"holdfast/web/words"
 )
 
 // devicesView is the page of tablets, wall screens and senders.
 type devicesView struct {
-	Codes    []codeView
-	Devices  []deviceView
-	Revoked  []deviceView
-	New      newDevice
-	Lines    []placeView
-	Stations []placeView
-	EnrolAt  string
-	Trust    string // page of the server's own authority; "" where it has none
-	Done     string
+	Codes     []codeView
+	Devices   []deviceView
+	Revoked   []deviceView
+	New       newDevice
+	Lines     []placeView
+	Stations  []placeView
+	EnrolAt   string
+	Languages []ui.Language // that a tablet can speak
+	Trust     string        // page of the server's own authority; "" where it has none
+	Done      string
 }
 
 type codeView struct {
@@ -33,7 +35,7 @@ type codeView struct {
 type deviceView struct {
 	ID, Name, Kind, Where, Contact, Revoked string
 	IsTablet, IsWall                        bool
-	Lock                                    string
+	Lock, Language                          string
 	Place                                   string // id of its station or line
 	Problem                                 string
 }
@@ -68,7 +70,7 @@ func (a *Admin) showDevices(w http.ResponseWriter, r *http.Request, status int, 
 	}
 	s := staffShell(r, "staff.devices")
 	t := s.Words
-	v := devicesView{New: add, EnrolAt: r.Host + "/enrol", Trust: a.staff.AuthorityAt}
+	v := devicesView{New: add, EnrolAt: r.Host + "/enrol", Trust: a.staff.AuthorityAt, Languages: ui.Languages()}
 	names := map[uuid.UUID]string{}
 	for _, l := range lines {
 		names[l.ID] = l.Name
@@ -91,7 +93,7 @@ func (a *Admin) showDevices(w http.ResponseWriter, r *http.Request, status int, 
 	}
 	for _, d := range all {
 		one := deviceView{ID: d.ID.String(), Name: d.Name, Kind: t.T("staff.kind." + string(d.Kind)),
-			IsTablet: d.Kind == plant.Tablet, IsWall: d.Kind == plant.Wall, Lock: minutes(d.LockAfter), Contact: s.Format.Clock(d.LastContact)}
+			IsTablet: d.Kind == plant.Tablet, IsWall: d.Kind == plant.Wall, Lock: minutes(d.LockAfter), Language: d.Language, Contact: s.Format.Clock(d.LastContact)}
 		switch {
 		case d.Station != uuid.Nil:
 			one.Where, one.Place = names[d.Station], d.Station.String()
@@ -172,7 +174,10 @@ func (a *Admin) changeDevice(w http.ResponseWriter, r *http.Request) error {
 		return err
 	}
 	d := posted(r)
-	d.ID = id
+	d.ID, d.Language = id, r.PostForm.Get("language")
+	if _, known := words.Known(d.Language); d.Language != "" && !known {
+		return a.deviceDone(w, r, id, plant.Invalidf("language", "There is no such language here. Pick one from the list."))
+	}
 	return a.deviceDone(w, r, id, a.staff.Store.ChangeDevice(r.Context(), d, ui.FrameOf(r).Person.ID))
 }
 

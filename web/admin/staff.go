@@ -21,6 +21,8 @@ type Staff struct {
 	Changed func(person uuid.UUID)
 	// DeviceChanged is told of a device that was changed or revoked here.
 	DeviceChanged func(device uuid.UUID)
+	// Sessions knows where people are signed in.
+	Sessions ui.Stays
 	// AuthorityAt is the page of the server's own authority, "" where it has none.
 	AuthorityAt string
 }
@@ -34,6 +36,8 @@ type StaffStore interface {
 	SetActive(ctx context.Context, id uuid.UUID, active bool, by uuid.UUID) error
 	SetSecret(ctx context.Context, id uuid.UUID, secretHash string, by uuid.UUID) error
 	SetBadge(ctx context.Context, id uuid.UUID, badge, pinHash string, by uuid.UUID) error
+	RenamePerson(ctx context.Context, id uuid.UUID, name string, by uuid.UUID) error
+	FormerNames(ctx context.Context, id uuid.UUID) ([]plant.FormerName, error)
 	EraseName(ctx context.Context, id, by uuid.UUID) error
 
 	Places(ctx context.Context) ([]plant.Line, []plant.Station, error)
@@ -71,6 +75,8 @@ func (a *Admin) staffRoutes(r chi.Router) {
 	post("/people/{person}/secret", a.changeSecret)
 	post("/people/{person}/badge", a.changeBadge)
 	post("/people/{person}/erase", a.erase)
+	post("/people/{person}/name", a.rename)
+	post("/people/{person}/end", a.endSession)
 	r.Get("/devices", ui.Handle(a.log, a.devices))
 	post("/devices", a.makeCode)
 	post("/devices/{device}", a.changeDevice)
@@ -119,6 +125,9 @@ type personView struct {
 	PINProblem            string
 	Made                  *madeView
 	Done                  string
+	NewName, NameProblem  string
+	Former                []string
+	Stays                 []ui.StayView
 }
 
 func rolesOf(r *http.Request, chosen plant.Roles) []roleView {
@@ -282,16 +291,31 @@ func (a *Admin) person(w http.ResponseWriter, r *http.Request) error {
 	if done := r.URL.Query().Get("done"); ui.FrameOf(r).Words.Has("staff.done." + done) {
 		v.Done = ui.FrameOf(r).Words.T("staff.done." + done)
 	}
-	return showPerson(w, r, http.StatusOK, v)
+	return a.showPerson(w, r, p.ID, http.StatusOK, v)
 }
 
 func newPerson(r *http.Request, p plant.Person) personView {
-	return personView{Address: peopleAddress + "/" + p.ID.String(), Name: p.Name, Login: p.Login, Roles: rolesOf(r, p.Roles),
+	return personView{Address: peopleAddress + "/" + p.ID.String(), Name: p.Name, NewName: p.Name, Login: p.Login, Roles: rolesOf(r, p.Roles),
 		Active: p.Active, Erased: !p.ErasedAt.IsZero(), Self: p.ID == ui.FrameOf(r).Person.ID, HasSecret: p.HasSecret, HasPIN: p.HasPIN, Badge: p.Badge}
 }
 
-func showPerson(w http.ResponseWriter, r *http.Request, status int, v personView) error {
-	return ui.Render(w, r, status, personPage(staffShell(r, "staff.people"), v))
+func (a *Admin) showPerson(w http.ResponseWriter, r *http.Request, id uuid.UUID, status int, v personView) error {
+	s := staffShell(r, "staff.people")
+	former, err := a.staff.Store.FormerNames(r.Context(), id)
+	if err != nil {
+		return err
+	}
+	for _, n := range former {
+		v.Former = append(v.Former, s.Words.T("staff.former-name", n.Name, s.Format.Clock(n.Until)))
+	}
+	devices, err := a.staff.Store.Devices(r.Context())
+	if err != nil {
+		return err
+	}
+	if v.Stays, err = ui.StaysOf(r.Context(), a.staff.Sessions, s, id, devices); err != nil {
+		return err
+	}
+	return ui.Render(w, r, status, personPage(s, v))
 }
 
 // personChanged answers a change of a person: on to their page, or back with what is wrong.
@@ -300,13 +324,42 @@ func (a *Admin) personChanged(w http.ResponseWriter, r *http.Request, p plant.Pe
 	if pe, ok := errors.AsType[*plant.Error](err); ok && pe.Kind != plant.NotFound {
 		v := newPerson(r, p)
 		v.Problem = ui.FrameOf(r).Words.Problem(pe)
-		return showPerson(w, r, ui.StatusOf(pe.Kind), v)
+		return a.showPerson(w, r, p.ID, ui.StatusOf(pe.Kind), v)
 	}
 	if err != nil {
 		return err
 	}
 	ui.Redirect(w, r, peopleAddress+"/"+p.ID.String()+"?done="+done)
 	return nil
+}
+
+// rename mends a printed name.
+func (a *Admin) rename(w http.ResponseWriter, r *http.Request) error {
+	p, err := a.personIn(r)
+	if err != nil {
+		return err
+	}
+	f := ui.FrameOf(r)
+	v := newPerson(r, p)
+	if v.NewName = plant.CleanText(r.PostForm.Get("name")); v.NewName == "" {
+		v.NameProblem = f.Words.T("devices.first-no-name")
+		return a.showPerson(w, r, p.ID, http.StatusUnprocessableEntity, v)
+	}
+	err = a.staff.Store.RenamePerson(r.Context(), p.ID, v.NewName, f.Person.ID)
+	if pe, ok := errors.AsType[*plant.Error](err); ok && pe.Field == "name" {
+		v.NameProblem = f.Words.Problem(pe)
+		return a.showPerson(w, r, p.ID, ui.StatusOf(pe.Kind), v)
+	}
+	return a.personChanged(w, r, p, "name", err)
+}
+
+// endSession ends one session of a person.
+func (a *Admin) endSession(w http.ResponseWriter, r *http.Request) error {
+	p, err := a.personIn(r)
+	if err != nil {
+		return err
+	}
+	return a.personChanged(w, r, p, "end", a.staff.Sessions.End(r.Context(), p.ID, r.PostForm.Get("session")))
 }
 
 func (a *Admin) changeRoles(w http.ResponseWriter, r *http.Request) error {
@@ -337,7 +390,7 @@ func (a *Admin) erase(w http.ResponseWriter, r *http.Request) error {
 	if r.PostForm.Get("sure") != "yes" {
 		v := newPerson(r, p)
 		v.Problem = ui.FrameOf(r).Words.T("staff.erase-tick")
-		return showPerson(w, r, http.StatusUnprocessableEntity, v)
+		return a.showPerson(w, r, p.ID, http.StatusUnprocessableEntity, v)
 	}
 	return a.personChanged(w, r, p, "erased", a.staff.Store.EraseName(r.Context(), p.ID, ui.FrameOf(r).Person.ID))
 }
@@ -359,7 +412,7 @@ func (a *Admin) changeSecret(w http.ResponseWriter, r *http.Request) error {
 	p.HasSecret = true
 	v := newPerson(r, p)
 	v.Made = &madeView{Name: p.Name, Login: p.Login, Secret: string(secret)}
-	return showPerson(w, r, http.StatusOK, v)
+	return a.showPerson(w, r, p.ID, http.StatusOK, v)
 }
 
 // changeBadge gives a badge with a PIN that was typed here, or one that is made and told
@@ -387,12 +440,12 @@ func (a *Admin) changeBadge(w http.ResponseWriter, r *http.Request) error {
 		}
 	}
 	if v.PINProblem != "" {
-		return showPerson(w, r, http.StatusUnprocessableEntity, v)
+		return a.showPerson(w, r, p.ID, http.StatusUnprocessableEntity, v)
 	}
 	err = a.setBadge(r, p.ID, badge, pin)
 	if pe, ok := errors.AsType[*plant.Error](err); ok && pe.Field == "badge" {
 		v.BadgeProblem = t.Problem(pe)
-		return showPerson(w, r, ui.StatusOf(pe.Kind), v)
+		return a.showPerson(w, r, p.ID, ui.StatusOf(pe.Kind), v)
 	}
 	if err != nil {
 		return err
@@ -402,5 +455,5 @@ func (a *Admin) changeBadge(w http.ResponseWriter, r *http.Request) error {
 		return nil
 	}
 	v.HasPIN, v.Made = true, made
-	return showPerson(w, r, http.StatusOK, v)
+	return a.showPerson(w, r, p.ID, http.StatusOK, v)
 }

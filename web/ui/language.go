@@ -23,9 +23,10 @@ func Speak(s Surface) func(http.Handler) http.Handler {
 }
 
 // SetLanguage answers the switch. Whoever is signed in chooses for themselves, and keep
-// stores it; nobody chooses for the device, in its browser. A nil keep leaves every
-// choice to the browser.
-func SetLanguage(keep func(ctx context.Context, person uuid.UUID, language string) error) func(w http.ResponseWriter, r *http.Request) error {
+// stores it; nobody chooses for the device: an enrolled tablet's choice is stored by
+// keepDevice, where the administrator sets it too, any other's in its browser. What is nil
+// leaves its choice to the browser.
+func SetLanguage(keep, keepDevice func(ctx context.Context, of uuid.UUID, language string) error) func(w http.ResponseWriter, r *http.Request) error {
 	return func(w http.ResponseWriter, r *http.Request) error {
 		if err := ParseForm(w, r); err != nil {
 			return err
@@ -35,11 +36,16 @@ func SetLanguage(keep func(ctx context.Context, person uuid.UUID, language strin
 		if _, known := words.Known(lang); !known {
 			return plant.Invalidf("language", "There is no such language here. Pick one from the list.")
 		}
-		if f.SignedIn && keep != nil {
+		switch {
+		case f.SignedIn && keep != nil:
 			if err := keep(r.Context(), f.Person.ID, lang); err != nil {
 				return err
 			}
-		} else {
+		case !f.SignedIn && f.OnTablet() && keepDevice != nil:
+			if err := keepDevice(r.Context(), f.Device.ID, lang); err != nil {
+				return err
+			}
+		default:
 			http.SetCookie(w, &http.Cookie{Name: words.Cookie, Value: lang, Path: "/", MaxAge: aYear,
 				HttpOnly: true, Secure: f.Secure, SameSite: http.SameSiteLaxMode})
 		}
@@ -48,17 +54,14 @@ func SetLanguage(keep func(ctx context.Context, person uuid.UUID, language strin
 	}
 }
 
-// languageView is one language of the switch, named in itself.
-type languageView struct {
-	Lang    string
-	Name    string
-	Current bool
-}
+// Language is one language, named in itself.
+type Language struct{ Lang, Name string }
 
-func languages(s Shell) []languageView {
-	var all []languageView
+// Languages are those that there are.
+func Languages() []Language {
+	var all []Language
 	for _, lang := range words.Languages() {
-		all = append(all, languageView{lang, words.For(lang).T("ui.language"), lang == s.Words.Lang()})
+		all = append(all, Language{lang, words.For(lang).T("ui.language")})
 	}
 	return all
 }

@@ -1,0 +1,2 @@
+drop table person_name;
+alter table device drop column language;
