@@ -3,6 +3,7 @@ package main
 import (
 	"context"
 	"encoding/json"
+	"io"
 	"net/http"
 	"net/url"
 	"strings"
@@ -138,5 +139,48 @@ func TestSomebodyNewHasNoRoleYet(t *testing.T) {
 	}
 	if _, body := v.get("/admin/messages"); strings.Contains(body, "Every message was delivered") || !strings.Contains(body, "No target is set") {
 		t.Error("with no target the page says that messages were delivered")
+	}
+}
+
+// TestACodeCanBeScanned at the address that devices reach the server by, and stands in the
+// field then; where only the machine itself reaches the server, that is said.
+func TestACodeCanBeScanned(t *testing.T) {
+	t.Parallel()
+	r := serve(t)
+	code, err := r.MakeDeviceCode(t.Context(), plant.Device{Kind: plant.Wall, Name: "Wall 1"}, r.Administrator.ID)
+	if err != nil {
+		t.Fatal(err)
+	}
+	v := r.visit(t, "administrator1")
+	page := func(host string) string {
+		req, err := http.NewRequest(http.MethodGet, v.base+"/admin/devices", nil)
+		if err != nil {
+			t.Fatal(err)
+		}
+		for _, c := range v.http.Jar.Cookies(req.URL) {
+			req.AddCookie(c)
+		}
+		req.Host = host
+		res, err := http.DefaultTransport.RoundTrip(req)
+		if err != nil {
+			t.Fatal(err)
+		}
+		defer res.Body.Close()
+		body, err := io.ReadAll(res.Body)
+		if err != nil {
+			t.Fatal(err)
+		}
+		return string(body)
+	}
+	if body := page("10.20.30.40:8443"); !strings.Contains(body, `data-testid="qr"`) || !strings.Contains(body, "http://10.20.30.40:8443/enrol in the browser") || strings.Contains(body, "only-here") {
+		t.Error("at an address for others:", body)
+	}
+	for _, host := range []string{"localhost:8080", "127.0.0.1:8080", "[::1]:8080"} {
+		if body := page(host); strings.Contains(body, `data-testid="qr"`) || !strings.Contains(body, `data-testid="only-here"`) {
+			t.Errorf("at %s, which leads nowhere else", host)
+		}
+	}
+	if _, body := r.visit(t, "").get("/enrol?code=" + code.Code); !strings.Contains(body, `value="`+code.Code+`"`) {
+		t.Error("the code that was scanned does not stand in the field")
 	}
 }

@@ -35,7 +35,7 @@ func (p *program) staff(hasher *auth.Hasher) *admin.Staff {
 		authority = doorpages.AuthorityAddress
 	}
 	return &admin.Staff{
-		Store: p.store, AuthorityAt: authority,
+		Store: p.store, AuthorityAt: authority, Outside: p.otherMachines,
 		Hash: func(ctx context.Context, s auth.Secret) (string, error) { return hasher.Hash(ctx, s) },
 		Changed: func(person uuid.UUID) {
 			p.sessions.Forget(person)

@@ -12,6 +12,9 @@ import (
 	"testing"
 	"time"
 
+	"github.com/chromedp/cdproto/cdp"
+	"github.com/chromedp/cdproto/emulation"
+	"github.com/chromedp/chromedp"
 	"github.com/google/uuid"
 
 	"holdfast/internal/auth"
@@ -82,11 +85,21 @@ func TestFromNothingToAJudgedRound(t *testing.T) {
 	p := j.p
 	p.WaitFor(`location.pathname === "/admin"`)
 	p.Accessible("overview of an empty plant")
+	p.Do(func(ctx context.Context, window *chromedp.Target) (none chromedp.Void, err error) {
+		_, err = cdp.Call(ctx, window, emulation.SetTimezoneOverride, emulation.SetTimezoneOverrideParams{TimezoneID: "Europe/London"})
+		return none, err
+	})
 	j.on(`[data-testid=begin] a`, `[data-testid=step-plant]`)
 	p.Accessible("first step")
 	p.FitsWidth("first step", 320, 1280)
 	j.fill("plant", "Kestrel Row")
-	j.fill("zone", "Europe/London")
+	// The browser's own zone is there already, with the time there; a zone that is none has none.
+	const zone, there = `document.querySelector("[name=zone]").value`, `document.querySelector("[data-testid=zone-now]").textContent`
+	p.WaitFor(zone + ` === "Europe/London" && /^There it is \d\d:\d\d now, \w+day\.$/.test(` + there + `)`)
+	p.Fill(`[name="zone"]`, "Europe/Londn")
+	p.WaitFor(there + ` === ""`)
+	p.Fill(`[name="zone"]`, "Europe/London")
+	p.WaitFor(there + ` !== ""`)
 	const next = `[data-testid=step] button[type=submit]`
 	j.on(next, `[data-testid=step-engineer]`)
 	j.on(next, `[data-testid=step-floor]`) // "I do" is chosen
@@ -119,6 +132,13 @@ func TestFromNothingToAJudgedRound(t *testing.T) {
 	}
 	j.on(next, `[data-testid=step-round]`)
 	p.Accessible("the first round")
+	p.Click(`[data-testid=tablet-code] button`)
+	p.WaitFor(`location.pathname === "/admin/start" && ` + find(`[data-testid=digits]`))
+	p.Want("said where only this machine reaches the server", `document.querySelectorAll("[data-testid=only-here]").length`, "1")
+	p.Accessible("a code for the first tablet")
+	p.FitsWidth("a code for the first tablet", 320, 1280)
+	p.Click(`[data-testid=code] button`) // withdrawn
+	p.WaitFor(`location.pathname === "/admin/start" && ` + find(`[data-testid=tablet-code]`))
 
 	j.on(`[data-testid=sign-out] button`, `#login`)
 	p.Value(`document.querySelector("#login").focus()`)

@@ -136,12 +136,19 @@ func loopback(addr string) bool {
 
 // fromOutside is the address for people: with the name that the certificate is for.
 func (p *program) fromOutside() string {
-	if p.Transport.leaf != nil {
-		if at := outside(p.listener.Addr().String(), p.Transport.leaf()); at != "" {
-			return at
-		}
+	if at := p.otherMachines(); at != "" {
+		return at
 	}
 	return p.URL()
+}
+
+// otherMachines is the address at which other machines reach the server, "" when it is not
+// known or none does.
+func (p *program) otherMachines() string {
+	if p.Transport.leaf == nil {
+		return ""
+	}
+	return outside(p.listener.Addr().String(), p.Transport.leaf())
 }
 
 // outside is the address under the first name of a certificate that leads to a server

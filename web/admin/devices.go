@@ -2,8 +2,11 @@ package admin
 
 import (
 	"errors"
+	"net"
 	"net/http"
+	"net/netip"
 	"strconv"
+	"strings"
 	"time"
 
 	"github.com/google/uuid"
@@ -29,7 +32,11 @@ type devicesView struct {
 
 type codeView struct {
 	ID, Code, Name, Kind, Until string
+	At                          string // the address at which it is typed
 	Curl                        string // what fetches the token of a sender, "" for what has a browser
+	QR                          qrView // of that address with the code
+	OnlyHere                    bool   // no other machine reaches the server
+	Trust, TrustPage            string // of the server's own authority, in full and from here; "" where it has none
 }
 
 type deviceView struct {
@@ -70,7 +77,7 @@ func (a *Admin) showDevices(w http.ResponseWriter, r *http.Request, status int, 
 	}
 	s := staffShell(r, "staff.devices")
 	t := s.Words
-	v := devicesView{New: add, EnrolAt: r.Host + "/enrol", Trust: a.staff.AuthorityAt, Languages: ui.Languages()}
+	v := devicesView{New: add, Languages: ui.Languages()}
 	names := map[uuid.UUID]string{}
 	for _, l := range lines {
 		names[l.ID] = l.Name
@@ -81,12 +88,7 @@ func (a *Admin) showDevices(w http.ResponseWriter, r *http.Request, status int, 
 		v.Stations = append(v.Stations, placeView{st.ID.String(), t.T("staff.station-of", st.Name, names[st.LineID])})
 	}
 	for _, c := range codes {
-		one := codeView{ID: c.ID.String(), Code: c.Code[:4] + " " + c.Code[4:], Name: c.Device.Name,
-			Kind: t.T("staff.kind." + string(c.Device.Kind)), Until: s.Format.Time(c.ExpiresAt)}
-		if c.Device.Kind == plant.Sender {
-			one.Curl = enrolByCurl(v.EnrolAt, c.Code, ui.FrameOf(r).Secure, v.Trust != "")
-		}
-		v.Codes = append(v.Codes, one)
+		v.Codes = append(v.Codes, a.codeOf(r, s, c))
 	}
 	if len(v.Codes) > 0 {
 		s.Scripts = []string{"js/admin-codes.js"} // the list shows by itself that a device came in
@@ -115,16 +117,52 @@ func (a *Admin) showDevices(w http.ResponseWriter, r *http.Request, status int, 
 	return ui.Render(w, r, status, devicesPage(s, v))
 }
 
-// enrolByCurl is the line that lets a sender in, which has no browser.
-func enrolByCurl(at, code string, secure, ownAuthority bool) string {
-	scheme, trust := "http://", ""
-	if secure {
+// codeOf is a code that waits, with how it is used.
+func (a *Admin) codeOf(r *http.Request, s ui.Shell, c plant.DeviceCode) codeView {
+	base, onlyHere := a.reachedAt(r)
+	one := codeView{ID: c.ID.String(), Code: c.Code[:4] + " " + c.Code[4:], Name: c.Device.Name, Kind: s.Words.T("staff.kind." + string(c.Device.Kind)),
+		Until: s.Format.Time(c.ExpiresAt), At: base + "/enrol", TrustPage: a.staff.AuthorityAt}
+	if one.TrustPage != "" {
+		one.Trust = base + one.TrustPage
+	}
+	if c.Device.Kind == plant.Sender {
+		one.Curl = enrolByCurl(one.At, c.Code, one.Trust != "")
+	} else if one.OnlyHere = onlyHere; !onlyHere {
+		one.QR = qrOf(one.At + "?code=" + c.Code)
+	}
+	return one
+}
+
+// reachedAt is the address at which devices reach the server: that of this request, unless
+// it leads to this machine only and the server has another. onlyHere means that it has none.
+func (a *Admin) reachedAt(r *http.Request) (base string, onlyHere bool) {
+	scheme := "http://"
+	if ui.FrameOf(r).Secure {
 		scheme = "https://"
 	}
+	host := r.Host
+	if name, _, err := net.SplitHostPort(host); err == nil {
+		host = name
+	}
+	ip, err := netip.ParseAddr(strings.Trim(host, "[]"))
+	if host != "localhost" && (err != nil || !ip.IsLoopback()) {
+		return scheme + r.Host, false
+	}
+	if a.staff.Outside != nil {
+		if at := a.staff.Outside(); at != "" {
+			return at, false
+		}
+	}
+	return scheme + r.Host, true
+}
+
+// enrolByCurl is the line that lets a sender in, which has no browser.
+func enrolByCurl(at, code string, ownAuthority bool) string {
+	trust := ""
 	if ownAuthority {
 		trust = "--cacert authority.pem "
 	}
-	return "curl " + trust + "-X POST " + scheme + at + " -H 'Accept: application/json' -d code=" + code
+	return "curl " + trust + "-X POST " + at + " -H 'Accept: application/json' -d code=" + code
 }
 
 // posted reads a device from a form. A place that cannot be read is none, and the device
@@ -152,8 +190,16 @@ func (a *Admin) makeCode(w http.ResponseWriter, r *http.Request) error {
 	if err != nil {
 		return err
 	}
-	ui.Redirect(w, r, devicesAddress)
+	ui.Redirect(w, r, backOr(r, devicesAddress))
 	return nil
+}
+
+// backOr is the page that a form was on, if it says which, else another.
+func backOr(r *http.Request, otherwise string) string {
+	if !r.PostForm.Has("to") {
+		return otherwise
+	}
+	return ui.LocalPath(r.PostForm.Get("to"))
 }
 
 func (a *Admin) withdrawCode(w http.ResponseWriter, r *http.Request) error {
@@ -164,7 +210,7 @@ func (a *Admin) withdrawCode(w http.ResponseWriter, r *http.Request) error {
 	if err := a.staff.Store.WithdrawDeviceCode(r.Context(), id); err != nil {
 		return err
 	}
-	ui.Redirect(w, r, devicesAddress)
+	ui.Redirect(w, r, backOr(r, devicesAddress))
 	return nil
 }
 

@@ -36,6 +36,8 @@ type field struct {
 	Short                       bool
 	Optional                    bool
 	Link, LinkText, Placeholder string
+	Zone, ZonePreset            bool   // a time zone; to begin with the browser's own
+	ZoneNow, ZoneSaid           string // what time it is there; the same to be filled in by the script
 }
 
 type option struct {

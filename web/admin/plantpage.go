@@ -40,41 +40,40 @@ func (a *Admin) showPlant(w http.ResponseWriter, r *http.Request) error {
 }
 
 func (a *Admin) renderPlant(w http.ResponseWriter, r *http.Request, status int, q *asking, rows []shiftRow, problem string) error {
-	groups := []group{{Fields: plantFields(q)}}
+	groups := []group{{Fields: plantFields(q, ui.FrameOf(r).Now, true)}}
 	for len(rows) < plant.MaxShifts {
 		rows = append(rows, shiftRow{N: len(rows) + 1})
 	}
 	v := plantView{Done: doneWords(r),
 		Form:   form{Action: plantAddress, Button: q.w.T("setup.save"), Groups: groups, Problem: q.rest(groups), Testid: "plant"},
 		Shifts: shiftsView{Action: plantAddress + "/shifts", Problem: problem, Rows: rows}}
-	return ui.Render(w, r, status, plantPage(shellFor(r, q.w.T("setup.plant")), v))
+	s := shellFor(r, q.w.T("setup.plant"))
+	s.Scripts = append(s.Scripts, zoneScript)
+	return ui.Render(w, r, status, plantPage(s, v))
 }
 
-func plantFields(q *asking) []field {
-	return []field{q.field(text, "plant"), q.field(text, "zone").suggesting(commonZones)}
-}
-
-// commonZones are offered while typing; any other name of the zone database is taken too.
-var commonZones = []string{
-	"Africa/Johannesburg", "America/Bogota", "America/Chicago", "America/Denver", "America/Los_Angeles", "America/Mexico_City", "America/New_York",
-	"America/Sao_Paulo", "America/Toronto", "Asia/Bangkok", "Asia/Ho_Chi_Minh", "Asia/Jakarta", "Asia/Kolkata", "Asia/Manila", "Asia/Seoul",
-	"Asia/Shanghai", "Asia/Singapore", "Asia/Taipei", "Asia/Tokyo", "Australia/Melbourne", "Australia/Sydney", "Europe/Amsterdam", "Europe/Berlin",
-	"Europe/Brussels", "Europe/Bucharest", "Europe/Budapest", "Europe/Copenhagen", "Europe/Dublin", "Europe/Helsinki", "Europe/Istanbul",
-	"Europe/Lisbon", "Europe/London", "Europe/Madrid", "Europe/Oslo", "Europe/Paris", "Europe/Prague", "Europe/Rome", "Europe/Sofia",
-	"Europe/Stockholm", "Europe/Vienna", "Europe/Warsaw", "Europe/Zurich", "Pacific/Auckland", "UTC",
+func plantFields(q *asking, now time.Time, chosen bool) []field {
+	return []field{q.field(text, "plant"), zoneField(q, now, chosen)}
 }
 
 // plantOf reads name and time zone.
 func plantOf(q *asking) plant.Plant {
 	p := plant.Plant{Name: q.nameOf("plant")}
-	zone := q.get("zone")
-	loc, err := time.LoadLocation(zone)
-	if zone == "" || zone == "Local" || err != nil {
+	loc, err := zoneOf(q.get("zone"))
+	if err != nil {
 		q.refuse("zone", q.w.T("setup.problem.zone"))
 		return p
 	}
 	p.Location = loc
 	return p
+}
+
+// zoneOf loads a time zone. What the machine calls its own is no name of one.
+func zoneOf(name string) (*time.Location, error) {
+	if name == "" || name == "Local" {
+		return nil, fmt.Errorf("there is no time zone %q", name)
+	}
+	return time.LoadLocation(name)
 }
 
 func (a *Admin) changePlant(w http.ResponseWriter, r *http.Request) error {

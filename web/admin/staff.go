@@ -25,6 +25,8 @@ type Staff struct {
 	Sessions ui.Stays
 	// AuthorityAt is the page of the server's own authority, "" where it has none.
 	AuthorityAt string
+	// Outside is the address at which other machines reach the server, "" when none does.
+	Outside func() string
 }
 
 // StaffStore is what they need of the plant's record.

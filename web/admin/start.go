@@ -3,6 +3,7 @@ package admin
 import (
 	"net/http"
 	"net/url"
+	"time"
 
 	"github.com/go-chi/chi/v5"
 	"github.com/google/uuid"
@@ -106,12 +107,21 @@ type startView struct {
 	Measure      string
 	MayTake      bool
 	StationName  string
+	StationID    string
 	Judged       *judgedView
 	Wait         bool // this step is the engineer's, and this person is none
 	Learn        string
 	Unit         string
 	Specified    bool
 	Characterist string
+	Tablet       tabletStep
+}
+
+// tabletStep is how a tablet comes to the station.
+type tabletStep struct {
+	Offered bool // this person may enrol one
+	Name    string
+	Codes   []codeView // of tablets that wait to be enrolled there
 }
 
 type stepRow struct {
@@ -171,7 +181,12 @@ func (a *Admin) renderStart(w http.ResponseWriter, r *http.Request, status int, 
 	if v.Station != "" {
 		ui.RememberStation(w, r, idOf(v.Station[len("/station/"):])) // whoever signs in here next lands there
 	}
-	return ui.Render(w, r, status, startRunPage(shellFor(r, q.w.T("setup.start.title")), v))
+	s := shellFor(r, q.w.T("setup.start.title"))
+	s.Styles, s.Scripts = append(s.Styles, "css/admin-staff.css"), append(s.Scripts, zoneScript)
+	if len(v.Tablet.Codes) > 0 {
+		s.Scripts = append(s.Scripts, "js/admin-codes.js")
+	}
+	return ui.Render(w, r, status, startRunPage(s, v))
 }
 
 // ask fills in what the step asks.
@@ -190,7 +205,7 @@ func (a *Admin) ask(r *http.Request, v *startView, o plant.Outline, q *asking) e
 	switch v.At {
 	case stepPlant:
 		preset(url.Values{"plant": {f.Plant.Name}, "zone": {f.Plant.Location.String()}})
-		groups = []group{{Fields: plantFields(q)}}
+		groups = []group{{Fields: plantFields(q, f.Now, f.Plant.Location != time.UTC || len(r.PostForm) > 0)}}
 	case stepEngineer:
 		preset(url.Values{"who": {"me"}})
 		groups = []group{{Fields: append([]field{q.field(radio, "who").among([]option{{Value: "me", Text: w.T("setup.who.me-engineer"), Hint: w.T("setup.who.me-engineer-hint")}, {Value: "other", Text: w.T("setup.who.other-engineer")}})}, personFields(q)...)}}
@@ -215,9 +230,12 @@ func (a *Admin) ask(r *http.Request, v *startView, o plant.Outline, q *asking) e
 		groups = []group{{Fields: append([]field{q.field(radio, "who").among([]option{{Value: "other", Text: w.T("setup.who.other-operator")}, {Value: "me", Text: w.T("setup.who.me-operator"), Hint: w.T("setup.who.me-operator-hint")}})}, personFields(q)...)}}
 		v.Wait = !f.Person.May(plant.Manage)
 	case stepRound, "finished":
-		v.Station, v.StationName = "/station/"+at.station.ID.String(), at.station.Name
+		v.Station, v.StationID, v.StationName = "/station/"+at.station.ID.String(), at.station.ID.String(), at.station.Name
 		v.Measure = v.Station + "?measure=" + at.characteristic.ID.String()
 		v.MayTake = f.Person.May(plant.TakeRounds)
+		if err := a.tabletStep(r, v, at); err != nil {
+			return err
+		}
 		return a.judged(r, v, at)
 	}
 	if v.At == stepEngineer {
@@ -232,6 +250,26 @@ func (a *Admin) ask(r *http.Request, v *startView, o plant.Outline, q *asking) e
 
 func personFields(q *asking) []field {
 	return []field{q.field(text, "person_name"), q.field(text, "login").short(), q.field(fresh, "password")}
+}
+
+// tabletStep offers a code for a tablet at the station, and shows those that wait.
+func (a *Admin) tabletStep(r *http.Request, v *startView, at first) error {
+	f := ui.FrameOf(r)
+	if a.staff == nil || !f.Person.May(plant.Manage) || at.station.ID == uuid.Nil {
+		return nil
+	}
+	codes, err := a.staff.Store.DeviceCodes(r.Context())
+	if err != nil {
+		return err
+	}
+	v.Tablet = tabletStep{Offered: true, Name: f.Words.T("setup.tablet.name", at.station.Name)}
+	s := shellFor(r, "")
+	for _, c := range codes {
+		if c.Device.Kind == plant.Tablet && c.Device.Station == at.station.ID {
+			v.Tablet.Codes = append(v.Tablet.Codes, a.codeOf(r, s, c))
+		}
+	}
+	return nil
 }
 
 // judged says what the first round was told.

@@ -139,7 +139,11 @@ type enrolling struct {
 }
 
 func (h *Handler) showEnrol(w http.ResponseWriter, r *http.Request) error {
-	return h.renderEnrol(w, r, http.StatusOK, enrolling{})
+	code := plant.CleanText(r.URL.Query().Get("code")) // from the QR code beside the digits
+	if len(code) > 2*plant.CodeDigits {
+		code = ""
+	}
+	return h.renderEnrol(w, r, http.StatusOK, enrolling{Code: code})
 }
 
 func (h *Handler) renderEnrol(w http.ResponseWriter, r *http.Request, status int, v enrolling) error {
