@@ -256,6 +256,12 @@ func TestAPlantFromAFile(t *testing.T) {
 	}
 	whole(t, r)
 
+	// What a machine makes how, and what is aimed at, is in the preview too.
+	res, _ = v.upload("one.csv", "Line;Station;Machine;Parts per hour;Streams;Characteristic;Unit;Decimals;Target;Parts per subgroup;Sample every minutes\nAxles;Moulding;Press 4;1200;cavity 1, cavity 2, cavity 3;Wall;mm;2;2,35;5;60\n")
+	if _, body = v.get(res.Header.Get("Location")); !strings.Contains(body, "<td>1200</td><td>cavity 1, cavity 2, cavity 3</td>") || !strings.Contains(body, "<td>2.35 mm</td>") {
+		t.Errorf("the preview of rate, streams and target: %s", body[strings.Index(body, "<main"):])
+	}
+
 	for name, content := range map[string]string{"a picture": "\x89PNG\r\n\x1a\n\x00", "nothing": "", "too much": strings.Repeat("Line\n", 190_000)} {
 		if res, _ := v.upload("x", content); res.StatusCode != http.StatusUnprocessableEntity {
 			t.Errorf("%s: %d, want 422", name, res.StatusCode)

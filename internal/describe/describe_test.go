@@ -3,6 +3,7 @@ package describe
 import (
 	"bytes"
 	"fmt"
+	"slices"
 	"strings"
 	"testing"
 
@@ -300,4 +301,21 @@ func FuzzRead(f *testing.F) {
 			t.Fatalf("what was written adds %+v, %+v", there.Add, there.Problems)
 		}
 	})
+}
+
+// TestStreamsAreSeparatedByAnyOfTheirSigns: a comma between streams is one where no other
+// sign stands, and part of a name beside one.
+func TestStreamsAreSeparatedByAnyOfTheirSigns(t *testing.T) {
+	t.Parallel()
+	for cell, want := range map[string][]string{
+		"A | B | C": {"A", "B", "C"}, "A, B,C": {"A", "B", "C"}, "A;B": {"A", "B"}, "A, upper | B": {"A, upper", "B"},
+		"A, upper |": {"A, upper"}, "A": {"A"}, " , ": nil, "": nil,
+	} {
+		if got := list(cell); !slices.Equal(got, want) {
+			t.Errorf("%q is read as %q, want %q", cell, got, want)
+		}
+		if got := list(joined(want)); !slices.Equal(got, want) {
+			t.Errorf("%q is written as %q", want, joined(want))
+		}
+	}
 }

@@ -237,13 +237,27 @@ func (r *reader) cells() bool {
 	return true
 }
 
-// list splits a cell that holds several things.
+// list splits a cell that holds several things, with | or ; between them. Where neither
+// stands, a comma does as well; beside one of them it belongs to a name.
 func list(text string) []string {
+	marks := "|;"
+	if !strings.ContainsAny(text, marks) {
+		marks = ","
+	}
 	var out []string
-	for _, s := range strings.FieldsFunc(text, func(c rune) bool { return c == '|' || c == ';' }) {
+	for _, s := range strings.FieldsFunc(text, func(c rune) bool { return strings.ContainsRune(marks, c) }) {
 		if s = strings.TrimSpace(s); s != "" {
 			out = append(out, s)
 		}
 	}
 	return out
+}
+
+// joined is the cell of several names, as list takes it apart. One name with a comma in it
+// must not be taken for two.
+func joined(names []string) string {
+	if len(names) == 1 && strings.Contains(names[0], ",") {
+		return names[0] + " |"
+	}
+	return strings.Join(names, " | ")
 }

@@ -91,7 +91,7 @@ func machineRows(o plant.Outline, l plant.Line, st plant.Station, m plant.Machin
 				streams = append(streams, t.Name)
 			}
 		}
-		row["streams"] = strings.Join(streams, " | ")
+		row["streams"] = joined(streams)
 		return row
 	}
 	for _, c := range o.Characteristics {

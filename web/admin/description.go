@@ -3,6 +3,7 @@ package admin
 import (
 	"io"
 	"net/http"
+	"strconv"
 	"strings"
 
 	"github.com/go-chi/chi/v5"
@@ -75,6 +76,7 @@ type previewView struct {
 	Problem  string // that kept it from being done a moment ago
 	Problems []problemRow
 	Adds     []addRow
+	Machines []machineRow
 	Measures []measureRow
 	Found    []foundRow
 	Same     int // things that are there and as the file has them
@@ -85,6 +87,9 @@ type previewView struct {
 }
 
 type problemRow struct{ Row, Column, Message string }
+
+// machineRow is a machine that would be added.
+type machineRow struct{ Name, Station, Rate, Streams string }
 
 type addRow struct{ Kind, Names string }
 
@@ -139,14 +144,24 @@ func newPreview(f ui.Format, o plant.Outline, p describe.Plan) previewView {
 	}
 	add(plant.ALine, namesOf(p.Add.Lines, func(v plant.Line) string { return v.Name }))
 	add(plant.AStation, namesOf(p.Add.Stations, func(v plant.Station) string { return v.Name }))
-	add(plant.AMachine, namesOf(p.Add.Machines, func(v plant.Machine) string { return v.Name }))
 	add(plant.APart, namesOf(p.Add.Parts, func(v plant.Part) string { return v.Name }))
 	add(plant.AGauge, namesOf(p.Add.Gauges, func(v plant.Gauge) string { return v.Name }))
 	add(plant.AShift, namesOf(p.Add.Shifts, func(v plant.Shift) string { return v.Name + " " + clockText(v) }))
 	both := together(o, p.Add)
+	for _, m := range p.Add.Machines {
+		row := machineRow{Name: m.Name, Station: both.Station(m.StationID).Name,
+			Streams: strings.Join(namesOf(m.Streams, func(s plant.Stream) string { return s.Name }), ", ")}
+		if m.PartsPerHour > 0 {
+			row.Rate = w.Number(strconv.FormatFloat(m.PartsPerHour, 'f', -1, 64))
+		}
+		v.Machines = append(v.Machines, row)
+	}
 	for _, c := range p.Add.Characteristics {
 		row := measureRow{item: item{Name: c.Name}, Machine: both.Machine(c.MachineID).Name, Of: ofWords(w, both, c.Characteristic),
 			Specification: f.Specification(c.Setup), Sampling: samplingWords(w, c.Setup.Plan), Chart: chartWord(w, c.Setup.Chart)}
+		if c.Setup.Target != nil {
+			row.Target = f.WithUnit(f.Decimal(*c.Setup.Target), c.Setup.Unit)
+		}
 		if row.Specification == "" {
 			row.Specification = w.T("setup.no-specification")
 		}
@@ -172,7 +187,8 @@ func namesOf[T any](list []T, name func(T) string) []string {
 
 // together is the plant as it would be, for finding names.
 func together(o plant.Outline, add plant.Addition) plant.Outline {
-	return plant.Outline{Machines: append(append([]plant.Machine{}, o.Machines...), add.Machines...), Parts: append(append([]plant.Part{}, o.Parts...), add.Parts...)}
+	return plant.Outline{Stations: append(append([]plant.Station{}, o.Stations...), add.Stations...),
+		Machines: append(append([]plant.Machine{}, o.Machines...), add.Machines...), Parts: append(append([]plant.Part{}, o.Parts...), add.Parts...)}
 }
 
 // confirmDescription sets up what was seen: all of it or nothing. Where the plant has

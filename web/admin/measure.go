@@ -242,6 +242,7 @@ type measureStation struct {
 type measureRow struct {
 	item
 	Machine, Of, Specification, Sampling, Chart, Limits string
+	Target                                              string // in the preview of a file
 	Learning, Given                                     bool
 }
 
