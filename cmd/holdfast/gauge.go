@@ -142,8 +142,7 @@ func (c *gaugeCmd) Run(ctx context.Context, log *slog.Logger) error {
 		return err
 	}
 	return c.with(ctx, log, func(ctx context.Context, s *relay.Spool) error {
-		m := &measured{gauge: c, client: client, decimals: -1}
-		source.Fits = func(number string) bool { return m.fits(ctx, number) }
+		source.Fits = c.measuring(ctx, client, c.Station, c.Characteristic)
 		g := &relay.Gather{Spool: s, Now: time.Now, Source: source, Lot: func() string { return c.Lot }}
 		if err := g.Flush(); err != nil {
 			log.Error("what waited could not be kept", "error", err)

@@ -4,12 +4,16 @@ import (
 	"context"
 	"fmt"
 	"log/slog"
+	"net"
 	"os"
 	"path/filepath"
 	"strings"
 	"testing"
 	"time"
 
+	broker "github.com/mochi-mqtt/server/v2"
+	allow "github.com/mochi-mqtt/server/v2/hooks/auth"
+	"github.com/mochi-mqtt/server/v2/listeners"
 	"golang.org/x/sync/errgroup"
 	"golang.org/x/sys/unix"
 
@@ -105,7 +109,7 @@ func TestTheFileOfTheBroker(t *testing.T) {
 		if err := os.WriteFile(path, []byte(text), 0o600); err != nil {
 			t.Fatal(err)
 		}
-		return readBroker(path, s, log)
+		return readBroker(path, s, log, func(string, string) func(string) bool { return nil })
 	}
 	const head = "broker = \"ssl://broker.plant:8883\"\nclient = \"holdfast-axles\"\n"
 	b, err := read(head + "user = \"holdfast\"\npassword_file = \"" + password + "\"\nrounds = \"axles/rounds\"\n" +
@@ -136,6 +140,80 @@ func TestTheFileOfTheBroker(t *testing.T) {
 	} {
 		if _, err := read(wrong); err == nil {
 			t.Errorf("this was taken: %s", wrong)
+		}
+	}
+}
+
+// TestAReadingOfTheBrokerThatCannotBeTakesNoSubgroupWithIt: what the server would refuse is
+// shown at the station when it comes, and the readings around it are a whole subgroup.
+func TestAReadingOfTheBrokerThatCannotBeTakesNoSubgroupWithIt(t *testing.T) {
+	t.Parallel()
+	r := serve(t)
+	_, token := r.enrol(t, plant.Device{Kind: plant.Sender, Name: "Broker", Station: r.Station.ID})
+	l, err := net.Listen("tcp", "127.0.0.1:0")
+	if err != nil {
+		t.Fatal(err)
+	}
+	hub := broker.New(&broker.Options{InlineClient: true, Logger: slog.New(slog.DiscardHandler)})
+	if err := hub.AddHook(new(allow.AllowHook), nil); err != nil {
+		t.Fatal(err)
+	}
+	if err := hub.AddListener(listeners.NewNet("t", l)); err != nil {
+		t.Fatal(err)
+	}
+	if err := hub.Serve(); err != nil {
+		t.Fatal(err)
+	}
+	defer hub.Close()
+	folder := t.TempDir()
+	c := mqttCmd{Config: filepath.Join(folder, "broker.toml")}
+	c.Server, c.TokenFile, c.Spool = r.url, filepath.Join(folder, "token"), filepath.Join(folder, "spool")
+	for path, text := range map[string]string{
+		c.TokenFile: token,
+		c.Config: "broker = \"tcp://" + l.Addr().String() + "\"\nclient = \"holdfast\"\n" +
+			"[[readings]]\ntopic = \"diameter\"\ncharacteristic = \"" + r.Diameter.Name + "\"\nunit = \"mm\"\nsize = 5\n",
+	} {
+		if err := os.WriteFile(path, []byte(text), 0o600); err != nil {
+			t.Fatal(err)
+		}
+	}
+	running, stop := context.WithCancel(t.Context())
+	var g errgroup.Group
+	g.Go(func() error { return c.Run(running, slog.New(slog.DiscardHandler)) })
+	defer func() {
+		stop()
+		if err := g.Wait(); err != nil {
+			t.Error(err)
+		}
+	}()
+	soon := func(what string, done func() bool) {
+		t.Helper()
+		for end := time.Now().Add(20 * time.Second); !done(); time.Sleep(20 * time.Millisecond) {
+			if time.Now().After(end) {
+				t.Fatal(what)
+			}
+		}
+	}
+	soon("the topic is not subscribed to", func() bool {
+		client, ok := hub.Clients.Get("holdfast")
+		return ok && len(client.State.Subscriptions.GetAll()) == 1
+	})
+	for _, payload := range []string{"14.991", "14.990 mm", "14.9915", "0.5902 in", "14.990", "14.990", "14.992"} {
+		if err := hub.Publish("diameter", []byte(payload), false, 1); err != nil {
+			t.Fatal(err)
+		}
+	}
+	var readings []int64
+	soon("no subgroup came", func() bool {
+		return r.Pool().QueryRow(t.Context(), `select readings from subgroup where characteristic_id = $1`, r.Diameter.ID).Scan(&readings) == nil
+	})
+	if fmt.Sprint(readings) != "[14991 14990 14990 14990 14992]" {
+		t.Errorf("on record: %v", readings)
+	}
+	_, body := r.visit(t, "operator1").get("/station/" + r.Station.ID.String())
+	for _, line := range []string{"14.9915", "0.5902 in"} {
+		if !strings.Contains(body, line) {
+			t.Errorf("the station does not show %q", line)
 		}
 	}
 }

@@ -13,13 +13,21 @@ import (
 	"holdfast/internal/plant"
 )
 
-// measured knows with how many decimals the characteristic of a gauge is measured, from
-// what the server says of the station.
+// measured knows with how many decimals a characteristic is measured, from what the server
+// says of the station.
 type measured struct {
-	gauge    *gaugeCmd
-	client   *http.Client
-	decimals int       // below 0: not known
-	failed   time.Time // when the server was last asked in vain
+	sending
+	station, characteristic string
+	client                  *http.Client
+	decimals                int       // below 0: not known
+	failed                  time.Time // when the server was last asked in vain
+}
+
+// measuring is what relay.Source asks of each number; one sender has one for each
+// characteristic, since it remembers what the server said.
+func (c sending) measuring(ctx context.Context, client *http.Client, station, characteristic string) func(number string) bool {
+	m := &measured{sending: c, station: station, characteristic: characteristic, client: client, decimals: -1}
+	return func(number string) bool { return m.fits(ctx, number) }
 }
 
 const (
@@ -53,15 +61,15 @@ func (m *measured) is(number string) bool {
 func (m *measured) ask(ctx context.Context) (int, error) {
 	ctx, cancel := context.WithTimeout(ctx, askLimit)
 	defer cancel()
-	at := strings.TrimRight(m.gauge.Server, "/") + "/api/v1/station"
-	if m.gauge.Station != "" {
-		at += "?" + url.Values{"station": {m.gauge.Station}}.Encode()
+	at := strings.TrimRight(m.Server, "/") + "/api/v1/station"
+	if m.station != "" {
+		at += "?" + url.Values{"station": {m.station}}.Encode()
 	}
 	req, err := http.NewRequestWithContext(ctx, http.MethodGet, at, nil)
 	if err != nil {
 		return 0, err
 	}
-	token, err := readSecret(m.gauge.TokenFile)
+	token, err := readSecret(m.TokenFile)
 	if err != nil {
 		return 0, err
 	}
@@ -90,7 +98,7 @@ func (m *measured) ask(ctx context.Context) (int, error) {
 	}
 	var found []int
 	for _, c := range st.Characteristics {
-		switch m.gauge.Characteristic {
+		switch m.characteristic {
 		case c.ID, c.Name, machines[c.Machine] + " / " + c.Name:
 			found = append(found, c.Decimals)
 		}

@@ -60,9 +60,15 @@ type brokerFile struct {
 }
 
 func (c *mqttCmd) Run(ctx context.Context, log *slog.Logger) error {
+	client, err := c.client()
+	if err != nil {
+		return err
+	}
 	return c.with(ctx, log, func(ctx context.Context, s *relay.Spool) error {
 		s.Strict = true // the broker sends again what is not acknowledged
-		b, err := readBroker(c.Config, s, log)
+		b, err := readBroker(c.Config, s, log, func(station, characteristic string) func(string) bool {
+			return c.measuring(ctx, client, station, characteristic)
+		})
 		if err != nil {
 			return err
 		}
@@ -70,7 +76,9 @@ func (c *mqttCmd) Run(ctx context.Context, log *slog.Logger) error {
 	})
 }
 
-func readBroker(path string, s *relay.Spool, log *slog.Logger) (*relay.Broker, error) {
+// readBroker reads the file. measuring gives what tells whether a number can be a reading
+// of a characteristic.
+func readBroker(path string, s *relay.Spool, log *slog.Logger, measuring func(station, characteristic string) func(number string) bool) (*relay.Broker, error) {
 	var f brokerFile
 	meta, err := toml.DecodeFile(path, &f)
 	if err != nil {
@@ -117,6 +125,7 @@ func readBroker(path string, s *relay.Spool, log *slog.Logger) (*relay.Broker, e
 			b.Lots[r.LotTopic] = true
 			g.Lot = func() string { return s.Lot(r.LotTopic) }
 		}
+		g.Fits = measuring(r.Station, r.Characteristic)
 		for topic, o := range b.Readings {
 			if o.Characteristic == g.Characteristic && o.Station == g.Station && (o.Size != g.Size || o.Unit != g.Unit || len(o.Streams) != 1 || len(g.Streams) != 1) {
 				return nil, fmt.Errorf("%s: %s and %s fill the same subgroup: they need the same size and unit, and one stream each", path, topic, r.Topic)
