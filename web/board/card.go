@@ -1,14 +1,12 @@
 package board
 
 import (
-	"math"
 	"slices"
 	"strings"
 
 	"github.com/google/uuid"
 
 	"holdfast/internal/plant"
-	"holdfast/web/chart"
 	"holdfast/web/ui"
 )
 
@@ -133,10 +131,7 @@ func newCard(f ui.Format, st *plant.StationState) cardView {
 	if calm > 0 {
 		v.Calm = f.Words.T("board.more-calm", calm)
 	}
-	if n := len(front.Points); n > 0 {
-		v.Value = f.Mean(front.Points[n-1].Stats.Mean(), front.Setup)
-		v.Spark = spark(f, front, v.Value, max(sparkLeast, sparkH-float64(len(v.Others)*markRow)))
-	}
+	v.Value, v.Spark = f.Spark(front, sparkW, max(sparkLeast, sparkH-float64(len(v.Others)*markRow)))
 	v.Matters, v.Owners = strings.Join(matters, " "), strings.Join(who, " ")
 	return v
 }
@@ -185,70 +180,4 @@ func ownerShown(f ui.Format, c *plant.CharacteristicState) (text string, strong 
 		return f.Words.T("board.owner-for", word, f.Since(own.Since)), o == plant.Engineering
 	}
 	return f.Words.T("board.owner", word), o == plant.Engineering
-}
-
-// spark draws the newest subgroups of a characteristic in the band that is in force.
-func spark(f ui.Format, c *plant.CharacteristicState, value string, height float64) string {
-	points := c.Points[max(0, len(c.Points)-chart.SparkLength):]
-	s := chart.Spark{ID: "spark-" + c.ID.String(), W: sparkW, H: height, Limits: band(c),
-		Stopped: !c.Machine.Running(), Points: make([]chart.SparkPoint, len(points))}
-	if c.Revision == nil {
-		s.Label = f.Words.T("board.spark-learning", len(points), c.Title(), value)
-	} else {
-		s.Label = f.Words.T("board.spark", len(points), c.Title(), value)
-	}
-	for i, p := range points {
-		s.Points[i] = chart.SparkPoint{Value: p.Stats.Mean(),
-			Restart: i > 0 && points[i-1].TakenAt.Before(c.Segment.From) && !p.TakenAt.Before(c.Segment.From)}
-	}
-	for i := 1; i < len(points); i++ {
-		s.Points[i].Before = ui.EventsBefore(*c, points[i-1].TakenAt, points[i].TakenAt)
-	}
-	if n := len(points); n > 0 {
-		s.After = ui.EventsSince(*c, points[n-1].TakenAt)
-	}
-	markNewest(s.Points, points, c.Matter)
-	return s.SVG()
-}
-
-// markNewest rings the newest subgroup of each kind that belongs to the open matter.
-// One ring says where to look; a ring around each would hide the course.
-func markNewest(out []chart.SparkPoint, points []plant.Point, m *plant.Matter) {
-	if m == nil {
-		return
-	}
-	var hold, look bool
-	for i := len(points) - 1; i >= 0 && !(hold && look); i-- {
-		for _, s := range points[i].Signals {
-			switch {
-			case s.Withdrawn || s.Matter != m.ID:
-			case s.Panel.HoldsProduct() && !hold:
-				out[i].Mark, hold = chart.HoldMark, true
-			case !s.Panel.HoldsProduct() && !look:
-				look = true
-				if out[i].Mark == chart.NoMark {
-					out[i].Mark = chart.SignalMark
-				}
-			}
-		}
-	}
-}
-
-// band is the limits of the averages of whole subgroups.
-func band(c *plant.CharacteristicState) chart.Limits {
-	if c.Revision == nil {
-		return chart.NoLimits()
-	}
-	location, _, err := c.Revision.Standard().Bands(c.Setup.Size)
-	if err != nil {
-		return chart.NoLimits() // limits are checked when they are frozen
-	}
-	l := chart.Limits{Lower: math.NaN(), Centre: location.Center, Upper: math.NaN()}
-	if location.HasLower() {
-		l.Lower = location.Lower
-	}
-	if location.HasUpper() {
-		l.Upper = location.Upper
-	}
-	return l
 }

@@ -251,7 +251,10 @@ func (f *Falls) AppendSVG(b []byte) []byte {
 	d.events(f.After, (a.x(FallsLength-1)+a.x(FallsLength))/2, a.s.bottom, eventTall)
 	a.provisional(f.Now)
 	if len(pts) > 0 {
-		d.text("tick", a.x(a.slot(0, FallsLength-1))-6, h-8, pts[0].Time, start)
+		const room = 80 // for a time, and half of the word for now in the longest language
+		if x := a.x(a.slot(0, FallsLength-1)) - 6; a.x(FallsLength)-x >= room {
+			d.text("tick", x, h-8, pts[0].Time, start)
+		}
 	}
 	d.text("tick strong", a.x(FallsLength), h-8, words.Now, middle)
 	d.raw("</svg>")

@@ -217,7 +217,7 @@ func otherSign(w *words.Printer) string {
 
 // work is GET /station/{station}: the page that stays open all shift.
 func (s *Surface) work(w http.ResponseWriter, r *http.Request) error {
-	st, err := s.stationIn(r, chart.VerdictLength)
+	st, err := s.stationIn(r, chart.SparkLength)
 	if err != nil {
 		return err
 	}

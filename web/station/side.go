@@ -75,8 +75,32 @@ type idleView struct {
 	Tone    string
 	Button  string // to what is to be done
 	Href    string
-	Choices []taskView // rounds outside the plan
+	Choose  string
+	Choices []pulseView // rounds outside the plan
 	Owned   ownedView
+}
+
+// pulseView is a characteristic at rest: where it stands, and the way to a round outside
+// the plan.
+type pulseView struct {
+	Href, Name, Parts string
+	State             string // class of the state
+	Symbol, Says      string
+	Newest, Spark     string // with its unit, and SVG; empty without a subgroup
+}
+
+// The small chart of a characteristic at rest, in pixels of its drawing.
+const (
+	pulseW = 322
+	pulseH = 104
+)
+
+func newPulse(f ui.Format, station uuid.UUID, c *plant.CharacteristicState) pulseView {
+	condition := c.Condition()
+	v := pulseView{Href: measurePath(station, c.ID), Name: c.Title(), Parts: f.Words.T("station.parts", c.Setup.Size),
+		State: ui.Tone(condition), Symbol: ui.SymbolOf(condition), Says: ui.ConditionWord(f.Words, condition)}
+	v.Newest, v.Spark = f.Spark(c, pulseW, pulseH)
+	return v
 }
 
 func sideID(station uuid.UUID) string { return "side-" + station.String() }
@@ -155,8 +179,8 @@ func dueTask(f ui.Format, station uuid.UUID, c plant.CharacteristicState) taskVi
 
 // gaugeTask is the check of a gauge that is overdue, a task like a round.
 func gaugeTask(f ui.Format, station uuid.UUID, g plant.GaugeOverdue) taskView {
-	return taskView{Href: path(station, "gauge", g.ID.String()), Name: f.Words.T("reach.check-title", g.Name), Tone: "now", State: "due", Symbol: "due",
-		Says: f.Words.T("station.late", f.Since(g.OverdueSince(f.Zone))), When: ui.SayDay(f, g.NextCheck), Sub: strings.Join(g.Of, ", ")}
+	return taskView{Href: path(station, "gauge", g.ID.String()), Name: f.Words.T("reach.check-title", g.Name), Tone: "now long", State: "due", Symbol: "due",
+		Says: f.Words.T("station.late", f.Since(g.OverdueSince(f.Zone))), Sub: strings.Join(g.Of, ", ")}
 }
 
 func openTask(f ui.Format, station uuid.UUID, c plant.CharacteristicState) taskView {
@@ -230,10 +254,13 @@ func newIdle(f ui.Format, st plant.StationState) idleView {
 			v.Due, v.Button, v.Href = true, f.Words.T("station.measure-it", c.Title()), path(st.ID)
 			v.Title, v.Lead = f.Words.T("station.due-title"), dueTask(f, st.ID, c).Says
 		}
-		v.Choices = append(v.Choices, taskView{Href: measurePath(st.ID, c.ID), Name: c.Title(), Sub: f.Words.T("station.parts", c.Setup.Size)})
+		v.Choices = append(v.Choices, newPulse(f, st.ID, &c))
 	}
 	if v.Due {
 		return v
+	}
+	if len(v.Choices) > 0 {
+		v.Choose = f.Words.T("station.idle-lead")
 	}
 	if c, ok := gravestOpen(st); ok {
 		v.open(f, st.ID, c)
@@ -245,10 +272,6 @@ func newIdle(f ui.Format, st plant.StationState) idleView {
 		return v
 	}
 	v.Title = quietWords(f, st)
-	v.Lead = f.Words.T("station.idle-lead")
-	if len(v.Choices) == 0 {
-		v.Lead = ""
-	}
 	return v
 }
 

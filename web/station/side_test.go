@@ -54,6 +54,17 @@ func TestWhatIsDueIsSaidInMinutes(t *testing.T) {
 	b.get(s.at()).says("Late 1 h", "#s-unknown")
 }
 
+// TestARestingStationShowsHowItRuns: with nothing due each characteristic stands there
+// with its newest subgroups, and leads to a round outside the plan.
+func TestARestingStationShowsHowItRuns(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	b := s.signIn(t, s.Operator)
+	b.get(s.at()).says(`class="pulse" href="`+s.at()+"?measure="+s.Diameter.ID.String()+`"`, "5 parts", "Learning").saysNot(`class="spark"`)
+	s.MustRecord(t, s.Diameter, 14991, 14992, 14990, 14991, 14992)
+	b.get(s.at()).says(`class="spark"`, "The last subgroup of Axle seat diameter (Lathe 1), without limits yet: 14.9912\u00a0mm", "<b class=\"newest\">14.9912\u00a0mm</b>")
+}
+
 // TestSoonAfterAMatterNobodyIsCalledToAct: the station owns it still, for the board and
 // the desk, and has nothing to do about it.
 func TestSoonAfterAMatterNobodyIsCalledToAct(t *testing.T) {
