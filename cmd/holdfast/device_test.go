@@ -3,15 +3,18 @@ package main
 import (
 	"context"
 	"encoding/json"
+	"fmt"
 	"io"
 	"net/http"
 	"net/url"
 	"strings"
 	"testing"
+	"time"
 
 	"github.com/google/uuid"
 
 	"holdfast/internal/auth"
+	"holdfast/internal/browsertest"
 	"holdfast/internal/plant"
 )
 
@@ -183,4 +186,41 @@ func TestACodeCanBeScanned(t *testing.T) {
 	if _, body := r.visit(t, "").get("/enrol?code=" + code.Code); !strings.Contains(body, `value="`+code.Code+`"`) {
 		t.Error("the code that was scanned does not stand in the field")
 	}
+}
+
+// TestLinesOfABadGaugeMoveNoKey: what could not be taken is one low line, closed and open,
+// on an upright tablet and on one that lies.
+func TestLinesOfABadGaugeMoveNoKey(t *testing.T) {
+	t.Parallel()
+	r := serve(t)
+	_, token := r.enrol(t, plant.Device{Kind: plant.Sender, Name: "Bore gauge", Station: r.Station.ID})
+	v := r.visit(t, "")
+	v.token = token
+	p := r.signIn(t, browsertest.Start(t), "operator1")
+	p.Open("/station/" + r.Station.ID.String() + "?measure=" + r.Diameter.ID.String())
+	p.WaitFor(`document.querySelector("[data-live-state]")?.textContent.trim() === "live"`)
+	const key = `document.querySelector(".pad [data-key='5'], .pad .key").getBoundingClientRect().top`
+	tops := map[string]string{}
+	sizes := map[string][2]int64{"upright": {800, 1280}, "lying": {1280, 800}}
+	for name, size := range sizes {
+		p.Size(size[0], size[1])
+		tops[name] = p.Value(key)
+	}
+	for i := range 5 {
+		r.Clock.Advance(time.Second)
+		v.api("lines", map[string]any{"id": newNumber(), "line": fmt.Sprintf("0.590%d in", i), "why": "unit"}, 200)
+	}
+	p.WaitFor(`document.querySelector("[data-testid=not-taken] summary")?.textContent.includes("More than 3")`)
+	for name, size := range sizes {
+		p.Size(size[0], size[1])
+		p.Want(name+": the key beside closed lines", key, tops[name])
+		p.Click("[data-testid=not-taken] summary")
+		p.Want(name+": the key under open lines", key, tops[name])
+		p.WaitFor(`document.querySelector("[data-testid=not-taken] form button").getClientRects().length === 1`)
+		p.Accessible(name + ": lines that could not be taken")
+		p.Click("[data-testid=not-taken] summary")
+	}
+	p.Click("[data-testid=not-taken] summary")
+	p.Click("[data-testid=not-taken] form button")
+	p.WaitFor(`!document.querySelector("[data-testid=not-taken]")`)
 }

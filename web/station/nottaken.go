@@ -10,10 +10,11 @@ import (
 
 // notTakenView is what came and could not be taken, until a person has seen it.
 type notTakenView struct {
-	Action string
-	Until  string // clears what came until then: nothing that nobody saw
-	Items  []leftOutView
-	More   bool
+	Heading string // how many there are
+	Action  string
+	Until   string // clears what came until then: nothing that nobody saw
+	Items   []leftOutView
+	More    bool
 }
 
 type leftOutView struct {
@@ -23,7 +24,10 @@ type leftOutView struct {
 }
 
 func newNotTaken(f ui.Format, st plant.StationState) notTakenView {
-	v := notTakenView{Action: path(st.ID, "not-taken"), More: st.Aside.More}
+	v := notTakenView{Action: path(st.ID, "not-taken"), More: st.Aside.More, Heading: f.Words.T("outside.count", len(st.Aside.Newest))}
+	if v.More {
+		v.Heading = f.Words.T("outside.count-more", len(st.Aside.Newest))
+	}
 	for i, a := range st.Aside.Newest {
 		if i == 0 {
 			v.Until = a.CameAt.UTC().Format(time.RFC3339Nano)
