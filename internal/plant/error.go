@@ -15,6 +15,10 @@ const (
 	Forbidden                 // this person may not do that
 )
 
+// ErrNoRoom is the fault of a write for which the database's disk had no room. Nothing of it
+// was kept, and the same goes through once there is room.
+var ErrNoRoom = errors.New("the database has no room to write")
+
 // Error is a problem that somebody can act on. Message is the one sentence they
 // read; it never holds raw error text. Everything that is not an *Error is a
 // fault of ours: it is logged and shown only as a reference number.

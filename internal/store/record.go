@@ -101,7 +101,7 @@ func (s *Store) record(ctx context.Context, r plant.Round) (plant.Answer, error)
 			return answer, err
 		}
 	}
-	if err == nil {
+	if err = s.noticeRoom(err); err == nil {
 		s.changed(r.Station)
 	}
 	return answer, err

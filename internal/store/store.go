@@ -54,6 +54,7 @@ type shared struct {
 	every     int // subgroups between two checkpoints
 	limit     time.Duration
 	counts    *counts
+	noRoomAt  *atomic.Int64 // microseconds since 1970 of the last write that found the disk full; 0 after one that did not
 	onSave    func(took time.Duration)
 }
 
@@ -82,7 +83,7 @@ func Open(ctx context.Context, o Options) (*Store, error) {
 		pool: pool, plantID: new(atomic.Pointer[uuid.UUID]),
 		revisions: new(sync.Map), setups: new(sync.Map), measured: new(sync.Map),
 		settings: new(atomic.Pointer[readSettings]), reaches: new(reaches), onChange: new(atomic.Pointer[func([]uuid.UUID)]), every: o.CheckpointEvery,
-		limit: cmp.Or(o.SaveLimit, 15*time.Second), counts: new(counts), onSave: o.OnSave,
+		limit: cmp.Or(o.SaveLimit, 15*time.Second), counts: new(counts), noRoomAt: new(atomic.Int64), onSave: o.OnSave,
 	}}
 	if s.clock == nil {
 		s.clock = time.Now
@@ -139,7 +140,33 @@ func (s *Store) changed(stations ...uuid.UUID) {
 func (s *Store) Ready(ctx context.Context) error {
 	ctx, cancel := context.WithTimeout(ctx, 2*time.Second)
 	defer cancel()
-	return s.pool.Ping(ctx)
+	if err := s.pool.Ping(ctx); err != nil {
+		return err
+	}
+	if at := s.noRoomAt.Load(); at != 0 && time.Since(time.UnixMicro(at)) < noRoomFor {
+		return plant.ErrNoRoom
+	}
+	return nil
+}
+
+// noRoomFor is how long a write that found the disk full keeps the server from being called
+// ready, unless another one succeeds before.
+const noRoomFor = time.Minute
+
+const diskFull = "53100" // SQLSTATE disk_full
+
+// noticeRoom remembers whether the database had room for a transaction, and marks the
+// error of one for which it had none.
+func (s *Store) noticeRoom(err error) error {
+	if err == nil {
+		s.noRoomAt.Store(0)
+		return nil
+	}
+	if pe, ok := errors.AsType[*pgconn.PgError](err); ok && pe.Code == diskFull {
+		s.noRoomAt.Store(time.Now().UnixMicro())
+		return fmt.Errorf("%w: %w", plant.ErrNoRoom, err)
+	}
+	return err
 }
 
 // Guarded reports whether the database itself keeps the application from changing
@@ -178,12 +205,12 @@ func (s *Store) inTx(ctx context.Context, f func(tx pgx.Tx) error) error {
 		_ = tx.Rollback(ctx)
 	}()
 	if err := f(tx); err != nil {
-		return err
+		return s.noticeRoom(err)
 	}
 	if err := tx.Commit(ctx); err != nil {
-		return fmt.Errorf("commit: %w", err)
+		return s.noticeRoom(fmt.Errorf("commit: %w", err))
 	}
-	return nil
+	return s.noticeRoom(nil)
 }
 
 // newID makes an id that sorts by the time it was made.

@@ -97,6 +97,11 @@ func Fault(log *slog.Logger, w http.ResponseWriter, r *http.Request, err error, 
 	attrs := append([]slog.Attr{slog.String("ref", ref), slog.String("request", f.RequestID),
 		slog.String("method", r.Method), slog.String("path", r.URL.Path), slog.String("error", err.Error())}, more...)
 	log.LogAttrs(r.Context(), slog.LevelError, "a request failed", attrs...)
+	if errors.Is(err, plant.ErrNoRoom) {
+		answer(w, r, problem{Status: http.StatusServiceUnavailable, Kind: "no-room", Ref: ref,
+			Title: f.Words.T("ui.problem.no-room"), Message: f.Words.T("ui.problem-text.no-room", ref)})
+		return
+	}
 	answer(w, r, problem{Status: http.StatusInternalServerError, Kind: "fault", Ref: ref,
 		Title: f.Words.T("ui.problem.fault"), Message: f.Words.T("ui.problem-text.fault", ref)})
 }
