@@ -21,6 +21,8 @@ type planned struct {
 
 func do(says string) plant.PlanStep { return plant.PlanStep{Says: says, Kind: plant.StepDone} }
 
+func stop(says string) plant.PlanStep { return plant.PlanStep{Says: says, Kind: plant.StepStop} }
+
 func ask(says, ifNot string) plant.PlanStep {
 	return plant.PlanStep{Says: says, Kind: plant.StepYesNo, IfNot: ifNot}
 }
@@ -42,7 +44,7 @@ var reactionPlans = []planned{
 		do("Look at the machine: noise, coolant, chips, clamping."),
 	}},
 	{kinds: []plant.MatterKind{plant.MatterReading}, confirm: true, verify: true, steps: []plant.PlanStep{
-		do("Stop the machine at the end of the part, and press Machine stopped here."),
+		stop("Stop the machine at the end of the part."),
 		ask("Does the record show what the gauge showed?", "It was a slip of typing: correct the round. A part that is measured again goes on record as a round of its own."),
 		do("Put a red tag on all that this page says to keep aside, and set it aside."),
 	}},

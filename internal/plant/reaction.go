@@ -76,10 +76,11 @@ const (
 	StepDone  StepKind = "done"   // with "done"
 	StepYesNo StepKind = "yes no" // with yes or no, one of which is as it should be
 	StepValue StepKind = "value"  // with a number that should lie within limits
+	StepStop  StepKind = "stop"   // with "done", which records as well that the machine stands still
 )
 
 // StepKinds lists the kinds of answers in the order in which they are offered.
-var StepKinds = []StepKind{StepDone, StepYesNo, StepValue}
+var StepKinds = []StepKind{StepDone, StepYesNo, StepValue, StepStop}
 
 // PlanStep is one step of a plan.
 type PlanStep struct {
@@ -111,7 +112,7 @@ func (p ReactionPlan) Clean() ReactionPlan {
 		if s.Kind != StepValue {
 			s.Unit, s.Lower, s.Upper = "", nil, nil
 		}
-		if s.Kind == StepDone {
+		if s.Kind == StepDone || s.Kind == StepStop {
 			s.IfNot = ""
 		}
 		steps = append(steps, s)
@@ -225,7 +226,7 @@ func (s PlanStep) check(a StepAnswer) error {
 		return nil
 	}
 	switch s.Kind {
-	case StepDone:
+	case StepDone, StepStop:
 		if a.Said != SaidDone {
 			return Invalidf("said", "This is answered with done.")
 		}

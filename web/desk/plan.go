@@ -53,7 +53,7 @@ type planVersion struct {
 
 // answerKinds are how a step is answered, as the form offers it: of yes and no, either
 // may be as it should be.
-var answerKinds = []string{"done", "yes", "no", "value"}
+var answerKinds = []string{"done", "yes", "no", "value", "stop"}
 
 // planForm is a plan as it was typed.
 type planForm struct {
@@ -201,6 +201,8 @@ func readPlan(f ui.Format, q url.Values, scope plant.PlanScope, kind plant.Matte
 			s.Kind, s.ExpectNo = plant.StepYesNo, at("answer", i) == "no"
 		case "value":
 			s.Kind = plant.StepValue
+		case "stop":
+			s.Kind = plant.StepStop
 		}
 		lower, upper := at("lower", i), at("upper", i)
 		form.lower, form.upper = append(form.lower, lower), append(form.upper, upper)

@@ -128,7 +128,7 @@ func (v *matterView) asked(f ui.Format, person plant.Person, st plant.StationSta
 		v.Fix = &fix
 	}
 	if look := typed.step.Look; look > 0 && look <= len(p.Steps) && m.Open() && p.Steps[look-1].Answer != nil {
-		v.Step = lookAt(f, m, p, look-1, path(st.ID, "matter", m.ID.String()))
+		v.Step = lookAt(f, c.Machine, m, p, look-1, path(st.ID, "matter", m.ID.String()))
 		return
 	}
 	switch p.Stage {
@@ -139,7 +139,7 @@ func (v *matterView) asked(f ui.Format, person plant.Person, st plant.StationSta
 		v.Closing = len(p.Steps) == 0 && !v.Record
 	case plant.StageWorking:
 		if p.Next < len(p.Steps) {
-			v.Step = askStep(f, m, p, p.Next, path(st.ID, "matter", m.ID.String()), typed.step)
+			v.Step = askStep(f, c.Machine, m, p, p.Next, path(st.ID, "matter", m.ID.String()), typed.step)
 		} else {
 			v.Closing = true
 		}

@@ -53,12 +53,15 @@ type stepRow struct {
 // leaveOut are the reasons for which a step is left out, by word.
 var leaveOut = []string{"found", "impossible", "not-here"}
 
-func askStep(f ui.Format, m plant.Matter, p plant.Progress, i int, here string, typed stepForm) *stepAsked {
+func askStep(f ui.Format, machine plant.MachineNow, m plant.Matter, p plant.Progress, i int, here string, typed stepForm) *stepAsked {
 	w, step := f.Words, p.Steps[i]
 	v := &stepAsked{StepView: ui.NewStep(f, step.PlanStep), Action: here + "/step", ID: newFormID(), OtherID: newFormID(), Plan: step.Plan.String(),
 		Attempt: itoa(p.Attempt), Step: itoa(step.Step), Seq: "1", Answer: true, Note: typed.Note, NoteNo: typed.NoteProblem}
 	v.Count, v.About = w.T("matter.step-of", i+1, len(p.Steps)), ui.MatterKindWord(w, step.Kind)
 	v.Raw, v.Problem = typed.Value, typed.Problem
+	if step.PlanStep.Kind == plant.StepStop && !machine.Running() {
+		v.Stopped = w.T("matter.stopped-already", machine.Name, f.Clock(machine.State.At))
+	}
 	for _, r := range leaveOut {
 		v.Reasons = append(v.Reasons, w.T("matter.leave-out-reason."+r))
 	}
@@ -72,10 +75,12 @@ func askStep(f ui.Format, m plant.Matter, p plant.Progress, i int, here string, 
 
 // lookAt shows a step that was answered. While the plan is walked it may be answered
 // again: both answers stay.
-func lookAt(f ui.Format, m plant.Matter, p plant.Progress, i int, here string) *stepAsked {
+func lookAt(f ui.Format, machine plant.MachineNow, m plant.Matter, p plant.Progress, i int, here string) *stepAsked {
 	step := p.Steps[i]
-	v := askStep(f, m, p, i, here, stepForm{})
+	v := askStep(f, machine, m, p, i, here, stepForm{})
+	stopped := v.Stopped
 	v.StepView = ui.NewStep(f, step.PlanStep)
+	v.Stopped = stopped
 	v.Count, v.About = f.Words.T("matter.step-of", i+1, len(p.Steps)), ui.MatterKindWord(f.Words, step.Kind)
 	v.Given = answerWords(f, step)
 	v.Remedy, v.Seq, v.Looking = "", itoa(step.Answer.Seq+1), true
@@ -148,6 +153,9 @@ func (s *Surface) answerStep(w http.ResponseWriter, r *http.Request) error {
 		err = s.store.AnswerStep(r.Context(), a)
 	}
 	if err == nil {
+		err = s.stopFor(r, st, m, a)
+	}
+	if err == nil {
 		ui.Redirect(w, r, path(st.ID, "matter", m.ID.String()))
 		return nil
 	}
@@ -209,4 +217,16 @@ func (s *Surface) stepQuicker(w http.ResponseWriter, r *http.Request, a plant.St
 		typed.problem = f.Words.T("matter.step-quicker", have.PersonName, saidWords(f, plan.Steps[a.Step-1], *have))
 	}
 	return s.quicker(w, r, typed)
+}
+
+// stopFor records that the machine stands still where the answer says so, as its button
+// does. Its number follows from the answer, so that a double tap is one stop.
+func (s *Surface) stopFor(r *http.Request, st plant.StationState, m plant.Matter, a plant.StepAnswer) error {
+	plan, ok := m.Plans[a.Plan]
+	c, found := characteristicOf(st, m.Characteristic)
+	if !ok || !found || a.Said != plant.SaidDone || a.Step < 1 || a.Step > len(plan.Steps) || plan.Steps[a.Step-1].Kind != plant.StepStop || !c.Machine.Running() {
+		return nil
+	}
+	now := c.Machine.State
+	return s.store.SetMachine(r.Context(), plant.MachineState{ID: uuid.NewSHA1(a.ID, []byte("stop")), Machine: c.Machine.ID, Part: now.Part, Lot: now.Lot, Person: a.Person, At: ui.FrameOf(r).Now})
 }

@@ -203,3 +203,50 @@ func TestPlanIsWalkedWithAnInterruptionByTwoPeopleAndSigned(t *testing.T) {
 		}
 	}
 }
+
+// TestAStepThatStopsTheMachineRecordsIt: as the machine's button does, once; where it is
+// reported stopped already the step says so.
+func TestAStepThatStopsTheMachineRecordsIt(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	if _, err := s.SavePlan(t.Context(), plant.ReactionPlan{Kind: plant.MatterUp, Person: s.Engineer.ID, Steps: []plant.PlanStep{
+		{Says: "Stop the lathe.", Kind: plant.StepStop, IfNot: "dropped"}, {Says: "Stop it for good.", Kind: plant.StepStop}}}); err != nil {
+		t.Fatal(err)
+	}
+	at := s.open(t)
+	b := s.signIn(t, s.Operator)
+	b.post(at+"/take", url.Values{"version": {b.get(at).field("version")}}).is(http.StatusSeeOther)
+	machine := func() (m plant.MachineNow, states int) {
+		t.Helper()
+		st, err := s.StationState(t.Context(), s.Station.ID, 1)
+		if err != nil {
+			t.Fatal(err)
+		}
+		for _, m = range st.Machines {
+			if m.ID == s.Machine.ID {
+				break
+			}
+		}
+		if err := s.Pool().QueryRow(t.Context(), `select count(*) from machine_state where machine_id = $1`, s.Machine.ID).Scan(&states); err != nil {
+			t.Fatal(err)
+		}
+		return m, states
+	}
+	_, before := machine()
+	p := b.get(at).says("Stop the lathe.", "The machine is stopped", "This also records that the machine stands still.")
+	form := url.Values{"said": {"done"}}
+	for _, name := range []string{"id", "plan", "attempt", "step", "seq", "remedy"} {
+		form.Set(name, p.field(name))
+	}
+	for range 2 { // a double tap is one
+		b.post(at+"/step", form).is(http.StatusSeeOther)
+	}
+	if m, n := machine(); m.Running() || n != before+1 {
+		t.Errorf("the machine is %+v with %d states, %d before", m.State, n, before)
+	}
+	b.get(at).says("Stop it for good.", "is reported stopped since", "Go on")
+	b.answer(at, "done", nil).is(http.StatusSeeOther)
+	if _, n := machine(); n != before+1 {
+		t.Errorf("it was stopped %d times", n-before)
+	}
+}

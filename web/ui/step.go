@@ -18,6 +18,7 @@ type StepView struct {
 	Raw     string // as typed
 	Problem string
 	Preview bool
+	Stopped string // of a step that stops the machine: it is reported stopped already, and since when
 }
 
 // NewStep is a step in words; the caller adds the count and what was answered.
