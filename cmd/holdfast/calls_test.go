@@ -37,6 +37,9 @@ func TestASupervisorIsCalledOnWhateverPageIsOpen(t *testing.T) {
 
 	supervisor.Click("#calls-link")
 	supervisor.WaitFor(`document.querySelector("[data-testid=open]")`)
+	supervisor.WaitFor(`document.querySelector("#calls-link").textContent.includes("Calls: ")`)
+	supervisor.WaitFor(`document.querySelector("#calls-link").textContent.match(/\d+/)[0] === document.querySelector("#open-title").textContent.match(/\d+/)[0]`)
+	supervisor.Want("the number is that of the list", `String(document.querySelectorAll("[data-testid=open] .calls-open > li").length === Number(document.querySelector("#open-title").textContent.match(/\d+/)[0]))`, "true")
 	supervisor.Accessible("the list of calls")
 	supervisor.FitsWidth("the list of calls", 320, 1280)
 	supervisor.Want("who was called", `document.querySelector("[data-testid=sent]").textContent.includes("on supervisors' pages")`, "true")
@@ -51,7 +54,7 @@ func TestASupervisorIsCalledOnWhateverPageIsOpen(t *testing.T) {
 	supervisor.Value(`document.querySelector("input[name=until]").click()`)
 	supervisor.Fill("#reason", "Insert is on its way from the store")
 	supervisor.Click("[data-testid=quiet-form] button[type=submit]")
-	supervisor.WaitFor(`location.pathname === "/calls" && document.querySelector("[data-testid=open]").textContent.includes("Quiet until")`)
+	supervisor.WaitFor(`location.pathname === "/calls" && document.querySelector("[data-testid=kept-quiet]")?.textContent.includes("Quiet until")`)
 	supervisor.WaitFor(`!document.querySelector("#calls-notice").textContent.includes("Turning 1, Look")`)
 	engineer.WaitFor(needs + `.includes("Insert is on its way from the store")`)
 

@@ -20,6 +20,20 @@ type OpenCall struct {
 // Calling reports whether supervisors are being called about it.
 func (o OpenCall) Calling() bool { return o.Step >= ToSupervisors && o.QuietUntil.IsZero() }
 
+// Waits reports whether it waits for somebody now. This is what is counted, wherever calls
+// are: what is kept quiet is listed apart.
+func (o OpenCall) Waits() bool { return o.QuietUntil.IsZero() }
+
+// Waiting counts what waits for somebody now.
+func Waiting(open []OpenCall) (n int) {
+	for _, o := range open {
+		if o.Waits() {
+			n++
+		}
+	}
+	return n
+}
+
 // OpenCalls lists what nobody has taken at the stations, oldest first.
 func OpenCalls(states []StationState, now time.Time) []OpenCall {
 	var out []OpenCall

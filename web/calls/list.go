@@ -12,9 +12,20 @@ import (
 
 // listView is the page of calls.
 type listView struct {
-	Open        []openView
+	Open        openListView
 	Sent        []sentView
 	Undelivered string // how many messages could not be delivered; empty: none
+}
+
+// openID is the element that lists what nobody has taken. It is pushed.
+const openID = "calls-open"
+
+// openListView is what nobody has taken, and how much of it waits for somebody now.
+type openListView struct {
+	Heading string
+	List    []openView
+	Quiet   string // heading of what is kept quiet
+	Kept    []openView
 }
 
 // openView is something that nobody has taken.
@@ -35,12 +46,7 @@ type sentView struct {
 }
 
 func newList(f ui.Format, open []plant.OpenCall, sent []plant.SentCall, out plant.OutboxState) listView {
-	var v listView
-	open = slices.Clone(open)
-	slices.SortStableFunc(open, func(a, b plant.OpenCall) int { return place(a) - place(b) })
-	for _, o := range open {
-		v.Open = append(v.Open, newOpen(f, o))
-	}
+	v := listView{Open: newOpenList(f, open)}
 	for _, s := range sent {
 		v.Sent = append(v.Sent, newSent(f, s))
 	}
@@ -50,12 +56,27 @@ func newList(f ui.Format, open []plant.OpenCall, sent []plant.SentCall, out plan
 	return v
 }
 
-// place orders what is open before age does: what calls, what does not, what is quiet.
+func newOpenList(f ui.Format, open []plant.OpenCall) openListView {
+	v := openListView{Heading: f.Words.T("calls.open-now")}
+	if n := plant.Waiting(open); n > 0 {
+		v.Heading = f.Words.T("calls.open-count", n)
+	}
+	open = slices.Clone(open)
+	slices.SortStableFunc(open, func(a, b plant.OpenCall) int { return place(a) - place(b) })
+	for _, o := range open {
+		if o.Waits() {
+			v.List = append(v.List, newOpen(f, o))
+		} else {
+			v.Kept = append(v.Kept, newOpen(f, o))
+		}
+	}
+	v.Quiet = f.Words.T("calls.quiet-count", len(v.Kept))
+	return v
+}
+
+// place orders what is open before age does: what calls, then what does not.
 func place(o plant.OpenCall) int {
-	switch {
-	case !o.QuietUntil.IsZero():
-		return 2
-	case o.Step > 0:
+	if o.Step > 0 {
 		return 0
 	}
 	return 1

@@ -51,7 +51,7 @@ func newNotice(f ui.Format, open []plant.OpenCall) noticeView {
 }
 
 // Fragments renders what the live hub pushes to whoever is called: the notice, the words
-// for a screen reader, and the link with its count.
+// for a screen reader, the link with its count, and the list that is counted.
 func Fragments(f ui.Format, open []plant.OpenCall) ([]live.Fragment, error) {
 	v := newNotice(f, open)
 	var out []live.Fragment
@@ -59,7 +59,8 @@ func Fragments(f ui.Format, open []plant.OpenCall) ([]live.Fragment, error) {
 		id string
 		templ.Component
 	}{
-		{"calls-notice", notice(f.Words, v)}, {"calls-say", say(v)}, {"calls-link", ui.CallsLink(f.Words, len(open), true)},
+		{"calls-notice", notice(f.Words, v)}, {"calls-say", say(v)}, {"calls-link", ui.CallsLink(f.Words, plant.Waiting(open), true)},
+		{openID, openPart(f.Words, newOpenList(f, open))}, // for the page of calls, so that its number is that of the link
 	} {
 		var b bytes.Buffer
 		if err := part.Render(context.Background(), &b); err != nil {
