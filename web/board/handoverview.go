@@ -125,7 +125,7 @@ func newHandover(s ui.Shell, c handoverChoice, all []plant.ShiftSummary, closed 
 	v.Figures = handoverFigures(f, shown)
 	v.Causes = newCauses(f, c, closed)
 	if root != nil {
-		v.Root = &rootView{Root: fmt.Sprintf("%x", root.Root), Made: w.T("handover.root-made", f.Clock(root.At), root.Chains)}
+		v.Root = &rootView{Root: fmt.Sprintf("%x", root.Root), Made: w.T("handover.root-made", f.Date(root.At), f.Time(root.At), root.Chains)}
 	}
 	return v
 }
