@@ -84,6 +84,27 @@ func TestBoardFitsItsScreens(t *testing.T) {
 		}
 	}
 
+	// A list that does not fit shows whole rows, says how many follow, and turns to them.
+	const rows = `[...document.querySelectorAll(".needs-list > li")]`
+	const seen = rows + `.filter((e) => getComputedStyle(e).visibility === "visible")`
+	const whole = `(() => { const l = document.querySelector(".needs-list").getBoundingClientRect(); return ` + seen + `.every((e) => { const r = e.getBoundingClientRect(); return r.bottom < l.top || r.top > l.bottom || r.top >= l.top - 1 && r.bottom <= l.bottom + 1; }); })()`
+	for _, size := range [][2]int64{{1920, 1080}, {1280, 800}} {
+		for name, states := range map[string][]plant.StationState{"all run": troubled(14), "some stand still": troubled(14, 0, 3, 5, 11)} {
+			record.set(states)
+			b.Size(size[0], size[1])
+			b.live("/board")
+			at := fmt.Sprintf("%s, %d wide", name, size[0])
+			b.Want(at+": needs", rows+`.length`, "14")
+			b.WaitFor(`!document.querySelector("[data-beyond]").hidden`)
+			b.Want(at+": whole rows", whole, "true")
+			b.Want(at+": the count adds up", `(() => { const l = document.querySelector(".needs-list").getBoundingClientRect(); return `+seen+`.filter((e) => e.getBoundingClientRect().bottom <= l.bottom + 1).length + Number(document.querySelector("[data-beyond]").textContent.match(/^and (\d+) more$/)[1]); })()`, "14")
+		}
+	}
+	b.Value(`(() => { const l = document.querySelector(".needs-list"); l.scrollTop = l.scrollHeight; })()`)
+	b.WaitFor(`document.querySelector("[data-beyond]").textContent.endsWith(" to 14 of 14")`)
+	b.Want("whole rows at the end", whole, "true")
+	b.Accessible("more needs than fit")
+
 	b.Size(1920, 1080)
 	for _, states := range [][]plant.StationState{twelve(), nil} {
 		record.set(states)

@@ -102,8 +102,12 @@ func newNeeds(f ui.Format, states []plant.StationState) needsView {
 	}
 	// Product that nobody protects comes first, then what is known not to be capable.
 	slices.SortStableFunc(v.Engineering, func(a, b studyView) int { return a.rank() - b.rank() })
-	if more := len(v.Engineering) - studiesShown; more > 1 {
-		v.Engineering, v.More = v.Engineering[:studiesShown], v.Engineering[studiesShown:]
+	shown := studiesShown
+	if len(v.List) > 4 { // who is needed now needs the room
+		shown = 1
+	}
+	if more := len(v.Engineering) - shown; more > 1 {
+		v.Engineering, v.More = v.Engineering[:shown], v.Engineering[shown:]
 		v.MoreText = f.Words.T("board.more", more)
 	}
 	slices.SortStableFunc(v.List, func(a, b needView) int {

@@ -2,6 +2,7 @@ package board
 
 import (
 	"math/rand/v2"
+	"slices"
 	"testing"
 	"time"
 
@@ -178,4 +179,27 @@ func characteristic(t *testing.T, s []plant.StationState, station string, i int)
 	}
 	t.Fatalf("no station %s", station)
 	return nil
+}
+
+// troubled is a works in which so many stations have something open; the machines of some
+// stand still.
+func troubled(n int, still ...int) []plant.StationState {
+	states := sixty()
+	for i := range states {
+		c := &states[i].Characteristics[0]
+		if c.Matter = nil; i < n {
+			open(c, time.Duration(i+1)*7*time.Minute, outside)
+		}
+		if slices.Contains(still, i) {
+			stopped(c, time.Hour)
+		}
+		for j := range states[i].Characteristics {
+			c := &states[i].Characteristics[j]
+			c.Due = plant.Due{State: plant.Later, At: noon.Add(time.Hour)}
+			if j > 0 {
+				c.Matter = nil
+			}
+		}
+	}
+	return states
 }

@@ -54,7 +54,7 @@ func (b *Board) show(w http.ResponseWriter, r *http.Request) error {
 	}
 	shell := ui.ShellFor(r, ui.Board, ui.FrameOf(r).Words.T("board.title"))
 	shell.Topics = []string{ui.TopicBoard}
-	shell.Scripts = []string{"js/board.js"}
+	shell.Scripts = []string{"js/board.js", "js/needs.js"}
 	shell.OwnMain = true
 	head := newHead(shell.Format, shell.Plant)
 	shell.Bar, shell.BarEnd = place(shell.Plant.Name, head), clock(head)
