@@ -1,14 +1,15 @@
 // What needs a person is never cut in silence (web/board/page.templ). A wall screen cannot
-// scroll: a list that does not fit shows whole rows only, says how many more there are, and
+// scroll: a list that does not fit is set smaller; if that is not enough it shows whole rows only, says how many more there are, and
 // turns to them page by page, the first and most urgent page the longest. It jumps and does
 // not glide, stands still while somebody is at the list, and does not turn for who wants no
 // motion.
 //
-//   <section id="needs"> <ol class="needs-list"> <li>
+//   <section id="needs" class="few" data-density="few"> <ol class="needs-list"> <li>
 //     <p data-beyond data-more="and {n} more" data-page="{a} to {b} of {n}" hidden>
 
 const FIRST = 20000; // ms that the first page stands
 const OTHER = 10000; // ms that each other stands
+const DENSITIES = ['few', 'several', 'many'];
 const still = matchMedia('(prefers-reduced-motion: reduce)');
 
 const listOf = () => document.querySelector('#needs .needs-list');
@@ -23,6 +24,13 @@ function seen() {
   const rows = rowsOf(list);
   for (const row of rows) row.classList.remove('part');
   note.hidden = true;
+  const section = list.closest('#needs');
+  const pushed = section.dataset.density; // by how many there are; how much each says counts as well
+  for (const density of DENSITIES.slice(DENSITIES.indexOf(pushed))) {
+    section.classList.remove(...DENSITIES);
+    section.classList.add(density);
+    if (list.scrollHeight <= list.clientHeight + 1) break;
+  }
   if (list.scrollHeight <= list.clientHeight + 1) {
     list.removeAttribute('tabindex');
     return;

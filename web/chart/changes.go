@@ -15,6 +15,10 @@ const (
 	smallRoom = 8.0
 )
 
+// rugFrom is how many arrows make a rug: then each is a hairline, those up above those down,
+// and what else is on the axis hangs below it.
+const rugFrom = 80
+
 // changes draws what was done on the time axis: arrows, posts, restart marks.
 func (f *frame) changes(d *builder) {
 	d.line("axis", f.x0, f.axis, f.x1, f.axis)
@@ -28,7 +32,11 @@ func (f *frame) changes(d *builder) {
 		}
 	}
 	sort.SliceStable(marks, func(i, j int) bool { return marks[i].x < marks[j].x })
-	if f.crowded(marks, arrows) {
+	switch crowded := f.crowded(marks, arrows); {
+	case crowded && arrows >= rugFrom:
+		f.rug(d, marks)
+		return
+	case crowded:
 		marks = f.smallArrows(d, marks)
 	}
 	for i := range marks { // a post has no leader, so it may give way a little
@@ -113,6 +121,26 @@ func (f *frame) smallArrows(d *builder, marks []placed) []placed {
 		d.raw("</g>")
 	}
 	return rest
+}
+
+// rug draws every change as a tick that says on hover what it is.
+func (f *frame) rug(d *builder, marks []placed) {
+	for _, m := range marks {
+		from, to, class := f.axis+1, f.axis+6, "rug other"
+		switch m.c.Kind {
+		case Up, Down:
+			if from, to, class = f.axis-13, f.axis-4, "rug"; m.c.Kind == Up {
+				from, to = f.axis-25, f.axis-16
+			}
+			if m.c.Prompted {
+				class = "rug prompted"
+			}
+		}
+		d.raw(`<g class="change">`)
+		d.title(m.c.Title)
+		d.line(class, m.x, from, m.x, to)
+		d.raw("</g>")
+	}
 }
 
 // label writes the size of a change to the right of its mark, or to the left,

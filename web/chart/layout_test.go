@@ -232,3 +232,21 @@ func TestValuesBeyondTheAxisStayApart(t *testing.T) {
 		}
 	}
 }
+
+// TestManyAdjustmentsAreARug: each is there and says what it is on hover, and none covers
+// another or what else is on the axis.
+func TestManyAdjustmentsAreARug(t *testing.T) {
+	t.Parallel()
+	c := axle("rug", 300, 3)
+	few := len(c.Changes)
+	for i := range 210 {
+		c.Changes = append(c.Changes, Change{At: c.Points[20+i].At.Add(time.Minute), Kind: ChangeKind(i % 3), Prompted: i%5 == 0, Text: "+0.001", Title: "adjusted"})
+	}
+	svg := c.SVG()
+	if n := strings.Count(svg, `class="rug`); n != few+210 {
+		t.Errorf("%d ticks for %d changes", n, few+210)
+	}
+	if strings.Contains(svg, `class="arrow`) || strings.Contains(svg, "+0.001</text>") {
+		t.Error("arrows or sizes stand in a rug")
+	}
+}
