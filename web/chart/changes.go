@@ -23,20 +23,17 @@ const rugFrom = 80
 func (f *frame) changes(d *builder) {
 	d.line("axis", f.x0, f.axis, f.x1, f.axis)
 	marks := make([]placed, 0, len(f.c.Changes))
-	arrows := 0
 	for i := range f.c.Changes {
 		c := &f.c.Changes[i]
 		marks = append(marks, placed{c, f.timeX(c)})
-		if c.Kind == Up || c.Kind == Down {
-			arrows++
-		}
 	}
+	arrows := f.c.arrows()
 	sort.SliceStable(marks, func(i, j int) bool { return marks[i].x < marks[j].x })
-	switch crowded := f.crowded(marks, arrows); {
-	case crowded && arrows >= rugFrom:
+	switch {
+	case f.c.IsRug():
 		f.rug(d, marks)
 		return
-	case crowded:
+	case f.crowded(marks, arrows):
 		marks = f.smallArrows(d, marks)
 	}
 	for i := range marks { // a post has no leader, so it may give way a little
@@ -72,6 +69,19 @@ func (f *frame) changes(d *builder) {
 		d.raw("</g>")
 	}
 }
+
+func (c *Control) arrows() (n int) {
+	for i := range c.Changes {
+		if c.Changes[i].Kind == Up || c.Changes[i].Kind == Down {
+			n++
+		}
+	}
+	return n
+}
+
+// IsRug reports whether so much was adjusted that each adjustment is a line on the axis and
+// no arrow.
+func (c *Control) IsRug() bool { return c.arrows() >= rugFrom }
 
 func arrowClass(c *Change) string {
 	if c.Prompted {

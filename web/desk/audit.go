@@ -51,6 +51,7 @@ type auditView struct {
 	Squared    string // the unit of a gain
 	Unprompted bool
 	Prompted   bool
+	Rug        bool // there are so many that each is a line on the axis
 }
 
 // audit is GET .../adjustments.
@@ -144,7 +145,8 @@ func newAuditView(s ui.Shell, h plant.History, audit plant.AdjustmentAudit, a, r
 	}
 	v.conclude(f, audit)
 	v.Facts = auditFacts(f, h, audit)
-	v.SVG = auditChart(f, h, audit).SVG()
+	drawn := auditChart(f, h, audit)
+	v.SVG, v.Rug = drawn.SVG(), drawn.IsRug()
 	q := a.values()
 	q.Set(auditAsWhat, auditTable)
 	v.AsTable = withQuery(address(id, "adjustments"), q)
