@@ -40,6 +40,15 @@ func (g guardedStore) CommitCtx(ctx context.Context, key string, data []byte, ex
 	if visitOf(ctx).begun {
 		return g.Commit(key, data, expiry)
 	}
+	// A note of the last use that cannot be written, because the disk is full for one,
+	// costs nobody their page.
+	if err := g.note(key, data, expiry); err != nil {
+		g.s.opt.Log.Warn("note the last use of a session", "error", err)
+	}
+	return nil
+}
+
+func (g guardedStore) note(key string, data []byte, expiry time.Time) error {
 	g.s.writes.Lock()
 	defer g.s.writes.Unlock()
 	if _, there, err := g.store.Find(key); err != nil || !there {
