@@ -5,24 +5,18 @@ import (
 	"context"
 	"log/slog"
 	"net/http"
-	"net/http/cookiejar"
 	"net/http/httptest"
-	"net/netip"
-	"net/url"
-	"strings"
 	"sync"
 	"testing"
 	"time"
 
-	"github.com/alexedwards/scs/v2/memstore"
 	"github.com/go-chi/chi/v5"
-	"github.com/google/uuid"
 
-	"holdfast/internal/auth"
 	"holdfast/internal/live"
 	"holdfast/internal/plant"
 	"holdfast/web"
 	"holdfast/web/ui"
+	"holdfast/web/webtest"
 )
 
 // plainSurface stands in for a surface: one page, one form, one address that fails.
@@ -53,27 +47,6 @@ func (halfSurface) Routes(r chi.Router) {
 	})
 }
 
-// people are kept in memory and all have the password "right".
-type people struct{ all []plant.Person }
-
-func (p people) Person(_ context.Context, id uuid.UUID) (plant.Person, error) {
-	for _, one := range p.all {
-		if one.ID == id {
-			return one, nil
-		}
-	}
-	return plant.Person{}, &plant.Error{Kind: plant.NotFound, Message: "There is no such person."}
-}
-
-func (p people) Check(_ context.Context, login string, s auth.Secret, _ netip.Addr) (plant.Person, error) {
-	for _, one := range p.all {
-		if one.Login == plant.CleanLogin(login) && string(s) == "right" {
-			return one, nil
-		}
-	}
-	return plant.Person{}, plant.Invalidf("password", "Name or password is wrong.")
-}
-
 // lockedBuffer is a log that requests may write to side by side.
 type lockedBuffer struct {
 	mu sync.Mutex
@@ -98,111 +71,39 @@ type fixture struct {
 	server  *httptest.Server
 	handler http.Handler
 	hub     *live.Hub
-	people  people
+	people  webtest.People
 	log     *lockedBuffer
 }
 
 func newFixture(t *testing.T, change func(*web.Config)) *fixture {
 	t.Helper()
-	f := &fixture{log: &lockedBuffer{}}
-	for _, r := range plant.AllRoles {
-		f.people.all = append(f.people.all, plant.Person{ID: uuid.New(), Login: string(r), Name: string(r) + " 1", Roles: plant.Roles{r}, Active: true})
+	f := &fixture{people: webtest.OneOfEach(), log: &lockedBuffer{}}
+	c := web.Config{
+		Log: slog.New(slog.NewTextHandler(f.log, nil)), Checker: f.people,
+		Plant:   func() plant.Plant { return plant.Plant{Name: "Kestrel Row", Location: time.UTC, Demo: true} },
+		Station: plainSurface{ui.Station}, Board: plainSurface{ui.Board}, Desk: plainSurface{ui.Desk}, Admin: plainSurface{ui.Admin},
+		DemoPeople: func(context.Context) ([]plant.Person, error) { return f.people, nil },
 	}
-	log := slog.New(slog.NewTextHandler(f.log, nil))
-	f.hub = live.New(func(_ context.Context, topics []string) (map[string][]live.Fragment, error) {
+	if change != nil {
+		change(&c)
+	}
+	f.server, f.hub = webtest.Serve(t, &c, f.people, func(_ context.Context, topics []string) (map[string][]live.Fragment, error) {
 		out := make(map[string][]live.Fragment)
 		for _, topic := range topics {
 			out[topic] = []live.Fragment{{ID: "part", HTML: []byte(`<p id="part">` + topic + `</p>`)}}
 		}
 		return out, nil
-	}, live.Options{Log: log})
-	sessions := auth.NewSessions(auth.SessionOptions{
-		Store: memstore.NewWithCleanupInterval(0), People: f.people, PlainHTTP: true, Log: log,
-		Fail: web.SessionFault(log), OnEnd: func(session string) { f.hub.Drop(session, live.SessionEnded) },
 	})
-	c := web.Config{
-		Log: log, Sessions: sessions, Checker: f.people, Hub: f.hub,
-		Plant:   func() plant.Plant { return plant.Plant{Name: "Kestrel Row", Location: time.UTC, Demo: true} },
-		Station: plainSurface{ui.Station}, Board: plainSurface{ui.Board}, Desk: plainSurface{ui.Desk}, Admin: plainSurface{ui.Admin},
-		DemoPeople: func(context.Context) ([]plant.Person, error) { return f.people.all, nil },
-	}
-	if change != nil {
-		change(&c)
-	}
-	f.handler = web.New(c)
-	f.server = httptest.NewServer(f.handler)
-	t.Cleanup(func() {
-		if err := f.hub.Close(context.Background()); err != nil {
-			t.Error(err)
-		}
-		f.server.Close()
-		sessions.Close()
-	})
+	f.handler = f.server.Config.Handler
 	return f
 }
 
-// visitor is a browser that keeps cookies and follows nothing.
-type visitor struct {
-	t    *testing.T
-	http *http.Client
-	base string
-}
+// visitor is a browser without scripts.
+type visitor struct{ *webtest.Browser }
 
 // visitor returns a browser in which a person of this role has signed in; the empty
 // role is nobody.
 func (f *fixture) visitor(t *testing.T, role plant.Role) *visitor {
 	t.Helper()
-	jar, err := cookiejar.New(nil)
-	if err != nil {
-		t.Fatal(err)
-	}
-	v := &visitor{t: t, base: f.server.URL, http: &http.Client{Jar: jar,
-		CheckRedirect: func(*http.Request, []*http.Request) error { return http.ErrUseLastResponse }}}
-	if role != "" {
-		res := v.post("/sign-in", url.Values{"login": {string(role)}, "password": {"right"}})
-		if res.StatusCode != http.StatusSeeOther {
-			t.Fatalf("signing in as %s: %d", role, res.StatusCode)
-		}
-	}
-	return v
-}
-
-type answer struct {
-	*http.Response
-	text string
-}
-
-func (v *visitor) do(r *http.Request) answer {
-	v.t.Helper()
-	res, err := v.http.Do(r)
-	if err != nil {
-		v.t.Fatal(err)
-	}
-	defer res.Body.Close()
-	var b bytes.Buffer
-	_, _ = b.ReadFrom(res.Body) // an answer cut off half-way is for the test to judge
-	return answer{res, b.String()}
-}
-
-func (v *visitor) request(method, path string, form url.Values, headers ...string) *http.Request {
-	v.t.Helper()
-	r, err := http.NewRequestWithContext(v.t.Context(), method, v.base+path, strings.NewReader(form.Encode()))
-	if err != nil {
-		v.t.Fatal(err)
-	}
-	if method == http.MethodPost {
-		r.Header.Set("Content-Type", "application/x-www-form-urlencoded")
-	}
-	for i := 0; i+1 < len(headers); i += 2 {
-		r.Header.Set(headers[i], headers[i+1])
-	}
-	return r
-}
-
-func (v *visitor) get(path string, headers ...string) answer {
-	return v.do(v.request(http.MethodGet, path, nil, headers...))
-}
-
-func (v *visitor) post(path string, form url.Values, headers ...string) answer {
-	return v.do(v.request(http.MethodPost, path, form, headers...))
+	return &visitor{webtest.Visit(t, f.server.URL, string(role))}
 }

@@ -8,6 +8,7 @@ import (
 
 	"holdfast/internal/plant"
 	"holdfast/web"
+	"holdfast/web/webtest"
 )
 
 // who is the set of those that a route answers.
@@ -114,7 +115,7 @@ func TestEveryRouteIsTriedByEveryRoleAndByNobody(t *testing.T) {
 				tryRoute(t, v, role, row)
 			}
 			if role != nobody {
-				if res := v.post("/sign-out", nil); res.StatusCode != http.StatusSeeOther {
+				if res := v.Post("/sign-out", nil); res.StatusCode != http.StatusSeeOther {
 					t.Errorf("signing out: %d", res.StatusCode)
 				}
 			}
@@ -139,11 +140,11 @@ func tryRoute(t *testing.T, v *visitor, role plant.Role, row row) {
 			want, to = http.StatusSeeOther, "/sign-in"
 		}
 	}
-	var res answer
+	var res webtest.Answer
 	if method == http.MethodPost {
-		res = v.post(path, row.form)
+		res = v.Post(path, row.form)
 	} else {
-		res = v.get(path)
+		res = v.Get(path)
 	}
 	if res.StatusCode != want {
 		t.Errorf("%s: %d, want %d", row.route, res.StatusCode, want)

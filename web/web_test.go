@@ -22,7 +22,7 @@ func TestEveryAnswerCarriesTheSecurityHeaders(t *testing.T) {
 	f := newFixture(t, nil)
 	v := f.visitor(t, plant.Operator)
 	for _, path := range []string{"/", "/sign-in", "/station", "/desk", "/nothing", "/static/css/tokens.css", "/healthz", "/station/panic", "/live?topic=board"} {
-		res := v.get(path)
+		res := v.Get(path)
 		for name, want := range map[string]string{
 			"Content-Security-Policy": "default-src 'none'; script-src 'self'; style-src 'self'; img-src 'self' data:; font-src 'self'; " +
 				"connect-src 'self'; form-action 'self'; base-uri 'none'; frame-ancestors 'none'",
@@ -37,7 +37,7 @@ func TestEveryAnswerCarriesTheSecurityHeaders(t *testing.T) {
 		}
 	}
 	secure := newFixture(t, func(c *web.Config) { c.Secure, c.Strict = true, time.Hour })
-	if got := secure.visitor(t, "").get("/healthz").Header.Get("Strict-Transport-Security"); got == "" {
+	if got := secure.visitor(t, "").Get("/healthz").Header.Get("Strict-Transport-Security"); got == "" {
 		t.Error("https is not asked for again")
 	}
 }
@@ -47,12 +47,12 @@ func TestPostsFromOtherSitesAreRefused(t *testing.T) {
 	f := newFixture(t, nil)
 	v := f.visitor(t, plant.Supervisor)
 	for _, headers := range [][]string{{"Sec-Fetch-Site", "cross-site"}, {"Sec-Fetch-Site", "same-site"}, {"Origin", "http://evil.example"}} {
-		if res := v.post("/station/void", nil, headers...); res.StatusCode != http.StatusForbidden {
+		if res := v.Post("/station/void", nil, headers...); res.StatusCode != http.StatusForbidden {
 			t.Errorf("%v: %d", headers, res.StatusCode)
 		}
 	}
 	for _, headers := range [][]string{{"Sec-Fetch-Site", "same-origin"}, {"Origin", f.server.URL}, nil} {
-		if res := v.post("/station/void", nil, headers...); res.StatusCode != http.StatusSeeOther {
+		if res := v.Post("/station/void", nil, headers...); res.StatusCode != http.StatusSeeOther {
 			t.Errorf("%v: %d", headers, res.StatusCode)
 		}
 	}
@@ -76,16 +76,16 @@ func TestLogsHoldNoSecretsAndNoQueries(t *testing.T) {
 	t.Parallel()
 	f := newFixture(t, nil)
 	v := f.visitor(t, "")
-	v.post("/sign-in?token=hunter1", url.Values{"login": {"who-typed-this"}, "password": {"hunter2"}})
-	v.post("/sign-in", url.Values{"login": {"operator"}, "password": {"right"}})
-	v.get("/station?search=hunter3")
+	v.Post("/sign-in?token=hunter1", url.Values{"login": {"who-typed-this"}, "password": {"hunter2"}})
+	v.Post("/sign-in", url.Values{"login": {"operator"}, "password": {"right"}})
+	v.Get("/station?search=hunter3")
 	log := f.log.String()
 	for _, secret := range []string{"hunter", "who-typed-this", "right"} {
 		if strings.Contains(log, secret) {
 			t.Errorf("%q is in the log:\n%s", secret, log)
 		}
 	}
-	jar := v.http.Jar.Cookies(&url.URL{Scheme: "http", Host: strings.TrimPrefix(f.server.URL, "http://")})
+	jar := v.HTTP.Jar.Cookies(&url.URL{Scheme: "http", Host: strings.TrimPrefix(f.server.URL, "http://")})
 	if len(jar) == 0 || strings.Contains(log, jar[0].Value) {
 		t.Errorf("the session's token is in the log, or there is none: %v", jar)
 	}
@@ -100,9 +100,9 @@ func TestPanicsBecomeReferences(t *testing.T) {
 	t.Parallel()
 	f := newFixture(t, nil)
 	v := f.visitor(t, plant.Operator)
-	res := v.get("/station/panic")
-	if res.StatusCode != 500 || strings.Contains(res.text, "a secret of ours") || !strings.Contains(res.text, "(ref ") {
-		t.Errorf("%d: %s", res.StatusCode, res.text)
+	res := v.Get("/station/panic")
+	if res.StatusCode != 500 || strings.Contains(res.Text, "a secret of ours") || !strings.Contains(res.Text, "(ref ") {
+		t.Errorf("%d: %s", res.StatusCode, res.Text)
 	}
 	if log := f.log.String(); !strings.Contains(log, "a secret of ours") || !strings.Contains(log, "fixture_test.go") || !strings.Contains(log, "status=500") {
 		t.Errorf("logged: %s", log)
@@ -113,10 +113,10 @@ func TestHalfAnAnswerIsNotTakenForWhole(t *testing.T) {
 	t.Parallel()
 	f := newFixture(t, func(c *web.Config) { c.Station = halfSurface{} })
 	v := f.visitor(t, plant.Operator)
-	res, err := v.http.Do(v.request(http.MethodGet, "/station", nil))
+	res, err := v.HTTP.Do(v.Request(http.MethodGet, "/station", nil))
 	if err == nil {
 		_ = res.Body.Close()
-		t.Errorf("half an answer came as %d", res.StatusCode)
+		t.Errorf("half an webtest.Answer came as %d", res.StatusCode)
 	}
 	if log := f.log.String(); !strings.Contains(log, "failed half-way") {
 		t.Errorf("logged: %s", log)
@@ -128,22 +128,22 @@ func TestWhatIsNotThere(t *testing.T) {
 	f := newFixture(t, nil)
 	v := f.visitor(t, plant.Operator)
 	for _, path := range []string{"/nothing", "/station/nothing", "/static/nothing.css"} {
-		if res := v.get(path); res.StatusCode != 404 {
+		if res := v.Get(path); res.StatusCode != 404 {
 			t.Errorf("%s: %d", path, res.StatusCode)
 		}
 	}
-	if res := v.get("/nothing"); !strings.Contains(res.text, "operator 1") {
+	if res := v.Get("/nothing"); !strings.Contains(res.Text, "Operator 1") {
 		t.Error("the page of what is not there does not know who is signed in")
 	}
-	if res := v.post("/sign-in/nothing", nil); res.StatusCode != 404 {
+	if res := v.Post("/sign-in/nothing", nil); res.StatusCode != 404 {
 		t.Errorf("got %d", res.StatusCode)
 	}
-	if res := v.get("/theme"); res.StatusCode != http.StatusMethodNotAllowed {
+	if res := v.Get("/theme"); res.StatusCode != http.StatusMethodNotAllowed {
 		t.Errorf("getting what is posted: %d", res.StatusCode)
 	}
 	for _, path := range []string{"/sign-in", "/station/"} { // at the root and below a mounted router
-		if head := v.do(v.request(http.MethodHead, path, nil)); head.StatusCode != 200 || head.text != "" {
-			t.Errorf("asking for the head of %s: %d %q", path, head.StatusCode, head.text)
+		if head := v.Do(v.Request(http.MethodHead, path, nil)); head.StatusCode != 200 || head.Text != "" {
+			t.Errorf("asking for the head of %s: %d %q", path, head.StatusCode, head.Text)
 		}
 	}
 }
@@ -156,8 +156,8 @@ func TestLargeBodiesAreRefusedEverywhere(t *testing.T) {
 	for _, path := range []string{"/station/void", "/sign-in", "/theme"} {
 		r := httptest.NewRequest("POST", path, strings.NewReader(big.Encode()))
 		r.Header.Set("Content-Type", "application/x-www-form-urlencoded")
-		at, _ := url.Parse(v.base)
-		for _, c := range v.http.Jar.Cookies(at) {
+		at, _ := url.Parse(v.Base)
+		for _, c := range v.HTTP.Jar.Cookies(at) {
 			r.AddCookie(c)
 		}
 		w := httptest.NewRecorder()
@@ -174,10 +174,10 @@ func TestReadinessIsAskedFor(t *testing.T) {
 		c.Ready = func(context.Context) error { return errors.New("database at 10.0.0.4 is away") }
 	})
 	v := f.visitor(t, "")
-	if res := v.get("/readyz"); res.StatusCode != 503 || strings.Contains(res.text, "10.0.0.4") {
-		t.Errorf("%d %s", res.StatusCode, res.text)
+	if res := v.Get("/readyz"); res.StatusCode != 503 || strings.Contains(res.Text, "10.0.0.4") {
+		t.Errorf("%d %s", res.StatusCode, res.Text)
 	}
-	if res := v.get("/healthz"); res.StatusCode != 200 {
+	if res := v.Get("/healthz"); res.StatusCode != 200 {
 		t.Errorf("a server whose database is away is alive all the same: %d", res.StatusCode)
 	}
 	if !strings.Contains(f.log.String(), "10.0.0.4") {
@@ -187,17 +187,17 @@ func TestReadinessIsAskedFor(t *testing.T) {
 
 // dial opens the live socket as a browser would.
 func (v *visitor) dial(query string) (*websocket.Conn, error) {
-	at, _ := url.Parse(v.base)
-	header := http.Header{"Origin": {v.base}}
-	for _, c := range v.http.Jar.Cookies(at) {
+	at, _ := url.Parse(v.Base)
+	header := http.Header{"Origin": {v.Base}}
+	for _, c := range v.HTTP.Jar.Cookies(at) {
 		header.Add("Cookie", c.String())
 	}
-	conn, res, err := websocket.DefaultDialer.DialContext(v.t.Context(), "ws://"+at.Host+"/live?"+query, header)
+	conn, res, err := websocket.DefaultDialer.DialContext(v.T.Context(), "ws://"+at.Host+"/live?"+query, header)
 	if res != nil && res.Body != nil {
 		_ = res.Body.Close()
 	}
 	if err == nil {
-		v.t.Cleanup(func() { _ = conn.Close() })
+		v.T.Cleanup(func() { _ = conn.Close() })
 		_ = conn.SetReadDeadline(time.Now().Add(5 * time.Second))
 	}
 	return conn, err
@@ -250,7 +250,7 @@ func TestLiveEndsWithItsSession(t *testing.T) {
 	if _, _, err := conn.ReadMessage(); err != nil {
 		t.Fatal(err)
 	}
-	v.post("/sign-out", nil)
+	v.Post("/sign-out", nil)
 	for {
 		_, _, err := conn.ReadMessage()
 		if err == nil {
@@ -267,9 +267,9 @@ func TestLiveOfAnotherSiteIsRefused(t *testing.T) {
 	t.Parallel()
 	f := newFixture(t, nil)
 	v := f.visitor(t, plant.Supervisor)
-	at, _ := url.Parse(v.base)
+	at, _ := url.Parse(v.Base)
 	header := http.Header{"Origin": {"http://evil.example"}}
-	for _, c := range v.http.Jar.Cookies(at) {
+	for _, c := range v.HTTP.Jar.Cookies(at) {
 		header.Add("Cookie", c.String())
 	}
 	_, res, err := websocket.DefaultDialer.DialContext(t.Context(), "ws://"+at.Host+"/live?topic=board", header)
@@ -282,14 +282,14 @@ func TestStepInByOneClick(t *testing.T) {
 	t.Parallel()
 	f := newFixture(t, nil)
 	v := f.visitor(t, "")
-	if page := v.get("/sign-in"); !strings.Contains(page.text, "engineer 1") || !strings.Contains(page.text, `data-testid="demo"`) {
+	if page := v.Get("/sign-in"); !strings.Contains(page.Text, "Engineer 1") || !strings.Contains(page.Text, `data-testid="demo"`) {
 		t.Error("the demonstration does not offer its people, or does not say what it is")
 	}
-	res := v.post("/sign-in/demo", url.Values{"person": {f.people.all[2].ID.String()}})
+	res := v.Post("/sign-in/demo", url.Values{"person": {f.people[2].ID.String()}})
 	if res.StatusCode != 303 || res.Header.Get("Location") != "/desk" {
 		t.Fatalf("%d to %s", res.StatusCode, res.Header.Get("Location"))
 	}
-	if res := v.get("/desk"); res.StatusCode != 200 || !strings.Contains(res.text, "engineer 1") {
+	if res := v.Get("/desk"); res.StatusCode != 200 || !strings.Contains(res.Text, "Engineer 1") {
 		t.Errorf("%d", res.StatusCode)
 	}
 }

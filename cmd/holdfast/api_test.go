@@ -87,7 +87,7 @@ func TestRoundsFromOutside(t *testing.T) {
 	other["readings"] = []any{"14.991", "14.991", "14.991", "14.991", "14.991"}
 	first["entries"] = []any{other}
 	v.api("rounds", first, 409)
-	shows("Could not be taken", "Bore gauge", "Another round is on record under this number")
+	shows("1 line not taken", "Bore gauge", "Another round is on record under this number")
 
 	for _, c := range []struct {
 		change func(e map[string]any)

@@ -41,7 +41,7 @@ func TestProductIsKeptAsideAndReleased(t *testing.T) {
 	tablet.Fill("input[name=tag]", "R-17")
 	tablet.Click("[data-testid=keep-aside]")
 	tablet.WaitFor(`document.querySelector("[data-testid=aside-state]")`)
-	tablet.Want("what is on record", `document.querySelector("[data-testid=aside-state]").textContent`, "68 parts are kept aside.")
+	tablet.Want("what is on record", `document.querySelector("[data-testid=aside-state]").textContent.trim()`, "68 parts are kept aside.")
 	tablet.Accessible("the matter with what was put aside")
 
 	desk := r.signIn(t, browser, "supervisor1")

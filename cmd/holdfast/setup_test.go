@@ -258,7 +258,7 @@ func TestAPlantFromAFile(t *testing.T) {
 
 	// What a machine makes how, and what is aimed at, is in the preview too.
 	res, _ = v.upload("one.csv", "Line;Station;Machine;Parts per hour;Streams;Characteristic;Unit;Decimals;Target;Parts per subgroup;Sample every minutes\nAxles;Moulding;Press 4;1200;cavity 1, cavity 2, cavity 3;Wall;mm;2;2,35;5;60\n")
-	if _, body = v.get(res.Header.Get("Location")); !strings.Contains(body, "<td>1200</td><td>cavity 1, cavity 2, cavity 3</td>") || !strings.Contains(body, "<td>2.35 mm</td>") {
+	if _, body = v.get(res.Header.Get("Location")); !strings.Contains(body, "<td>1200</td><td>cavity 1, cavity 2, cavity 3</td>") || !strings.Contains(body, "<td>2.35\u00a0mm</td>") {
 		t.Errorf("the preview of rate, streams and target: %s", body[strings.Index(body, "<main"):])
 	}
 

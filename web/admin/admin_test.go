@@ -19,7 +19,7 @@ func TestOnlyAdministratorsSeeTheQualification(t *testing.T) {
 		v := s.visitor(t, login)
 		for _, at := range []string{"GET /admin/qualification", "POST /admin/qualification", "GET /admin/qualification.json"} {
 			method, path, _ := strings.Cut(at, " ")
-			if res, _ := v.do(method, path, nil); res.StatusCode != want {
+			if res := v.Do(v.Request(method, path, nil)); res.StatusCode != want {
 				t.Errorf("%s as %q: %d, want %d", at, login, res.StatusCode, want)
 			}
 		}

@@ -5,24 +5,19 @@ import (
 	"context"
 	"log/slog"
 	"net/http"
-	"net/http/cookiejar"
 	"net/http/httptest"
-	"net/netip"
 	"net/url"
 	"strings"
 	"testing"
 	"time"
 
-	"github.com/alexedwards/scs/v2/memstore"
-	"github.com/google/uuid"
 	"golang.org/x/net/html"
 
-	"holdfast/internal/auth"
-	"holdfast/internal/live"
 	"holdfast/internal/plant"
 	"holdfast/internal/qualify"
 	"holdfast/web"
 	"holdfast/web/ui"
+	"holdfast/web/webtest"
 	"holdfast/web/words"
 )
 
@@ -30,27 +25,6 @@ var noon = time.Date(2026, 3, 12, 11, 0, 0, 0, time.UTC) // 12:00 in the plant
 
 // zone is a plant's zone that is never UTC.
 var zone = time.FixedZone("Plant/Time", 3600)
-
-// people all have the password "right".
-type people []plant.Person
-
-func (p people) Person(_ context.Context, id uuid.UUID) (plant.Person, error) {
-	for _, one := range p {
-		if one.ID == id {
-			return one, nil
-		}
-	}
-	return plant.Person{}, &plant.Error{Kind: plant.NotFound, Message: "There is no such person."}
-}
-
-func (p people) Check(_ context.Context, login string, s auth.Secret, _ netip.Addr) (plant.Person, error) {
-	for _, one := range p {
-		if one.Login == plant.CleanLogin(login) && string(s) == "right" {
-			return one, nil
-		}
-	}
-	return plant.Person{}, plant.Invalidf("password", "Name or password is wrong.")
-}
 
 // runner stands in for the computing: it goes on when the test says so.
 type runner struct {
@@ -103,75 +77,33 @@ type site struct {
 func newSite(t testing.TB, run Runner) *site {
 	t.Helper()
 	s := &site{log: &bytes.Buffer{}}
-	log := slog.New(slog.DiscardHandler)
-	hub := live.New(func(context.Context, []string) (map[string][]live.Fragment, error) { return nil, nil }, live.Options{Log: log})
-	var all people
-	for _, r := range plant.AllRoles {
-		all = append(all, plant.Person{ID: uuid.New(), Login: string(r), Name: strings.ToUpper(string(r)[:1]) + string(r)[1:] + " 1", Roles: plant.Roles{r}, Active: true})
-	}
-	sessions := auth.NewSessions(auth.SessionOptions{Store: memstore.NewWithCleanupInterval(0), People: all, PlainHTTP: true, Log: log, Fail: web.SessionFault(log)})
+	all := webtest.OneOfEach()
 	s.admin = New(Deps{Log: slog.New(slog.NewTextHandler(s.log, nil)), Machine: "press-hall-1", Run: run, Store: nothing{},
 		About: func(context.Context) (Installation, error) { return Installation{}, nil }})
-	s.Server = httptest.NewServer(web.New(web.Config{Log: log, Now: func() time.Time { return noon }, Sessions: sessions, Checker: all, Hub: hub,
-		Plant: func() plant.Plant { return plant.Plant{Name: "Kestrel Row", Location: zone} }, Admin: s.admin}))
-	t.Cleanup(func() {
-		s.admin.Close()
-		if err := hub.Close(context.Background()); err != nil {
-			t.Error(err)
-		}
-		s.Server.Close()
-		sessions.Close()
-	})
+	t.Cleanup(s.admin.Close) // after the server
+	s.Server, _ = webtest.Serve(t, &web.Config{Now: func() time.Time { return noon }, Checker: all,
+		Plant: func() plant.Plant { return plant.Plant{Name: "Kestrel Row", Location: zone} }, Admin: s.admin}, all, nil)
 	return s
 }
 
 // visitor is a browser without scripts that follows nothing.
-type visitor struct {
-	t    testing.TB
-	http *http.Client
-	base string
-}
+type visitor struct{ *webtest.Browser }
 
 func (s *site) visitor(t testing.TB, login string) *visitor {
 	t.Helper()
-	jar, err := cookiejar.New(nil)
-	if err != nil {
-		t.Fatal(err)
-	}
-	v := &visitor{t: t, base: s.URL, http: &http.Client{Jar: jar,
-		CheckRedirect: func(*http.Request, []*http.Request) error { return http.ErrUseLastResponse }}}
-	if login != "" {
-		if res, _ := v.post("/sign-in", url.Values{"login": {login}, "password": {"right"}}); res.StatusCode != http.StatusSeeOther {
-			t.Fatalf("signing in as %s: %d", login, res.StatusCode)
-		}
-	}
-	return v
+	return &visitor{webtest.Visit(t, s.URL, login)}
 }
 
-func (v *visitor) do(method, path string, form url.Values) (*http.Response, string) {
-	v.t.Helper()
-	r, err := http.NewRequestWithContext(context.Background(), method, v.base+path, strings.NewReader(form.Encode()))
-	if err != nil {
-		v.t.Fatal(err)
-	}
-	if method == http.MethodPost {
-		r.Header.Set("Content-Type", "application/x-www-form-urlencoded")
-	}
-	res, err := v.http.Do(r)
-	if err != nil {
-		v.t.Fatal(err)
-	}
-	defer res.Body.Close()
-	var b bytes.Buffer
-	if _, err := b.ReadFrom(res.Body); err != nil {
-		v.t.Fatal(err)
-	}
-	return res, b.String()
+func (v *visitor) get(path string) (*http.Response, string) {
+	v.T.Helper()
+	a := v.Get(path)
+	return a.Response, a.Text
 }
 
-func (v *visitor) get(path string) (*http.Response, string) { return v.do("GET", path, nil) }
 func (v *visitor) post(path string, form url.Values) (*http.Response, string) {
-	return v.do("POST", path, form)
+	v.T.Helper()
+	a := v.Post(path, form)
+	return a.Response, a.Text
 }
 
 // part is the text of the element with a data-testid, "" when it is not there.

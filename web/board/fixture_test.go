@@ -5,53 +5,20 @@ import (
 	"log/slog"
 	"net/http"
 	"net/http/httptest"
-	"net/netip"
 	"sync"
 	"testing"
 	"time"
 
-	"github.com/alexedwards/scs/v2/memstore"
 	"github.com/go-chi/chi/v5"
 	"github.com/google/uuid"
 
-	"holdfast/internal/auth"
 	"holdfast/internal/live"
 	"holdfast/internal/plant"
 	"holdfast/web"
 	"holdfast/web/ui"
+	"holdfast/web/webtest"
 	"holdfast/web/words"
 )
-
-// people all have the password "right".
-type people []plant.Person
-
-func newPeople() people {
-	var all people
-	for _, r := range plant.AllRoles {
-		all = append(all, plant.Person{ID: named(string(r)), Login: string(r), Name: map[plant.Role]string{
-			plant.Operator: "Operator 1", plant.Supervisor: "Supervisor 1", plant.Engineer: "Engineer 1", plant.Administrator: "Administrator 1",
-		}[r], Roles: plant.Roles{r}, Active: true})
-	}
-	return all
-}
-
-func (p people) Person(_ context.Context, id uuid.UUID) (plant.Person, error) {
-	for _, one := range p {
-		if one.ID == id {
-			return one, nil
-		}
-	}
-	return plant.Person{}, &plant.Error{Kind: plant.NotFound, Message: "There is no such person."}
-}
-
-func (p people) Check(_ context.Context, login string, s auth.Secret, _ netip.Addr) (plant.Person, error) {
-	for _, one := range p {
-		if one.Login == plant.CleanLogin(login) && string(s) == "right" {
-			return one, nil
-		}
-	}
-	return plant.Person{}, plant.Invalidf("password", "Name or password is wrong.")
-}
 
 // floorNow is a record whose states a test sets.
 type floorNow struct {
@@ -80,27 +47,17 @@ type site struct {
 func newSite(t testing.TB, record Store, p plant.Plant, now func() time.Time) *site {
 	t.Helper()
 	log := slog.New(slog.DiscardHandler)
-	hub := live.New(func(ctx context.Context, topics []string) (map[string][]live.Fragment, error) {
-		states, err := record.StationStates(ctx, 25)
-		if err != nil {
-			return nil, err
-		}
-		f, err := Fragments(ui.NewFormat(words.For("en"), p.Location, now()), p, states)
-		return map[string][]live.Fragment{ui.TopicBoard: f}, err
-	}, live.Options{Log: log})
-	all := newPeople()
-	sessions := auth.NewSessions(auth.SessionOptions{Store: memstore.NewWithCleanupInterval(0), People: all, PlainHTTP: true, Log: log, Fail: web.SessionFault(log)})
-	handler := web.New(web.Config{Log: log, Now: now, Sessions: sessions, Checker: all, Hub: hub,
-		Plant: func() plant.Plant { return p }, Board: New(Deps{Store: record, Log: log})})
-	s := &site{httptest.NewServer(handler), hub}
-	t.Cleanup(func() {
-		if err := hub.Close(context.Background()); err != nil {
-			t.Error(err)
-		}
-		s.Server.Close()
-		sessions.Close()
-	})
-	return s
+	all := webtest.OneOfEach()
+	server, hub := webtest.Serve(t, &web.Config{Log: log, Now: now, Checker: all, Plant: func() plant.Plant { return p }, Board: New(Deps{Store: record, Log: log})}, all,
+		func(ctx context.Context, topics []string) (map[string][]live.Fragment, error) {
+			states, err := record.StationStates(ctx, 25)
+			if err != nil {
+				return nil, err
+			}
+			f, err := Fragments(ui.NewFormat(words.For("en"), p.Location, now()), p, states)
+			return map[string][]live.Fragment{ui.TopicBoard: f}, err
+		})
+	return &site{server, hub}
 }
 
 // alone serves the surface for a person without sessions around it.

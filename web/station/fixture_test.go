@@ -1,43 +1,21 @@
 package station_test
 
 import (
-	"bytes"
-	"context"
-	"io"
-	"log/slog"
-	"net/http"
-	"net/http/cookiejar"
-	"net/http/httptest"
-	"net/netip"
 	"net/url"
 	"strconv"
 	"strings"
 	"testing"
 
-	"github.com/alexedwards/scs/v2/memstore"
-
-	"holdfast/internal/auth"
-	"holdfast/internal/live"
 	"holdfast/internal/localpg/pgtest"
 	"holdfast/internal/plant"
 	"holdfast/internal/store"
 	"holdfast/internal/store/storetest"
 	"holdfast/web"
 	"holdfast/web/station"
+	"holdfast/web/webtest"
 )
 
 func TestMain(m *testing.M) { pgtest.Main(m, store.Migrate) }
-
-// checker lets everybody in whose password is "right".
-type checker struct{ *store.Store }
-
-func (c checker) Check(ctx context.Context, login string, s auth.Secret, _ netip.Addr) (plant.Person, error) {
-	p, _, err := c.Credential(ctx, login)
-	if err != nil || string(s) != "right" {
-		return plant.Person{}, plant.Invalidf("password", "Name or password is wrong.")
-	}
-	return p, nil
-}
 
 // site is the real router and the real store around the station.
 type site struct {
@@ -48,49 +26,25 @@ type site struct {
 func newSite(t testing.TB) *site {
 	t.Helper()
 	p := storetest.New(t, "")
-	logger := slog.New(slog.NewTextHandler(logWriter{t}, &slog.HandlerOptions{Level: slog.LevelWarn}))
-	hub := live.New(func(context.Context, []string) (map[string][]live.Fragment, error) { return nil, nil }, live.Options{Log: logger})
-	sessions := auth.NewSessions(auth.SessionOptions{Store: memstore.NewWithCleanupInterval(0), People: p.Store, PlainHTTP: true, Log: logger})
+	known, log := webtest.Recorded{Store: p.Store}, webtest.Log(t)
 	pl, err := p.Store.Plant(t.Context())
 	if err != nil {
 		t.Fatal(err)
 	}
-	server := httptest.NewServer(web.New(web.Config{Log: logger, Now: p.Clock.Now, Plant: func() plant.Plant { return pl },
-		Sessions: sessions, Checker: checker{p.Store}, Hub: hub,
-		Station: station.New(station.Deps{Store: p.Store, Signer: checker{p.Store}, Log: logger})}))
-	t.Cleanup(func() {
-		server.Close()
-		_ = hub.Close(context.Background())
-		sessions.Close()
-	})
+	server, _ := webtest.Serve(t, &web.Config{Log: log, Now: p.Clock.Now, Plant: func() plant.Plant { return pl }, Checker: known,
+		Station: station.New(station.Deps{Store: p.Store, Signer: known, Log: log})}, p.Store, nil)
 	return &site{Plant: p, url: server.URL}
-}
-
-type logWriter struct{ t testing.TB }
-
-func (w logWriter) Write(p []byte) (int, error) {
-	w.t.Logf("%s", bytes.TrimSpace(p))
-	return len(p), nil
 }
 
 // browser is somebody at a tablet.
 type browser struct {
-	t    testing.TB
+	*webtest.Browser
 	site *site
-	http *http.Client
 }
 
 func (s *site) signIn(t testing.TB, p plant.Person) *browser {
 	t.Helper()
-	jar, err := cookiejar.New(nil)
-	if err != nil {
-		t.Fatal(err)
-	}
-	b := &browser{t: t, site: s, http: &http.Client{Jar: jar, CheckRedirect: func(*http.Request, []*http.Request) error { return http.ErrUseLastResponse }}}
-	if got := b.post("/sign-in", url.Values{"login": {p.Login}, "password": {"right"}}); got.status != http.StatusSeeOther {
-		t.Fatalf("sign in as %s: status %d", p.Login, got.status)
-	}
-	return b
+	return &browser{webtest.Visit(t, s.url, p.Login), s}
 }
 
 // page is an answer.
@@ -101,33 +55,18 @@ type page struct {
 	body   string
 }
 
-func (b *browser) get(path string) page { return b.do(http.MethodGet, path, nil) }
+func (b *browser) get(path string) page {
+	b.T.Helper()
+	return b.page(b.Get(path))
+}
 
-func (b *browser) post(path string, form url.Values) page { return b.do(http.MethodPost, path, form) }
+func (b *browser) post(path string, form url.Values) page {
+	b.T.Helper()
+	return b.page(b.Post(path, form))
+}
 
-func (b *browser) do(method, path string, form url.Values) page {
-	b.t.Helper()
-	var body io.Reader
-	if form != nil {
-		body = strings.NewReader(form.Encode())
-	}
-	r, err := http.NewRequestWithContext(b.t.Context(), method, b.site.url+path, body)
-	if err != nil {
-		b.t.Fatal(err)
-	}
-	if form != nil {
-		r.Header.Set("Content-Type", "application/x-www-form-urlencoded")
-	}
-	res, err := b.http.Do(r)
-	if err != nil {
-		b.t.Fatal(err)
-	}
-	defer res.Body.Close()
-	text, err := io.ReadAll(res.Body)
-	if err != nil {
-		b.t.Fatal(err)
-	}
-	return page{b.t, res.StatusCode, res.Header.Get("Location"), string(text)}
+func (b *browser) page(a webtest.Answer) page {
+	return page{b.T, a.StatusCode, a.Header.Get("Location"), a.Text}
 }
 
 func (p page) is(status int) page {

@@ -101,7 +101,7 @@ func TestRefusalsAreInTheLanguage(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	b.http.Jar.SetCookies(at, []*http.Cookie{{Name: words.Cookie, Value: "es", Path: "/"}})
+	b.HTTP.Jar.SetCookies(at, []*http.Cookie{{Name: words.Cookie, Value: "es", Path: "/"}})
 	form := b.get(s.at()+"?measure="+s.Diameter.ID.String()).is(http.StatusOK).round(s.Diameter, "14.991", "14.992", "14.990", "14.991", "14.992")
 	form.Set("taken", strconv.FormatInt(s.Clock.Now().Add(-240*time.Hour).UnixMilli(), 10))
 	form.Set("sent", strconv.FormatInt(s.Clock.Now().UnixMilli(), 10))

@@ -27,7 +27,7 @@ func (s *site) planned(t testing.TB) {
 
 // answer sends the answer that the page asks for.
 func (b *browser) answer(at, said string, more url.Values) page {
-	b.t.Helper()
+	b.T.Helper()
 	p := b.get(at).is(http.StatusOK)
 	form := url.Values{"said": {said}}
 	for _, name := range []string{"id", "plan", "attempt", "step", "seq", "remedy"} {

@@ -28,7 +28,7 @@ func TestTheStationSpeaksFromTheCatalogueAlone(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	b.http.Jar.SetCookies(at, []*http.Cookie{{Name: words.Cookie, Value: wordstest.Lang, Path: "/"}})
+	b.HTTP.Jar.SetCookies(at, []*http.Cookie{{Name: words.Cookie, Value: wordstest.Lang, Path: "/"}})
 	names := []string{"Holdfast", "Kestrel Row", s.Line.Name, s.Station.Name, s.Other.Name, s.Machine.Name, s.Second.Name, "Lathe 3", s.PartA.Name, s.PartB.Name,
 		s.Diameter.Name, s.Force.Name, s.Mass.Name, s.Length.Name, s.Operator.Name, "Insert chipped", "Swarf in collet", "Not found", "mm", "kN", "g"}
 	names = append(wordstest.LanguageNames(), names...)
