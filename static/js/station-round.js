@@ -24,7 +24,8 @@
 // What is typed is kept in this browser (draft.js) until it is sent, so that leaving the
 // page, the lock of a tablet or another person at it lose nothing. data-station names the
 // place; data-several says that readings of other people may be sent from here, which is
-// so on an enrolled tablet. [data-kept] tells that something was brought back, and
+// so on an enrolled tablet. [data-kept] tells that something was brought back,
+// [data-unfit] that it does not fit what is asked now, and
 // [data-afresh] throws it away.
 //
 // Targets, bounds and values are whole last digits ("units"): 12.500 with three
@@ -90,9 +91,13 @@ function start(form) {
     const empty = sections.every((s) => s.filled() === 0) && !form.querySelector("[aria-invalid]");
     if (!draft || !empty) return;
     const mine = (r) => r.value.trim() === "" || r.keyed === say.person;
-    const fits = sections.every((s) => s.takes(draft.parts[s.root.dataset.ask]));
-    if (!fits || (say.several === undefined && !Object.values(draft.parts).every((p) => p.readings.every(mine)))) {
+    const typed = Object.values(draft.parts).flatMap((p) => p.readings);
+    if (say.several === undefined && !typed.every(mine)) {
       drafts.drop(draftKey);
+      return;
+    }
+    if (!sections.every((s) => s.takes(draft.parts[s.root.dataset.ask]))) {
+      tellUnfit(typed.map((r) => r.value).filter((v) => v.trim() !== ""));
       return;
     }
     field("round").value = draft.round;
@@ -104,10 +109,20 @@ function start(form) {
     form.querySelector("[data-kept]").hidden = false;
   }
 
-  form.querySelector("[data-afresh]").addEventListener("click", () => {
-    drafts.drop(draftKey);
-    location.reload();
-  });
+  // tellUnfit says that the set-up was changed while something was typed, and what that
+  // was. It stays in the browser until it was seen, or something else is typed.
+  function tellUnfit(values) {
+    const line = form.querySelector("[data-unfit]");
+    line.querySelector("b").textContent = values.join("  ");
+    line.hidden = false;
+  }
+
+  for (const button of form.querySelectorAll("[data-afresh]")) {
+    button.addEventListener("click", () => {
+      drafts.drop(draftKey);
+      location.reload();
+    });
+  }
 
   function go(input) {
     current = input;

@@ -56,12 +56,12 @@ func TestRoundByGaugeThatTypes(t *testing.T) {
 	tb.Keys("14.996\r14.99\r14.992\r") // what was wrong is selected, so typing replaces it
 	tb.Want("with all their decimals and the sign of the page", theReadings, "14.994 14.989 14.996 14.990 14.992")
 	tb.Want("all in: saving is armed", theFocus, "Save the round")
-	tb.Want("the heading", theHeading, "All parts are in. Save the round.")
+	tb.Want("the heading", theHeading, "All parts are in")
 	tb.Keys("\r") // a gauge that ends with two
 	tb.Value(`await new Promise((done) => setTimeout(done, 500))`)
 	tb.Want("nothing is sent yet", theFocus, "Save the round")
 	tb.Keys("14.993\r") // a sixth, after five are in
-	tb.Want("a number too many", theHeading, "All parts were in: the last number is not taken. Save the round.")
+	tb.Want("a number too many", theHeading, "All in: that number does not count")
 	tb.Value(`await new Promise((done) => setTimeout(done, 500))`)
 	tb.Want("nor is it sent by that", theFocus, "Save the round")
 	tb.Keys("\r")

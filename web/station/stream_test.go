@@ -85,6 +85,26 @@ func TestPartsComeFromSpindles(t *testing.T) {
 			tb.WaitFor(`document.querySelector("[data-testid=parts]").textContent.endsWith(", Part 5, Spindle 2: 15.002\u00a0mm, upper limit 15.000\u00a0mm")`)
 		}
 	}
+
+	// The set-up changes under what is half typed: it says so and shows what was typed.
+	tb.Open(measure)
+	tb.WaitFor(`document.querySelector("[data-scripted]")`)
+	tb.Keys("14.991\r14.993\r")
+	h, err := s.History(t.Context(), s.Diameter.ID, plant.Stretch{Last: 1})
+	if err != nil {
+		t.Fatal(err)
+	}
+	setup := h.State.Setup
+	setup.Size = 3
+	if err := s.ChangeSetup(t.Context(), s.Diameter.ID, setup, setup.Version, s.Engineer.ID); err != nil {
+		t.Fatal(err)
+	}
+	tb.Open(measure)
+	tb.WaitFor(`document.querySelector("[data-unfit]:not([hidden])")`)
+	tb.Want("what was typed under the old set-up", `document.querySelector("[data-unfit] b").textContent`, "14.991  14.993")
+	tb.Accessible("a round whose set-up was changed")
+	tb.Click("[data-unfit] [data-afresh]")
+	tb.WaitFor(`document.querySelector("[data-scripted] [data-unfit][hidden]")`)
 }
 
 func TestAStreamMustBeOneOfTheMachine(t *testing.T) {

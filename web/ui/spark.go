@@ -36,25 +36,30 @@ func (f Format) Spark(c *plant.CharacteristicState, width, height float64) (newe
 }
 
 // markNewest rings the newest subgroup of each kind that belongs to the open matter.
-// One ring says where to look; a ring around each would hide the course.
+// One ring says where to look; a ring around each would hide the course, and so would two
+// that overlap: then the graver one stands alone.
 func markNewest(out []chart.SparkPoint, points []plant.Point, m *plant.Matter) {
 	if m == nil {
 		return
 	}
-	var hold, look bool
-	for i := len(points) - 1; i >= 0 && !(hold && look); i-- {
+	hold, look := -1, -1
+	for i := len(points) - 1; i >= 0 && (hold < 0 || look < 0); i-- {
 		for _, s := range points[i].Signals {
 			switch {
 			case s.Withdrawn || s.Matter != m.ID:
-			case s.Panel.HoldsProduct() && !hold:
-				out[i].Mark, hold = chart.HoldMark, true
-			case !s.Panel.HoldsProduct() && !look:
-				look = true
-				if out[i].Mark == chart.NoMark {
-					out[i].Mark = chart.SignalMark
-				}
+			case s.Panel.HoldsProduct():
+				hold = max(hold, i)
+			default:
+				look = max(look, i)
 			}
 		}
+	}
+	const apart = 3 // points between two rings that do not touch
+	if hold >= 0 {
+		out[hold].Mark = chart.HoldMark
+	}
+	if look >= 0 && (hold < 0 || max(look-hold, hold-look) >= apart) {
+		out[look].Mark = chart.SignalMark
 	}
 }
 
