@@ -119,12 +119,15 @@ func (w WalkStep) Done() bool {
 // Progress is how far a matter is.
 type Progress struct {
 	Stage   Stage
-	Attempt int        // from 1: a fix that did not hold begins the next
-	Steps   []WalkStep // of the plans of all kinds that stand, in the order in which they were added
-	Next    int        // place of the first step that is not done; len(Steps) when all are
-	Confirm bool       // a round must confirm the fix
-	Verify  bool       // a second person must verify it
-	Fix     *Fix       // the one that stands
+	Attempt int // from 1: a fix that did not hold begins the next
+	// Steps of the plans of all kinds that stand, each once: what was answered keeps its
+	// place, in the order in which it was; then what is left of the kinds that hold product,
+	// then of the others, as they were added.
+	Steps   []WalkStep
+	Next    int  // place of the step that is to be done; len(Steps) when all are
+	Confirm bool // a round must confirm the fix
+	Verify  bool // a second person must verify it
+	Fix     *Fix // the one that stands
 	Plans   []uuid.UUID
 }
 
@@ -138,7 +141,7 @@ func (m Matter) Progress() Progress {
 			p.Attempt, p.Fix = n, last
 		}
 	}
-	for _, k := range m.Kinds {
+	for _, k := range holdsFirst(m.Kinds) {
 		plan, ok := m.Plans[k.Plan]
 		if !ok || !k.Stands || slices.Contains(p.Plans, plan.ID) {
 			continue
@@ -146,14 +149,14 @@ func (m Matter) Progress() Progress {
 		p.Plans = append(p.Plans, plan.ID)
 		p.Confirm, p.Verify = p.Confirm || plan.Confirm, p.Verify || plan.Verify
 		for i, s := range plan.Steps {
-			w := WalkStep{PlanStep: s, Kind: k.Kind, Plan: plan.ID, Step: i + 1}
-			w.Answer, w.Remedy = m.Answered(p.Attempt, w.Plan, w.Step, false), m.Answered(p.Attempt, w.Plan, w.Step, true)
-			p.Steps = append(p.Steps, w)
+			once := slices.IndexFunc(plan.Steps, s.alike) == i // a plan may ask the same twice, and means it
+			if w := m.walkStep(p.Attempt, k, i+1, s, once); !once || !slices.ContainsFunc(p.Steps, w.sameAs) {
+				p.Steps = append(p.Steps, w)
+			}
 		}
 	}
-	for p.Next < len(p.Steps) && p.Steps[p.Next].Done() {
-		p.Next++
-	}
+	slices.SortStableFunc(p.Steps, func(a, b WalkStep) int { return m.begun(p.Attempt, a) - m.begun(p.Attempt, b) })
+	p.Next = nextStep(p.Steps)
 	p.Stage = m.stage(p)
 	return p
 }

@@ -1,6 +1,7 @@
 package plant_test
 
 import (
+	"slices"
 	"testing"
 	"time"
 
@@ -126,8 +127,8 @@ func TestStagesOfAMatter(t *testing.T) {
 	}
 }
 
-// TestThePlanOfAnAddedKindIsAppended, and that of one that no longer stands is not asked for.
-func TestThePlanOfAnAddedKindIsAppended(t *testing.T) {
+// TestThePlanOfAnAddedKindIsAsked, and that of one that no longer stands is not.
+func TestThePlanOfAnAddedKindIsAsked(t *testing.T) {
 	t.Parallel()
 	w := walk(false, false).take().answered(t)
 	hold := plant.ReactionPlan{ID: uuid.New(), Kind: plant.MatterReading, Confirm: true, Steps: []plant.PlanStep{{Says: "Sort the box.", Kind: plant.StepDone}}}
@@ -150,6 +151,79 @@ func TestThePlanOfAnAddedKindIsAppended(t *testing.T) {
 	if len(merged) != 2 || merged[0].Kind != plant.MatterReading || merged[1].Plan != w.plan.ID || !merged[1].Stands || !merged[1].AddedAt.Equal(at(1)) {
 		t.Errorf("merged: %+v", merged)
 	}
+}
+
+// TestWhatHoldsProductComesNext: when a kind that holds product joins, its steps come
+// before what is left of the others, and what was answered keeps its place.
+func TestWhatHoldsProductComesNext(t *testing.T) {
+	t.Parallel()
+	said := func(p plant.Progress) (out []string) {
+		for _, s := range p.Steps {
+			out = append(out, s.Says)
+		}
+		return out
+	}
+	want := func(w *walked, next int, steps ...string) {
+		t.Helper()
+		if p := w.Progress(); !slices.Equal(said(p), steps) || p.Next != next {
+			t.Errorf("next %d of %q, want %d of %q", p.Next, said(p), next, steps)
+		}
+	}
+	whole, pressure := "Is the insert whole?", "Read the pressure."
+	joined := func(w *walked, steps ...plant.PlanStep) plant.ReactionPlan {
+		hold := plant.ReactionPlan{ID: uuid.New(), Kind: plant.MatterReading, Steps: steps}
+		w.Plans[hold.ID] = hold
+		w.Kinds = append(w.Kinds, plant.KindAdded{Kind: hold.Kind, Plan: hold.ID, AddedAt: at(7), Stands: true})
+		return hold
+	}
+	stop, aside := plant.PlanStep{Says: "Stop it.", Kind: plant.StepStop}, plant.PlanStep{Says: "Tag them.", Kind: plant.StepDone}
+
+	w := walk(false, false).take().say(t, 1, plant.SaidYes, "", false)
+	look := w.plan
+	w.plan = joined(w, stop, aside)
+	want(w, 1, whole, stop.Says, aside.Says, pressure)
+	w.say(t, 1, plant.SaidDone, "", false)
+	want(w, 2, whole, stop.Says, aside.Says, pressure)
+	w.say(t, 2, plant.SaidDone, "", false)
+	w.plan = look
+	w.say(t, 2, plant.SaidValue, "18", false)
+	want(w, 4, whole, stop.Says, aside.Says, pressure)
+
+	// What is half done keeps its place, and waits.
+	w = walk(false, false).take().say(t, 1, plant.SaidNo, "", false)
+	look = w.plan
+	w.plan = joined(w, stop)
+	want(w, 1, whole, stop.Says, pressure)
+	w.say(t, 1, plant.SaidDone, "", false)
+	want(w, 0, whole, stop.Says, pressure)
+	w.plan = look
+	w.say(t, 1, plant.SaidDone, "", true)
+	want(w, 2, whole, stop.Says, pressure)
+
+	// What both ask is asked once, answered before or not; a stop and what was left out
+	// before it joined are asked again. A plan that asks the same twice means it.
+	w = walk(false, false)
+	joined(w, aside, w.plan.Steps[1], aside)
+	want(w, 0, aside.Says, pressure, aside.Says, whole)
+	w = walk(false, false).take().answered(t)
+	joined(w, aside, w.plan.Steps[1])
+	want(w, 2, whole, pressure, aside.Says)
+	if a := w.Progress().Steps[1]; a.Plan != w.plan.ID || a.Answer == nil {
+		t.Errorf("the answer to what both ask: %+v", a)
+	}
+	w.Kinds[0].Stands = false // its answer counts all the same
+	want(w, 1, pressure, aside.Says)
+	w = walk(false, false).take().say(t, 1, plant.SaidSkipped, "", false)
+	joined(w, w.plan.Steps[0])
+	want(w, 1, whole, whole, pressure)
+	w = walk(false, false)
+	w.plan.Steps = []plant.PlanStep{stop}
+	w.Plans[w.plan.ID] = w.plan
+	w.take().say(t, 1, plant.SaidDone, "", false)
+	w.plan = joined(w, stop)
+	want(w, 1, stop.Says, stop.Says)
+	w.say(t, 1, plant.SaidDone, "", false)
+	want(w, 2, stop.Says, stop.Says)
 }
 
 func TestWhoMayVerify(t *testing.T) {
