@@ -56,9 +56,9 @@ func (m Matter) answerAlike(attempt int, k KindAdded, n int, s PlanStep, remedy 
 	return last
 }
 
-// alike reports whether both ask for the same.
+// alike reports whether both ask for the same, as they are kept.
 func (s PlanStep) alike(o PlanStep) bool {
-	same := func(a, b *Decimal) bool { return a == nil && b == nil || a != nil && b != nil && a.Compare(*b) == 0 }
+	same := func(a, b *Decimal) bool { return a == nil && b == nil || a != nil && b != nil && *a == *b }
 	return s.Says == o.Says && s.Kind == o.Kind && s.ExpectNo == o.ExpectNo && s.Unit == o.Unit && s.IfNot == o.IfNot && same(s.Lower, o.Lower) && same(s.Upper, o.Upper)
 }
 

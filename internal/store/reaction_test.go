@@ -417,9 +417,11 @@ func (y *reactor) ended(before *plant.Matter) {
 			var last, remedies int
 			var said string
 			var value *float64
-			err := p.Pool().QueryRow(ctx, `select seq, said, value::float8, (select count(*) from matter_answer r where r.matter_id = a.matter_id and r.plan_id = a.plan_id
-					and r.attempt = a.attempt and r.step = a.step and r.remedy) from matter_answer a
-				where matter_id = $1 and plan_id = $2 and attempt = $3 and step = $4 and not remedy order by seq desc limit 1`, m.ID, plan.ID, number, n+1).Scan(&last, &said, &value, &remedies)
+			// What another plan asks in the same words is the same step.
+			err := p.Pool().QueryRow(ctx, `with asked as (select a.* from matter_answer a join reaction_plan r on r.id = a.plan_id
+					where a.matter_id = $1 and a.attempt = $3 and (a.plan_id = $2 and a.step = $4 or a.plan_id <> $2 and r.steps->(a.step - 1)->>'says' = $5))
+				select seq, said, value::float8, (select count(*) from asked where remedy) from asked where not remedy order by seq desc, at desc, id desc limit 1`,
+				m.ID, plan.ID, number, n+1, step.Says).Scan(&last, &said, &value, &remedies)
 			if err != nil {
 				fail(fmt.Sprintf("without an answer to step %d of its plan", n+1))
 			}

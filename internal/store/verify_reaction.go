@@ -36,12 +36,14 @@ var sealedReaction = []string{
 	cross join lateral (select count(*) filter (where kind = 'reaction plan') as plans, count(*) filter (where kind = 'matter answer') as answers,
 			count(*) filter (where kind = 'matter fix') as fixes, count(*) filter (where kind = 'matter verification') as words from ledger where plant_id = p.id) e
 	where (t.plans, t.answers, t.fixes, t.words) <> (e.plans, e.answers, e.fixes, e.words)`,
-	// No matter was closed without what the plans demanded that it was closed under.
+	// No matter was closed without what the plans demanded that it was closed under. What
+	// two plans ask alike is answered once, under either.
 	`select e.chain, format('matter %s was closed without an answer to step %s of its plan', b->>'matter', st.n)
 	from (select chain, convert_from(body, 'UTF8')::jsonb as b from ledger where kind = 'matter' and body like '%"plans":%') e
 	cross join lateral jsonb_array_elements_text(b->'plans') x (plan) join reaction_plan p on p.id = x.plan::uuid
 	cross join lateral generate_series(1, jsonb_array_length(p.steps)) st (n)
-	where not exists (select from matter_answer a where a.matter_id = (b->>'matter')::uuid and a.plan_id = p.id and a.step = st.n and not a.remedy
+	where not exists (select from matter_answer a join reaction_plan r on r.id = a.plan_id
+		where a.matter_id = (b->>'matter')::uuid and (a.plan_id = p.id and a.step = st.n or a.plan_id <> p.id and r.steps->(a.step - 1) = p.steps->(st.n - 1)) and not a.remedy
 		and a.attempt = (select max(f.number) from matter_fix f where f.matter_id = a.matter_id))`,
 	// A round confirms a fix when it was taken behind it, was on record when the matter was
 	// closed and had not been voided by then; what was voided later did confirm it.
