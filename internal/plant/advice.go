@@ -17,6 +17,7 @@ const (
 	AdviseFresh     AdviceKind = "fresh"     // nothing is open, and no round was taken since judging began afresh
 	AdviseOffTarget AdviceKind = "set-off"   // steady, yet set off target: for engineering, not for one round
 	AdviseElsewhere AdviceKind = "elsewhere" // what is open is not about the level
+	AdviseGauge     AdviceKind = "gauge"     // the gauge failed its check: the numbers do not say where the level is
 	AdviseRound     AdviceKind = "round"     // take another round first
 	AdviseTurn      AdviceKind = "turn"      // adjust by so much
 	AdviseNone      AdviceKind = "none"      // the evidence allows no adjustment
@@ -38,6 +39,7 @@ type Advice struct {
 	Offset, Low, High float64
 	Adjust            float64
 	Turn              Decimal
+	OffCentre         float64 // of steady rounds: how far from the centre of the limits, 0 within chance
 
 	// With nothing open: the last round, and how often a steady machine is as far off.
 	HasLast   bool
@@ -65,6 +67,9 @@ const (
 	shownRounds, fewestShown = 40, 12
 	// steadyRounds are enough to say that a steady process is set off target.
 	steadyRounds = 20
+	// beyondChance is from how many standard errors on the level of steady rounds is not
+	// taken for that of the limits.
+	beyondChance = 2
 	// mostTries is how many rounds after setting up still count as tries.
 	mostTries = 5
 )
@@ -84,6 +89,9 @@ func (h History) Advise(k *Knob) (Advice, error) {
 	}
 	s := scaleOf(c, k)
 	switch {
+	case c.Gauge != nil && c.Gauge.Failed() || c.Matter != nil && c.Matter.OnlyGauge():
+		a.Kind = AdviseGauge
+		return a, nil
 	case c.Matter != nil:
 		return a, a.forMatter(h, s)
 	case c.Revision == nil:
@@ -218,6 +226,10 @@ func (a *Advice) forNothingOpen(h History, s scale) error {
 		}
 		if level = a.Offset; a.Adjust != 0 {
 			a.Kind = AdviseOffTarget
+		}
+		// The interval is 1.96 standard errors to either side.
+		if off := a.Offset - (rev.Center - a.Aim); math.Abs(off) > beyondChance*(a.High-a.Low)/(2*1.96) {
+			a.OffCentre = off
 		}
 	}
 	n := len(h.Points)

@@ -89,6 +89,17 @@ func TestAdviceKinds(t *testing.T) {
 			h.matter(2, -1, "", Reading)
 			return h, nil
 		}},
+		{"the gauge failed its check", AdviseGauge, 0, "0", func() (History, *Knob) {
+			h := stretch(10, 10.1, 10.5, 10.4)
+			h.matter(2, -1, "", GaugeCheck)
+			return h, nil
+		}},
+		{"a signal, and the gauge is not good", AdviseGauge, 0, "0", func() (History, *Knob) {
+			h := stretch(10, 10.1, 10.5, 10.4)
+			h.matter(2, -1, "", Location)
+			h.State.Gauge = &GaugeNow{FailedSince: at(3)}
+			return h, nil
+		}},
 		{"steady, but set off target", AdviseOffTarget, -0.09, "-0.09", func() (History, *Knob) {
 			var v []float64
 			for i := range 24 {
@@ -152,6 +163,25 @@ func TestLeavingItAloneInFigures(t *testing.T) {
 	}
 	if a.Unprompted != 1 || a.LeftSpread <= 0 || a.CorrectedSpread <= a.LeftSpread {
 		t.Errorf("%d unprompted, spread %g and %g", a.Unprompted, a.LeftSpread, a.CorrectedSpread)
+	}
+}
+
+// TestAnOffsetIsOldOrNew: steady rounds off target may lie where the limits were set, or
+// beyond chance away from there without any rule having fired.
+func TestAnOffsetIsOldOrNew(t *testing.T) {
+	t.Parallel()
+	var v []float64
+	for i := range 24 {
+		v = append(v, 10.09+[]float64{0.05, -0.05}[i%2])
+	}
+	h := stretch(v...)
+	// By hand: 0.09 from the centre, 0.1/sqrt(24) = 0.0204 a standard error.
+	if a := advise(t, h, nil); a.Kind != AdviseOffTarget || math.Abs(a.OffCentre-0.09) > 1e-9 {
+		t.Errorf("%s, %g from the centre, want 0.09", a.Kind, a.OffCentre)
+	}
+	h.State.Revision.Center = 10.06 // 1.5 standard errors
+	if a := advise(t, h, nil); a.Kind != AdviseOffTarget || a.OffCentre != 0 {
+		t.Errorf("%s, %g from the centre, want 0", a.Kind, a.OffCentre)
 	}
 }
 

@@ -152,8 +152,10 @@ func (s *Store) changeover(ctx context.Context, tx pgx.Tx, b *pgx.Batch, held ma
 }
 
 // LogChange records something done to the process. Whether it was prompted is fixed
-// here: a matter was open, when it happened, on what it affects. The same change sent
-// again is no error; the same id with other content is a Conflict and is set aside.
+// here: a matter was open, when it happened, on what it affects. A gauge that failed its
+// check is no signal of the process: a matter that has nothing else prompts nothing. The
+// same change sent again is no error; the same id with other content is a Conflict and is
+// set aside.
 func (s *Store) LogChange(ctx context.Context, c plant.Change) error {
 	now := s.now()
 	c.HappenedAt, c.RecordedAt = plant.CutTime(c.HappenedAt), now
@@ -191,10 +193,11 @@ func (s *Store) LogChange(ctx context.Context, c plant.Change) error {
 		// The order makes it a short walk along an index for each; left to itself the planner
 		// reads all matters.
 		err = tx.QueryRow(ctx, `select count(*) > 0 from unnest($1::uuid[]) h (id) cross join lateral (
-				(select from matter t where t.plant_id = $3 and t.characteristic_id = h.id and t.closed_at is null and t.opened_taken <= $2 limit 1)
+				(select t.id from matter t where t.plant_id = $3 and t.characteristic_id = h.id and t.closed_at is null and t.opened_taken <= $2 limit 1)
 				union all
-				(select from matter t where t.characteristic_id = h.id and t.closed_at > $2 and t.opened_taken <= $2 order by t.closed_at limit 1)) open`,
-			affected, c.HappenedAt, s.plant()).Scan(&prompted)
+				(select t.id from matter t where t.characteristic_id = h.id and t.closed_at > $2 and t.opened_taken <= $2 order by t.closed_at limit 1)) open
+			where exists (select from signal g where g.matter_id = open.id and g.panel <> $4 and g.taken_at <= $2)`,
+			affected, c.HappenedAt, s.plant(), string(plant.GaugeCheck)).Scan(&prompted)
 		if err != nil {
 			return fmt.Errorf("read matters: %w", err)
 		}

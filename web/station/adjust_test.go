@@ -60,14 +60,14 @@ func TestAdviceWithNothingOpenAndThenWithASignal(t *testing.T) {
 	s.Clock.Advance(10 * time.Minute)
 	s.MustRecord(t, s.Diameter, 14996, 14997, 14998, 14995, 14999) // 0.0060 above target
 	cause := b.get(s.at("change", s.Diameter.ID.String())).
-		says("Look for the cause first", "1 round since then averages 0.0060\u00a0mm above target", "X offset of turret 1 by \u22120.003\u00a0mm", `data-testid="to-cause"`).
+		says("Look for the cause first", "So far 1 round since then lies 0.0060\u00a0mm above target", "X offset of turret 1 by \u22120.003\u00a0mm", `data-testid="to-cause"`).
 		saysNot("checked", "Adjust X offset")
 	if got := cause.field("size"); got != "0.001" {
 		t.Errorf("nobody has looked for the cause, and the size is %q", got)
 	}
 	s.take(t, b)
 	turn := b.get(s.at("change", s.Diameter.ID.String())).
-		says("Adjust X offset of turret 1 by \u22120.003\u00a0mm", "1 round since then averages 0.0060\u00a0mm above target", "Look for the cause first", "recorded as prompted", `value="down" checked`)
+		says("Adjust X offset of turret 1 by \u22120.003\u00a0mm", "So far 1 round since then lies 0.0060\u00a0mm above target", "Look for the cause first", "recorded as prompted", `value="down" checked`)
 	if got := turn.field("size"); got != "0.003" {
 		t.Errorf("the advised size is %q", got)
 	}
@@ -82,6 +82,24 @@ func TestAdviceWithNothingOpenAndThenWithASignal(t *testing.T) {
 	b.get(s.at("change", s.Diameter.ID.String())).says("Do not adjust: the evidence allows none", "95 % interval")
 	s.MustRecord(t, s.Force, 610, 612, 691, 611, 609, 613)
 	b.get(s.at("change", s.Force.ID.String())).says("Adjusting does not cure this")
+}
+
+// TestThePlanComesBeforeTheAdjustment: while a step waits the figure is a calculation, and
+// nothing is put into the fields.
+func TestThePlanComesBeforeTheAdjustment(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	s.planned(t)
+	s.steady(t)
+	s.offset(t)
+	b := s.signIn(t, s.Operator)
+	s.MustRecord(t, s.Diameter, 14997, 14998, 14999, 14996, 15000)
+	s.take(t, b)
+	s.Clock.Advance(10 * time.Minute)
+	s.MustRecord(t, s.Diameter, 14996, 14997, 14998, 14995, 14999)
+	page := s.at("change", s.Diameter.ID.String())
+	b.get(page).says("Look for the cause first", "The plan is not walked to its end (Step 1 of 3)", "So far 1 round since then lies", "The numbers would allow", `data-testid="to-cause"`).
+		saysNot("checked", "Adjust X offset")
 }
 
 // take takes what is open on the diameter.

@@ -49,6 +49,7 @@ func (s *Surface) adviser(ctx context.Context, f ui.Format, st plant.StationStat
 		}
 	}
 	a.h, err = s.store.History(ctx, c.ID, plant.AdviceStretch())
+	a.h.State.Gauge = c.Gauge
 	return a, err
 }
 
@@ -84,7 +85,9 @@ func (a *adviser) view() (adjustView, error) {
 	lo, hi := specAxis(s)
 	v.Chart = (&chart.Verdict{ID: "adjust", Label: w.T("station.verdict-label", a.c.Name), W: adjustW, H: adjustH,
 		Points: stationPoints(f, a.c.Points, s, a.c), After: eventsSince(a.c, a.c.Points), Limits: chartLimits(f, a.c.Revision, s), Lo: lo, Hi: hi, Words: chartWords(w)}).SVG()
-	return v, a.advise(&v)
+	err := a.advise(&v)
+	a.overdueCheck(&v)
+	return v, err
 }
 
 // noKnob is the choice of something that is not described.
@@ -129,6 +132,9 @@ func (a *adviser) advise(v *adjustView) error {
 		condition := ui.ConditionOf(m.Kind())
 		v.Condition, v.Symbol, v.State = ui.Tone(condition), ui.SymbolOf(condition), w.T("station.signal-open")
 		v.Foot = w.T("station.adjust-open-text", f.Clock(m.OpenedTaken))
+		if m.OnlyGauge() {
+			v.State, v.Foot = w.T("matter.kind."+string(plant.MatterGauge)), w.T("station.adjust-unprompted")
+		}
 	} else {
 		v.Foot = w.T("station.adjust-unprompted")
 	}
@@ -145,18 +151,24 @@ func (a *adviser) advise(v *adjustView) error {
 		a.compare(v, advice)
 	case plant.AdviseOffTarget:
 		v.Title = w.T("adjusting.set-off")
-		v.Says = []string{w.T("adjusting.set-off-text", advice.Rounds, a.off(advice, advice.Offset), a.between(advice)), w.T("adjusting.set-off-why")}
+		v.Says = []string{w.T("adjusting.set-off-text", advice.Rounds, a.off(advice, advice.Offset), a.between(advice)), a.sinceLimits(advice), w.T("adjusting.set-off-why")}
 		a.compare(v, advice)
 	case plant.AdviseElsewhere:
 		v.Title, v.Says = w.T("adjusting.elsewhere"), []string{w.T("adjusting.elsewhere-text")}
+	case plant.AdviseGauge:
+		v.Title, v.Says = w.T("adjusting.gauge"), []string{w.T("adjusting.gauge-text")}
 	case plant.AdviseRound:
 		v.Title, v.Says = w.T("adjusting.round"), []string{w.T("adjusting.round-text")}
 		v.Measure = path(a.st.ID) + "?measure=" + a.c.ID.String()
 	case plant.AdviseTurn:
-		if m := a.c.Matter; m != nil && untouched(*m) {
+		if m := a.c.Matter; m != nil && (untouched(*m) || unwalked(*m)) {
 			v.Cause = path(a.st.ID, "matter", m.ID.String())
 			v.Title = w.T("adjusting.cause-title")
-			v.Says = []string{w.T("adjusting.cause-text"), w.T("adjusting.since-signal", advice.Rounds, a.off(advice, advice.Offset), a.between(advice)),
+			why := w.T("adjusting.cause-text")
+			if !untouched(*m) {
+				why = w.T("adjusting.cause-plan", ui.StageWords(w, m.Progress()))
+			}
+			v.Says = []string{why, w.T("adjusting.since-signal", advice.Rounds, a.off(advice, advice.Offset), a.between(advice)),
 				w.T("adjusting.numbers-allow", a.by(advice))}
 			break // nothing is put into the fields
 		}
@@ -182,6 +194,31 @@ func (a *adviser) advise(v *adjustView) error {
 // untouched reports whether nobody has looked for the cause of a matter yet.
 func untouched(m plant.Matter) bool {
 	return m.TakenBy == uuid.Nil && len(m.Answers) == 0 && len(m.Fixes) == 0
+}
+
+// unwalked reports whether steps of the plans of a matter wait for an answer.
+func unwalked(m plant.Matter) bool {
+	p := m.Progress()
+	return p.Next < len(p.Steps)
+}
+
+// sinceLimits says whether a steady offset is as old as the limits.
+func (a *adviser) sinceLimits(advice plant.Advice) string {
+	f, s := a.f, a.c.Setup
+	if advice.OffCentre == 0 {
+		return f.Words.T("adjusting.set-off-since")
+	}
+	return f.Words.T("adjusting.set-off-moved", f.WithUnit(f.Number(math.Abs(advice.OffCentre), s.LimitDecimals()), s.Unit))
+}
+
+// overdueCheck says first of all that the gauge is to be checked, where that is overdue.
+func (a *adviser) overdueCheck(v *adjustView) {
+	g := a.c.Gauge
+	if g == nil || g.Failed() || !g.Overdue(a.f.Now, a.f.Zone) {
+		return
+	}
+	v.Check = path(a.st.ID, "gauge", g.ID.String())
+	v.Says = append([]string{a.f.Words.T("adjusting.check-overdue", g.Name, ui.SayDay(a.f, g.NextCheck))}, v.Says...)
 }
 
 // suggest puts the advised turn into the fields, where the person changes it to what was

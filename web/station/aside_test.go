@@ -135,9 +135,17 @@ func TestGaugeCheck(t *testing.T) {
 	b = s.signIn(t, s.Operator)
 	b.get(s.at()).says("Gauge checks: 1 waits", "Check Micrometer M-04", at) // a task like a round
 	b.get(s.at("gauges")).says("Check overdue since")
+	adjust := s.at("change", s.Diameter.ID.String())
+	b.get(adjust).says("The check of Micrometer M-04 is overdue since", "check the gauge first", `data-testid="to-check"`, "The numbers say: leave it alone")
 
 	check("failed", "").is(http.StatusUnprocessableEntity).says("Say what was wrong with the gauge.")
 	check("failed", "anvil worn").is(http.StatusSeeOther)
+	turn := b.get(adjust).says("Do not adjust on these numbers", "its numbers do not say where the level is", "recorded as unprompted").saysNot("a single part", "recorded as prompted", "is overdue")
+	b.post(s.at("change"), url.Values{"id": {turn.field("id")}, "machine": {turn.field("machine")}, "kind": {"adjustment"}, "characteristic": {s.Diameter.ID.String()},
+		"knob": {turn.field("knob")}, "direction": {"down"}, "size": {"0.001"}}).is(http.StatusSeeOther)
+	if list := s.changes(t); len(list) != 1 || list[0].Prompted {
+		t.Errorf("with a failed gauge alone: %+v", list)
+	}
 	b.get(s.at("gauges")+"?checked=failed").says("The failed check is on record.", "Failed at", "not good since")
 	doubt := "Micrometer M-04 failed its check at"
 	b.get(s.at()).says("Hold", "Keep aside what was made since")

@@ -70,7 +70,8 @@ type adjustView struct {
 	Record    string // what adjusting did here before
 	Foot      string
 	Measure   string // where another round is taken
-	Cause     string // where the cause is looked for, while nobody has
+	Check     string // where the gauge is checked, while that is overdue
+	Cause     string // where the cause is looked for, while that is not done
 	Last      string
 	Chart     string
 	Note      string
