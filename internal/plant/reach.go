@@ -38,7 +38,8 @@ type ReachEnd string
 const (
 	StillGrowing ReachEnd = ""
 	ByCorrection ReachEnd = "corrected" // a change to the process, and nothing was found after it
-	ByNewStart   ReachEnd = "restarted" // a restart mark or a changeover
+	ByFix        ReachEnd = "fixed"     // the restart mark of what put it right
+	ByNewStart   ReachEnd = "restarted" // a changeover, or a restart mark with nothing done
 	ByGoodCheck  ReachEnd = "checked"   // the gauge passed a check again
 	ByClosing    ReachEnd = "closed"
 )
@@ -46,6 +47,7 @@ const (
 // Suspicion is one reason why product is suspect.
 type Suspicion struct {
 	Since   ReachSince
+	Panel   Panel     // that fired
 	From    time.Time // zero: from the very beginning
 	Cut     bool      // the window of subgroups was cut, or nothing good is on record: it may have begun before
 	Start   bool      // From is where the process was started afresh
@@ -208,7 +210,11 @@ func (r *Reach) end(e ReachEvidence) {
 			}
 		}
 		for _, b := range e.Boundaries {
-			if b.At.After(last) && (b.Kind == ByRestart || b.Kind == ByChangeover) {
+			switch {
+			case !b.At.After(last):
+			case b.Kind == ByRestart:
+				earlier(b.At, m.restartBy(b.At))
+			case b.Kind == ByChangeover:
 				earlier(b.At, ByNewStart)
 			}
 		}
@@ -218,11 +224,26 @@ func (r *Reach) end(e ReachEvidence) {
 	}
 	if !m.Open() {
 		if !m.RestartAt.IsZero() {
-			earlier(m.RestartAt, ByNewStart)
+			earlier(m.RestartAt, m.restartBy(m.RestartAt))
 		}
 		earlier(m.ClosedAt, ByClosing)
 	}
 	r.Until, r.Ended = until, how
+}
+
+// restartBy is what the restart mark at an instant stands for: the matter was put right,
+// or nothing was done and judging began afresh.
+func (m Matter) restartBy(at time.Time) ReachEnd {
+	nothing := m.Closing == NothingDone
+	for _, f := range m.Fixes {
+		if f.RestartAt.Equal(at) {
+			nothing = f.Action == ""
+		}
+	}
+	if nothing {
+		return ByNewStart
+	}
+	return ByFix
 }
 
 // corrects reports whether the change may have put right what is wrong with a

@@ -336,9 +336,14 @@ func TestReachEndsWhereTheProcessWasCorrected(t *testing.T) {
 		t.Errorf("%+v; want it until the changeover: limits change no process", r)
 	}
 	e.Matter.ClosedAt, e.Matter.RestartAt = minute(35), minute(33)
+	if r := plant.ReachOf(e, singles); !r.Until.Equal(minute(33)) || r.Ended != plant.ByFix {
+		t.Errorf("%+v; want it until it was put right", r)
+	}
+	e.Matter.Closing = plant.NothingDone
 	if r := plant.ReachOf(e, singles); !r.Until.Equal(minute(33)) || r.Ended != plant.ByNewStart {
 		t.Errorf("%+v; want it until the restart mark", r)
 	}
+	e.Matter.Closing = plant.Fixed
 	r := plant.ReachOf(e, singles)
 	r.Log = plant.MachineLog{{At: noon.Add(-time.Hour), Running: true}}
 	m := plant.Machine{PartsPerHour: 60}

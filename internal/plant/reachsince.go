@@ -16,7 +16,7 @@ func (e ReachEvidence) change(panel Panel, setup Setup) Suspicion {
 	if panel == Dispersion {
 		w = e.Dispersion
 	}
-	s := Suspicion{Since: SinceChange, From: e.Matter.OpenedTaken, Cut: true}
+	s := Suspicion{Since: SinceChange, Panel: panel, From: e.Matter.OpenedTaken, Cut: true}
 	if len(w.Points) == 0 {
 		return s
 	}
@@ -70,7 +70,7 @@ func estimateChange(rev Revision, s Setup, points []ReachPoint, panel Panel) (ch
 func (e ReachEvidence) goodRounds() []Suspicion {
 	points := e.Reading.Points
 	if len(points) == 0 {
-		return []Suspicion{{Since: SinceGoodRound, From: e.Matter.OpenedTaken, Cut: true}}
+		return []Suspicion{{Since: SinceGoodRound, Panel: Reading, From: e.Matter.OpenedTaken, Cut: true}}
 	}
 	first := points[len(points)-1]
 	streams := first.outsideStreams(e.Setups[first.Setup])
@@ -88,7 +88,7 @@ func (e ReachEvidence) goodRounds() []Suspicion {
 
 func (e ReachEvidence) goodRound(good func(ReachPoint) bool) Suspicion {
 	points := e.Reading.Points
-	s := Suspicion{Since: SinceGoodRound}
+	s := Suspicion{Since: SinceGoodRound, Panel: Reading}
 	for i := len(points) - 2; i >= 0; i-- {
 		if good(points[i]) {
 			s.From = points[i].TakenAt
@@ -135,7 +135,7 @@ func (p ReachPoint) streamWithin(id uuid.UUID, s Setup) bool {
 // goodCheck goes back from the first failed check to the last good one of that gauge, and
 // forward to the first good one after the last that failed.
 func (e ReachEvidence) goodCheck(first time.Time) Suspicion {
-	s := Suspicion{Since: SinceGoodCheck, Cut: true}
+	s := Suspicion{Since: SinceGoodCheck, Panel: GaugeCheck, Cut: true}
 	var lastFailed time.Time
 	for _, c := range e.Checks {
 		switch {

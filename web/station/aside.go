@@ -24,6 +24,7 @@ type asideView struct {
 	More  bool   // something was stated already
 	Rest  string // where the suspect parts are that were not put aside, as answered
 	Asks  string // the same as a question, while it is to be asked
+	Tell  string // whom to tell now: suspect parts went on
 
 	missing int // of how many parts it is asked
 }
@@ -88,6 +89,9 @@ func (s *Surface) asideOf(r *http.Request, st plant.StationState, m plant.Matter
 		return nil, nil, nil
 	}
 	v.State, v.Rest, v.Asks = ui.SayAside(f, kept), ui.SayRest(f, kept), ui.AskRest(f, kept, found[m.ID].Suspect)
+	if e, ok := kept.Rest(); ok && e.Step == plant.RestGone {
+		v.Tell = f.Words.T("reach.rest.tell", e.Quantity)
+	}
 	v.missing = kept.Missing(found[m.ID].Suspect)
 	if kept.SettledAt.IsZero() {
 		v.Href = asidePath(st.ID, m.ID)

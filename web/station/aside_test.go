@@ -78,11 +78,13 @@ func TestOperatorIsToldWhatToKeepAside(t *testing.T) {
 	closing.Set("cause", "")
 	b.post(matter+"/close", closing).is(http.StatusUnprocessableEntity).says(asks, "washing line").saysNot("Say where the rest is.")
 	closing.Set("cause", "none")
-	b.post(matter+"/close", closing).is(http.StatusSeeOther)
+	if got := b.post(matter+"/close", closing).is(http.StatusSeeOther); got.to != matter {
+		t.Errorf("with parts that went on it leads to %s", got.to)
+	}
 
 	// The matter is closed, the product stays in the column.
 	rest := "Not put aside, already gone on: 122 (washing line)"
-	b.get(matter).says("Closed", "78 parts are kept aside.", rest)
+	b.get(matter).says("Closed", "78 parts are kept aside.", rest, "122 parts are not contained: they have gone on. Tell your supervisor now.")
 	b.get(matter+"/aside").says("Not put aside, already gone on: 122", "washing line")
 	b.get(s.at()).says("Kept aside: 78 parts", matter+"/aside", rest).saysNot("Keep aside what was made")
 	if _, err := s.VerifyLedger(t.Context()); err != nil {

@@ -105,6 +105,10 @@ func (s *Surface) setMachine(w http.ResponseWriter, r *http.Request) error {
 	if err != nil {
 		return err
 	}
+	if matter, err := uuid.Parse(form.Get("matter")); err == nil { // where it was started
+		ui.Redirect(w, r, path(st.ID, "matter", matter.String()))
+		return nil
+	}
 	back(w, r, st.ID, do)
 	return nil
 }

@@ -202,7 +202,7 @@ func TestMachineStopsStartsAndChangesOver(t *testing.T) {
 	stop := url.Values{"do": {"stop"}, "id": {b.get(s.at()).field("id")}}
 	b.post(at, stop).is(http.StatusSeeOther)
 	b.post(at, stop).is(http.StatusSeeOther)
-	b.get(s.at()).says("Stands still since 12:00", "Machine started")
+	b.get(s.at()).says("Stands still since 12:00", "Report a start")
 	s.Clock.Advance(2 * time.Hour)
 	page := b.get(at).is(http.StatusOK).says("Axle 100", "Axle 130")
 	form := url.Values{"do": {"changeover"}, "id": {page.field("id")}, "lot": {"4711"}}

@@ -81,7 +81,7 @@ func (s *Surface) closeMatter(w http.ResponseWriter, r *http.Request) error {
 			err = s.store.CloseMatter(r.Context(), req)
 		}
 		if err == nil {
-			return s.afterClosing(w, r, st, m)
+			return s.afterClosing(w, r, st, m, rest)
 		}
 		if plant.IsKind(err, plant.Conflict) {
 			return s.quicker(w, r, typedMatter{closing: form, cause: chosen})
@@ -96,13 +96,13 @@ func (s *Surface) closeMatter(w http.ResponseWriter, r *http.Request) error {
 }
 
 // afterClosing leads back to the station, or to the matter when its plan asks for more
-// before it is over.
-func (s *Surface) afterClosing(w http.ResponseWriter, r *http.Request, st plant.StationState, before plant.Matter) error {
+// before it is over, or says whom to tell about product that went on.
+func (s *Surface) afterClosing(w http.ResponseWriter, r *http.Request, st plant.StationState, before plant.Matter, rest *plant.ContainmentEntry) error {
 	m, err := s.store.Matter(r.Context(), before.ID)
 	if err != nil {
 		return err
 	}
-	if m.Open() {
+	if m.Open() || rest != nil && rest.Step == plant.RestGone {
 		ui.Redirect(w, r, path(st.ID, "matter", m.ID.String()))
 		return nil
 	}

@@ -13,6 +13,7 @@ import (
 // matterView is what is open, or was, on one characteristic. Of Step, Closing, Confirm,
 // Verify and Ready at most one is asked for: one question at a time.
 type matterView struct {
+	ID      string
 	Tone    string
 	Symbol  string
 	Title   string
@@ -68,8 +69,10 @@ type fixView struct {
 
 // confirmView leads to the round that confirms the fix.
 type confirmView struct {
-	Name string
-	Href string
+	Name  string
+	Href  string
+	Start *machineView // the machine, while it stands still
+	Says  string       // what comes before measuring then
 }
 
 type closedView struct {
@@ -92,7 +95,7 @@ type attemptView struct {
 func newMatter(f ui.Format, person plant.Person, st plant.StationState, c plant.CharacteristicState, m plant.Matter, typed typedMatter) matterView {
 	w, p := f.Words, m.Progress()
 	condition := ui.ConditionOf(m.Kind())
-	v := matterView{Tone: ui.Tone(condition), Symbol: ui.SymbolOf(condition), Title: ui.VerdictWords(w, m.Kind()), Name: c.Title(),
+	v := matterView{ID: m.ID.String(), Tone: ui.Tone(condition), Symbol: ui.SymbolOf(condition), Title: ui.VerdictWords(w, m.Kind()), Name: c.Title(),
 		Since: w.T("station.open-since", f.Clock(m.OpenedAt), f.Since(m.OpenedAt)), Where: ui.StageWords(w, p), TakenBy: m.TakenByName,
 		Mine: m.TakenBy == person.ID, Version: itoa(m.Version), Back: path(st.ID), Problem: typed.problem}
 	here := path(st.ID, "matter", m.ID.String())
@@ -147,6 +150,10 @@ func (v *matterView) asked(f ui.Format, person plant.Person, st plant.StationSta
 		v.Closing, v.Withdrawn, v.Fix = true, true, nil
 	case plant.StageConfirming:
 		v.Confirm = &confirmView{Name: c.Title(), Href: measurePath(st.ID, c.ID)}
+		if !c.Machine.Running() {
+			m := newMachine(f, c.Machine)
+			v.Confirm.Start, v.Confirm.Says = &m, w.T("matter.confirm-start", m.Name)
+		}
 	case plant.StageVerifying:
 		v.Verify = newVerify(f, person, m, *p.Fix, path(st.ID, "matter", m.ID.String()), typed.verify)
 	case plant.StageClosed:

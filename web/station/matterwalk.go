@@ -45,7 +45,7 @@ type stepRow struct {
 	Number string
 	Says   string
 	Answer string // how it was answered; "": not yet
-	Off    bool   // not as it should be
+	Off    string // that it was not as it should be, and what came of it
 	Here   bool   // it is the one that is asked
 	Href   string // looks back at it
 }
@@ -124,7 +124,15 @@ func answerWords(f ui.Format, step plant.WalkStep) string {
 func newStepRow(f ui.Format, step plant.WalkStep, n int) stepRow {
 	row := stepRow{Number: itoa(n), Says: step.Says}
 	if step.Answer != nil {
-		row.Answer, row.Off = answerWords(f, step), step.Off(*step.Answer)
+		row.Answer = answerWords(f, step)
+		if step.Off(*step.Answer) {
+			row.Off = f.Words.T("matter.not-so")
+		}
+		if r := step.Remedy; r != nil && r.Said == plant.SaidDone {
+			alone := step
+			alone.Remedy = nil
+			row.Answer, row.Off = answerWords(f, alone), f.Words.T("matter.put-right", r.PersonName, f.Clock(r.At))
+		}
 	}
 	return row
 }

@@ -298,6 +298,9 @@ func (v *idleView) open(f ui.Format, station uuid.UUID, c plant.CharacteristicSt
 	v.Title = f.Words.T("station.idle-open."+string(c.Matter.Kind()), f.Clock(c.Matter.OpenedAt))
 	v.Lead = f.Words.T("station.fired", t.Name, t.Sub)
 	v.Symbol, v.Tone, v.Button, v.Href = t.Symbol, t.State, f.Words.T("station.idle-open-button"), t.Href
+	if c.Matter.TakenBy == uuid.Nil {
+		v.Button = f.Words.T("station.idle-untaken-button")
+	}
 }
 
 // Fragments renders what is pushed into the page of a station: the same components

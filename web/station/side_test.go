@@ -128,7 +128,7 @@ func TestAnOpenHoldIsTheLargeWord(t *testing.T) {
 	at := s.Clock.Now().Format("15:04")
 	a := s.MustRecord(t, s.Force, 610, 612, 691, 611, 609, 613)
 	idle := b.get(s.at()).is(http.StatusOK)
-	idle.says("Hold: keep the product aside, open since "+at, "Go on with it", "Nobody has taken it yet", "matter/"+a.Parts[0].Matter.String())
+	idle.says("Hold: keep the product aside, open since "+at, "See what to do", "Nobody has taken it yet", "matter/"+a.Parts[0].Matter.String())
 	if h1 := idle.body[strings.Index(idle.body, `data-testid="idle"`):]; strings.Contains(h1[:strings.Index(h1, "</h1>")], "Nothing is due") {
 		t.Error("the large word is that nothing is due")
 	}

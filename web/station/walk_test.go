@@ -9,6 +9,7 @@ import (
 
 	"holdfast/internal/browsertest"
 	"holdfast/internal/plant"
+	"holdfast/internal/store/storetest"
 )
 
 // planned gives the family of the station a plan for a location that moved up.
@@ -63,7 +64,7 @@ func TestAPlanIsWalkedStepByStep(t *testing.T) {
 	second.get(at).says("Step 1 of 3", "Answered: No. Then:", "Change the insert.")
 	second.get(s.at()).says("Step 1 of 3, Operator 1")
 	second.answer(at, "done", nil).is(http.StatusSeeOther)
-	b.get(at).says("Step 2 of 3", "What do you read? It should be 17 to 19", "No (Operator 1, ", "then Done (Supervisor 1, ", "not as it should be")
+	b.get(at).says("Step 2 of 3", "What do you read? It should be 17 to 19", "No (Operator 1, ", "was not as it should be; put right ", "(Supervisor 1)").saysNot("then Done")
 	for raw, says := range map[string]string{"": "Type the value that you read.", "much": "Type the value that you read."} {
 		b.answer(at, "value", url.Values{"value": {raw}}).is(http.StatusUnprocessableEntity).says(says)
 	}
@@ -78,7 +79,18 @@ func TestAPlanIsWalkedStepByStep(t *testing.T) {
 	closing := fixed(s.Clock.Now().Add(-time.Minute))
 	closing.Set("version", page.field("version"))
 	b.post(at+"/close", closing).is(http.StatusSeeOther)
-	b.get(at).says("Take a round to confirm it", "new insert", "Measure: Axle seat diameter").saysNot(`data-testid="close-form"`)
+	b.get(at).says("Take a round to confirm it", "new insert", "Measure: Axle seat diameter", "where it was put right.").saysNot(`data-testid="close-form"`, `data-testid="stands-still"`)
+	machine := s.at("machine", s.Machine.ID.String())
+	b.post(machine, url.Values{"id": {storetest.ID().String()}, "do": {"stop"}}).is(http.StatusSeeOther)
+	still := b.get(at).says("stands still. Start it when it is safe to, then measure new parts.", `data-testid="start"`)
+	_, start, _ := strings.Cut(still.body, `data-testid="stands-still"`)
+	_, number, _ := strings.Cut(start, `name="id" value="`) // the start's own
+	number, _, _ = strings.Cut(number, `"`)
+	s.Clock.Advance(time.Second)
+	if got := b.post(machine, url.Values{"id": {number}, "do": {"start"}, "matter": {at[strings.LastIndex(at, "/")+1:]}}).is(http.StatusSeeOther); got.to != at {
+		t.Errorf("starting it leads to %s", got.to)
+	}
+	b.get(at).saysNot(`data-testid="stands-still"`)
 	b.get(s.at()).says("Waits for a round to confirm it, Operator 1")
 
 	// A round that signals again: the fix did not hold.

@@ -1,6 +1,7 @@
 package ui
 
 import (
+	"slices"
 	"strings"
 	"time"
 
@@ -22,8 +23,16 @@ func SayReach(f Format, r *plant.Reach, s plant.Suspect, m plant.MachineNow) (Re
 	}
 	v := ReachSaid{Do: reachDo(f, r, s), Is: reachIs(f, r, s)}
 	seen := map[string]bool{}
+	several := slices.ContainsFunc(r.Reasons, func(s plant.Suspicion) bool { return s.Panel != r.Reasons[0].Panel })
+	if several {
+		v.Why = append(v.Why, f.Words.T("reach.why.several"))
+	}
 	for _, reason := range r.Reasons {
-		if why := reachWhy(f, reason); !seen[why] {
+		why := reachWhy(f, reason)
+		if several {
+			why = f.Words.T("reach.why.of", f.Words.T("reach.of."+string(reason.Panel)), why)
+		}
+		if !seen[why] {
 			seen[why] = true
 			v.Why = append(v.Why, why)
 		}
@@ -116,6 +125,8 @@ func reachEnd(f Format, r *plant.Reach, m plant.MachineNow) string {
 	switch {
 	case r.Ended == plant.ByCorrection:
 		return w.T("reach.ends.corrected", at)
+	case r.Ended == plant.ByFix:
+		return w.T("reach.ends.fixed", at)
 	case r.Ended == plant.ByNewStart:
 		return w.T("reach.ends.restarted", at)
 	case r.Ended == plant.ByGoodCheck:
