@@ -46,7 +46,7 @@ func TestHostileInputNeverFails(t *testing.T) {
 			"reading": {"14.990", "14.991", "14.992", "14.990", "14.991"}, "reason": {"typing slip"}, "short": {""}, "do": {""}}},
 		{"operator1", "POST", at + "/matter/" + m.ID.String() + "/take", url.Values{"version": {"77"}}},
 		{"operator1", "POST", at + "/matter/" + m.ID.String() + "/close", url.Values{"version": {"77"}, "cause": {"own"}, "own": {"a cause"}, "action": {"done"},
-			"done": {""}, "fixed_at": {""}}},
+			"done": {""}, "fixed": {""}, "fixed_day": {""}, "fixed_time": {""}}},
 		{"operator1", "POST", at + "/change", url.Values{"id": {"x"}, "machine": {r.Machine.ID.String()}, "kind": {"adjustment"},
 			"characteristic": {r.Diameter.ID.String()}, "size": {"0.001"}, "direction": {"up"}, "note": {"n"}, "taken": {""}, "sent": {""}}},
 		{"operator1", "POST", at + "/change", url.Values{"id": {storetest.ID().String()}, "machine": {r.Machine.ID.String()}, "kind": {"adjustment"},

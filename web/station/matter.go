@@ -69,7 +69,7 @@ func (s *Surface) renderMatter(w http.ResponseWriter, r *http.Request, status in
 		}
 		v.Form = typed.closing
 		v.Form.Causes = causeChoices(f, causes, typed.cause)
-		v.Form.Earliest, v.Form.Latest = m.OpenedTaken.In(f.Zone).Format(fixLayout), f.Now.In(f.Zone).Format(fixLayout)
+		v.Form.offerTimes(f, m.OpenedTaken)
 	}
 	var err error
 	if v.Aside, _, err = s.asideOf(r, st, m); err != nil {

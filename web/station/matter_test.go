@@ -93,14 +93,17 @@ func TestMatterIsTakenAndClosedWithCauseAndAction(t *testing.T) {
 		{"a cause that there is not", url.Values{"cause": {version}, "done": {"nothing"}}, []string{"There is no such cause."}},
 		{"both", url.Values{"cause": {"none"}, "action": {"new insert"}, "done": {"nothing"}}, []string{"Either nothing was done", `value="new insert"`}},
 		{"fixed before the signal", fixed(opened.Add(-time.Hour)), []string{"cannot lie before the signal", `value="new insert"`}},
+		{"minutes ago, before the signal", url.Values{"cause": {"none"}, "action": {"new insert"}, "fixed": {"30"}}, []string{"cannot lie before the signal"}},
+		{"no such choice of a time", url.Values{"cause": {"none"}, "action": {"new insert"}, "fixed": {"7"}}, []string{"This is not a time."}},
 		{"fixed in the future", fixed(s.Clock.Now().Add(time.Hour)), []string{"cannot lie in the future"}},
-		{"fixed at no time", url.Values{"cause": {"none"}, "action": {"new insert"}, "fixed_at": {"noon"}}, []string{"This is not a time."}},
+		{"fixed at no time", url.Values{"cause": {"none"}, "action": {"new insert"}, "fixed": {"other"}, "fixed_day": {"2026-03-02"}, "fixed_time": {"noon"}}, []string{"This is not a time."}},
 		{"too many words", url.Values{"cause": {"own"}, "own": {strings.Repeat("x", 201)}, "done": {"nothing"}}, []string{"at most 200 characters"}},
 	} {
 		tc.form.Set("version", version)
 		t.Log(tc.name)
 		b.post(at+"/close", tc.form).is(http.StatusUnprocessableEntity).says(tc.says...)
 	}
+	b.get(at).says("Now</span>", "10 min ago", "Another time", `name="fixed_time"`).saysNot("30 min ago", "datetime-local")
 	form := fixed(opened)
 	form.Set("version", version)
 	b.post(at+"/close", form).is(http.StatusSeeOther)
@@ -130,6 +133,7 @@ func TestRefusedClosingIsBroughtIntoView(t *testing.T) {
 	tb.Open(at)
 	tb.Click("[data-testid=take]")
 	tb.WaitFor(`document.querySelector("[data-testid=taken-by]")`)
+	tb.Value(`document.querySelector("input[name=rest]").labels[0].click()`)
 	tb.Value(`document.querySelector("input[name=cause]").labels[0].click()`)
 	tb.Click("[data-testid=close]")
 	tb.WaitFor(`document.getElementById("action-problem")`)
@@ -140,7 +144,7 @@ func TestRefusedClosingIsBroughtIntoView(t *testing.T) {
 }
 
 func fixed(at time.Time) url.Values {
-	return url.Values{"cause": {"own"}, "own": {"something loose"}, "action": {"new insert"}, "fixed_at": {at.Format("2006-01-02T15:04")}, "rest": {"unknown"}}
+	return url.Values{"cause": {"own"}, "own": {"something loose"}, "action": {"new insert"}, "fixed": {"other"}, "fixed_day": {at.Format(time.DateOnly)}, "fixed_time": {at.Format("15:04")}, "rest": {"unknown"}}
 }
 
 func TestChangeIsLoggedInTwoTapsAndSaysWhenNoSignalIsOpen(t *testing.T) {

@@ -16,8 +16,18 @@ const notFoundCause = "none"
 // ownCause is the choice of saying it in one's own words.
 const ownCause = "own"
 
-// fixLayout is how a browser sends a date and time.
+// fixLayout is the day and the wall time of a fix.
 const fixLayout = "2006-01-02T15:04"
+
+// fixAgo are the minutes since the fix that are one tap; fixOther is a day and a time,
+// typed. Days are offered back to the signal, at most so many.
+var fixAgo = []int{10, 30}
+
+const (
+	fixNow      = "now"
+	fixOther    = "other"
+	mostFixDays = 31
+)
 
 // closingForm is the closing as it was typed.
 type closingForm struct {
@@ -25,9 +35,11 @@ type closingForm struct {
 	Own           string
 	Action        string
 	Nothing       bool
-	FixedAt       string
-	Earliest      string
-	Latest        string
+	Fixed         string       // fixNow, minutes ago, or fixOther
+	FixedWhen     []causeView  // the same as choices
+	FixedDay      string       // of fixOther
+	FixedDays     []choiceView // newest first
+	FixedTime     string       // of fixOther, in 24 hours
 	CauseProblem  string
 	ActionProblem string
 	FixedProblem  string
@@ -57,7 +69,63 @@ func causeChoices(f ui.Format, causes []plant.Cause, chosen string) []causeView 
 func typedClosing(r *http.Request) (closingForm, string) {
 	p := r.PostForm
 	return closingForm{Own: plant.CleanText(p.Get("own")), Action: plant.CleanText(p.Get("action")), Nothing: p.Get("done") == "nothing",
-		FixedAt: p.Get("fixed_at"), Rest: typedRest(p)}, p.Get("cause")
+		Fixed: p.Get("fixed"), FixedDay: p.Get("fixed_day"), FixedTime: plant.CleanText(p.Get("fixed_time")), Rest: typedRest(p)}, p.Get("cause")
+}
+
+// offerTimes offers when it was fixed: now, minutes ago that lie after the signal, or a
+// day since then with a time.
+func (c *closingForm) offerTimes(f ui.Format, opened time.Time) {
+	if c.Fixed == "" {
+		c.Fixed = fixNow
+	}
+	offer := func(value, name string) {
+		c.FixedWhen = append(c.FixedWhen, causeView{Value: value, Name: name, Chosen: c.Fixed == value})
+	}
+	offer(fixNow, f.Words.T("station.fixed-now"))
+	for _, n := range fixAgo {
+		if !f.Now.Add(-time.Duration(n) * time.Minute).Before(opened) {
+			offer(itoa(n), f.Words.T("station.fixed-ago", n))
+		}
+	}
+	offer(fixOther, f.Words.T("station.fixed-other"))
+	y, m, d := f.Now.In(f.Zone).Date()
+	first := opened.In(f.Zone).Format(time.DateOnly)
+	for i := range mostFixDays {
+		day := time.Date(y, m, d-i, 12, 0, 0, 0, f.Zone)
+		value := day.Format(time.DateOnly)
+		if value < first {
+			break
+		}
+		c.FixedDays = append(c.FixedDays, choiceView{value, f.Date(day), value == c.FixedDay})
+	}
+}
+
+// fixedAt is the instant of the fix as it was chosen; zero means now.
+func (c closingForm) fixedAt(opened, now time.Time, zone *time.Location) (time.Time, error) {
+	switch c.Fixed {
+	case "", fixNow:
+		return time.Time{}, nil
+	case fixOther:
+		return fixInstant(c.FixedDay+"T"+clockTyped(c.FixedTime), opened, now, zone)
+	}
+	for _, n := range fixAgo {
+		if c.Fixed == itoa(n) {
+			return now.Add(-time.Duration(n) * time.Minute), nil
+		}
+	}
+	return time.Time{}, errors.New("no such choice")
+}
+
+// clockTyped is a time of the day as people type it: "9:05", "9.05" and "0905" are one.
+func clockTyped(text string) string {
+	text = strings.NewReplacer(".", ":", ",", ":", " ", "").Replace(text)
+	if n := len(text); (n == 3 || n == 4) && number(text) > 0 {
+		text = text[:n-2] + ":" + text[n-2:]
+	}
+	if strings.Index(text, ":") == 1 {
+		text = "0" + text
+	}
+	return text
 }
 
 // closeMatter is POST .../close.
@@ -160,7 +228,7 @@ func (s *Surface) closing(r *http.Request, m plant.Matter, causes []plant.Cause,
 		form.ActionProblem = w.T("station.say-action")
 	default:
 		req.Action = form.Action
-		if at, err := fixInstant(form.FixedAt, m.OpenedTaken, frame.Now, frame.Format().Zone); err != nil {
+		if at, err := form.fixedAt(m.OpenedTaken, frame.Now, frame.Format().Zone); err != nil {
 			form.FixedProblem = w.T("station.no-time")
 		} else {
 			req.FixedAt = at
@@ -178,18 +246,12 @@ func causeOf(causes []plant.Cause, id string) (plant.Cause, bool) {
 	return plant.Cause{}, false
 }
 
-// fixInstant reads the wall time of a fix; empty means now. A browser sends whole
-// minutes, so the minute in which the signal was taken means the moment after it. Where
+// fixInstant reads the day and wall time of a fix in whole minutes, so that the minute in which the signal was taken means the moment after it. Where
 // clocks were set back an hour has two instants: the later one that fits is meant.
 func fixInstant(text string, opened, now time.Time, zone *time.Location) (time.Time, error) {
-	if text == "" {
-		return time.Time{}, nil
-	}
 	at, err := time.ParseInLocation(fixLayout, text, zone)
 	if err != nil {
-		if at, err = time.ParseInLocation(fixLayout+":05", text, zone); err != nil {
-			return time.Time{}, err
-		}
+		return time.Time{}, err
 	}
 	at = afterSignal(at, opened, now)
 	if !at.After(opened) && at.Equal(opened.Truncate(time.Minute)) {
