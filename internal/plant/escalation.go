@@ -221,6 +221,15 @@ type Call struct {
 	Characteristic CharacteristicState // the one concerned
 }
 
+// Stands is since when it is what it is called for: a round since it was due, a Hold since
+// product is in doubt. Steps count from Since.
+func (c Call) Stands() time.Time {
+	if c.Matter != nil {
+		return c.Matter.KindSince()
+	}
+	return c.Since
+}
+
 // CallsDue lists the steps that are due at the stations, oldest thing first within each.
 func CallsDue(states []StationState, now time.Time) []Call {
 	var out []Call

@@ -67,6 +67,21 @@ func (m Matter) Kind() Verdict {
 	return Look
 }
 
+// KindSince is from when on the matter has its gravity: a matter that was opened for a look
+// is a Hold only from the first standing line that puts the product in doubt.
+func (m Matter) KindSince() time.Time {
+	var first time.Time
+	for _, l := range m.Lines {
+		if !l.Withdrawn && l.Panel.HoldsProduct() && (first.IsZero() || l.First.Before(first)) {
+			first = l.First
+		}
+	}
+	if first.After(m.OpenedAt) {
+		return first
+	}
+	return m.OpenedAt
+}
+
 // AllWithdrawn reports whether none of the lines stands any more.
 func (m Matter) AllWithdrawn() bool {
 	for _, l := range m.Lines {

@@ -8,18 +8,26 @@ type Sample struct {
 	At, Due time.Time
 }
 
-// Kept is how a sampling plan was kept over a stretch. Promised is Good + Late + Missed.
+// Kept is how a sampling plan was kept over a stretch. Promised is Good + Late + Open +
+// Missed.
 type Kept struct {
 	Promised int
 	Good     int // taken when promised
 	Late     int // taken, but a person had to be called
+	Open     int // late at the end of the stretch, and could still be taken then
 	Missed   int // never taken
 	Besides  int // taken though nothing was due: no promise, and no fault
 }
 
 // Add returns both together.
 func (k Kept) Add(o Kept) Kept {
-	return Kept{k.Promised + o.Promised, k.Good + o.Good, k.Late + o.Late, k.Missed + o.Missed, k.Besides + o.Besides}
+	return Kept{k.Promised + o.Promised, k.Good + o.Good, k.Late + o.Late, k.Open + o.Open, k.Missed + o.Missed, k.Besides + o.Besides}
+}
+
+// Ended is what it came to once the stretch is over: what was still open then was missed.
+func (k Kept) Ended() Kept {
+	k.Missed, k.Open = k.Missed+k.Open, 0
+	return k
 }
 
 // Taken is how many samples were taken in all.
@@ -70,6 +78,13 @@ func (p SamplingPlan) Keep(from, to time.Time, before Sample, samples []Sample, 
 		case passed:
 			// Nothing is missed while it may still be taken in time.
 			if !have && p.lateness(due, to) < Late {
+				return out
+			}
+			// A sample that comes within the whole interval would still answer it.
+			if !have && to.Sub(due.At) < p.whole(due.Occasion) {
+				if counts {
+					out.Promised, out.Open = out.Promised+1, out.Open+1
+				}
 				return out
 			}
 			if counts {

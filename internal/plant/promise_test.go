@@ -55,8 +55,15 @@ func TestKeptAtTheEdges(t *testing.T) {
 	half := plant.SamplingPlan{EveryMinutes: 30}
 	log := plant.MachineLog{{At: at(-1000), Running: true}}
 	got := half.Keep(noon, at(31), plant.Sample{At: at(-40), Due: at(-40)}, nil, at(-5000), plant.Machine{}, log, nil)
-	if want := (plant.Kept{Promised: 1, Missed: 1}); got != want { // due at -10 (before), 20 (missed)
+	if want := (plant.Kept{Promised: 1, Open: 1}); got != want { // due at -10 (before), 20 (late, and may still be taken)
 		t.Errorf("due before the stretch: %+v, want %+v", got, want)
+	}
+	if want := (plant.Kept{Promised: 1, Missed: 1}); got.Ended() != want {
+		t.Errorf("once the shift is over: %+v, want %+v", got.Ended(), want)
+	}
+	got = half.Keep(noon, at(51), plant.Sample{At: at(-40), Due: at(-40)}, nil, at(-5000), plant.Machine{}, log, nil)
+	if want := (plant.Kept{Promised: 1, Missed: 1}); got != want { // the next one is due: nothing answers that of 20 any more
+		t.Errorf("a whole interval late: %+v, want %+v", got, want)
 	}
 	got = half.Keep(noon, at(31), plant.Sample{At: noon, Due: noon}, nil, at(-5000), plant.Machine{}, log, nil)
 	if got != (plant.Kept{}) {
@@ -87,7 +94,7 @@ func TestKeptAddsUp(t *testing.T) {
 		}
 		before := plant.Sample{At: at(-5)}
 		whole := plan.Keep(noon, at(480), before, samples, at(-5000), plant.Machine{}, log, nil)
-		if whole.Taken() != len(samples) || whole.Promised != whole.Good+whole.Late+whole.Missed {
+		if whole.Taken() != len(samples) || whole.Promised != whole.Good+whole.Late+whole.Open+whole.Missed {
 			t.Fatalf("seed %d: %+v of %d samples", seed, whole, len(samples))
 		}
 		if whole.Promised > 480/plan.EveryMinutes+len(samples)+1 {

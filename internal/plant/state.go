@@ -184,7 +184,7 @@ func (c CharacteristicState) Condition() Condition {
 func (c CharacteristicState) Since() time.Time {
 	switch c.Condition() {
 	case IsHold, IsLook:
-		return c.Matter.OpenedAt
+		return c.Matter.KindSince()
 	case IsStopped:
 		return c.Machine.State.At
 	case IsDue, IsLate, IsUnknown:

@@ -73,6 +73,9 @@ func (g *shiftReading) read(ctx context.Context, lines []uuid.UUID) ([]plant.Shi
 	kept := map[uuid.UUID]plant.Kept{}
 	for _, c := range g.all {
 		k := c.setup.Plan.Keep(g.span.From, g.until, c.before, c.samples, c.setup.MadeAt, c.machine, c.log, plant.Happenings(c.log, c.changes))
+		if g.until.Equal(g.span.To) { // the shift is over
+			k = k.Ended()
+		}
 		kept[c.StationID] = kept[c.StationID].Add(k)
 	}
 	for i := range g.list {

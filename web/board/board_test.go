@@ -163,6 +163,53 @@ func TestSparkRingsTheOpenMatterOnly(t *testing.T) {
 	}
 }
 
+// TestNoHoldStandsBehindWhatIsTaken: the wall cannot scroll, so what nobody is at comes first,
+// and of that product in doubt, also when it is kept quiet.
+func TestNoHoldStandsBehindWhatIsTaken(t *testing.T) {
+	t.Parallel()
+	states := floor([]string{"Taken Hold", "Late", "Quiet Hold", "Old Look", "New Look", "Hold", "Called Look"})
+	at := func(i int) *plant.CharacteristicState { return &states[i].Characteristics[0] }
+	m := open(at(0), 9*time.Hour, outside)
+	m.TakenByName, m.TakenAt = "Operator 1", before(time.Hour)
+	late(at(1), 40*time.Minute, plant.Late)
+	m = open(at(2), 30*time.Minute, outside)
+	at(2).Escalation.Quiet = plant.Quiet{Matter: m.ID, Kind: plant.Hold, At: before(time.Minute), Until: noon.Add(time.Hour), PersonName: "Supervisor 1", Reason: "known"}
+	open(at(3), 8*time.Hour, beyond)
+	open(at(4), time.Hour, beyond)
+	open(at(5), 20*time.Minute, outside)
+	open(at(6), 10*time.Minute, beyond)
+	at(6).Escalation.Fired = []plant.FiredStep{{Step: plant.OnBoard, At: before(time.Minute)}}
+	var got []string
+	for _, n := range newNeeds(format(), states).List {
+		got = append(got, n.Station)
+	}
+	if want := []string{"Called Look", "Hold", "Quiet Hold", "Old Look", "New Look", "Late", "Taken Hold"}; !slices.Equal(got, want) {
+		t.Errorf("%q, want %q", got, want)
+	}
+}
+
+// TestAHoldIsAsOldAsTheHold: a matter that was opened for a look is a Hold from the first
+// reading outside, and says beside it since when it is open.
+func TestAHoldIsAsOldAsTheHold(t *testing.T) {
+	t.Parallel()
+	states := floor([]string{"Press"})
+	c := &states[0].Characteristics[0]
+	m := open(c, 46*time.Minute, beyond, outside)
+	m.Lines[1].First = before(16 * time.Minute)
+	n := newNeeds(format(), states).List[0]
+	if card := newCard(format(), &states[0]); n.Age != "16 min" || n.Opened != "Open since 11:38." || card.Front.Age != "16 min" {
+		t.Errorf("%s, %q, on the card %s", n.Age, n.Opened, card.Front.Age)
+	}
+	h := newHandoverMatter(format(), plant.MatterOfShift{Matter: *m, Setup: c.Setup}, noon)
+	if h.Age != "16 min" || h.Opened != "12:08" || h.Before != "Open since 11:38." {
+		t.Errorf("handover: %s, %s, %q", h.Age, h.Opened, h.Before)
+	}
+	m.Lines[1].Withdrawn = true
+	if n := newNeeds(format(), states).List[0]; n.Age != "46 min" || n.Opened != "" {
+		t.Errorf("a Look again: %s, %q", n.Age, n.Opened)
+	}
+}
+
 // TestAnOverdueGaugeCheckNeedsAPerson: once on a line, after what is about the process and
 // the product, however long it has been due.
 func TestAnOverdueGaugeCheckNeedsAPerson(t *testing.T) {
@@ -175,7 +222,7 @@ func TestAnOverdueGaugeCheckNeedsAPerson(t *testing.T) {
 	}
 	before := newNeeds(format(), twelve())
 	v := newNeeds(format(), states)
-	last := v.List[len(v.List)-1]
+	last := v.List[slices.IndexFunc(v.List, func(n needView) bool { return n.Taken != "" })] // what is taken follows
 	if len(v.List) != len(before.List)+1 || !strings.HasPrefix(last.Why, "Gauge check overdue: Micrometer M-04, due ") || !strings.HasPrefix(last.Taken, "Measures ") || last.Age != "2 d" {
 		t.Errorf("%d needs, the last %+v", len(v.List), last)
 	}
@@ -189,7 +236,7 @@ func TestAnOverdueGaugeCheckNeedsAPerson(t *testing.T) {
 	}
 }
 
-func TestNeedsAreOldestFirstInWords(t *testing.T) {
+func TestNeedsAreGravestFirstInWords(t *testing.T) {
 	t.Parallel()
 	v := newNeeds(format(), twelve())
 	var got []string
@@ -197,16 +244,16 @@ func TestNeedsAreOldestFirstInWords(t *testing.T) {
 		got = append(got, n.Age+" | "+n.Station+" | "+n.Why+" | "+n.Taken)
 	}
 	want := []string{
-		"3 h | Greasing | Unknown, Fill height: no sample since 08:54, the round of 09:24 was not taken. | ",
-		"26 min | Press | Hold, Press force: outside specification, above the upper limit, at 6.91\u00a0kN (limit 6.80). | Supervisor 1 took it 12:01",
 		"19 min | Sound check | Look, Noise: beyond 3 sigma, high side. | ",
-		"12 min | Turning 1 | Look, Axle seat: beyond 3 sigma, high side. | Operator 1 took it 12:14",
+		"3 h | Greasing | Unknown, Fill height: no sample since 08:54, the round of 09:24 was not taken. | ",
 		"9 min | Straightening | Due, Run-out: round of 12:15 not taken. | ",
+		"26 min | Press | Hold, Press force: outside specification, above the upper limit, at 6.91\u00a0kN (limit 6.80). | Supervisor 1 took it 12:01",
+		"12 min | Turning 1 | Look, Axle seat: beyond 3 sigma, high side. | Operator 1 took it 12:14",
 	}
 	if !slices.Equal(got, want) {
 		t.Errorf("got\n%s\nwant\n%s", strings.Join(got, "\n"), strings.Join(want, "\n"))
 	}
-	if v.Order != "5, oldest first" || v.Density != "several" {
+	if v.Order != "5, gravest first" || v.Density != "several" {
 		t.Errorf("%q, %q", v.Order, v.Density)
 	}
 	if len(v.Engineering) != 1 || v.Engineering[0].Progress != "no limits yet, 12 of 20 subgroups" {

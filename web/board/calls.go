@@ -8,20 +8,9 @@ import (
 // callView is how far the program has gone to find somebody for one thing.
 type callView struct {
 	Marked bool   // a step has fired: it stands at the top
-	Quiet  bool   // kept quiet until a stated time: it stands at the end
+	Quiet  bool   // kept quiet until a stated time: a Look stands behind what is late
 	Text   string // what was done, or what comes and when; empty: neither
 	Reason string // of the quiet, and who keeps it
-}
-
-// place orders the list before age does: what was escalated, what was not, what is quiet.
-func (v callView) place() int {
-	switch {
-	case v.Marked:
-		return 0
-	case v.Quiet:
-		return 3 // behind what is no matter
-	}
-	return 1
 }
 
 func matterCall(f ui.Format, st *plant.StationState, c *plant.CharacteristicState) callView {

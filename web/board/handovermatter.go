@@ -13,7 +13,7 @@ func newHandoverMatter(f ui.Format, m plant.MatterOfShift, until time.Time) hand
 	w := f.Words
 	v := handoverMatter{
 		Address: matterAddress(m.Station, m.Characteristic, m.ID), Station: m.StationName, Name: m.Name, Kind: ui.ConditionOf(m.Kind()),
-		Age: f.Age(m.Age(until)), Opened: f.Clock(m.OpenedAt),
+		Age: f.Age(max(0, until.Sub(m.KindSince()))), Opened: f.Clock(m.KindSince()), Before: ui.OpenedBefore(f, m.Matter),
 	}
 	var said []string
 	for _, l := range m.Lines {
@@ -37,6 +37,7 @@ func newHandoverMatter(f ui.Format, m plant.MatterOfShift, until time.Time) hand
 		v.Quiet = w.T("handover.quiet", f.Clock(quiet), m.Quiet.PersonName, m.Quiet.Reason)
 	}
 	if !m.OpenAt(until) {
+		v.Age, v.Opened, v.Before = f.Age(m.Age(until)), f.Clock(m.OpenedAt), ""
 		v.Ended = w.T("handover.ended", f.Clock(m.ClosedAt), causeOf(f, m.Matter))
 	}
 	return v

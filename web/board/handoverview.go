@@ -61,13 +61,13 @@ type lineView struct {
 }
 
 type stationKeptView struct {
-	Name, Promised, Good, Late, Missed, Besides string
-	Short                                       bool // something was late or missed
+	Name, Promised, Good, Late, Open, Missed, Besides string
+	Short                                             bool // something was late or missed
 }
 
 type handoverMatter struct {
-	Address, Station, Name, Why, Age, Opened, Taken, Ended, Quiet string
-	Kind                                                          plant.Condition
+	Address, Station, Name, Why, Age, Opened, Before, Taken, Ended, Quiet string
+	Kind                                                                  plant.Condition
 }
 
 type handoverContained struct {
@@ -157,12 +157,12 @@ func handoverFigures(f ui.Format, list []plant.ShiftSummary) []handoverFigure {
 		}
 	}
 	out := []handoverFigure{
-		{Label: w.T("handover.samples"), Value: w.T("handover.of", f.Count(kept.Good+kept.Late), f.Count(kept.Promised)), Detail: w.T("handover.samples-detail", kept.Late, kept.Missed, kept.Besides)},
+		{Label: w.T("handover.samples"), Value: w.T("handover.of", f.Count(kept.Good+kept.Late), f.Count(kept.Promised)), Detail: w.T("handover.samples-detail", kept.Late, kept.Open, kept.Missed, kept.Besides)},
 		{Label: w.T("handover.matters"), Value: f.Count(open), Detail: w.T("handover.matters-detail", opened, taken, closed)},
 		{Label: w.T("handover.contained"), Value: f.Count(parts), Detail: w.T("handover.contained-detail", cases, unstated)},
 		{Label: w.T("handover.adjustments"), Value: f.Count(prompted + unprompted), Detail: w.T("handover.adjustments-detail", prompted, unprompted, changes)},
 	}
-	if kept.Missed > 0 {
+	if kept.Open+kept.Missed > 0 {
 		out[0].Tone = "due"
 	}
 	if open > 0 {
@@ -184,7 +184,7 @@ func newLineView(f ui.Format, sum plant.ShiftSummary) lineView {
 	w := f.Words
 	v := lineView{ID: sum.Line.ID.String(), Name: sum.Line.Name, NoteID: uuid.Must(uuid.NewV7()).String(), Over: sum.Span.Over(f.Now)}
 	for _, st := range sum.Stations {
-		v.Stations = append(v.Stations, stationKeptView{st.Station.Name, f.Count(st.Promised), f.Count(st.Good), f.Count(st.Late), f.Count(st.Missed), f.Count(st.Besides), st.Late+st.Missed > 0})
+		v.Stations = append(v.Stations, stationKeptView{st.Station.Name, f.Count(st.Promised), f.Count(st.Good), f.Count(st.Late), f.Count(st.Open), f.Count(st.Missed), f.Count(st.Besides), st.Late+st.Open+st.Missed > 0})
 	}
 	for _, m := range sum.StillOpen() {
 		v.Open = append(v.Open, newHandoverMatter(f, m, sum.Until))

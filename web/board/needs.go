@@ -1,6 +1,7 @@
 package board
 
 import (
+	"cmp"
 	"slices"
 	"strings"
 	"time"
@@ -34,6 +35,7 @@ type needView struct {
 	Symbol  string
 	Age     string
 	Why     string
+	Opened  string // since when the matter is open, where it became a Hold only later
 	Taken   string // who took it; empty: nobody yet
 	Reach   string // what is suspect
 	Link    string
@@ -50,12 +52,36 @@ type needView struct {
 	gauge   bool     // a check is overdue: after all that is about product and process
 }
 
-// place orders the list before age does.
+// place orders the list before gravity and age do: what was called about, product in doubt
+// that nobody has taken, the rest that nobody has, samples and checks that are late, and what
+// somebody is at already. A Hold that is kept quiet is still product in doubt.
 func (v needView) place() int {
-	if v.gauge {
-		return 2
+	switch {
+	case v.Call.Marked:
+		return 0
+	case v.gauge:
+		return 4
+	case v.Matter == "":
+		return 3
+	case v.Taken != "":
+		return 6
+	case v.gravity == plant.IsHold.Gravity():
+		return 1
+	case v.Call.Quiet:
+		return 5
 	}
-	return v.Call.place()
+	return 2
+}
+
+func compareNeeds(a, b needView) int {
+	return cmp.Or(a.place()-b.place(), b.gravity-a.gravity, quietLast(a)-quietLast(b), a.since.Compare(b.since))
+}
+
+func quietLast(v needView) int {
+	if v.Call.Quiet {
+		return 1
+	}
+	return 0
 }
 
 // studyView is one characteristic that engineering owns.
@@ -110,15 +136,7 @@ func newNeeds(f ui.Format, states []plant.StationState) needsView {
 		v.Engineering, v.More = v.Engineering[:shown], v.Engineering[shown:]
 		v.MoreText = f.Words.T("board.more", more)
 	}
-	slices.SortStableFunc(v.List, func(a, b needView) int {
-		if n := a.place() - b.place(); n != 0 {
-			return n
-		}
-		if n := a.since.Compare(b.since); n != 0 {
-			return n
-		}
-		return b.gravity - a.gravity
-	})
+	slices.SortStableFunc(v.List, compareNeeds)
 	switch n := len(v.List); {
 	case n == 0:
 		v.None = f.Words.T("board.nobody-needed")
@@ -143,7 +161,8 @@ func newMatter(f ui.Format, st *plant.StationState, c *plant.CharacteristicState
 	v := need(st, condition)
 	v.Link = matterAddress(st.ID, c.ID, m.ID)
 	v.Matter = m.ID.String()
-	v.Age, v.since = f.Since(m.OpenedAt), m.OpenedAt
+	v.since = m.KindSince()
+	v.Age, v.Opened = f.Since(v.since), ui.OpenedBefore(f, *m)
 	v.Why = f.Words.T("board.why", ui.ConditionWord(f.Words, condition), c.Title(), why(f, c))
 	v.Say = f.Words.T("board.say", st.Name, v.Why)
 	if says, ok := ui.SayReachOf(f, *c); ok {

@@ -77,7 +77,7 @@ func open(c *plant.CharacteristicState, since time.Duration, firings ...plant.Fi
 			newest.Outside = 1
 		}
 		newest.Signals = append(newest.Signals, plant.Signal{Firing: f, Characteristic: c.ID, Subgroup: newest.Subgroup, Matter: m.ID})
-		m.Lines = append(m.Lines, plant.MatterLine{Firing: f, First: newest.TakenAt, Last: newest.TakenAt, Count: 1})
+		m.Lines = append(m.Lines, plant.MatterLine{Firing: f, First: m.OpenedAt, Last: newest.TakenAt, Count: 1})
 	}
 	newest.Stats = plant.Summarise(newest.Readings, c.Setup.Decimals)
 	c.Matter = m

@@ -85,12 +85,15 @@ func place(o plant.OpenCall) int {
 func newOpen(f ui.Format, o plant.OpenCall) openView {
 	w, condition := f.Words, conditionOf(o.Kind)
 	v := openView{Tone: ui.Tone(condition), Symbol: ui.SymbolOf(condition), Word: ui.ConditionWord(w, condition), Station: o.Station.Name,
-		Name: o.Characteristic.Title(), Age: f.Since(o.Since), Link: linkOf(o.Call), Calling: o.Calling(), Status: status(f, o)}
+		Name: o.Characteristic.Title(), Age: f.Since(o.Stands()), Link: linkOf(o.Call), Calling: o.Calling(), Status: status(f, o)}
 	if o.Matter == nil {
 		v.Why = w.T("calls.since-round", f.Clock(o.Since), f.Since(o.Since))
 		return v
 	}
 	v.Why = capital(whyOf(f, o.Call)) + "."
+	if opened := ui.OpenedBefore(f, *o.Matter); opened != "" {
+		v.Why += " " + opened
+	}
 	v.Quiet, v.QuietText = quietAddress(o.Matter.ID), w.T("calls.quiet-link")
 	if !o.QuietUntil.IsZero() {
 		v.QuietText = w.T("calls.quiet-change")

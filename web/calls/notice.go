@@ -36,7 +36,7 @@ func newNotice(f ui.Format, open []plant.OpenCall) noticeView {
 		}
 		condition := conditionOf(o.Kind)
 		c := callView{Tone: ui.Tone(condition), Symbol: ui.SymbolOf(condition), Word: ui.ConditionWord(f.Words, condition),
-			Station: o.Station.Name, Age: f.Since(o.Since), Link: linkOf(o.Call)}
+			Station: o.Station.Name, Age: f.Since(o.Stands()), Link: linkOf(o.Call)}
 		names = append(names, f.Words.T("notice.say-one", c.Station, c.Word))
 		if len(v.List) < noticeShown {
 			v.List = append(v.List, c)

@@ -1,6 +1,8 @@
 package desk
 
 import (
+	"time"
+
 	"holdfast/internal/plant"
 	"holdfast/internal/spc/limits"
 	"holdfast/web/ui"
@@ -25,7 +27,7 @@ func stateFact(f ui.Format, h plant.History) fact {
 	switch v.State {
 	case plant.IsHold, plant.IsLook:
 		v.Val = w.T("desk.fact.for", f.Since(since))
-		v.Sub = w.T("desk.fact.since-what", f.Clock(c.Matter.OpenedTaken), matterWords(f, *c.Matter, c.Setup))
+		v.Sub = w.T("desk.fact.since-what", f.Clock(kindSince(*c.Matter)), matterWords(f, *c.Matter, c.Setup))
 		if parts := ui.SayOutside(f, c, *c.Matter, h.Points, h.Setups); len(parts) > 0 {
 			v.Sub = w.T("desk.fact.newest-part", v.Sub, parts[len(parts)-1])
 		}
@@ -40,6 +42,14 @@ func stateFact(f ui.Format, h plant.History) fact {
 		v.Sub = w.T("desk.fact.calm")
 	}
 	return v
+}
+
+// kindSince is since when the matter is what it is, by when its samples were taken.
+func kindSince(m plant.Matter) time.Time {
+	if since := m.KindSince(); since.After(m.OpenedAt) {
+		return since
+	}
+	return m.OpenedTaken
 }
 
 // matterWords says the gravest standing line of a matter.

@@ -1,6 +1,8 @@
 package ui
 
 import (
+	"time"
+
 	"holdfast/internal/plant"
 	"holdfast/web/words"
 )
@@ -46,6 +48,15 @@ func ConditionOf(v plant.Verdict) plant.Condition {
 		return plant.IsLearning
 	}
 	return plant.CalmLeave
+}
+
+// OpenedBefore says since when a matter is open, where it became what it is now only later:
+// its age is that of the Hold. "" where the two are one.
+func OpenedBefore(f Format, m plant.Matter) string {
+	if m.KindSince().Sub(m.OpenedAt) < time.Minute {
+		return ""
+	}
+	return f.Words.T("ui.opened-before", f.Clock(m.OpenedAt))
 }
 
 // VerdictWords is what a verdict tells the operator to do.
