@@ -51,6 +51,7 @@ type Ownership struct {
 	Since   time.Time   `json:"since"`              // it is this owner's
 	For     time.Time   `json:"for"`                // since then for this reason
 	AtLeast bool        `json:"at_least,omitempty"` // Since is where the record that was looked at begins
+	Between int         `json:"between,omitempty"`  // times that the station had it since Since, to find a special cause first
 	Unknown bool        `json:"-"`                  // long overdue or out of contact: the owner is as before
 
 	Finding Finding `json:"finding,omitzero"` // of engineering, while the station has to find a special cause first
@@ -63,6 +64,7 @@ type Finding struct {
 	Reason  OwnerReason `json:"reason"` // "" when there is none
 	Since   time.Time   `json:"since"`
 	AtLeast bool        `json:"at_least,omitempty"`
+	Between int         `json:"between,omitempty"`
 }
 
 // after carries the finding of engineering over from the ownership before; same is false
@@ -73,13 +75,13 @@ func (o Ownership) after(last Ownership, same bool) Ownership {
 	}
 	found := last.Finding
 	if last.Reason.WantsProtection() {
-		found = Finding{last.Reason, last.Since, last.AtLeast}
+		found = Finding{last.Reason, last.Since, last.AtLeast, last.Between}
 	}
 	switch {
 	case o.Reason == MatterOpen, o.Reason == Settling, o.Reason == TooFew:
 		o.Finding = found
 	case o.Reason == last.Finding.Reason:
-		o.Since, o.AtLeast = last.Finding.Since, last.Finding.AtLeast
+		o.Since, o.AtLeast, o.Between = last.Finding.Since, last.Finding.AtLeast, last.Finding.Between+1
 	}
 	return o
 }
@@ -160,7 +162,7 @@ func (c CharacteristicState) Ownership() Ownership {
 	out := Ownership{Owner: owner, Reason: reason, Unknown: c.Due.State == TooLate}
 	last := c.Standing.Last
 	if last.Owner == owner && last.Reason == reason {
-		out.Since, out.For, out.AtLeast = last.Since, last.For, last.AtLeast
+		out.Since, out.For, out.AtLeast, out.Between = last.Since, last.For, last.AtLeast, last.Between
 		if c.sameLimits() {
 			out.Finding = last.Finding
 		}
@@ -169,7 +171,7 @@ func (c CharacteristicState) Ownership() Ownership {
 	out.For = c.reasonSince(reason)
 	// What runs out was accepted before, and then nobody owned it.
 	if out.Since = out.For; last.Owner == owner && reason != AcceptanceEnded {
-		out.Since, out.AtLeast = last.Since, last.AtLeast
+		out.Since, out.AtLeast, out.Between = last.Since, last.AtLeast, last.Between
 	}
 	return out.after(last, c.sameLimits())
 }

@@ -195,7 +195,11 @@ func TestWhatEngineeringFoundOutlastsAMatter(t *testing.T) {
 	}
 	found := Finding{Reason: NotCapable, Since: course[2].Since}
 	for i, o := range course[2:] {
-		if o.Owner == AtStation && o.Finding != found || o.Owner == Engineering && (!o.Since.Equal(found.Since) || o.Finding != Finding{}) {
+		found.Between = (i + 2) / 3 // how often the station had it since
+		if o.Owner == Engineering && o.Between != found.Between {
+			t.Errorf("%d: %d times at the station in between, want %d", i, o.Between, found.Between)
+		}
+		if found.Between = i / 3; o.Owner == AtStation && o.Finding != found || o.Owner == Engineering && (!o.Since.Equal(found.Since) || o.Finding != Finding{}) {
 			t.Errorf("%d: %+v, the finding is since %s", i, o, found.Since)
 		}
 	}

@@ -111,7 +111,7 @@ func (r OwnerRecord) Fold() (Standing, []Ownership) {
 		if n := len(course); n > 0 {
 			last := course[n-1]
 			if last.Owner == owner {
-				next.Since, next.AtLeast = last.Since, last.AtLeast
+				next.Since, next.AtLeast, next.Between = last.Since, last.AtLeast, last.Between
 			}
 			if last.Owner == owner && last.Reason == reason {
 				if !same {

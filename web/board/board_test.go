@@ -34,12 +34,12 @@ func TestCardSaysStateAgeNextAndOwner(t *testing.T) {
 	}{
 		{"Turning 1", "look", "Look", "12 min", "next 12:42", "owner: station, 12 min"},
 		{"Turning 2", "calm", "Leave", "3 d", "next 12:42", "owner: nobody, 12 min"},
-		{"Straightening", "due", "Due", "late 9 min", "due 12:15", "owner: station"},
+		{"Straightening", "due", "Due", "late 9 min", "station: due 12:15", "owner: nobody"},
 		{"Drilling 1", "learning", "Learning", "", "next 12:42", "owner: engineering"},
 		{"Drilling 2", "stopped", "Stopped", "36 min", "paused", "owner: nobody, 12 min"},
 		{"Press", "hold", "Hold", "26 min", "next 12:42", "owner: station, 26 min"},
-		{"Greasing", "unknown", "Unknown", "late 3 h", "due 09:24", "owner: station"},
-		{"Final test", "asked", "Due", "2 min", "due 12:22", "owner: station"},
+		{"Greasing", "unknown", "Unknown", "late 3 h", "station: due 09:24", "owner: nobody"},
+		{"Final test", "asked", "Due", "2 min", "station: due 12:22", "owner: nobody"},
 	} {
 		c := cardOf(t, s, tc.station)
 		got := []string{c.Front.Tone, c.Front.Word, c.Front.Age, c.Next, c.Owner}
@@ -342,6 +342,20 @@ func TestShiftCountsWhatTheStatesHold(t *testing.T) {
 	}
 	if v := newShift(format(), kestrelRow, nil); len(v.Facts) != 0 || v.Next != "" {
 		t.Errorf("an empty plant has a shift of %+v", v)
+	}
+}
+
+// TestTheAlarmLoadMarksMidnight: the hours of two days stand under their days.
+func TestTheAlarmLoadMarksMidnight(t *testing.T) {
+	t.Parallel()
+	v := newLoad(format(), twelve())
+	if want := []loadDay{{"11 Mar", 11}, {"12 Mar", 13}}; !slices.Equal(v.Days, want) {
+		t.Errorf("%+v, want %+v", v.Days, want)
+	}
+	for i, hour := range v.Hours {
+		if v.begins(i) != (hour == "0") {
+			t.Errorf("column %d, hour %s, begins a day: %v", i, hour, v.begins(i))
+		}
 	}
 }
 

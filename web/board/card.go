@@ -107,7 +107,9 @@ func newCard(f ui.Format, st *plant.StationState) cardView {
 	v.Measured = true
 	v.Front = newMark(f, front)
 	v.Link = stationAddress(st.ID, front.ID)
-	v.Next = next(f, front)
+	if v.Next = next(f, front); f.AskedOfStation(*front) != "" {
+		v.Next = f.Words.T("board.of-station", v.Next) // whoever owns it
+	}
 	v.Owner, v.Strong = ownerShown(f, front)
 	var matters, who []string
 	calm := 0
@@ -170,14 +172,14 @@ func next(f ui.Format, c *plant.CharacteristicState) string {
 }
 
 func ownerShown(f ui.Format, c *plant.CharacteristicState) (text string, strong bool) {
-	list := owners(c)
-	o := list[0]
-	if o == plant.Nobody && len(list) > 1 {
-		o = list[1]
+	o, w := c.Ownership(), f.Words
+	word := ui.OwnerWord(w, o.Owner)
+	strong = o.Owner == plant.Engineering
+	switch {
+	case o.Since.IsZero(), f.AskedOfStation(*c) != "": // the card says already what is asked, and needs the room
+		return w.T("board.owner", word), strong
+	case o.Between > 0:
+		return w.T("board.owner-found", word, f.Since(o.Since)), strong
 	}
-	word := ui.OwnerWord(f.Words, o)
-	if own := c.Ownership(); own.Owner == o && !own.Since.IsZero() {
-		return f.Words.T("board.owner-for", word, f.Since(own.Since)), o == plant.Engineering
-	}
-	return f.Words.T("board.owner", word), o == plant.Engineering
+	return w.T("board.owner-for", word, f.Since(o.Since)), strong
 }

@@ -19,8 +19,28 @@ type loadView struct {
 	Sum, Judged string
 	Hours       []string // the hour of the day of each column
 	HourTexts   []string // the same for a screen reader
+	Days        []loadDay
 	Lanes       []loadLane
 	All         loadRow
+}
+
+// loadDay is a day over the columns that lie in it.
+type loadDay struct {
+	Name  string
+	Hours int
+}
+
+// begins reports whether a day begins with a column, other than the first.
+func (v loadView) begins(column int) bool {
+	for _, d := range v.Days {
+		if column == 0 {
+			return false
+		}
+		if column -= d.Hours; column == 0 {
+			return true
+		}
+	}
+	return false
 }
 
 type loadLane struct {
@@ -67,6 +87,10 @@ func newLoad(f ui.Format, states []plant.StationState) loadView {
 	for i := range loadHours {
 		at := end.Add(time.Duration(i-loadHours) * time.Hour)
 		v.Hours = append(v.Hours, strconv.Itoa(at.In(f.Zone).Hour()))
+		if day := f.ShortDay(at); i == 0 || v.Days[len(v.Days)-1].Name != day {
+			v.Days = append(v.Days, loadDay{Name: day})
+		}
+		v.Days[len(v.Days)-1].Hours++
 		v.HourTexts = append(v.HourTexts, w.T("board.load.hour", f.Time(at)))
 	}
 	all := make([]int, loadHours)

@@ -157,15 +157,11 @@ func newAuditView(s ui.Shell, h plant.History, audit plant.AdjustmentAudit, a, r
 
 func spellWords(f ui.Format, s plant.Spell) string {
 	w := f.Words
-	day := func(t time.Time) string {
-		local := t.In(f.Zone)
-		return w.T("ui.day-month", itoa(local.Day()), w.T("ui.month-short."+itoa(int(local.Month()))))
-	}
 	count := w.T("audit.spell-count", s.Prompted+s.Unprompted, s.Unprompted)
-	if from, to := day(s.From), day(s.To); from != to {
+	if from, to := f.ShortDay(s.From), f.ShortDay(s.To); from != to {
 		return w.T("audit.spell", from, to, count)
 	}
-	return w.T("audit.spell-day", day(s.From), count)
+	return w.T("audit.spell-day", f.ShortDay(s.From), count)
 }
 
 // times is a ratio for people. Few adjustments leave its interval open upwards, and

@@ -42,6 +42,32 @@ func TestAChartWithoutASampleSaysWhatComesNext(t *testing.T) {
 	b.get("/desk/characteristic/01234567-89ab-7def-8123-456789abcdef").is(http.StatusNotFound)
 }
 
+// TestThePanelIsNamedByItsPoints: what is drawn stays an average of five after the size of
+// later subgroups was changed.
+func TestThePanelIsNamedByItsPoints(t *testing.T) {
+	t.Parallel()
+	s := newSite(t)
+	s.fill(t, s.Diameter, 3, 5, 14991, 2, 1, nil)
+	h, err := s.History(t.Context(), s.Diameter.ID, plant.Stretch{Last: 1})
+	if err != nil {
+		t.Fatal(err)
+	}
+	setup := h.State.Setup
+	setup.Size = 3
+	if err := s.ChangeSetup(t.Context(), s.Diameter.ID, setup, setup.Version, s.Engineer.ID); err != nil {
+		t.Fatal(err)
+	}
+	b := s.signIn(t, s.Engineer)
+	b.get(path(s.Diameter)).is(http.StatusOK).has("Averages of 5").hasNot("Averages of 3")
+	s.Clock.Advance(30 * time.Minute)
+	round := s.Round(s.Diameter, 14990, 14991, 14992)
+	round.Entries[0].SetupVersion = setup.Version + 1
+	if _, err := s.Record(t.Context(), round); err != nil {
+		t.Fatal(err)
+	}
+	b.get(path(s.Diameter)).is(http.StatusOK).has("Averages of each subgroup, 3 to 5 parts")
+}
+
 func TestTheChartShowsAnyStretch(t *testing.T) {
 	t.Parallel()
 	s := newSite(t)

@@ -98,6 +98,7 @@ func newDrawing(f ui.Format, h plant.History) *drawing {
 	d.c = &chart.Control{ID: "chart-of-" + h.State.ID.String(), H1: locationHeight, H2: dispersionHeight,
 		Zone: f.Zone, TickLabel: tickLabel(w), Words: chartWords(w)}
 	d.c.Location, d.c.Dispersion = panels(w, d.setup)
+	d.nameBySizes()
 	d.putPoints()
 	d.putSegments()
 	d.putReach()
@@ -105,6 +106,21 @@ func newDrawing(f ui.Format, h plant.History) *drawing {
 	d.putChanges()
 	d.c.Label = d.label()
 	return d
+}
+
+// nameBySizes names the averages by how many parts the subgroups that are drawn have, which
+// the set-up of now may not be: its size was changed, or parts were lost.
+func (d *drawing) nameBySizes() {
+	if len(d.points) == 0 || d.setup.Chart == limits.Individuals {
+		return
+	}
+	least, most := d.points[0].Stats.N, d.points[0].Stats.N
+	for _, p := range d.points {
+		least, most = min(least, p.Stats.N), max(most, p.Stats.N)
+	}
+	if d.c.Location.Name = d.f.Words.T("desk.panel.averages", most); least < most {
+		d.c.Location.Name = d.f.Words.T("desk.panel.averages-of-each", least, most)
+	}
 }
 
 // dispersions are the values of the lower panel, NaN where there is none. No moving

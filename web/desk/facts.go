@@ -84,8 +84,11 @@ func ownerFact(f ui.Format, c plant.CharacteristicState) fact {
 	default:
 		v.Sub = w.T("desk.fact.owner-reason", upperFirst(f.OwnerReason(c)), f.OwnerSince(c.Ownership()))
 	}
+	if asked := f.AskedOfStation(c); asked != "" {
+		v.Sub = w.T("desk.fact.asked", v.Sub, upperFirst(asked))
+	}
 	if found := f.OwnerFinding(c.Ownership()); found != "" {
-		v.Sub = w.T("desk.fact.owner-finding", v.Sub, ui.OwnerWord(w, plant.Engineering), found)
+		v.Sub = w.T("desk.fact.owner-finding", v.Sub, upperFirst(ui.OwnerWord(w, plant.Engineering)), found)
 	}
 	return v
 }

@@ -157,6 +157,12 @@ func newRow(f ui.Format, c plant.CharacteristicState) row {
 	o := c.Ownership()
 	v := row{Href: address(c.ID), Name: c.Name, Machine: c.Machine.Name, State: c.Condition(),
 		Owner: upperFirst(ui.OwnerWord(w, o.Owner)), Strong: o.Owner == plant.Engineering, Why: w.T("owner.reason." + string(o.Reason)), Since: f.OwnerSince(o)}
+	if o.Reason == plant.MatterOpen {
+		v.Why = f.OwnerReason(c)
+	}
+	if asked := f.AskedOfStation(c); asked != "" {
+		v.Why = w.T("desk.list.why-and", v.Why, asked)
+	}
 	switch v.State {
 	case plant.IsHold, plant.IsLook, plant.IsStopped:
 		v.For = f.Since(c.Since())

@@ -67,7 +67,7 @@ func TestProductIsDecidedAboutOnTheDesk(t *testing.T) {
 	b.get(at).has("You recorded the fix of this matter.").hasNot("The matter is still open")
 	b.get("/desk/product").has("10 parts are kept aside, 1 case is open.", "closed ")
 	state(decide("scrapped", "10", "", "right")).is(http.StatusSeeOther)
-	b.get("/desk/product").has("No product is in doubt", "Settled lately")
+	b.get("/desk/product").has("No product is in doubt", "Settled lately, newest first", `<th scope="col">Settled</th>`)
 
 	// Put aside by a person, without a matter.
 	form := url.Values{"containment": {uuid.Must(uuid.NewV7()).String()}, "id": {uuid.Must(uuid.NewV7()).String()}, "quantity": {"12"}, "place": {"Returns"}}

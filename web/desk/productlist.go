@@ -35,7 +35,8 @@ type productRow struct {
 	Where, Rest         string
 	Age                 string
 	Matter              string
-	Waits               bool // nobody has stated anything yet
+	Settled             string // when; "" while open
+	Waits               bool   // nobody has stated anything yet
 }
 
 // newProductForm opens a containment without a matter.
@@ -149,6 +150,9 @@ func (d *Desk) reachesOf(ctx context.Context, list []plant.Containment) (map[uui
 func newProductRow(f ui.Format, c plant.Containment, found plant.Contained) productRow {
 	w := f.Words
 	v := productRow{Href: productPath(c.ID), Name: c.Characteristic.Name, Station: c.Station.Name, Age: f.Since(c.OpenedAt), Waits: !c.Stated()}
+	if !c.SettledAt.IsZero() {
+		v.Settled = f.Clock(c.SettledAt)
+	}
 	place, tag := c.Where()
 	v.Where, v.Rest = ui.SayWhere(f, place, tag), ui.SayRest(f, c)
 	v.Left, v.Stated = f.Count(c.Left()), f.Count(c.Kept())

@@ -49,7 +49,7 @@ func (f Format) Clock(t time.Time) string {
 	case days >= -6 && days <= 6:
 		return f.Words.T("ui.day-and-time", f.Words.T("ui.weekday."+strconv.Itoa(int(local.Weekday()))), f.Time(t))
 	case local.Year() == now.Year():
-		return f.Words.T("ui.day-and-time", f.shortDay(local), f.Time(t))
+		return f.Words.T("ui.day-and-time", f.ShortDay(t), f.Time(t))
 	}
 	return f.Words.T("ui.day-and-time", f.Date(t), f.Time(t))
 }
@@ -60,7 +60,9 @@ func daysBetween(a, b time.Time) int {
 	return int(midnight(b).Sub(midnight(a)) / (24 * time.Hour))
 }
 
-func (f Format) shortDay(local time.Time) string {
+// ShortDay is the day in short, "3 Mar".
+func (f Format) ShortDay(t time.Time) string {
+	local := t.In(f.Zone)
 	return f.Words.T("ui.day-month", strconv.Itoa(local.Day()), f.Words.T("ui.month-short."+strconv.Itoa(int(local.Month()))))
 }
 

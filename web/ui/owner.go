@@ -11,6 +11,10 @@ import (
 func (f Format) OwnerReason(c plant.CharacteristicState) string {
 	w, o, fig := f.Words, c.Ownership(), c.Standing.Figure
 	switch o.Reason {
+	case plant.MatterOpen: // which may be later than the station's: it settled one before
+		if c.Matter != nil {
+			return w.T("owner.matter-since", f.Clock(c.Matter.OpenedAt))
+		}
 	case plant.Settling:
 		return w.T("owner.settling", c.Quiet(), c.Rules.StableSubgroups)
 	case plant.TooFew:
@@ -55,9 +59,31 @@ func (f Format) OwnerSince(o plant.Ownership) string {
 	case o.Since.IsZero():
 		return ""
 	case o.AtLeast:
-		return f.Words.T("owner.since-before", f.Clock(o.Since))
+		return f.between(f.Words.T("owner.since-before", f.Clock(o.Since)), o.Between)
 	}
-	return f.Words.T("owner.since", f.Clock(o.Since))
+	return f.between(f.Words.T("owner.since", f.Clock(o.Since)), o.Between)
+}
+
+// between adds to since when somebody owns it how often the station had it meanwhile.
+func (f Format) between(since string, n int) string {
+	if n == 0 {
+		return since
+	}
+	return f.Words.T("owner.between", since, n)
+}
+
+// AskedOfStation says which sample the station is asked for where it is not the owner; ""
+// where none is, or where the station is the owner.
+func (f Format) AskedOfStation(c plant.CharacteristicState) string {
+	switch {
+	case c.Owner() == plant.AtStation:
+		return ""
+	case c.Overdue():
+		return f.Words.T("owner.round-late")
+	case c.Condition() == plant.IsDue:
+		return f.Words.T("owner.round-due")
+	}
+	return ""
 }
 
 // LastDay is the day that an instant ends: what holds until midnight holds that day.
