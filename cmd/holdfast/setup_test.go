@@ -27,7 +27,7 @@ import (
 
 // serveEmpty serves a database in which nothing is set up but one administrator, as
 // after an installation.
-func serveEmpty(t testing.TB) *running {
+func serveEmpty(t testing.TB, alsoIs ...plant.Role) *running {
 	t.Helper()
 	ctx := context.Background()
 	clock := storetest.NewClock()
@@ -44,7 +44,7 @@ func serveEmpty(t testing.TB) *running {
 	if err != nil {
 		t.Fatal(err)
 	}
-	p := plant.Person{ID: uuid.Must(uuid.NewV7()), Login: "administrator1", Name: "Administrator 1", Roles: plant.Roles{plant.Administrator}, Active: true}
+	p := plant.Person{ID: uuid.Must(uuid.NewV7()), Login: "administrator1", Name: "Administrator 1", Roles: append(plant.Roles{plant.Administrator}, alsoIs...), Active: true}
 	hash, err := hasher.Hash(ctx, secret)
 	if err == nil {
 		err = st.AddPerson(ctx, p, hash, uuid.Nil)
@@ -75,15 +75,17 @@ func (j *journey) on(selector, next string) {
 }
 
 // TestFromNothingToAJudgedRound is the first run as a newcomer walks it: an empty
-// database, one administrator, and at the end a round that was judged by limits.
+// database, one administrator with all roles, as the page for the first person presets it,
+// and at the end a round that was judged by limits.
 func TestFromNothingToAJudgedRound(t *testing.T) {
 	t.Parallel()
-	r := serveEmpty(t)
+	r := serveEmpty(t, plant.Operator, plant.Supervisor, plant.Engineer)
 	b := browsertest.Start(t)
 	began := time.Now()
 	j := &journey{p: r.signIn(t, b, "administrator1")}
 	p := j.p
-	p.WaitFor(`location.pathname === "/admin"`)
+	p.WaitFor(`location.pathname === "/board"`) // the first person lands on the first step
+	p.Open("/admin")
 	p.Accessible("overview of an empty plant")
 	p.Do(func(ctx context.Context, window *chromedp.Target) (none chromedp.Void, err error) {
 		_, err = cdp.Call(ctx, window, emulation.SetTimezoneOverride, emulation.SetTimezoneOverrideParams{TimezoneID: "Europe/London"})
@@ -101,8 +103,7 @@ func TestFromNothingToAJudgedRound(t *testing.T) {
 	p.Fill(`[name="zone"]`, "Europe/London")
 	p.WaitFor(there + ` !== ""`)
 	const next = `[data-testid=step] button[type=submit]`
-	j.on(next, `[data-testid=step-engineer]`)
-	j.on(next, `[data-testid=step-floor]`) // "I do" is chosen
+	j.on(next, `[data-testid=step-floor]`) // who sets up measuring is known
 	j.fill("line_name", "Axles")
 	j.fill("station_name", "Turning 1")
 	j.fill("machine_name", "Lathe 11")
@@ -123,14 +124,12 @@ func TestFromNothingToAJudgedRound(t *testing.T) {
 	j.on(next, `[data-testid=step-limits]`)
 	p.Accessible("limits")
 	p.FitsWidth("limits", 320)
+	p.Want("the finished steps lead back", `[...document.querySelectorAll("[data-testid=steps] .done a")].map(a => a.pathname.replace(/\/[0-9a-f-]{36}$/, "")).join(" ")`,
+		"/admin/plant /admin/people /admin/floor /admin/characteristic /admin/people")
 	for _, f := range [][2]string{{"center", "14.991"}, {"sigma", "0.0018"}, {"reason", "Study of this lathe last spring"}, {"secret", secret}} {
 		j.fill(f[0], f[1])
 	}
-	j.on(`[data-testid=known] button[type=submit]`, `[data-testid=step-operator]`)
-	for _, f := range [][2]string{{"person_name", "Operator 1"}, {"login", "operator1"}, {"password", secret}} {
-		j.fill(f[0], f[1])
-	}
-	j.on(next, `[data-testid=step-round]`)
+	j.on(`[data-testid=known] button[type=submit]`, `[data-testid=step-round]`)
 	p.Accessible("the first round")
 	p.Click(`[data-testid=tablet-code] button`)
 	p.WaitFor(`location.pathname === "/admin/start" && ` + find(`[data-testid=digits]`))
@@ -140,11 +139,9 @@ func TestFromNothingToAJudgedRound(t *testing.T) {
 	p.Click(`[data-testid=code] button`) // withdrawn
 	p.WaitFor(`location.pathname === "/admin/start" && ` + find(`[data-testid=tablet-code]`))
 
-	j.on(`[data-testid=sign-out] button`, `#login`)
-	p.Value(`document.querySelector("#login").focus()`)
-	p.Keys("operator1\t" + secret + "\r")
+	p.Value(find(`[data-testid=to-station]`) + `.click()`)
 	p.WaitFor(`location.pathname.startsWith("/station/")`)
-	j.pages, j.entries = j.pages+1, j.entries+2
+	j.pages++
 	o, err := r.Outline(context.Background())
 	if err != nil || len(o.Characteristics) != 1 {
 		t.Fatalf("%+v, %v", o.Characteristics, err)
@@ -153,6 +150,9 @@ func TestFromNothingToAJudgedRound(t *testing.T) {
 	type5(t, p, "/station/"+c.StationID.String()+"?measure="+c.ID.String(), "14.998", "14.999", "14.998", "14.999", "14.998")
 	j.pages, j.entries = j.pages+1, j.entries+5
 	p.Want("the first round is judged", theVerdict, "Look for a cause")
+	if j.pages != 7 || j.entries != 19 {
+		t.Errorf("%d steps and %d entries; the README says 7 and 19", j.pages, j.entries)
+	}
 	t.Logf("from an empty database to a judged round: %d steps, %d entries, %.1f s by a program (pages looked at by axe included)",
 		j.pages, j.entries, time.Since(began).Seconds())
 
@@ -165,6 +165,67 @@ func TestFromNothingToAJudgedRound(t *testing.T) {
 		t.Errorf("set up: %+v, %+v", o.Plant, c)
 	}
 	whole(t, r)
+}
+
+// TestTheFirstRunOfWhoOnlyManages: the engineer and who takes rounds are others, and Learning
+// is chosen, which goes with the steps until the first round.
+func TestTheFirstRunOfWhoOnlyManages(t *testing.T) {
+	t.Parallel()
+	r := serveEmpty(t)
+	v := r.visit(t, "administrator1")
+	stands := func(what, path, step string) string {
+		t.Helper()
+		res, body := v.get(path)
+		if res.StatusCode != http.StatusOK || !strings.Contains(body, `data-testid="step-`+step+`"`) {
+			t.Fatalf("%s: %d, does not stand at %s", what, res.StatusCode, step)
+		}
+		return body
+	}
+	answer := func(step string, form url.Values) string {
+		t.Helper()
+		res, body := v.post("/admin/start/"+step, form)
+		if res.StatusCode != http.StatusSeeOther {
+			t.Fatalf("%s: %d %.1500s", step, res.StatusCode, body)
+		}
+		return res.Header.Get("Location")
+	}
+	if res, body := v.post("/admin/start/plant", url.Values{"plant": {"Kestrel Row"}, "zone": {"Londn"}}); res.StatusCode != http.StatusUnprocessableEntity ||
+		!strings.Contains(body, "Names like it: Arctic/Longyearbyen, Europe/London") || !strings.Contains(body, `<a href="/admin" class="here" aria-current="page">`) {
+		t.Errorf("a zone that is none: %d, without one like it or without its tab", res.StatusCode)
+	}
+	at := answer("plant", url.Values{"plant": {"Kestrel Row"}, "zone": {"london"}})
+	stands("the plant is named", at, "engineer")
+	at = answer("engineer", url.Values{"who": {"other"}, "person_name": {"Engineer 1"}, "login": {"engineer1"}, "password": {secret}})
+	stands("an engineer is there", at, "floor")
+	at = answer("floor", url.Values{"line_name": {"Axles"}, "station_name": {"Turning 1"}, "machine_name": {"Lathe 11"}})
+	if body := stands("the floor is there", at, "measure"); !strings.Contains(body, `data-testid="wait"`) {
+		t.Error("what is measured is asked of somebody who may not say it")
+	}
+	manager := v
+	v = r.visit(t, "engineer1")
+	at = answer("measure", url.Values{"name": {"Axle seat diameter"}, "unit": {"mm"}, "decimals": {"3"}, "size": {"5"}, "minutes": {"60"}})
+	stands("a characteristic is there", at, "limits")
+	v = manager
+	body := stands("limits are the engineer's", "/admin/start", "limits")
+	if !strings.Contains(body, `href="/admin/start?learn=yes"`) {
+		t.Error("who only manages cannot go on with Learning")
+	}
+	stands("Learning is chosen", "/admin/start?learn=yes", "operator")
+	at = answer("operator", url.Values{"who": {"other"}, "person_name": {"Operator 1"}, "login": {"operator1"}, "password": {secret}})
+	body = stands("somebody takes rounds", at, "round")
+	if !strings.Contains(body, `data-testid="sign-out"`) || !strings.Contains(body, `name="to" value="/admin/start?learn=yes"`) || !strings.Contains(body, `<a href="/admin/start">Limits</a>`) {
+		t.Errorf("before the first round: %s", body[strings.Index(body, "<main"):])
+	}
+	stands("nobody has chosen on this page", "/admin/start", "limits")
+	if o, err := r.Outline(context.Background()); err != nil || o.Plant.Location.String() != "Europe/London" {
+		t.Errorf("the zone: %v, %v", o.Plant.Location, err)
+	}
+	if _, body := v.get("/admin"); !strings.Contains(body, "manages-only") || !strings.Contains(body, `<a href="/admin/messages">Messages</a></h2>`) {
+		t.Error("the overview of who only manages")
+	}
+	if _, body := r.visit(t, "engineer1").get("/admin"); strings.Contains(body, "manages-only") {
+		t.Error("an engineer is told that they only manage")
+	}
 }
 
 // whole demands that the record is as it was sealed.

@@ -35,7 +35,7 @@ type codeView struct {
 	At                          string // the address at which it is typed
 	Curl                        string // what fetches the token of a sender, "" for what has a browser
 	QR                          qrView // of that address with the code
-	OnlyHere                    bool   // no other machine reaches the server
+	OnlyHere                    string // what lets other machines reach the server, where none does
 	Trust, TrustPage            string // of the server's own authority, in full and from here; "" where it has none
 }
 
@@ -127,8 +127,15 @@ func (a *Admin) codeOf(r *http.Request, s ui.Shell, c plant.DeviceCode) codeView
 	}
 	if c.Device.Kind == plant.Sender {
 		one.Curl = enrolByCurl(one.At, c.Code, one.Trust != "")
-	} else if one.OnlyHere = onlyHere; !onlyHere {
+		return one
+	}
+	switch {
+	case !onlyHere:
 		one.QR = qrOf(one.At + "?code=" + c.Code)
+	case ui.FrameOf(r).Secure: // only the address keeps others away
+		one.OnlyHere = s.Words.T("staff.only-here-addr")
+	default:
+		one.OnlyHere = s.Words.T("staff.only-here")
 	}
 	return one
 }

@@ -53,6 +53,7 @@ func newOverview(f ui.Frame, o plant.Outline) overviewView {
 	}
 	if f.Person.May(plant.Manage) {
 		v.Cards = append(v.Cards, card{w.T("staff.people"), w.T("setup.card.people"), "", peopleAddress}, card{w.T("staff.devices"), w.T("setup.card.devices"), "", devicesAddress},
+			card{w.T("messages.page"), w.T("setup.card.messages"), "", messagesAddress},
 			card{w.T("about.title"), w.T("setup.card.about"), "", aboutAddress}, card{w.T("admin.qualification"), w.T("admin.qualification-text"), "", qualificationAddress})
 	}
 	return v

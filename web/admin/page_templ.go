@@ -45,7 +45,7 @@ func navigation(w *words.Printer, p plant.Person, path string) templ.Component {
 func pagesOf(w *words.Printer, p plant.Person, path string) []ui.NavLink {
 	begins := func(with string) bool { return strings.HasPrefix(path, with) }
 	links := []ui.NavLink{
-		ui.To(home, w.T("admin.nav-start"), path == home || path == home+"/" || path == startAddress),
+		ui.To(home, w.T("admin.nav-start"), path == home || path == home+"/" || begins(startAddress)),
 		ui.To(plantAddress, w.T("setup.plant"), path == plantAddress),
 		ui.To(floorAddress, w.T("setup.floor"), path == floorAddress),
 		ui.To(partsAddress, w.T("setup.parts"), path == partsAddress),

@@ -5,6 +5,7 @@ import (
 	"net/http"
 	"net/url"
 	"strconv"
+	"strings"
 	"time"
 
 	"github.com/google/uuid"
@@ -61,19 +62,15 @@ func plantOf(q *asking) plant.Plant {
 	p := plant.Plant{Name: q.nameOf("plant")}
 	loc, err := zoneOf(q.get("zone"))
 	if err != nil {
-		q.refuse("zone", q.w.T("setup.problem.zone"))
+		problem := q.w.T("setup.problem.zone")
+		if like := likeZone(q.get("zone")); len(like) > 0 {
+			problem = q.w.T("setup.problem.zone-like", strings.Join(like, ", "))
+		}
+		q.refuse("zone", problem)
 		return p
 	}
 	p.Location = loc
 	return p
-}
-
-// zoneOf loads a time zone. What the machine calls its own is no name of one.
-func zoneOf(name string) (*time.Location, error) {
-	if name == "" || name == "Local" {
-		return nil, fmt.Errorf("there is no time zone %q", name)
-	}
-	return time.LoadLocation(name)
 }
 
 func (a *Admin) changePlant(w http.ResponseWriter, r *http.Request) error {

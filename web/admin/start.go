@@ -12,7 +12,10 @@ import (
 	"holdfast/web/ui"
 )
 
-const startAddress = home + "/start"
+const (
+	startAddress  = home + "/start"
+	startLearning = startAddress + "?learn=yes" // Learning was chosen; the first round keeps the choice
+)
 
 // step is one step of the first run. What is done is read from the plant itself, so the
 // run can be left at any time and goes on where it stands, whoever takes it up.
@@ -21,6 +24,7 @@ type step struct {
 	Title  string
 	Done   bool
 	Answer string // what was done, in a few words
+	Back   string // where what was done is seen and changed, "" for who may not
 }
 
 type stepName string
@@ -65,8 +69,8 @@ func stepsOf(f ui.Frame, o plant.Outline) []step {
 		{Name: stepEngineer, Done: o.People.Engineer},
 		{Name: stepFloor, Done: at.machine.ID != uuid.Nil, Answer: at.machine.Name},
 		{Name: stepMeasure, Done: at.characteristic.ID != uuid.Nil, Answer: at.characteristic.Name},
-		// Learning is an answer as well: whoever goes on without limits has given it.
-		{Name: stepLimits, Done: at.characteristic.Revision > 0 || at.characteristic.ID != uuid.Nil && (o.People.RoundTaker || o.Rounds)},
+		// Learning is an answer as well: whoever takes rounds without limits has given it.
+		{Name: stepLimits, Done: at.characteristic.Revision > 0 || at.characteristic.ID != uuid.Nil && o.Rounds},
 		{Name: stepOperator, Done: o.People.RoundTaker},
 		{Name: stepRound, Done: o.Rounds}}
 	switch {
@@ -79,11 +83,30 @@ func stepsOf(f ui.Frame, o plant.Outline) []step {
 	}
 	for i := range s {
 		s[i].Title = w.T("setup.step." + string(s[i].Name))
-		if !s[i].Done {
+		if s[i].Done {
+			s[i].Back = backTo(f.Person, s[i].Name, at)
+		} else {
 			s[i].Answer = ""
 		}
 	}
 	return s
+}
+
+// backTo is the page of what a finished step was about.
+func backTo(p plant.Person, of stepName, at first) string {
+	switch {
+	case of == stepPlant:
+		return plantAddress
+	case of == stepFloor:
+		return floorAddress
+	case (of == stepEngineer || of == stepOperator) && p.May(plant.Manage):
+		return peopleAddress
+	case (of == stepMeasure || of == stepLimits) && p.May(plant.SetLimits):
+		return measureAt(at.characteristic.ID, "")
+	case of == stepRound && p.May(plant.TakeRounds) && at.station.ID != uuid.Nil:
+		return "/station/" + at.station.ID.String()
+	}
+	return ""
 }
 
 // current is the first step that is not done; all of them when everything is.
@@ -109,8 +132,8 @@ type startView struct {
 	StationName  string
 	StationID    string
 	Judged       *judgedView
-	Wait         bool // this step is the engineer's, and this person is none
-	Learn        string
+	Wait         bool   // this step is the engineer's, and this person is none
+	Learn, Here  string // where it goes on with Learning; this page as it stands
 	Unit         string
 	Specified    bool
 	Characterist string
@@ -126,7 +149,7 @@ type tabletStep struct {
 
 type stepRow struct {
 	N                   int
-	Title, Answer       string
+	Title, Answer, Back string
 	Done, Here          bool
 	HereWord, StateWord string
 }
@@ -152,13 +175,14 @@ func (a *Admin) showStart(w http.ResponseWriter, r *http.Request) error {
 func (a *Admin) renderStart(w http.ResponseWriter, r *http.Request, status int, o plant.Outline, q *asking, learn bool) error {
 	f := ui.FrameOf(r)
 	steps := stepsOf(f, o)
-	if learn && steps[3].Done {
-		steps[4].Done, steps[4].Answer = true, q.w.T("setup.limits-learning")
+	v := startView{Here: startAddress}
+	if learn && steps[3].Done && !steps[4].Done {
+		steps[4].Done, steps[4].Answer, steps[4].Back = true, q.w.T("setup.limits-learning"), startAddress
+		v.Here = startLearning
 	}
 	at := current(steps)
-	v := startView{}
 	for i, s := range steps {
-		row := stepRow{N: i + 1, Title: s.Title, Answer: s.Answer, Done: s.Done, Here: i == at, StateWord: q.w.T("setup.start.open")}
+		row := stepRow{N: i + 1, Title: s.Title, Answer: s.Answer, Back: s.Back, Done: s.Done, Here: i == at, StateWord: q.w.T("setup.start.open")}
 		switch {
 		case s.Done:
 			row.StateWord = q.w.T("setup.start.done")
@@ -219,8 +243,10 @@ func (a *Admin) ask(r *http.Request, v *startView, o plant.Outline, q *asking) e
 		v.Other = []link{{w.T("setup.start.choose-chart"), home + "/chart-choice"}, {w.T("setup.start.describe"), describeAddress}}
 	case stepLimits:
 		preset(url.Values{})
-		if !v.Wait {
-			v.Learn = startAddress + "?learn=yes"
+		v.Learn = startLearning
+		if v.Wait { // no limits are stated by going on
+			v.Other = []link{{w.T("setup.learn.go"), v.Learn}}
+		} else {
 			known := knownForm(q, at.characteristic, startAddress+"/limits", "")
 			v.Form = &known
 		}
@@ -322,7 +348,7 @@ func (a *Admin) doStart(w http.ResponseWriter, r *http.Request) error {
 	}
 	to := startAddress
 	if stepName(chi.URLParam(r, "step")) == stepOperator {
-		to += "?learn=yes"
+		to = startLearning
 	}
 	ui.Redirect(w, r, to)
 	return nil

@@ -2,6 +2,7 @@ package admin
 
 import (
 	_ "embed"
+	"fmt"
 	"strings"
 	"time"
 
@@ -30,4 +31,59 @@ func zoneField(q *asking, now time.Time, chosen bool) field {
 	}
 	f.ZoneSaid = q.w.T("setup.zone-now", "{time}", "{day}")
 	return f
+}
+
+// zoneOf loads a time zone. What the machine calls its own is no name of one. A name that
+// is typed with other capitals, or only the place, is taken when it can be one zone only.
+func zoneOf(name string) (*time.Location, error) {
+	if name == "" || name == "Local" {
+		return nil, fmt.Errorf("there is no time zone %q", name)
+	}
+	loc, err := time.LoadLocation(name)
+	if err == nil {
+		return loc, nil
+	}
+	found, typed := "", plainZone(name)
+	for _, z := range zones {
+		whole := plainZone(z)
+		if whole != typed && placeOf(whole) != typed {
+			continue
+		}
+		if found != "" {
+			return nil, err
+		}
+		found = z
+	}
+	if found == "" {
+		return nil, err
+	}
+	return time.LoadLocation(found)
+}
+
+// plainZone is the name of a zone as it is compared: capitals do not count, and a blank is
+// the mark that stands for one.
+func plainZone(name string) string { return strings.ReplaceAll(strings.ToLower(name), " ", "_") }
+
+func placeOf(zone string) string { return zone[strings.LastIndex(zone, "/")+1:] }
+
+// likeZone are a few zones that somebody may have meant: what was typed is part of their
+// name, or their place begins like it.
+func likeZone(name string) []string {
+	const most, alike = 4, 3
+	typed := plainZone(name)
+	place := placeOf(typed)
+	if len(place) < alike {
+		return nil
+	}
+	var named, begun []string
+	for _, z := range zones {
+		switch whole := plainZone(z); {
+		case strings.Contains(whole, place):
+			named = append(named, z)
+		case strings.HasPrefix(placeOf(whole), place[:alike]):
+			begun = append(begun, z)
+		}
+	}
+	list := append(named, begun...)
+	return list[:min(len(list), most)]
 }

@@ -23,6 +23,19 @@ func TestTheZonesAreThoseOfTheZoneDatabase(t *testing.T) {
 			t.Errorf("%q is taken as %v", name, loc)
 		}
 	}
+	for typed, want := range map[string]string{"berlin": "Europe/Berlin", "EUROPE/berlin": "Europe/Berlin", "new york": "America/New_York"} {
+		if loc, err := zoneOf(typed); err != nil || loc.String() != want {
+			t.Errorf("%q is taken as %v, %v; want %s", typed, loc, err, want)
+		}
+	}
+	for typed, want := range map[string]string{"Europe/Berln": "Europe/Berlin", "Louisville": "America/Kentucky/Louisville", "zz": "", "": ""} {
+		if like := likeZone(typed); len(like) > 4 || want != "" && !slices.Contains(like, want) || want == "" && len(like) > 0 {
+			t.Errorf("%q is like %q; want %q among them", typed, like, want)
+		}
+	}
+	if loc, err := zoneOf("Louisville"); err == nil {
+		t.Errorf("a place that two zones have is taken as %v", loc)
+	}
 	root, err := exec.Command("go", "env", "GOROOT").Output()
 	if err != nil {
 		t.Fatal(err)
