@@ -26,9 +26,10 @@ type auditCmd struct {
 	Against    string `help:"Also demand that the chains contain the heads that --heads printed into this file." placeholder:"FILE"`
 }
 
+// Run only reads, so that it also works beside the server that writes.
 func (c *auditCmd) Run(ctx context.Context, log *slog.Logger) error {
 	if c.Heads {
-		return c.withStore(ctx, log, func(st *store.Store) error { return printHeads(ctx, st) })
+		return c.beside(ctx, log, func(st *store.Store) error { return printHeads(ctx, st) })
 	}
 	var kept map[uuid.UUID]ledger.Head
 	if c.Against != "" {
@@ -37,7 +38,7 @@ func (c *auditCmd) Run(ctx context.Context, log *slog.Logger) error {
 			return err
 		}
 	}
-	return c.withStore(ctx, log, func(st *store.Store) error {
+	return c.beside(ctx, log, func(st *store.Store) error {
 		n, err := st.VerifyLedger(ctx)
 		if err != nil {
 			return fmt.Errorf("after %d entries that hold: %w", n, err)

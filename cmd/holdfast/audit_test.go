@@ -6,6 +6,7 @@ import (
 	"os"
 	"path/filepath"
 	"strings"
+	"sync"
 	"testing"
 
 	"github.com/jackc/pgx/v5"
@@ -13,9 +14,13 @@ import (
 	"holdfast/internal/store/storetest"
 )
 
+var printing sync.Mutex // standard output is the process's own
+
 // printed runs a command and gives what it writes to standard output.
 func printed(t *testing.T, run func() error) (string, error) {
 	t.Helper()
+	printing.Lock()
+	defer printing.Unlock()
 	file := filepath.Join(t.TempDir(), "out")
 	f, err := os.Create(file)
 	if err != nil {

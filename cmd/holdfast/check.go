@@ -46,7 +46,7 @@ func (c *checkCmd) findings(ctx context.Context) []finding {
 	if c.URL != "" {
 		add(checkDatabase(ctx, "database", c.URL, c.OwnerURL)...)
 	} else {
-		add(checkPrivate(c.Data, c.PGBin)...)
+		add(checkPrivate(ctx, c.Data, c.PGBin)...)
 	}
 	if dir := c.stateDir(); dir != "" {
 		add(checkFolder(dir)...)

@@ -66,6 +66,8 @@ func TestCheckSaysWhatIsWrong(t *testing.T) {
 		"nothing said":       {checkCmd{Addr: "127.0.0.1:0"}, "not said where the record is"},
 		"no such PostgreSQL": {checkCmd{database: database{Data: t.TempDir(), PGBin: "/nonexistent"}, Addr: "127.0.0.1:0"}, "PostgreSQL is not installed"},
 		"port taken":         {checkCmd{database: database{Data: t.TempDir()}, Addr: taken.Addr().String()}, "address already in use"},
+		"no such address":    {checkCmd{database: database{Data: t.TempDir()}, Addr: "8080"}, "Say it with --addr as HOST:PORT"},
+		"no place for it":    {checkCmd{database: database{Data: "/proc/holdfast/data"}, Addr: "127.0.0.1:0"}, "/proc/holdfast/data cannot be made: this user may not write in /proc: "},
 		"open folder":        {checkCmd{database: database{Data: open}, Addr: "127.0.0.1:0"}, "Others may write"},
 		"plain to all":       {checkCmd{database: database{Data: t.TempDir()}, Addr: "0.0.0.0:0", transport: transport{TLS: "off"}}, "for this machine only"},
 		"ended authority":    {checkCmd{database: database{Data: old}, Addr: "127.0.0.1:0", transport: transport{TLS: "auto"}}, "It has ended"},
@@ -126,6 +128,7 @@ func TestCheckBesideTheRunningServer(t *testing.T) {
 	}{
 		"plain":                   {checkCmd{Addr: plain.program.listener.Addr().String(), transport: transport{TLS: "off"}}, good},
 		"https":                   {checkCmd{Addr: https.program.listener.Addr().String(), transport: tr}, good},
+		"another folder":          {checkCmd{database: database{Data: t.TempDir()}, Addr: plain.program.listener.Addr().String(), transport: transport{TLS: "off"}}, wrong},
 		"another authority":       {checkCmd{Addr: https.program.listener.Addr().String(), transport: transport{TLS: "auto", TLSDir: foreign}}, wrong},
 		"plain where it is https": {checkCmd{Addr: https.program.listener.Addr().String(), transport: transport{TLS: "off"}}, wrong},
 	} {

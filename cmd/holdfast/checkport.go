@@ -7,13 +7,16 @@ import (
 	"crypto/x509"
 	"errors"
 	"fmt"
+	"io/fs"
 	"net"
 	"net/http"
 	"net/netip"
+	"strings"
 	"syscall"
 	"time"
 
 	"holdfast/internal/certs"
+	"holdfast/internal/localpg"
 	"holdfast/web"
 )
 
@@ -25,18 +28,50 @@ func (c *checkCmd) checkPort(ctx context.Context) finding {
 		_ = l.Close()
 		return finding{good, "port", c.Addr + " is free.", ""}
 	}
-	if errors.Is(err, syscall.EACCES) {
-		return finding{wrong, "port", err.Error() + ".", "Ports below 1024 need a right: setcap cap_net_bind_service=+ep, or AmbientCapabilities in the unit."}
-	}
 	if errors.Is(err, syscall.EADDRINUSE) {
 		switch own, ready := c.ownServer(ctx); {
+		case own && !c.servesData():
+			return finding{wrong, "port", fmt.Sprintf("On %s a Holdfast server runs, and not from the data folder %s.", c.Addr, c.Data), "Choose another address with --addr, or name the folder that is served."}
 		case own && ready:
 			return finding{good, "port", fmt.Sprintf("On %s this server runs already, and is ready.", c.Addr), ""}
 		case own:
 			return finding{look, "port", fmt.Sprintf("On %s this server runs already, but it is not ready.", c.Addr), "Its log says why; mostly its database cannot be reached."}
 		}
+		return finding{wrong, "port", sentence(err), "Choose another with --addr, or end what listens there. It does not answer as this server would with these flags."}
 	}
-	return finding{wrong, "port", err.Error() + ".", "Choose another with --addr, or end what listens there. It does not answer as this server would with these flags."}
+	return finding{wrong, "port", sentence(err), atAnother(err)}
+}
+
+// atAnother says what to do where one cannot listen.
+func atAnother(err error) string {
+	switch {
+	case errors.Is(err, syscall.EADDRINUSE):
+		return "Choose another with --addr, or end what listens there."
+	case errors.Is(err, syscall.EACCES):
+		return "Ports below 1024 need a right: setcap cap_net_bind_service=+ep, or AmbientCapabilities in the unit."
+	case errors.Is(err, syscall.EADDRNOTAVAIL):
+		return "Name an address of this machine with --addr."
+	}
+	return "Say it with --addr as HOST:PORT, such as 127.0.0.1:8080."
+}
+
+// listenAt opens the address to serve at.
+func listenAt(addr string) (net.Listener, error) {
+	l, err := net.Listen("tcp", addr)
+	if err != nil {
+		return nil, fmt.Errorf("%w. %s", err, strings.TrimSuffix(atAnother(err), "."))
+	}
+	return l, nil
+}
+
+// servesData reports whether a server may be the one of these flags: nobody serves another
+// folder than theirs.
+func (c *checkCmd) servesData() bool {
+	if c.privateDir() == "" {
+		return true
+	}
+	_, err := localpg.Attach(c.Data, localpg.Database)
+	return !errors.Is(err, localpg.ErrNotServed) && !errors.Is(err, fs.ErrNotExist)
 }
 
 // ownServer asks what listens at the address whether it is this server, and ready. Over

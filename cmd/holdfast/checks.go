@@ -6,6 +6,7 @@ import (
 	"errors"
 	"fmt"
 	"io/fs"
+	"net"
 	"os"
 	"path/filepath"
 	"slices"
@@ -31,7 +32,7 @@ func checkDatabase(ctx context.Context, about, url, ownerURL string) []finding {
 	defer cancel()
 	i, err := store.Inspect(ctx, url)
 	if err != nil {
-		return []finding{{wrong, about, "The database cannot be reached: " + err.Error() + ".", "Compare DATABASE_URL with the server's address, its pg_hba.conf and the role's password."}}
+		return []finding{{wrong, about, "The database cannot be reached: " + sentence(err), "Compare DATABASE_URL with the server's address, its pg_hba.conf and the role's password."}}
 	}
 	skew := time.Since(i.Now)
 	out := []finding{{good, about, fmt.Sprintf("PostgreSQL %s answers, database %s, role %s.", i.Version, i.Database, i.User), ""}}
@@ -78,13 +79,18 @@ func checkDatabase(ctx context.Context, about, url, ownerURL string) []finding {
 	return out
 }
 
-func checkPrivate(dir, bin string) []finding {
+func checkPrivate(ctx context.Context, dir, bin string) []finding {
 	if dir == "" {
 		return []finding{{wrong, "database", "It is not said where the record is.", "--database-url for a PostgreSQL of your own, or --data for a private one in a folder."}}
 	}
+	if at, err := localpg.Attach(dir, localpg.Database); err == nil {
+		if i, err := store.Inspect(ctx, at); err == nil {
+			return []finding{{good, "database", fmt.Sprintf("The private PostgreSQL %s of %s runs, and answers.", i.Version, dir), ""}}
+		}
+	}
 	b, err := localpg.Find(bin)
 	if err != nil {
-		return []finding{{wrong, "database", err.Error() + ".", ""}}
+		return []finding{{wrong, "database", sentence(err), ""}}
 	}
 	return []finding{{good, "database", fmt.Sprintf("PostgreSQL %d in %s will run a private server in %s.", b.Major, b.Dir, dir), ""}}
 }
@@ -99,15 +105,23 @@ func checkFolder(dir string) []finding {
 		info, err = os.Stat(at)
 	}
 	if err != nil {
-		return []finding{{wrong, "folder", err.Error() + ".", ""}}
+		return []finding{{wrong, "folder", sentence(err), ""}}
 	}
 	var out []finding
 	if at == dir && info.Mode().Perm()&0o022 != 0 {
 		out = append(out, finding{wrong, "folder", fmt.Sprintf("Others may write in %s (mode %o).", dir, info.Mode().Perm()), "chmod go-w " + dir})
 	}
+	took, err := flush(at)
+	if err != nil {
+		text := fmt.Sprintf("This user may not write in %s: %s.", at, withoutPath(err))
+		if at != dir {
+			text = fmt.Sprintf("%s cannot be made: %s", dir, "this"+text[len("This"):])
+		}
+		return append(out, finding{wrong, "folder", text, "Let the user that runs the server write there, or choose another folder."})
+	}
 	var disk syscall.Statfs_t
 	if err := syscall.Statfs(at, &disk); err != nil {
-		return append(out, finding{wrong, "disk", err.Error() + ".", ""})
+		return append(out, finding{wrong, "disk", sentence(err), ""})
 	}
 	free := int64(disk.Bavail) * disk.Bsize
 	gib := fmt.Sprintf("%.1f GiB are free where %s is.", float64(free)/(1<<30), dir)
@@ -119,14 +133,18 @@ func checkFolder(dir string) []finding {
 	default:
 		out = append(out, finding{good, "disk", gib, ""})
 	}
-	took, err := flush(at)
-	switch {
-	case err != nil:
-		return append(out, finding{wrong, "folder", err.Error() + ".", "Let the user that runs the server write there."})
-	case took > slowDisk:
+	if took > slowDisk {
 		return append(out, finding{look, "disk", fmt.Sprintf("Making a write durable takes %s: every save waits for that.", took.Round(100*time.Microsecond)), "A local solid-state disk takes about a millisecond."})
 	}
 	return append(out, finding{good, "disk", fmt.Sprintf("Making a write durable takes %s.", took.Round(10*time.Microsecond)), ""})
+}
+
+// withoutPath is the reason in an error about a file whose name means nothing to anybody.
+func withoutPath(err error) error {
+	if pe, ok := errors.AsType[*fs.PathError](err); ok {
+		return pe.Err
+	}
+	return err
 }
 
 // flush is the median time of making one page durable in a folder.
@@ -171,7 +189,7 @@ func checkClock() finding {
 	now := time.Now()
 	switch {
 	case err != nil:
-		return finding{look, "clock", "The system does not tell whether its clock follows a time server: " + err.Error() + ".", ""}
+		return finding{look, "clock", "The system does not tell whether its clock follows a time server: " + sentence(err), ""}
 	case !follows:
 		return finding{look, "clock", fmt.Sprintf("It is %s, and the clock follows no time server.", now.Format(time.RFC1123)),
 			"Samples are ordered by time: let the machine follow the plant's time server (timedatectl set-ntp true)."}
@@ -181,10 +199,13 @@ func checkClock() finding {
 
 func (c *checkCmd) checkCertificate() []finding {
 	if c.TLS != "auto" {
+		if _, _, err := net.SplitHostPort(c.Addr); err != nil {
+			return nil // checkPort says it
+		}
 		way, err := c.prepare(c.Addr, c.stateDir(), time.Now)
 		switch {
 		case err != nil:
-			return []finding{{wrong, "https", err.Error() + ".", ""}}
+			return []finding{{wrong, "https", sentence(err), ""}}
 		case way.leaf != nil:
 			return []finding{ending(way.leaf(), time.Now())}
 		case c.TLS == "proxy":
@@ -201,7 +222,7 @@ func (c *checkCmd) checkCertificate() []finding {
 		return []finding{{good, "https", "An authority will be made in " + dir + " at the first start.", ""}}
 	}
 	if err != nil {
-		return []finding{{wrong, "https", err.Error() + ".", ""}}
+		return []finding{{wrong, "https", sentence(err), ""}}
 	}
 	f := ending(root, time.Now())
 	f.text += " Its fingerprint is " + certs.Fingerprint(root) + "."

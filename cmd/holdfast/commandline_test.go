@@ -1,8 +1,12 @@
 package main
 
 import (
+	"errors"
 	"io"
+	"io/fs"
+	"net"
 	"os"
+	"path/filepath"
 	"runtime/debug"
 	"strings"
 	"testing"
@@ -46,6 +50,35 @@ func TestACommandLineWithoutACommandHelps(t *testing.T) {
 	}
 	if out, err := onError(t, "polish"); err == nil || status(err) != 2 || out != "" {
 		t.Errorf("an unknown command: %v\n%s", err, out)
+	}
+}
+
+func TestWhatCannotBeUnderstoodLeadsToTheHelp(t *testing.T) {
+	for line, want := range map[string]string{
+		"user roles ada operator": "unexpected argument operator; a role is said with --role operator. holdfast user roles --help says what can be typed",
+		"user roles ada tall":     "unexpected argument tall. holdfast user roles --help says what can be typed",
+		"polish":                  "unexpected argument polish. holdfast --help says what can be typed",
+	} {
+		if _, err := onError(t, strings.Fields(line)...); err == nil || told(err) != want {
+			t.Errorf("holdfast %s: %q, want %q", line, told(err), want)
+		}
+	}
+}
+
+// TestATakenAddressLeavesNothingBehind: the address is tried before a database is made.
+func TestATakenAddressLeavesNothingBehind(t *testing.T) {
+	taken, err := net.Listen("tcp", "127.0.0.1:0")
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer taken.Close()
+	folder := filepath.Join(t.TempDir(), "new")
+	_, err = onError(t, "serve", "--data", folder, "--addr", taken.Addr().String())
+	if err == nil || !strings.HasSuffix(told(err), "address already in use. Choose another with --addr, or end what listens there") {
+		t.Errorf("a taken address: %v", err)
+	}
+	if _, err := os.Stat(folder); !errors.Is(err, fs.ErrNotExist) {
+		t.Errorf("the folder is made: %v", err)
 	}
 }
 

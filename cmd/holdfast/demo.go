@@ -118,7 +118,7 @@ func (c *demoCmd) build(ctx context.Context, db reached, out io.Writer) (string,
 	}
 	const oneClick = "On this machine the sign-in page lets each of them in by one click."
 	if ours {
-		return "The people and their secrets are those printed when the demo was made.\n" + oneClick + "\n", nil
+		return "The people and their passwords are those printed when the demo was made.\n" + oneClick + "\n", nil
 	}
 	hasher, err := auth.NewHasher(auth.DefaultCost, 1)
 	if err != nil {
@@ -140,7 +140,7 @@ func (c *demoCmd) build(ctx context.Context, db reached, out io.Writer) (string,
 	if err != nil {
 		return "", err
 	}
-	return "Who may sign in, and their secrets:\n" + b.String() + oneClick + "\n", finished()
+	return "Who may sign in, and their passwords:\n" + b.String() + oneClick + "\n", finished()
 }
 
 var errForeign = errors.New("this database holds something else; the demo takes only an empty database or its own")

@@ -53,10 +53,34 @@ func main() {
 		return
 	}
 	if !errors.Is(err, errNoCommand) { // the help has said it
-		fmt.Fprintln(os.Stderr, "holdfast:", err)
+		fmt.Fprintln(os.Stderr, "holdfast:", told(err))
 	}
 	os.Exit(status(err))
 }
+
+// told is an error in words for whoever typed the command. Of what somebody can mend, its
+// sentence is the whole of it; what cannot be understood leads to the help.
+func told(err error) string {
+	if pe, ok := errors.AsType[*plant.Error](err); ok {
+		return pe.Message
+	}
+	pe, ok := errors.AsType[*kong.ParseError](err)
+	if !ok {
+		return err.Error()
+	}
+	command := pe.Context.Model.Name
+	if node := pe.Context.Selected(); node != nil {
+		command = node.FullPath()
+	}
+	said := pe.Error()
+	if role, extra := strings.CutPrefix(said, "unexpected argument "); extra && plant.Roles(plant.AllRoles).Has(plant.Role(role)) {
+		said += fmt.Sprintf("; a role is said with --role %s", role)
+	}
+	return fmt.Sprintf("%s. %s --help says what can be typed", strings.TrimSuffix(said, "."), command)
+}
+
+// sentence is an error as a sentence of its own.
+func sentence(err error) string { return strings.TrimSuffix(err.Error(), ".") + "." }
 
 // errNoCommand is a command line that stops before it names what to do.
 var errNoCommand = errors.New("no command is named")

@@ -169,8 +169,8 @@ func (p *program) join(ctx context.Context) error {
 	}
 	cfg.First = p.first
 	if p.listener = p.Listener; p.listener == nil {
-		if p.listener, err = net.Listen("tcp", p.Addr); err != nil {
-			return fmt.Errorf("listen on %s: %w", p.Addr, err)
+		if p.listener, err = listenAt(p.Addr); err != nil {
+			return err
 		}
 	}
 	p.server = &http.Server{

@@ -31,6 +31,12 @@ func (c *serveCmd) Run(ctx context.Context, log *slog.Logger) error {
 	if err != nil {
 		return err
 	}
+	// Before anything is made: that the address is taken must not leave a new database behind.
+	listener, err := listenAt(c.Addr)
+	if err != nil {
+		return err
+	}
+	defer listener.Close()
 	way, err := c.transport.prepare(c.Addr, c.stateDir(), time.Now)
 	if err != nil {
 		return err
@@ -50,7 +56,7 @@ func (c *serveCmd) Run(ctx context.Context, log *slog.Logger) error {
 		if err != nil {
 			return err
 		}
-		p, err := newProgram(ctx, settings{Addr: c.Addr, DatabaseURL: db.url, Hosts: c.Hosts, Transport: way, Metrics: watching, Messages: messages, DataDir: c.privateDir(), Log: log})
+		p, err := newProgram(ctx, settings{Listener: listener, DatabaseURL: db.url, Hosts: c.Hosts, Transport: way, Metrics: watching, Messages: messages, DataDir: c.privateDir(), Log: log})
 		if err != nil {
 			return err
 		}

@@ -21,37 +21,37 @@ import (
 // userCmd works on people beside the pages of the administration, also while the plant is
 // served.
 type userCmd struct {
-	Add     userAddCmd     `cmd:"" help:"Add a person. The secret is read from standard input, or made and printed."`
-	List    userListCmd    `cmd:"" help:"List everybody."`
-	Disable userDisableCmd `cmd:"" help:"Keep a person out. They are signed out everywhere within seconds."`
-	Enable  userEnableCmd  `cmd:"" help:"Let a person in again."`
-	Roles   userRolesCmd   `cmd:"" help:"Replace what a person may be."`
-	Secret  userSecretCmd  `cmd:"" help:"Replace a person's secret. It is read from standard input, or made and printed."`
+	Add      userAddCmd      `cmd:"" help:"Add a person. The password is read from standard input, or made and printed."`
+	List     userListCmd     `cmd:"" help:"List everybody."`
+	Disable  userDisableCmd  `cmd:"" help:"Keep a person out. They are signed out everywhere within seconds."`
+	Enable   userEnableCmd   `cmd:"" help:"Let a person in again."`
+	Roles    userRolesCmd    `cmd:"" help:"Replace what a person may be."`
+	Password userPasswordCmd `cmd:"" aliases:"secret" help:"Replace a person's password. It is read from standard input, or made and printed."`
 }
 
-// secretSource is where a new secret comes from.
-type secretSource struct {
-	Make bool `help:"Make a secret and print it, instead of reading one."`
+// passwordSource is where a new password comes from.
+type passwordSource struct {
+	Make bool `help:"Make a password and print it, instead of reading one."`
 }
 
-// get reads or makes a secret; own are words that may not make it up.
-func (c secretSource) get(in io.Reader, own ...string) (auth.Secret, error) {
+// get reads or makes a password; own are words that may not make it up.
+func (c passwordSource) get(in io.Reader, own ...string) (auth.Secret, error) {
 	if c.Make {
 		return auth.RandomSecret(), nil
 	}
-	fmt.Fprint(os.Stderr, "Secret: ")
+	fmt.Fprint(os.Stderr, "Password: ")
 	line, err := bufio.NewReader(in).ReadString('\n')
 	line = strings.TrimRight(line, "\r\n")
 	if err != nil && line == "" {
-		return "", errors.New("no secret came on standard input; --make makes one")
+		return "", errors.New("no password came on standard input; --make makes one")
 	}
 	s := auth.Secret(line)
 	return s, auth.Rules{}.Check(s, own...)
 }
 
-func (c secretSource) tell(out io.Writer, s auth.Secret) {
+func (c passwordSource) tell(out io.Writer, s auth.Secret) {
 	if c.Make {
-		fmt.Fprintf(out, "Secret: %s\nIt is not kept anywhere in clear: note it down now.\n", string(s))
+		fmt.Fprintf(out, "Password: %s\nIt is not kept anywhere in clear: note it down now.\n", string(s))
 	}
 }
 
@@ -65,7 +65,7 @@ func hashed(ctx context.Context, s auth.Secret) (string, error) {
 
 type userAddCmd struct {
 	database
-	secretSource
+	passwordSource
 	Login    string   `arg:"" help:"Name for signing in."`
 	Name     string   `help:"Printed name." required:""`
 	Role     []string `help:"operator, supervisor, engineer or administrator; may be given more than once." required:"" enum:"operator,supervisor,engineer,administrator"`
@@ -120,10 +120,10 @@ func (c *userListCmd) Run(ctx context.Context, log *slog.Logger) error {
 				roles = append(roles, string(r))
 			}
 			if p.HasSecret {
-				by = append(by, "secret")
+				by = append(by, "password")
 			}
 			if p.HasPIN {
-				by = append(by, "badge")
+				by = append(by, "PIN")
 			}
 			state := "may sign in"
 			switch {
@@ -195,13 +195,13 @@ func (c *userRolesCmd) Run(ctx context.Context, log *slog.Logger) error {
 	})
 }
 
-type userSecretCmd struct {
+type userPasswordCmd struct {
 	database
-	secretSource
+	passwordSource
 	Login string `arg:"" help:"Name for signing in."`
 }
 
-func (c *userSecretCmd) Run(ctx context.Context, log *slog.Logger) error {
+func (c *userPasswordCmd) Run(ctx context.Context, log *slog.Logger) error {
 	return c.onPerson(ctx, log, c.Login, func(st *store.Store, p plant.Person) error {
 		secret, err := c.get(os.Stdin, p.Login, p.Name)
 		if err != nil {
@@ -214,7 +214,7 @@ func (c *userSecretCmd) Run(ctx context.Context, log *slog.Logger) error {
 		if err := st.SetSecret(ctx, p.ID, hash, uuid.Nil); err != nil {
 			return err
 		}
-		fmt.Printf("The secret of %s is replaced, and their sessions are over.\n", p.Name)
+		fmt.Printf("The password of %s is replaced, and their sessions are over.\n", p.Name)
 		c.tell(os.Stdout, secret)
 		return nil
 	})

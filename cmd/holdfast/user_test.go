@@ -39,16 +39,30 @@ func TestPeopleBesideAServedCluster(t *testing.T) {
 	for _, step := range []interface {
 		Run(context.Context, *slog.Logger) error
 	}{
-		&userAddCmd{database: d, secretSource: secretSource{Make: true}, Login: "Mona", Name: "Mona M.", Role: []string{"administrator"}, Plant: "Kestrel Row", TimeZone: "UTC"},
-		&userAddCmd{database: d, secretSource: secretSource{Make: true}, Login: "otto", Name: "Otto O.", Role: []string{"operator"}, Plant: "Kestrel Row", TimeZone: "UTC"},
+		&userAddCmd{database: d, passwordSource: passwordSource{Make: true}, Login: "Mona", Name: "Mona M.", Role: []string{"administrator"}, Plant: "Kestrel Row", TimeZone: "UTC"},
+		&userAddCmd{database: d, passwordSource: passwordSource{Make: true}, Login: "otto", Name: "Otto O.", Role: []string{"operator"}, Plant: "Kestrel Row", TimeZone: "UTC"},
 		&userListCmd{database: d},
 		&userRolesCmd{database: d, Login: "otto", Role: []string{"supervisor", "operator"}},
-		&userSecretCmd{database: d, secretSource: secretSource{Make: true}, Login: "otto"},
+		&userPasswordCmd{database: d, passwordSource: passwordSource{Make: true}, Login: "otto"},
 		&userDisableCmd{database: d, Login: "otto"},
 	} {
 		if err := step.Run(ctx, silent); err != nil {
 			t.Fatalf("%T: %v", step, err)
 		}
+	}
+	if out, err := printed(t, func() error { return (&auditCmd{database: d}).Run(ctx, silent) }); err != nil || !strings.Contains(out, "What is on record is what was sealed.") {
+		t.Errorf("verifying beside the server: %v\n%s", err, out)
+	}
+	taken := &userAddCmd{database: d, passwordSource: passwordSource{Make: true}, Login: "otto", Name: "Otto P.", Role: []string{"operator"}, Plant: "Kestrel Row", TimeZone: "UTC"}
+	if err := taken.Run(ctx, silent); err == nil || told(err) != "Somebody signs in under this name already." {
+		t.Errorf("a name that is taken: %v", err)
+	}
+	if err := (&userEnableCmd{database: d, Login: "nobody"}).Run(ctx, silent); err == nil || told(err) != "There is no such person." {
+		t.Errorf("somebody who is not there: %v", err)
+	}
+	check := checkCmd{database: d, Addr: "127.0.0.1:0"}
+	if out, err := says(t, check); !strings.Contains(out, "The private PostgreSQL ") || !strings.Contains(out, " runs, and answers.") {
+		t.Errorf("the check beside the server: %v\n%s", err, out)
 	}
 	if err := (&userDisableCmd{database: d, Login: "mona"}).Run(ctx, silent); !plant.IsKind(err, plant.Conflict) {
 		t.Errorf("keeping the last administrator out: %v, want Conflict", err)
