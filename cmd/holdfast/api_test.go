@@ -94,7 +94,7 @@ func TestRoundsFromOutside(t *testing.T) {
 		field  string
 		shows  string
 	}{
-		{func(e map[string]any) { e["unit"] = "in" }, "entries[0].unit", "Readings in in came where Axle seat diameter is measured in mm"},
+		{func(e map[string]any) { e["unit"] = "in" }, "entries[0].unit", "14.991; 14,990; 14.99; 14.992. Axle seat diameter is measured in mm, so"},
 		{func(e map[string]any) { delete(e, "unit") }, "entries[0].unit", "State the unit of the readings"},
 		{func(e map[string]any) { e["characteristic"] = "Bore" }, "entries[0].characteristic", "This station measures no"},
 		{func(e map[string]any) { e["characteristic"] = r.Length.ID }, "entries[0].characteristic", "This station measures no"},

@@ -141,6 +141,15 @@ func (c *gaugeCmd) Run(ctx context.Context, log *slog.Logger) error {
 	if err != nil {
 		return err
 	}
+	m := &measured{sending: c.sending, station: c.Station, characteristic: c.Characteristic, client: client}
+	switch err := m.agrees(ctx, c.Unit, c.Size); {
+	case errors.Is(err, errOther) && c.Port == "-":
+		return fmt.Errorf("nothing was read: %w", err)
+	case errors.Is(err, errOther): // a port goes on: what the gauge tells meanwhile would be lost
+		log.Error("what the gauge tells does not fit what the station measures", "error", err)
+	case err != nil:
+		log.Warn("the server does not say what the station measures", "error", err)
+	}
 	return c.with(ctx, log, func(ctx context.Context, s *relay.Spool) error {
 		source.Fits = c.measuring(ctx, client, c.Station, c.Characteristic)
 		g := &relay.Gather{Spool: s, Now: time.Now, Source: source, Lot: func() string { return c.Lot }}
@@ -149,7 +158,7 @@ func (c *gaugeCmd) Run(ctx context.Context, log *slog.Logger) error {
 		}
 		if c.Port == "-" {
 			readLines(ctx, os.Stdin, g, log)
-			return drain(ctx, s)
+			return ended(ctx, s, g, log)
 		}
 		return c.listen(ctx, g, log)
 	})
@@ -202,6 +211,21 @@ func readLines(ctx context.Context, from io.ReadCloser, g *relay.Gather, log *sl
 			log.Warn("a line is held in memory only", "line", line)
 		}
 	}
+}
+
+// ended says what became of standard input: what waits for the rest of its subgroup, what is
+// not sent, and what was refused.
+func ended(ctx context.Context, s *relay.Spool, g *relay.Gather, log *slog.Logger) error {
+	if n := g.Waiting(); n > 0 {
+		log.Warn("readings wait in the spool for the rest of their subgroup", "readings", n, "of", g.Size)
+	}
+	if err := drain(ctx, s); err != nil {
+		return err
+	}
+	if n := s.Refused(); n > 0 {
+		return fmt.Errorf("subgroups refused: %d; they are put aside in %s", n, s.RefusedFile())
+	}
+	return nil
 }
 
 // drain waits until everything is sent, or for a while: what is left stays in the file.

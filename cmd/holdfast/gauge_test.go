@@ -86,8 +86,60 @@ func TestAGaugeOnASerialPort(t *testing.T) {
 	}
 	if _, body := r.visit(t, "operator1").get("/station/" + r.Station.ID.String()); !strings.Contains(body, "A reading came in another unit") || !strings.Contains(body, "0.5902 in") {
 		t.Error("the station does not show the line in another unit")
-	} else if !strings.Contains(body, "A line came that holds no reading") || !strings.Contains(body, "14.9915") {
+	} else if !strings.Contains(body, "A reading came with more decimals than are measured") || !strings.Contains(body, "14.9915") {
 		t.Error("the station does not show the line with more decimals than are measured")
+	}
+}
+
+// TestAGaugeOnStandardInput says at its start what would be refused, and at its end what waits
+// and what was refused.
+func TestAGaugeOnStandardInput(t *testing.T) {
+	r := serve(t)
+	_, token := r.enrol(t, plant.Device{Kind: plant.Sender, Name: "Bore gauge", Station: r.Station.ID})
+	folder := t.TempDir()
+	var told strings.Builder
+	send := func(change func(c *gaugeCmd), lines string) error {
+		t.Helper()
+		c := gaugeCmd{Port: "-", Characteristic: r.Diameter.Name, Unit: "mm", Size: 5, Within: time.Hour}
+		c.Server, c.TokenFile, c.Spool = r.url, filepath.Join(folder, "token"), filepath.Join(folder, "spool")
+		change(&c)
+		in := filepath.Join(folder, "in")
+		for path, text := range map[string]string{c.TokenFile: token, in: lines} {
+			if err := os.WriteFile(path, []byte(text), 0o600); err != nil {
+				t.Fatal(err)
+			}
+		}
+		f, err := os.Open(in)
+		if err != nil {
+			t.Fatal(err)
+		}
+		before := os.Stdin
+		defer func() { os.Stdin = before }()
+		os.Stdin = f
+		told.Reset()
+		return c.Run(t.Context(), slog.New(slog.NewTextHandler(&told, nil)))
+	}
+	const five = "14.991\n14.990\n14.990\n14.990\n14.992\n"
+	for want, change := range map[string]func(c *gaugeCmd){
+		"is measured in mm, and --unit says in":                                   func(c *gaugeCmd) { c.Unit = "in" },
+		"5 readings of Axle seat diameter are asked each time, and --size says 3": func(c *gaugeCmd) { c.Size = 3 },
+		`the station measures no "Bore", only `:                                   func(c *gaugeCmd) { c.Characteristic = "Bore" },
+	} {
+		if err := send(change, five); err == nil || !strings.Contains(err.Error(), want) || !strings.HasPrefix(err.Error(), "nothing was read: ") {
+			t.Errorf("%v, want %q", err, want)
+		}
+	}
+	if err := send(func(*gaugeCmd) {}, "garbage\n14.9912345\n"+five+"14.991\n"); err != nil {
+		t.Error(err)
+	}
+	for _, want := range []string{`"not a reading; the station is told" line=garbage why=number`, `line=14.9912345 why=decimals`, `msg=taken`, `verdict=learning`, "readings=1 of=5"} {
+		if !strings.Contains(told.String(), want) {
+			t.Errorf("not told %q:\n%s", want, told.String())
+		}
+	}
+	err := send(func(c *gaugeCmd) { c.Streams, c.Spool = []string{"spindle 9"}, filepath.Join(folder, "other") }, five)
+	if err == nil || !strings.Contains(err.Error(), "subgroups refused: 1; they are put aside in ") {
+		t.Errorf("a refused subgroup: %v\n%s", err, told.String())
 	}
 }
 
@@ -109,7 +161,7 @@ func TestTheFileOfTheBroker(t *testing.T) {
 		if err := os.WriteFile(path, []byte(text), 0o600); err != nil {
 			t.Fatal(err)
 		}
-		return readBroker(path, s, log, func(string, string) func(string) bool { return nil })
+		return readBroker(path, s, log, func(string, string) func(string) error { return nil })
 	}
 	const head = "broker = \"ssl://broker.plant:8883\"\nclient = \"holdfast-axles\"\n"
 	b, err := read(head + "user = \"holdfast\"\npassword_file = \"" + password + "\"\nrounds = \"axles/rounds\"\n" +

@@ -66,7 +66,7 @@ func (c *mqttCmd) Run(ctx context.Context, log *slog.Logger) error {
 	}
 	return c.with(ctx, log, func(ctx context.Context, s *relay.Spool) error {
 		s.Strict = true // the broker sends again what is not acknowledged
-		b, err := readBroker(c.Config, s, log, func(station, characteristic string) func(string) bool {
+		b, err := readBroker(c.Config, s, log, func(station, characteristic string) func(string) error {
 			return c.measuring(ctx, client, station, characteristic)
 		})
 		if err != nil {
@@ -78,7 +78,7 @@ func (c *mqttCmd) Run(ctx context.Context, log *slog.Logger) error {
 
 // readBroker reads the file. measuring gives what tells whether a number can be a reading
 // of a characteristic.
-func readBroker(path string, s *relay.Spool, log *slog.Logger, measuring func(station, characteristic string) func(number string) bool) (*relay.Broker, error) {
+func readBroker(path string, s *relay.Spool, log *slog.Logger, measuring func(station, characteristic string) func(number string) error) (*relay.Broker, error) {
 	var f brokerFile
 	meta, err := toml.DecodeFile(path, &f)
 	if err != nil {

@@ -26,6 +26,13 @@ type refused struct {
 // line. Nothing reads it again by itself.
 func (s *Spool) RefusedFile() string { return s.path + ".refused" }
 
+// Refused is how many rounds were refused since the spool was opened.
+func (s *Spool) Refused() int {
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	return s.refused
+}
+
 // Refuse puts a message aside that the server will never take, so that what comes after it
 // is not held up. instead, when there is one, is sent in its place. When it cannot be put
 // aside it stays where it is.
@@ -58,6 +65,9 @@ func (s *Spool) Refuse(m Message, why Refusal, at time.Time, instead *Message) e
 		}
 	}
 	s.done(m.ID, instead)
+	if m.Path == "rounds" {
+		s.refused++
+	}
 	if instead != nil {
 		s.tell()
 	}

@@ -27,6 +27,8 @@ type Line struct {
 var (
 	ErrUnit   = errors.New("unit")
 	ErrNumber = errors.New("number")
+	// ErrDecimals is of a reading that is finer than what is measured.
+	ErrDecimals = errors.New("decimals")
 	// errRefused is of what holds no reading by its nature, and cannot be.
 	errRefused = errors.New("refused")
 )

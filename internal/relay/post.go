@@ -225,9 +225,22 @@ func (p *Poster) post(ctx context.Context, m Message) answer {
 	}
 	a.outcome = mean(res.StatusCode, told.Error.Kind != "")
 	if a.outcome == taken {
-		p.Log.Info("taken", "id", m.ID, "verdict", told.Verdict)
+		p.sayTaken(m, told.Verdict)
 	}
 	return a
+}
+
+// sayTaken says what the server took: a line that is no reading is on no chart.
+func (p *Poster) sayTaken(m Message, verdict string) {
+	var of struct{ Line, Why string }
+	switch {
+	case m.Path != "lines":
+		p.Log.Info("taken", "id", m.ID, "verdict", verdict)
+	case json.Unmarshal(m.Body, &of) == nil && of.Why == errRefused.Error():
+		p.Log.Info("the station is told what was refused", "line", of.Line)
+	default:
+		p.Log.Warn("not a reading; the station is told", "line", of.Line, "why", of.Why)
+	}
 }
 
 // mean says what a status means for the message. ours tells an answer of Holdfast from one

@@ -23,9 +23,9 @@ type Source struct {
 	// Within is how long a subgroup may take. What came longer ago is sent as a short
 	// subgroup, since it does not belong to what comes now.
 	Within time.Duration
-	// Fits reports whether the server can take a number as a reading; nil: that is not
-	// known. A number that it would refuse must not take a subgroup with it.
-	Fits func(number string) bool
+	// Fits says why the server cannot take a number as a reading: ErrNumber or ErrDecimals;
+	// nil: that is not known. A number that it would refuse must not take a subgroup with it.
+	Fits func(number string) error
 }
 
 // Check reports what in a source cannot be.
@@ -70,8 +70,8 @@ func (g *Gather) lot() string {
 func (g *Gather) Take(text, mark string) (durable bool, err error) {
 	now := g.Now()
 	line, err := g.Parse(text)
-	if err == nil && g.Fits != nil && !g.Fits(line.Number) {
-		err = ErrNumber
+	if err == nil && g.Fits != nil {
+		err = g.Fits(line.Number)
 	}
 	if err != nil {
 		return g.bad(text, err, mark, now)
@@ -95,6 +95,9 @@ func (g *Gather) Take(text, mark string) (durable bool, err error) {
 	}
 	return g.send(waiting, "")
 }
+
+// Waiting is how many readings wait for the rest of their subgroup.
+func (g *Gather) Waiting() int { return len(g.Spool.Waiting(g.key())) }
 
 // Flush sends the waiting readings that do not belong to what comes now: a whole subgroup
 // that a crash or a full disk left behind, or one that was begun too long ago.

@@ -77,6 +77,7 @@ type Spool struct {
 	lock *os.File
 
 	mu      sync.Mutex
+	refused int // rounds
 	file    file
 	size    int64
 	failing bool

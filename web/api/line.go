@@ -17,7 +17,7 @@ type sentLine struct {
 	Station        uuid.UUID `json:"station"`
 	Characteristic string    `json:"characteristic"`
 	Line           string    `json:"line"`
-	Why            string    `json:"why"` // "unit", "number" or "refused"
+	Why            string    `json:"why"` // "unit", "number", "decimals" or "refused"
 	At             time.Time `json:"at"`
 }
 
@@ -38,6 +38,8 @@ func (s *Surface) line(w http.ResponseWriter, r *http.Request) error {
 	switch sent.Why {
 	case "unit":
 		why = plant.Invalidf("line", "A reading came in another unit: %q.", short(sent.Line))
+	case "decimals":
+		why = plant.Invalidf("line", "A reading came with more decimals than are measured: %q.", short(sent.Line))
 	case "refused":
 		why = plant.Invalidf("line", "Something that a sender brought was refused: %q.", short(sent.Line))
 	}

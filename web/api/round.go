@@ -3,6 +3,7 @@ package api
 import (
 	"fmt"
 	"net/http"
+	"strings"
 	"time"
 
 	"github.com/google/uuid"
@@ -146,7 +147,7 @@ func (e sentEntry) understand(at string, st plant.StationState, known map[uuid.U
 	case e.Unit == "":
 		return plant.Entry{}, plant.Invalidf(at+".unit", "State the unit of the readings: %s is measured in %s.", c.Name, setup.Unit)
 	case e.Unit != setup.Unit:
-		return plant.Entry{}, plant.Invalidf(at+".unit", "Readings in %s came where %s is measured in %s. They were not taken.", short(e.Unit), c.Name, setup.Unit)
+		return plant.Entry{}, plant.Invalidf(at+".unit", "Readings came in the unit %q: %s. %s is measured in %s, so they were not taken.", short(e.Unit), valuesOf(e.Readings), c.Name, setup.Unit)
 	case len(e.Readings) > setup.Size:
 		return plant.Entry{}, plant.Invalidf(at+".readings", "There are %d readings where %d are asked.", len(e.Readings), setup.Size)
 	case len(e.Streams) > 0 && len(e.Streams) != len(e.Readings):
@@ -231,6 +232,17 @@ func occasionOf(text string) (plant.Occasion, bool) {
 }
 
 // short is text that stands in a sentence.
+// valuesOf lists readings as they came.
+func valuesOf(readings []*string) string {
+	var out []string
+	for _, text := range readings {
+		if text != nil {
+			out = append(out, *text)
+		}
+	}
+	return short(strings.Join(out, "; "))
+}
+
 func short(text string) string {
 	const most = 60
 	text = plant.CleanText(text)
