@@ -21,15 +21,15 @@ func (r *reader) decimal(column string) (*plant.Decimal, bool) {
 	return &d, true
 }
 
-// whole reads a whole number, 0 when the cell is empty.
-func (r *reader) whole(column string, most int) (int, bool) {
+// whole reads a whole number between two, 0 when the cell is empty.
+func (r *reader) whole(column string, least, most int) (int, bool) {
 	text := r.cell[column]
 	if text == "" {
 		return 0, true
 	}
 	n, err := strconv.Atoi(text)
-	if err != nil || n < 0 || n > most {
-		r.problemIn(column, plant.Invalidf(column, "%s is not a whole number from 0 to %d.", text, most))
+	if err != nil || n < least || n > most {
+		r.problemIn(column, plant.Invalidf(column, "%s is not a whole number from %d to %d.", text, least, most))
 		return 0, false
 	}
 	return n, true

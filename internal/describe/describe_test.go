@@ -134,9 +134,12 @@ func TestProblemsHaveRowAndColumn(t *testing.T) {
 		"no line":               {change("Axles,Turning", ",Turning"), 2, "Line", "Name the line"},
 		"no station":            {change("Turning 1,turning", ","), 2, "Station", "Name the station"},
 		"unknown occasion":      {change(",30,\n", ",30,full moon\n"), 2, "Sample after", "full moon"},
-		"26 parts":              {change("15.000,5,", "15.000,26,"), 2, "Parts per subgroup", "whole number"},
+		"26 parts":              {change("15.000,5,", "15.000,26,"), 2, "Parts per subgroup", "26 is not a whole number from 1 to 25."},
+		"no parts":              {change("15.000,5,", "15.000,0,"), 2, "Parts per subgroup", "0 is not a whole number from 1 to 25."},
 		"twice":                 {header + row + row, 3, "Characteristic", "Row 2"},
-		"two families":          {header + row + strings.Replace(strings.Replace(row, "turning,Lathe 11", "milling,Lathe 12", 1), "Axle seat", "Axle end", 1), 3, "Station family", "Row 2 says turning"},
+		"two families":          {header + row + strings.Replace(strings.Replace(row, "turning,Lathe 11", "milling,Lathe 12", 1), "Axle seat", "Axle end", 1), 3, "Station family", "Of Turning 1, row 2 says turning; here it says milling."},
+		"two lines":             {header + row + strings.Replace(strings.Replace(row, "Axles,", "Hubs,", 1), "Axle seat", "Axle end", 1), 3, "Line", "Station Turning 1 stands on Axles in row 2; here it is on Hubs."},
+		"two stations":          {header + row + strings.Replace(strings.Replace(row, "Turning 1", "Turning 2", 1), "Axle seat", "Axle end", 1), 3, "Station", "Machine Lathe 11 stands at Turning 1 in row 2; here it is at Turning 2."},
 		"name too long":         {change("Lathe 11", strings.Repeat("x", 81)), 2, "Machine", "at most 80"},
 		"measured and no name":  {change("Axle seat diameter", ""), 2, "Characteristic", "not what"},
 		"beyond the columns":    {header + strings.TrimRight(row, "\n") + ",,more\n", 2, "", "names no column"},
@@ -158,6 +161,23 @@ func TestProblemsHaveRowAndColumn(t *testing.T) {
 	o := plant.Outline{Lines: []plant.Line{{ID: uuid.New(), Name: "Axles", Retired: true}}}
 	if p := read(t, header+row, o); len(p.Problems) == 0 || !strings.Contains(p.Problems[0].Message, "retired") {
 		t.Errorf("a retired line: %+v", p.Problems)
+	}
+}
+
+// TestEveryMistakeIsSaidAtOnce: a column that is not found hides no other mistake, and makes
+// none of what would have stood in it.
+func TestEveryMistakeIsSaidAtOnce(t *testing.T) {
+	t.Parallel()
+	row := "Axles,Turning 1,turning,Lathe 11,230,axles,Axle seat diameter,mm,3,14.991,14.982,15.000,5,,30,\n"
+	content := strings.NewReplacer("Unit,", "Units,", "Target,", "Decimals,").Replace(header) +
+		strings.Replace(row, "14.982", "about 15", 1) + strings.Replace(strings.Replace(row, "Axle seat", "Axle end", 1), "15.000,5,", "15.000,30,", 1)
+	p := read(t, content, plant.Outline{})
+	var got []string
+	for _, one := range p.Problems {
+		got = append(got, fmt.Sprintf("%d %s", one.Row, one.Column))
+	}
+	if want := "1 Units; 1 Decimals; 2 Lower specification limit; 3 Parts per subgroup"; strings.Join(got, "; ") != want || p.Rows != 2 || p.Ready() {
+		t.Errorf("%d rows, %s; want %s", p.Rows, strings.Join(got, "; "), want)
 	}
 }
 

@@ -21,11 +21,11 @@ func (r *reader) setup(gauge *thing) (plant.Setup, bool) {
 	s.Target, _ = r.decimal("target")
 	s.Lower, _ = r.decimal("lower")
 	s.Upper, _ = r.decimal("upper")
-	s.Decimals, _ = r.whole("decimals", plant.MaxDecimals)
-	s.Size, _ = r.whole("size", 25)
-	s.Plan.EveryMinutes, _ = r.whole("minutes", 100_000)
-	s.Plan.EveryParts, _ = r.whole("parts", 10_000_000)
-	s.Plan.GraceMinutes, _ = r.whole("grace", 100_000)
+	s.Decimals, _ = r.whole("decimals", 0, plant.MaxDecimals)
+	s.Size, _ = r.whole("size", 1, 25)
+	s.Plan.EveryMinutes, _ = r.whole("minutes", 0, 100_000)
+	s.Plan.EveryParts, _ = r.whole("parts", 0, 10_000_000)
+	s.Plan.GraceMinutes, _ = r.whole("grace", 0, 100_000)
 	for _, k := range []string{"decimals", "size"} {
 		if c[k] == "" {
 			r.problemIn(k, plant.Invalidf(k, "This is needed."))

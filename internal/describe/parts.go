@@ -64,7 +64,7 @@ func (r *reader) gauge() *thing {
 	if g.NextCheck, ok = r.day("next_check"); !ok {
 		return nil
 	}
-	if g.CheckDays, ok = r.whole("check_days", maxCheckDays); !ok {
+	if g.CheckDays, ok = r.whole("check_days", 0, maxCheckDays); !ok {
 		return nil
 	}
 	for _, k := range []string{"resolution", "next_check", "check_days"} {

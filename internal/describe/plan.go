@@ -5,6 +5,7 @@ import (
 	"encoding/hex"
 	"encoding/json"
 	"errors"
+	"slices"
 	"strings"
 
 	"github.com/google/uuid"
@@ -114,6 +115,7 @@ func Read(t Table, o plant.Outline) Plan {
 	if !r.head(t.rows[0]) {
 		return r.plan
 	}
+	misread := len(r.plan.Problems)
 	for _, row := range t.rows[1:] {
 		r.plan.Rows++
 		r.row = row
@@ -125,6 +127,11 @@ func Read(t Table, o plant.Outline) Plan {
 		}
 	}
 	r.calendar()
+	if misread > 0 { // that something is missing may follow from a column that was not found
+		r.plan.Problems = slices.DeleteFunc(r.plan.Problems, func(p Problem) bool {
+			return p.Row != t.rows[0].number && p.Column != "" && !slices.Contains(r.at, columnOf(p.Column))
+		})
+	}
 	if r.plan.Rows == 0 {
 		r.row.number = 0
 		r.problem(plant.Invalidf("file", "Below the names of the columns nothing stands in the file."))
@@ -136,7 +143,7 @@ func Read(t Table, o plant.Outline) Plan {
 type reader struct {
 	o    plant.Outline
 	xlsx bool
-	at   []int // column of the file to column of ours, -1: none
+	at   []int // column of the file to column of ours, noColumn or unread
 	row  row
 	cell map[string]string // of the row, by key
 	plan Plan
@@ -152,6 +159,7 @@ type key struct {
 // said about it, by column, and in which row.
 type thing struct {
 	id    uuid.UUID
+	name  string
 	fresh bool // it is to be added
 	place int  // in the addition's list
 	said  map[string]statement
@@ -191,7 +199,13 @@ func problemOf(err error) *plant.Error {
 	return plant.Invalidf("", "This cannot be read.").Because(err)
 }
 
-// head reads the names of the columns.
+// Columns of the file that are none of ours.
+const (
+	noColumn = -1 // the first row names none
+	unread   = -2 // what it names is told as a problem, once and not in every row
+)
+
+// head reads the names of the columns, and reports whether rows can be read by them.
 func (r *reader) head(first row) bool {
 	r.row = first
 	taken := map[int]bool{}
@@ -202,8 +216,10 @@ func (r *reader) head(first row) bool {
 		switch {
 		case text == "":
 		case i < 0:
+			r.at[len(r.at)-1] = unread
 			r.plan.Problems = append(r.plan.Problems, Problem{first.number, text, plant.Invalidf("file", "There is no column of this name. Take the name from the template, or remove the column.")})
 		case taken[i]:
+			r.at[len(r.at)-1] = unread
 			r.plan.Problems = append(r.plan.Problems, Problem{first.number, text, plant.Invalidf("file", "This column is there twice.")})
 		default:
 			taken[i] = true
@@ -214,7 +230,7 @@ func (r *reader) head(first row) bool {
 		r.plan.Problems = nil
 		r.problem(plant.Invalidf("file", "The first row must hold the names of the columns, as the template has them. None of them is found."))
 	}
-	return len(r.plan.Problems) == 0
+	return known > 0
 }
 
 // cells sorts the row's cells by the keys of the columns.
@@ -223,7 +239,8 @@ func (r *reader) cells() bool {
 	for i, text := range r.row.cells {
 		switch {
 		case text == "":
-		case i >= len(r.at) || r.at[i] < 0:
+		case i < len(r.at) && r.at[i] == unread:
+		case i >= len(r.at) || r.at[i] == noColumn:
 			r.problem(plant.Invalidf("file", "Something stands in this row where the first row names no column."))
 			return false
 		default:

@@ -49,7 +49,14 @@ func (r *reader) say(t *thing, column, text string) bool {
 		return true
 	}
 	if old, ok := t.said[column]; ok && old.text != text {
-		r.problemIn(column, plant.Invalidf(column, "Row %d says %s here.", old.row, old.text))
+		switch column {
+		case "line":
+			r.problemIn(column, plant.Invalidf(column, "Station %s stands on %s in row %d; here it is on %s.", t.name, old.text, old.row, text))
+		case "station":
+			r.problemIn(column, plant.Invalidf(column, "Machine %s stands at %s in row %d; here it is at %s.", t.name, old.text, old.row, text))
+		default:
+			r.problemIn(column, plant.Invalidf(column, "Of %s, row %d says %s; here it says %s.", t.name, old.row, old.text, text))
+		}
 		return false
 	}
 	t.said[column] = statement{text, r.row.number}
@@ -70,7 +77,7 @@ func (r *reader) meet(kind plant.Thing, column string, found func(name string) (
 	if t := r.seen[k]; t != nil {
 		return t
 	}
-	t := &thing{said: map[string]statement{}, found: -1}
+	t := &thing{name: name, said: map[string]statement{}, found: -1}
 	id, retired, ok := found(name)
 	switch {
 	case ok && retired:

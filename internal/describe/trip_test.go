@@ -167,7 +167,7 @@ func TestShiftsAndDaysBetweenChecks(t *testing.T) {
 		head + "early,6 am,,\n":                              "2 Shift starts 6 am is not",
 		head + "early,25:00,,\n":                             "2 Shift starts 25:00 is not",
 		head + "early,06:00,,\nlate,06:00,,\n":               "3 Shift starts 06:00 is taken by the shift in row 2",
-		head + "early,06:00,,\nlate,14:00,,\nearly,7:00,,\n": "4 Shift starts Row 2 says 06:00",
+		head + "early,06:00,,\nlate,14:00,,\nearly,7:00,,\n": "4 Shift starts Of early, row 2 says 06:00; here it says 7:00.",
 		head + "early,06:00,,\n":                             "2 Shift One shift alone",
 		head + ",,M-04,many\n":                               "2 Days between gauge checks many is not",
 		head + ",,,90\n":                                     "2 Gauge Name the gauge",
