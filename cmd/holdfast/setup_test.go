@@ -190,7 +190,7 @@ func TestTheFirstRunOfWhoOnlyManages(t *testing.T) {
 		return res.Header.Get("Location")
 	}
 	if res, body := v.post("/admin/start/plant", url.Values{"plant": {"Kestrel Row"}, "zone": {"Londn"}}); res.StatusCode != http.StatusUnprocessableEntity ||
-		!strings.Contains(body, "Names like it: Arctic/Longyearbyen, Europe/London") || !strings.Contains(body, `<a href="/admin" class="here" aria-current="page">`) {
+		!strings.Contains(body, "Names like it: Europe/London, Arctic/Longyearbyen") || !strings.Contains(body, `<a href="/admin" class="here" aria-current="page">`) {
 		t.Errorf("a zone that is none: %d, without one like it or without its tab", res.StatusCode)
 	}
 	at := answer("plant", url.Values{"plant": {"Kestrel Row"}, "zone": {"london"}})

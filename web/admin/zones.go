@@ -3,6 +3,7 @@ package admin
 import (
 	_ "embed"
 	"fmt"
+	"slices"
 	"strings"
 	"time"
 
@@ -67,7 +68,7 @@ func plainZone(name string) string { return strings.ReplaceAll(strings.ToLower(n
 func placeOf(zone string) string { return zone[strings.LastIndex(zone, "/")+1:] }
 
 // likeZone are a few zones that somebody may have meant: what was typed is part of their
-// name, or their place begins like it.
+// name, or their place begins like it, those first that do for longer.
 func likeZone(name string) []string {
 	const most, alike = 4, 3
 	typed := plainZone(name)
@@ -75,15 +76,18 @@ func likeZone(name string) []string {
 	if len(place) < alike {
 		return nil
 	}
-	var named, begun []string
+	var list []string
 	for _, z := range zones {
-		switch whole := plainZone(z); {
-		case strings.Contains(whole, place):
-			named = append(named, z)
-		case strings.HasPrefix(placeOf(whole), place[:alike]):
-			begun = append(begun, z)
+		if strings.Contains(plainZone(z), place) {
+			list = append(list, z)
 		}
 	}
-	list := append(named, begun...)
+	for n := len(place) - 1; n >= alike; n-- {
+		for _, z := range zones {
+			if strings.HasPrefix(placeOf(plainZone(z)), place[:n]) && !slices.Contains(list, z) {
+				list = append(list, z)
+			}
+		}
+	}
 	return list[:min(len(list), most)]
 }
