@@ -14,7 +14,9 @@ import (
 func TestRingsDoNotOverlap(t *testing.T) {
 	t.Parallel()
 	m := &plant.Matter{ID: uuid.New()}
-	of := func(p plant.Panel) []plant.Signal { return []plant.Signal{{Matter: m.ID, Firing: plant.Firing{Panel: p}}} }
+	of := func(p plant.Panel) []plant.Signal {
+		return []plant.Signal{{Matter: m.ID, Firing: plant.Firing{Panel: p}}}
+	}
 	for _, tc := range []struct {
 		hold, look []int
 		ringed     map[int]chart.Mark
