@@ -126,6 +126,9 @@ func TestRoundsFromOutside(t *testing.T) {
 	late := round(good())
 	late["taken_at"] = r.Clock.Now().Add(-8 * 24 * time.Hour)
 	v.api("rounds", late, 422)
+	if _, body := r.visit(t, "administrator1").get("/admin/about"); !strings.Contains(body, "Rounds saved: 2, refused: 21,") {
+		t.Error("not every refused round is counted")
+	}
 	v.api("lines", map[string]any{"id": newNumber(), "line": "0.5902 in", "why": "unit"}, 200)
 	shows("0.5902 in", "There are older ones")
 

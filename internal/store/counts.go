@@ -40,6 +40,9 @@ func (s *Store) Counts() Counts {
 	}
 }
 
+// CountRefused counts a round that was refused before it came to Record.
+func (s *Store) CountRefused() { s.counts.refused.Add(1) }
+
 // saved counts how a save ended.
 func (c *counts) saved(err error) {
 	switch {

@@ -25,6 +25,7 @@ type Store interface {
 	Record(ctx context.Context, r plant.Round) (plant.Answer, error)
 	SetMachine(ctx context.Context, m plant.MachineState) error
 	Parts(ctx context.Context) ([]plant.Part, error)
+	CountRefused() // a round that never came to Record
 	SetAside(ctx context.Context, a plant.Aside, content json.RawMessage) error
 }
 
@@ -135,6 +136,15 @@ func kept(w http.ResponseWriter, station uuid.UUID) {
 		where = keptOnly
 	}
 	w.Header().Set(KeptHeader, where)
+}
+
+// refuse keeps a round that was refused before the record saw it, and counts it with those
+// that the record refuses.
+func (s *Surface) refuse(w http.ResponseWriter, r *http.Request, station, about uuid.UUID, content any, why error) error {
+	if problemOf(why) != nil {
+		s.Store.CountRefused()
+	}
+	return s.keep(w, r, station, about, content, why)
 }
 
 // keep sets aside what was refused because of what it says, so that the station shows

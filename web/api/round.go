@@ -39,18 +39,18 @@ func (s *Surface) round(w http.ResponseWriter, r *http.Request) error {
 	var sent sentRound
 	body, err := read(r, &sent)
 	if err != nil {
-		return s.keep(w, r, uuid.Nil, sent.ID, asText(body), err)
+		return s.refuse(w, r, uuid.Nil, sent.ID, asText(body), err)
 	}
 	station, err := place(senderOf(r), sent.Station)
 	if err != nil {
-		return s.keep(w, r, uuid.Nil, sent.ID, sent.content(), err)
+		return s.refuse(w, r, uuid.Nil, sent.ID, sent.content(), err)
 	}
 	round, err := s.understand(r, sent, station)
 	if err != nil {
 		if pe := problemOf(err); pe != nil && pe.Field == "station" {
 			station = uuid.Nil // there is none of this number that could show it
 		}
-		return s.keep(w, r, station, sent.ID, sent.content(), err)
+		return s.refuse(w, r, station, sent.ID, sent.content(), err)
 	}
 	answer, err := s.Store.Record(r.Context(), round)
 	if err != nil {
