@@ -151,7 +151,7 @@ func newProductRow(f ui.Format, c plant.Containment, found plant.Contained) prod
 	w := f.Words
 	v := productRow{Href: productPath(c.ID), Name: c.Characteristic.Name, Station: c.Station.Name, Age: f.Since(c.OpenedAt), Waits: !c.Stated()}
 	if !c.SettledAt.IsZero() {
-		v.Settled = f.Clock(c.SettledAt)
+		v.Settled, v.Age = f.Clock(c.SettledAt), f.Age(c.SettledAt.Sub(c.OpenedAt)) // for as long as it was open
 	}
 	place, tag := c.Where()
 	v.Where, v.Rest = ui.SayWhere(f, place, tag), ui.SayRest(f, c)
