@@ -39,8 +39,8 @@ func (c GaugeCheckRecord) Check(now time.Time) error {
 		return Invalidf("at", "This is more than 7 days back.")
 	case len([]rune(c.Note)) > 300:
 		return Invalidf("note", "Please use at most %d characters here.", 300)
-	case !c.Good && c.Note == "":
-		return Invalidf("note", "Say what was wrong with the gauge.")
+	case !c.Good && c.Note == "" && (c.Master == nil || c.Reading == nil):
+		return Invalidf("note", "Say what was wrong with the gauge, or type both numbers.")
 	case c.Good && !c.NextCheck.IsZero() && !c.NextCheck.After(c.At):
 		return Invalidf("next", "The next check lies after this one.")
 	}

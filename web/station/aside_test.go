@@ -140,8 +140,10 @@ func TestGaugeCheck(t *testing.T) {
 	adjust := s.at("change", s.Diameter.ID.String())
 	b.get(adjust).says("The check of Micrometer M-04 is overdue since", "check the gauge first", `data-testid="to-check"`, "The numbers say: leave it alone")
 
-	check("failed", "").is(http.StatusUnprocessableEntity).says("Say what was wrong with the gauge.")
-	check("failed", "anvil worn").is(http.StatusSeeOther)
+	master := url.Values{"id": {b.get(at).field("id")}, "result": {"failed"}, "master": {"15,000"}}
+	b.post(at, master).is(http.StatusUnprocessableEntity).says("Say what was wrong with the gauge, or type both numbers.", "Worn or damaged")
+	check("failed", "").is(http.StatusSeeOther) // both numbers say it
+	b.post(at, with(with(master, "why", "worn"), "note", "anvil")).is(http.StatusSeeOther)
 	turn := b.get(adjust).says("Do not adjust on these numbers", "its numbers do not say where the level is", "recorded as unprompted").saysNot("a single part", "recorded as prompted", "is overdue")
 	b.post(s.at("change"), url.Values{"id": {turn.field("id")}, "machine": {turn.field("machine")}, "kind": {"adjustment"}, "characteristic": {s.Diameter.ID.String()},
 		"knob": {turn.field("knob")}, "direction": {"down"}, "size": {"0.001"}}).is(http.StatusSeeOther)
@@ -163,7 +165,7 @@ func TestGaugeCheck(t *testing.T) {
 	s.Clock.Advance(time.Minute)
 	check("good", "new anvil").is(http.StatusSeeOther)
 	b.get(s.at() + "?measure=" + s.Diameter.ID.String()).saysNot(doubt)
-	b.get(at).says("new anvil", "anvil worn", "15.001 on a master of 15.000")
+	b.get(at).says("new anvil", "Worn or damaged: anvil", "15.001 on a master of 15.000")
 	b.get(s.at("gauge", s.Machine.ID.String())).is(http.StatusNotFound)
 }
 

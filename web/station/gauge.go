@@ -10,6 +10,7 @@ import (
 
 	"holdfast/internal/plant"
 	"holdfast/web/ui"
+	"holdfast/web/words"
 )
 
 // checksShown is how many checks of a gauge the tablet lists.
@@ -36,6 +37,8 @@ type gaugeView struct {
 	Master   string
 	Reading  string
 	Note     string
+	Why      string // of a failed check, tapped
+	Whys     []choiceView
 	Next     string
 	NextBy   string // how the next day is found; "" when it is asked for
 	Off      string // how far off it is, when it is asked whether it is good all the same
@@ -43,6 +46,21 @@ type gaugeView struct {
 	Problems map[string]string
 	Checks   []checkView
 	Back     string
+}
+
+// gaugeWhys are what is usually wrong with a gauge that failed, by word: one tap instead
+// of typing.
+var gaugeWhys = []string{"off", "worn", "not-set"}
+
+// failedNote joins what was tapped and what was typed.
+func failedNote(w *words.Printer, note, why string) string {
+	if !contains(gaugeWhys, why) {
+		return note
+	}
+	if why = w.T("reach.check-why." + why); note == "" {
+		return why
+	}
+	return w.T("station.cause-and-words", why, note)
 }
 
 type checkView struct {
@@ -137,6 +155,9 @@ func (s *Surface) renderGauge(w http.ResponseWriter, r *http.Request, status int
 	if g.CheckDays > 0 {
 		v.NextBy = words.T("reach.check-next-by", g.CheckDays)
 	}
+	for _, why := range gaugeWhys {
+		v.Whys = append(v.Whys, choiceView{why, words.T("reach.check-why." + why), why == v.Why})
+	}
 	for _, c := range checks {
 		v.Checks = append(v.Checks, newCheck(f, c))
 	}
@@ -166,8 +187,11 @@ func (s *Surface) checkGauge(w http.ResponseWriter, r *http.Request) error {
 	frame, p := ui.FrameOf(r), r.PostForm
 	words := frame.Words
 	v := gaugeView{ID: p.Get("id"), Result: p.Get("result"), Master: strings.TrimSpace(p.Get("master")), Reading: strings.TrimSpace(p.Get("reading")),
-		Note: plant.CleanText(p.Get("note")), Next: strings.TrimSpace(p.Get("next")), Problems: map[string]string{}}
+		Note: plant.CleanText(p.Get("note")), Why: p.Get("why"), Next: strings.TrimSpace(p.Get("next")), Problems: map[string]string{}}
 	c := plant.GaugeCheckRecord{Gauge: g.ID, Good: v.Result == "good", Note: v.Note, Person: frame.Person.ID}
+	if !c.Good {
+		c.Note = failedNote(words, c.Note, v.Why)
+	}
 	if c.ID, err = uuid.Parse(v.ID); err != nil || c.ID == uuid.Nil {
 		return plant.Invalidf("id", "%s", words.T("station.no-number"))
 	}
