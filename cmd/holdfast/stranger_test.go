@@ -51,7 +51,19 @@ func TestWhoExistsIsNotTold(t *testing.T) {
 	v := r.visit(t, "")
 	took := map[string][]time.Duration{}
 	said := map[string]string{}
-	for range 5 { // by turns, so that a busy machine is busy for all
+	// The shortest of each counts: noise only adds. A check that was left out would be a
+	// tenth, however often it is asked; what a busy machine has kept waiting comes nearer
+	// with every turn.
+	unlike := func() (found []string) {
+		known := slices.Min(took["operator1"])
+		for what, all := range took {
+			if least := slices.Min(all); least < known/3 || known < least/3 {
+				found = append(found, fmt.Sprintf("%s takes %v where a wrong password takes %v", what, least, known))
+			}
+		}
+		return found
+	}
+	for turn := 1; turn <= 5 || turn <= 25 && len(unlike()) > 0; turn++ { // by turns, so that a busy machine is busy for all
 		for _, login := range []string{"operator1", "engineer1", "nosecret", "nobody-has-this"} {
 			r.Clock.Advance(20 * time.Minute) // no pause
 			began := time.Now()
@@ -76,13 +88,8 @@ func TestWhoExistsIsNotTold(t *testing.T) {
 			t.Errorf("%s: %q, want %q", what, text, want)
 		}
 	}
-	// The shortest of each: noise only adds. A check that was left out would be a tenth.
-	known := slices.Min(took["operator1"])
-	for what, all := range took {
-		t.Logf("%s: at least %v", what, slices.Min(all))
-		if least := slices.Min(all); least < known/3 || known < least/3 {
-			t.Errorf("%s takes %v where a wrong password takes %v", what, least, known)
-		}
+	for _, difference := range unlike() {
+		t.Error(difference)
 	}
 }
 
