@@ -1,8 +1,8 @@
 // What needs a person is never cut in silence (web/board/page.templ). A wall screen cannot
-// scroll: a list that does not fit is set smaller; if that is not enough it shows whole rows only, says how many more there are, and
-// turns to them page by page, the first and most urgent page the longest. It jumps and does
-// not glide, stands still while somebody is at the list, and does not turn for who wants no
-// motion.
+// scroll: a list that does not fit is set smaller; if that is not enough it shows whole
+// rows only, says how many more there are, and turns to them page by page, the first and
+// most urgent page the longest. It jumps and does not glide, stands still while somebody
+// is at the list, and does not turn for who wants no motion.
 //
 //   <section id="needs" class="few" data-density="few"> <ol class="needs-list"> <li>
 //     <p data-beyond data-more="and {n} more" data-more-hold="and {n} more, {h} Hold" data-page="{a} to {b} of {n}" hidden>

@@ -25,8 +25,7 @@
 // page, the lock of a tablet or another person at it lose nothing. data-station names the
 // place; data-several says that readings of other people may be sent from here, which is
 // so on an enrolled tablet. [data-kept] tells that something was brought back,
-// [data-unfit] that it does not fit what is asked now, and
-// [data-afresh] throws it away.
+// [data-unfit] that it does not fit what is asked now, and [data-afresh] throws it away.
 //
 // Targets, bounds and values are whole last digits ("units"): 12.500 with three
 // decimals is 12500. They stay below 1e12, so a Number holds them exactly.

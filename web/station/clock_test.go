@@ -43,7 +43,7 @@ func TestFixInAnHourThatComesTwice(t *testing.T) {
 
 func TestATimeIsTypedAsPeopleDo(t *testing.T) {
 	t.Parallel()
-	for typed, want := range map[string]string{"17:05": "17:05", "9:05": "09:05", "9.05": "09:05", "1705": "17:05", "905": "09:05", " 9 : 05": "09:05", "noon": "noon", "": ""} {
+	for typed, want := range map[string]string{"17:05": "17:05", "9:05": "09:05", "9.05": "09:05", "1705": "17:05", "905": "09:05", "0000": "00:00", " 9 : 05": "09:05", "noon": "noon", "": ""} {
 		if got := clockTyped(typed); got != want {
 			t.Errorf("%q is read as %q, want %q", typed, got, want)
 		}

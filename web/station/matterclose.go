@@ -119,7 +119,7 @@ func (c closingForm) fixedAt(opened, now time.Time, zone *time.Location) (time.T
 // clockTyped is a time of the day as people type it: "9:05", "9.05" and "0905" are one.
 func clockTyped(text string) string {
 	text = strings.NewReplacer(".", ":", ",", ":", " ", "").Replace(text)
-	if n := len(text); (n == 3 || n == 4) && number(text) > 0 {
+	if n := len(text); (n == 3 || n == 4) && strings.Trim(text, "0123456789") == "" {
 		text = text[:n-2] + ":" + text[n-2:]
 	}
 	if strings.Index(text, ":") == 1 {
@@ -246,8 +246,9 @@ func causeOf(causes []plant.Cause, id string) (plant.Cause, bool) {
 	return plant.Cause{}, false
 }
 
-// fixInstant reads the day and wall time of a fix in whole minutes, so that the minute in which the signal was taken means the moment after it. Where
-// clocks were set back an hour has two instants: the later one that fits is meant.
+// fixInstant reads the day and wall time of a fix, in whole minutes: the minute in which
+// the signal was taken means the moment after it. A time that there was twice, where
+// clocks were set back, means the later one that fits.
 func fixInstant(text string, opened, now time.Time, zone *time.Location) (time.Time, error) {
 	at, err := time.ParseInLocation(fixLayout, text, zone)
 	if err != nil {
